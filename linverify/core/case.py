@@ -1,0 +1,221 @@
+"""A bound spec in numbers: what one operating point is asked to prove. Knows no YAML and no solver.
+
+Every quantity is in the plant's own unit. Mappings go from a signal's name to its value; they are read-only.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import dataclass, field
+from pathlib import Path
+from types import MappingProxyType
+from typing import Literal
+
+from .errors import Place
+from .plant import Plant
+
+Course = Literal["held", "straight"]
+BandKind = Literal["peak", "rms", "relative", "wider_of", "final"]
+NOTHING: Mapping[str, float] = MappingProxyType({})
+
+
+@dataclass(frozen=True, slots=True)
+class Interval:
+    """A closed range; a missing side is infinite."""
+
+    low: float = -math.inf
+    high: float = math.inf
+
+    def __contains__(self, value: float) -> bool:
+        return self.low <= value <= self.high
+
+    def meet(self, other: Interval) -> Interval:
+        """What both ranges allow."""
+        return Interval(max(self.low, other.low), min(self.high, other.high))
+
+    @property
+    def bounded(self) -> bool:
+        """True where both sides are finite."""
+        return math.isfinite(self.low) and math.isfinite(self.high)
+
+
+@dataclass(frozen=True, slots=True)
+class Expected:
+    """A trimmed value that must not wander: |value - trimmed| <= tolerance."""
+
+    value: float
+    tolerance: float
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class TrimAsk:
+    """The equilibrium that is asked for.
+
+    hold: required values of states, inputs or outputs; find: the unknowns, in plant order (states, then inputs);
+    start: first guesses, and the values of what is neither held nor found; rates: prescribed rates of states;
+    free: states whose rate may be anything; minimize: weights; accuracy: largest scaled residual of any equation.
+    """
+
+    hold: Mapping[str, float]
+    find: tuple[str, ...]
+    start: Mapping[str, float] = NOTHING
+    rates: Mapping[str, float] = NOTHING
+    free: tuple[str, ...] = ()
+    minimize: Mapping[str, float] = NOTHING
+    expect: Mapping[str, Expected] = field(default_factory=lambda: MappingProxyType({}))
+    accuracy: float = 1e-8
+
+
+@dataclass(frozen=True, slots=True)
+class SlopeAsk:
+    """Largest allowed gap of one-sided slopes (a fraction of the row's scale), and sides for one-sided signals."""
+
+    slope_gap: float = 0.05
+    side: Mapping[str, Literal["up", "down"]] = field(default_factory=lambda: MappingProxyType({}))
+
+
+@dataclass(frozen=True, slots=True)
+class Amplitude:
+    """How far a drive may move an input about its trimmed value.
+
+    low <= 0 <= high. With `until` the size is what moves the local model's `until[0]` by `until[1]`, found at run time.
+    """
+
+    low: float = 0.0
+    high: float = 0.0
+    until: tuple[str, float] | None = None
+
+
+@dataclass(frozen=True, slots=True)
+class DriveSet:
+    """The input sequences that both models are driven with; `name` is empty for the one unnamed set.
+
+    every: time between the instants at which inputs may change; intervals: how many of them make the horizon.
+    rate: largest |change| of an input per time unit; offsets: largest initial deviation of a state, both signs.
+    """
+
+    name: str
+    every: float
+    intervals: int
+    amplitude: Mapping[str, Amplitude]
+    course: Course = "held"
+    rate: Mapping[str, float] = NOTHING
+    offsets: Mapping[str, float] = NOTHING
+    shapes: tuple[str, ...] = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
+    count: int = 300
+    search: int = 150
+    pinned: tuple[Path, ...] = ()
+    discerns_gain: float | None = None
+    discerns_delay: float | None = None
+    place: Place = field(default_factory=lambda: Place("<python>"))
+
+    @property
+    def horizon(self) -> float:
+        """Length of a drive in time units."""
+        return self.every * self.intervals
+
+
+@dataclass(frozen=True, slots=True)
+class Band:
+    """One error band on plant minus local model.
+
+    limit: absolute limit in the signal's unit (NaN for `relative`); fraction: of the plant's own peak deviation
+    (`relative`, `wider_of`); start: time before which nothing counts; drives: name of the one set it is for, or None.
+    """
+
+    signal: str
+    kind: BandKind
+    limit: float = math.nan
+    fraction: float = math.nan
+    start: float = 0.0
+    drives: str | None = None
+    place: Place = field(default_factory=lambda: Place("<python>"))
+
+
+@dataclass(frozen=True, slots=True)
+class Exits:
+    """What leaving the envelope means: share of random drives that must complete; unpredicted exits fail or are told."""
+
+    complete: float = 0.9
+    mismatch: Literal["fail", "report"] = "fail"
+
+
+@dataclass(frozen=True, slots=True)
+class CheckAsk:
+    """One check of one operating point: `trims`, `differentiable`, or `follows` with the name of a set of drives."""
+
+    kind: str
+    place: Place
+    drives: str = ""
+
+    @property
+    def name(self) -> str:
+        """The check's name as ids show it: `follows.fast`."""
+        return f"{self.kind}.{self.drives}" if self.drives else self.kind
+
+
+@dataclass(frozen=True, slots=True)
+class Requirement:
+    """A requirement that checks of this point answer."""
+
+    name: str
+    text: str
+    source: str
+    checks: tuple[str, ...]  # names of checks of this point
+
+
+@dataclass(frozen=True, slots=True)
+class Setting:
+    """One line of the effective spec: which word, its value as written, and the place that it comes from."""
+
+    word: str
+    text: str
+    origin: str
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Case:
+    """One operating point of one spec, bound to its plant. spec: path as ids show it; place: the point's own line."""
+
+    spec: str
+    point: str
+    title: str
+    plant: Plant
+    place: Place
+    trim: TrimAsk
+    parameters: Mapping[str, float]  # all of them, defaults included
+    envelope: Mapping[str, Interval]
+    nominal: Mapping[str, float]  # typical size of a deviation of every state, input and output
+    checks: tuple[CheckAsk, ...]
+    time: float = 0.0
+    rate_limits: Mapping[str, float] = NOTHING
+    slopes: SlopeAsk = field(default_factory=SlopeAsk)
+    drives: tuple[DriveSet, ...] = ()
+    bands: tuple[Band, ...] = ()
+    exits: Exits = field(default_factory=Exits)
+    requirements: tuple[Requirement, ...] = ()
+    settings: tuple[Setting, ...] = ()
+    files: tuple[Path, ...] = ()  # spec, defaults, plant, tables: hashed into the provenance
+    skipped: str = ""  # reason, for a swept cell listed under `skip`
+
+    def drive_set(self, name: str) -> DriveSet:
+        """The set of drives called `name`; raises KeyError."""
+        for drives in self.drives:
+            if drives.name == name:
+                return drives
+        raise KeyError(name)
+
+    def bands_for(self, name: str) -> tuple[Band, ...]:
+        """The error bands that hold for the set of drives called `name`."""
+        return tuple(band for band in self.bands if band.drives in (None, name))
+
+
+@dataclass(frozen=True, slots=True)
+class Options:
+    """What the caller decides, the same for every check of a run: seed, profile, where evidence is written."""
+
+    seed: int = 0
+    profile: Literal["full", "quick"] = "full"
+    reports: Path | None = None  # None: nothing is written

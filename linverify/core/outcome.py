@@ -1,0 +1,29 @@
+"""How a piece of numerical work ended: a value with a sentence, so that a check can say why it is undecided."""
+
+from __future__ import annotations
+
+from enum import Enum
+
+
+class Outcome(Enum):
+    """DONE, or the reason why a result cannot be used; the value is what a reader is told."""
+
+    DONE = ""
+    NO_TRIM = "no equilibrium was found inside the envelope"
+    SEVERAL_TRIMS = "several equilibria lie inside the envelope and `start` does not say which one is meant"
+    FAMILY = "the equilibria are not isolated: they form a family; add a hold or `minimize`"
+    NOT_UNIQUE = "the weights of `minimize` do not single out one equilibrium"
+    NOT_FINITE = "the plant returned a number that is not finite"
+    PLANT_RAISED = "the plant raised an exception"
+    NOT_DETERMINISTIC = "the plant answers the same call differently"
+    NOISY = "the plant's own noise hides what was asked for"
+    NOT_DIFFERENTIABLE = "the plant has a kink or a jump on the operating point"
+    INACCURATE = "the integration did not reach the accuracy that the error bands ask for"
+    TOO_MANY_STEPS = "the integration needed more steps than the budget allows"
+    DIVERGED = "the plant left every bound before the envelope could end the comparison"
+    BUDGET = "the budget of plant evaluations was used up"
+
+    @property
+    def done(self) -> bool:
+        """True where the result can be used."""
+        return self is Outcome.DONE

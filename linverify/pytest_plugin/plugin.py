@@ -1,0 +1,1 @@
+"""Hooks for pytest; importing it costs pytest and the standard library only."""

@@ -1,0 +1,1 @@
+"""What everybody may import: plants, models, drives, cases, verdicts, errors."""

@@ -7,7 +7,7 @@ shape, type and finiteness before a number of it is used.
 from __future__ import annotations
 
 import traceback
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
 
 import numpy as np
 
@@ -15,6 +15,8 @@ from .errors import PlantError
 from .model import Array
 from .plant import PlantFunction
 from .signals import Signals
+
+Told = Callable[[], str]  # put into words only where a call failed
 
 
 def told_call(t: float, x: Array, u: Array, states: Signals, inputs: Signals) -> str:
@@ -44,40 +46,40 @@ def called(
         with np.errstate(all="ignore"):
             return function(t, x, u, p)
     except Exception as error:
-        raise PlantError(f"{what} raised {_told_error(error)} when called with {told}") from error
+        raise PlantError(f"{what} raised {_told_error(error)} when called with {told()}") from error
 
 
-def accepted(answer: object, what: str, rows: Signals, like: Array, told: str) -> Array:
+def accepted(answer: object, what: str, rows: Signals, like: Array, told: Told) -> Array:
     """`answer` as float64 array of shape (rows,) or (rows, N); raises PlantError when it is of another kind."""
     values = _as_array(answer, what, told)
     shape = (len(rows), *like.shape[1:])
     if values.shape != shape:
         raise PlantError(
-            f"{what} returned an array of shape {values.shape} when called with {told}; expected {shape}, "
+            f"{what} returned an array of shape {values.shape} when called with {told()}; expected {shape}, "
             f"one row each for {', '.join(rows.names)}"
         )
     return values
 
 
-def require_finite(values: Array, what: str, rows: Signals, told: str) -> None:
+def require_finite(values: Array, what: str, rows: Signals, told: Told) -> None:
     """Raise PlantError that names the first row of `values` with NaN or an infinity."""
     bad = ~np.isfinite(values)
     if bad.any():
         row = int(np.argmax(bad.reshape(len(rows), -1).any(axis=1)))
         number = values.reshape(len(rows), -1)[row][bad.reshape(len(rows), -1)[row]][0]
-        raise PlantError(f"{what} returned {float(number)} for {rows.names[row]} when called with {told}")
+        raise PlantError(f"{what} returned {float(number)} for {rows.names[row]} when called with {told()}")
 
 
-def _as_array(answer: object, what: str, told: str) -> Array:
+def _as_array(answer: object, what: str, told: Told) -> Array:
     try:
         values = np.asarray(answer)
     except ValueError as error:
-        raise PlantError(f"{what} returned rows of unlike shape when called with {told}: {error}") from error
+        raise PlantError(f"{what} returned rows of unlike shape when called with {told()}: {error}") from error
     if values.dtype == object and all(isinstance(item, float) for item in values.ravel()):
         values = values.astype(np.float64)
     if not np.issubdtype(values.dtype, np.floating):
         raise PlantError(
-            f"{what} returned {_kind(values)} when called with {told}; expected real floating-point numbers"
+            f"{what} returned {_kind(values)} when called with {told()}; expected real floating-point numbers"
         )
     return values.astype(np.float64)
 

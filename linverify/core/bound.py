@@ -6,10 +6,12 @@ compared with single calls at several points. Until then, and where it cannot, c
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Callable, Mapping
+from dataclasses import dataclass, field
 from types import MappingProxyType
 
 import numpy as np
+from numpy.typing import NDArray
 
 from .border import accepted, called, read_only, require_finite, told_call
 from .errors import PlantError
@@ -17,8 +19,20 @@ from .model import Array
 from .plant import Plant, PlantFunction
 from .signals import Signals
 
+Indices = NDArray[np.intp]
 AGREEMENT = 1e-11  # batched against single calls: matrix products differ by 1e-15, a wrong axis by whole digits
 RECHECK = 64  # every so many batched calls one column is compared with a single call
+
+
+@dataclass(slots=True)
+class _Function:
+    """One of the plant's two functions, what the rows of its answer are, and what is known of it so far."""
+
+    what: str
+    call: PlantFunction
+    rows: Signals
+    batched: bool = False
+    largest: Array = field(default_factory=lambda: np.zeros(0))  # largest |answer| met so far, row by row
 
 
 class BoundPlant:
@@ -36,37 +50,39 @@ class BoundPlant:
         self.evaluations = 0
         self.last_error: PlantError | None = None
         self.why_single = "not tried yet"
-        self._batched = {"dynamics": False, "measurement": plant.measurement is None}
+        self._dynamics = _Function("dynamics", plant.dynamics, self.states)
+        self._measurement = None
+        if plant.measurement is not None:
+            self._measurement = _Function("measurement", plant.measurement, self.outputs)
         self._calls = 0
 
     @property
     def batched(self) -> bool:
         """True where many columns are answered in one call."""
-        return all(self._batched.values())
+        return self._dynamics.batched and (self._measurement is None or self._measurement.batched)
 
     def rates(self, t: float, x: Array, u: Array) -> Array:
         """Rates of the states, or next states. x (n,) or (n, N), u (m,) or (m, N); returns the shape of x.
 
         Raises PlantError for an exception, a wrong shape or type, NaN or an infinity.
         """
-        return self._answer("dynamics", self.plant.dynamics, self.states, t, x, u)
+        return self._answer(self._dynamics, t, x, u)
 
     def measure(self, t: float, x: Array, u: Array) -> Array:
         """Outputs, (k,) or (k, N). Raises PlantError as `rates` does."""
-        if self.plant.measurement is None:
-            rows = [self.states.index(name) for name in self.outputs.names]
-            return np.array(x, dtype=np.float64)[rows]
-        return self._answer("measurement", self.plant.measurement, self.outputs, t, x, u)
+        if self._measurement is None:
+            return self._measured_states(x)
+        return self._answer(self._measurement, t, x, u)
 
     def rates_or_nan(self, t: float, x: Array, u: Array) -> Array:
         """As `rates`, but a column whose call fails comes back as NaN; the error is kept in `last_error`."""
-        return self._columns_or_nan("dynamics", self.plant.dynamics, self.states, t, x, u)
+        return self._columns_or_nan(self._dynamics, t, x, u)
 
     def measure_or_nan(self, t: float, x: Array, u: Array) -> Array:
         """As `measure`, but a column whose call fails comes back as NaN; the error is kept in `last_error`."""
-        if self.plant.measurement is None:
-            return self.measure(t, x, u)
-        return self._columns_or_nan("measurement", self.plant.measurement, self.outputs, t, x, u)
+        if self._measurement is None:
+            return self._measured_states(x)
+        return self._columns_or_nan(self._measurement, t, x, u)
 
     def detect(self, t: float, points_x: Array, points_u: Array) -> None:
         """Find out whether the plant is deterministic, and whether it answers batches; points (n, P) and (m, P).
@@ -74,95 +90,90 @@ class BoundPlant:
         Columns where the plant fails are left out. Raises PlantError where the same call is answered differently.
         """
         self.why_single = ""
-        tried = [("dynamics", self.plant.dynamics, self.states)]
-        if self.plant.measurement is not None:
-            tried.append(("measurement", self.plant.measurement, self.outputs))
-        for what, function, rows in tried:
-            reason = self._why_single(what, function, rows, t, points_x, points_u)
-            self._batched[what] = not reason
-            self.why_single = self.why_single or (f"{what}: {reason}" if reason else "")
+        for asked in (self._dynamics, self._measurement):
+            if asked is not None:
+                reason = self._why_single(asked, t, points_x, points_u)
+                asked.batched = not reason
+                self.why_single = self.why_single or (f"{asked.what}: {reason}" if reason else "")
 
-    def _single(self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array) -> Array:
+    def _measured_states(self, x: Array) -> Array:
+        return np.array(x, dtype=np.float64)[[self.states.index(name) for name in self.outputs.names]]
+
+    def _told(self, t: float, x: Array, u: Array) -> Callable[[], str]:
+        return lambda: told_call(t, x, u, self.states, self.inputs)
+
+    def _call(self, asked: _Function, t: float, x: Array, u: Array) -> Array:
+        """One call of the plant's function with one column or, where it can, many; NaN is let through."""
         self.evaluations += 1 if x.ndim == 1 else x.shape[1]
-        told = told_call(t, x, u, self.states, self.inputs)
-        given_x, given_u = read_only(x), read_only(u)
-        answer = called(function, what, t, given_x, given_u, self.parameters, told)
-        if not (np.array_equal(given_x, x) and np.array_equal(given_u, u)):
-            raise PlantError(f"{what} changed x or u in place when called with {told}")
-        return accepted(answer, what, rows, x, told)
+        told = self._told(t, x, u)
+        answer = called(asked.call, asked.what, t, read_only(x), read_only(u), self.parameters, told)
+        return accepted(answer, asked.what, asked.rows, x, told)
 
-    def _finite(self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array) -> Array:
-        values = self._single(what, function, rows, t, x, u)
-        require_finite(values, what, rows, told_call(t, x, u, self.states, self.inputs))
+    def _finite(self, asked: _Function, t: float, x: Array, u: Array) -> Array:
+        values = self._call(asked, t, x, u)
+        require_finite(values, asked.what, asked.rows, self._told(t, x, u))
         return values
 
-    def _answer(self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array) -> Array:
+    def _answer(self, asked: _Function, t: float, x: Array, u: Array) -> Array:
         x, u = self._shaped(x, u)
         if x.ndim == 1:
-            return self._finite(what, function, rows, t, x, u)
-        if self._batched[what]:
-            values = self._batch(what, function, rows, t, x, u)
+            return self._finite(asked, t, x, u)
+        if asked.batched:
+            values = self._batch(asked, t, x, u)
             if np.isfinite(values).all():
                 return values
             bad = int(np.argmax(~np.isfinite(values).all(axis=0)))
-            return self._finite(what, function, rows, t, x[:, bad], u[:, bad])  # names the culprit
-        columns = [self._finite(what, function, rows, t, x[:, j], u[:, j]) for j in range(x.shape[1])]
-        return np.stack(columns, axis=-1) if columns else np.empty((len(rows), 0))
+            require_finite(values[:, bad], asked.what, asked.rows, self._told(t, x[:, bad], u[:, bad]))
+        columns = [self._finite(asked, t, x[:, j], u[:, j]) for j in range(x.shape[1])]
+        return np.stack(columns, axis=-1) if columns else np.empty((len(asked.rows), 0))
 
-    def _batch(self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array) -> Array:
-        values = self._single(what, function, rows, t, x, u)
+    def _batch(self, asked: _Function, t: float, x: Array, u: Array) -> Array:
+        if x.shape[1] == 1:
+            return self._call(asked, t, x[:, 0], u[:, 0])[:, np.newaxis]
+        values = self._call(asked, t, x, u)
         self._calls += 1
-        if self._calls % RECHECK == 0 and x.shape[1]:
-            j = self._calls // RECHECK % x.shape[1]
-            alone = self._single(what, function, rows, t, x[:, j], u[:, j])
-            if not _agree(values[:, [j]], alone[:, np.newaxis]):
-                told = told_call(t, x[:, j], u[:, j], self.states, self.inputs)
-                raise PlantError(f"{what} answers {told} differently alone and among {x.shape[1]} columns")
+        if self._calls % RECHECK == 0:
+            self._recheck(asked, t, x, u, values)
         return values
 
-    def _columns_or_nan(self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array) -> Array:
+    def _recheck(self, asked: _Function, t: float, x: Array, u: Array, values: Array) -> None:
+        j = self._calls // RECHECK % x.shape[1]
+        alone = self._call(asked, t, x[:, j], u[:, j])
+        asked.largest = np.maximum(asked.largest, np.nan_to_num(np.abs(values)).max(axis=1))
+        if not _agree(values[:, [j]], alone[:, np.newaxis], asked.largest):
+            told = told_call(t, x[:, j], u[:, j], self.states, self.inputs)
+            raise PlantError(
+                f"{asked.what} answers differently alone and among {x.shape[1]} columns, called with {told}"
+            )
+
+    def _columns_or_nan(self, asked: _Function, t: float, x: Array, u: Array) -> Array:
         x, u = self._shaped(x, u)
         if x.ndim == 1:
-            return self._columns_or_nan(what, function, rows, t, x[:, np.newaxis], u[:, np.newaxis])[:, 0]
-        values = np.full((len(rows), x.shape[1]), np.nan)
-        asked = np.isfinite(x).all(axis=0) & np.isfinite(u).all(axis=0)
-        if self._batched[what] and asked.any():
+            return self._columns_or_nan(asked, t, x[:, np.newaxis], u[:, np.newaxis])[:, 0]
+        values = np.full((len(asked.rows), x.shape[1]), np.nan)
+        usable = np.flatnonzero(np.isfinite(x).all(axis=0) & np.isfinite(u).all(axis=0))
+        if asked.batched and usable.size:
             try:
-                values[:, asked] = self._batch(what, function, rows, t, x[:, asked], u[:, asked])
+                values[:, usable] = self._batch(asked, t, x[:, usable], u[:, usable])
             except PlantError:
-                self._one_by_one(values, asked, what, function, rows, t, x, u)
+                self._one_by_one(asked, t, x, u, usable, values)
         else:
-            self._one_by_one(values, asked, what, function, rows, t, x, u)
+            self._one_by_one(asked, t, x, u, usable, values)
         bad = ~np.isfinite(values).all(axis=0)
-        if self.last_error is None and (bad & asked).any():
-            self._keep_error(what, function, rows, t, x, u, int(np.argmax(bad & asked)))
         values[:, bad] = np.nan
+        if self.last_error is None and bad[usable].any():
+            first = usable[int(np.argmax(bad[usable]))]
+            self._one_by_one(asked, t, x, u, np.array([first]), values)
         return values
 
-    def _one_by_one(
-        self,
-        values: Array,
-        asked: Array,
-        what: str,
-        function: PlantFunction,
-        rows: Signals,
-        t: float,
-        x: Array,
-        u: Array,
-    ) -> None:
-        for j in np.flatnonzero(asked):
+    def _one_by_one(self, asked: _Function, t: float, x: Array, u: Array, columns: Indices, values: Array) -> None:
+        """Fill `values` at `columns`; a column whose call fails stays NaN."""
+        for j in columns:
             try:
-                values[:, j] = self._finite(what, function, rows, t, x[:, j], u[:, j])
+                values[:, j] = self._finite(asked, t, x[:, j], u[:, j])
             except PlantError as error:
+                values[:, j] = np.nan
                 self.last_error = self.last_error or error
-
-    def _keep_error(
-        self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array, j: int
-    ) -> None:
-        try:
-            self._finite(what, function, rows, t, x[:, j], u[:, j])
-        except PlantError as error:
-            self.last_error = error
 
     def _shaped(self, x: Array, u: Array) -> tuple[Array, Array]:
         x, u = np.asarray(x, dtype=np.float64), np.asarray(u, dtype=np.float64)
@@ -172,51 +183,50 @@ class BoundPlant:
             raise ValueError(f"x {x.shape} and u {u.shape} do not fit a plant of {self.n} states and {self.m} inputs")
         return x, u
 
-    def _why_single(self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array) -> str:
-        usable, singles = self._tried_twice(what, function, rows, t, x, u)
-        if len(usable) < 2:
-            return "the plant could not be called at enough points to try a batch"
+    def _why_single(self, asked: _Function, t: float, x: Array, u: Array) -> str:
+        singles = self._tried_twice(asked, t, x, u)
+        if len(singles) < 2:
+            return "it could not be called at enough points to try a batch"
         # a width that is no dimension of the plant, so that a wrong axis cannot pass for a right one
         width = next(size for size in (5, 7, 11, 13, 17) if size not in (self.n, self.m, self.k))
-        columns = [usable[j % len(usable)] for j in range(width)]
+        columns = [list(singles)[j % len(singles)] for j in range(width)]
         expected = np.stack([singles[j] for j in columns], axis=-1)
+        asked.largest = np.abs(expected).max(axis=1)
         try:
-            answer = self._single(what, function, rows, t, x[:, columns], u[:, columns])
+            answer = self._call(asked, t, x[:, columns], u[:, columns])
         except PlantError as error:
-            return _told_reason(str(error), expected, rows)
-        if not _agree(answer, expected):
+            return _told_reason(error, expected, asked.rows)
+        if not _agree(answer, expected, asked.largest):
             return f"a call with {width} columns answers otherwise than {width} single calls"
         return ""
 
-    def _tried_twice(
-        self, what: str, function: PlantFunction, rows: Signals, t: float, x: Array, u: Array
-    ) -> tuple[list[int], dict[int, Array]]:
+    def _tried_twice(self, asked: _Function, t: float, x: Array, u: Array) -> dict[int, Array]:
         singles: dict[int, Array] = {}
         for j in range(x.shape[1]):
             try:
-                singles[j] = self._finite(what, function, rows, t, x[:, j], u[:, j])
+                singles[j] = self._finite(asked, t, x[:, j], u[:, j])
             except PlantError as error:
                 self.last_error = self.last_error or error
         for j in reversed(singles):  # in another order, so that a hidden counter or memory shows
-            again = self._single(what, function, rows, t, x[:, j], u[:, j])
+            again = self._call(asked, t, x[:, j], u[:, j])
             if again.tobytes() != singles[j].tobytes():
-                told = told_call(t, x[:, j], u[:, j], self.states, self.inputs)
                 row = int(np.argmax(again != singles[j]))
                 raise PlantError(
-                    f"{what} is not deterministic: called twice with {told} it returned {float(singles[j][row])!r} "
-                    f"and {float(again[row])!r} for {rows.names[row]}"
+                    f"{asked.what} is not deterministic: called twice with "
+                    f"{told_call(t, x[:, j], u[:, j], self.states, self.inputs)} it returned "
+                    f"{float(singles[j][row])!r} and {float(again[row])!r} for {asked.rows.names[row]}"
                 )
-        return list(singles), singles
+        return singles
 
 
-def _agree(first: Array, second: Array) -> bool:
-    scale = np.maximum(np.abs(second).max(axis=1, keepdims=True), np.abs(first).max(axis=1, keepdims=True))
-    same = (np.abs(first - second) <= AGREEMENT * scale) | (first == second) | (np.isnan(first) & np.isnan(second))
-    return bool(same.all())
+def _agree(first: Array, second: Array, scale: Array) -> bool:
+    # against the row's own size: near an equilibrium rates are differences of large terms
+    same = (np.abs(first - second) <= AGREEMENT * scale[:, np.newaxis]) | (first == second)
+    return bool((same | (np.isnan(first) & np.isnan(second))).all())
 
 
-def _told_reason(error: str, expected: Array, rows: Signals) -> str:
+def _told_reason(error: PlantError, expected: Array, rows: Signals) -> str:
     constant = [name for name, row in zip(rows.names, expected, strict=True) if np.all(row == row[0])]
-    if "unlike shape" in error and constant:
+    if "unlike shape" in str(error) and constant:
         return f"the row of {constant[0]} is a plain number; write it as 0 * x[0] + number"
-    return error
+    return str(error)

@@ -136,7 +136,7 @@ class Band:
 
 @dataclass(frozen=True, slots=True)
 class Exits:
-    """What leaving the envelope means: share of random drives that must complete; unpredicted exits fail or are told."""
+    """Leaving the envelope: share of random drives that must complete; unpredicted exits fail or are told."""
 
     complete: float = 0.9
     mismatch: Literal["fail", "report"] = "fail"

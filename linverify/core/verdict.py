@@ -100,8 +100,9 @@ class Evidence:
 
 @dataclass(frozen=True, slots=True)
 class Verdict:
-    """What one check of one operating point found. `details` holds plain JSON values only (str, int, float, list, dict).
+    """What one check of one operating point found.
 
+    details: plain JSON values only (str, int, float, list, dict with str keys).
     reason: one line, empty for a pass; notes: further lines that a reviewer must see.
     """
 

@@ -1,0 +1,1 @@
+"""Input sequences: shapes, random drives, worst drives, the search, pinned files."""

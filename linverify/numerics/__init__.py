@@ -1,0 +1,1 @@
+"""Arrays and callables in, frozen results with an Outcome out."""

@@ -1,0 +1,1 @@
+"""Verdicts in, text and files out; computes nothing."""

@@ -1,0 +1,1 @@
+"""From a YAML spec to bound cases."""

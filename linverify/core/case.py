@@ -60,10 +60,10 @@ class TrimAsk:
 
     hold: Mapping[str, float]
     find: tuple[str, ...]
-    start: Mapping[str, float] = NOTHING
-    rates: Mapping[str, float] = NOTHING
+    start: Mapping[str, float] = field(default_factory=lambda: NOTHING)
+    rates: Mapping[str, float] = field(default_factory=lambda: NOTHING)
     free: tuple[str, ...] = ()
-    minimize: Mapping[str, float] = NOTHING
+    minimize: Mapping[str, float] = field(default_factory=lambda: NOTHING)
     expect: Mapping[str, Expected] = field(default_factory=lambda: MappingProxyType({}))
     accuracy: float = 1e-8
 
@@ -101,8 +101,8 @@ class DriveSet:
     intervals: int
     amplitude: Mapping[str, Amplitude]
     course: Course = "held"
-    rate: Mapping[str, float] = NOTHING
-    offsets: Mapping[str, float] = NOTHING
+    rate: Mapping[str, float] = field(default_factory=lambda: NOTHING)
+    offsets: Mapping[str, float] = field(default_factory=lambda: NOTHING)
     shapes: tuple[str, ...] = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
     count: int = 300
     search: int = 150
@@ -190,7 +190,7 @@ class Case:
     nominal: Mapping[str, float]  # typical size of a deviation of every state, input and output
     checks: tuple[CheckAsk, ...]
     time: float = 0.0
-    rate_limits: Mapping[str, float] = NOTHING
+    rate_limits: Mapping[str, float] = field(default_factory=lambda: NOTHING)
     slopes: SlopeAsk = field(default_factory=SlopeAsk)
     drives: tuple[DriveSet, ...] = ()
     bands: tuple[Band, ...] = ()

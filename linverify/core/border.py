@@ -38,7 +38,7 @@ def read_only(values: Array) -> Array:
 
 
 def called(
-    function: PlantFunction, what: str, t: float, x: Array, u: Array, p: Mapping[str, float], told: str
+    function: PlantFunction, what: str, t: float, x: Array, u: Array, p: Mapping[str, float], told: Told
 ) -> object:
     """The answer of a plant function; an exception of it becomes a PlantError that names the call."""
     try:

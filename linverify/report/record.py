@@ -14,6 +14,7 @@ from typing import Any
 from ..core.case import Case
 from ..core.errors import Place, RecordError
 from ..core.verdict import Status, Verdict
+from .tables import human
 from .wire import FORMAT, dumps, expect_format, expect_keys, from_data, loads, parsed, plain, text_of, to_data
 
 __all__ = [
@@ -33,12 +34,6 @@ __all__ = [
 
 _NOT_RUN = "no verdict arrived: the item was not run, or the process that ran it ended early"
 _SEVERITY = (Status.PASS, Status.SKIPPED, Status.NOT_RUN, Status.UNDECIDED, Status.FAIL)
-
-
-def human(text: str) -> tuple[tuple[str | int, ...], str]:
-    """Sorting key that reads numbers as numbers: kn9 before kn10."""
-    parts = re.split(r"([0-9]+)", text)
-    return tuple(int(part) if index % 2 else part for index, part in enumerate(parts)), text
 
 
 def describe(case: Case) -> dict[str, Any]:

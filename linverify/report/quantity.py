@@ -1,0 +1,57 @@
+"""Numbers with units as an engineer reads them; at most six significant digits, never more than is known."""
+
+from __future__ import annotations
+
+import math
+
+from ..core.verdict import Figure, Sense
+
+ABSENT = "-"
+
+
+def number(value: float, digits: int = 6) -> str:
+    """`value` to so many significant digits: 0.04, 1.5e6, -2e-8, infinite; a dash for NaN."""
+    if math.isnan(value):
+        return ABSENT
+    if math.isinf(value):
+        return "infinite" if value > 0 else "-infinite"
+    mantissa, _, exponent = f"{value + 0.0:.{digits}g}".partition("e")
+    return f"{mantissa}e{int(exponent)}" if exponent else mantissa
+
+
+def quantity(value: float, unit: str = "", digits: int = 6) -> str:
+    """`value` and its unit; a dash for NaN. Units "" and "1" are not written."""
+    text = number(value, digits)
+    return text if text == ABSENT or unit in ("", "1") else f"{text} {unit}"
+
+
+def percent(share: float) -> str:
+    """A share in per cent, to a tenth of a per cent or, where that would read as nothing, to two digits."""
+    if not math.isfinite(share):
+        return ABSENT
+    value = 100.0 * share
+    return f"{number(round(value, 1) if abs(value) >= 0.1 else value, 6 if abs(value) >= 0.1 else 2)} %"
+
+
+def worst(figure: Figure) -> str:
+    """The measured figure: four digits, or six where four would not tell it from its limit."""
+    short, limit = float(f"{figure.worst:.4g}"), figure.limit
+    close = short == float(f"{limit:.4g}") or (short > limit) != (figure.worst > limit)
+    return quantity(figure.worst, figure.unit, 6 if close and figure.worst != limit else 4)
+
+
+def subject(figure: Figure) -> str:
+    """What was measured and on what: peak error of ride_height."""
+    return f"{figure.what} of {figure.signal}" if figure.signal else figure.what
+
+
+def limit(figure: Figure) -> str:
+    """The limit with its sense: at most 0.04 m; a dash for a figure that is only told."""
+    if figure.sense is Sense.NONE or math.isnan(figure.limit):
+        return ABSENT
+    return f"{figure.sense.value} {quantity(figure.limit, figure.unit)}"
+
+
+def instant(figure: Figure) -> str:
+    """When the worst was met: t = 3.25 s; empty where time has no meaning."""
+    return "" if math.isnan(figure.when) else f"t = {quantity(figure.when, figure.time_unit)}"

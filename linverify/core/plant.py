@@ -53,7 +53,7 @@ class Plant:
         if self.outputs is None:
             if self.measurement is not None:
                 raise DefinitionError("a plant with a measurement needs outputs={name: unit}")
-            object.__setattr__(self, "outputs", dict(self.states))
+            object.__setattr__(self, "outputs", self.states)
         for kind in ("states", "inputs", "outputs"):
             object.__setattr__(self, kind, MappingProxyType(_named_units(kind, getattr(self, kind))))
         object.__setattr__(self, "parameters", MappingProxyType(_parameters(self.parameters)))

@@ -1,6 +1,6 @@
 """Quantities as engineers write them: split into number and unit, named by dimension, converted.
 
-A `Quantity` without a unit is a number in whatever unit is expected at its place. Rules that go beyond arithmetic:
+A number without a unit (unit "") is in whatever unit is expected at its place. Rules that go beyond arithmetic:
 
 * Angle is a dimension of its own. `deg`, `rad` and `rev` convert into each other, but an angle never passes for a plain
   number: a slope of 3 and an angle of 3 rad are different things, and a plant that means the first says "1".
@@ -10,196 +10,47 @@ A `Quantity` without a unit is a number in whatever unit is expected at its plac
 * Temperatures are points on their scale, unless the caller asks for a difference. In a compound unit (`degC/min`,
   `J/(kg K)`) they are always differences.
 
-pint does the arithmetic, with the definitions below instead of its own (a tenth of the load time, and its Hz is 1/s).
-It is imported when the first unit has to be converted, never for plain numbers or for equal units.
+pint does the arithmetic, with the definitions of `unit_words` instead of its own: they load in a tenth of the time, and
+its own Hz would be 1/s. It is imported when the first unit has to be converted, never for plain numbers or equal units.
+The text of a unit is parsed here, because pint's parser also takes numbers and Python operators.
 """
 
 from __future__ import annotations
 
 import math
 import re
-from collections.abc import Iterator
-from dataclasses import dataclass
 from functools import lru_cache
 from typing import TYPE_CHECKING, Any
 
 from .errors import LinverifyError
 from .signals import nearest
+from .unit_words import DEFINITIONS, HABITS, WORDS
 
 if TYPE_CHECKING:
     import pint
 
 _NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?")
-_UNIT = re.compile(r"[A-Za-z_0-9%°µμΩ^*/().· +-]{1,60}")
-_NAME = re.compile(r"[A-Za-z_][A-Za-z_0-9]*")
-_SPELLINGS = (("**", "^"), ("°C", "degC"), ("°F", "degF"), ("°", "deg"), ("%", "percent"), ("µ", "u"), ("μ", "u"), ("Ω", "ohm"), ("·", "*"))
-
-_DEFINITIONS = """
-nano- = 1e-9 = n-
-micro- = 1e-6 = u-
-milli- = 1e-3 = m-
-centi- = 1e-2 = c-
-deci- = 1e-1 = d-
-hecto- = 1e2 = h-
-kilo- = 1e3 = k-
-mega- = 1e6 = M-
-giga- = 1e9 = G-
-tera- = 1e12 = T-
-meter = [length] = m = metre
-kilogram = [mass] = kg
-second = [time] = s = sec
-ampere = [current] = A
-kelvin = [temperature] = K
-mole = [substance] = mol
-candela = [luminosity] = cd
-radian = [angle] = rad
-cycle = [cycle]
-decibel = [level] = dB
-gram = 1e-3 * kilogram = g
-tonne = 1e3 * kilogram = t
-minute = 60 * second = min
-hour = 3600 * second = h = hr
-day = 86400 * second = d
-degree = 3.14159265358979323846 / 180 * radian = deg
-arcminute = degree / 60 = arcmin
-revolution = 2 * 3.14159265358979323846 * radian = rev = turn
-rpm = revolution / minute
-hertz = cycle / second = Hz
-percent = 0.01
-permille = 0.001
-ppm = 1e-6
-pu = 1
-degC = kelvin
-degF = 5 / 9 * kelvin
-delta_degC = kelvin
-delta_degF = 5 / 9 * kelvin
-inch = 0.0254 * meter = in
-foot = 0.3048 * meter = ft = feet
-yard = 0.9144 * meter = yd
-mile = 1609.344 * meter = mi
-nautical_mile = 1852 * meter = nmi
-knot = 1852 / 3600 * meter / second = kn = kt
-kph = kilometer / hour
-mph = mile / hour
-hectare = 1e4 * meter ** 2 = ha
-litre = 1e-3 * meter ** 3 = L = l = liter
-gallon = 231 * inch ** 3 = gal
-gpm = gallon / minute
-pound = 0.45359237 * kilogram = lb
-slug = 14.593902937206364 * kilogram
-standard_gravity = 9.80665 * meter / second ** 2 = g_0
-newton = kilogram * meter / second ** 2 = N
-pound_force = 4.4482216152605 * newton = lbf
-kilogram_force = 9.80665 * newton = kgf
-pascal = newton / meter ** 2 = Pa
-bar = 1e5 * pascal
-atmosphere = 101325 * pascal = atm
-psi = pound_force / inch ** 2
-mmHg = 133.322387415 * pascal
-joule = newton * meter = J
-calorie = 4.184 * joule = cal
-BTU = 1055.05585262 * joule
-watt = joule / second = W
-watt_hour = 3600 * joule = Wh
-volt_ampere = watt = VA = var
-horsepower = 745.69987158227 * watt = hp
-volt = watt / ampere = V
-coulomb = ampere * second = C
-ampere_hour = 3600 * coulomb = Ah
-ohm = volt / ampere
-siemens = ampere / volt = S
-farad = coulomb / volt = F
-henry = volt * second / ampere = H
-weber = volt * second = Wb
-tesla = weber / meter ** 2 = T
-poise = 0.1 * pascal * second = P
-"""
-
-# the first unit of a dimension found here lends its words to it
-_WORDS = """
-1: a plain number
-m: a length
-m^2: an area
-m^3: a volume
-kg: a mass
-s: a time
-rad: an angle
-1/s: a rate in 1/s
-Hz: a frequency in cycles
-Hz/s: a rate of frequency
-cycle: a number of cycles
-dB: a level in decibels
-dB/s: a rate of a level
-m/s: a speed
-m/s^2: an acceleration
-m/s^3: a jerk
-rad/s: an angular rate
-rad/s^2: an angular acceleration
-N: a force
-N/s: a rate of force
-J: an energy or torque
-W: a power
-W/s: a rate of power
-Pa: a pressure
-Pa/s: a rate of pressure
-kg/s: a mass flow
-kg/s^2: a stiffness
-mol/s: a molar flow
-m^3/s: a volume flow
-m^2/s: a diffusivity
-kg/m^3: a density
-m^3/kg: a specific volume
-J/kg: a specific energy
-kg*m^2: a moment of inertia
-kg*m/s: a momentum
-K: a temperature
-K/s: a rate of temperature
-J/K: a heat capacity
-J/kg/K: a specific heat
-W/K: a heat conductance
-W/m^2: a heat flux
-W/m^2/K: a heat transfer coefficient
-W/m/K: a heat conductivity
-Pa*s: a viscosity
-A: an electric current
-A/s: a rate of current
-V: a voltage
-V/s: a rate of voltage
-C: an electric charge
-ohm: a resistance
-S: a conductance
-F: a capacitance
-H: an inductance
-Wb: a magnetic flux
-T: a flux density
-mol: an amount of substance
-mol/m^3: a concentration
-mol/m^3/s: a rate of concentration
-N*m/rad: a torsional stiffness
-cd: a luminous intensity
-"""
+_TOKEN = re.compile(r"\s*(?:(?P<name>[A-Za-z_][A-Za-z_0-9]*)|(?P<number>[+-]?\d+(?:\.\d+)?)|(?P<mark>[*/^()]))\s*")
+_LONGEST = 60  # characters of a unit; keeps the recursion of the parser shallow
+_STEEPEST = 12.0  # largest power of a unit
+_SYMBOL = 4  # letters of the longest symbol; longer names are words
+_SPELLINGS = (
+    ("**", "^"), ("·", "*"), ("⁻¹", "^-1"), ("⁻²", "^-2"), ("²", "^2"), ("³", "^3"),
+    ("°C", "degC"), ("°F", "degF"), ("°", "deg"), ("%", "percent"), ("µ", "u"), ("μ", "u"), ("Ω", "ohm"),
+)  # fmt: skip
+_EXAMPLES = "a unit such as m, kg/m^3 or deg/s is expected"
+_PLAIN = ("", "1")
 
 _ZERO = {"degC": 273.15, "degF": 459.67 * 5.0 / 9.0, "kelvin": 0.0}  # kelvin at the zero of each scale
 _DELTAS = ("delta_degC", "delta_degF")
 
 
 class UnitError(LinverifyError, ValueError):
-    """A quantity cannot be read or converted; `wrong` says what it is, `expected` what was due, `hint` the nearest word."""
+    """A quantity cannot be read or converted: what it is, what was due, the nearest right word."""
 
     def __init__(self, wrong: str, expected: str = "", hint: str = "") -> None:
         super().__init__("; ".join(part for part in (wrong, expected) if part))
         self.wrong, self.expected, self.hint = wrong, expected, hint
-
-
-@dataclass(frozen=True, slots=True)
-class Quantity:
-    """A finite number with the unit that was written beside it; unit "" stands for the unit expected at its place."""
-
-    number: float
-    unit: str = ""
-
-    def __str__(self) -> str:
-        return f"{shown(self.number)} {self.unit}".strip()
 
 
 def shown(number: float) -> str:
@@ -207,7 +58,7 @@ def shown(number: float) -> str:
     return f"{number:.6g}"
 
 
-def parse(text: str) -> Quantity:
+def parse(text: str) -> tuple[float, str]:
     """Split `30 kn`, `-1.5e3 N*m`, `5%` or `12` into number and unit.
 
     Only the number and the characters of the unit are looked at; `check` or a conversion decides whether the unit
@@ -222,28 +73,27 @@ def parse(text: str) -> Quantity:
         raise UnitError(f"{text!r} is too large for a number", "a finite number is expected")
     if unit and unit[0] in ",:_":
         raise UnitError(f"{text!r} is no number", "digits with a decimal point, then a unit, are expected")
-    if unit and not _UNIT.fullmatch(unit):
-        raise UnitError(f"{unit!r} in {text!r} is no unit", "a unit such as m, kg/m^3 or deg/s is expected")
-    return Quantity(number, unit)
+    if len(unit) > _LONGEST:
+        raise UnitError(f"the unit in {text[:_LONGEST]!r} ... is too long", _EXAMPLES)
+    return number, unit
 
 
-def convert(quantity: Quantity, unit: str, *, difference: bool = False) -> float:
-    """The number of `quantity` in `unit`. A quantity without a unit is already in it.
+def convert(number: float, unit: str, target: str, *, difference: bool = False, text: str = "") -> float:
+    """`number` in `unit` as a number in `target`; with unit "" it is in `target` already.
 
     difference: temperatures are differences (bands, amplitudes, rates, tolerances) and not points of a scale.
-    Raises UnitError, naming both dimensions in words.
+    text: the quantity as it was written, for the message. Raises UnitError, naming both dimensions in words.
     """
-    if quantity.unit in ("", unit):
-        return quantity.number
-    theirs, ours = _dimension(quantity.unit), _dimension(unit)
-    if theirs != ours:
-        raise UnitError(f"{str(quantity)!r} is {_mismatch(quantity, unit)}", f"{kind(unit)} in {unit or '1'} is expected")
-    factor = _factor(quantity.unit, unit)
-    zero = None if difference else _zeros(quantity, unit)
-    if zero is None:
-        return _scaled(quantity.number, factor)
-    kelvin_a_degree = _factor(unit, "K")
-    return _scaled(quantity.number, factor) + (zero[0] - zero[1]) / kelvin_a_degree
+    if unit in ("", target):
+        return number
+    text = text or f"{shown(number)} {unit}"
+    if _dimension(unit) != _dimension(target):
+        raise UnitError(f"{text!r} is {_mistaken(number, unit, target)}", f"{kind(target)} is expected", "")
+    factor = _factor(unit, target)
+    zeros = None if difference else _zeros(unit, target, text)
+    if zeros is None:
+        return _scaled(number, factor)
+    return _scaled(number, factor) + (zeros[0] - zeros[1]) / _factor(target, "K")
 
 
 def convertible(unit: str, other: str) -> bool:
@@ -275,11 +125,11 @@ def per_time(unit: str, time_unit: str) -> str:
     return f"{unit}/{time_unit}"
 
 
-def amplitude_ratio(quantity: Quantity) -> float:
+def amplitude_ratio(number: float, unit: str) -> float:
     """A ratio of amplitudes: `6 dB` is 1.995; `2`, `200 %` and `2 pu` are 2. Raises UnitError."""
-    if quantity.unit == "dB":
-        return float(10.0 ** (quantity.number / 20.0))
-    return convert(quantity, "1")
+    if unit == "dB":
+        return float(10.0 ** (number / 20.0))
+    return convert(number, unit, "1")
 
 
 @lru_cache(maxsize=1)
@@ -291,36 +141,119 @@ def _registry() -> pint.UnitRegistry[float]:
 
 
 def _lines() -> list[str]:
-    return [line for line in _DEFINITIONS.splitlines() if line]
+    return [line for line in DEFINITIONS.splitlines() if line]
 
 
-def _unit_names() -> Iterator[str]:
-    for line in _lines():
-        for word in line.split("="):
-            if not line.split()[0].endswith("-") and re.fullmatch(r"[A-Za-z_0]+", word.strip()):
-                yield word.strip()
+def _unit_names() -> list[str]:
+    words = [word.strip() for line in _lines() if "-" not in line.split()[0] for word in line.split("=")]
+    return [word for word in words if re.fullmatch(r"[A-Za-z]\w*", word)]
 
 
 @lru_cache(maxsize=1024)
 def _parsed(unit: str) -> Any:
     """pint's value of a unit text; "" and "1" are the plain number."""
-    import pint
+    powers: dict[str, float] = {}
+    if unit not in _PLAIN:
+        try:
+            _add_product(_Tokens(unit), powers, 1.0, closing=False)
+        except (_NoUnitError, RecursionError):
+            raise UnitError(f"{unit!r} is no unit", _EXAMPLES) from None
+    sums: dict[str, float] = {}  # by full name, so that `m` and `meter` add up
+    for name, power in powers.items():
+        full = _full_name(name)
+        if not full:
+            raise UnitError(f"{name!r} is no unit", _EXAMPLES, _hint(name))
+        sums[full] = sums.get(full, 0.0) + power
+    registry = _registry()
+    return registry.Unit(registry.UnitsContainer({name: power for name, power in sums.items() if power}))
 
-    text = unit
-    for spelling, plain in _SPELLINGS:
-        text = text.replace(spelling, plain)
-    if text in ("", "1"):
-        text = "dimensionless"
-    for name in _NAME.findall(text):
-        if name != "dimensionless" and name not in _registry():
-            hint = nearest(name, _unit_names())
-            raise UnitError(f"{name!r} is no unit", "a unit such as m, kg/m^3 or deg/s is expected", hint)
-    try:
-        if not _UNIT.fullmatch(unit or "1"):
-            raise ValueError(unit)
-        return _registry().parse_units(text)
-    except (pint.errors.PintError, ValueError, TypeError, SyntaxError, ArithmeticError, AttributeError, RecursionError):
-        raise UnitError(f"{unit!r} is no unit", "a unit such as m, kg/m^3 or deg/s is expected") from None
+
+def _full_name(name: str) -> str:
+    """`km` is kilometer; an empty string for what is no unit. Only words may have a plural: `ds` is no day."""
+    for prefix, unit, plural in _registry().parse_unit_name(name):
+        if not plural or len(name) > _SYMBOL:
+            return f"{prefix}{unit}"
+    return ""
+
+
+def _hint(name: str) -> str:
+    stem = name.rstrip("23")
+    if stem != name and _full_name(stem):
+        return f"{stem}^{name[len(stem) :]}"
+    return HABITS.get(name) or nearest(name, _unit_names())
+
+
+class _NoUnitError(Exception):
+    """The text does not follow the grammar of units; `_parsed` says so with the whole text."""
+
+
+class _Tokens:
+    """The tokens of a unit text, one ahead. Mutable: a parser's place in its text."""
+
+    def __init__(self, unit: str) -> None:
+        text = unit
+        for spelling, plain in _SPELLINGS:
+            text = text.replace(spelling, plain)
+        self.left: list[tuple[str, str]] = []
+        at = 0
+        while at < len(text):
+            match = _TOKEN.match(text, at)
+            if match is None:
+                raise _NoUnitError
+            self.left.append((str(match.lastgroup), match[str(match.lastgroup)]))
+            at = match.end()
+        self.left.reverse()
+
+    @property
+    def ahead(self) -> str:
+        return self.left[-1][1] if self.left else ""
+
+    def take(self) -> tuple[str, str]:
+        if not self.left:
+            raise _NoUnitError
+        return self.left.pop()
+
+
+def _add_product(tokens: _Tokens, powers: dict[str, float], sign: float, *, closing: bool) -> None:
+    """product := power (("*" | "/" | "") power)*; a slash divides by the one power that follows it."""
+    _add_power(tokens, powers, sign)
+    while tokens.ahead and tokens.ahead != ")":
+        below = tokens.ahead == "/"
+        if tokens.ahead in ("*", "/"):
+            tokens.take()
+        _add_power(tokens, powers, -sign if below else sign)
+    if closing:
+        tokens.take()
+    elif tokens.ahead:
+        raise _NoUnitError
+
+
+def _add_power(tokens: _Tokens, powers: dict[str, float], sign: float) -> None:
+    """power := (name | "1" | "(" product ")") ["^" number | "^" "(" number ")"]."""
+    group, text = tokens.take()
+    inner = {text: 1.0} if group == "name" else {}
+    if text == "(":
+        _add_product(tokens, inner, 1.0, closing=True)
+    elif group == "mark" or (group == "number" and text != "1"):
+        raise _NoUnitError
+    exponent = 1.0
+    if tokens.ahead == "^":
+        tokens.take()
+        exponent = _exponent(tokens)
+    for name, power in inner.items():
+        powers[name] = powers.get(name, 0.0) + sign * exponent * power
+
+
+def _exponent(tokens: _Tokens) -> float:
+    group, text = tokens.take()
+    if text == "(":
+        exponent = _exponent(tokens)
+        if tokens.take()[1] != ")":
+            raise _NoUnitError
+        return exponent
+    if group != "number" or abs(float(text)) > _STEEPEST:
+        raise _NoUnitError
+    return float(text)
 
 
 @lru_cache(maxsize=1024)
@@ -342,11 +275,11 @@ def _scaled(number: float, factor: float) -> float:
     return number * factor
 
 
-def _zeros(quantity: Quantity, unit: str) -> tuple[float, float] | None:
+def _zeros(unit: str, target: str, text: str) -> tuple[float, float] | None:
     """Kelvin at the zeros of both scales where both units are scales of temperature, else None."""
-    theirs, ours = str(_parsed(quantity.unit)), str(_parsed(unit))
+    theirs, ours = str(_parsed(unit)), str(_parsed(target))
     if theirs in _DELTAS and ours in ("degC", "degF"):
-        raise UnitError(f"{str(quantity)!r} is a difference of temperatures", f"a temperature in {unit} is expected")
+        raise UnitError(f"{text!r} is a difference of temperatures", f"a temperature in {target} is expected")
     if theirs in _ZERO and ours in _ZERO:
         return _ZERO[theirs], _ZERO[ours]
     return None
@@ -355,7 +288,7 @@ def _zeros(quantity: Quantity, unit: str) -> tuple[float, float] | None:
 @lru_cache(maxsize=1)
 def _known_dimensions() -> dict[tuple[tuple[str, float], ...], str]:
     known: dict[tuple[tuple[str, float], ...], str] = {}
-    for line in _WORDS.strip().splitlines():
+    for line in WORDS.strip().splitlines():
         unit, words = line.split(": ")
         known.setdefault(_dimension(unit), words)
     return known
@@ -372,16 +305,15 @@ def _power(name: str, power: float) -> str:
     return name if power == 1 else f"{name}^{shown(power)}"
 
 
-def _mismatch(quantity: Quantity, unit: str) -> str:
+def _mistaken(number: float, unit: str, target: str) -> str:
     """What the quantity is; for cycles against radians also what it would be on the other count."""
-    words = kind(quantity.unit)
-    theirs, ours = dict(_dimension(quantity.unit)), dict(_dimension(unit))
-    for mine, other, factor in (("cycle", "angle", 2.0 * math.pi), ("angle", "cycle", 0.5 / math.pi)):
+    words = kind(unit)
+    theirs, ours = dict(_dimension(unit)), dict(_dimension(target))
+    for mine, other, ratio in (("cycle", "angle", 2.0 * math.pi), ("angle", "cycle", 0.5 / math.pi)):
         power = theirs.get(mine, 0.0)
-        if power and theirs.get(other, 0.0) == 0.0 and ours == _swapped(theirs, mine, other):
-            base = _in_base(quantity) * factor**power
-            ratio = base / _in_base(Quantity(1.0, unit))
-            return f"{words}, and would be {shown(ratio)} {unit} if one cycle is 2 pi rad"
+        if power and other not in theirs and ours == _swapped(theirs, mine, other):
+            value = number * _in_base(unit) / _in_base(target) * ratio**power
+            return f"{words}, and {shown(value)} {target} if one cycle counts as 2 pi rad"
     return words
 
 
@@ -389,6 +321,5 @@ def _swapped(dimension: dict[str, float], mine: str, other: str) -> dict[str, fl
     return {other if name == mine else name: power for name, power in dimension.items()}
 
 
-def _in_base(quantity: Quantity) -> float:
-    unit = _parsed(quantity.unit)
-    return float(_registry().get_base_units(unit)[0]) * quantity.number
+def _in_base(unit: str) -> float:
+    return float(_registry().Quantity(1.0, _parsed(unit)).to_base_units().magnitude)

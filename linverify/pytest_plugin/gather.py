@@ -1,0 +1,208 @@
+"""What was offered, what was selected, what came back: the books of a run, and what they mean for the build.
+
+A `Ledger` is kept by every process that collects. `Gather` is kept by the one process that reports: it picks the
+verdicts off the test reports, which is the same with workers and without, and compares them with what was selected. A
+check that was selected and has no verdict fails the build: with workers, a result can be lost without a trace in the
+exit status (a value that cannot be sent, a process that died), and a gate that can lose a failure is none.
+"""
+
+from __future__ import annotations
+
+import json
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass, field
+from pathlib import Path
+from typing import TYPE_CHECKING, Any
+
+import pytest
+
+from .options import SETTINGS, Settings
+
+if TYPE_CHECKING:
+    from ..run import Books
+
+PROPERTY = "linverify"  # the one user property of an item: its verdict as one JSON string
+
+
+@dataclass
+class Ledger:
+    """Not frozen: it is written while specs are collected. Paths and ids are texts, so that all of it can travel.
+
+    found: specs met; read: specs read without mistake; points: what the record says of every operating point that is
+    on offer; files: what the specs were read from; selected: ids of the checks that are to be run.
+    """
+
+    threads: str = ""
+    found: list[str] = field(default_factory=list)
+    read: list[str] = field(default_factory=list)
+    points: list[Mapping[str, Any]] = field(default_factory=list)
+    files: list[str] = field(default_factory=list)
+    selected: list[str] = field(default_factory=list)
+
+    def offer(self, spec: Path, points: Sequence[Mapping[str, Any]], files: Sequence[Path]) -> None:
+        """A spec was read, and these are its points."""
+        if str(spec) not in self.read:
+            self.read.append(str(spec))
+            self.points.extend(points)
+            self.files.extend(str(path) for path in files if str(path) not in self.files)
+
+    @property
+    def offered(self) -> list[str]:
+        """Ids of all checks of all specs read."""
+        return [f"{point['spec']}::{point['point']}::{check}" for point in self.points for check in point["checks"]]
+
+    @property
+    def skipped(self) -> list[str]:
+        """Ids of the checks of cells that a spec skips on purpose."""
+        points = [point for point in self.points if point["skipped"]]
+        return [f"{point['spec']}::{point['point']}::{check}" for point in points for check in point["checks"]]
+
+    def absorb(self, text: str) -> None:
+        """Take over what another process wrote (`dumps`); the same specs read there count once."""
+        other = json.loads(text)
+        known = {(point["spec"], point["point"]) for point in self.points}
+        self.points.extend(point for point in other["points"] if (point["spec"], point["point"]) not in known)
+        for name in ("found", "read", "files", "selected"):
+            mine: list[str] = getattr(self, name)
+            seen = set(mine)
+            mine.extend(entry for entry in other[name] if entry not in seen)
+        self.threads = other["threads"] if self.threads in ("", other["threads"]) else "differs between processes"
+
+    def dumps(self) -> str:
+        """All of it as one JSON string: built-in types are what a channel between processes is sure to carry."""
+        names = ("threads", "found", "read", "points", "files", "selected")
+        return json.dumps({name: getattr(self, name) for name in names})
+
+    def pytest_collection_finish(self, session: pytest.Session) -> None:
+        """What is to be run, after every deselection."""
+        self.selected = [item.nodeid for item in session.items if item.get_closest_marker("linverify")]
+
+    def pytest_sessionfinish(self, session: pytest.Session) -> None:
+        """A worker hands its books over; one that dies cannot, and the others' must do."""
+        output = getattr(session.config, "workeroutput", None)
+        if output is not None:
+            output[PROPERTY] = self.dumps()
+
+
+LEDGER = pytest.StashKey[Ledger]()
+
+
+class Gather:
+    """Verdicts of the whole run, on the process that reports. `lines`: what the terminal summary prints."""
+
+    def __init__(self, config: pytest.Config, ledger: Ledger) -> None:
+        self.config = config
+        self.settings: Settings = config.stash[SETTINGS]
+        self.ledger = ledger
+        self.verdicts: dict[str, str] = {}  # id -> JSON
+        self.unread: list[str] = []  # specs with mistakes
+        self.why: dict[str, str] = {}  # id -> why there is no verdict
+        self.lines: list[str] = []
+
+    def pytest_runtest_logreport(self, report: pytest.TestReport) -> None:
+        """Pick the verdict off a report; remember what ended without one."""
+        for name, value in report.user_properties:
+            if name == PROPERTY:
+                self.verdicts[report.nodeid] = str(value)
+        if report.when not in ("setup", "call", "teardown"):
+            self.why[report.nodeid] = "the process that ran this check died while it ran"
+        elif report.outcome != "passed" and report.nodeid not in self.verdicts:
+            self.why[report.nodeid] = f"its {report.when} phase {report.outcome} before there was a verdict"
+
+    def pytest_collectreport(self, report: pytest.CollectReport) -> None:
+        """Remember specs that could not be read."""
+        if report.failed and str(report.nodeid).endswith(".yaml"):
+            self.unread.append(str(report.nodeid))
+
+    @pytest.hookimpl(optionalhook=True)
+    def pytest_xdist_node_collection_finished(self, node: Any, ids: Sequence[str]) -> None:
+        """What a worker is going to run: known here even if no worker lives to hand its books over."""
+        known = set(self.ledger.selected)
+        self.ledger.selected.extend(name for name in ids if is_check(name) and name not in known)
+
+    @pytest.hookimpl(optionalhook=True)
+    def pytest_testnodedown(self, node: Any, error: object) -> None:
+        """A worker has ended; one that died left no books."""
+        output = getattr(node, "workeroutput", None) or {}
+        if PROPERTY in output:
+            self.ledger.absorb(output[PROPERTY])
+
+    @pytest.hookimpl(trylast=True)
+    def pytest_sessionfinish(self, session: pytest.Session) -> None:
+        """Audit, write, and set the exit status."""
+        if self.config.getoption("collectonly"):
+            return
+        passed = self._conclude()
+        if not passed and session.exitstatus in (pytest.ExitCode.OK, pytest.ExitCode.NO_TESTS_COLLECTED):
+            nothing = not self.ledger.selected
+            session.exitstatus = pytest.ExitCode.NO_TESTS_COLLECTED if nothing else pytest.ExitCode.TESTS_FAILED
+
+    def pytest_terminal_summary(self, terminalreporter: Any) -> None:
+        """Print what `pytest_sessionfinish` has made."""
+        if self.lines:
+            terminalreporter.section("linverify", sep="=")
+        for line in self.lines:
+            terminalreporter.write_line(line)
+
+    def _conclude(self) -> bool:
+        """Whether the build may go on; writes the reports and the lines."""
+        if not self.ledger.selected:
+            self.lines = [self._nothing()]
+            return False
+        if not self.verdicts and self.unread:
+            self.lines = ["nothing was judged, because of the mistakes above; earlier reports are kept"]
+            return False
+        from ..core.case import Options
+        from ..core.errors import LinverifyError
+        from ..run import conclude
+
+        options = Options(self.settings.seed, self.settings.profile, self.settings.reports)
+        try:
+            result = conclude(self.books(), options, self.config.rootpath)
+        except (LinverifyError, OSError) as error:
+            self.lines = [f"the reports could not be written: {error}"]
+            return False
+        self.lines = [*(f"{name} was not judged: it could not be read" for name in self.unread), *result.lines]
+        return result.passed and not self.unread
+
+    def books(self) -> Books:
+        """What `run.conclude` needs: verdicts, the plan, the points, the sources, and whether something is left out."""
+        from ..core.errors import RecordError
+        from ..report import record
+        from ..run import Books
+
+        ledger, verdicts = self.ledger, {}
+        for name, text in self.verdicts.items():
+            try:
+                verdicts[name] = record.loads(text)
+            except RecordError as error:
+                self.why[name] = f"its verdict arrived broken: {error}"
+        missing = [name for name in ledger.selected if name not in verdicts]
+        partial = bool(
+            self.unread
+            or set(ledger.found) - set(ledger.read)
+            or set(ledger.offered) - set(ledger.selected)
+            or set(missing) - set(ledger.skipped)
+        )
+        return Books(
+            verdicts=tuple(verdicts.values()),
+            planned=tuple(ledger.selected),
+            points=tuple(ledger.points),
+            sources=tuple(Path(name) for name in ledger.files),
+            partial=partial,
+            threads=ledger.threads,
+            why=dict(self.why),
+        )
+
+    def _nothing(self) -> str:
+        if self.unread:
+            return "no spec could be read; earlier reports are kept"
+        if self.ledger.found:
+            return "no check of a spec was selected, so nothing was judged"
+        return "--linverify was given, but no spec (*.yaml) was found, so nothing was judged"
+
+
+def is_check(nodeid: str) -> bool:
+    """True for the id of a check, `SPEC.yaml::POINT::CHECK`."""
+    parts = nodeid.split("::")
+    return len(parts) == 3 and parts[0].endswith(".yaml")

@@ -1,0 +1,150 @@
+"""The one road from specs to a verdict and a report, without pytest: specs -> cases -> verdicts -> record -> files.
+
+The pytest plugin makes its verdicts one by one and joins at `conclude`, so both ways write the same record.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Iterable, Mapping, Sequence
+from dataclasses import dataclass
+from pathlib import Path
+from types import MappingProxyType
+from typing import Any
+
+from .checks.judge import judge
+from .core.case import Case, CheckAsk, Options
+from .core.errors import LinverifyError, Problem, SpecError
+from .core.signals import nearest
+from .core.verdict import Verdict
+from .report import files, provenance, record, text
+from .spec.bind import load
+from .spec.source import is_spec
+
+
+class SelectionError(LinverifyError):
+    """A path, an operating point or a check that was named on the command line is not there."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Books:
+    """What a run was to do and what came of it.
+
+    planned: ids of the checks to be run; one without a verdict becomes a NOT RUN row. points: `record.describe` of
+    each operating point; sources: files that the specs were read from; partial: something of the given specs was
+    left out; threads: how linear algebra came to one thread; why: reasons, by id, for verdicts that are missing.
+    """
+
+    verdicts: tuple[Verdict, ...]
+    planned: tuple[str, ...]
+    points: tuple[Mapping[str, Any], ...]
+    sources: tuple[Path, ...]
+    partial: bool
+    threads: str = ""
+    why: Mapping[str, str] = MappingProxyType({})
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Concluded:
+    """The record, the files written, the lines for the terminal, and whether the build may go on."""
+
+    record: Mapping[str, Any]
+    written: tuple[Path, ...]
+    lines: tuple[str, ...]
+    passed: bool
+
+
+def conclude(books: Books, options: Options, root: Path) -> Concluded:
+    """Make the record, write the reports, and say how the run went. Raises RecordError and OSError."""
+    made = record.build(
+        books.verdicts,
+        planned=books.planned,
+        points=books.points,
+        provenance=provenance.gathered(books.sources, root, options, threads=books.threads),
+        partial=books.partial,
+        profile=options.profile,
+        root=root,
+    )
+    verdicts = record.verdicts_of(made)
+    written = tuple(files.write(made, options.reports)) if options.reports else ()
+    return Concluded(made, written, (), not any(verdict.status.breaks_build for verdict in verdicts))
+
+
+def find(paths: Sequence[Path]) -> tuple[Path, ...]:
+    """The specs under files and folders, each once, in a fixed order. Raises SelectionError."""
+    found: dict[Path, None] = {}
+    for path in paths:
+        if not path.exists():
+            raise SelectionError(f"{path}: no such file or folder")
+        if path.is_file() and not is_spec(path):
+            raise SelectionError(f"{path}: is no spec; specs are .yaml files other than defaults.yaml")
+        below = sorted(path.rglob("*.yaml")) if path.is_dir() else [path]
+        found.update((one.resolve(), None) for one in below if is_spec(one))
+    if not found:
+        raise SelectionError(f"no spec under {', '.join(map(str, paths))}")
+    return tuple(found)
+
+
+def cases_of(specs: Iterable[Path], root: Path) -> tuple[Case, ...]:
+    """All operating points of all specs. Raises SpecError with the mistakes of all of them."""
+    cases: list[Case] = []
+    problems: list[Problem] = []
+    for spec in specs:
+        try:
+            cases += load(spec, root)
+        except SpecError as error:
+            problems += error.problems
+    if problems:
+        raise SpecError(problems)
+    return tuple(cases)
+
+
+def check_paths(
+    paths: Sequence[Path], options: Options, root: Path, *, threads: str = "", told: Callable[[Verdict], None] | None = None
+) -> Concluded:
+    """Judge everything that the specs under `paths` ask for, and write the reports.
+
+    told: called with each verdict as it is found. Raises SelectionError, SpecError, RecordError and OSError; then
+    nothing is written.
+    """
+    cases = cases_of(find(paths), root)
+    verdicts = []
+    for case in cases:
+        for ask in case.checks:
+            verdicts.append(judge(case, ask, options))
+            if told:
+                told(verdicts[-1])
+    books = Books(
+        tuple(verdicts),
+        tuple(verdict.id for verdict in verdicts),
+        tuple(record.describe(case) for case in cases),
+        tuple(dict.fromkeys(path for case in cases for path in case.files)),
+        partial=False,
+        threads=threads,
+    )
+    return conclude(books, options, root)
+
+
+def select(item: str, root: Path) -> tuple[Case, CheckAsk]:
+    """The check with the id `SPEC::POINT::CHECK`. Raises SelectionError, with the nearest right word, and SpecError."""
+    parts = item.split("::")
+    if len(parts) != 3:
+        raise SelectionError(f"a check is named SPEC::POINT::CHECK, got {item!r}")
+    case = point(Path(parts[0]), parts[1], root)
+    for ask in case.checks:
+        if ask.name == parts[2]:
+            return case, ask
+    raise SelectionError(_missing("check", parts[2], [ask.name for ask in case.checks], f"{parts[0]}::{parts[1]}"))
+
+
+def point(spec: Path, name: str, root: Path) -> Case:
+    """One operating point of a spec. Raises SelectionError and SpecError."""
+    cases = cases_of(find([spec if spec.is_absolute() else root / spec]), root)
+    for case in cases:
+        if case.point == name:
+            return case
+    raise SelectionError(_missing("operating point", name, [case.point for case in cases], str(spec)))
+
+
+def _missing(kind: str, name: str, names: Sequence[str], where: str) -> str:
+    near = nearest(name, names)
+    return f"{where} has no {kind} {name!r}; " + (f"did you mean {near!r}?" if near else f"it has {', '.join(names)}")

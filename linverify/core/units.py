@@ -169,11 +169,13 @@ def _parsed(unit: str) -> Any:
 
 
 def _full_name(name: str) -> str:
-    """`km` is kilometer; an empty string for what is no unit. Only words may have a plural: `ds` is no day."""
-    for prefix, unit, plural in _registry().parse_unit_name(name):
-        if not plural or len(name) > _SYMBOL:
-            return f"{prefix}{unit}"
-    return ""
+    """`km` is kilometer; an empty string for what is no unit. Only words may have a plural: `kgs` is refused."""
+    readings = _registry().parse_unit_name(name)
+    if not readings:
+        return ""
+    full = "".join(readings[0][:2])
+    plural = name.endswith("s") and any("".join(other[:2]) == full for other in _registry().parse_unit_name(name[:-1]))
+    return "" if plural and len(name) <= _SYMBOL else full
 
 
 def _hint(name: str) -> str:

@@ -1,0 +1,238 @@
+"""The language as data: every word, what may stand behind it, and what it means.
+
+The reader, its messages, the JSON Schema for editors and the reference table all come from here. A word whose check
+is not built yet stands here too (`available` is false), so that it is refused by name instead of being unknown.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Iterator
+from dataclasses import dataclass
+from enum import Enum
+
+FORMAT = 1
+
+
+class Kind(Enum):
+    """What may stand behind a word; the value is how messages and the reference table call it."""
+
+    FORMAT = "the format number"
+    TEXT = "text"
+    PLANT = "FILE:OBJECT or package.module:OBJECT"
+    QUANTITY = "a number, alone or with its unit"
+    NUMBER = "a number without a unit"
+    FRACTION = "per cent or a fraction"
+    COUNT = "a whole number"
+    CHOICE = "one of a few words"
+    NAMES = "a list of names"
+    CHOICES = "a list of some of a few words"
+    PATTERNS = "a list of patterns"
+    FILES = "a file pattern, or a list of them"
+    LIMITS = "[low, high], or a group of min, max, range, rate"
+    RANGE = "[low, high]"
+    AMPLITUDE = "a size, [low, high], or {until: {signal: size}}"
+    EXPECT = "V +- T"
+    RATE = "a number, alone or with its unit, or free"
+    RELATIVE = "per cent"
+    WIDER_OF = "[size, per cent]"
+    SWEPT = "a list of values, or {from: , to: , count: }"
+    SWEEP = "a group of name: values, or {table: FILE}"
+    DRIVES = "one set of drives, or several by name"
+    BANDS = "a group of signal: error band"
+    BLOCK = "a group of words"
+    NAMED = "a group of name: value"
+    NONE = "nothing in this version"
+
+
+@dataclass(frozen=True, slots=True)
+class Row:
+    """One word. of: the words within (BLOCK), or what stands behind each name (NAMED: one row with the word `*`)."""
+
+    word: str
+    kind: Kind
+    meaning: str
+    of: tuple[Row, ...] = ()
+    dimension: str = ""  # of a quantity: time, "the signal's", ...; "" where it has none
+    default: str = ""
+    required: bool = False
+    shared: bool = True  # may stand in defaults.yaml
+    choices: tuple[str, ...] = ()
+    available: bool = True
+
+
+def each(kind: Kind, meaning: str = "", of: tuple[Row, ...] = (), dimension: str = "") -> tuple[Row, ...]:
+    """What stands behind every name of a NAMED word."""
+    return (Row("*", kind, meaning, of, dimension),)
+
+
+def later(word: str, meaning: str) -> Row:
+    """A word of the language whose check this version does not have."""
+    return Row(word, Kind.NONE, meaning, available=False)
+
+
+SIGNAL = "the signal's"
+SHAPES = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
+
+LIMIT_WORDS = (
+    Row("range", Kind.RANGE, "both limits", dimension=SIGNAL),
+    Row("min", Kind.QUANTITY, "lower limit", dimension=SIGNAL),
+    Row("max", Kind.QUANTITY, "upper limit", dimension=SIGNAL),
+    Row("rate", Kind.QUANTITY, "largest change per time", dimension="the signal's per time"),
+)
+
+DISCERNS = (
+    Row("gain", Kind.FRACTION, "a gain error of this size must show"),
+    Row("delay", Kind.QUANTITY, "a delay of this size must show", dimension="time"),
+)
+
+DRIVE_WORDS = (
+    Row("horizon", Kind.QUANTITY, "length of a drive", dimension="time", required=True),
+    Row("every", Kind.QUANTITY, "inputs change at these instants only", dimension="time", required=True),
+    Row("course", Kind.CHOICE, "between the instants", default="held", choices=("held", "straight")),
+    Row("amplitude", Kind.NAMED, "how far each input moves about trim", each(Kind.AMPLITUDE, dimension=SIGNAL)),
+    Row("rate", Kind.NAMED, "how fast each input moves; default from the envelope",
+        each(Kind.QUANTITY, dimension="the signal's per time")),
+    Row("offsets", Kind.NAMED, "initial states off the operating point, up to this much",
+        each(Kind.QUANTITY, dimension=SIGNAL)),
+    Row("shapes", Kind.CHOICES, "menu of the random drives", default="[" + ", ".join(SHAPES) + "]", choices=SHAPES),
+    Row("count", Kind.COUNT, "how many random drives", default="300"),
+    Row("search", Kind.COUNT, "how many examples hunt the worst case", default="150"),
+    later("loop", "both models run with this loop closed"),
+    later("at", "drives add to the set point, or to what the loop moves"),
+    Row("discerns", Kind.BLOCK, "what these drives must be able to show", DISCERNS),
+    Row("pinned", Kind.FILES, "drives that failed once and are replayed first"),
+)  # fmt: skip
+
+BAND_WORDS = (
+    Row("peak", Kind.QUANTITY, "largest error", dimension=SIGNAL),
+    Row("rms", Kind.QUANTITY, "root mean square of the error", dimension=SIGNAL),
+    Row("relative", Kind.RELATIVE, "largest error over the plant's own peak deviation"),
+    Row("wider_of", Kind.WIDER_OF, "the wider of a size and a share of the plant's own peak deviation",
+        dimension=SIGNAL),
+    Row("final", Kind.QUANTITY, "error at the end of completed drives", dimension=SIGNAL),
+    Row("from", Kind.QUANTITY, "nothing before this time counts", dimension="time"),
+)  # fmt: skip
+
+SHARED_POINT_WORDS = (
+    Row("hold", Kind.NAMED, "required values of states, inputs, outputs", each(Kind.QUANTITY, dimension=SIGNAL)),
+    Row("find", Kind.NAMES, "the unknowns; default: every state and input not held"),
+    Row("start", Kind.NAMED, "first guess of the search", each(Kind.QUANTITY, dimension=SIGNAL)),
+    Row("rates", Kind.NAMED, "states that drift freely or move steadily; default 0",
+        each(Kind.RATE, dimension="the signal's per time")),
+    Row("minimize", Kind.NAMED, "weights of squared distances from `start`", each(Kind.NUMBER)),
+    Row("expect", Kind.NAMED, "trimmed values that must not wander", each(Kind.EXPECT, dimension=SIGNAL)),
+    Row("parameters", Kind.NAMED, "overrides of the plant's parameters",
+        each(Kind.QUANTITY, dimension="the parameter's")),
+    Row("drives", Kind.DRIVES, "what this point overrides of the drives", DRIVE_WORDS),
+    Row("error_bands", Kind.BANDS, "what this point overrides of the error bands", BAND_WORDS),
+    later("modes", "what this point overrides of the modes"),
+    later("loops", "what this point overrides of the loops"),
+)  # fmt: skip
+
+AXIS_WORDS = (
+    Row("from", Kind.QUANTITY, "first value", dimension=SIGNAL, required=True),
+    Row("to", Kind.QUANTITY, "last value", dimension=SIGNAL, required=True),
+    Row("count", Kind.COUNT, "how many values", required=True),
+)
+
+POINT_WORDS = (
+    *SHARED_POINT_WORDS,
+    Row("sweep", Kind.SWEEP, "one operating point for each combination of values",
+        (Row("*", Kind.SWEPT, "", AXIS_WORDS, SIGNAL), Row("table", Kind.TEXT, "a CSV file: one row a point"))),
+    Row("skip", Kind.PATTERNS, "cells known to have no trim; reported as skipped"),
+)  # fmt: skip
+
+LOCAL_MODEL_WORDS = (
+    Row("source", Kind.CHOICE, "where local models come from", default="derive", choices=("derive",)),
+    later("keep", "states, inputs, outputs of a reduced model"),
+    later("others", "what is left out is frozen or settled"),
+    later("with", "loops that are closed inside the model"),
+    later("agree", "delivered against derived"),
+)
+
+REQUIREMENT_WORDS = (
+    Row("text", Kind.TEXT, "the requirement"),
+    Row("source", Kind.TEXT, "where it stands"),
+    Row("checks", Kind.PATTERNS, "the checks that show it", required=True),
+)
+
+SPEC_WORDS = (
+    Row("linverify", Kind.FORMAT, "format number", required=True),
+    Row("title", Kind.TEXT, "one line for reports", shared=False),
+    Row("plant", Kind.PLANT, "the plant", required=True),
+    Row("parameters", Kind.NAMED, "overrides of the plant's own defaults",
+        each(Kind.QUANTITY, dimension="the parameter's")),
+    Row("time", Kind.QUANTITY, "the time of trim, for a plant that depends on it", dimension="time"),
+    later("wraps", "angles compared modulo a turn"),
+    later("delays", "dead time outside the plant function"),
+    Row("envelope", Kind.NAMED, "where the plant may be", each(Kind.LIMITS, "", LIMIT_WORDS, SIGNAL)),
+    Row("exits", Kind.BLOCK, "what leaving the envelope means", (
+        Row("complete", Kind.FRACTION, "share of the random drives that must run to the end", default="90 %"),
+        Row("mismatch", Kind.CHOICE, "an exit that the local model did not predict", default="fail",
+            choices=("fail", "report")))),
+    Row("trims", Kind.BLOCK, "how exact an equilibrium is", (
+        Row("accuracy", Kind.NUMBER, "each rate, in nominal sizes of its state a time unit", default="1e-8"),)),
+    Row("every_point", Kind.BLOCK, "what all operating points share", SHARED_POINT_WORDS),
+    Row("operating_points", Kind.NAMED, "the operating points", each(Kind.BLOCK, "", POINT_WORDS), required=True,
+        shared=False),
+    Row("local_models", Kind.BLOCK, "what is being verified", LOCAL_MODEL_WORDS),
+    Row("differentiable", Kind.BLOCK, "what a kink is", (
+        Row("slope_gap", Kind.FRACTION, "largest gap of one-sided slopes", default="5 %"),
+        Row("side", Kind.NAMED, "inputs that can only move one way",
+            (Row("*", Kind.CHOICE, "", choices=("up", "down")),)))),
+    Row("drives", Kind.DRIVES, "the input sequences that both models are driven with", DRIVE_WORDS),
+    Row("error_bands", Kind.BANDS, "how far plant and local model may differ", BAND_WORDS),
+    later("frequency_bands", "response to small sines against the local model"),
+    later("modes", "limits on the local model's poles"),
+    later("actuators", "lags and limits in series with plant inputs"),
+    later("loops", "controllers closed around each local model"),
+    later("variations", "parameters that are not known exactly"),
+    later("reach", "how far the drives can be scaled"),
+    later("handover", "between neighbouring operating points"),
+    later("coverage", "share of the envelope that is verified"),
+    later("budget", "real-time use"),
+    Row("requirements", Kind.NAMED, "traceability", each(Kind.BLOCK, "", REQUIREMENT_WORDS), shared=False),
+    later("accepted", "known shortfalls that are signed for"),
+)  # fmt: skip
+
+# checks of the language, and whether this version has them
+CHECKS = {
+    "trims": True,
+    "differentiable": True,
+    "agrees": False,
+    "follows": True,
+    "responds": False,
+    "modes": False,
+    "margins": False,
+    "reach": False,
+    "handover": False,
+    "coverage": False,
+    "budget": False,
+}
+
+
+def row_of(rows: tuple[Row, ...], word: str) -> Row | None:
+    """The row of `word` among `rows`, or None."""
+    return next((row for row in rows if row.word == word), None)
+
+
+def default_of(rows: tuple[Row, ...], word: str) -> str:
+    """The default of `word` as it would be written; "" where it has none."""
+    row = row_of(rows, word)
+    return row.default if row else ""
+
+
+def reference(rows: tuple[Row, ...] = SPEC_WORDS, above: str = "") -> Iterator[tuple[str, str, str, str]]:
+    """Lines of the reference table: dotted word, what stands behind it, default, meaning."""
+    for row in rows:
+        path = f"{above}{row.word.replace('*', 'NAME')}"
+        behind = ", ".join(row.choices) if row.kind is Kind.CHOICE else row.kind.value
+        if row.word != "*":
+            yield path, behind, row.default or ("required" if row.required else ""), row.meaning
+        inner = row.of[0].of if row.kind is Kind.NAMED else row.of
+        between = ".NAME." if row.kind in (Kind.NAMED, Kind.BANDS) else "."
+        if above.startswith("operating_points.") and row in SHARED_POINT_WORDS:
+            continue
+        if above and row.kind in (Kind.DRIVES, Kind.BANDS):
+            continue
+        yield from reference(inner, f"{path}{between}")

@@ -6,19 +6,22 @@ The pytest plugin makes its verdicts one by one and joins at `conclude`, so both
 from __future__ import annotations
 
 from collections.abc import Callable, Iterable, Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 from pathlib import Path
 from types import MappingProxyType
 from typing import Any
 
+from . import provenance
 from .checks.judge import judge
 from .core.case import Case, CheckAsk, Options
 from .core.errors import LinverifyError, Problem, SpecError
 from .core.signals import nearest
-from .core.verdict import Verdict
-from .report import files, provenance, record, text
+from .core.verdict import Status, Verdict
+from .report import files, record, tables, text
 from .spec.bind import load
 from .spec.source import is_spec
+
+EVIDENCE = "evidence"  # folder under the reports folder
 
 
 class SelectionError(LinverifyError):
@@ -40,7 +43,7 @@ class Books:
     sources: tuple[Path, ...]
     partial: bool
     threads: str = ""
-    why: Mapping[str, str] = MappingProxyType({})
+    why: Mapping[str, str] = field(default_factory=lambda: MappingProxyType({}))
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -54,7 +57,7 @@ class Concluded:
 
 
 def conclude(books: Books, options: Options, root: Path) -> Concluded:
-    """Make the record, write the reports, and say how the run went. Raises RecordError and OSError."""
+    """Make the record, write the reports, and say how the run went. Raises RecordError."""
     made = record.build(
         books.verdicts,
         planned=books.planned,
@@ -64,9 +67,37 @@ def conclude(books: Books, options: Options, root: Path) -> Concluded:
         profile=options.profile,
         root=root,
     )
+    for item in made["body"]["items"]:
+        if item["status"] == Status.NOT_RUN:
+            item["reason"] = books.why.get(item["id"], item["reason"])
     verdicts = record.verdicts_of(made)
-    written = tuple(files.write(made, options.reports)) if options.reports else ()
-    return Concluded(made, written, (), not any(verdict.status.breaks_build for verdict in verdicts))
+    written = files.write(made, options.reports) if options.reports else ()
+    lines = _lines(verdicts, written, options, partial=books.partial)
+    return Concluded(made, written, lines, not any(verdict.status.breaks_build for verdict in verdicts))
+
+
+def _lines(
+    verdicts: Sequence[Verdict], written: Sequence[Path], options: Options, *, partial: bool
+) -> tuple[str, ...]:
+    """The summary of a run, with where the reports are and the next step."""
+    report = next((as_typed(path) for path in written if path.suffix == ".md"), "")
+    lines = text.summary(verdicts, profile=options.profile, partial=partial, report=report)
+    broken = sorted((verdict for verdict in verdicts if verdict.status.breaks_build), key=tables.severity)
+    if options.reports:
+        steps = (text.next_steps(verdict, evidence_folder(options.reports)) for verdict in broken)
+        lines += next((["next step:", *step] for step in steps if step), [])
+    return tuple(lines)
+
+
+def as_typed(path: Path) -> str:
+    """A path as the reader would type it: relative to where they are, if it is below."""
+    here = Path.cwd()
+    return path.relative_to(here).as_posix() if path.is_relative_to(here) else path.as_posix()
+
+
+def evidence_folder(reports: Path) -> str:
+    """Where saved drives are, as the reader would type it."""
+    return as_typed(reports / EVIDENCE)
 
 
 def find(paths: Sequence[Path]) -> tuple[Path, ...]:
@@ -99,7 +130,12 @@ def cases_of(specs: Iterable[Path], root: Path) -> tuple[Case, ...]:
 
 
 def check_paths(
-    paths: Sequence[Path], options: Options, root: Path, *, threads: str = "", told: Callable[[Verdict], None] | None = None
+    paths: Sequence[Path],
+    options: Options,
+    root: Path,
+    *,
+    threads: str = "",
+    told: Callable[[Verdict], None] | None = None,
 ) -> Concluded:
     """Judge everything that the specs under `paths` ask for, and write the reports.
 

@@ -25,7 +25,13 @@ _SETTERS = (  # the builds of the library prefix and suffix the same two names i
     "openblas_set_num_threads",
     "MKL_Set_Num_Threads",
 )
-_GETTERS = tuple(name.replace("_set_", "_get_") for name in _SETTERS[:-1]) + ("MKL_Get_Max_Threads",)
+_GETTERS = (
+    "scipy_openblas_get_num_threads64_",
+    "scipy_openblas_get_num_threads",
+    "openblas_get_num_threads64_",
+    "openblas_get_num_threads",
+    "MKL_Get_Max_Threads",
+)
 
 
 def one_thread() -> str:
@@ -47,6 +53,12 @@ def threads() -> int | None:
     found = [_call(library, _GETTERS) for library in _libraries()]
     numbers = [number for number in found if isinstance(number, int) and number is not True]
     return max(numbers, default=None)
+
+
+def told(how: str) -> str:
+    """What a record says: the number of threads that are really used, and how it came about."""
+    number = threads()
+    return f"{'unknown' if number is None else number} ({how})"
 
 
 def _libraries() -> Iterator[ctypes.CDLL]:

@@ -29,10 +29,12 @@ class Ledger:
     """Not frozen: it is written while specs are collected. Paths and ids are texts, so that all of it can travel.
 
     found: specs met; read: specs read without mistake; points: what the record says of every operating point that is
-    on offer; files: what the specs were read from; selected: ids of the checks that are to be run.
+    on offer; files: what the specs were read from; selected: ids of the checks that are to be run. how: how this
+    process came to one thread of linear algebra; theirs: what other processes say of their threads.
     """
 
-    threads: str = ""
+    how: str = ""
+    theirs: list[str] = field(default_factory=list)
     found: list[str] = field(default_factory=list)
     read: list[str] = field(default_factory=list)
     points: list[Mapping[str, Any]] = field(default_factory=list)
@@ -62,16 +64,22 @@ class Ledger:
         other = json.loads(text)
         known = {(point["spec"], point["point"]) for point in self.points}
         self.points.extend(point for point in other["points"] if (point["spec"], point["point"]) not in known)
-        for name in ("found", "read", "files", "selected"):
+        for name in ("theirs", "found", "read", "files", "selected"):
             mine: list[str] = getattr(self, name)
             seen = set(mine)
             mine.extend(entry for entry in other[name] if entry not in seen)
-        self.threads = other["threads"] if self.threads in ("", other["threads"]) else "differs between processes"
 
     def dumps(self) -> str:
         """All of it as one JSON string: built-in types are what a channel between processes is sure to carry."""
-        names = ("threads", "found", "read", "points", "files", "selected")
-        return json.dumps({name: getattr(self, name) for name in names})
+        names = ("found", "read", "points", "files", "selected")
+        return json.dumps({**{name: getattr(self, name) for name in names}, "theirs": [self.threads]})
+
+    @property
+    def threads(self) -> str:
+        """Threads of linear algebra where the checks ran: in the workers, or here."""
+        from ..core.threads import told
+
+        return "; ".join(sorted(self.theirs)) or told(self.how)
 
     def pytest_collection_finish(self, session: pytest.Session) -> None:
         """What is to be run, after every deselection."""

@@ -99,7 +99,7 @@ class CheckItem(pytest.Function):
     def repr_failure(self, excinfo: pytest.ExceptionInfo[BaseException], style: Any = None) -> Any:
         """The report's text for a verdict; a traceback for anything else, which is a defect or a broken fixture."""
         if isinstance(excinfo.value, NotShown):
-            return text.verdict_text(excinfo.value.verdict)
+            return text.failure(excinfo.value.verdict)
         return super().repr_failure(excinfo, style)
 
     def reportinfo(self) -> tuple[os.PathLike[str] | str, int | None, str]:

@@ -44,7 +44,7 @@ def pytest_configure(config: pytest.Config) -> None:
     from .progress import Progress
 
     config.stash[SETTINGS] = Settings.of(config)
-    ledger = config.stash[LEDGER] = Ledger(threads=config.stash.get(THREADS_SET, "unknown"))
+    ledger = config.stash[LEDGER] = Ledger(how=config.stash.get(THREADS_SET, "unknown"))
     config.pluginmanager.register(ledger, "linverify-ledger")
     if hasattr(config, "workerinput"):
         return

@@ -39,12 +39,12 @@ _SEVERITY = (Status.PASS, Status.SKIPPED, Status.NOT_RUN, Status.UNDECIDED, Stat
 def describe(case: Case) -> dict[str, Any]:
     """What the record says of an operating point beside its verdicts, as plain data that may travel as JSON."""
     plant = case.plant
-    units = {**plant.states, **plant.inputs, **(plant.outputs or {})}
+    kinds = {"states": plant.states, "inputs": plant.inputs, "outputs": plant.outputs or {}}
     return {
         "spec": case.spec,
         "point": case.point,
         "title": case.title,
-        "units": plain(units),
+        "signals": {kind: [[name, unit] for name, unit in units.items()] for kind, units in kinds.items()},
         "time_unit": plant.time_unit,
         "step": plain(plant.step),
         "checks": [ask.name for ask in case.checks],
@@ -67,16 +67,17 @@ def build(
     partial: bool = False,
     profile: str = "full",
     root: Path | None = None,
+    why: Mapping[str, str] | None = None,
 ) -> dict[str, Any]:
     """The record of one run, as plain data {format, body, provenance}.
 
     planned: ids of all items that were started; one without a verdict becomes a "not run" item. points: `describe` of
     each operating point. partial: items were left out on purpose. root: folder whose absolute path is cut out of
-    every text of the body. Raises RecordError.
+    every text of the body. why: reasons, by id, for verdicts that are missing. Raises RecordError.
     """
     described = {(point["spec"], point["point"]): dict(point) for point in points}
     found = _one_each(verdicts)
-    for item in (*_missing(planned, found, described), *_skips(described, partial)):
+    for item in (*_missing(planned, found, described, why or {}), *_skips(described, partial)):
         found.setdefault(item.id, item)
     items = [to_data(found[name]) for name in sorted(found, key=human)]
     seen = {(item["spec"], item["point"]) for item in items}
@@ -89,7 +90,8 @@ def build(
             plain(described[key]) for key in sorted(described, key=lambda key: human("::".join(key))) if key in seen
         ],
     }
-    return {"format": FORMAT, "body": _without(body, root), "provenance": plain(provenance or {})}
+    record = {"format": FORMAT, "body": _without(body, root), "provenance": plain(provenance or {})}
+    return parse(canonical(record))  # what is rendered at once and what is rendered from the file are the same
 
 
 def _one_each(verdicts: Iterable[Verdict]) -> dict[str, Verdict]:
@@ -102,9 +104,13 @@ def _one_each(verdicts: Iterable[Verdict]) -> dict[str, Verdict]:
 
 
 def _missing(
-    planned: Iterable[str], found: Mapping[str, Verdict], points: Mapping[tuple[str, str], Mapping[str, Any]]
+    planned: Iterable[str],
+    found: Mapping[str, Verdict],
+    points: Mapping[tuple[str, str], Mapping[str, Any]],
+    why: Mapping[str, str],
 ) -> list[Verdict]:
-    return [_blank(name, points, Status.NOT_RUN, _NOT_RUN) for name in planned if name not in found]
+    missing = [name for name in planned if name not in found]
+    return [_blank(name, points, Status.NOT_RUN, why.get(name, _NOT_RUN)) for name in missing]
 
 
 def _skips(points: Mapping[tuple[str, str], Mapping[str, Any]], partial: bool) -> list[Verdict]:

@@ -7,7 +7,7 @@ import textwrap
 from collections.abc import Iterable, Sequence
 from pathlib import PurePath
 
-from ..core.verdict import Figure, Sense, Status, Verdict
+from ..core.verdict import Figure, Sense, Verdict
 from . import quantity, tables
 from .trace import tally
 
@@ -22,7 +22,7 @@ QUICK = "Quick profile: not for acceptance."
 PARTIAL = "Partial run: items were left out on purpose; this is not a full report."
 
 
-def verdict_text(verdict: Verdict, *, evidence: str = "reports/evidence") -> str:
+def failure(verdict: Verdict, *, evidence: str = "reports/evidence") -> str:
     """What one check found, for the terminal: id, place, requirement, figures, drive, notes, next step.
 
     evidence: folder of the saved drives as the reader would type it.

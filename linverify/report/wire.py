@@ -36,23 +36,26 @@ def rounded(value: float) -> float:
     return float(f"{value:.{DIGITS}g}") + 0.0 if math.isfinite(value) else value
 
 
-def plain(value: Any) -> Any:
+def plain(value: Any, *, exact: bool = False) -> Any:
     """Plain JSON data of `value`: the one place where numpy's numbers and arrays become Python's.
 
-    Raises RecordError for anything else than None, truth values, numbers, texts, lists and mappings with text keys.
+    exact: floats keep every digit, as drives need. Raises RecordError for anything else than None, truth values,
+    numbers, texts, lists and mappings with text keys.
     """
     if isinstance(value, (np.generic, np.ndarray)):
         value = value.tolist()
     if value is None or isinstance(value, (bool, int)):
         return value
     if isinstance(value, float):
-        return rounded(value) if math.isfinite(value) else {"$float": str(value)}
+        if not math.isfinite(value):
+            return {"$float": str(float(value))}
+        return float(value) if exact else rounded(value)
     if isinstance(value, str):
         return _ADDRESS.sub("0x...", str(value))  # addresses differ from process to process
     if isinstance(value, (list, tuple)):
-        return [plain(item) for item in value]
+        return [plain(item, exact=exact) for item in value]
     if isinstance(value, Mapping):
-        return {_key(key): plain(item) for key, item in value.items()}
+        return {_key(key): plain(item, exact=exact) for key, item in value.items()}
     raise RecordError(f"a verdict cannot hold a {type(value).__name__}: {value!r}")
 
 

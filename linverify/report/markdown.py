@@ -1,0 +1,151 @@
+"""The compliance report as Markdown, rendered from the run record and from nothing else."""
+
+from __future__ import annotations
+
+from collections.abc import Iterator, Mapping, Sequence
+from typing import Any
+
+from ..core.verdict import Sense, Status, Verdict
+from . import details, quantity, tables, text, trace
+from .record import verdicts_of
+from .tables import escaped, grid
+
+_READING = (
+    "Headroom is 1 minus the used share of a limit; a dash stands where a share has no meaning. undecided: the check "
+    "could not be tested, and fails the build. Every quoted figure was computed again on a finer grid; the difference "
+    "is evidence of its accuracy, not proof.",
+    "Bounds from random drives are one-sided Clopper-Pearson bounds. They concern the declared sampler, not operation, "
+    "and are void if the model was tuned on the drives of this seed. Searched, pinned and regular drives never enter "
+    "them.",
+)
+
+
+def page(run: Mapping[str, Any]) -> str:
+    """The whole report. run: a record as `record.build` or `record.read` returns it."""
+    body, verdicts = run["body"], verdicts_of(run)
+    points = {(point["spec"], point["point"]): point for point in body["points"]}
+    parts = [
+        *_head(body, verdicts),
+        *_findings(verdicts),
+        *_requirements(body["points"], verdicts),
+        "## Compliance",
+        grid(tables.COMPLIANCE, [row.cells for row in tables.compliance(verdicts)], right=("worst", "headroom")),
+        *_operating_points(points, verdicts),
+        *_effective_specs(body["points"]),
+        *_provenance(run["provenance"]),
+    ]
+    return "\n\n".join(parts) + "\n"
+
+
+def _head(body: Mapping[str, Any], verdicts: Sequence[Verdict]) -> Iterator[str]:
+    yield "# Compliance report"
+    if body["profile"] != "full":
+        yield f"**{text.QUICK}**"
+    if body["partial"]:
+        yield f"**{text.PARTIAL}**"
+    yield text.CAUTION
+    yield "## Summary"
+    titles = {point["spec"]: point["title"] for point in body["points"]}
+    rows = []
+    for spec in dict.fromkeys(verdict.spec for verdict in verdicts):
+        of_spec = [verdict for verdict in verdicts if verdict.spec == spec]
+        count = len({verdict.point for verdict in of_spec})
+        rows.append((spec, titles.get(spec, "") or quantity.ABSENT, str(count), trace.tally(of_spec)))
+    yield grid(("spec", "title", "operating points", "checks"), rows, right=("operating points",))
+    yield f"{len(verdicts)} checks: {trace.tally(verdicts)}." if verdicts else "No check was run."
+    yield from _READING
+
+
+def _findings(verdicts: Sequence[Verdict]) -> Iterator[str]:
+    yield "## What does not hold"
+    bad = sorted(
+        (verdict for verdict in verdicts if verdict.status.breaks_build),
+        key=lambda verdict: (tables.severity(verdict), tables.human(verdict.id)),
+    )
+    if not bad:
+        yield "Nothing."
+    for verdict in bad:
+        yield f"### {escaped(verdict.id)}: {verdict.status.value}"
+        yield _items(_finding(verdict))
+
+
+def _finding(verdict: Verdict) -> Iterator[str]:
+    yield f"asked at {verdict.place}"
+    if verdict.reason:
+        yield verdict.reason
+    for row in tables.rows_of(verdict):
+        if row.figure and row.status is not Status.PASS:
+            yield f"{quantity.subject(row.figure)} {quantity.limit(row.figure)}: found {text.found(row.figure)}"
+    for item in verdict.evidence:
+        yield f"{item.role} drive {item.drive}: {item.text}"
+
+
+def _items(lines: Iterator[str] | Sequence[str]) -> str:
+    return "\n".join(f"- {escaped(line)}" for line in lines)
+
+
+def _requirements(points: Sequence[Mapping[str, Any]], verdicts: Sequence[Verdict]) -> Iterator[str]:
+    traced = trace.requirements(points, verdicts)
+    yield "## Requirements"
+    if not traced:
+        yield "The specs name none."
+        return
+    yield grid(trace.REQUIREMENTS, trace.summary_rows(traced))
+    yield "## Requirement trace"
+    yield grid(trace.TRACE, trace.trace_rows(traced), right=("worst", "headroom"))
+
+
+def _operating_points(
+    points: Mapping[tuple[str, str], Mapping[str, Any]], verdicts: Sequence[Verdict]
+) -> Iterator[str]:
+    yield "## Operating points"
+    for key in dict.fromkeys((verdict.spec, verdict.point) for verdict in verdicts):
+        yield f"### {escaped('::'.join(key))}"
+        point = points.get(key, {})
+        for verdict in verdicts:
+            if (verdict.spec, verdict.point) == key:
+                yield from _check(verdict, point)
+
+
+def _check(verdict: Verdict, point: Mapping[str, Any]) -> Iterator[str]:
+    yield f"#### {escaped(verdict.check)}: {verdict.status.value}"
+    if verdict.reason and verdict.status.breaks_build:
+        yield escaped(verdict.reason)
+    elif verdict.reason:
+        yield f"Reason: {escaped(verdict.reason)}"
+    told = [text.figure_line(figure) for figure in verdict.figures if figure.sense is Sense.NONE]
+    if lines := [*verdict.notes, *told]:
+        yield _items(lines)
+    yield from details.blocks(verdict.details, point.get("signals", {}), str(point.get("time_unit", "")))
+
+
+def _effective_specs(points: Sequence[Mapping[str, Any]]) -> Iterator[str]:
+    yield "## Effective specs"
+    for spec in dict.fromkeys(point["spec"] for point in points):
+        yield f"### {escaped(spec)}"
+        of_spec = [point for point in points if point["spec"] == spec]
+        settings = {point["point"]: [_setting(item) for item in point["settings"]] for point in of_spec}
+        shared = [row for row in next(iter(settings.values())) if all(row in rows for rows in settings.values())]
+        rows = [("all", *row) for row in shared]
+        rows += [(name, *row) for name, own in settings.items() for row in own if row not in shared]
+        yield grid(("operating point", "word", "value", "from"), rows)
+
+
+def _setting(item: Mapping[str, str]) -> tuple[str, str, str]:
+    return item["word"], item["text"], item["origin"]
+
+
+def _provenance(provenance: Mapping[str, Any]) -> Iterator[str]:
+    yield "## Provenance"
+    yield grid(("what", "value"), _flat(provenance))
+
+
+def _flat(data: Mapping[str, Any], prefix: str = "") -> list[tuple[str, str]]:
+    rows: list[tuple[str, str]] = []
+    for word, value in sorted(data.items(), key=lambda item: tables.human(item[0])):
+        name = f"{prefix}{word}" if prefix else details.label(word)
+        if isinstance(value, Mapping):
+            rows += _flat(value, f"{name}: ")
+        else:
+            rows.append((name, details.cell(value)))
+    return rows

@@ -1,0 +1,128 @@
+"""Drive plant and local model alike, and tell where the comparison ends.
+
+`run` takes many drives in batches of fixed widths; its figures depend, within the tolerance, on the companions of a
+drive, since a batch shares its steps. `run_alone` is the canonical run of one drive, the same bits whenever it is
+repeated on the same machine: every figure that is quoted comes from it. Widths are fixed because a matrix product rounds
+differently at another width.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+
+import numpy as np
+
+from ..core.drive import Drive
+from ..core.model import Array
+from ..core.outcome import Outcome
+from . import exits
+from .courses import Courses, courses, grid, linear, linear_signals, settled_ends
+from .plant_side import Followed, follow
+from .rig import Exit, Fidelity, Rig, Runs
+
+__all__ = ["Exit", "Fidelity", "Rig", "Runs", "nodes_of", "run", "run_alone", "watched"]
+
+WIDTHS = (8, 64, 256)  # below 64 columns a vectorised plant costs what one costs; above 256 little is gained
+ALONE = 8  # canonical runs: wide enough for the plant's batched path, narrow enough to cost what one column costs
+SINGLE = 16  # plants without a batched path share steps in small groups, since the worst column slows all
+
+
+def run(rig: Rig, drives: Sequence[Drive], fidelity: Fidelity) -> Runs:
+    """Simulate `drives`, which share every, intervals and course, on plant and local model.
+
+    Raises ValueError where they do not, or name signals that the plant does not have. Figures may differ within the
+    tolerance from those of `run_alone`.
+    """
+    stacked = courses(drives, rig.plant.inputs, rig.plant.states)
+    widest = WIDTHS[-1] if rig.plant.batched else SINGLE
+    parts = [stacked.part(first, first + widest) for first in range(0, stacked.width, widest)]
+    return _joined([_simulated(rig, part, _width(rig, part.width), fidelity) for part in parts])
+
+
+def run_alone(rig: Rig, drive: Drive, fidelity: Fidelity) -> Runs:
+    """The canonical run of one drive (N = 1): same bits for same rig, drive and fidelity, on its own or in a replay."""
+    alone = courses([drive], rig.plant.inputs, rig.plant.states)
+    return _simulated(rig, alone, ALONE if rig.plant.batched else 1, fidelity)
+
+
+def nodes_of(rig: Rig, every: float, fidelity: Fidelity) -> int:
+    """Sub-intervals an interval: what `fidelity` asks for, or the steps of a difference equation."""
+    if rig.plant.step is None:
+        return fidelity.nodes
+    steps = round(every / rig.plant.step)
+    if steps < 1 or abs(steps * rig.plant.step - every) > 1e-9 * every:
+        raise ValueError(f"drives every {every} do not fit a plant that steps every {rig.plant.step}")
+    return steps
+
+
+def watched(rig: Rig) -> tuple[str, ...]:
+    """Compared signals first, then what the envelope limits besides."""
+    known = [name for name in rig.envelope if name in rig.plant.states or name in rig.plant.outputs]
+    return (*rig.signals, *(name for name in known if name not in rig.signals))
+
+
+def _width(rig: Rig, count: int) -> int:
+    if not rig.plant.batched:
+        return count
+    return next(width for width in WIDTHS if count <= width)
+
+
+def _simulated(rig: Rig, drives: Courses, width: int, fidelity: Fidelity) -> Runs:
+    nodes = nodes_of(rig, drives.every, fidelity)
+    wide = drives.padded(width)
+    times = grid(drives.every, drives.intervals, nodes)
+    names = watched(rig)
+    with np.errstate(all="ignore"):  # what is not finite is told by outcomes
+        followed = follow(rig, wide, names, times, fidelity)
+        states = linear(rig, wide, nodes)
+        model = settled_ends(rig, linear_signals(rig, wide, states, names))
+        left, first = exits.find(rig, names, times, followed, model)
+    return _narrowed(rig, drives.width, times, followed, model, left, first)
+
+
+def _narrowed(
+    rig: Rig,
+    count: int,
+    times: Array,
+    followed: Followed,
+    model: Array,
+    left: tuple[Exit | None, ...],
+    first: exits.Indices,
+) -> Runs:
+    """Drop padding and signals that are only watched, and settle what ended each drive: the earlier event counts."""
+    q = len(rig.signals)
+    ended, last = np.full(count, times[-1, -1]), np.full(count, times.size)
+    outcomes, errors, found = [], [], []
+    for column in range(count):
+        gone, outcome, text = left[column], followed.outcomes[column], followed.errors[column]
+        if gone is not None and (outcome.done or gone.time <= followed.until[column]):
+            ended[column], last[column], outcome, text = gone.time, first[column], Outcome.DONE, ""
+        elif not outcome.done:
+            ended[column], gone = followed.until[column], None
+        outcomes.append(outcome)
+        errors.append(text)
+        found.append(gone)
+    plant = np.array(followed.deviations[:q, :, :, :count])
+    order = np.arange(times.size).reshape(times.shape)
+    plant[:, (times[:, :, np.newaxis] > ended) | (order[:, :, np.newaxis] >= last)] = np.nan
+    return Runs(
+        rig.signals, times, plant, np.array(model[:q, :, :, :count]), ended, tuple(found), tuple(outcomes),
+        tuple(errors), followed.method, followed.evaluations,
+    )  # fmt: skip
+
+
+def _joined(parts: Sequence[Runs]) -> Runs:
+    if len(parts) == 1:
+        return parts[0]
+    return Runs(
+        parts[0].signals,
+        parts[0].times,
+        np.concatenate([part.plant for part in parts], axis=3),
+        np.concatenate([part.model for part in parts], axis=3),
+        np.concatenate([part.ended for part in parts]),
+        tuple(item for part in parts for item in part.exits),
+        tuple(item for part in parts for item in part.outcomes),
+        tuple(item for part in parts for item in part.errors),
+        parts[0].method,
+        sum(part.evaluations for part in parts),
+    )

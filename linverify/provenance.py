@@ -42,7 +42,7 @@ def gathered(
     came to one thread. tolerances: what was computed with, by name. now: time of the run, default the clock's.
     """
     return {
-        "sources": hashes(sources, root),
+        "sha256": hashes(sources, root),
         "git": git_state(root, options.reports),
         "versions": versions(),
         "machine": machine()

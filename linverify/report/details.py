@@ -6,10 +6,11 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from . import quantity
-from .tables import escaped, grid
+from .tables import bullets, escaped, grid
 
 KINDS = {"states": "state", "inputs": "input", "outputs": "output"}
 _POLES = ("poles", "eigenvalues")
+_POLE_WORDS = ("frequency", "natural_frequency", "damping", "time_constant", "period")  # the order that is read
 _MATRICES = {
     "A": ("states", "states"),
     "B": ("states", "inputs"),
@@ -71,8 +72,9 @@ def _complex_joined(pole: Mapping[str, Any]) -> dict[str, Any]:
     """A pole whose real and imaginary parts are one text, in front."""
     if not (_is_number(pole.get("real")) and _is_number(pole.get("imag"))):
         return dict(pole)
+    known = {word: pole[word] for word in _POLE_WORDS if word in pole}
     rest = {word: value for word, value in pole.items() if word not in ("real", "imag")}
-    return {"eigenvalue": _complex([pole["real"], pole["imag"]]), **rest}
+    return {"eigenvalue": _complex([pole["real"], pole["imag"]]), **known, **rest}
 
 
 def _complex(pair: Sequence[float]) -> str:
@@ -109,7 +111,7 @@ def _long_blocks(name: str, value: Any, depth: int) -> list[str]:
         return [title, listing(value)]
     if _is_matrix(value):
         return [title, matrix(value, (), ())]
-    return [title, "\n".join(f"- {escaped(cell(item))}" for item in value)]
+    return [title, bullets(cell(item) for item in value)]
 
 
 def listing(values: Sequence[Mapping[str, Any]]) -> str:

@@ -66,7 +66,7 @@ def _findings(verdicts: Sequence[Verdict]) -> Iterator[str]:
         yield "Nothing."
     for verdict in bad:
         yield f"### {escaped(verdict.id)}: {verdict.status.value}"
-        yield _items(_finding(verdict))
+        yield tables.bullets(_finding(verdict))
 
 
 def _finding(verdict: Verdict) -> Iterator[str]:
@@ -78,10 +78,6 @@ def _finding(verdict: Verdict) -> Iterator[str]:
             yield f"{quantity.subject(row.figure)} {quantity.limit(row.figure)}: found {text.found(row.figure)}"
     for item in verdict.evidence:
         yield f"{item.role} drive {item.drive}: {item.text}"
-
-
-def _items(lines: Iterator[str] | Sequence[str]) -> str:
-    return "\n".join(f"- {escaped(line)}" for line in lines)
 
 
 def _requirements(points: Sequence[Mapping[str, Any]], verdicts: Sequence[Verdict]) -> Iterator[str]:
@@ -102,20 +98,19 @@ def _operating_points(
     for key in dict.fromkeys((verdict.spec, verdict.point) for verdict in verdicts):
         yield f"### {escaped('::'.join(key))}"
         point = points.get(key, {})
-        for verdict in verdicts:
-            if (verdict.spec, verdict.point) == key:
-                yield from _check(verdict, point)
+        order = {name: index for index, name in enumerate(point.get("checks", ()))}
+        own = [verdict for verdict in verdicts if (verdict.spec, verdict.point) == key]
+        for verdict in sorted(own, key=lambda verdict: order.get(verdict.check, len(order))):
+            yield from _check(verdict, point)
 
 
 def _check(verdict: Verdict, point: Mapping[str, Any]) -> Iterator[str]:
     yield f"#### {escaped(verdict.check)}: {verdict.status.value}"
-    if verdict.reason and verdict.status.breaks_build:
+    if verdict.reason:
         yield escaped(verdict.reason)
-    elif verdict.reason:
-        yield f"Reason: {escaped(verdict.reason)}"
     told = [text.figure_line(figure) for figure in verdict.figures if figure.sense is Sense.NONE]
     if lines := [*verdict.notes, *told]:
-        yield _items(lines)
+        yield tables.bullets(lines)
     yield from details.blocks(verdict.details, point.get("signals", {}), str(point.get("time_unit", "")))
 
 

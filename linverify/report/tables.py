@@ -115,8 +115,14 @@ def compliance(verdicts: Iterable[Verdict]) -> tuple[Row, ...]:
 def escaped(text: str) -> str:
     """`text` as one line of Markdown that shows as it is written, inside a table too."""
     line = " ".join(text.split())
-    line = re.sub(r"([\\`*\[\]|#~$])", r"\\\1", line).replace("<", "&lt;").replace(">", "&gt;")
+    line = re.sub(r"&(?=#?\w+;)", "&amp;", line).replace("<", "&lt;").replace(">", "&gt;")
+    line = re.sub(r"([\\`*\[\]|~$]|^#)", r"\\\1", line)
     return re.sub(r"(?<![^\W_])_|_(?![^\W_])", r"\\_", line)
+
+
+def bullets(lines: Iterable[str]) -> str:
+    """A Markdown list; a line that begins like a list of its own is shown as it is written."""
+    return "\n".join("- " + re.sub(r"^([0-9]*)([-+.)])(?= |$)", r"\1\\\2", escaped(line)) for line in lines)
 
 
 def grid(headers: Sequence[str], rows: Iterable[Sequence[str]], *, right: Sequence[str] = ()) -> str:

@@ -7,12 +7,12 @@ import textwrap
 from collections.abc import Iterable, Sequence
 from pathlib import PurePath
 
-from ..core.verdict import Figure, Sense, Verdict
+from ..core.verdict import Figure, Sense, Status, Verdict
 from . import quantity, tables
 from .trace import tally
 
 WIDTH = 118
-_LABEL = 12
+_LABEL = 14
 _SUMMARY = ("verdict", "headroom", "worst", "limit", "check")
 CAUTION = (
     "A pass is a statement about the declared model, drives and envelope. It does not replace hazard analysis, "
@@ -131,7 +131,8 @@ def summary(
 def _summary_row(verdict: Verdict) -> tuple[str, ...]:
     rows = sorted(tables.rows_of(verdict), key=lambda row: row.badness, reverse=True)
     figure = next((row.figure for row in rows if row.figure), None)
-    if figure is None or (verdict.status.breaks_build and rows[0].figure is None):
+    untested = verdict.status in (Status.UNDECIDED, Status.NOT_RUN) or rows[0].figure is None
+    if figure is None or (verdict.status.breaks_build and untested and verdict.reason):
         reason = textwrap.shorten(verdict.reason, 60, placeholder=" ...") or quantity.ABSENT
         return verdict.status.value, quantity.ABSENT, quantity.ABSENT, reason, verdict.id
     limit = f"{quantity.subject(figure)} {quantity.limit(figure)}"

@@ -15,6 +15,7 @@ class Outcome(Enum):
     NOT_UNIQUE = "the weights of `minimize` do not single out one equilibrium"
     NOT_FINITE = "the plant returned a number that is not finite"
     PLANT_RAISED = "the plant raised an exception"
+    PLANT_ANSWER = "the plant's answer has a wrong shape or type"
     NOT_DETERMINISTIC = "the plant answers the same call differently"
     NOISY = "the plant's own noise hides what was asked for"
     NOT_DIFFERENTIABLE = "the plant has a kink or a jump on the operating point"

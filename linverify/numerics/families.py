@@ -1,0 +1,107 @@
+"""Is an equilibrium one of a family? Walk along the direction that the linearized equations leave open and see.
+
+A singular Jacobian alone says nothing: x' = -x**3 has one at its only equilibrium. A family is there if the walk,
+corrected back onto the equations after each small step, comes a fair way along.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..core.model import Array
+
+from .equations import Equations
+from .newton import jacobian, largest, shortest_step
+from .roots import Root, open_directions
+
+FIRST_STEP, LONGEST_STEP, SHORTEST_STEP = 5e-3, 5e-2, 1e-4  # nominal sizes
+FAR = 0.25  # nominal sizes of arc that make a family
+TAKES_PART = 1e-3  # share of the direction from which on an unknown is named
+
+
+@dataclass(frozen=True, slots=True)
+class Family:
+    """Equilibria that are not isolated: the unknowns that change along it, and how far the walk came."""
+
+    names: tuple[str, ...]
+    length: float
+
+
+def family(system: Equations, root: Root, accuracy: float) -> Family | None:
+    """The family that `root` belongs to, or None where it stands alone."""
+    names: set[str] = set()
+    length = 0.0
+    for direction in root.open_directions.T:
+        there, back = (_walk(system, root.z, sign * direction, accuracy) for sign in (1.0, -1.0))
+        room = _room(system, root.z, direction) + _room(system, root.z, -direction)
+        # between close bounds a family is as long as the bounds let it be
+        if there + back >= min(FAR, 0.9 * room) and there + back > 10 * SHORTEST_STEP:
+            weights = np.abs(direction[: len(system.unknowns)])
+            moving = weights >= TAKES_PART * weights.max(initial=0.0)
+            names |= {name for name, moves in zip(system.unknowns, moving, strict=True) if moves}
+            length = max(length, there + back)
+    if not names:
+        return None
+    return Family(tuple(name for name in system.unknowns if name in names), length)
+
+
+def _walk(system: Equations, z: Array, direction: Array, accuracy: float) -> float:
+    """Arc length, at most FAR, over which solutions continue from z (q,) along `direction`."""
+    length, step = 0.0, FIRST_STEP
+    low, high = system.box
+    while length < FAR and step >= SHORTEST_STEP:
+        ahead = z + step * direction
+        if np.any(ahead < low) or np.any(ahead > high):
+            step *= 0.5
+            continue
+        landed = _corrected(system, ahead, direction, accuracy)
+        if landed is None or np.linalg.norm(landed - ahead) > 0.5 * step:
+            step *= 0.5
+            continue
+        length += float(np.linalg.norm(landed - z))
+        direction = _onward(system, landed, direction)
+        z, step = landed, min(1.5 * step, LONGEST_STEP)
+    return length
+
+
+def _corrected(system: Equations, z: Array, direction: Array, accuracy: float) -> Array | None:
+    """Back onto the equations across the walking direction; None where they do not reach the accuracy."""
+    low, high = system.box
+    for _ in range(8):
+        at = system.residual(z[:, np.newaxis])
+        if not np.isfinite(at).all():
+            return None
+        slopes = jacobian(system, z[:, np.newaxis], at)
+        if not np.isfinite(slopes).all():
+            return None
+        fixed = np.concatenate([slopes, direction[np.newaxis, np.newaxis, :]], axis=1)
+        step = shortest_step(fixed, np.concatenate([at, np.zeros((1, 1))]))[:, 0]
+        if largest(at)[0] <= accuracy and np.abs(step).max() <= 1e-6:
+            return z
+        z = np.clip(z + step, low, high)
+    return None
+
+
+def _onward(system: Equations, z: Array, direction: Array) -> Array:
+    """The open direction at z that goes on where `direction` was heading."""
+    at = system.residual(z[:, np.newaxis])
+    slopes = jacobian(system, z[:, np.newaxis], at)
+    if not np.isfinite(slopes).all():
+        return direction
+    free = open_directions(slopes[0])
+    if not free.size:
+        return direction
+    onward, *_ = np.linalg.lstsq(free, direction, rcond=None)
+    ahead = free @ onward
+    size = np.linalg.norm(ahead)
+    return ahead / size if size > 0.1 else direction
+
+
+def _room(system: Equations, z: Array, direction: Array) -> float:
+    """Distance from z along `direction` to the first bound."""
+    low, high = system.box
+    with np.errstate(divide="ignore", invalid="ignore"):
+        reach = np.where(direction > 0, (high - z) / direction, np.where(direction < 0, (low - z) / direction, np.inf))
+    return float(max(0.0, reach.min(initial=np.inf)))

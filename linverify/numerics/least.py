@@ -1,0 +1,124 @@
+"""`minimize`: among the equilibria, the one with the least weighted squared distance from `start`."""
+
+from __future__ import annotations
+
+from dataclasses import replace
+
+import numpy as np
+
+from ..core.model import Array
+from ..core.outcome import Outcome
+from .choose import Candidate, accepted, candidate_at
+from .equations import Equations, Slack, bounds, equations, first_guess, held_outputs
+from .nearest import Nearest, feasible_ends, nearest
+from .newton import jacobian, joined, pseudo_inverse, solve
+from .no_trim import none
+from .roots import Root, noise
+from .starts import start_points
+from .stragglers import stragglers
+from .trim_result import Task, TrimResult
+from .trim_words import told_list
+
+DESCENTS = 6  # local minima are sought from so many different equilibria
+EQUAL = 1e-6  # relative difference of two least distances that cannot be told apart
+APART = 1e-3  # nominal sizes: nearer minima are one
+
+
+def least(task: Task) -> TrimResult:
+    """The equilibrium of least distance; NOT_UNIQUE where the weights leave a direction free or two are equally near."""
+    wide = _with_output_limits(task)
+    weights, target = _weights(task, wide)
+    starts = np.concatenate([start_points(wide), target[:, np.newaxis]], axis=1)
+    feasible = feasible_ends(wide, starts, weights, target, task.ask.accuracy, most=DESCENTS)
+    if not feasible.shape[1]:
+        result = _without(task)
+        return replace(result, starts=starts.shape[1])
+    ends = nearest(wide, weights, target, feasible, task.ask.accuracy)
+    return replace(_judged(task, wide, ends), starts=starts.shape[1])
+
+
+def _without(task: Task) -> TrimResult:
+    ends = solve(task.system, start_points(task.system))
+    return none(task, joined(ends, stragglers(task.system, ends)), (), False)
+
+
+def _judged(task: Task, wide: Equations, ends: tuple[Nearest, ...]) -> TrimResult:
+    v, best = len(task.system.unknowns), ends[0]
+    polished = solve(wide, best.z[:, np.newaxis])
+    root = _root(task.system, polished.z[:v, 0])
+    candidate = candidate_at(task, root)
+    if best.flat.size:
+        return _flat(task, best, candidate)
+    rivals = [
+        end
+        for end in ends[1:]
+        if end.distance - best.distance <= EQUAL * (best.distance + EQUAL)
+        and np.abs(end.z - best.z)[:v].max() > APART
+    ]
+    if rivals:
+        return _tie(task, [candidate, *(candidate_at(task, _root(task.system, end.z[:v])) for end in rivals)])
+    if not best.settled:
+        return TrimResult(Outcome.NOT_UNIQUE, message="the search for the least distance from `start` did not settle")
+    return accepted(task, candidate, ())
+
+
+def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:
+    names = task.system.unknowns
+    share = np.abs(best.flat[: len(names)]).max(axis=1, initial=0.0)
+    moving = tuple(name for name, part in zip(names, share, strict=True) if part > 1e-3 * share.max(initial=0.0))
+    at = f", for example at {told_list(task.system.plant, names, candidate.point)}" if candidate.point else ""
+    return TrimResult(
+        Outcome.NOT_UNIQUE,
+        others=(candidate.point,) if candidate.point else (),
+        free_names=moving,
+        message=f"the weights of `minimize` leave {', '.join(moving)} free to change together{at}; weigh one of them too",
+    )
+
+
+def _tie(task: Task, candidates: list[Candidate]) -> TrimResult:
+    points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
+    plant, names = task.system.plant, task.system.unknowns
+    each = "; ".join(f"({i}) {told_list(plant, names, point)}" for i, point in enumerate(points, 1))
+    return TrimResult(Outcome.NOT_UNIQUE, others=points, message=f"equally near to `start` in the weights given: {each}")
+
+
+def _root(system: Equations, z: Array) -> Root:
+    at = system.residual(z[:, np.newaxis])
+    slopes = np.nan_to_num(jacobian(system, z[:, np.newaxis], at))
+    spread = np.abs(at) + noise(system, z[:, np.newaxis], at, slopes)
+    error = np.einsum("kqr,rk->qk", np.abs(pseudo_inverse(slopes)), spread)[:, 0]
+    return Root(z, float(np.abs(at).max(initial=0.0)), error, np.zeros((z.size, 0)))
+
+
+def _with_output_limits(task: Task) -> Equations:
+    """The equations with an unknown for every output that has limits or a weight, so that the box keeps it inside."""
+    plant, held = task.system.plant, held_outputs(task.system.plant, task.ask)
+    limited = [
+        name
+        for name in plant.outputs.names
+        if name not in plant.states and name not in held and (name in task.envelope or name in task.ask.minimize)
+    ]
+    outputs = {**held, **dict.fromkeys(limited, 0.0)}
+    wide = equations(plant, task.ask, task.envelope, task.nominal, task.system.time, outputs=outputs)
+    slacks = []
+    for i, row in enumerate(wide.output_rows):
+        name = plant.outputs.names[row]
+        if name in limited and name in task.envelope:
+            size, limits = wide.output_sizes[i], task.envelope[name]
+            slacks.append(Slack(len(wide.rate_rows) + i, limits.low / size, limits.high / size))
+        elif name in limited:
+            slacks.append(Slack(len(wide.rate_rows) + i))
+    return replace(wide.relaxed(*slacks), tally=task.system.tally)
+
+
+def _weights(task: Task, wide: Equations) -> tuple[Array, Array]:
+    """Weights (q,) and target (q,) of the distance, both for scaled unknowns."""
+    plant, ask = task.system.plant, task.ask
+    rows = [plant.outputs.names[wide.output_rows[slack.row - len(wide.rate_rows)]] for slack in wide.slacks]
+    names = (*wide.unknowns, *rows)
+    weights = np.array([ask.minimize.get(name, 0.0) for name in names])
+    sizes = np.array([task.nominal.get(name, 1.0) for name in names])
+    guesses = [first_guess(ask, bounds(plant, task.envelope, name), name) for name in wide.unknowns]
+    target = np.array(guesses + [ask.start.get(name, 0.0) for name in rows])
+    low, high = wide.box
+    return weights, np.clip(target / sizes, low, high)

@@ -1,0 +1,114 @@
+"""Which ends of a search are equilibria: judged by the residual there, never by how the search thinks it ended.
+
+A residual within the accuracy is not enough. Where rates fade out far away (x' = exp(-x)) they pass any accuracy
+without an equilibrium anywhere near, so the correction that the linearized equations still ask for must be small too.
+"""
+
+from __future__ import annotations
+
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..core.model import Array
+
+from .equations import Equations
+from .newton import Ends, balanced, jacobian, pseudo_inverse, shortest_step
+
+NEAR = 1e-3  # largest correction, in nominal sizes, that a point may still need and be called an equilibrium
+APART = 1e-6  # equilibria nearer to each other than this, in nominal sizes, are one
+SINGULAR = 1e-4  # balanced singular values below this share leave a direction open; a walk then decides
+JITTER = 1e-8  # a change, in nominal sizes, far above double and below single precision: shows the plant's own noise
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Root:
+    """A solution of the equations: z (q,), largest scaled residual, error estimate (q,) in nominal sizes.
+
+    open_directions (q, p): unit vectors along which the linearized equations do not change; p = 0 when regular.
+    """
+
+    z: Array
+    worst: float
+    error: Array
+    open_directions: Array
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Found:
+    """Distinct roots, and whether some ends met the accuracy without being near a solution."""
+
+    roots: tuple[Root, ...]
+    fading: tuple[Array, ...] = ()
+
+
+def noise(system: Equations, z: Array, at: Array, slopes: Array) -> Array:
+    """How far F (r, N) scatters about its tangent within +-4 JITTER of the columns of z (q, N); (r, N)."""
+    if not z.shape[0]:
+        return np.zeros_like(at)
+    scatter = np.zeros_like(at)
+    low, high = (side[:, np.newaxis] for side in system.box)
+    for turn in (-4, -3, -2, -1, 1, 2, 3, 4):
+        signs = np.where((np.arange(z.shape[0]) + turn) % 3 == 0, -1.0, 1.0)[:, np.newaxis]
+        moved = np.clip(z + turn * JITTER * signs * np.maximum(1.0, 1e-3 * np.abs(z)), low, high)
+        values = system.residual(moved) - at - np.einsum("krq,qk->rk", slopes, moved - z)
+        scatter = np.fmax(scatter, np.abs(values))
+    return scatter
+
+
+def roots_among(system: Equations, ends: Ends, accuracy: float) -> Found:
+    """The distinct solutions among the ends of a search, in the order of the starts that found them."""
+    passing = np.flatnonzero(ends.worst <= accuracy)
+    if not passing.size:
+        return Found(())
+    z, at = ends.z[:, passing], ends.residual[:, passing]
+    slopes = jacobian(system, z, at)
+    blind = ~np.isfinite(slopes).all(axis=(1, 2))
+    slopes[blind] = 0.0
+    # in whatever direction the equations are open the correction is not defined; the walk along it decides
+    correction = np.abs(shortest_step(slopes, at)).max(axis=0, initial=0.0)
+    error = np.einsum("kqr,rk->qk", np.abs(pseudo_inverse(slopes)), np.abs(at) + noise(system, z, at, slopes))
+    found: list[Root] = []
+    fading = []
+    for j in range(passing.size):
+        root = Root(z[:, j], float(ends.worst[passing[j]]), error[:, j], open_directions(slopes[j]))
+        if correction[j] > NEAR:
+            fading.append(z[:, j])
+        elif not any(_same(system, root, other) for other in found):
+            found.append(root)
+    return Found(tuple(found), tuple(fading))
+
+
+def open_directions(slopes: Array, share: float = SINGULAR) -> Array:
+    """Unit vectors (q, p) along which the linearized equations (r, q) change by less than `share` of their most."""
+    even, _, columns = balanced(slopes[np.newaxis])
+    q = slopes.shape[1]
+    if not q:
+        return np.zeros((0, 0))
+    _, strength, directions = np.linalg.svd(even[0])
+    strength = np.concatenate([strength, np.zeros(q - strength.size)])
+    limit = share * max(strength[0], 1e-300)
+    vectors = (directions[strength < limit] * columns).T
+    return vectors / np.linalg.norm(vectors, axis=0) if vectors.size else np.zeros((q, 0))
+
+
+def _same(system: Equations, one: Root, other: Root) -> bool:
+    v = len(system.unknowns)
+    # both error estimates are local; a root of higher order is met only to the root of the round-off
+    blur = 10.0 * (one.error + other.error)[:v]
+    open_ended = one.open_directions.size or other.open_directions.size
+    return bool(np.all(np.abs(one.z - other.z)[:v] <= np.maximum(NEAR if open_ended else APART, blur)))
+
+
+def told_errors(system: Equations, root: Root) -> dict[str, float]:
+    """Estimated error of the trimmed unknowns and of all outputs, in the plant's units."""
+    errors = {name: float(root.error[i] * system.sizes[i]) for i, name in enumerate(system.unknowns)}
+    plant, z = system.plant, root.z[:, np.newaxis]
+    moved = z + np.diag(np.maximum(root.error, 1e-7)) if root.z.size else z
+    x, u = system.values(np.concatenate([z, moved], axis=1))
+    outputs = plant.measure_or_nan(system.time, x, u)
+    shares = (root.error / np.maximum(root.error, 1e-7))[np.newaxis, :]
+    change = np.abs(outputs[:, 1:] - outputs[:, :1])[:, : root.z.size] * (shares if root.z.size else 1.0)
+    for i, name in enumerate(plant.outputs.names):
+        errors.setdefault(name, float(np.nansum(change[i])))
+    return errors

@@ -1,0 +1,148 @@
+"""Why there is no trim: which rate cannot vanish and by how much, what stands at its limit, and where a trim would exist.
+
+The rate is found by letting one equation go: with every other equation met and its own residual made as small as the
+bounds allow, what remains is what cannot vanish. The nearest held values are found by making them unknowns that stay
+as near as they can to what was asked.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..core.case import NOTHING, Interval, TrimAsk
+from ..core.errors import PlantError
+from ..core.model import Array, OperatingPoint
+from .equations import Equations, Slack, equations, held_outputs, outputs_outside
+from .nearest import feasible_ends, nearest
+from .newton import Ends, jacobian
+from .roots import noise
+from .starts import start_points
+
+STATIONARY = 1e-3  # share of |J| |F| below which the residual cannot be made smaller by moving
+HIDDEN = 10.0  # a residual below so many times the plant's own scatter says nothing
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Shortfall:
+    """How near a search came. closest: a point whose equations are met but for `worst_equation`, where that could be
+    found (`alone`), else the point of least residual; conclusive: the residual there cannot be made smaller;
+    noisy: it hides in the plant's own scatter."""
+
+    closest: OperatingPoint | None = None
+    worst_equation: str = ""
+    worst_residual: float = float("nan")
+    alone: bool = False
+    conclusive: bool = False
+    noisy: bool = False
+
+
+def shortfall(system: Equations, ends: Ends, accuracy: float) -> Shortfall:
+    """How near `ends` came, and what stood in the way. Raises PlantError where the plant fails at the nearest point."""
+    if not ends.worst.size or not np.isfinite(ends.worst).any():
+        return Shortfall()
+    best = int(np.argmin(ends.worst))
+    z = ends.z[:, best]
+    conclusive, noisy = _judged(system, z)
+    row = int(np.argmax(np.abs(ends.residual[:, best])))
+    only = _let_go(system, row, ends, accuracy)
+    closest = system.point(z if only is None else only)
+    name = system.names[row]
+    return Shortfall(closest, name, closest.residuals[name], only is not None, conclusive, noisy)
+
+
+def _judged(system: Equations, z: Array) -> tuple[bool, bool]:
+    """Whether |F| at z (q,) is least against every move that the bounds allow; whether it is mere scatter."""
+    at = system.residual(z[:, np.newaxis])
+    slopes = jacobian(system, z[:, np.newaxis], at)
+    if not np.isfinite(slopes).all():
+        return False, False
+    low, high = system.box
+    downhill = -(slopes[0].T @ at[:, 0])
+    blocked = ((z <= low + 1e-7) & (downhill < 0)) | ((z >= high - 1e-7) & (downhill > 0))
+    most = np.linalg.norm(slopes[0], axis=0) * np.linalg.norm(at)
+    conclusive = bool(np.all(blocked | (np.abs(downhill) <= STATIONARY * most)))
+    scatter = noise(system, z[:, np.newaxis], at, slopes)
+    return conclusive, bool(np.all(np.abs(at) <= HIDDEN * scatter))
+
+
+def _let_go(system: Equations, row: int, ends: Ends, accuracy: float) -> Array | None:
+    """z (q,) of `system` with the least |F[row]| among points that meet all other equations; None where none is found."""
+    order = np.argsort(ends.worst, kind="stable")[:8]
+    order = order[np.isfinite(ends.worst[order])]
+    relaxed = system.relaxed(Slack(row))
+    starts = np.concatenate([ends.z[:, order], ends.residual[row, order][np.newaxis]])
+    weights, target = np.zeros(relaxed.count), np.zeros(relaxed.count)
+    weights[-1] = 1.0
+    feasible = feasible_ends(relaxed, starts, weights, target, accuracy, most=2)
+    found = [end for end in nearest(relaxed, weights, target, feasible, accuracy) if end.settled]
+    return found[0].z[:-1] if found else None
+
+
+def nearest_holds(
+    system: Equations,
+    ask: TrimAsk,
+    envelope: Mapping[str, Interval],
+    nominal: Mapping[str, float],
+    ends: Ends,
+) -> Mapping[str, float]:
+    """Held values nearest to those asked (nominal sizes) at which the equations have a solution; empty if none is found."""
+    plant = system.plant
+    signals = [name for name in ask.hold if name in plant.states or name in plant.inputs]
+    wanted = held_outputs(plant, ask)
+    if not signals and not wanted:
+        return NOTHING
+    wider = equations(plant, ask, envelope, nominal, system.time, unknowns=(*ask.find, *signals))
+    relaxed = wider.relaxed(*_output_slacks(wider, envelope))
+    weights = np.array([float(name in signals) for name in relaxed.unknowns] + [1.0] * len(wanted))
+    target = np.zeros(relaxed.count)
+    for i, name in enumerate(relaxed.unknowns):
+        if name in signals:
+            target[i] = ask.hold[name] / relaxed.sizes[i]
+    starts = _with_ends(relaxed, system, ends)
+    feasible = feasible_ends(relaxed, starts, weights, target, ask.accuracy, most=3)
+    for end in nearest(relaxed, weights, target, feasible, ask.accuracy):
+        if values := _verified(wider, ask, envelope, nominal, end.z):
+            return values
+    return NOTHING
+
+
+def _output_slacks(system: Equations, envelope: Mapping[str, Interval]) -> tuple[Slack, ...]:
+    slacks = []
+    for i, output in enumerate(system.output_rows):
+        limits = envelope.get(system.plant.outputs.names[output], Interval())
+        size, wanted = system.output_sizes[i], system.wanted[i]
+        slacks.append(Slack(len(system.rate_rows) + i, (limits.low - wanted) / size, (limits.high - wanted) / size))
+    return tuple(slacks)
+
+
+def _with_ends(relaxed: Equations, system: Equations, ends: Ends) -> Array:
+    """Starts for the relaxed equations: the best ends of the failed search first, then the usual set."""
+    usual = start_points(relaxed)
+    best = int(np.argmin(ends.worst)) if ends.worst.size else 0
+    first = usual[:, 0].copy()
+    if ends.worst.size:
+        known = dict(zip(system.unknowns, ends.z[:, best], strict=False))
+        for i, name in enumerate(relaxed.unknowns):
+            first[i] = known.get(name, first[i])
+    return np.concatenate([first[:, np.newaxis], usual], axis=1)
+
+
+def _verified(
+    wider: Equations, ask: TrimAsk, envelope: Mapping[str, Interval], nominal: Mapping[str, float], z: Array
+) -> dict[str, float]:
+    """The held values at z if every rate there vanishes to the accuracy and outputs are inside; empty otherwise."""
+    try:
+        point = wider.point(z)
+    except PlantError:
+        return {}
+    states = wider.names[: len(wider.rate_rows)]
+    if any(abs(point.residuals[name]) > ask.accuracy for name in states):
+        return {}
+    if outputs_outside(wider.plant, ask, envelope, nominal, point):
+        return {}
+    return {name: point.value(name) for name in ask.hold}
+
+

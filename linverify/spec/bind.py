@@ -1,0 +1,160 @@
+"""From a spec on disk to cases in numbers: read, import the plant, and bind names, units and counts.
+
+Everything that can be known without calling the plant is judged here, and all mistakes are raised together.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from pathlib import Path
+from types import MappingProxyType
+from typing import Literal
+
+from linverify.core import units
+from linverify.core.case import (
+    Band,
+    Case,
+    CheckAsk,
+    DriveSet,
+    Exits,
+    Requirement,
+    Setting,
+    SlopeAsk,
+)
+from linverify.core.errors import Problem, SpecError
+from linverify.core.plant import Plant
+
+from .envelopes import bind_envelope, nominal_sizes
+from .ground import Ground, whole_ratio
+from .layout import Cell, Point, Spec, matches
+from .motions import bind_band, bind_drives
+from .plants import Loaded, load_plant
+from .trims import bind_parameters, bind_trim
+
+
+def load(path: Path, root: Path) -> tuple[Case, ...]:
+    """Read the spec at `path` and bind it to its plant: one Case a cell of every operating point, in fixed order.
+
+    root: the folder that ids count from, and the last place where `package.module` is looked for.
+    Raises SpecError with every mistake in the spec, its defaults.yaml, its tables and the import of its plant.
+    """
+    raise SpecError([])
+
+
+def bind(spec: Spec, root: Path) -> tuple[tuple[Case, ...], tuple[Problem, ...]]:
+    """Cases and mistakes of a spec that has been read; the cases are for use only where there is no mistake."""
+    loaded = load_plant(spec.plant, root)
+    if isinstance(loaded, Problem):
+        return (), (loaded,)
+    ground = Ground(loaded.plant)
+    _check_clock(ground, spec)
+    cases = _Binder(spec, ground, loaded).cases()
+    return cases, tuple(ground.problems)
+
+
+def _check_clock(ground: Ground, spec: Spec) -> None:
+    """A plant's time unit is a time, and a difference equation counts in seconds, since its step does."""
+    unit, place = ground.plant.time_unit, spec.plant.place
+    if unit != "s" and not units.convertible(unit, "s"):
+        ground.report(
+            place, f"the plant's time_unit {unit!r} is no unit of time", "one such as s, min or h is expected"
+        )
+    elif unit != "s" and ground.plant.step is not None:
+        wrong = f"the plant is a difference equation with time_unit {unit!r}"
+        ground.report(place, wrong, "its step counts seconds, so time_unit='s' is expected")
+
+
+class _Binder:
+    """What all cells of one spec share, bound once."""
+
+    def __init__(self, spec: Spec, ground: Ground, loaded: Loaded) -> None:
+        self.spec, self.ground, self.plant = spec, ground, loaded.plant
+        self.files = tuple(dict.fromkeys((*spec.files, *loaded.files)))
+        self.envelope, self.rate_limits = bind_envelope(ground, spec.envelope)
+        self.nominal, told = nominal_sizes(self.plant, self.envelope)
+        self.settings = (*spec.settings, *told)
+        self.slopes = SlopeAsk(spec.slope_gap, MappingProxyType(self._sides()))
+        self.time = self._time()
+
+    def cases(self) -> tuple[Case, ...]:
+        """One case a cell, points and cells in the order of the spec."""
+        return tuple(case for point in self.spec.points for case in self._point(point))
+
+    def _point(self, point: Point) -> tuple[Case, ...]:
+        sets = tuple(bind_drives(self.ground, ask, self.rate_limits) for ask in point.drives)
+        bound = [bind_band(self.ground, ask, sets) for ask in point.bands]
+        bands = tuple(band for band in bound if band is not None)
+        return tuple(self._case(point, cell, sets, bands) for cell in point.cells)
+
+    def _case(self, point: Point, cell: Cell, sets: tuple[DriveSet, ...], bands: tuple[Band, ...]) -> Case:
+        parameters = bind_parameters(self.ground, point, cell)
+        return Case(
+            spec=self.spec.shown,
+            point=cell.name,
+            title=self.spec.title,
+            plant=self.plant,
+            place=cell.place,
+            trim=bind_trim(self.ground, point, cell, self.envelope, self.spec.accuracy),
+            parameters=parameters,
+            envelope=self.envelope,
+            nominal=self.nominal,
+            checks=self._checks(cell, sets),
+            time=self.time,
+            rate_limits=self.rate_limits,
+            slopes=self.slopes,
+            drives=sets,
+            bands=bands,
+            exits=Exits(self.spec.complete, self.spec.mismatch),
+            requirements=self._requirements(cell, self.spec.check_names(point)),
+            settings=(*self.settings, *point.settings, *_told_parameters(self.plant, point, cell)),
+            files=self.files,
+            skipped=cell.skipped,
+        )
+
+    def _checks(self, cell: Cell, sets: tuple[DriveSet, ...]) -> tuple[CheckAsk, ...]:
+        always = (CheckAsk("trims", cell.place), CheckAsk("differentiable", cell.place))
+        return (*always, *(CheckAsk("follows", drives.place, drives.name) for drives in sets))
+
+    def _requirements(self, cell: Cell, checks: tuple[str, ...]) -> tuple[Requirement, ...]:
+        answered = []
+        for ask in self.spec.requirements:
+            named = tuple(
+                name for name in checks if any(matches(word.text, f"{cell.name}.{name}") for word in ask.checks)
+            )
+            if named:
+                answered.append(Requirement(ask.name, ask.text, ask.source, named))
+        return tuple(answered)
+
+    def _sides(self) -> dict[str, Literal["up", "down"]]:
+        names = (*self.ground.states, *self.ground.inputs)
+        what = "a state or input"
+        return {
+            side.name: side.value for side in self.spec.side if self.ground.known(side.name, side.place, names, what)
+        }
+
+    def _time(self) -> float:
+        """The t of the trim, in the plant's unit; steps for a difference equation."""
+        if self.spec.time is None:
+            return 0.0
+        time = self.ground.time(self.spec.time, "time")
+        step = self.plant.step
+        if step is None or time == 0.0 or math.isnan(time):
+            return time
+        count = whole_ratio(abs(time), step)
+        if count is None:
+            wrong = f"{self.spec.time.text!r} is no whole number of the plant's steps of {step:g} s"
+            self.ground.report(self.spec.time.place, wrong, "a multiple of the plant's step is expected")
+            return 0.0
+        return math.copysign(count, time)
+
+
+def _told_parameters(plant: Plant, point: Point, cell: Cell) -> tuple[Setting, ...]:
+    """The plant's own parameters, where neither spec nor sweep says otherwise."""
+    said = {entry.name for entry in (*point.parameters, *cell.swept)}
+    values: Mapping[str, tuple[float, str]] = {name: plant.parameter(name) for name in plant.parameters}
+    return tuple(
+        Setting(f"parameters: {name}", f"{units.shown(value)} {unit}".strip(), "plant")
+        for name, (value, unit) in values.items()
+        if name not in said
+    )

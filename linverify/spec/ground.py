@@ -1,0 +1,149 @@
+"""What a spec is bound against: one plant, its names and units, and the list that mistakes go to.
+
+Values that are refused come back as NaN. Comparisons with NaN are written so that one mistake is told once, and no NaN
+ever reaches a `Case`, since any mistake stops the binding.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import dataclass, field
+
+from linverify.core import units
+from linverify.core.case import Interval
+from linverify.core.errors import Place, Problem
+from linverify.core.plant import Plant
+from linverify.core.signals import nearest
+
+from .layout import Entry, Quantity
+
+WHOLE = 1e-9  # relative; a ratio of two times nearer than this to a whole number is that number
+
+
+@dataclass(slots=True)
+class Ground:
+    """A plant and the mistakes found so far. Mutable: `problems` grows, nothing else changes."""
+
+    plant: Plant
+    problems: list[Problem] = field(default_factory=list)
+
+    @property
+    def states(self) -> tuple[str, ...]:
+        """Names of the states."""
+        return tuple(self.plant.states)
+
+    @property
+    def inputs(self) -> tuple[str, ...]:
+        """Names of the inputs."""
+        return tuple(self.plant.inputs)
+
+    @property
+    def outputs(self) -> tuple[str, ...]:
+        """Names of the outputs, those that are states among them."""
+        return tuple(self.plant.outputs or {})
+
+    @property
+    def signals(self) -> tuple[str, ...]:
+        """Names of states, inputs and outputs, each once."""
+        return tuple(dict.fromkeys((*self.states, *self.inputs, *self.outputs)))
+
+    def report(self, place: Place, wrong: str, expected: str = "", hint: str = "") -> None:
+        """Note one mistake."""
+        self.problems.append(Problem(place, wrong, expected, hint))
+
+    def known(self, name: str, place: Place, among: Sequence[str], what: str) -> bool:
+        """True where `name` is one of `among` (states, inputs, ...); else the mistake is noted, `what` being due."""
+        if name in among:
+            return True
+        kinds = (("state", self.states), ("input", self.inputs), ("output", self.outputs))
+        kind = next((kind for kind, names in kinds if name in names), "")
+        if not kind and name in self.plant.parameters:
+            kind = "parameter"
+        wrong = f"{name!r} is {_article(kind)} of the plant" if kind else f"the plant has no {name!r}"
+        self.report(place, wrong, f"{what} is expected: {_listed(among)}", "" if kind else nearest(name, among))
+        return False
+
+    def amount(self, quantity: Quantity, unit: str, word: str, *, difference: bool = False) -> float:
+        """The quantity in `unit`, or NaN where that is a mistake; word: what takes it, as the spec calls it."""
+        try:
+            value = units.convert(quantity.value, quantity.unit, unit, difference=difference, text=quantity.text)
+        except units.UnitError as error:
+            self.report(quantity.place, *self._told(error, quantity, unit, word))
+            return math.nan
+        if not math.isfinite(value):
+            self.report(quantity.place, f"{quantity.text!r} is too large for a number in {unit}")
+            return math.nan
+        return value
+
+    def _told(self, error: units.UnitError, quantity: Quantity, unit: str, word: str) -> tuple[str, str, str]:
+        try:
+            units.check(unit)
+        except units.UnitError as foreign:
+            wrong = f"{quantity.text!r} cannot be converted: the plant's unit {unit!r} of `{word}` is not known"
+            return wrong, "write the plain number in that unit, or correct the plant", foreign.hint
+        if error.hint or error.wrong.endswith("is no unit"):
+            return f"{error.wrong} (in {quantity.text!r})", f"`{word}` is in {unit or '1'}", error.hint
+        expected = error.expected.removesuffix(" is expected")
+        return error.wrong, f"`{word}` takes {expected}, in the plant's unit {unit or '1'}", ""
+
+    def signal(self, quantity: Quantity, name: str, word: str) -> float:
+        """A point of the scale of signal or parameter `name`, which is known to exist."""
+        return self.amount(quantity, self.plant.unit(name), word)
+
+    def deviation(self, quantity: Quantity, name: str, word: str) -> float:
+        """A deviation of signal `name`, which is known to exist."""
+        return self.amount(quantity, self.plant.unit(name), word, difference=True)
+
+    def rate(self, quantity: Quantity, name: str, word: str) -> float:
+        """A rate of signal `name` per time unit of the plant."""
+        unit = units.per_time(self.plant.unit(name), self.plant.time_unit)
+        return self.amount(quantity, unit, word, difference=True)
+
+    def time(self, quantity: Quantity, word: str) -> float:
+        """A time in the plant's time unit."""
+        return self.amount(quantity, self.plant.time_unit, word, difference=True)
+
+    def limits(self, name: str, envelope: Mapping[str, Interval]) -> Interval:
+        """Where `name` may be: the envelope met with the plant's domain."""
+        low, high = self.plant.domain.get(name, (None, None))
+        domain = Interval(-math.inf if low is None else low, math.inf if high is None else high)
+        return envelope.get(name, Interval()).meet(domain)
+
+    def inside(self, value: float, entry: Entry[Quantity], word: str, envelope: Mapping[str, Interval]) -> None:
+        """Note a value of a signal that lies outside the envelope or the plant's domain."""
+        limits = envelope.get(entry.name, Interval())
+        place, text = entry.value.place, entry.value.text
+        if value < limits.low or value > limits.high:
+            told = self.told_interval(limits, entry.name)
+            self.report(place, f"{text!r} is outside the envelope", f"`{word}` takes {told}")
+        elif (whole := self.limits(entry.name, envelope)) and (value < whole.low or value > whole.high):
+            told = self.told_interval(self.limits(entry.name, {}), entry.name)
+            self.report(place, f"{text!r} is outside the plant's domain", f"`{word}` takes {told}")
+
+    def told_interval(self, interval: Interval, name: str) -> str:
+        """`9.26 to 21.6067 m/s`, `at least 0.1 m/s`."""
+        unit = self.plant.unit(name)
+        low, high = units.shown(interval.low), units.shown(interval.high)
+        if interval.bounded:
+            return f"{low} to {high} {unit}".strip()
+        return (f"at most {high} {unit}" if math.isinf(interval.low) else f"at least {low} {unit}").strip()
+
+
+def whole_ratio(length: float, part: float) -> int | None:
+    """How many times `part` fits into `length`; None where that is no whole number of times, or not once."""
+    ratio = length / part
+    count = round(ratio) if math.isfinite(ratio) else 0
+    return count if count >= 1 and abs(ratio - count) <= WHOLE * count else None
+
+
+def _article(kind: str) -> str:
+    return f"an {kind}" if kind[0] in "aeiou" else f"a {kind}"
+
+
+def _listed(names: Iterable[str], most: int = 12) -> str:
+    """Names for a message; a long list is cut."""
+    words = list(names)
+    if not words:
+        return "the plant has none"
+    return ", ".join(words[:most]) + (f" and {len(words) - most} more" if len(words) > most else "")

@@ -1,0 +1,151 @@
+"""Sets of drives and error bands in the plant's units."""
+
+from __future__ import annotations
+
+import glob
+import math
+from collections.abc import Mapping
+from pathlib import Path
+from types import MappingProxyType
+
+from linverify.core.case import Amplitude, Band, DriveSet
+
+from .ground import Ground, whole_ratio
+from .layout import AmplitudeAsk, BandAsk, DriveAsk, Entry, FileWord
+
+MOST_INTERVALS = 100_000  # a drive of more has most likely a wrong unit, and would not fit into memory
+
+
+def bind_drives(ground: Ground, ask: DriveAsk, rate_limits: Mapping[str, float]) -> DriveSet:
+    """One set of drives. rate_limits: by signal, from the envelope, for inputs without a `rate` in this set."""
+    word = f"drives: {ask.name}" if ask.name else "drives"
+    every, intervals = _clock(ground, ask, word)
+    amplitude = _amplitudes(ground, ask, word)
+    delay = None if ask.discerns_delay is None else ground.time(ask.discerns_delay, f"{word}: discerns: delay")
+    return DriveSet(
+        name=ask.name,
+        every=every,
+        intervals=intervals,
+        amplitude=MappingProxyType(amplitude),
+        course=ask.course,
+        rate=MappingProxyType(_rates(ground, ask, amplitude, rate_limits, word)),
+        offsets=MappingProxyType(_offsets(ground, ask, word)),
+        shapes=ask.shapes,
+        count=ask.count,
+        search=ask.search,
+        pinned=_pinned(ask.pinned),
+        discerns_gain=ask.discerns_gain,
+        discerns_delay=delay,
+        place=ask.place,
+    )
+
+
+def bind_band(ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...]) -> Band | None:
+    """One error band, or None where its signal is a mistake. sets: the drives of the point."""
+    comparable = tuple(dict.fromkeys((*ground.outputs, *ground.states)))
+    if ask.signal in ground.inputs:
+        wrong = f"{ask.signal!r} is an input, and both models are driven with the same inputs"
+        ground.report(ask.signal_place, wrong, "an output or state is expected")
+        return None
+    if not ground.known(ask.signal, ask.signal_place, comparable, "an output or state"):
+        return None
+    word = f"error_bands: {ask.signal}: {ask.kind}"
+    limit = math.nan
+    if ask.limit is not None:
+        limit = ground.deviation(ask.limit, ask.signal, word)
+    return Band(
+        signal=ask.signal,
+        kind=ask.kind,
+        limit=limit,
+        fraction=math.nan if ask.fraction is None else ask.fraction,
+        start=_start(ground, ask, sets),
+        drives=ask.drives,
+        place=ask.place,
+    )
+
+
+def _clock(ground: Ground, ask: DriveAsk, word: str) -> tuple[float, int]:
+    """`every` and the number of intervals; both times fit whole numbers of times, also into the plant's step."""
+    every, horizon = ground.time(ask.every, f"{word}: every"), ground.time(ask.horizon, f"{word}: horizon")
+    if math.isnan(every) or math.isnan(horizon):
+        return math.nan, 1
+    intervals = whole_ratio(horizon, every)
+    told = every > horizon and ask.every.unit == ask.horizon.unit  # by the reader, which compares equal units
+    if intervals is None and not told:
+        wrong = f"a horizon of {ask.horizon.text!r} is no whole number of {ask.every.text!r}"
+        ground.report(ask.horizon.place, wrong, "a multiple of `every` is expected")
+    elif intervals is not None and intervals > MOST_INTERVALS:
+        wrong = f"a horizon of {ask.horizon.text!r} is {intervals} times {ask.every.text!r}"
+        ground.report(ask.horizon.place, wrong, f"at most {MOST_INTERVALS} intervals are expected")
+    step = ground.plant.step
+    if step is not None and whole_ratio(every, step) is None:
+        wrong = f"{ask.every.text!r} is no whole number of the plant's steps of {step:g} s"
+        ground.report(ask.every.place, wrong, "a multiple of the plant's step is expected")
+    return every, intervals or 1
+
+
+def _amplitudes(ground: Ground, ask: DriveAsk, word: str) -> dict[str, Amplitude]:
+    amplitudes: dict[str, Amplitude] = {}
+    for entry in ask.amplitude:
+        if ground.known(entry.name, entry.place, ground.inputs, "an input"):
+            amplitudes[entry.name] = _amplitude(ground, entry, f"{word}: amplitude: {entry.name}")
+    return amplitudes
+
+
+def _amplitude(ground: Ground, entry: Entry[AmplitudeAsk], word: str) -> Amplitude:
+    ask = entry.value
+    if ask.until is not None:
+        signal = ask.until
+        word = f"{word}: until: {signal.name}"
+        names = tuple(dict.fromkeys((*ground.outputs, *ground.states)))
+        if not ground.known(signal.name, signal.place, names, "an output or state"):
+            return Amplitude()
+        return Amplitude(until=(signal.name, ground.deviation(signal.value, signal.name, word)))
+    high = math.inf if ask.high is None else ground.deviation(ask.high, entry.name, word)
+    return Amplitude(-high if ask.low is None else ground.deviation(ask.low, entry.name, word), high)
+
+
+def _rates(
+    ground: Ground, ask: DriveAsk, amplitude: Mapping[str, Amplitude], limits: Mapping[str, float], word: str
+) -> dict[str, float]:
+    rates = {name: limits[name] for name in amplitude if name in limits}
+    for entry in ask.rate:
+        if not ground.known(entry.name, entry.place, ground.inputs, "an input"):
+            continue
+        if entry.name not in amplitude:
+            wrong = f"no amplitude moves {entry.name!r}, so there is nothing to limit"
+            ground.report(entry.place, wrong, "a rate of an input with an amplitude is expected")
+        rates[entry.name] = ground.rate(entry.value, entry.name, f"{word}: rate: {entry.name}")
+    return rates
+
+
+def _offsets(ground: Ground, ask: DriveAsk, word: str) -> dict[str, float]:
+    offsets: dict[str, float] = {}
+    for entry in ask.offsets:
+        if ground.known(entry.name, entry.place, ground.states, "a state"):
+            offsets[entry.name] = ground.deviation(entry.value, entry.name, f"{word}: offsets: {entry.name}")
+    return offsets
+
+
+def _pinned(patterns: tuple[FileWord, ...]) -> tuple[Path, ...]:
+    """The files that match, in order of name; a pattern without a match is fine."""
+    found: dict[Path, None] = {}
+    for pattern in patterns:
+        for name in sorted(glob.glob(pattern.text, root_dir=pattern.folder, recursive=True)):
+            if (path := pattern.folder / name).is_file():
+                found[path] = None
+    return tuple(found)
+
+
+def _start(ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...]) -> float:
+    if ask.start is None:
+        return 0.0
+    word = f"error_bands: {ask.signal}: from"
+    start = ground.time(ask.start, word)
+    for drives in sets:
+        if ask.drives in (None, drives.name) and start >= drives.horizon:
+            name = f"drives {drives.name!r}" if drives.name else "the drives"
+            wrong = f"`from` {ask.start.text!r} leaves nothing to judge of {name}"
+            told = f"a time before their horizon of {drives.horizon:.6g} {ground.plant.time_unit} is expected"
+            ground.report(ask.start.place, wrong, told)
+    return start

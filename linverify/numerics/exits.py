@@ -40,8 +40,7 @@ class Limits:
 
     def states_beyond(self, x: Array) -> Mask:
         """Which columns of `x` (n, N) have a state beyond a limit, (N,)."""
-        result: Mask = ((x < self.state_low) | (x > self.state_high)).any(axis=0)
-        return result
+        return np.asarray(((x < self.state_low) | (x > self.state_high)).any(axis=0))
 
 
 def limits_of(rig: Rig, names: Sequence[str]) -> Limits:

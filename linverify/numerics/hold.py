@@ -63,4 +63,4 @@ def _scales(A: Array, B: Array) -> tuple[Array, Array]:
     size = balanced.max(initial=0.0) or 1.0
     largest = np.abs(B / scale[:, np.newaxis]).max(axis=0, initial=0.0)
     ratio = np.divide(size, largest, out=np.ones_like(largest), where=largest > 0)
-    return scale, 2.0 ** np.round(np.log2(ratio))
+    return np.asarray(scale, dtype=np.float64), np.asarray(np.exp2(np.round(np.log2(ratio))))

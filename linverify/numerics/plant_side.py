@@ -122,7 +122,8 @@ class _Way:
             pick = [rig.plant.outputs.index(self.names[row]) for row in outputs]
             for place in np.ndindex(self.times.shape):
                 course = point.x + point.drift * ticks[place]
-                result[(outputs, *place)] = rig.plant.measure_or_nan(point.time + ticks[place], course, point.u)[pick]
+                t = point.time + float(ticks[place])
+                result[(outputs, *place)] = rig.plant.measure_or_nan(t, course, point.u)[pick]
         return result
 
     def _begin(self, k: int) -> None:
@@ -184,12 +185,12 @@ class _Way:
 
     def _unreadable(self, k: int, out: Array, values: Array) -> None:
         """Fail columns whose outputs are not finite where their states are."""
-        blind = np.isfinite(out).all(axis=0) & ~np.isfinite(values).all(axis=0)
+        blind: Mask = np.asarray(np.isfinite(out).all(axis=0) & ~np.isfinite(values).all(axis=0))
         for column in np.flatnonzero(blind.any(axis=0)):
             j = int(np.argmax(blind[:, column]))
             alone = out[:, j, [column]]
             outcome, text = self.piece.why(lambda j=j, alone=alone, c=column: self._measure_one(k, j, alone, c))
-            self._note(column, float(self.times[k, j]), outcome, text)
+            self._note(int(column), float(self.times[k, j]), outcome, text)
         stop = self.batch.active & blind.any(axis=0)
         if stop.any():
             self.batch.stop(stop, 0.0)

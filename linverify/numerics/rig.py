@@ -145,5 +145,4 @@ class Runs:
 
     def counts(self) -> NDArray[np.bool_]:
         """Samples that count, (K, S + 1, N): those before the comparison ended."""
-        result: NDArray[np.bool_] = np.isfinite(self.plant).all(axis=0)
-        return result
+        return np.asarray(np.isfinite(self.plant).all(axis=0))

@@ -2,8 +2,8 @@
 
 `run` takes many drives in batches of fixed widths; its figures depend, within the tolerance, on the companions of a
 drive, since a batch shares its steps. `run_alone` is the canonical run of one drive, the same bits whenever it is
-repeated on the same machine: every figure that is quoted comes from it. Widths are fixed because a matrix product rounds
-differently at another width.
+repeated on the same machine: every figure that is quoted comes from it. Widths are fixed because a matrix product
+rounds differently at another width.
 """
 
 from __future__ import annotations

@@ -1,9 +1,9 @@
 """A batched Rosenbrock method of order 4(3) for stiff plants: one linear solve a stage, no iteration.
 
-Explicit pairs take steps that are bounded by the fastest pole however little it moves. A Rosenbrock method suits batches
-better than implicit Runge-Kutta methods, since every column does the same work a step. Jacobians are differences, all
-columns of all drives in one call of the plant. The method is stiffly accurate and L-stable; its coefficients are the set
-RODAS of E. Hairer, G. Wanner, Solving Ordinary Differential Equations II (2nd edition, 1996), section IV.10; a test
+Explicit pairs take steps that are bounded by the fastest pole however little it moves. A Rosenbrock method suits
+batches better than implicit Runge-Kutta methods, since every column does the same work a step. Jacobians are
+differences, all columns of all drives in one call of the plant. The method is stiffly accurate and L-stable; its
+coefficients are the set RODAS of E. Hairer, G. Wanner, Solving Ordinary Differential Equations II (2nd edition, 1996), section IV.10; a test
 proves their order.
 """
 
@@ -14,7 +14,7 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..core.model import Array, frozen_array
-from .integrate import Attempt, Rates
+from .integrate import Attempt, Mask, Rates
 
 GAMMA = 0.25
 NODES = (0.0, 0.386, 0.21, 0.63, 1.0, 1.0)
@@ -96,7 +96,7 @@ class Rosenbrock:
 
 def _inverses(matrices: Array) -> Array:
     """Inverses of a stack (N, n, n); NaN for a column whose matrix is not finite or singular."""
-    good = np.isfinite(matrices).all(axis=(1, 2))
+    good: Mask = np.asarray(np.isfinite(matrices).all(axis=(1, 2)))
     safe = np.where(good[:, np.newaxis, np.newaxis], matrices, np.eye(matrices.shape[1]))
     try:
         inverses = np.linalg.inv(safe)

@@ -172,8 +172,13 @@ def parse(text: str, name: str = "the record") -> dict[str, Any]:
     expect_format(data, name)
     expect_keys(data, {"format", "body", "provenance"}, name)
     expect_keys(data["body"], {"partial", "profile", "counts", "items", "points"}, f"the body of {name}")
+    if not isinstance(data["body"]["items"], list) or not isinstance(data["body"]["points"], list):
+        raise RecordError(f"{name} is damaged: items and points are lists")
     for item in data["body"]["items"]:
-        from_data(item)
+        try:
+            from_data(item)
+        except RecordError as error:
+            raise RecordError(f"{name} is damaged: {error}") from error
     return data
 
 

@@ -115,6 +115,16 @@ def _figure(data: Mapping[str, Any]) -> Figure:
     return Figure(**texts, **numbers, sense=Sense(data["sense"]), status=Status(data["status"]))  # type: ignore[arg-type]
 
 
+def _place(data: Mapping[str, Any]) -> Place:
+    expect_keys(data, {"file", "line", "column"}, "a place")
+    return Place(_text(data, "file"), int(data["line"]), int(data["column"]))
+
+
+def _evidence(data: Mapping[str, Any]) -> Evidence:
+    expect_keys(data, {"role", "drive", "text"}, "a piece of evidence")
+    return Evidence(_text(data, "role"), _text(data, "drive"), _text(data, "text"))
+
+
 def _float(data: Mapping[str, Any], name: str) -> float:
     value = restored(data[name])
     if isinstance(value, bool) or not isinstance(value, (int, float)):
@@ -150,12 +160,12 @@ def from_data(data: Mapping[str, Any]) -> Verdict:
             point=_text(data, "point"),
             check=_text(data, "check"),
             status=Status(data["status"]),
-            place=Place(**data["place"]),
+            place=_place(data["place"]),
             reason=_text(data, "reason"),
             figures=tuple(_figure(figure) for figure in data["figures"]),
             notes=_texts(data, "notes"),
             requirements=_texts(data, "requirements"),
-            evidence=tuple(Evidence(**evidence) for evidence in data["evidence"]),
+            evidence=tuple(_evidence(item) for item in data["evidence"]),
             details=dict(restored(data["details"])),
         )
     except (KeyError, TypeError, ValueError, AttributeError) as error:

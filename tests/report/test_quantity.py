@@ -1,0 +1,101 @@
+"""Numbers as an engineer reads them."""
+
+from __future__ import annotations
+
+import math
+from dataclasses import replace
+
+import pytest
+
+from linverify.core.verdict import Figure, Sense
+from linverify.report import quantity
+
+FIGURE = Figure("peak error", "height", 0.05, 0.04, "m")
+
+
+@pytest.mark.parametrize(
+    ("value", "text"),
+    [
+        (0.0, "0"),
+        (-0.0, "0"),
+        (0.04, "0.04"),
+        (1234.56789, "1234.57"),
+        (123456.0, "123456"),
+        (5e6, "5e6"),
+        (-1.234567e-9, "-1.23457e-9"),
+        (math.nan, "-"),
+        (math.inf, "infinite"),
+        (-math.inf, "-infinite"),
+    ],
+)
+def test_numbers(value: float, text: str) -> None:
+    assert quantity.number(value) == text
+
+
+@pytest.mark.parametrize(
+    ("value", "unit", "text"),
+    [
+        (2.5, "m/s", "2.5 m/s"),
+        (2.5, "1", "2.5"),
+        (2.5, "", "2.5"),
+        (math.nan, "m", "-"),
+        (math.inf, "m", "infinite m"),
+        (12.0, "%", "12 %"),
+    ],
+)
+def test_quantities(value: float, unit: str, text: str) -> None:
+    assert quantity.quantity(value, unit) == text
+
+
+@pytest.mark.parametrize(
+    ("share", "text"),
+    [
+        (0.5423456, "54.2 %"),
+        (1.0, "100 %"),
+        (-0.28086, "-28.1 %"),
+        (0.0, "0 %"),
+        (-0.0004321, "-0.043 %"),
+        (-4e7, "-4e9 %"),
+        (math.nan, "-"),
+        (-math.inf, "-"),
+    ],
+)
+def test_shares(share: float, text: str) -> None:
+    assert quantity.percent(share) == text
+
+
+@pytest.mark.parametrize(
+    ("worst", "limit", "text"),
+    [
+        (0.0512345678, 0.04, "0.05123 m"),
+        (0.0400012345, 0.04, "0.0400012 m"),  # four digits would read as the limit
+        (0.03999951, 0.04, "0.0399995 m"),
+        (0.04, 0.04, "0.04 m"),
+        (math.inf, 0.04, "infinite m"),
+        (math.nan, 0.04, "-"),
+        (1.23456, math.nan, "1.235 m"),
+    ],
+)
+def test_the_worst_is_told_from_its_limit(worst: float, limit: float, text: str) -> None:
+    assert quantity.worst(replace(FIGURE, worst=worst, limit=limit)) == text
+
+
+@pytest.mark.parametrize(
+    ("change", "text"),
+    [
+        ({}, "at most 0.04 m"),
+        ({"sense": Sense.LOWER, "limit": 2.0, "unit": ""}, "at least 2"),
+        ({"limit": math.inf}, "at most infinite m"),
+        ({"limit": math.nan}, "-"),
+        ({"sense": Sense.NONE}, "-"),
+    ],
+)
+def test_limits(change: dict[str, object], text: str) -> None:
+    assert quantity.limit(replace(FIGURE, **change)) == text  # type: ignore[arg-type]
+
+
+def test_subject_and_instant() -> None:
+    assert quantity.subject(FIGURE) == "peak error of height"
+    assert quantity.subject(replace(FIGURE, signal="")) == "peak error"
+    assert quantity.instant(FIGURE) == ""
+    assert quantity.instant(replace(FIGURE, when=3.25, time_unit="s")) == "t = 3.25 s"

@@ -199,6 +199,7 @@ class Case:
     settings: tuple[Setting, ...] = ()
     files: tuple[Path, ...] = ()  # spec, defaults, plant, tables: hashed into the provenance
     skipped: str = ""  # reason, for a swept cell listed under `skip`
+    family: int = 1  # operating points that one statement of confidence covers: each is stated at 1 - 0.05 / family
 
     def drive_set(self, name: str) -> DriveSet:
         """The set of drives called `name`; raises KeyError."""

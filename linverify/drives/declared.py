@@ -15,7 +15,7 @@ import numpy as np
 from ..core.case import Course, DriveSet, Interval
 from ..core.drive import Drive
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
-from ..numerics.worst import largest_deviation
+from ..numerics.worst import reaches
 
 # A value read back from a file, or a sum of many small changes, may miss a limit by rounding.
 SLACK = 1e-9
@@ -51,7 +51,7 @@ class Limits:
         wanted: Array = np.clip(np.asarray(values, dtype=np.float64), self.low, self.high)
         if not np.any(np.isfinite(self.change)):
             return wanted
-        kept = np.empty_like(wanted)
+        kept: Array = np.empty_like(wanted)
         before = np.zeros(len(self.inputs))
         for k, row in enumerate(wanted):
             before = np.clip(row, before - self.change, before + self.change)
@@ -60,7 +60,7 @@ class Limits:
 
     def sized(self, shape: Array, column: int) -> Array:
         """A shape within [-1, 1] as deviations of one input: +1 is its highest, -1 its lowest."""
-        return np.where(shape >= 0.0, shape * self.high[column], -shape * self.low[column])
+        return np.asarray(np.where(shape >= 0.0, shape * self.high[column], -shape * self.low[column]))
 
     def offset(self, column: int, share: float) -> float:
         """An offset from a share within [-1, 1] of what is allowed to that side."""
@@ -157,7 +157,8 @@ def _input_range(
     low, high = amplitude.low, amplitude.high
     if amplitude.until is not None:
         signal, size = amplitude.until
-        gain = largest_deviation(model, name, signal, drives.every, drives.intervals, drives.course)
+        inputs, _ = reaches(model, (signal,), drives.every, drives.intervals, drives.course)
+        gain = float(inputs[0, model.inputs.index(name)])
         if not gain > 0.0:
             told.append(f"{name} does not move {signal} in the local model: its amplitude `until` {size:.6g} is zero")
             return 0.0, 0.0

@@ -13,6 +13,8 @@ from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
 
+import numpy as np
+
 from ..core.drive import Drive
 from ..core.errors import DriveFileError
 from ..core.signals import nearest
@@ -28,10 +30,10 @@ def to_text(drive: Drive, about: Mapping[str, Any]) -> str:
     return json.dumps(data, sort_keys=True, allow_nan=False, indent=1) + "\n"
 
 
-def write(folder: Path, drive: Drive, about: Mapping[str, Any]) -> Path:
-    """Write FOLDER/DIGEST.json at once or not at all, and return its path. Raises OSError."""
+def write(folder: Path, name: str, drive: Drive, about: Mapping[str, Any]) -> Path:
+    """Write FOLDER/NAME.json at once or not at all, and return its path. Raises OSError."""
     folder.mkdir(parents=True, exist_ok=True)
-    path = folder / f"{drive.digest}.json"
+    path = folder / f"{name}.json"
     handle, temporary = tempfile.mkstemp(dir=folder, prefix=".", suffix=".part")
     try:
         with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as stream:
@@ -85,8 +87,6 @@ def fitted(drive: Drive, limits: Limits) -> Drive:
     """A drive that fits the set, with the set's inputs in the set's order; its digest may differ."""
     if drive.inputs == limits.inputs:
         return drive
-    import numpy as np
-
     values = np.zeros((drive.intervals, len(limits.inputs)))
     for column, name in enumerate(drive.inputs):
         values[:, limits.inputs.index(name)] = drive.values[:, column]

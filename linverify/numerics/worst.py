@@ -10,6 +10,7 @@ that finds a local maximum.
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 from typing import Any
 
@@ -17,6 +18,7 @@ import numpy as np
 
 from ..core.case import Course
 from ..core.model import Array, LocalModel
+from .hold import responses
 
 CLIMBS = 20  # linearizations of a sum of squares; in trials it stood still after 3 to 8
 WITHIN = 8  # places inside an interval at which a peak is looked for
@@ -31,40 +33,59 @@ class _Map:
     new: Array
 
 
-def weights(
-    model: LocalModel, signal: str, every: float, intervals: int, course: Course, share: float = 1.0
-) -> tuple[Array, Array]:
-    """What each row of a drive and each initial state adds to `signal` at time (intervals - 1 + share) * every.
+def weights(model: LocalModel, signal: str, every: float, intervals: int, course: Course) -> tuple[Array, Array]:
+    """What each row of a drive and each initial state adds to `signal` at the end of the horizon.
 
-    Returns (rows (K, m), offsets (n,)) in units of the signal per unit of the input or state; the value inside the
-    last interval, left of a jump that follows. For a difference equation `share` is rounded to whole steps.
+    Returns (rows (K, m), offsets (n,)) in units of the signal per unit of the input or state; left of the last instant.
     Raises ValueError for a signal that is neither state nor output of the model.
     """
-    read, feed = _row(model, signal)
-    whole, part = _map(model, every, course, 1.0), _map(model, every, course, share)
-    rows = np.zeros((intervals, len(model.inputs)))
-    reached = share if course == "straight" else 1.0
-    rows[-1] = read @ part.new + feed * reached
-    if intervals > 1:
-        rows[-2] = read @ part.before + feed * (1.0 - reached)
-    back = read @ part.state
-    for k in range(intervals - 2, -1, -1):
-        rows[k] += back @ whole.new
-        if k > 0:
-            rows[k - 1] += back @ whole.before
-        back = back @ whole.state
-    return rows, back
+    rows, offsets, _ = _weights(model, (signal,), every, intervals, course, 1.0)
+    return rows[0], offsets[0]
 
 
-def largest_deviation(model: LocalModel, name: str, signal: str, every: float, intervals: int, course: Course) -> float:
-    """Largest |deviation| of `signal` at any time of the horizon when input `name` alone moves within +-1.
+def reaches(
+    model: LocalModel, signals: Sequence[str], every: float, intervals: int, course: Course
+) -> tuple[Array, Array]:
+    """How far unit inputs and unit initial states can move signals of the local model at any time of the horizon.
 
-    The L1 norm of the response, the worst over places inside an interval; in units of the signal per unit of the input.
+    Returns (inputs (q, m), states (q, n)): the largest |deviation| when one input alone moves within +-1 (the L1 norm
+    of its response, the worst over places inside an interval), and when one state starts one unit off.
+    Raises ValueError for a signal that is neither state nor output of the model.
     """
-    column = model.inputs.index(name)
-    shares = [(place + 1) / WITHIN for place in range(WITHIN)]
-    sums = [np.sum(np.abs(weights(model, signal, every, intervals, course, share)[0][:, column])) for share in shares]
-    return float(max(sums))
+    inputs = np.zeros((len(signals), len(model.inputs)))
+    states = np.abs(np.stack([_row(model, signal)[0] for signal in signals]))
+    for place in range(WITHIN):
+        rows, _, largest = _weights(model, signals, every, intervals, course, (place + 1) / WITHIN)
+        inputs = np.maximum(inputs, np.abs(rows).sum(axis=1))
+        states = np.maximum(states, largest)
+    return inputs, states
+
+
+def _weights(
+    model: LocalModel, signals: Sequence[str], every: float, intervals: int, course: Course, share: float
+) -> tuple[Array, Array, Array]:
+    """As `weights` for several signals, at time (intervals - 1 + share) * every.
+
+    Returns rows (q, K, m), offsets (q, n), and the largest |effect| of each initial state in any interval (q, n). For a
+    difference equation `share` is rounded to whole steps.
+    """
+    pairs = [_row(model, signal) for signal in signals]
+    read, feed = np.stack([pair[0] for pair in pairs]), np.stack([pair[1] for pair in pairs])
+    whole, part = _map(model, every, course, 1.0), _map(model, every, course, share)
+    rows = np.zeros((len(signals), intervals, len(model.inputs)))
+    reached = share if course == "straight" else 1.0
+    rows[:, -1] = read @ part.new + feed * reached
+    if intervals > 1:
+        rows[:, -2] = read @ part.before + feed * (1.0 - reached)
+    back = read @ part.state
+    largest = np.abs(back)
+    for k in range(intervals - 2, -1, -1):
+        rows[:, k] += back @ whole.new
+        if k > 0:
+            rows[:, k - 1] += back @ whole.before
+        back = back @ whole.state
+        largest = np.maximum(largest, np.abs(back))
+    return rows, back, largest
 
 
 def furthest(rows: Array, low: Array, high: Array, change: Array) -> Array:
@@ -134,18 +155,11 @@ def _map(model: LocalModel, every: float, course: Course, share: float) -> _Map:
 
 
 def _continuous(model: LocalModel, every: float, course: Course, share: float) -> _Map:
-    from scipy.linalg import expm
-
-    n, m = len(model.states), len(model.inputs)
-    block = np.zeros((n + 2 * m, n + 2 * m))
-    block[:n, :n] = model.A * (every * share)
-    block[:n, n : n + m] = model.B * (every * share)
-    block[n : n + m, n + m :] = np.eye(m)
-    power = np.asarray(expm(block), dtype=np.float64)
-    state, constant, rising = power[:n, :n], power[:n, n : n + m], power[:n, n + m :] * share
+    P, Q, R = responses(model.A, model.B, np.array([every * share]))
+    rising = R[0] / every
     if course == "held":
-        return _Map(state, np.zeros((n, m)), constant)
-    return _Map(state, constant - rising, rising)
+        return _Map(P[0], np.zeros_like(Q[0]), Q[0])
+    return _Map(P[0], Q[0] - rising, rising)
 
 
 def _discrete(model: LocalModel, steps: int, course: Course, share: float) -> _Map:

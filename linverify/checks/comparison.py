@@ -1,0 +1,129 @@
+"""Everything that one `follows` check compares with: drives allowed, bands, rig and how finely it starts."""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..core.case import Band, Case, DriveSet
+from ..core.drive import Drive
+from ..core.model import Array, LocalModel
+from ..drives.declared import Limits, declared
+from ..numerics.simulate import Fidelity, Rig, Runs, run, run_alone
+from ..numerics.worst import reaches
+from .bands import Figures, joined, judged
+from .study import Study
+
+TOLERANCE = 1e-3  # of the state errors that bands allow; the halved grid shows whether that is enough
+PHASE = 0.2  # radians of the fastest oscillation between samples: peaks in between are missed by 0.5 % of its size
+NODES = (4, 8, 16, 32, 64)
+BATCH = 256  # drives simulated at once; the trajectories of a batch are let go before the next
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Comparison:
+    """One set of drives at one operating point, ready to be run. `exits`: unpredicted exits fail."""
+
+    case: Case
+    drives: DriveSet
+    bands: tuple[Band, ...]
+    limits: Limits
+    rig: Rig
+    start: Fidelity
+    exits: bool
+
+    @property
+    def id(self) -> str:
+        """What the seeds and the file names of this check are made from."""
+        name = f"follows.{self.drives.name}" if self.drives.name else "follows"
+        return f"{self.case.spec}::{self.case.point}::{name}"
+
+    @property
+    def units(self) -> dict[str, str]:
+        """Unit of every state, input and output."""
+        plant = self.case.plant
+        return {**plant.states, **plant.inputs, **(plant.outputs or {})}
+
+    def figures(self, drives: Sequence[Drive], fidelity: Fidelity) -> tuple[Figures, Figures, tuple[str, ...]]:
+        """Run drives in batches: figures against the local model, against one that does not move, and what went wrong.
+
+        The last holds a sentence for each drive that could not be followed, else an empty string.
+        """
+        seen, still, wrong = [], [], []
+        for first in range(0, len(drives), BATCH):
+            runs = run(self.rig, drives[first : first + BATCH], fidelity)
+            seen.append(judged(runs, self.bands))
+            still.append(judged(runs, self.bands, model=np.zeros_like(runs.model)))
+            wrong += troubles(runs)
+        return joined(seen), joined(still), tuple(wrong)
+
+    def alone(self, drive: Drive, fidelity: Fidelity) -> tuple[Figures, Runs]:
+        """The canonical run of one drive, from which every quoted figure comes."""
+        runs = run_alone(self.rig, drive, fidelity)
+        return judged(runs, self.bands), runs
+
+
+def troubles(runs: Runs) -> list[str]:
+    """Why each drive could not be followed; empty strings for those that could."""
+    pairs = zip(runs.outcomes, runs.errors, strict=True)
+    return [
+        "" if outcome.done else ": ".join(part for part in (outcome.value, error) if part) for outcome, error in pairs
+    ]
+
+
+def comparison(study: Study, name: str) -> Comparison:
+    """The comparison for the set of drives called `name`. Raises KeyError for a name that the case does not have."""
+    case, model, point = study.case, study.model(), study.point()
+    drives = case.drive_set(name)
+    bands = case.bands_for(name)
+    limits = declared(drives, point, model, case.envelope, case.rate_limits)
+    signals = tuple(dict.fromkeys(band.signal for band in bands))
+    plant = study.bound
+    watched = {signal: room for signal, room in case.envelope.items() if signal not in plant.inputs}
+    rig = Rig(plant, point, model, signals, watched, _weights(study, model, limits, bands, signals))
+    start = Fidelity(_nodes(model, drives.every), TOLERANCE)
+    return Comparison(case, drives, bands, limits, rig, start, case.exits.mismatch == "fail")
+
+
+def _nodes(model: LocalModel, every: float) -> int:
+    """Samples an interval that the local model's fastest oscillation needs."""
+    if model.step is not None:
+        return NODES[0]
+    fastest = float(np.max(np.abs(np.linalg.eigvals(model.A).imag), initial=0.0))
+    return next((nodes for nodes in NODES if fastest * every / nodes <= PHASE), NODES[-1])
+
+
+def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Band], signals: tuple[str, ...]) -> Array:
+    """Absolute error of each state that no band would notice: what moves a compared signal by its limit at most.
+
+    An error in a state reaches a signal later, through the dynamics: the largest effect over the horizon counts. The
+    size of the state's own motion under these drives bounds the weight from above.
+    """
+    names = (*model.states.names, *signals)
+    inputs, states = reaches(model, names, limits.every, limits.intervals, limits.course)
+    moved = dict(zip(names, _excursions(model, limits, inputs, states), strict=True))
+    effect = dict(zip(names, states, strict=True))
+    nominal = np.array([study.case.nominal.get(name, 1.0) for name in model.states.names])
+    excursion = np.array([moved[name] for name in model.states.names])
+    excursion = np.where(excursion > 0.0, np.minimum(excursion, nominal), nominal)
+    found = excursion
+    for band in bands:
+        size = band.limit if band.kind != "relative" else band.fraction * moved[band.signal]
+        if size > 0.0:
+            reach = effect[band.signal]
+            found = np.minimum(found, np.divide(size, reach, out=np.full(reach.shape, np.inf), where=reach > 0.0))
+    # a growing mode would ask for weights without end; the halved grid judges what they gave
+    weights: Array = np.maximum(found, 1e-6 * excursion)
+    return weights
+
+
+def _excursions(model: LocalModel, limits: Limits, inputs: Array, states: Array) -> Array:
+    """Largest possible deviation of each signal in the local model under these drives and offsets together."""
+    total = np.zeros(len(inputs))
+    for column, name in enumerate(limits.inputs):
+        total += max(limits.high[column], -limits.low[column]) * inputs[:, model.inputs.index(name)]
+    for column, name in enumerate(limits.offsets):
+        total += max(limits.offset_high[column], -limits.offset_low[column]) * states[:, model.states.index(name)]
+    return total

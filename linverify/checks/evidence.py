@@ -1,0 +1,93 @@
+"""Saved drives: the file that a finding can be replayed from, and pinned by copying."""
+
+from __future__ import annotations
+
+import hashlib
+import math
+from collections.abc import Mapping
+from typing import Any
+
+from ..core.case import Options
+from ..core.drive import Drive
+from ..core.model import Array
+from ..core.verdict import Evidence, Figure
+from ..drives import pinned
+from ..drives.wording import worded
+from ..numerics.simulate import Fidelity, Runs
+from .comparison import Comparison
+
+FOLDER = "evidence"
+DIGITS = 9  # of the saved trajectories: for drawing and comparing, not for judging
+
+
+def key_of(comparison: Comparison, drive: Drive) -> str:
+    """Twelve hexadecimal digits that name this drive at this check: the same step may break several points."""
+    return hashlib.sha256(f"{comparison.id}\n{drive.digest}".encode()).hexdigest()[:12]
+
+
+def text_of(comparison: Comparison, drive: Drive) -> str:
+    """The drive in one readable line."""
+    return worded(drive, comparison.units, comparison.case.plant.time_unit)
+
+
+def saved(
+    comparison: Comparison,
+    options: Options,
+    role: str,
+    drive: Drive,
+    runs: Runs,
+    fidelity: Fidelity,
+    figures: tuple[Figure, ...],
+) -> Evidence:
+    """Save a drive with its trajectories where reports go, if they are written at all, and name it. Raises OSError.
+
+    fidelity: that of the coarser of both runs, with which a replay begins.
+    """
+    key, text = key_of(comparison, drive), text_of(comparison, drive)
+    if options.reports is not None:
+        about = {
+            "check": comparison.id,
+            "role": role,
+            "text": text,
+            "fidelity": {"nodes": fidelity.nodes, "tolerance": fidelity.tolerance},
+            "figures": [_figure(figure) for figure in figures],
+            "signals": list(runs.signals),
+            "units": {name: comparison.units[name] for name in runs.signals},
+            "time_unit": comparison.case.plant.time_unit,
+            "times": _rows(runs.times),
+            "plant": {name: _rows(runs.plant[at, :, :, 0]) for at, name in enumerate(runs.signals)},
+            "model": {name: _rows(runs.model[at, :, :, 0]) for at, name in enumerate(runs.signals)},
+            "ended": float(runs.ended[0]),
+        }
+        pinned.write(options.reports / FOLDER, key, drive, about)
+    return Evidence(role, key, text)
+
+
+def fidelity_of(about: Mapping[str, Any], otherwise: Fidelity) -> Fidelity:
+    """The fidelity that a drive file was saved with; `otherwise` where it names none that can be used."""
+    try:
+        named = about["fidelity"]
+        return Fidelity(int(named["nodes"]), float(named["tolerance"]))
+    except (KeyError, TypeError, ValueError):
+        return otherwise
+
+
+def _figure(figure: Figure) -> dict[str, Any]:
+    return {
+        "what": figure.what,
+        "signal": figure.signal,
+        "worst": _number(figure.worst),
+        "limit": _number(figure.limit),
+        "error": _number(figure.error),
+        "unit": figure.unit,
+        "when": _number(figure.when),
+    }
+
+
+def _rows(values: Array) -> list[list[float | None]]:
+    return [[_number(float(value)) for value in row] for row in values]
+
+
+def _number(value: float) -> float | None:
+    """To nine digits; what is not finite (after the envelope was left) becomes null."""
+    return float(f"{value:.{DIGITS}g}") if math.isfinite(value) else None

@@ -41,6 +41,7 @@ class Kind(Enum):
     BANDS = "a group of signal: error band"
     BLOCK = "a group of words"
     NAMED = "a group of name: value"
+    POINTS = "a group of name: operating point"
     NONE = "nothing in this version"
 
 
@@ -57,12 +58,14 @@ class Row:
     required: bool = False
     shared: bool = True  # may stand in defaults.yaml
     choices: tuple[str, ...] = ()
+    refusal: str = ""  # what is told of any other choice
+    sign: str = ""  # "+": above zero, "0+": zero or above
     available: bool = True
 
 
-def each(kind: Kind, meaning: str = "", of: tuple[Row, ...] = (), dimension: str = "") -> tuple[Row, ...]:
+def each(kind: Kind, of: tuple[Row, ...] = (), dimension: str = "", sign: str = "") -> tuple[Row, ...]:
     """What stands behind every name of a NAMED word."""
-    return (Row("*", kind, meaning, of, dimension),)
+    return (Row("*", kind, "", of, dimension, sign=sign),)
 
 
 def later(word: str, meaning: str) -> Row:
@@ -77,26 +80,26 @@ LIMIT_WORDS = (
     Row("range", Kind.RANGE, "both limits", dimension=SIGNAL),
     Row("min", Kind.QUANTITY, "lower limit", dimension=SIGNAL),
     Row("max", Kind.QUANTITY, "upper limit", dimension=SIGNAL),
-    Row("rate", Kind.QUANTITY, "largest change per time", dimension="the signal's per time"),
+    Row("rate", Kind.QUANTITY, "largest change per time", dimension="the signal's per time", sign="+"),
 )
 
 DISCERNS = (
-    Row("gain", Kind.FRACTION, "a gain error of this size must show"),
-    Row("delay", Kind.QUANTITY, "a delay of this size must show", dimension="time"),
+    Row("gain", Kind.FRACTION, "a gain error of this size must show", sign="+"),
+    Row("delay", Kind.QUANTITY, "a delay of this size must show", dimension="time", sign="+"),
 )
 
 DRIVE_WORDS = (
-    Row("horizon", Kind.QUANTITY, "length of a drive", dimension="time", required=True),
-    Row("every", Kind.QUANTITY, "inputs change at these instants only", dimension="time", required=True),
+    Row("horizon", Kind.QUANTITY, "length of a drive", dimension="time", required=True, sign="+"),
+    Row("every", Kind.QUANTITY, "inputs change at these instants only", dimension="time", required=True, sign="+"),
     Row("course", Kind.CHOICE, "between the instants", default="held", choices=("held", "straight")),
     Row("amplitude", Kind.NAMED, "how far each input moves about trim", each(Kind.AMPLITUDE, dimension=SIGNAL)),
     Row("rate", Kind.NAMED, "how fast each input moves; default from the envelope",
-        each(Kind.QUANTITY, dimension="the signal's per time")),
+        each(Kind.QUANTITY, dimension="the signal's per time", sign="+")),
     Row("offsets", Kind.NAMED, "initial states off the operating point, up to this much",
-        each(Kind.QUANTITY, dimension=SIGNAL)),
+        each(Kind.QUANTITY, dimension=SIGNAL, sign="+")),
     Row("shapes", Kind.CHOICES, "menu of the random drives", default="[" + ", ".join(SHAPES) + "]", choices=SHAPES),
-    Row("count", Kind.COUNT, "how many random drives", default="300"),
-    Row("search", Kind.COUNT, "how many examples hunt the worst case", default="150"),
+    Row("count", Kind.COUNT, "how many random drives", default="300", sign="+"),
+    Row("search", Kind.COUNT, "how many examples hunt the worst case", default="150", sign="0+"),
     later("loop", "both models run with this loop closed"),
     later("at", "drives add to the set point, or to what the loop moves"),
     Row("discerns", Kind.BLOCK, "what these drives must be able to show", DISCERNS),
@@ -104,13 +107,13 @@ DRIVE_WORDS = (
 )  # fmt: skip
 
 BAND_WORDS = (
-    Row("peak", Kind.QUANTITY, "largest error", dimension=SIGNAL),
-    Row("rms", Kind.QUANTITY, "root mean square of the error", dimension=SIGNAL),
-    Row("relative", Kind.RELATIVE, "largest error over the plant's own peak deviation"),
+    Row("peak", Kind.QUANTITY, "largest error", dimension=SIGNAL, sign="+"),
+    Row("rms", Kind.QUANTITY, "root mean square of the error", dimension=SIGNAL, sign="+"),
+    Row("relative", Kind.RELATIVE, "largest error over the plant's own peak deviation", sign="+"),
     Row("wider_of", Kind.WIDER_OF, "the wider of a size and a share of the plant's own peak deviation",
-        dimension=SIGNAL),
-    Row("final", Kind.QUANTITY, "error at the end of completed drives", dimension=SIGNAL),
-    Row("from", Kind.QUANTITY, "nothing before this time counts", dimension="time"),
+        dimension=SIGNAL, sign="+"),
+    Row("final", Kind.QUANTITY, "error at the end of completed drives", dimension=SIGNAL, sign="+"),
+    Row("from", Kind.QUANTITY, "nothing before this time counts", dimension="time", sign="0+"),
 )  # fmt: skip
 
 SHARED_POINT_WORDS = (
@@ -119,7 +122,7 @@ SHARED_POINT_WORDS = (
     Row("start", Kind.NAMED, "first guess of the search", each(Kind.QUANTITY, dimension=SIGNAL)),
     Row("rates", Kind.NAMED, "states that drift freely or move steadily; default 0",
         each(Kind.RATE, dimension="the signal's per time")),
-    Row("minimize", Kind.NAMED, "weights of squared distances from `start`", each(Kind.NUMBER)),
+    Row("minimize", Kind.NAMED, "weights of squared distances from `start`", each(Kind.NUMBER, sign="+")),
     Row("expect", Kind.NAMED, "trimmed values that must not wander", each(Kind.EXPECT, dimension=SIGNAL)),
     Row("parameters", Kind.NAMED, "overrides of the plant's parameters",
         each(Kind.QUANTITY, dimension="the parameter's")),
@@ -132,7 +135,7 @@ SHARED_POINT_WORDS = (
 AXIS_WORDS = (
     Row("from", Kind.QUANTITY, "first value", dimension=SIGNAL, required=True),
     Row("to", Kind.QUANTITY, "last value", dimension=SIGNAL, required=True),
-    Row("count", Kind.COUNT, "how many values", required=True),
+    Row("count", Kind.COUNT, "how many values", required=True, sign="+"),
 )
 
 POINT_WORDS = (
@@ -143,12 +146,13 @@ POINT_WORDS = (
 )  # fmt: skip
 
 LOCAL_MODEL_WORDS = (
-    Row("source", Kind.CHOICE, "where local models come from", default="derive", choices=("derive",)),
+    Row("source", Kind.CHOICE, "where local models come from", default="derive", choices=("derive",),
+        refusal="local models from files are not available in this version"),
     later("keep", "states, inputs, outputs of a reduced model"),
     later("others", "what is left out is frozen or settled"),
     later("with", "loops that are closed inside the model"),
     later("agree", "delivered against derived"),
-)
+)  # fmt: skip
 
 REQUIREMENT_WORDS = (
     Row("text", Kind.TEXT, "the requirement"),
@@ -165,19 +169,20 @@ SPEC_WORDS = (
     Row("time", Kind.QUANTITY, "the time of trim, for a plant that depends on it", dimension="time"),
     later("wraps", "angles compared modulo a turn"),
     later("delays", "dead time outside the plant function"),
-    Row("envelope", Kind.NAMED, "where the plant may be", each(Kind.LIMITS, "", LIMIT_WORDS, SIGNAL)),
+    Row("envelope", Kind.NAMED, "where the plant may be", each(Kind.LIMITS, LIMIT_WORDS, SIGNAL)),
     Row("exits", Kind.BLOCK, "what leaving the envelope means", (
-        Row("complete", Kind.FRACTION, "share of the random drives that must run to the end", default="90 %"),
+        Row("complete", Kind.FRACTION, "share of the random drives that must run to the end", default="90 %", sign="+"),
         Row("mismatch", Kind.CHOICE, "an exit that the local model did not predict", default="fail",
             choices=("fail", "report")))),
     Row("trims", Kind.BLOCK, "how exact an equilibrium is", (
-        Row("accuracy", Kind.NUMBER, "each rate, in nominal sizes of its state a time unit", default="1e-8"),)),
+        Row("accuracy", Kind.NUMBER, "each rate, in nominal sizes of its state a time unit", default="1e-8",
+            sign="+"),)),
     Row("every_point", Kind.BLOCK, "what all operating points share", SHARED_POINT_WORDS),
-    Row("operating_points", Kind.NAMED, "the operating points", each(Kind.BLOCK, "", POINT_WORDS), required=True,
+    Row("operating_points", Kind.POINTS, "the operating points", each(Kind.BLOCK, POINT_WORDS), required=True,
         shared=False),
     Row("local_models", Kind.BLOCK, "what is being verified", LOCAL_MODEL_WORDS),
     Row("differentiable", Kind.BLOCK, "what a kink is", (
-        Row("slope_gap", Kind.FRACTION, "largest gap of one-sided slopes", default="5 %"),
+        Row("slope_gap", Kind.FRACTION, "largest gap of one-sided slopes", default="5 %", sign="+"),
         Row("side", Kind.NAMED, "inputs that can only move one way",
             (Row("*", Kind.CHOICE, "", choices=("up", "down")),)))),
     Row("drives", Kind.DRIVES, "the input sequences that both models are driven with", DRIVE_WORDS),
@@ -191,7 +196,7 @@ SPEC_WORDS = (
     later("handover", "between neighbouring operating points"),
     later("coverage", "share of the envelope that is verified"),
     later("budget", "real-time use"),
-    Row("requirements", Kind.NAMED, "traceability", each(Kind.BLOCK, "", REQUIREMENT_WORDS), shared=False),
+    Row("requirements", Kind.NAMED, "traceability", each(Kind.BLOCK, REQUIREMENT_WORDS), shared=False),
     later("accepted", "known shortfalls that are signed for"),
 )  # fmt: skip
 
@@ -229,8 +234,8 @@ def reference(rows: tuple[Row, ...] = SPEC_WORDS, above: str = "") -> Iterator[t
         behind = ", ".join(row.choices) if row.kind is Kind.CHOICE else row.kind.value
         if row.word != "*":
             yield path, behind, row.default or ("required" if row.required else ""), row.meaning
-        inner = row.of[0].of if row.kind is Kind.NAMED else row.of
-        between = ".NAME." if row.kind in (Kind.NAMED, Kind.BANDS) else "."
+        inner = row.of[0].of if row.kind in (Kind.NAMED, Kind.POINTS) else row.of
+        between = ".NAME." if row.kind in (Kind.NAMED, Kind.POINTS, Kind.BANDS) else "."
         if above.startswith("operating_points.") and row in SHARED_POINT_WORDS:
             continue
         if above and row.kind in (Kind.DRIVES, Kind.BANDS):

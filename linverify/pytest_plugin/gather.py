@@ -105,6 +105,7 @@ class Gather:
         self.verdicts: dict[str, str] = {}  # id -> JSON
         self.unread: list[str] = []  # specs with mistakes
         self.why: dict[str, str] = {}  # id -> why there is no verdict
+        self.stopped = ""  # why the run ended early, where pytest says so
         self.lines: list[str] = []
 
     def pytest_runtest_logreport(self, report: pytest.TestReport) -> None:
@@ -140,6 +141,7 @@ class Gather:
         """Audit, write, and set the exit status."""
         if self.config.getoption("collectonly"):
             return
+        self.stopped = str(session.shouldfail or session.shouldstop or "")
         passed = self._conclude()
         if not passed and session.exitstatus in (pytest.ExitCode.OK, pytest.ExitCode.NO_TESTS_COLLECTED):
             nothing = not self.ledger.selected
@@ -186,6 +188,7 @@ class Gather:
             except RecordError as error:
                 self.why[name] = f"its verdict arrived broken: {error}"
         missing = [name for name in ledger.selected if name not in verdicts]
+        ended = "the run ended before this check began" + (f": {self.stopped}" if self.stopped else "")
         partial = bool(
             self.unread
             or set(ledger.found) - set(ledger.read)
@@ -199,7 +202,7 @@ class Gather:
             sources=tuple(Path(name) for name in ledger.files),
             partial=partial,
             threads=ledger.threads,
-            why=dict(self.why),
+            why={name: self.why.get(name, ended) for name in missing},
         )
 
     def _nothing(self) -> str:

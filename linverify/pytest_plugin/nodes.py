@@ -18,7 +18,8 @@ from ..checks.judge import judge
 from ..core.case import Case, CheckAsk, Options
 from ..core.errors import SpecError
 from ..core.verdict import Status, Verdict
-from ..report import record, text
+from ..report import record, tables, text
+from ..run import evidence_folder
 from ..spec.bind import load
 from .gather import LEDGER, PROPERTY
 from .options import SETTINGS
@@ -99,7 +100,7 @@ class CheckItem(pytest.Function):
     def repr_failure(self, excinfo: pytest.ExceptionInfo[BaseException], style: Any = None) -> Any:
         """The report's text for a verdict; a traceback for anything else, which is a defect or a broken fixture."""
         if isinstance(excinfo.value, NotShown):
-            return text.failure(excinfo.value.verdict)
+            return failure_text(excinfo.value.verdict, evidence_folder(self.config.stash[SETTINGS].reports))
         return super().repr_failure(excinfo, style)
 
     def reportinfo(self) -> tuple[os.PathLike[str] | str, int | None, str]:
@@ -107,3 +108,14 @@ class CheckItem(pytest.Function):
         place = self.case.place
         line = place.line - 1 if Path(place.file).name == self.path.name else 0
         return self.path, line, f"{self.case.point}: {self.ask.name}"
+
+
+def failure_text(verdict: Verdict, evidence: str) -> str:
+    """The report's text; its first line says what was found, since pytest's own summary shows that line alone.
+
+    The id that the report's text begins with stands above it anyway. evidence: folder of the saved drives.
+    """
+    worst = max(tables.limits(verdict), key=tables.badness, default=None)
+    found = worst is not None and worst.status is verdict.status
+    head = text.figure_line(worst) if worst is not None and found else f"{verdict.status}: {verdict.reason}"
+    return "\n".join([head.split("\n")[0], *text.failure(verdict, evidence=evidence).splitlines()[1:]])

@@ -43,7 +43,9 @@ def pytest_configure(config: pytest.Config) -> None:
     from .gather import LEDGER, Gather, Ledger
     from .progress import Progress
 
-    config.stash[SETTINGS] = Settings.of(config)
+    config.stash[SETTINGS] = settings = Settings.of(config)
+    if settings.reports.is_file():
+        raise pytest.UsageError(f"--linverify-reports: {settings.reports.name} is a file, not a folder")
     ledger = config.stash[LEDGER] = Ledger(how=config.stash.get(THREADS_SET, "unknown"))
     config.pluginmanager.register(ledger, "linverify-ledger")
     if hasattr(config, "workerinput"):

@@ -1,0 +1,101 @@
+"""Details of checks as Markdown: known words in tables of their own, anything else readable and never an error."""
+
+from __future__ import annotations
+
+import math
+from typing import Any
+
+import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
+
+from linverify.report.details import blocks, cell
+from linverify.report.wire import plain, restored
+
+SIGNALS = {"states": [["speed", "m/s"], ["angle", "rad"]], "inputs": [["thrust", "N"]], "outputs": [["height", "m"]]}
+KEYS = st.text(max_size=8).filter(lambda key: not key.startswith("$"))
+VALUES = st.recursive(
+    st.none() | st.booleans() | st.integers() | st.floats() | st.text(max_size=60),
+    lambda inner: st.lists(inner, max_size=3) | st.dictionaries(KEYS, inner, max_size=3),
+    max_leaves=10,
+)
+WORDS = st.sampled_from(["states", "inputs", "outputs", "poles", "eigenvalues", "A", "B", "C", "D", "statistics", "x"])
+
+
+def squeezed(text: str) -> list[list[str]]:
+    """Cells of a grid, without its rule."""
+    rows = [[part.strip() for part in line.strip("|").split("|")] for line in text.splitlines()]
+    return [rows[0], *rows[2:]]
+
+
+def test_trimmed_values_stand_in_the_plants_order_with_units() -> None:
+    made = blocks({"inputs": {"thrust": 61000.0}, "states": {"angle": 0.05, "speed": 15.4333333}}, SIGNALS)
+    assert len(made) == 1
+    assert squeezed(made[0])[1:] == [
+        ["speed", "state", "15.4333 m/s"],
+        ["angle", "state", "0.05 rad"],
+        ["thrust", "input", "61000 N"],
+    ]
+
+
+@pytest.mark.parametrize(
+    ("value", "shown"),
+    [({"value": 3.0, "unit": "kn"}, "3 kn"), ([3.0, "kn"], "3 kn"), (3.0, "3"), (math.nan, "-"), ("free", "free")],
+)
+def test_values_may_bring_their_unit(value: object, shown: str) -> None:
+    assert squeezed(blocks({"states": {"foreign": value}}, {})[0])[1] == ["foreign", "state", shown]
+
+
+def test_eigenvalues_show_frequency_and_damping() -> None:
+    pole = {"damping": 0.36, "frequency": 2.2, "imag": -2.1, "real": -0.8, "slow": True}
+    caption, table = blocks({"poles": [pole]}, SIGNALS, "s")
+    assert caption == "Eigenvalues of the local model, per s:"
+    assert squeezed(table) == [["eigenvalue", "frequency", "damping", "slow"], ["-0.8 - 2.1j", "2.2", "0.36", "yes"]]
+
+
+@pytest.mark.parametrize(
+    ("poles", "rows"),
+    [([[-1.0, 0.0], [0.5, 2.0]], [["-1"], ["0.5 + 2j"]]), ([-1.0, "at zero"], [["-1"], ["at zero"]])],
+)
+def test_eigenvalues_as_pairs_or_plain(poles: list[Any], rows: list[list[str]]) -> None:
+    assert squeezed(blocks({"eigenvalues": poles}, {})[1])[1:] == rows
+
+
+def test_matrices_carry_names_where_they_fit() -> None:
+    named = blocks({"A": [[0.0, 1.0], [-2.0, -3.0]], "B": [[1.0], [2.0]]}, SIGNALS)
+    assert squeezed(named[1]) == [["", "speed", "angle"], ["speed", "0", "1"], ["angle", "-2", "-3"]]
+    assert squeezed(named[3]) == [["", "thrust"], ["speed", "1"], ["angle", "2"]]
+    assert squeezed(blocks({"A": [[7.0]]}, SIGNALS)[1]) == [["", "1"], ["1", "7"]]
+
+
+def test_other_words_have_a_plain_form() -> None:
+    made = blocks(
+        {
+            "random_drives": 300,
+            "statistics": "a sentence that is longer than what fits well into a short cell",
+            "exits": [{"signal": "a|b", "count": 2}],
+            "seen": {"gain": 0.1},
+            "corners": ["one", "two"],
+            "empty": [],
+        },
+        {},
+    )
+    text = "\n".join(made)
+    assert "random drives" in made[0]
+    assert "statistics: a sentence" in text
+    assert "- one\n- two" in text
+    assert r"a\|b" in text
+    assert "empty" not in text
+
+
+def test_cells() -> None:
+    assert [cell(value) for value in (None, True, False, 0.1, "x", [1, 2], {"b_c": 1, "a": 2})] == [
+        "-", "yes", "no", "0.1", "x", "1, 2", "a 2, b c 1",
+    ]  # fmt: skip
+
+
+@settings(deadline=None, derandomize=True, max_examples=300)
+@given(st.dictionaries(WORDS, VALUES, max_size=4))
+def test_no_details_break_the_report(details: dict[str, Any]) -> None:
+    told = restored(plain(details))
+    assert all(isinstance(block, str) for block in blocks(told, SIGNALS, "s"))

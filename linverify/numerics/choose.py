@@ -62,7 +62,7 @@ def chosen(task: Task, candidates: list[Candidate]) -> TrimResult:
 
 
 def accepted(task: Task, candidate: Candidate, others: tuple[OperatingPoint, ...]) -> TrimResult:
-    """The result with `candidate` as its point, if the plant answers there and every residual is within the accuracy."""
+    """The result with `candidate` as its point, if the plant answers there and the residuals keep the accuracy."""
     point = candidate.point
     if candidate.error is not None or point is None:
         message = f"at the equilibrium that the search found, {candidate.error}"

@@ -7,7 +7,7 @@ equations: the diagnosis of a failed trim and limits on outputs are then ordinar
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Iterable, Mapping
 from dataclasses import dataclass, field, replace
 
 import numpy as np
@@ -69,6 +69,11 @@ class Equations:
         """Names of the equations: the state whose rate must vanish, or the output that is held."""
         states, outputs = self.plant.states.names, self.plant.outputs.names
         return tuple(states[i] for i in self.rate_rows) + tuple(outputs[i] for i in self.output_rows)
+
+    @property
+    def all_unknowns(self) -> tuple[str, ...]:
+        """Names of the entries of z: the unknowns, then for each slack the name of its equation."""
+        return self.unknowns + tuple(self.names[slack.row] for slack in self.slacks)
 
     @property
     def count(self) -> int:
@@ -179,19 +184,23 @@ def equations(
     return Equations(
         plant=plant,
         time=time,
-        base_x=np.array([guess[name] for name in states.names]),
-        base_u=np.array([guess[name] for name in inputs.names]),
+        base_x=_floats(guess[name] for name in states.names),
+        base_u=_floats(guess[name] for name in inputs.names),
         unknowns=names,
-        sizes=np.array([nominal.get(name, 1.0) for name in names]),
-        low=np.array([limits[name].low for name in names]),
-        high=np.array([limits[name].high for name in names]),
+        sizes=_floats(nominal.get(name, 1.0) for name in names),
+        low=_floats(limits[name].low for name in names),
+        high=_floats(limits[name].high for name in names),
         rate_rows=rows,
-        prescribed=np.array([ask.rates.get(states.names[i], 0.0) for i in rows]),
-        rate_sizes=np.array([nominal.get(states.names[i], 1.0) for i in rows]),
+        prescribed=_floats(ask.rates.get(states.names[i], 0.0) for i in rows),
+        rate_sizes=_floats(nominal.get(states.names[i], 1.0) for i in rows),
         output_rows=np.array(output_rows, dtype=np.intp),
-        wanted=np.array([held[plant.outputs.names[i]] for i in output_rows]),
-        output_sizes=np.array([nominal.get(plant.outputs.names[i], 1.0) for i in output_rows]),
+        wanted=_floats(held[plant.outputs.names[i]] for i in output_rows),
+        output_sizes=_floats(nominal.get(plant.outputs.names[i], 1.0) for i in output_rows),
     )
+
+
+def _floats(values: Iterable[float]) -> Array:
+    return np.array(list(values), dtype=np.float64)
 
 
 def bounds(plant: BoundPlant, envelope: Mapping[str, Interval], name: str) -> Interval:
@@ -213,7 +222,11 @@ def first_guess(ask: TrimAsk, limits: Interval, name: str) -> float:
 
 
 def outputs_outside(
-    plant: BoundPlant, ask: TrimAsk, envelope: Mapping[str, Interval], nominal: Mapping[str, float], point: OperatingPoint
+    plant: BoundPlant,
+    ask: TrimAsk,
+    envelope: Mapping[str, Interval],
+    nominal: Mapping[str, float],
+    point: OperatingPoint,
 ) -> dict[str, float]:
     """Outputs of `point` beyond their limits, and the limit that each crosses.
 
@@ -229,11 +242,40 @@ def outputs_outside(
     return crossed
 
 
+def with_output_limits(
+    base: Equations,
+    ask: TrimAsk,
+    envelope: Mapping[str, Interval],
+    nominal: Mapping[str, float],
+    *,
+    unknowns: tuple[str, ...],
+    loose: bool,
+) -> Equations:
+    """The equations with an unknown for each output that has limits or a weight, so that the box keeps it inside.
+
+    With `loose` the held outputs may move as well: their slack is the distance from the value asked.
+    """
+    plant, held = base.plant, held_outputs(base.plant, ask)
+    watched = [
+        name
+        for name in plant.outputs.names
+        if name not in plant.states and name not in held and (name in envelope or name in ask.minimize)
+    ]
+    outputs = {**held, **dict.fromkeys(watched, 0.0)}
+    wide = equations(plant, ask, envelope, nominal, base.time, unknowns=unknowns, outputs=outputs)
+    slacks = []
+    for i, output in enumerate(wide.output_rows):
+        name = plant.outputs.names[output]
+        if loose or name in watched:
+            limits, size, wanted = envelope.get(name, EVERYWHERE), wide.output_sizes[i], wide.wanted[i]
+            row = len(wide.rate_rows) + i
+            slacks.append(Slack(row, (limits.low - wanted) / size, (limits.high - wanted) / size))
+    return replace(wide, slacks=tuple(slacks), tally=base.tally)
+
+
 def held_outputs(plant: BoundPlant, ask: TrimAsk) -> dict[str, float]:
     """Held values that are outputs only; an output with a state's name is held as that state."""
-    return {
-        name: value for name, value in ask.hold.items() if name not in plant.states and name not in plant.inputs
-    }
+    return {name: value for name, value in ask.hold.items() if name not in plant.states and name not in plant.inputs}
 
 
 def _in_plant_order(plant: BoundPlant, names: tuple[str, ...]) -> tuple[str, ...]:

@@ -11,7 +11,6 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..core.model import Array
-
 from .equations import Equations
 from .newton import jacobian, largest, shortest_step
 from .roots import Root, open_directions
@@ -34,11 +33,11 @@ def family(system: Equations, root: Root, accuracy: float) -> Family | None:
     names: set[str] = set()
     length = 0.0
     for direction in root.open_directions.T:
-        there, back = (_walk(system, root.z, sign * direction, accuracy) for sign in (1.0, -1.0))
+        (there, end), (back, other) = (_walk(system, root.z, sign * direction, accuracy) for sign in (1.0, -1.0))
         room = _room(system, root.z, direction) + _room(system, root.z, -direction)
         # between close bounds a family is as long as the bounds let it be
         if there + back >= min(FAR, 0.9 * room) and there + back > 10 * SHORTEST_STEP:
-            weights = np.abs(direction[: len(system.unknowns)])
+            weights = np.maximum(np.abs(end - root.z), np.abs(other - root.z))[: len(system.unknowns)]
             moving = weights >= TAKES_PART * weights.max(initial=0.0)
             names |= {name for name, moves in zip(system.unknowns, moving, strict=True) if moves}
             length = max(length, there + back)
@@ -47,8 +46,8 @@ def family(system: Equations, root: Root, accuracy: float) -> Family | None:
     return Family(tuple(name for name in system.unknowns if name in names), length)
 
 
-def _walk(system: Equations, z: Array, direction: Array, accuracy: float) -> float:
-    """Arc length, at most FAR, over which solutions continue from z (q,) along `direction`."""
+def _walk(system: Equations, z: Array, direction: Array, accuracy: float) -> tuple[float, Array]:
+    """Arc length, at most FAR, over which solutions continue from z (q,) along `direction`, and where that ends."""
     length, step = 0.0, FIRST_STEP
     low, high = system.box
     while length < FAR and step >= SHORTEST_STEP:
@@ -63,7 +62,7 @@ def _walk(system: Equations, z: Array, direction: Array, accuracy: float) -> flo
         length += float(np.linalg.norm(landed - z))
         direction = _onward(system, landed, direction)
         z, step = landed, min(1.5 * step, LONGEST_STEP)
-    return length
+    return length, z
 
 
 def _corrected(system: Equations, z: Array, direction: Array, accuracy: float) -> Array | None:

@@ -9,7 +9,7 @@ import numpy as np
 from ..core.model import Array
 from ..core.outcome import Outcome
 from .choose import Candidate, accepted, candidate_at
-from .equations import Equations, Slack, bounds, equations, first_guess, held_outputs
+from .equations import Equations, bounds, first_guess, with_output_limits
 from .nearest import Nearest, feasible_ends, nearest
 from .newton import jacobian, joined, pseudo_inverse, solve
 from .no_trim import none
@@ -25,8 +25,11 @@ APART = 1e-3  # nominal sizes: nearer minima are one
 
 
 def least(task: Task) -> TrimResult:
-    """The equilibrium of least distance; NOT_UNIQUE where the weights leave a direction free or two are equally near."""
-    wide = _with_output_limits(task)
+    """The equilibrium of least distance; NOT_UNIQUE where a direction is left free or two are equally near."""
+    system = task.system
+    wide = with_output_limits(
+        system, task.ask, task.envelope, task.nominal, unknowns=system.unknowns, loose=False
+    )
     weights, target = _weights(task, wide)
     starts = np.concatenate([start_points(wide), target[:, np.newaxis]], axis=1)
     feasible = feasible_ends(wide, starts, weights, target, task.ask.accuracy, most=DESCENTS)
@@ -71,7 +74,7 @@ def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:
         Outcome.NOT_UNIQUE,
         others=(candidate.point,) if candidate.point else (),
         free_names=moving,
-        message=f"the weights of `minimize` leave {', '.join(moving)} free to change together{at}; weigh one of them too",
+        message=f"the weights of `minimize` leave {', '.join(moving)} free to change{at}; weigh one of them too",
     )
 
 
@@ -79,7 +82,7 @@ def _tie(task: Task, candidates: list[Candidate]) -> TrimResult:
     points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
     plant, names = task.system.plant, task.system.unknowns
     each = "; ".join(f"({i}) {told_list(plant, names, point)}" for i, point in enumerate(points, 1))
-    return TrimResult(Outcome.NOT_UNIQUE, others=points, message=f"equally near to `start` in the weights given: {each}")
+    return TrimResult(Outcome.NOT_UNIQUE, others=points, message=f"equally near to `start` in these weights: {each}")
 
 
 def _root(system: Equations, z: Array) -> Root:
@@ -90,35 +93,11 @@ def _root(system: Equations, z: Array) -> Root:
     return Root(z, float(np.abs(at).max(initial=0.0)), error, np.zeros((z.size, 0)))
 
 
-def _with_output_limits(task: Task) -> Equations:
-    """The equations with an unknown for every output that has limits or a weight, so that the box keeps it inside."""
-    plant, held = task.system.plant, held_outputs(task.system.plant, task.ask)
-    limited = [
-        name
-        for name in plant.outputs.names
-        if name not in plant.states and name not in held and (name in task.envelope or name in task.ask.minimize)
-    ]
-    outputs = {**held, **dict.fromkeys(limited, 0.0)}
-    wide = equations(plant, task.ask, task.envelope, task.nominal, task.system.time, outputs=outputs)
-    slacks = []
-    for i, row in enumerate(wide.output_rows):
-        name = plant.outputs.names[row]
-        if name in limited and name in task.envelope:
-            size, limits = wide.output_sizes[i], task.envelope[name]
-            slacks.append(Slack(len(wide.rate_rows) + i, limits.low / size, limits.high / size))
-        elif name in limited:
-            slacks.append(Slack(len(wide.rate_rows) + i))
-    return replace(wide.relaxed(*slacks), tally=task.system.tally)
-
-
 def _weights(task: Task, wide: Equations) -> tuple[Array, Array]:
     """Weights (q,) and target (q,) of the distance, both for scaled unknowns."""
-    plant, ask = task.system.plant, task.ask
-    rows = [plant.outputs.names[wide.output_rows[slack.row - len(wide.rate_rows)]] for slack in wide.slacks]
-    names = (*wide.unknowns, *rows)
+    plant, ask, names = task.system.plant, task.ask, wide.all_unknowns
     weights = np.array([ask.minimize.get(name, 0.0) for name in names])
     sizes = np.array([task.nominal.get(name, 1.0) for name in names])
-    guesses = [first_guess(ask, bounds(plant, task.envelope, name), name) for name in wide.unknowns]
-    target = np.array(guesses + [ask.start.get(name, 0.0) for name in rows])
+    guesses = [first_guess(ask, bounds(plant, task.envelope, name), name) for name in names]
     low, high = wide.box
-    return weights, np.clip(target / sizes, low, high)
+    return weights, np.clip(np.array(guesses) / sizes, low, high)

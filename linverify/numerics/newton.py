@@ -14,14 +14,13 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..core.model import Array
-
 from .equations import Equations
 
 STEP = 6e-6  # cube root of the machine precision: balances truncation and round-off of central differences
 LONGEST = 100.0  # a step is cut to so many times the distance from zero: further away its direction means little
 HALVINGS = 12
 EDGE = 1e-12  # nearer to a bound than this (in nominal sizes) counts as on it
-RANK = 1e-10  # singular values below this share of the largest count as zero: differences resolve no less
+RANK = 1e-12  # singular values below this share of the largest count as zero
 
 
 Flags = NDArray[np.bool_]
@@ -63,7 +62,7 @@ def jacobian(system: Equations, z: Array, at: Array) -> Array:
     if not q:
         return np.zeros((columns, r, 0))
     low, high = (side[:, np.newaxis] for side in system.box)
-    steps = STEP * np.maximum(1.0, 1e-3 * np.abs(z))
+    steps = step_sizes(z)
     up, down = np.minimum(z + steps, high), np.maximum(z - steps, low)
     moved = np.repeat(z[:, np.newaxis, :], 2 * q, axis=1)
     for j in range(q):
@@ -78,17 +77,21 @@ def jacobian(system: Equations, z: Array, at: Array) -> Array:
     return np.moveaxis(slopes, 2, 0)
 
 
+def step_sizes(z: Array) -> Array:
+    """Steps of the differences at z: a fixed share of the nominal size, more only where z dwarfs it."""
+    return STEP * np.maximum(1.0, 1e-3 * np.abs(z))
+
+
 def row_weights(slopes: Array) -> Array:
     """1 / largest entry of each row, (N, r): makes fast and slow equations count alike in ranks and line searches."""
-    return _inverse_of(np.abs(slopes).max(axis=2, initial=0.0), 0.0)
+    return _inverse_of(np.abs(slopes).max(axis=2, initial=0.0))
 
 
 def balanced(slopes: Array) -> tuple[Array, Array, Array]:
     """(N, r, q) slopes with rows, then columns divided by their largest entry; the row and column weights used."""
     rows = row_weights(slopes)
     even = slopes * rows[:, :, np.newaxis]
-    # a column of nothing but round-off must not be blown up into one that seems to matter
-    columns = _inverse_of(np.abs(even).max(axis=1, initial=0.0), 1e-10)
+    columns = _inverse_of(np.abs(even).max(axis=1, initial=0.0))
     return even * columns[:, np.newaxis, :], rows, columns
 
 
@@ -104,8 +107,8 @@ def shortest_step(slopes: Array, residual: Array) -> Array:
     return -np.einsum("kqr,rk->qk", pseudo_inverse(slopes), residual)
 
 
-def _inverse_of(size: Array, floor: float) -> Array:
-    return np.where(size > floor, 1.0 / np.where(size > floor, size, 1.0), 1.0)
+def _inverse_of(size: Array) -> Array:
+    return np.where(size > 0.0, 1.0 / np.where(size > 0.0, size, 1.0), 1.0)
 
 
 def solve(system: Equations, starts: Array, *, iterations: int = 60, goal: float = 0.0) -> Ends:

@@ -6,6 +6,7 @@ from collections.abc import Mapping, Sequence
 
 import numpy as np
 
+from ..core.case import NOTHING
 from ..core.errors import PlantError
 from ..core.model import OperatingPoint
 from ..core.outcome import Outcome
@@ -23,11 +24,13 @@ def none(task: Task, ends: Ends, beyond: Sequence[Candidate], fading: bool) -> T
     if not np.isfinite(ends.worst).any() and plant.last_error is not None:
         message = f"the plant could be called at none of {ends.worst.size} starts; the first: {plant.last_error}"
         return TrimResult(outcome_of(plant.last_error), message=message)
-    holds = nearest_holds(task.system, task.ask, task.envelope, task.nominal, ends)
     try:
         short = shortfall(task.system, ends, task.ask.accuracy)
     except PlantError as error:
-        return TrimResult(outcome_of(error), nearest_holds=holds, message=f"where the search came nearest, {error}")
+        return TrimResult(outcome_of(error), message=f"where the search came nearest, {error}")
+    # where the residual itself cannot be trusted, other held values would not be told apart from these
+    doubtful = fading or (short.noisy and not beyond)
+    holds = NOTHING if doubtful else nearest_holds(task.system, task.ask, task.envelope, task.nominal, ends)
     return _told(task, short, holds, beyond, fading)
 
 
@@ -48,8 +51,8 @@ def _told(
     elif short.noisy:
         outcome, conclusive = Outcome.NOISY, False
         message = (
-            f"the scaled residual {abs(short.worst_residual):.3g} that is left in {short.worst_equation} is the plant's "
-            f"own scatter; it cannot be trimmed to {task.ask.accuracy:.3g}"
+            f"the scaled residual {abs(short.worst_residual):.3g} that is left in {short.worst_equation} is the "
+            f"plant's own scatter; it cannot be trimmed to {task.ask.accuracy:.3g}"
         )
     if point is None:
         return TrimResult(outcome, conclusive=False, nearest_holds=holds, message=message)
@@ -63,7 +66,7 @@ def _told(
         closest=point,
         conclusive=conclusive,
         message=message,
-        notes=_notes(task, point, holds),
+        notes=_notes(task, point, holds, conclusive),
     )
 
 
@@ -82,7 +85,7 @@ def _why(task: Task, short: Shortfall) -> str:
         left = f"{rest} it stays at {wanted + size:.4g} {rate_unit(plant, name)}"
         return f"{Outcome.NO_TRIM.value}: the rate of {name} {must}: {left}{because}"
     asked = told(plant, name, task.ask.hold[name])
-    left = f"{rest} it misses by {size:.4g} {unit_of(plant, name)}".rstrip()
+    left = f"{rest} it misses by {abs(size):.4g} {unit_of(plant, name)}".rstrip()
     return f"{Outcome.NO_TRIM.value}: {asked} cannot be reached: {left}{because}"
 
 
@@ -96,12 +99,12 @@ def _outputs_out(task: Task, candidate: Candidate) -> str:
     return f"{Outcome.NO_TRIM.value}: the equilibrium that was found lies outside, since {' and '.join(words)}"
 
 
-def _notes(task: Task, point: OperatingPoint, holds: Mapping[str, float]) -> tuple[str, ...]:
+def _notes(task: Task, point: OperatingPoint, holds: Mapping[str, float], searched: bool) -> tuple[str, ...]:
     plant = task.system.plant
     notes = [f"nearest the search came: {told_list(plant, task.system.unknowns, point)}"]
     if holds:
         changed = [told(plant, name, value) for name, value in holds.items()]
         notes.append(f"a trim exists at the held values {', '.join(changed)}, the nearest that were found")
-    elif task.ask.hold:
+    elif task.ask.hold and searched:
         notes.append("no other values of the held quantities were found at which a trim exists")
     return tuple(notes)

@@ -11,9 +11,8 @@ from dataclasses import dataclass
 import numpy as np
 
 from ..core.model import Array
-
 from .equations import Equations
-from .newton import Ends, balanced, jacobian, pseudo_inverse, shortest_step
+from .newton import Ends, balanced, jacobian, largest, pseudo_inverse, shortest_step, step_sizes
 
 NEAR = 1e-3  # largest correction, in nominal sizes, that a point may still need and be called an equilibrium
 APART = 1e-6  # equilibria nearer to each other than this, in nominal sizes, are one
@@ -65,18 +64,23 @@ def roots_among(system: Equations, ends: Ends, accuracy: float) -> Found:
     slopes = jacobian(system, z, at)
     blind = ~np.isfinite(slopes).all(axis=(1, 2))
     slopes[blind] = 0.0
+    scatter = noise(system, z, at, slopes)
+    slopes = _above_noise(slopes, scatter, z)
     # in whatever direction the equations are open the correction is not defined; the walk along it decides
     correction = np.abs(shortest_step(slopes, at)).max(axis=0, initial=0.0)
-    error = np.einsum("kqr,rk->qk", np.abs(pseudo_inverse(slopes)), np.abs(at) + noise(system, z, at, slopes))
+    error = np.einsum("kqr,rk->qk", np.abs(pseudo_inverse(slopes)), np.abs(at) + scatter)
     found: list[Root] = []
-    fading = []
-    for j in range(passing.size):
+    for j in np.flatnonzero(correction <= NEAR):
         root = Root(z[:, j], float(ends.worst[passing[j]]), error[:, j], open_directions(slopes[j]))
-        if correction[j] > NEAR:
-            fading.append(z[:, j])
-        elif not any(_same(system, root, other) for other in found):
+        if not any(_same(system, root, other, accuracy) for other in found):
             found.append(root)
-    return Found(tuple(found), tuple(fading))
+    return Found(tuple(found), tuple(z[:, j] for j in np.flatnonzero(correction > NEAR)))
+
+
+def _above_noise(slopes: Array, scatter: Array, z: Array) -> Array:
+    """Slopes (N, r, q) without the entries that round-off alone can make; they would pass for an influence."""
+    doubt = 2.0 * scatter.T[:, :, np.newaxis] / step_sizes(z).T[:, np.newaxis, :]
+    return np.where(np.abs(slopes) > doubt, slopes, 0.0)
 
 
 def open_directions(slopes: Array, share: float = SINGULAR) -> Array:
@@ -92,23 +96,44 @@ def open_directions(slopes: Array, share: float = SINGULAR) -> Array:
     return vectors / np.linalg.norm(vectors, axis=0) if vectors.size else np.zeros((q, 0))
 
 
-def _same(system: Equations, one: Root, other: Root) -> bool:
+def _same(system: Equations, one: Root, other: Root, accuracy: float) -> bool:
+    gap = other.z - one.z
     v = len(system.unknowns)
-    # both error estimates are local; a root of higher order is met only to the root of the round-off
-    blur = 10.0 * (one.error + other.error)[:v]
-    open_ended = one.open_directions.size or other.open_directions.size
-    return bool(np.all(np.abs(one.z - other.z)[:v] <= np.maximum(NEAR if open_ended else APART, blur)))
+    if np.all(np.abs(gap)[:v] <= np.maximum(APART, 10.0 * (one.error + other.error)[:v])):
+        return True
+    if np.any(np.abs(gap)[:v] > NEAR):
+        return False
+    # a root of higher order is met only to a root of the round-off: all between the two meets the accuracy then
+    between = system.residual(one.z[:, np.newaxis] + gap[:, np.newaxis] * np.array([0.25, 0.5, 0.75]))
+    return bool(np.all(largest(between) <= accuracy))
 
 
 def told_errors(system: Equations, root: Root) -> dict[str, float]:
     """Estimated error of the trimmed unknowns and of all outputs, in the plant's units."""
-    errors = {name: float(root.error[i] * system.sizes[i]) for i, name in enumerate(system.unknowns)}
-    plant, z = system.plant, root.z[:, np.newaxis]
-    moved = z + np.diag(np.maximum(root.error, 1e-7)) if root.z.size else z
-    x, u = system.values(np.concatenate([z, moved], axis=1))
+    error = np.maximum(root.error, _flatness(system, root))
+    errors = {name: float(error[i] * system.sizes[i]) for i, name in enumerate(system.unknowns)}
+    plant, q = system.plant, root.z.size
+    steps = np.maximum(error, 1e-7)  # what moves less than this is measured at this and scaled down
+    x, u = system.values(np.concatenate([root.z[:, np.newaxis], root.z[:, np.newaxis] + np.diag(steps)], axis=1))
     outputs = plant.measure_or_nan(system.time, x, u)
-    shares = (root.error / np.maximum(root.error, 1e-7))[np.newaxis, :]
-    change = np.abs(outputs[:, 1:] - outputs[:, :1])[:, : root.z.size] * (shares if root.z.size else 1.0)
+    change = np.abs(outputs[:, 1:] - outputs[:, :1]) * (error / steps)[np.newaxis, :] if q else np.zeros((plant.k, 0))
     for i, name in enumerate(plant.outputs.names):
         errors.setdefault(name, float(np.nansum(change[i])))
     return errors
+
+
+def _flatness(system: Equations, root: Root) -> Array:
+    """How far each unknown can move (q,) before the residuals leave their round-off: what a flat root hides."""
+    q, z = root.z.size, root.z[:, np.newaxis]
+    if not q:
+        return np.zeros(0)
+    at = system.residual(z)
+    slopes = np.nan_to_num(jacobian(system, z, at))
+    limit = 4.0 * (np.abs(at) + noise(system, z, at, slopes))
+    sizes = 10.0 ** np.arange(-9, -2)
+    moves = np.concatenate([sizes, -sizes])
+    columns = np.concatenate([z + np.eye(q) * move for move in moves], axis=1)
+    low, high = (side[:, np.newaxis] for side in system.box)
+    values = system.residual(np.clip(columns, low, high))
+    hidden = np.all(np.abs(values) <= limit, axis=0).reshape(moves.size, q)
+    return np.max(np.where(hidden, np.abs(moves)[:, np.newaxis], 0.0), axis=0)

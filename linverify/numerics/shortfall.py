@@ -1,4 +1,4 @@
-"""Why there is no trim: which rate cannot vanish and by how much, what stands at its limit, and where a trim would exist.
+"""Why there is no trim: which rate cannot vanish and by how much, what stands at its limit, where a trim would exist.
 
 The rate is found by letting one equation go: with every other equation met and its own residual made as small as the
 bounds allow, what remains is what cannot vanish. The nearest held values are found by making them unknowns that stay
@@ -8,17 +8,17 @@ as near as they can to what was asked.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
 from ..core.case import NOTHING, Interval, TrimAsk
 from ..core.errors import PlantError
 from ..core.model import Array, OperatingPoint
-from .equations import Equations, Slack, equations, held_outputs, outputs_outside
+from .equations import Equations, Slack, equations, outputs_outside, with_output_limits
 from .nearest import feasible_ends, nearest
-from .newton import Ends, jacobian
-from .roots import noise
+from .newton import Ends, jacobian, solve
+from .roots import noise, roots_among
 from .starts import start_points
 
 STATIONARY = 1e-3  # share of |J| |F| below which the residual cannot be made smaller by moving
@@ -69,7 +69,7 @@ def _judged(system: Equations, z: Array) -> tuple[bool, bool]:
 
 
 def _let_go(system: Equations, row: int, ends: Ends, accuracy: float) -> Array | None:
-    """z (q,) of `system` with the least |F[row]| among points that meet all other equations; None where none is found."""
+    """z (q,) of least |F[row]| among the points that meet all other equations; None where none is found."""
     order = np.argsort(ends.worst, kind="stable")[:8]
     order = order[np.isfinite(ends.worst[order])]
     relaxed = system.relaxed(Slack(row))
@@ -88,61 +88,49 @@ def nearest_holds(
     nominal: Mapping[str, float],
     ends: Ends,
 ) -> Mapping[str, float]:
-    """Held values nearest to those asked (nominal sizes) at which the equations have a solution; empty if none is found."""
-    plant = system.plant
-    signals = [name for name in ask.hold if name in plant.states or name in plant.inputs]
-    wanted = held_outputs(plant, ask)
-    if not signals and not wanted:
+    """Held values nearest to those asked (nominal sizes) at which a solution exists; empty if none is found."""
+    if not ask.hold:
         return NOTHING
-    wider = equations(plant, ask, envelope, nominal, system.time, unknowns=(*ask.find, *signals))
-    relaxed = wider.relaxed(*_output_slacks(wider, envelope))
-    weights = np.array([float(name in signals) for name in relaxed.unknowns] + [1.0] * len(wanted))
-    target = np.zeros(relaxed.count)
-    for i, name in enumerate(relaxed.unknowns):
-        if name in signals:
-            target[i] = ask.hold[name] / relaxed.sizes[i]
-    starts = _with_ends(relaxed, system, ends)
-    feasible = feasible_ends(relaxed, starts, weights, target, ask.accuracy, most=3)
-    for end in nearest(relaxed, weights, target, feasible, ask.accuracy):
-        if values := _verified(wider, ask, envelope, nominal, end.z):
+    plant = system.plant
+    signals = tuple(name for name in ask.hold if name in plant.states or name in plant.inputs)
+    wide = with_output_limits(system, ask, envelope, nominal, unknowns=(*ask.find, *signals), loose=True)
+    names = wide.all_unknowns
+    weights = np.array([float(name in ask.hold) for name in names])
+    target = np.zeros(len(names))
+    for i, name in enumerate(wide.unknowns):
+        if name in signals:  # the slack of a held output is its distance already
+            target[i] = ask.hold[name] / wide.sizes[i]
+    feasible = feasible_ends(wide, _with_ends(wide, system, ends), weights, target, ask.accuracy, most=3)
+    for end in nearest(wide, weights, target, feasible, ask.accuracy):
+        if values := _verified(wide, ask, envelope, nominal, end.z):
             return values
     return NOTHING
 
 
-def _output_slacks(system: Equations, envelope: Mapping[str, Interval]) -> tuple[Slack, ...]:
-    slacks = []
-    for i, output in enumerate(system.output_rows):
-        limits = envelope.get(system.plant.outputs.names[output], Interval())
-        size, wanted = system.output_sizes[i], system.wanted[i]
-        slacks.append(Slack(len(system.rate_rows) + i, (limits.low - wanted) / size, (limits.high - wanted) / size))
-    return tuple(slacks)
-
-
-def _with_ends(relaxed: Equations, system: Equations, ends: Ends) -> Array:
-    """Starts for the relaxed equations: the best ends of the failed search first, then the usual set."""
-    usual = start_points(relaxed)
-    best = int(np.argmin(ends.worst)) if ends.worst.size else 0
+def _with_ends(wide: Equations, system: Equations, ends: Ends) -> Array:
+    """Starts for the wider equations: the best ends of the failed search first, then the usual set."""
+    usual = start_points(wide)
     first = usual[:, 0].copy()
-    if ends.worst.size:
-        known = dict(zip(system.unknowns, ends.z[:, best], strict=False))
-        for i, name in enumerate(relaxed.unknowns):
-            first[i] = known.get(name, first[i])
+    best = ends.z[: len(system.unknowns), int(np.argmin(ends.worst))]
+    known = dict(zip(system.unknowns, best, strict=True))
+    for i, name in enumerate(wide.unknowns):
+        first[i] = known.get(name, first[i])
     return np.concatenate([first[:, np.newaxis], usual], axis=1)
 
 
 def _verified(
-    wider: Equations, ask: TrimAsk, envelope: Mapping[str, Interval], nominal: Mapping[str, float], z: Array
+    wide: Equations, ask: TrimAsk, envelope: Mapping[str, Interval], nominal: Mapping[str, float], z: Array
 ) -> dict[str, float]:
-    """The held values at z if every rate there vanishes to the accuracy and outputs are inside; empty otherwise."""
+    """The held values at z, if with them the original equations have a solution there by their own residuals."""
     try:
-        point = wider.point(z)
+        point = wide.point(z)
     except PlantError:
         return {}
-    states = wider.names[: len(wider.rate_rows)]
-    if any(abs(point.residuals[name]) > ask.accuracy for name in states):
+    held = {name: point.value(name) for name in ask.hold}
+    moved = equations(wide.plant, replace(ask, hold=held), envelope, nominal, wide.time)
+    moved = replace(moved, tally=wide.tally)
+    ends = solve(moved, moved.scaled(point)[:, np.newaxis], goal=0.0)
+    found = roots_among(moved, ends, ask.accuracy)
+    if not found.roots or outputs_outside(wide.plant, ask, envelope, nominal, moved.point(found.roots[0].z)):
         return {}
-    if outputs_outside(wider.plant, ask, envelope, nominal, point):
-        return {}
-    return {name: point.value(name) for name in ask.hold}
-
-
+    return held

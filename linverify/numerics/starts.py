@@ -8,7 +8,6 @@ from __future__ import annotations
 import numpy as np
 
 from ..core.model import Array
-
 from .equations import Equations
 
 FEWEST, PER_UNKNOWN, MOST = 16, 8, 64  # starts: more unknowns hide more equilibria, and each start costs calls

@@ -1,4 +1,4 @@
-"""Trim: find states and inputs, inside their bounds, where the required rates vanish and held outputs have their values.
+"""Trim: find states and inputs, inside their bounds, where the rates vanish and held outputs have their values.
 
 The search starts at the first guess and at a fixed low-discrepancy set over the bounds, because one start finds one
 equilibrium and says nothing about others. What it finds is judged by the residual of every equation, re-evaluated by a
@@ -71,6 +71,9 @@ def _outside(task: Task) -> str:
         if name not in task.system.unknowns
     }
     outputs = {name: value for name, value in task.ask.hold.items() if name in plant.outputs}
+    for name, low, high in zip(task.system.unknowns, task.system.low, task.system.high, strict=True):
+        if low > high:
+            return f"{name} has no allowed value: its envelope and the plant's domain exclude each other"
     for name, value in {**fixed, **outputs}.items():
         limits = bounds(plant, task.envelope, name)
         if value not in limits:

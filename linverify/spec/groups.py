@@ -8,10 +8,11 @@ from ..core.case import BandKind, Course
 from ..core.errors import Place
 from ..core.signals import nearest
 from . import scalars
+from .kinds import Values, block
 from .layout import BandAsk, DriveAsk, Quantity
 from .merge import is_for_set, is_one_set
+from .reader import Reader, check_name
 from .source import Block, Node, Scalar
-from .values import Reader, Values, check_name
 from .words import BAND_WORDS, DRIVE_WORDS, default_of
 
 
@@ -39,7 +40,7 @@ def set_names(node: Node | None) -> frozenset[str]:
 
 def _drive_set(reader: Reader, name: str, key: Scalar, node: Node, whole: bool) -> tuple[DriveAsk, ...]:
     called = f"drives: {name}" if name else "drives"
-    values = reader.block(node, DRIVE_WORDS, called)
+    values = block(reader, node, DRIVE_WORDS, called)
     if not isinstance(node, Block) or not whole:
         return ()
     complete = reader.require(node, DRIVE_WORDS, key.place, called)
@@ -106,7 +107,7 @@ def _no_such_set(reader: Reader, name: Scalar, sets: frozenset[str]) -> None:
 
 def _bands(reader: Reader, signal: Scalar, node: Node, drives: str | None) -> list[BandAsk]:
     called = f"error_bands: {drives}: {signal.text}" if drives else f"error_bands: {signal.text}"
-    values = reader.block(node, BAND_WORDS, called)
+    values = block(reader, node, BAND_WORDS, called)
     if isinstance(node, Block) and not any(word in node.words for word in BAND_KINDS):
         kinds = ", ".join(BAND_KINDS)
         reader.tell(signal.place, f"`{called}` has no limit", f"at least one of {kinds} is expected")

@@ -9,12 +9,13 @@ from pathlib import Path
 from ..core.case import Setting
 from ..core.errors import Place
 from .groups import drive_sets, error_bands, set_names
+from .kinds import Values, block
 from .layout import BandAsk, Cell, DriveAsk, Entry, Point, Quantity, Word
 from .merge import over, settings
+from .reader import Reader, check_name, misspelt
 from .scalars import quoted
 from .source import Block, Node, Scalar
 from .sweeps import Sweep, cells, read_sweep
-from .values import Reader, Values, check_name, misspelt
 from .words import POINT_WORDS, SHARED_POINT_WORDS, SPEC_WORDS, row_of
 
 # words of the whole spec that a point may override
@@ -46,22 +47,22 @@ class PointReader:
         """Tell what is wrong in the words that points share, whether or not a point brings it up."""
         every = self.spec.get("every_point")
         if every is not None:
-            self.reader.block(every, SHARED_POINT_WORDS, "every_point")
-        for block in (self.spec, every):
-            if isinstance(block, Block):
-                self._parts(block, whole=False)
+            block(self.reader, every, SHARED_POINT_WORDS, "every_point")
+        for each in (self.spec, every):
+            if isinstance(each, Block):
+                self._parts(each, whole=False)
 
     def alone(self) -> None:
         """Judge the shared words as if there were one point, where no point is written."""
         merged = self._merged(Block((), Place("")))
         self._parts(merged, whole=True)
 
-    def _parts(self, block: Block, whole: bool) -> tuple[tuple[DriveAsk, ...], tuple[BandAsk, ...]]:
-        drives, bands = block.get("drives"), block.get("error_bands")
+    def _parts(self, tree: Block, whole: bool) -> tuple[tuple[DriveAsk, ...], tuple[BandAsk, ...]]:
+        drives, bands = tree.get("drives"), tree.get("error_bands")
         known = (id(drives), id(bands))
         if whole and known in self._groups:
             return self._groups[known]
-        drives_key, bands_key = block.key("drives"), block.key("error_bands")
+        drives_key, bands_key = tree.key("drives"), tree.key("error_bands")
         sets = set_names(drives) if whole or drives else None
         read = (
             drive_sets(self.reader, drives_key, drives, whole) if drives and drives_key else (),
@@ -75,10 +76,9 @@ class PointReader:
     def _together(
         self, drives: Scalar | None, bands: Scalar | None, sets: tuple[DriveAsk, ...], asks: tuple[BandAsk, ...]
     ) -> None:
-        block = self.spec
-        if drives and not bands and not misspelt("error_bands", block, SPEC_WORDS):
+        if drives and not bands and not misspelt("error_bands", self.spec, SPEC_WORDS):
             self.reader.tell(drives.place, "`drives` without `error_bands`", "they come together or not at all")
-        if bands and not drives and not misspelt("drives", block, SPEC_WORDS):
+        if bands and not drives and not misspelt("drives", self.spec, SPEC_WORDS):
             self.reader.tell(bands.place, "`error_bands` without `drives`", "they come together or not at all")
         for each in sets:
             if asks and all(band.drives not in (None, each.name) for band in asks):
@@ -96,7 +96,7 @@ class PointReader:
             self.unsure = True
             return None
         merged = self._merged(node)
-        values = self.reader.block(merged, POINT_WORDS, f"operating_points: {name.text}")
+        values = block(self.reader, merged, POINT_WORDS, f"operating_points: {name.text}")
         drives, bands = self._parts(merged, whole=True)
         sweep, skip = self._sweep(node), values.get("skip", ())
         if skip and node.get("sweep") is None:
@@ -180,8 +180,8 @@ class _Rules:
             swept = {word.text: word.place for word in self.sweep.names}
             self._not_both("find", swept, "swept")
             for word in ("hold", "parameters"):
-                block = self.own.get(word)
-                for name in block.words if isinstance(block, Block) else ():
+                group = self.own.get(word)
+                for name in group.words if isinstance(group, Block) else ():
                     if name in swept:
                         self.reader.tell(swept[name], f"`sweep`: {quoted(name)} stands under `{word}` as well")
 
@@ -201,6 +201,6 @@ class _Rules:
                 )
 
 
-def _place(block: Block, word: str) -> Place | None:
-    key = block.key(word)
+def _place(tree: Block, word: str) -> Place | None:
+    key = tree.key(word)
     return key.place if key else None

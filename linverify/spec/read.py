@@ -9,12 +9,13 @@ from pathlib import Path
 
 from ..core.errors import Place, Problem
 from ..core.signals import nearest
+from .kinds import Values, block
 from .layout import Point, RequirementAsk, Spec, Word, matches
 from .merge import over, settings
 from .points import PointReader
+from .reader import Reader, check_name, misspelt
 from .scalars import fraction, quoted
 from .source import DEFAULTS, Block, Node, parse
-from .values import Reader, Values, check_name, misspelt
 from .words import CHECKS, REQUIREMENT_WORDS, SPEC_WORDS, default_of, row_of
 
 _SHARED = tuple(row for row in SPEC_WORDS if row.shared)
@@ -95,13 +96,13 @@ def _shareable(reader: Reader, tree: Block) -> Block:
             kept.append((key, node))
     passed = Block(tuple(kept), tree.place)
     others = tuple(entry for entry in tree.entries if (row := row_of(SPEC_WORDS, entry[0].text)) is None or row.shared)
-    reader.block(Block(others, tree.place), _SHARED, "")
+    block(reader, Block(others, tree.place), _SHARED, "")
     PointReader(reader, passed, []).shared()
     return passed
 
 
 def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Path]) -> Spec | None:
-    values = reader.block(merged, SPEC_WORDS, "")
+    values = block(reader, merged, SPEC_WORDS, "")
     reader.require(merged, tuple(row for row in SPEC_WORDS if row.word != "linverify"), Place(shown), "")
     tables: list[Path] = []
     pointed = PointReader(reader, merged, tables)
@@ -179,11 +180,11 @@ def _fits(reader: Reader, pattern: Word, pointed: PointReader) -> None:
 _MOST_COMPARED = 1000
 
 
-def _default(block: str, word: str) -> str:
-    row = row_of(SPEC_WORDS, block)
+def _default(above: str, word: str) -> str:
+    row = row_of(SPEC_WORDS, above)
     return default_of(row.of, word) if row else ""
 
 
-def _per_cent(block: str, word: str) -> float:
-    read = fraction(_default(block, word))
+def _per_cent(above: str, word: str) -> float:
+    read = fraction(_default(above, word))
     return read if isinstance(read, float) else math.nan

@@ -13,10 +13,12 @@ from pathlib import Path
 from ..core.errors import Place
 from ..core.signals import nearest
 from . import scalars
+from .kinds import block
 from .layout import Cell, Entry, Quantity, Word, matches
+from .reader import Reader
 from .scalars import quoted
 from .source import Block, Listing, Node, Scalar
-from .values import Reader, quantity, text
+from .values import quantity, text
 from .words import AXIS_WORDS, Kind, Row
 
 MOST_CELLS = 100_000
@@ -71,7 +73,7 @@ def _axis(reader: Reader, called: str, key: Scalar, node: Node) -> list[Quantity
 
 
 def _steps(reader: Reader, called: str, key: Scalar, node: Block) -> list[Quantity] | None:
-    values = reader.block(node, AXIS_WORDS, called)
+    values = block(reader, node, AXIS_WORDS, called)
     if not reader.require(node, AXIS_WORDS, key.place, called) or len(values) < len(AXIS_WORDS):
         return None
     first, last, count = values["from"], values["to"], values["count"]

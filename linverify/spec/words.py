@@ -20,6 +20,7 @@ class Kind(Enum):
     TEXT = "text"
     PLANT = "FILE:OBJECT or package.module:OBJECT"
     QUANTITY = "a number, alone or with its unit"
+    SIZE = "a size, alone or with its unit"
     NUMBER = "a number without a unit"
     FRACTION = "per cent or a fraction"
     COUNT = "a whole number"
@@ -107,12 +108,12 @@ DRIVE_WORDS = (
 )  # fmt: skip
 
 BAND_WORDS = (
-    Row("peak", Kind.QUANTITY, "largest error", dimension=SIGNAL, sign="+"),
-    Row("rms", Kind.QUANTITY, "root mean square of the error", dimension=SIGNAL, sign="+"),
+    Row("peak", Kind.SIZE, "largest error", dimension=SIGNAL, sign="+"),
+    Row("rms", Kind.SIZE, "root mean square of the error", dimension=SIGNAL, sign="+"),
     Row("relative", Kind.RELATIVE, "largest error over the plant's own peak deviation", sign="+"),
     Row("wider_of", Kind.WIDER_OF, "the wider of a size and a share of the plant's own peak deviation",
         dimension=SIGNAL, sign="+"),
-    Row("final", Kind.QUANTITY, "error at the end of completed drives", dimension=SIGNAL, sign="+"),
+    Row("final", Kind.SIZE, "error at the end of completed drives", dimension=SIGNAL, sign="+"),
     Row("from", Kind.QUANTITY, "nothing before this time counts", dimension="time", sign="0+"),
 )  # fmt: skip
 

@@ -1,0 +1,73 @@
+"""The table of readers: what is behind a word is read by the kind that `words` gives it."""
+
+from __future__ import annotations
+
+from collections.abc import Callable
+from typing import Any
+
+from . import forms, values
+from .layout import Entry
+from .reader import Reader
+from .source import Node, Scalar
+from .words import Kind, Row
+
+Values = dict[str, Any]  # word -> what its reader made of it; a word that could not be read is left out
+
+
+def block(reader: Reader, node: Node, rows: tuple[Row, ...], called: str) -> Values:
+    """All words of a block, each read by the kind of its row."""
+    read: Values = {}
+    for row, key, value in reader.words(node, rows, called):
+        found = READERS[row.kind](reader, row, row.word, key, value)
+        if found is not None:
+            read[row.word] = found
+    return read
+
+
+def named(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> tuple[Entry[Any], ...]:
+    """`name: value` pairs, each value of the one kind that the row says."""
+    inner = row.of[0]
+    entries: list[Entry[Any]] = []
+    for name, value in reader.named(node, called, inner.kind.value):
+        read = READERS[inner.kind](reader, inner, f"{called}: {name.text}", name, value)
+        if read is not None:
+            entries.append(Entry(name.text, name.place, read))
+    return tuple(entries)
+
+
+def _block(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Values:
+    return block(reader, node, row.of, called)
+
+
+def _raw(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Node:
+    """Left as a node: read where what belongs to it is known."""
+    return node
+
+
+READERS: dict[Kind, Callable[[Reader, Row, str, Scalar, Node], Any]] = {
+    Kind.FORMAT: values.format_number,
+    Kind.TEXT: values.text,
+    Kind.PLANT: values.plant,
+    Kind.QUANTITY: values.quantity,
+    Kind.SIZE: values.size,
+    Kind.NUMBER: values.number,
+    Kind.FRACTION: values.fraction,
+    Kind.COUNT: values.whole,
+    Kind.CHOICE: values.choice,
+    Kind.NAMES: values.names,
+    Kind.CHOICES: values.choices,
+    Kind.PATTERNS: values.names,
+    Kind.FILES: values.files,
+    Kind.LIMITS: forms.limits,
+    Kind.AMPLITUDE: forms.amplitude,
+    Kind.EXPECT: forms.expect,
+    Kind.RATE: forms.rate,
+    Kind.RELATIVE: forms.relative,
+    Kind.WIDER_OF: forms.wider_of,
+    Kind.BLOCK: _block,
+    Kind.NAMED: named,
+    Kind.POINTS: _raw,
+    Kind.SWEEP: _raw,
+    Kind.DRIVES: _raw,
+    Kind.BANDS: _raw,
+}

@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from typing import Any
+
 from ..core.errors import Place
 from ..core.signals import nearest
 from . import scalars

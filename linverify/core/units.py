@@ -1,4 +1,4 @@
-"""Quantities as engineers write them: split into number and unit, named by dimension, converted.
+"""Quantities as engineers write them: named by dimension, converted. Whoever reads them splits number and unit.
 
 A number without a unit (unit "") is in whatever unit is expected at its place. Rules that go beyond arithmetic:
 
@@ -29,7 +29,6 @@ from .unit_words import DEFINITIONS, HABITS, WORDS
 if TYPE_CHECKING:
     import pint
 
-_NUMBER = re.compile(r"[+-]?(?:\d+\.?\d*|\.\d+)(?:[eE][+-]?\d+)?")
 _TOKEN = re.compile(r"\s*(?:(?P<name>[A-Za-z_][A-Za-z_0-9]*)|(?P<number>[+-]?\d+(?:\.\d+)?)|(?P<mark>[*/^()]))\s*")
 _LONGEST = 60  # characters of a unit; keeps the recursion of the parser shallow
 _STEEPEST = 12.0  # largest power of a unit
@@ -56,26 +55,6 @@ class UnitError(LinverifyError, ValueError):
 def shown(number: float) -> str:
     """A number as messages show it: at most six significant digits."""
     return f"{number:.6g}"
-
-
-def parse(text: str) -> tuple[float, str]:
-    """Split `30 kn`, `-1.5e3 N*m`, `5%` or `12` into number and unit.
-
-    Only the number and the characters of the unit are looked at; `check` or a conversion decides whether the unit
-    exists. Raises UnitError.
-    """
-    words = text.strip()
-    match = _NUMBER.match(words)
-    if match is None:
-        raise UnitError(f"{text!r} does not begin with a number", "a number, or a number with a unit, is expected")
-    number, unit = float(match.group()), words[match.end() :].strip()
-    if not math.isfinite(number):
-        raise UnitError(f"{text!r} is too large for a number", "a finite number is expected")
-    if unit and unit[0] in ",:_":
-        raise UnitError(f"{text!r} is no number", "digits with a decimal point, then a unit, are expected")
-    if len(unit) > _LONGEST:
-        raise UnitError(f"the unit in {text[:_LONGEST]!r} ... is too long", _EXAMPLES)
-    return number, unit
 
 
 def convert(number: float, unit: str, target: str, *, difference: bool = False, text: str = "") -> float:
@@ -182,7 +161,9 @@ def _hint(name: str) -> str:
     stem = name.rstrip("23")
     if stem != name and _full_name(stem):
         return f"{stem}^{name[len(stem) :]}"
-    return HABITS.get(name) or nearest(name, _unit_names())
+    cases = (f"{name[:1].swapcase()}{name[1:]}", name.lower(), name.upper(), name.capitalize())
+    cased = next((word for word in cases if _full_name(word)), "")
+    return HABITS.get(name) or cased or nearest(name, _unit_names())
 
 
 class _NoUnitError(Exception):

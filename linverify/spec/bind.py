@@ -6,6 +6,7 @@ Everything that can be known without calling the plant is judged here, and all m
 from __future__ import annotations
 
 import math
+import os
 from collections.abc import Mapping
 from pathlib import Path
 from types import MappingProxyType
@@ -30,6 +31,7 @@ from .ground import Ground, whole_ratio
 from .layout import Cell, Point, Spec, matches
 from .motions import bind_band, bind_drives
 from .plants import Loaded, load_plant
+from .read import read
 from .trims import bind_parameters, bind_trim
 
 
@@ -39,15 +41,25 @@ def load(path: Path, root: Path) -> tuple[Case, ...]:
     root: the folder that ids count from, and the last place where `package.module` is looked for.
     Raises SpecError with every mistake in the spec, its defaults.yaml, its tables and the import of its plant.
     """
-    raise SpecError([])
+    shown = Path(os.path.relpath(path.resolve(), root.resolve())).as_posix()
+    spec, problems = read(path, shown, root)
+    if spec is None:
+        raise SpecError(problems)
+    cases, more = bind(spec, root, complete=not problems)
+    if problems or more:
+        raise SpecError((*problems, *more))
+    return cases
 
 
-def bind(spec: Spec, root: Path) -> tuple[tuple[Case, ...], tuple[Problem, ...]]:
-    """Cases and mistakes of a spec that has been read; the cases are for use only where there is no mistake."""
+def bind(spec: Spec, root: Path, *, complete: bool = True) -> tuple[tuple[Case, ...], tuple[Problem, ...]]:
+    """Cases and mistakes of a spec that has been read; the cases are for use only where there is no mistake.
+
+    complete: False where parts of the spec could not be read, so that nothing is counted that may be among them.
+    """
     loaded = load_plant(spec.plant, root)
     if isinstance(loaded, Problem):
         return (), (loaded,)
-    ground = Ground(loaded.plant)
+    ground = Ground(loaded.plant, complete)
     _check_clock(ground, spec)
     cases = _Binder(spec, ground, loaded).cases()
     return cases, tuple(ground.problems)

@@ -23,9 +23,13 @@ WHOLE = 1e-9  # relative; a ratio of two times nearer than this to a whole numbe
 
 @dataclass(slots=True)
 class Ground:
-    """A plant and the mistakes found so far. Mutable: `problems` grows, nothing else changes."""
+    """A plant and the mistakes found so far. Mutable: `problems` grows, nothing else changes.
+
+    complete: False where parts of the spec could not be read; what is not there may then be among them.
+    """
 
     plant: Plant
+    complete: bool = True
     problems: list[Problem] = field(default_factory=list)
 
     @property
@@ -79,9 +83,9 @@ class Ground:
     def _told(self, error: units.UnitError, quantity: Quantity, unit: str, word: str) -> tuple[str, str, str]:
         try:
             units.check(unit)
-        except units.UnitError as foreign:
+        except units.UnitError:
             wrong = f"{quantity.text!r} cannot be converted: the plant's unit {unit!r} of `{word}` is not known"
-            return wrong, "write the plain number in that unit, or correct the plant", foreign.hint
+            return wrong, "write the plain number, or correct the plant", ""
         if error.hint or error.wrong.endswith("is no unit"):
             return f"{error.wrong} (in {quantity.text!r})", f"`{word}` is in {unit or '1'}", error.hint
         expected = error.expected.removesuffix(" is expected")

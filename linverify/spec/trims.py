@@ -24,8 +24,9 @@ def bind_trim(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, I
     find = _find(ground, point, hold)
     rates, free = _rates(ground, point)
     minimize = _minimize(ground, point, find, start, envelope)
-    _count(ground, point, hold, find, free, bool(point.minimize))
-    _settle(ground, point, hold, find, start)
+    if ground.complete and _all_known(ground, point, cell):
+        _count(ground, point, hold, find, free)
+        _settle(ground, point, hold, find, start)
     return TrimAsk(
         hold=MappingProxyType(hold),
         find=find,
@@ -52,9 +53,11 @@ def _hold(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, Inter
     swept = [entry for entry in cell.swept if entry.name not in ground.plant.parameters]
     held: dict[str, float] = {}
     for word, entries in (("hold", point.hold), ("sweep", swept)):
-        what = "a state, input or output" if word == "hold" else "a state, input, output or parameter"
+        what, names = "a state, input or output", ground.signals
+        if word == "sweep":
+            what, names = "a state, input, output or parameter", (*names, *ground.plant.parameters)
         for entry in entries:
-            if not ground.known(entry.name, entry.place, ground.signals, what):
+            if not ground.known(entry.name, entry.place, names, what):
                 continue
             held[entry.name] = ground.signal(entry.value, entry.name, f"{word}: {entry.name}")
             if not cell.skipped:
@@ -79,11 +82,8 @@ def _find(ground: Ground, point: Point, hold: Mapping[str, float]) -> tuple[str,
         return tuple(name for name in names if name not in hold)
     found: set[str] = set()
     for word in point.find:
-        if not ground.known(word.text, word.place, names, "a state or input"):
-            continue
-        if word.text in hold:
-            ground.report(word.place, f"{word.text!r} is held and to be found at once", "one of the two is expected")
-        found.add(word.text)
+        if ground.known(word.text, word.place, names, "a state or input"):
+            found.add(word.text)
     return tuple(name for name in names if name in found)
 
 
@@ -121,14 +121,22 @@ def _minimize(
     return weights
 
 
+def _all_known(ground: Ground, point: Point, cell: Cell) -> bool:
+    """Whether the plant has all names that are counted; one that is misspelt has been told, and would be told again."""
+    names = [*point.hold, *point.start, *point.rates, *cell.swept]
+    words = [*(point.find or ()), *point.free]
+    known = (*ground.signals, *ground.plant.parameters)
+    return all(name in known for name in (*(entry.name for entry in names), *(word.text for word in words)))
+
+
 def _count(
-    ground: Ground, point: Point, hold: Mapping[str, float], find: tuple[str, ...], free: tuple[str, ...], chosen: bool
+    ground: Ground, point: Point, hold: Mapping[str, float], find: tuple[str, ...], free: tuple[str, ...]
 ) -> None:
     """Compare the number of unknowns with that of equations: rates that are not free, and held outputs."""
     rates = [name for name in ground.states if name not in free]
     held = [name for name in hold if name not in ground.states and name not in ground.inputs]
     more = len(find) - len(rates) - len(held)
-    if more == 0 or (more > 0 and chosen):
+    if more == 0 or (more > 0 and point.minimize):
         return
     equations = " and ".join(part for part in (_group("rates of", rates), _group("held outputs", held)) if part)
     wrong = (

@@ -24,6 +24,7 @@ from .core.case import Options
 
 PACKAGES = ("linverify", "numpy", "scipy", "hypothesis", "pint", "pytest", "PyYAML", "tabulate")
 _GIT_SECONDS = 10.0
+_GIT_WORDS = ("GIT_DIR", "GIT_WORK_TREE", "GIT_INDEX_FILE", "GIT_PREFIX", "GIT_COMMON_DIR")
 _UNKNOWN = "unknown"
 
 
@@ -88,7 +89,9 @@ def _inside(path: Path, root: Path) -> bool:
 
 
 def _git(root: Path, *arguments: str) -> str | None:
-    environment = {**os.environ, "GIT_OPTIONAL_LOCKS": "0", "LC_ALL": "C"}  # reading must not touch the index
+    # inside a hook git names another index or folder; and reading must not touch the index
+    inherited = {word: value for word, value in os.environ.items() if word not in _GIT_WORDS}
+    environment = {**inherited, "GIT_OPTIONAL_LOCKS": "0", "LC_ALL": "C"}
     try:
         done = subprocess.run(
             ["git", "-C", str(root), *arguments],

@@ -2,7 +2,8 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+import math
+from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 from . import quantity
@@ -17,6 +18,7 @@ _MATRICES = {
     "C": ("outputs", "states"),
     "D": ("outputs", "inputs"),
 }
+NONE_SHOWS = "none shows"
 Signals = Mapping[str, Sequence[Sequence[str]]]  # kind -> [name, unit] in the plant's order
 
 
@@ -33,7 +35,40 @@ def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "") ->
     for word, (rows, columns) in _MATRICES.items():
         if _is_matrix(rest.get(word)):
             made += [f"{word}:", matrix(rest.pop(word), _names(signals, rows), _names(signals, columns))]
+    if isinstance(rest.get("statistics"), Mapping) and "text" in rest["statistics"]:
+        made += statistics(rest.pop("statistics"))
+    if isinstance(rest.get("smallest_visible"), Mapping):
+        made.append(visible(rest.pop("smallest_visible"), time_unit))
     return made + plain_blocks(rest)
+
+
+def statistics(found: Mapping[str, Any]) -> list[str]:
+    """What the random drives say, as the check worded it, and what they were drawn from."""
+    sampler = [f"Sampler: {escaped(cell(found['sampler']))}"] if "sampler" in found else []
+    return [escaped(cell(found["text"])), *sampler]
+
+
+def visible(found: Mapping[str, Any], time_unit: str) -> str:
+    """The smallest errors of the local model that a set of drives would catch, in all signals and in each."""
+    signals = found.get("signals")
+    each = signals if isinstance(signals, Mapping) else {}
+    rows = [
+        (
+            name,
+            _shown(errors.get("gain"), quantity.percent),
+            _shown(errors.get("delay"), lambda late: quantity.quantity(late, time_unit, 4)),
+        )
+        for name, errors in (("all together", found), *sorted(each.items()))
+        if isinstance(errors, Mapping)
+    ]
+    headers = ("error of the local model in", "smallest gain error that shows", "smallest delay that shows")
+    return grid(headers, rows, right=headers[1:])
+
+
+def _shown(value: Any, worded: Callable[[float], str]) -> str:
+    if not _is_number(value):
+        return cell(value)
+    return worded(value) if math.isfinite(value) else NONE_SHOWS
 
 
 def per(time_unit: str) -> str:
@@ -57,7 +92,9 @@ def _valued(value: Any, unit: str) -> str:
         return _valued(value["value"], str(value.get("unit", unit)))
     if isinstance(value, list) and len(value) == 2 and isinstance(value[1], str):
         return _valued(value[0], value[1])
-    return quantity.quantity(value, unit) if _is_number(value) else cell(value)
+    if not _is_number(value):
+        return cell(value)
+    return quantity.quantity(value, unit)
 
 
 def poles(values: Sequence[Any]) -> str:

@@ -111,7 +111,13 @@ def _check(verdict: Verdict, point: Mapping[str, Any]) -> Iterator[str]:
     told = [text.figure_line(figure) for figure in verdict.figures if figure.sense is Sense.NONE]
     if lines := [*verdict.notes, *told]:
         yield tables.bullets(lines)
-    yield from details.blocks(verdict.details, point.get("signals", {}), str(point.get("time_unit", "")))
+    told_once = {word: value for word, value in verdict.details.items() if not _repeats(value, verdict.notes)}
+    yield from details.blocks(told_once, point.get("signals", {}), str(point.get("time_unit", "")))
+
+
+def _repeats(value: Any, notes: Sequence[str]) -> bool:
+    """True for a list of lines that all stand among the notes already."""
+    return isinstance(value, list) and all(isinstance(line, str) and line in notes for line in value)
 
 
 def _effective_specs(points: Sequence[Mapping[str, Any]]) -> Iterator[str]:

@@ -99,3 +99,21 @@ def test_cells() -> None:
 def test_no_details_break_the_report(details: dict[str, Any]) -> None:
     told = restored(plain(details))
     assert all(isinstance(block, str) for block in blocks(told, SIGNALS, "s"))
+
+
+def test_statistics_are_told_in_words() -> None:
+    found = {"text": "0 of 59 random drives broke a band | 4.95 %.", "sampler": "steps and walks", "bound": 0.0495}
+    assert blocks({"statistics": found}, {}) == [
+        r"0 of 59 random drives broke a band \| 4.95 %.",
+        "Sampler: steps and walks",
+    ]
+
+
+def test_what_drives_can_see_is_a_table() -> None:
+    signals = {"height": {"gain": math.inf, "delay": 0.05}, "angle": {"gain": 0.125, "delay": math.inf}}
+    (table,) = blocks({"smallest_visible": {"gain": 0.101, "delay": 0.0123456, "signals": signals}}, {}, "s")
+    assert squeezed(table)[1:] == [
+        ["all together", "10.1 %", "0.01235 s"],
+        ["angle", "12.5 %", "none shows"],
+        ["height", "none shows", "0.05 s"],
+    ]

@@ -4,12 +4,14 @@ from __future__ import annotations
 
 import math
 import re
+import time
 from collections.abc import Callable
+from dataclasses import replace
 from pathlib import Path
 from typing import Any
 
 import pytest
-from invented import EVERY, PLANNED, POINTS, PROVENANCE
+from invented import EVERY, PLANNED, POINTS, PROVENANCE, TRIMS
 
 from linverify.core.case import Options
 from linverify.provenance import gathered
@@ -121,6 +123,14 @@ def test_a_run_that_holds_says_so() -> None:
     assert "## What does not hold\n\nNothing.\n" in page
 
 
+def test_lines_that_stand_among_the_notes_are_not_told_twice() -> None:
+    page = markdown.page(
+        record.build([replace(TRIMS, notes=("cut",), details={"amplitudes": ["cut"], "other": ["x"]})])
+    )
+    assert "amplitudes" not in page
+    assert "other" in page
+
+
 def test_an_empty_run_has_a_report() -> None:
     page = markdown.page(record.build([]))
     assert "No check was run." in page
@@ -139,9 +149,6 @@ def test_every_table_is_rectangular() -> None:
 
 
 def test_a_large_family_is_rendered_quickly() -> None:
-    import time
-    from dataclasses import replace
-
     verdicts = [replace(verdict, point=f"p{index}") for index in range(300) for verdict in EVERY[:3]]
     points = [{**POINTS[0], "point": f"p{index}"} for index in range(300)]
     made = record.build(verdicts, points=points)

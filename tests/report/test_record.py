@@ -8,6 +8,7 @@ from pathlib import Path
 from types import SimpleNamespace
 from typing import Any, cast
 
+import jsonschema
 import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
@@ -171,3 +172,21 @@ def test_a_case_is_described_by_what_the_report_tells() -> None:
     assert told["checks"] == ["trims"]
     assert told["places"] == {"trims": f"{SPEC}:12:3"}
     assert json.loads(json.dumps(told)) == told
+
+
+SCHEMA = json.loads((Path(record.__file__).parent / "record.schema.json").read_text(encoding="utf-8"))
+
+
+def test_the_record_keeps_its_published_schema() -> None:
+    jsonschema.Draft7Validator.check_schema(SCHEMA)
+    for run in (built(), built(profile="quick", partial=True), record.build([])):
+        jsonschema.validate(json.loads(record.canonical(run)), SCHEMA)
+
+
+@pytest.mark.parametrize("word", ["headroom", "worst", "status"])
+def test_the_schema_sees_a_missing_word(word: str) -> None:
+    run = built()
+    item = next(item for item in run["body"]["items"] if item["figures"])
+    del item["figures"][0][word]
+    with pytest.raises(jsonschema.ValidationError, match=word):
+        jsonschema.validate(run, SCHEMA)

@@ -41,6 +41,7 @@ class Noise:
 
     comparison: Comparison
     batch: Sequence[Drive]
+    examined: dict[tuple[str, Fidelity], Examined] = field(default_factory=dict)
     _runs: dict[Fidelity, Figures] = field(default_factory=dict)
 
     def figures(self, fidelity: Fidelity) -> Figures:
@@ -123,7 +124,10 @@ class Examined:
 
 
 def examine(comparison: Comparison, drive: Drive, fidelity: Fidelity, noise: Noise, row: int) -> Examined:
-    """The quoted figures of one drive; accuracy is raised a few times where `row` is not settled yet."""
+    """The quoted figures of one drive; accuracy is raised a few times where `row` is not settled yet.
+
+    A function of the drive and the row alone, so that a replay comes to the same figures.
+    """
     found = at(comparison, drive, fidelity, noise)
     for _ in range(LEVELS - 1):
         exact = found.error[row] <= noise.allowed(fidelity)[row]
@@ -135,7 +139,14 @@ def examine(comparison: Comparison, drive: Drive, fidelity: Fidelity, noise: Noi
 
 
 def at(comparison: Comparison, drive: Drive, fidelity: Fidelity, noise: Noise) -> Examined:
-    """The quoted figures of one drive at one fidelity."""
+    """The quoted figures of one drive at one fidelity; kept, since several bands often share their worst drive."""
+    key = (drive.digest, fidelity)
+    if key not in noise.examined:
+        noise.examined[key] = _at(comparison, drive, fidelity, noise)
+    return noise.examined[key]
+
+
+def _at(comparison: Comparison, drive: Drive, fidelity: Fidelity, noise: Noise) -> Examined:
     coarse, _ = comparison.alone(drive, fidelity)
     fine, runs = comparison.alone(drive, fidelity.finer())
     change = 2.0 * np.abs(fine.excess[:, 0] - coarse.excess[:, 0])

@@ -65,10 +65,9 @@ def campaign(comparison: Comparison, options: Options, pins: Sequence[Drive]) ->
     fixed = _deterministic(comparison)
     rng = np.random.default_rng(seed_of(options.seed, comparison.id, "random"))
     drawn = sample(limits, drives.shapes, max(1, drives.count // quick) if drives.count else 0, rng)
-    extra = _extra(comparison, options, len(fixed) + len(drawn))
-    noise = Noise(comparison, (*drawn, *fixed, *extra)[:BATCH])
+    noise = noise_of(comparison)
     fidelity, settled = noise.settled(comparison.start)
-    searched = (*_searched(comparison, options, drives.search // quick), *_observed(comparison, fidelity), *extra)
+    searched = (*_searched(comparison, options, drives.search // quick), *_observed(comparison, fidelity), *noise.batch)
     kinds = [kind for kind, some in zip(KINDS, (pins, fixed, drawn, searched), strict=True) for _ in some]
     everything = (*pins, *fixed, *drawn, *searched)
     figures, still, wrong = comparison.figures(everything, fidelity)
@@ -83,10 +82,13 @@ def _deterministic(comparison: Comparison) -> tuple[Drive, ...]:
     return seeds.unique((*seeds.plain(comparison.limits), *worst))
 
 
-def _extra(comparison: Comparison, options: Options, there: int) -> tuple[Drive, ...]:
-    """Further draws that fill up the fixed batch; they are no part of the random drives that are counted."""
-    rng = np.random.default_rng(seed_of(options.seed, comparison.id, "batch"))
-    return sample(comparison.limits, comparison.drives.shapes, max(0, BATCH - there), rng)
+def noise_of(comparison: Comparison) -> Noise:
+    """Our own error over the fixed batch: draws that depend on neither seed nor profile, so that a replay has them too.
+
+    They are no part of the random drives that are counted.
+    """
+    rng = np.random.default_rng(seed_of(0, comparison.id, "batch"))
+    return Noise(comparison, sample(comparison.limits, comparison.drives.shapes, BATCH, rng))
 
 
 def _searched(comparison: Comparison, options: Options, examples: int) -> tuple[Drive, ...]:
@@ -169,7 +171,7 @@ def read_pins(comparison: Comparison) -> Pins:
         reasons = pinned.misfits(path.name, drive, comparison.limits, tuple(plant.inputs), tuple(plant.states))
         if not reasons:
             drives.append(pinned.fitted(drive, comparison.limits))
-        elif (home := str(about.get("check", ""))) and home.split("::")[1:] != comparison.id.split("::")[1:]:
+        elif (home := str(about.get("item", ""))) and home.split("::")[1:] != comparison.id.split("::")[1:]:
             told.append(f"pinned drive {path.name} was found by {home} and does not fit here: not replayed")
         else:
             misfits += reasons

@@ -40,9 +40,8 @@ class Word:
 def words(comparison: Comparison, found: Campaign) -> list[Word]:
     """One word for each row of the campaign's figures, in their order."""
     order, doubtful = _ranked(comparison, found)
-    seen: dict[tuple[int, int], Examined] = {}
     rows = range(found.figures.worst.shape[0])
-    return [_word(comparison, found, row, order[row], doubtful[row], seen) for row in rows]
+    return [_word(comparison, found, row, order[row], doubtful[row]) for row in rows]
 
 
 def _ranked(comparison: Comparison, found: Campaign) -> tuple[list[list[int]], list[set[int]]]:
@@ -87,14 +86,13 @@ def _word(
     row: int,
     order: Sequence[int],
     doubtful: set[int],
-    seen: dict[tuple[int, int], Examined],
 ) -> Word:
     """The worst drive of a row first, then every doubtful one; a confirmed failure ends it."""
     first = order[0]
     queue = [first, *(column for column in order[1:] if column in doubtful)]
     open_reason, quoted = "", None
     for column in queue[:EXAMINED]:
-        one = _examined(comparison, found, row, column, seen)
+        one = examine(comparison, found.drives[column], found.fidelity, found.noise, row)
         if quoted is None or one.share[row] > quoted.share[row]:
             quoted = one
         if one.states[row] is State.BAD:
@@ -108,20 +106,6 @@ def _word(
     if len(queue) > EXAMINED and not open_reason:
         open_reason = f"{len(queue)} drives are nearer to the limit than our own error"
     return Word(row, Status.UNDECIDED if open_reason else Status.PASS, open_reason, quoted)
-
-
-def _examined(
-    comparison: Comparison, found: Campaign, row: int, column: int, seen: dict[tuple[int, int], Examined]
-) -> Examined:
-    """Examined once for all rows, and again only where this row needs more than the base accuracy."""
-    base = seen.get((column, -1))
-    if base is not None and base.states[row] is not State.UNCLEAR:
-        return base
-    if (column, row) not in seen:
-        seen[column, row] = examine(comparison, found.drives[column], found.fidelity, found.noise, row)
-        if seen[column, row].fidelity == found.fidelity:
-            seen[column, -1] = seen[column, row]
-    return seen[column, row]
 
 
 def confirmed(comparison: Comparison, one: Examined, row: int) -> bool:

@@ -46,7 +46,7 @@ def saved(
     key, text = key_of(comparison, drive), text_of(comparison, drive)
     if options.reports is not None:
         about = {
-            "check": comparison.id,
+            "item": comparison.id,
             "role": role,
             "text": text,
             "fidelity": {"nodes": fidelity.nodes, "tolerance": fidelity.tolerance},
@@ -59,7 +59,7 @@ def saved(
             "model": {name: _rows(runs.model[at, :, :, 0]) for at, name in enumerate(runs.signals)},
             "ended": float(runs.ended[0]),
         }
-        pinned.write(options.reports / FOLDER, key, drive, about)
+        pinned.write(options.reports / FOLDER, drive, about, key)
     return Evidence(role, key, text)
 
 

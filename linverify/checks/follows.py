@@ -53,7 +53,8 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     run = campaign(compared, study.options, pins.drives)
     settled = words(compared, run)[: None if compared.exits else -1]
     _judge(study, compared, run, settled, found)
-    seen = _look(compared, run, found)
+    failed = any(word.status is Status.FAIL for word in settled)
+    seen = None if failed else _look(compared, run, found)
     details = _details(study, compared, run, pins, seen)
     return _verdict(study, ask, found, settled, details)
 
@@ -169,18 +170,13 @@ def _row_name(compared: Comparison, row: int) -> str:
     return f"{band.signal} {band.kind}"
 
 
-def _details(study: Study, compared: Comparison, run: Campaign, pins: Pins, seen: Sight) -> dict[str, Any]:
+def _details(study: Study, compared: Comparison, run: Campaign, pins: Pins, seen: Sight | None) -> dict[str, Any]:
     rows = len(compared.bands) + (1 if compared.exits else 0)
     broken, count = random_breaks(run, rows)
     columns = run.of("random")
     details: dict[str, Any] = {
         "drives": {**{kind: len(run.of(kind)) for kind in KINDS}, "all": len(run.drives)},
         "statistics": statement(broken, count, compared.case.family),
-        "smallest_visible": {
-            "gain": seen.gain,
-            "delay": seen.delay,
-            "signals": {name: {"gain": gain, "delay": delay} for name, (gain, delay) in seen.signals.items()},
-        },
         "integration": {
             "method": run.method,
             "nodes": run.fidelity.nodes,
@@ -192,6 +188,12 @@ def _details(study: Study, compared: Comparison, run: Campaign, pins: Pins, seen
         "profile": study.options.profile,
         "pinned_elsewhere": list(pins.told),
     }
+    if seen is not None:
+        details["smallest_visible"] = {
+            "gain": seen.gain,
+            "delay": seen.delay,
+            "signals": {name: {"gain": gain, "delay": delay} for name, (gain, delay) in seen.signals.items()},
+        }
     if columns:
         details["completed"] = float(np.mean(run.figures.completed[columns]))
     return details

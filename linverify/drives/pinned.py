@@ -30,10 +30,13 @@ def to_text(drive: Drive, about: Mapping[str, Any]) -> str:
     return json.dumps(data, sort_keys=True, allow_nan=False, indent=1) + "\n"
 
 
-def write(folder: Path, name: str, drive: Drive, about: Mapping[str, Any]) -> Path:
-    """Write FOLDER/NAME.json at once or not at all, and return its path. Raises OSError."""
+def write(folder: Path, drive: Drive, about: Mapping[str, Any], name: str = "") -> Path:
+    """Write FOLDER/NAME.json at once or not at all, and return its path; without a name it is the digest.
+
+    Raises OSError.
+    """
     folder.mkdir(parents=True, exist_ok=True)
-    path = folder / f"{name}.json"
+    path = folder / f"{name or drive.digest}.json"
     handle, temporary = tempfile.mkstemp(dir=folder, prefix=".", suffix=".part")
     try:
         with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as stream:

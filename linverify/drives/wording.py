@@ -10,7 +10,7 @@ import numpy as np
 from ..core.drive import Drive
 from ..core.model import Array
 
-MOST_MOVES = 4  # a course with more moves is told by its range
+MOST_MOVES = 6  # a course with more moves is told by its range
 WIDTH = 3  # changes in a row that read as one ramp
 
 

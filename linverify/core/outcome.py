@@ -19,6 +19,8 @@ class Outcome(Enum):
     NOT_DETERMINISTIC = "the plant answers the same call differently"
     NOISY = "the plant's own noise hides what was asked for"
     NOT_DIFFERENTIABLE = "the plant has a kink or a jump on the operating point"
+    NOT_EQUILIBRIUM = "the point is not an equilibrium"
+    WRONG_JACOBIAN = "the plant's own Jacobian disagrees with differences"
     INACCURATE = "the integration did not reach the accuracy that the error bands ask for"
     TOO_MANY_STEPS = "the integration needed more steps than the budget allows"
     DIVERGED = "the plant left every bound before the envelope could end the comparison"

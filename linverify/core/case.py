@@ -54,8 +54,9 @@ class TrimAsk:
     """The equilibrium that is asked for.
 
     hold: required values of states, inputs or outputs; find: the unknowns, in plant order (states, then inputs);
-    start: first guesses, and the values of what is neither held nor found; rates: prescribed rates of states;
-    free: states whose rate may be anything; minimize: weights; accuracy: largest scaled residual of any equation.
+    start: first guesses, and the values of what is neither held nor found; rates: prescribed rates of states, per time
+    unit (of a difference equation: the change a step); free: states whose rate may be anything; minimize: weights;
+    accuracy: largest scaled residual of any equation, in the same counting of time.
     """
 
     hold: Mapping[str, float]

@@ -57,6 +57,11 @@ def shown(number: float) -> str:
     return f"{number:.6g}"
 
 
+def told(number: float, unit: str) -> str:
+    """A number with its unit as messages show it; a plain number has none."""
+    return shown(number) if unit in _PLAIN else f"{shown(number)} {unit}"
+
+
 def convert(number: float, unit: str, target: str, *, difference: bool = False, text: str = "") -> float:
     """`number` in `unit` as a number in `target`; with unit "" it is in `target` already.
 
@@ -65,7 +70,7 @@ def convert(number: float, unit: str, target: str, *, difference: bool = False, 
     """
     if unit in ("", target):
         return number
-    text = text or f"{shown(number)} {unit}"
+    text = text or told(number, unit)
     if _dimension(unit) != _dimension(target):
         raise UnitError(f"{text!r} is {_mistaken(number, unit, target)}", f"{kind(target)} is expected", "")
     factor = _factor(unit, target)

@@ -7,7 +7,6 @@ from __future__ import annotations
 
 import math
 import os
-from collections.abc import Mapping
 from pathlib import Path
 from types import MappingProxyType
 from typing import Literal
@@ -88,6 +87,7 @@ class _Binder:
         self.settings = (*spec.settings, *told)
         self.slopes = SlopeAsk(spec.slope_gap, MappingProxyType(self._sides()))
         self.time = self._time()
+        self.family = max(1, sum(not cell.skipped for point in spec.points for cell in point.cells))
 
     def cases(self) -> tuple[Case, ...]:
         """One case a cell, points and cells in the order of the spec."""
@@ -119,9 +119,15 @@ class _Binder:
             bands=bands,
             exits=Exits(self.spec.complete, self.spec.mismatch),
             requirements=self._requirements(cell, self.spec.check_names(point)),
-            settings=(*self.settings, *point.settings, *_told_parameters(self.plant, point, cell)),
+            settings=(
+                *self.settings,
+                *point.settings,
+                *_told_rates(self.spec, point),
+                *_told_cell(self.plant, point, cell),
+            ),
             files=self.files,
             skipped=cell.skipped,
+            family=self.family,
         )
 
     def _checks(self, cell: Cell, sets: tuple[DriveSet, ...]) -> tuple[CheckAsk, ...]:
@@ -161,12 +167,28 @@ class _Binder:
         return math.copysign(count, time)
 
 
-def _told_parameters(plant: Plant, point: Point, cell: Cell) -> tuple[Setting, ...]:
-    """The plant's own parameters, where neither spec nor sweep says otherwise."""
+def _told_cell(plant: Plant, point: Point, cell: Cell) -> tuple[Setting, ...]:
+    """What is swept in this cell, and the plant's own parameters where neither spec nor sweep says otherwise."""
     said = {entry.name for entry in (*point.parameters, *cell.swept)}
-    values: Mapping[str, tuple[float, str]] = {name: plant.parameter(name) for name in plant.parameters}
-    return tuple(
-        Setting(f"parameters: {name}", f"{units.shown(value)} {unit}".strip(), "plant")
-        for name, (value, unit) in values.items()
-        if name not in said
+    own = [(name, *plant.parameter(name)) for name in plant.parameters if name not in said]
+    swept = tuple(
+        Setting(
+            f"{'parameters' if entry.name in plant.parameters else 'hold'}.{entry.name}",
+            entry.value.text,
+            str(entry.value.place),
+        )
+        for entry in cell.swept
     )
+    return (*swept, *(Setting(f"parameters.{name}", units.told(value, unit), "plant") for name, value, unit in own))
+
+
+def _told_rates(spec: Spec, point: Point) -> tuple[Setting, ...]:
+    """Rates of driven inputs that come from the envelope."""
+    limits = {line.name: line.value.rate for line in spec.envelope if line.value.rate is not None}
+    told = []
+    for drives in point.drives:
+        word = f"drives.{drives.name}.rate" if drives.name else "drives.rate"
+        own = {entry.name for entry in drives.rate}
+        for name in (entry.name for entry in drives.amplitude if entry.name in limits and entry.name not in own):
+            told.append(Setting(f"{word}.{name}", limits[name].text, str(limits[name].place)))
+    return tuple(told)

@@ -12,6 +12,7 @@ from linverify.core.plant import Plant
 
 from .ground import Ground
 from .layout import Entry, Limits
+from .merge import BY_LANGUAGE
 
 
 def bind_envelope(
@@ -60,9 +61,9 @@ def nominal_sizes(plant: Plant, envelope: Mapping[str, Interval]) -> tuple[Mappi
         interval = envelope.get(name, Interval())
         if name in plant.nominal:
             sizes[name], origin = float(plant.nominal[name]), "plant"
-        elif interval.bounded:
-            sizes[name], origin = 0.5 * (interval.high - interval.low), "half the width of the envelope"
+        elif interval.bounded and (half := 0.5 * interval.high - 0.5 * interval.low) > 0.0:
+            sizes[name], origin = half, "half the width of the envelope"
         else:
-            sizes[name], origin = 1.0, "default"
-        told.append(Setting(f"nominal: {name}", f"{units.shown(sizes[name])} {plant.unit(name)}".strip(), origin))
+            sizes[name], origin = 1.0, BY_LANGUAGE
+        told.append(Setting(f"nominal.{name}", units.told(sizes[name], plant.unit(name)), origin))
     return MappingProxyType(sizes), tuple(told)

@@ -128,15 +128,15 @@ class Ground:
     def told_interval(self, interval: Interval, name: str) -> str:
         """`9.26 to 21.6067 m/s`, `at least 0.1 m/s`."""
         unit = self.plant.unit(name)
-        low, high = units.shown(interval.low), units.shown(interval.high)
+        low, high = units.told(interval.low, unit), units.told(interval.high, unit)
         if interval.bounded:
-            return f"{low} to {high} {unit}".strip()
-        return (f"at most {high} {unit}" if math.isinf(interval.low) else f"at least {low} {unit}").strip()
+            return f"{units.shown(interval.low)} to {high}"
+        return f"at most {high}" if math.isinf(interval.low) else f"at least {low}"
 
 
 def whole_ratio(length: float, part: float) -> int | None:
     """How many times `part` fits into `length`; None where that is no whole number of times, or not once."""
-    ratio = length / part
+    ratio = length / part if part > 0.0 else math.inf
     count = round(ratio) if math.isfinite(ratio) else 0
     return count if count >= 1 and abs(ratio - count) <= WHOLE * count else None
 

@@ -185,7 +185,11 @@ def _expect(ground: Ground, point: Point) -> dict[str, Expected]:
 def _tolerance(ground: Ground, entry: Entry[Expect], value: float, word: str) -> float:
     asked, tolerance = entry.value.value, entry.value.tolerance
     unit = asked.unit or ground.plant.unit(entry.name)
-    if tolerance.per_cent and asked.unit != "%":
+    if tolerance.per_cent and asked.unit == "%":
+        wrong = f"{entry.value.text!r} may mean {tolerance.text} of the value, or {tolerance.value:g} points"
+        ground.report(entry.value.place, wrong, "plain numbers in the plant's unit are expected")
+        return 0.0
+    if tolerance.per_cent:
         if unit in _OFFSET_SCALES:
             wrong = f"{tolerance.text!r} of a temperature in {unit} depends on where the scale has its zero"
             ground.report(tolerance.place, wrong, "a difference of temperatures is expected")

@@ -1,8 +1,8 @@
 """The second opinion: one drive at a time by scipy's integrators, with which a failure is confirmed.
 
 It shares no integration code with `simulate`, not even the linear side or the search for exits, so that a mistake in
-one cannot confirm itself. Eighth-order Dormand-Prince where the point is not stiff, Radau where it is, restarted at every
-instant at which inputs change, with tolerances 100 times tighter than the run that is confirmed.
+one cannot confirm itself. Eighth-order Dormand-Prince where the point is not stiff, Radau where it is, restarted at
+every instant at which inputs change, with tolerances 100 times tighter than the run that is confirmed.
 """
 
 from __future__ import annotations

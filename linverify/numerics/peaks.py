@@ -16,7 +16,7 @@ def refined_peak(times: Array, values: Array) -> tuple[Array, Array]:
     """Largest |value| of each column and when it is met.
 
     times (K, S + 1); values (K, S + 1, N), NaN for samples that do not count. Returns (N,) and (N,): at least the
-    largest sample, and 0 at the first instant for a column without samples. The sub-intervals of an interval are equally
+    largest sample, and 0 at the first instant for a column without samples. Sub-intervals of one interval are equally
     long.
     """
     nodes, width = times.shape[1], values.shape[2]

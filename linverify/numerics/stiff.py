@@ -3,8 +3,8 @@
 Explicit pairs take steps that are bounded by the fastest pole however little it moves. A Rosenbrock method suits
 batches better than implicit Runge-Kutta methods, since every column does the same work a step. Jacobians are
 differences, all columns of all drives in one call of the plant. The method is stiffly accurate and L-stable; its
-coefficients are the set RODAS of E. Hairer, G. Wanner, Solving Ordinary Differential Equations II (2nd edition, 1996), section IV.10; a test
-proves their order.
+coefficients are the set RODAS of E. Hairer, G. Wanner, Solving Ordinary Differential Equations II (2nd edition, 1996),
+section IV.10; a test proves their order.
 """
 
 from __future__ import annotations

@@ -1,4 +1,4 @@
-"""What a check tells beside its figures, as Markdown: known words get tables of their own, others a plain form."""
+"""What the checks tell beside their figures, as Markdown; words not known here get the plain form of `forms`."""
 
 from __future__ import annotations
 
@@ -7,18 +7,17 @@ from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 from . import quantity
-from .tables import bullets, escaped, grid
+from .forms import cell, is_matrix, is_number, listing, matrix, plain_blocks
+from .tables import escaped, grid
 
 KINDS = {"states": "state", "inputs": "input", "outputs": "output"}
-_POLES = ("poles", "eigenvalues")
-_POLE_WORDS = ("frequency", "natural_frequency", "damping", "time_constant", "period")  # the order that is read
+NONE_SHOWS = "none shows"
 _MATRICES = {
     "A": ("states", "states"),
     "B": ("states", "inputs"),
     "C": ("outputs", "states"),
     "D": ("outputs", "inputs"),
 }
-NONE_SHOWS = "none shows"
 Signals = Mapping[str, Sequence[Sequence[str]]]  # kind -> [name, unit] in the plant's order
 
 
@@ -26,20 +25,90 @@ def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "") ->
     """Blocks of Markdown, known words first and the rest in alphabetical order."""
     rest = dict(details)
     made: list[str] = []
-    if any(kind in rest and isinstance(rest[kind], Mapping) for kind in KINDS):
-        found = {kind: rest.pop(kind) for kind in KINDS if isinstance(rest.get(kind), Mapping)}
-        made.append(trimmed(found, signals))
-    for word in _POLES:
-        if isinstance(rest.get(word), list) and rest[word]:
-            made += [f"Eigenvalues of the local model{per(time_unit)}:", poles(rest.pop(word))]
-    for word, (rows, columns) in _MATRICES.items():
-        if _is_matrix(rest.get(word)):
-            made += [f"{word}:", matrix(rest.pop(word), _names(signals, rows), _names(signals, columns))]
+    if found := {kind: rest.pop(kind) for kind in KINDS if isinstance(rest.get(kind), Mapping)}:
+        errors = rest.pop("errors") if isinstance(rest.get("errors"), Mapping) else {}
+        made.append(trimmed(found, signals, errors))
+    if isinstance(rest.get("poles"), list) and rest["poles"]:
+        made += [
+            f"Eigenvalues of the local model, per {time_unit or 'time unit'}:",
+            poles(rest.pop("poles"), time_unit),
+        ]
+    if _is_model(rest.get("model")):
+        made += model(rest.pop("model"))
     if isinstance(rest.get("statistics"), Mapping) and "text" in rest["statistics"]:
         made += statistics(rest.pop("statistics"))
     if isinstance(rest.get("smallest_visible"), Mapping):
         made.append(visible(rest.pop("smallest_visible"), time_unit))
     return made + plain_blocks(rest)
+
+
+def trimmed(found: Mapping[str, Mapping[str, Any]], signals: Signals, errors: Mapping[str, Any]) -> str:
+    """Trimmed values with their units, in the plant's order; an output that is a state is told once."""
+    rows: list[tuple[str, ...]] = []
+    told: set[str] = set()
+    for kind, values in found.items():
+        units = {pair[0]: pair[1] for pair in signals.get(kind, ())}
+        order = [name for name in units if name in values] + sorted(set(values) - set(units))
+        for name in order:
+            if name not in told:
+                value, unit = _valued(values[name], units.get(name, ""))
+                rows.append((name, KINDS[kind], value, _known(errors.get(name), unit)))
+        told.update(values)
+    headers = ("signal", "kind", "trimmed value", "known to")[: 4 if errors else 3]
+    return grid(headers, [row[: len(headers)] for row in rows], right=headers[2:])
+
+
+def _known(error: Any, unit: str) -> str:
+    return quantity.quantity(error, unit, 2) if is_number(error) else cell(error)
+
+
+def _valued(value: Any, unit: str) -> tuple[str, str]:
+    """A number, or {"value", "unit"}, as text; and its unit."""
+    if isinstance(value, Mapping) and "value" in value:
+        return _valued(value["value"], str(value.get("unit", unit)))
+    return (quantity.quantity(value, unit) if is_number(value) else cell(value)), unit
+
+
+def poles(values: Sequence[Any], time_unit: str = "") -> str:
+    """Eigenvalues, one a row, with natural frequency, damping and time constant where they are given."""
+    rate = f"rad/{time_unit}" if time_unit else "rad per time unit"
+    worded = {
+        "natural": f"natural frequency, {rate}",
+        "hertz": "frequency, Hz",
+        "damping": "damping ratio",
+        "time_constant": f"time constant, {time_unit or 'time units'}",
+    }
+    return listing([_pole(value, worded) for value in values])
+
+
+def _pole(pole: Any, worded: Mapping[str, str]) -> dict[str, Any]:
+    if not isinstance(pole, Mapping):
+        return {"eigenvalue": pole}
+    joined = {"real": "eigenvalue", "z_real": "z"}
+    rest = dict(pole)
+    told: dict[str, Any] = {}
+    for word, name in joined.items():
+        pair = (rest.get(word), rest.get(word.replace("real", "imag")))
+        if all(is_number(part) or part is None for part in pair) and word in rest:
+            told[name] = _complex(*pair)
+            rest = {key: value for key, value in rest.items() if key not in (word, word.replace("real", "imag"))}
+    return {**told, **{worded[word]: rest.pop(word) for word in worded if word in rest}, **rest}
+
+
+def _complex(real: float | None, imaginary: float | None) -> str:
+    first = cell(real)
+    if not imaginary:
+        return first
+    return f"{first} {'-' if imaginary < 0 else '+'} {quantity.number(abs(imaginary))}j"
+
+
+def model(found: Mapping[str, Any]) -> list[str]:
+    """The local model's matrices under their names; entries' errors stay in the record."""
+    made = []
+    for word, (down, across) in _MATRICES.items():
+        if is_matrix(found.get(word)):
+            made += [f"{word} of the local model:", matrix(found[word], _names(found, down), _names(found, across))]
+    return made
 
 
 def statistics(found: Mapping[str, Any]) -> list[str]:
@@ -66,137 +135,15 @@ def visible(found: Mapping[str, Any], time_unit: str) -> str:
 
 
 def _shown(value: Any, worded: Callable[[float], str]) -> str:
-    if not _is_number(value):
+    if not is_number(value):
         return cell(value)
     return worded(value) if math.isfinite(value) else NONE_SHOWS
 
 
-def per(time_unit: str) -> str:
-    """The unit of a rate in words, for a caption."""
-    return f", per {time_unit}" if time_unit else ""
+def _is_model(value: Any) -> bool:
+    return isinstance(value, Mapping) and any(is_matrix(value.get(word)) for word in _MATRICES)
 
 
-def trimmed(found: Mapping[str, Mapping[str, Any]], signals: Signals) -> str:
-    """Trimmed values with their units, in the plant's order."""
-    rows: list[tuple[str, str, str]] = []
-    for kind, values in found.items():
-        units = {pair[0]: pair[1] for pair in signals.get(kind, ())}
-        order = [name for name in units if name in values] + sorted(set(values) - set(units))
-        rows += [(name, KINDS[kind], _valued(values[name], units.get(name, ""))) for name in order]
-    return grid(("signal", "kind", "trimmed value"), rows, right=("trimmed value",))
-
-
-def _valued(value: Any, unit: str) -> str:
-    """A number, {"value", "unit"} or [number, unit] as text."""
-    if isinstance(value, Mapping) and "value" in value:
-        return _valued(value["value"], str(value.get("unit", unit)))
-    if isinstance(value, list) and len(value) == 2 and isinstance(value[1], str):
-        return _valued(value[0], value[1])
-    if not _is_number(value):
-        return cell(value)
-    return quantity.quantity(value, unit)
-
-
-def poles(values: Sequence[Any]) -> str:
-    """Eigenvalues, one a row: as mappings with their own words, or as pairs of real and imaginary part."""
-    if all(isinstance(value, Mapping) for value in values):
-        return listing([_complex_joined(value) for value in values])
-    rows = [(_complex(value) if _is_pair(value) else cell(value),) for value in values]
-    return grid(("eigenvalue",), rows, right=("eigenvalue",))
-
-
-def _complex_joined(pole: Mapping[str, Any]) -> dict[str, Any]:
-    """A pole whose real and imaginary parts are one text, in front."""
-    if not (_is_number(pole.get("real")) and _is_number(pole.get("imag"))):
-        return dict(pole)
-    known = {word: pole[word] for word in _POLE_WORDS if word in pole}
-    rest = {word: value for word, value in pole.items() if word not in ("real", "imag")}
-    return {"eigenvalue": _complex([pole["real"], pole["imag"]]), **known, **rest}
-
-
-def _complex(pair: Sequence[float]) -> str:
-    real, imaginary = quantity.number(pair[0]), quantity.number(abs(pair[1]))
-    return real if pair[1] == 0.0 else f"{real} {'-' if pair[1] < 0 else '+'} {imaginary}j"
-
-
-def matrix(rows: Sequence[Sequence[float]], down: Sequence[str], across: Sequence[str]) -> str:
-    """A matrix with names at its sides where they fit."""
-    width = len(rows[0])
-    columns = list(across) if len(across) == width else [str(index + 1) for index in range(width)]
-    names = list(down) if len(down) == len(rows) else [str(index + 1) for index in range(len(rows))]
-    cells = [(name, *(quantity.number(value) for value in row)) for name, row in zip(names, rows, strict=True)]
-    return grid(("", *columns), cells, right=columns)
-
-
-def plain_blocks(values: Mapping[str, Any], depth: int = 0) -> list[str]:
-    """Any plain data: short values in one table, texts as sentences, lists and mappings under their word."""
-    short = [(label(word), cell(value)) for word, value in sorted(values.items()) if _is_short(value)]
-    made = [grid(("told", "value"), short)] if short else []
-    for word, value in sorted(values.items()):
-        if not _is_short(value) and value not in ([], {}):
-            made += _long_blocks(label(word), value, depth)
-    return made
-
-
-def _long_blocks(name: str, value: Any, depth: int) -> list[str]:
-    title = f"{escaped(name)}:"
-    if isinstance(value, str):
-        return [f"{title} {escaped(value)}"]
-    if isinstance(value, Mapping):
-        return [title, *plain_blocks(value, depth + 1)]
-    if all(isinstance(item, Mapping) for item in value):
-        return [title, listing(value)]
-    if _is_matrix(value):
-        return [title, matrix(value, (), ())]
-    return [title, bullets(cell(item) for item in value)]
-
-
-def listing(values: Sequence[Mapping[str, Any]]) -> str:
-    """A list of mappings as one table; columns in order of first appearance."""
-    columns = list(dict.fromkeys(word for value in values for word in value))
-    rows = [[cell(value[word]) if word in value else quantity.ABSENT for word in columns] for value in values]
-    return grid([label(word) for word in columns], rows)
-
-
-def label(word: str) -> str:
-    """A key as a reader sees it."""
-    return word.replace("_", " ")
-
-
-def cell(value: Any) -> str:
-    """Plain data as the text of one cell."""
-    if value is None:
-        return quantity.ABSENT
-    if isinstance(value, bool):
-        return "yes" if value else "no"
-    if _is_number(value):
-        return quantity.number(value)
-    if isinstance(value, Mapping):
-        return ", ".join(f"{label(word)} {cell(item)}" for word, item in sorted(value.items()))
-    if isinstance(value, list):
-        return ", ".join(cell(item) for item in value)
-    return str(value)
-
-
-def _is_number(value: Any) -> bool:
-    return isinstance(value, (int, float)) and not isinstance(value, bool)
-
-
-def _is_pair(value: Any) -> bool:
-    return isinstance(value, list) and len(value) == 2 and all(_is_number(item) for item in value)
-
-
-def _is_matrix(value: Any) -> bool:
-    if not (isinstance(value, list) and value and all(isinstance(row, list) and row for row in value)):
-        return False
-    return len({len(row) for row in value}) == 1 and all(_is_number(item) for row in value for item in row)
-
-
-def _is_short(value: Any) -> bool:
-    return (
-        value is None or _is_number(value) or isinstance(value, bool) or (isinstance(value, str) and len(value) <= 40)
-    )
-
-
-def _names(signals: Signals, kind: str) -> list[str]:
-    return [pair[0] for pair in signals.get(kind, ())]
+def _names(found: Mapping[str, Any], kind: str) -> list[str]:
+    names = found.get(kind)
+    return [str(name) for name in names] if isinstance(names, list) else []

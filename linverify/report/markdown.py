@@ -6,7 +6,7 @@ from collections.abc import Iterator, Mapping, Sequence
 from typing import Any
 
 from ..core.verdict import Sense, Status, Verdict
-from . import details, quantity, tables, text, trace
+from . import details, forms, quantity, tables, text, trace
 from .record import verdicts_of
 from .tables import escaped, grid
 
@@ -144,9 +144,9 @@ def _provenance(provenance: Mapping[str, Any]) -> Iterator[str]:
 def _flat(data: Mapping[str, Any], prefix: str = "") -> list[tuple[str, str]]:
     rows: list[tuple[str, str]] = []
     for word, value in sorted(data.items(), key=lambda item: tables.human(item[0])):
-        name = f"{prefix}{word}" if prefix else details.label(word)
+        name = f"{prefix}{word}" if prefix else forms.label(word)
         if isinstance(value, Mapping):
             rows += _flat(value, f"{name}: ")
         else:
-            rows.append((name, details.cell(value)))
+            rows.append((name, forms.cell(value)))
     return rows

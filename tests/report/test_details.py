@@ -9,7 +9,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from linverify.report.details import blocks, cell
+from linverify.report.details import blocks
+from linverify.report.forms import cell
 from linverify.report.wire import plain, restored
 
 SIGNALS = {"states": [["speed", "m/s"], ["angle", "rad"]], "inputs": [["thrust", "N"]], "outputs": [["height", "m"]]}
@@ -19,7 +20,9 @@ VALUES = st.recursive(
     lambda inner: st.lists(inner, max_size=3) | st.dictionaries(KEYS, inner, max_size=3),
     max_leaves=10,
 )
-WORDS = st.sampled_from(["states", "inputs", "outputs", "poles", "eigenvalues", "A", "B", "C", "D", "statistics", "x"])
+WORDS = st.sampled_from(
+    ["states", "inputs", "outputs", "errors", "poles", "model", "statistics", "smallest_visible", "x"]
+)
 
 
 def squeezed(text: str) -> list[list[str]]:
@@ -38,34 +41,73 @@ def test_trimmed_values_stand_in_the_plants_order_with_units() -> None:
     ]
 
 
+def test_trimmed_values_are_told_with_what_they_are_known_to() -> None:
+    details = {"states": {"speed": 15.0, "angle": 0.05}, "errors": {"speed": 2.345e-9}}
+    assert squeezed(blocks(details, SIGNALS)[0])[1:] == [
+        ["speed", "state", "15 m/s", "2.3e-9 m/s"],
+        ["angle", "state", "0.05 rad", "-"],
+    ]
+
+
+def test_an_output_that_is_a_state_is_told_once() -> None:
+    made = blocks({"states": {"speed": 15.0}, "outputs": {"speed": 15.0, "height": 0.9}}, SIGNALS)
+    assert [row[:2] for row in squeezed(made[0])[1:]] == [["speed", "state"], ["height", "output"]]
+
+
 @pytest.mark.parametrize(
-    ("value", "shown"),
-    [({"value": 3.0, "unit": "kn"}, "3 kn"), ([3.0, "kn"], "3 kn"), (3.0, "3"), (math.nan, "-"), ("free", "free")],
+    ("value", "shown"), [({"value": 3.0, "unit": "kn"}, "3 kn"), (3.0, "3"), (math.nan, "-"), ("free", "free")]
 )
 def test_values_may_bring_their_unit(value: object, shown: str) -> None:
     assert squeezed(blocks({"states": {"foreign": value}}, {})[0])[1] == ["foreign", "state", shown]
 
 
 def test_eigenvalues_show_frequency_and_damping() -> None:
-    pole = {"damping": 0.36, "frequency": 2.2, "imag": -2.1, "real": -0.8, "slow": True}
+    pole = {
+        "damping": 0.36,
+        "natural": 2.2,
+        "hertz": None,
+        "imag": -2.1,
+        "real": -0.8,
+        "time_constant": 1.25,
+        "slow": True,
+    }
     caption, table = blocks({"poles": [pole]}, SIGNALS, "s")
     assert caption == "Eigenvalues of the local model, per s:"
-    assert squeezed(table) == [["eigenvalue", "frequency", "damping", "slow"], ["-0.8 - 2.1j", "2.2", "0.36", "yes"]]
+    assert squeezed(table) == [
+        ["eigenvalue", "natural frequency, rad/s", "frequency, Hz", "damping ratio", "time constant, s", "slow"],
+        ["-0.8 - 2.1j", "2.2", "-", "0.36", "1.25", "yes"],
+    ]
 
 
-@pytest.mark.parametrize(
-    ("poles", "rows"),
-    [([[-1.0, 0.0], [0.5, 2.0]], [["-1"], ["0.5 + 2j"]]), ([-1.0, "at zero"], [["-1"], ["at zero"]])],
-)
-def test_eigenvalues_as_pairs_or_plain(poles: list[Any], rows: list[list[str]]) -> None:
-    assert squeezed(blocks({"eigenvalues": poles}, {})[1])[1:] == rows
+def test_eigenvalues_of_a_difference_equation_show_both_planes() -> None:
+    poles = [
+        {"real": -1.0, "imag": 0.0, "z_real": 0.9, "z_imag": 0.0},
+        {"real": None, "imag": 3.0, "z_real": 0.0, "z_imag": -0.5},
+        "at zero",
+    ]
+    assert squeezed(blocks({"poles": poles}, {})[1]) == [
+        ["eigenvalue", "z"],
+        ["-1", "0.9"],
+        ["- + 3j", "0 - 0.5j"],
+        ["at zero", "-"],
+    ]
 
 
 def test_matrices_carry_names_where_they_fit() -> None:
-    named = blocks({"A": [[0.0, 1.0], [-2.0, -3.0]], "B": [[1.0], [2.0]]}, SIGNALS)
-    assert squeezed(named[1]) == [["", "speed", "angle"], ["speed", "0", "1"], ["angle", "-2", "-3"]]
-    assert squeezed(named[3]) == [["", "thrust"], ["speed", "1"], ["angle", "2"]]
-    assert squeezed(blocks({"A": [[7.0]]}, SIGNALS)[1]) == [["", "1"], ["1", "7"]]
+    model = {
+        "states": ["speed", "angle"],
+        "inputs": ["thrust"],
+        "A": [[0.0, 1.0], [-2.0, -3.0]],
+        "B": [[1.0], [2.0]],
+        "C": [[7.0]],
+        "errors": {"A": [[1e-9]]},
+    }
+    made = blocks({"model": model}, SIGNALS)
+    assert made[0] == "A of the local model:"
+    assert squeezed(made[1]) == [["", "speed", "angle"], ["speed", "0", "1"], ["angle", "-2", "-3"]]
+    assert squeezed(made[3]) == [["", "thrust"], ["speed", "1"], ["angle", "2"]]
+    assert squeezed(made[5]) == [["", "1"], ["1", "7"]]
+    assert len(made) == 6
 
 
 def test_other_words_have_a_plain_form() -> None:
@@ -77,6 +119,8 @@ def test_other_words_have_a_plain_form() -> None:
             "seen": {"gain": 0.1},
             "corners": ["one", "two"],
             "empty": [],
+            "error_90": [0.1, 0.2],
+            "residuals": {"coil_current": 1e-9},
         },
         {},
     )
@@ -86,11 +130,13 @@ def test_other_words_have_a_plain_form() -> None:
     assert "- one\n- two" in text
     assert r"a\|b" in text
     assert "empty" not in text
+    assert squeezed(made[0])[1] == ["90th percentile of the error, band by band", "0.1, 0.2"]
+    assert "coil_current" in text  # a name stays a name
 
 
 def test_cells() -> None:
     assert [cell(value) for value in (None, True, False, 0.1, "x", [1, 2], {"b_c": 1, "a": 2})] == [
-        "-", "yes", "no", "0.1", "x", "1, 2", "a 2, b c 1",
+        "-", "yes", "no", "0.1", "x", "1, 2", "a 2, b_c 1",
     ]  # fmt: skip
 
 

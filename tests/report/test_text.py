@@ -20,7 +20,7 @@ FAILURE = f"""\
   worst drive     winch changes 8 times between -0.9 and +0.9 kN from 0.5 s on [3fa9c1d20b77]
   simplest drive  winch steps to +0.9 kN at 1 s [77d0c0ffee12]
   also            rms error of height 0.011 m, at most 0.015 m, headroom 26.7 %: pass
-  also            smallest gain error that shows 7.5 %
+  also            largest change of winch 0.9 kN
   note            amplitude of winch is cut to 0.9 kN by the envelope
   replay          python -m linverify replay {SPEC}::wind9::follows.fast reports/evidence/77d0c0ffee12.json
   pin             python -m linverify pin {SPEC}::wind9::follows.fast reports/evidence/77d0c0ffee12.json"""

@@ -1,0 +1,100 @@
+"""Any plain data as Markdown: short values in a table, matrices with their names, everything else under its word."""
+
+from __future__ import annotations
+
+from collections.abc import Callable, Mapping, Sequence
+from typing import Any
+
+from . import quantity
+from .tables import bullets, escaped, grid
+
+CELL_WIDTH = 40
+CELL_NUMBERS = 8
+_WORDED = {  # words of the record that read better in full
+    "completed": "share of random drives that ran their whole horizon",
+    "error_90": "90th percentile of the error, band by band",
+}
+
+
+def matrix(rows: Sequence[Sequence[float]], down: Sequence[str], across: Sequence[str]) -> str:
+    """A matrix with names at its sides where they fit."""
+    width = len(rows[0])
+    columns = list(across) if len(across) == width else [str(index + 1) for index in range(width)]
+    names = list(down) if len(down) == len(rows) else [str(index + 1) for index in range(len(rows))]
+    cells = [(name, *(quantity.number(value) for value in row)) for name, row in zip(names, rows, strict=True)]
+    return grid(("", *columns), cells, right=columns)
+
+
+def plain_blocks(values: Mapping[str, Any], worded: Callable[[str], str] | None = None) -> list[str]:
+    """Any plain data: short values in one table, texts as sentences, lists and mappings under their word.
+
+    worded: how keys read; by default as `label` has it. Keys further down may be names and stay as they are.
+    """
+    words = [(word, value) for word, value in sorted(values.items()) if value not in ([], {})]
+    named = worded or label
+    short = [(named(word), cell(value)) for word, value in words if is_short(value)]
+    made = [grid(("what", "value"), short)] if short else []
+    for word, value in words:
+        if not is_short(value):
+            made += _long_blocks(f"{escaped(named(word))}:", value)
+    return made
+
+
+def _long_blocks(title: str, value: Any) -> list[str]:
+    if isinstance(value, str):
+        return [f"{title} {escaped(value)}"]
+    if isinstance(value, Mapping):
+        return [title, *plain_blocks(value, lambda name: _WORDED.get(name, name))]
+    if all(isinstance(item, Mapping) for item in value):
+        return [title, listing(value)]
+    if is_matrix(value):
+        return [title, matrix(value, (), ())]
+    return [title, bullets(cell(item) for item in value)]
+
+
+def listing(values: Sequence[Mapping[str, Any]]) -> str:
+    """A list of mappings as one table; columns in order of first appearance."""
+    columns = list(dict.fromkeys(word for value in values for word in value))
+    rows = [[cell(value[word]) if word in value else quantity.ABSENT for word in columns] for value in values]
+    return grid(columns, rows)
+
+
+def label(word: str) -> str:
+    """A word of the record as a reader sees it."""
+    return _WORDED.get(word, word.replace("_", " "))
+
+
+def cell(value: Any) -> str:
+    """Plain data as the text of one cell."""
+    if value is None:
+        return quantity.ABSENT
+    if isinstance(value, bool):
+        return "yes" if value else "no"
+    if is_number(value):
+        return quantity.number(value)
+    if isinstance(value, Mapping):
+        return ", ".join(f"{word} {cell(item)}" for word, item in sorted(value.items()))
+    if isinstance(value, list):
+        return ", ".join(cell(item) for item in value)
+    return str(value)
+
+
+def is_number(value: Any) -> bool:
+    """True for a number that is no truth value."""
+    return isinstance(value, (int, float)) and not isinstance(value, bool)
+
+
+def is_matrix(value: Any) -> bool:
+    """True for a list of equally long lists of numbers."""
+    if not (isinstance(value, list) and value and all(isinstance(row, list) and row for row in value)):
+        return False
+    return len({len(row) for row in value}) == 1 and all(is_number(item) for row in value for item in row)
+
+
+def is_short(value: Any) -> bool:
+    """True for what fits into one cell: a number, a truth value, a short text, a few numbers or nothing."""
+    if isinstance(value, str):
+        return len(value) <= CELL_WIDTH
+    if isinstance(value, list):
+        return len(value) <= CELL_NUMBERS and all(is_number(item) for item in value)
+    return value is None or isinstance(value, bool) or is_number(value)

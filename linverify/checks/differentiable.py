@@ -84,7 +84,7 @@ def _details(study: Study, found: Linearization) -> dict[str, Any]:
         "wrong_entries": [mismatch.told() for mismatch in found.cross_check],
     }
     if found.model is not None and _usable(found.model):
-        details["model"] = _model(found.model)
+        details |= _matrices(found.model)
         details["poles"] = _poles(study, found.model)
     return details
 
@@ -106,16 +106,10 @@ def _corner(corner: Corner) -> dict[str, Any]:
     }
 
 
-def _model(model: LocalModel) -> dict[str, Any]:
+def _matrices(model: LocalModel) -> dict[str, Any]:
     blocks = {"A": model.A, "B": model.B, "C": model.C, "D": model.D}
-    return {
-        "states": list(model.states.names),
-        "inputs": list(model.inputs.names),
-        "outputs": list(model.outputs.names),
-        "step": model.step,
-        **{name: _plain(block) for name, block in blocks.items()},
-        "errors": {name: _plain(model.errors[name]) for name in blocks},
-    }
+    errors = {f"error_of_{name}": _plain(model.errors[name]) for name in blocks}
+    return {name: _plain(block) for name, block in blocks.items()} | errors
 
 
 def _plain(matrix: Array) -> list[list[float]]:
@@ -129,7 +123,7 @@ def _poles(study: Study, model: LocalModel) -> list[dict[str, Any]]:
         {
             "real": _finite(pole.value.real),
             "imag": pole.value.imag,
-            "natural": _finite(pole.natural),
+            "natural_frequency": _finite(pole.natural),
             "hertz": _finite(pole.hertz),
             "damping": _finite(pole.damping),
             "time_constant": _finite(pole.time_constant),

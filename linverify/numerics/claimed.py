@@ -36,7 +36,7 @@ class Mismatch:
 def claimed_jacobian(plant: BoundPlant, point: OperatingPoint) -> Array:
     """Rates and outputs by states and inputs (n + k, n + m) as `plant.jacobian` returns them.
 
-    Raises PlantError where it raises, or returns anything else than four finite matrices A, B, C, D of the right shapes.
+    Raises PlantError where it raises, or returns anything else than four finite matrices A, B, C, D that fit.
     """
     function = plant.plant.jacobian
     if function is None:
@@ -47,10 +47,9 @@ def claimed_jacobian(plant: BoundPlant, point: OperatingPoint) -> Array:
         return told_call(point.time, x, u, plant.states, plant.inputs)
 
     answer = called(function, "jacobian", point.time, x, u, plant.parameters, told)
+    kind = type(answer).__name__
     if not isinstance(answer, (tuple, list)) or len(answer) != 4:
-        raise PlantError(
-            f"jacobian must return A, B, C, D; it returned {type(answer).__name__} when called with {told()}"
-        )
+        raise PlantError(f"jacobian must return A, B, C, D; it returned {kind} when called with {told()}")
     n, m, k = plant.n, plant.m, plant.k
     shapes = {"A": (n, n), "B": (n, m), "C": (k, n), "D": (k, m)}
     blocks = {}
@@ -73,9 +72,8 @@ def mismatches(
     """Entries further apart than the error of the measured one allows, the worst (in scales (r, v)) first."""
     apart = np.abs(claimed - measured)
     wrong = np.argwhere(~(apart <= TRUST * error + LEAST * scales))
-    worst_first = sorted(
-        wrong.tolist(), key=lambda entry: -float(apart[tuple(entry)] / max(scales[tuple(entry)], 1e-300))
-    )
+    share = apart / np.maximum(scales, 1e-300)
+    worst_first = sorted(wrong.tolist(), key=lambda entry: -float(share[tuple(entry)]))
     return tuple(
         Mismatch(rows[i], columns[j], float(claimed[i, j]), float(measured[i, j]), float(error[i, j]))
         for i, j in worst_first

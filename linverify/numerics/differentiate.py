@@ -189,7 +189,8 @@ def _unexplained(quotients: Quotients, noise: Array, sizes: Array) -> Array:
         pair = legible[level] & legible[level - 1] & (found == 0)
         steady = gap[level] > 0.5 * gap[level - 1]
         found = np.where(pair, np.where(steady, gap[level], -1.0), found)
-    return np.maximum(found, 0.0)
+    left: Array = np.maximum(found, 0.0)
+    return left
 
 
 def _widen(estimate: _Estimate, unexplained: Array, gaps: Sequence[GapFinding]) -> None:

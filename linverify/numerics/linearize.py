@@ -29,9 +29,10 @@ LEAST_SCALE = 1e-9  # nominal sizes per time unit and nominal size: terms of a r
 class Corner:
     """A corner, jump or infinite slope ("steep") with names.
 
-    row: as a reader calls it (`speed_rate`, or an output); column: state or input; distance: signed, in nominal sizes of
-    the column; place: value of the column there; gap, error: difference of the one-sided slopes and its error, as shares
-    of the row's largest term; left, right: slopes in plant units; height: of a jump. near: it counts as on the point.
+    row: as a reader calls it (`speed_rate`, or an output); column: state or input; distance: signed, in nominal sizes
+    of the column; place: value of the column there; gap, error: difference of the one-sided slopes and its error, as
+    shares of the row's largest term; left, right: slopes in plant units; height: of a jump; near: it counts as on the
+    point.
     """
 
     row: str
@@ -52,9 +53,9 @@ class Linearization:
     """What linearizing found; `model` is None where there are no slopes at all.
 
     gaps: corners and jumps, nearest first; noise: one evaluation's noise, by row name; jacobian_source: one line;
-    cross_check: entries in which the plant's own Jacobian is wrong; largest: largest gap on the point, as a share of its
-    row's largest term, with the entry it belongs to and its error; message: one line, empty when DONE; notes: further
-    lines.
+    cross_check: entries in which the plant's own Jacobian is wrong; largest: largest gap on the point, as a share of
+    its row's largest term, with the entry it belongs to and its error; message: one line, empty when DONE; notes:
+    further lines.
     """
 
     outcome: Outcome
@@ -72,7 +73,7 @@ class Linearization:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class _Task:
-    """What every step needs to see. sizes (v,): nominal sizes of states and inputs; rows: names of rates and outputs."""
+    """What every step needs: sizes and names of states and inputs (columns) and of rates and outputs (rows)."""
 
     plant: BoundPlant
     point: OperatingPoint
@@ -113,10 +114,8 @@ def row_names(plant: BoundPlant) -> tuple[str, ...]:
     suffix = "next" if plant.step is not None else "rate"
     taken = set(plant.outputs.names)
     rates = [f"{name}_{suffix}" for name in plant.states.names]
-    plain = [
-        f"{suffix} of {state}" if row in taken else row for state, row in zip(plant.states.names, rates, strict=True)
-    ]
-    return (*plain, *plant.outputs.names)
+    pairs = zip(plant.states.names, rates, strict=True)
+    return (*(f"{suffix} of {state}" if row in taken else row for state, row in pairs), *plant.outputs.names)
 
 
 def _task(plant: BoundPlant, point: OperatingPoint, nominal: Mapping[str, float], ask: SlopeAsk) -> _Task:

@@ -23,6 +23,7 @@ POINTS = 8
 ORDERS = (3, 4, 5)
 SCALES = (1e-8, 1e-6, 1e-4, 2e-3)  # where a ray starts, in nominal sizes; it ends at twice that
 STARTS = (1.0, 2.6)  # a ray and its continuation
+FINEST = 2  # scales on which a function must move smoothly to be believed
 RESOLVED = 30.0  # first differences this many times the noise: at this scale the function is smooth and moving
 EPS = float(np.finfo(np.float64).eps)
 
@@ -49,7 +50,9 @@ def measured_noise(probe: Probe, rounding: Array) -> Noise:
     known = np.isfinite(quiet)
     resolved = np.median(known & (moving > RESOLVED * quiet), axis=-1) > 0.5
     noise = np.median(np.where(known, quiet, 0.0), axis=-1)
-    # scales run from fine to coarse; `fine` leaves out those beyond the first resolved one
+    # scales run from fine to coarse; `fine` leaves out those beyond the first resolved one. A function that rests on
+    # the finest scales and moves only on coarser ones is a staircase, not a wave
+    resolved[:, FINEST:] = False
     beyond = np.logical_or.accumulate(resolved, axis=-1)
     counted = np.concatenate([np.ones_like(beyond[:, :1]), ~beyond[:, :-1]], axis=-1)
     fine = np.where(counted, noise, 0.0).max(axis=-1)
@@ -59,7 +62,8 @@ def measured_noise(probe: Probe, rounding: Array) -> Noise:
 def rounding_floor(f0: Array, slopes: Array, z0: Array) -> Array:
     """Rounding (r,) of one evaluation that must be reckoned with: of the value, and of the terms that cancel in it."""
     terms = np.nan_to_num(np.abs(slopes)) * np.abs(z0)
-    return EPS * np.maximum(np.abs(f0), terms.max(axis=1, initial=0.0))
+    floor: Array = EPS * np.maximum(np.abs(f0), terms.max(axis=1, initial=0.0))
+    return floor
 
 
 def _rays(probe: Probe) -> Array:

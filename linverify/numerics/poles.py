@@ -16,8 +16,9 @@ AT_ZERO = 1e-9  # of the largest natural frequency: a pole this small is printed
 class Pole:
     """One pole. value: per time unit (of a difference equation: log(z) / step); z: the discrete one, else NaN.
 
-    natural: |value| in rad per time unit; hertz: the same in Hz, given the seconds of a time unit; damping: -Re / |value|,
-    NaN at the origin; time_constant: -1 / Re in time units, infinite on the imaginary axis, negative when unstable.
+    natural: |value| in rad per time unit; hertz: the same in Hz, given the seconds of a time unit; damping: -Re /
+    |value|, NaN at the origin; time_constant: -1 / Re in time units, infinite on the imaginary axis, negative when
+    unstable.
     """
 
     value: complex

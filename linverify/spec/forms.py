@@ -75,8 +75,9 @@ def amplitude(reader: Reader, row: Row, called: str, key: Scalar, node: Node) ->
             return None
         low, high = span
         if low.value > 0 or high.value < 0 or low.value == high.value == 0:
-            wrong = f"`{called}`: [{low.text}, {high.text}] does not reach from below trim to above"
-            reader.tell(node.place, wrong, "low <= 0 <= high about trim is expected, not both 0")
+            why = "moves nothing" if low.value == high.value == 0 else "leaves out 0, the trimmed value"
+            expected = "low <= 0 <= high about trim is expected, and not both 0"
+            reader.tell(node.place, f"`{called}`: [{low.text}, {high.text}] {why}", expected)
             return None
         return AmplitudeAsk(low, high, None, node.place)
     if isinstance(node, Block):
@@ -112,7 +113,7 @@ def expect(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Ex
     if scalar is None:
         return None
     parts = scalar.text.replace("±", "+-").replace("+/-", "+-").split("+-")
-    if len(parts) != 2:
+    if len(parts) != 2 or not all(part.strip() for part in parts):
         reader.tell(scalar.place, f"`{called}`: {quoted(scalar.text)} is no value with a tolerance", expected)
         return None
     read: list[Quantity] = []

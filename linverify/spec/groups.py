@@ -13,7 +13,7 @@ from .layout import BandAsk, DriveAsk, Quantity
 from .merge import is_for_set, is_one_set
 from .reader import Reader, check_name
 from .source import Block, Node, Scalar
-from .words import BAND_WORDS, DRIVE_WORDS, default_of
+from .words import BAND_WORDS, DRIVE_WORDS, default_of, row_of
 
 
 def drive_sets(reader: Reader, key: Scalar, node: Node, whole: bool) -> tuple[DriveAsk, ...]:
@@ -21,8 +21,10 @@ def drive_sets(reader: Reader, key: Scalar, node: Node, whole: bool) -> tuple[Dr
     if not isinstance(node, Block):
         reader.misfit(node, "drives", "one set of drives is expected, or several by name")
         return ()
-    if not node.entries:
+    if node.empty:
         reader.tell(key.place, "nothing is written after `drives`", "one set of drives, or several by name")
+        return ()
+    if _mixed(reader, node):
         return ()
     if is_one_set(node):
         return _drive_set(reader, "", key, node, whole)
@@ -31,6 +33,23 @@ def drive_sets(reader: Reader, key: Scalar, node: Node, whole: bool) -> tuple[Dr
         check_name(reader, name, "a set of drives")
         sets += _drive_set(reader, name.text, name, value, whole)
     return tuple(sets)
+
+
+def _mixed(reader: Reader, node: Block) -> bool:
+    """True, and told, where sets with names stand beside words of a set without one."""
+    strangers = [
+        key
+        for key, value in node.entries
+        if row_of(DRIVE_WORDS, key.text) is None
+        and isinstance(value, Block)
+        and any(row_of(DRIVE_WORDS, word) for word in value.words)
+    ]
+    if not strangers or not is_one_set(node):
+        return False
+    for key in strangers:
+        wrong = f"`drives`: the set {scalars.quoted(key.text)} stands beside words of a set without a name"
+        reader.tell(key.place, wrong, "one set of drives is expected, or several by name")
+    return True
 
 
 def set_names(node: Node | None) -> frozenset[str]:
@@ -85,7 +104,7 @@ def error_bands(reader: Reader, key: Scalar, node: Node, sets: frozenset[str] | 
     if not isinstance(node, Block):
         reader.misfit(node, "error_bands", "a group of `signal: {peak: 4 cm}` is expected")
         return ()
-    if not node.entries:
+    if node.empty:
         reader.tell(key.place, "nothing is written after `error_bands`", "error bands by signal are expected")
     bands: list[BandAsk] = []
     for name, value in reader.named(node, "error_bands", "an error band"):

@@ -14,11 +14,15 @@ from .words import Kind, Row
 Values = dict[str, Any]  # word -> what its reader made of it; a word that could not be read is left out
 
 
-def block(reader: Reader, node: Node, rows: tuple[Row, ...], called: str) -> Values:
-    """All words of a block, each read by the kind of its row."""
+def block(reader: Reader, node: Node, rows: tuple[Row, ...], called: str, above: str | None = None) -> Values:
+    """All words of a block, each read by the kind of its row.
+
+    called: what messages call the block; above: what they put before its words, `called` where it is left out.
+    """
+    above = called if above is None else above
     read: Values = {}
     for row, key, value in reader.words(node, rows, called):
-        found = READERS[row.kind](reader, row, row.word, key, value)
+        found = READERS[row.kind](reader, row, f"{above}: {row.word}" if above else row.word, key, value)
         if found is not None:
             read[row.word] = found
     return read

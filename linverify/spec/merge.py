@@ -10,7 +10,7 @@ from collections.abc import Iterator
 
 from ..core.case import Setting
 from ..core.errors import Place, Problem
-from .source import Block, Listing, Node, Scalar
+from .source import Block, Broken, Listing, Node, Scalar
 from .words import BAND_WORDS, DRIVE_WORDS, Kind, Row, row_of
 
 BY_LANGUAGE = "default of the language"
@@ -28,15 +28,20 @@ def over(nearer: Node, farther: Node | None, problems: list[Problem], path: tupl
         nearer, farther = _sides(nearer), _sides(farther)
     if not isinstance(nearer, Block) or not isinstance(farther, Block) or path[-1:] == ("until",):
         return nearer
-    if path[-1:] == ("drives",) and nearer.entries and farther.entries and is_one_set(nearer) != is_one_set(farther):
+    if (
+        path[-1:] == ("drives",)
+        and not nearer.empty
+        and not farther.empty
+        and is_one_set(nearer) != is_one_set(farther)
+    ):
         forms = ("one set without a name", "sets with names")
         mine, theirs = forms if is_one_set(nearer) else forms[::-1]
         wrong = f"`drives` has {mine} here, and {theirs} at {farther.place.file}:{farther.place.line}"
         problems.append(Problem(nearer.place, wrong, "both must be written in the same way to be merged"))
-        return nearer
+        return Broken(nearer.place)
     entries = [(key, over(node, farther.get(key.text), problems, (*path, key.text))) for key, node in nearer.entries]
     entries += [(key, node) for key, node in farther.entries if nearer.get(key.text) is None]
-    return Block(tuple(entries), nearer.place)
+    return Block(tuple(entries), nearer.place, nearer.sound and farther.sound)
 
 
 def is_one_set(drives: Block) -> bool:

@@ -47,7 +47,7 @@ class PointReader:
         """Tell what is wrong in the words that points share, whether or not a point brings it up."""
         every = self.spec.get("every_point")
         if every is not None:
-            block(self.reader, every, SHARED_POINT_WORDS, "every_point")
+            block(self.reader, every, SHARED_POINT_WORDS, "every_point", "")
         for each in (self.spec, every):
             if isinstance(each, Block):
                 self._parts(each, whole=False)
@@ -80,8 +80,9 @@ class PointReader:
             self.reader.tell(drives.place, "`drives` without `error_bands`", "they come together or not at all")
         if bands and not drives and not misspelt("drives", self.spec, SPEC_WORDS):
             self.reader.tell(bands.place, "`error_bands` without `drives`", "they come together or not at all")
+        named = all(band.drives in (None, *(each.name for each in sets)) for band in asks)
         for each in sets:
-            if asks and all(band.drives not in (None, each.name) for band in asks):
+            if named and asks and all(band.drives not in (None, each.name) for band in asks):
                 wrong = f"no error band is for the drives {quoted(each.name)}"
                 self.reader.tell(each.place, wrong, "a band for this set, or for all sets, is expected")
 
@@ -96,7 +97,7 @@ class PointReader:
             self.unsure = True
             return None
         merged = self._merged(node)
-        values = block(self.reader, merged, POINT_WORDS, f"operating_points: {name.text}")
+        values = block(self.reader, merged, POINT_WORDS, f"operating_points: {name.text}", "")
         drives, bands = self._parts(merged, whole=True)
         sweep, skip = self._sweep(node), values.get("skip", ())
         if skip and node.get("sweep") is None:
@@ -120,7 +121,7 @@ class PointReader:
             drives=drives,
             bands=bands,
             cells=made,
-            settings=tuple(self._settings(merged)),
+            settings=tuple(_settings(merged, sweep)),
         )
 
     def _merged(self, node: Block) -> Block:
@@ -141,15 +142,11 @@ class PointReader:
             return None
         return read_sweep(self.reader, key, value, self.files)
 
-    def _settings(self, merged: Block) -> Iterator[Setting]:
-        entries = tuple(entry for entry in merged.entries if entry[0].text != "skip")
-        return settings(Block(entries, merged.place), POINT_WORDS)
-
     def _note_checks(self, merged: Block, made: tuple[Cell, ...]) -> None:
         drives = merged.get("drives")
         names = sorted(set_names(drives)) or ["follows"] if isinstance(drives, Block) else []
         follows = [name if name == "follows" else f"follows.{name}" for name in names]
-        self.unsure = self.unsure or not made
+        self.unsure = self.unsure or not made or not isinstance(drives, Block | None)
         self.checks += [f"{cell.name}.{check}" for cell in made for check in ("trims", "differentiable", *follows)]
 
     def _unique(self, points: list[Point]) -> None:
@@ -204,3 +201,11 @@ class _Rules:
 def _place(tree: Block, word: str) -> Place | None:
     key = tree.key(word)
     return key.place if key else None
+
+
+def _settings(merged: Block, sweep: Sweep | None) -> Iterator[Setting]:
+    """The effective words of a point, without the holds and parameters that its sweep replaces."""
+    swept = {f"{word}.{name.text}" for word in ("hold", "parameters") for name in (sweep.names if sweep else ())}
+    entries = tuple(entry for entry in merged.entries if entry[0].text != "skip")
+    told = settings(Block(entries, merged.place), POINT_WORDS)
+    return (setting for setting in told if setting.word not in swept)

@@ -36,8 +36,10 @@ def read(path: Path, shown: str, root: Path) -> tuple[Spec | None, list[Problem]
     trees = [_tree(reader, file, names[file]) for file in files]
     own = trees[0]
     if not isinstance(own, Block):
-        if own is not None:
-            reader.misfit(own, "linverify", "a spec is expected: `linverify: 1`, `plant:`, `operating_points:`")
+        if own is None and not reader.problems:
+            reader.tell(Place(shown), "nothing is written in this file", "a spec starts with `linverify: 1`")
+        elif own is not None:
+            reader.tell(own.place, "this is no group of words", "`linverify: 1`, `plant: ...` and so on are expected")
         return None, _sorted(reader)
     _says_format(reader, own, shown)
     merged: Node = own
@@ -119,7 +121,7 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
     return Spec(
         shown=shown,
         path=path,
-        files=(*files, *tables),
+        files=tuple(dict.fromkeys((*files, *tables))),
         title=title.text if title else "",
         plant=plant,
         time=values.get("time"),
@@ -137,7 +139,7 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
 
 def _points(reader: Reader, pointed: PointReader, merged: Block) -> tuple[Point, ...]:
     key, node = merged.key("operating_points"), merged.get("operating_points")
-    if node is not None and (not isinstance(node, Block) or node.entries):
+    if node is not None and not (isinstance(node, Block) and node.empty):
         return pointed.points(node)
     if key is not None:
         expected = "at least one operating point is expected"

@@ -44,7 +44,8 @@ class Reader:
     def words(self, node: Node, rows: tuple[Row, ...], called: str) -> Iterator[tuple[Row, Scalar, Node]]:
         """The known, available words of a block with their rows; the others are told."""
         if not isinstance(node, Block):
-            self.misfit(node, called, "a group of " + _listed(rows))
+            known = ", ".join(row.word for row in rows if row.available)
+            self.misfit(node, called, f"a group of {known} is expected")
             return
         for key, value in node.entries:
             row = row_of(rows, key.text)
@@ -57,10 +58,11 @@ class Reader:
 
     def require(self, node: Block, rows: tuple[Row, ...], place: Place, called: str) -> bool:
         """Tell of required words that are not written; place is that of the block's own word."""
-        missing = [row.word for row in rows if row.required and row.word not in node.words]
+        missing = [row for row in rows if row.required and row.word not in node.words]
         for word in missing:
-            if not misspelt(word, node, rows):
-                self.tell(place, f"`{word}` is missing in `{called}`" if called else f"`{word}` is missing")
+            if not misspelt(word.word, node, rows):
+                where = f" in `{called}`" if called else ""
+                self.tell(place, f"`{word.word}` is missing{where}", f"{word.kind.value} is expected")
         return not missing
 
     def named(self, node: Node, called: str, wanted: str = "") -> Iterator[tuple[Scalar, Node]]:
@@ -123,8 +125,7 @@ class Reader:
     def sign(self, value: float, row: Row, text: str, place: Place, called: str) -> bool:
         """True where the value has the sign that its word asks for; else told."""
         if (row.sign == "+" and value <= 0) or (row.sign == "0+" and value < 0):
-            limit = "more than 0" if row.sign == "+" else "0 or more"
-            self.tell(place, f"`{called}`: {quoted(text)} is not {limit}", f"{limit} is expected")
+            self.tell(place, f"`{called}`: {quoted(text)} is {'not above' if row.sign == '+' else 'below'} zero")
             return False
         return True
 
@@ -136,7 +137,8 @@ class Reader:
         if ":" in key.text:
             self.tell(key.place, f"unknown word {quoted(key.text)}", "a space belongs after ':'")
         elif homes:
-            self.tell(key.place, f"unknown word {quoted(key.text)}", f"{where}it has no place; it belongs in {homes}")
+            here = f"in `{called}`" if called else "here"
+            self.tell(key.place, f"{quoted(key.text)} has no place {here}", f"it belongs under {homes}")
         elif hint and len(known) > _MOST_LISTED:
             self.tell(key.place, f"unknown word {quoted(key.text)}", hint=hint)
         else:
@@ -155,11 +157,11 @@ def _homes(word: str) -> str:
     def walk(rows: tuple[Row, ...], home: str) -> None:
         for row in rows:
             if row.word == word and home:
-                found[f"`{home}`"] = None
-            walk(row.of, home if row.word == "*" else row.word)
+                found[home] = None
+            walk(row.of, home if row.word == "*" else f"`{row.word}`")
 
-    walk(SPEC_WORDS, "the spec itself")
-    return " or ".join(home.replace("`the spec itself`", "the spec itself") for home in found)
+    walk(SPEC_WORDS, "no other word")
+    return " or ".join(found)
 
 
 def misspelt(word: str, node: Block, rows: tuple[Row, ...]) -> bool:

@@ -112,7 +112,7 @@ def whole(text: str, plain: bool = True) -> int | Wrong:
     if isinstance(read, Wrong):
         return read
     if read != math.floor(read) or abs(read) > 2**53:
-        return Wrong(f"{quoted(text)} is no whole number", "a whole number is expected")
+        return Wrong(f"{quoted(text)} is no whole number")
     return int(read)
 
 

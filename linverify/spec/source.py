@@ -40,16 +40,18 @@ _SAID: tuple[tuple[str, str, str], ...] = (
     ("',' or ']'", "a list that starts with '[' is not closed before this", "',' or ']' is expected"),
     ("',' or '}'", "a group that starts with '{' is not closed before this", "',' or '}' is expected"),
     ("unexpected end of stream", "a quotation mark is not closed before the file ends", ""),
-    ("unexpected document indicator", "a quotation mark is not closed", ""),
+    ("unexpected document", "a quotation mark is not closed", ""),
     ("cannot start any token", "this character cannot start a value", "text that starts with it belongs in quotes"),
     ("could not find expected ':'", "this line has no ':' after its word", "'word: value' is expected"),
     ("unknown escape", "this escape is unknown", "use single quotes, in which a backslash is just a backslash"),
+    ("hexdecimal", "this escape is not a character", "use single quotes, in which a backslash is just a backslash"),
     ("escape", "this escape is not a character", "use single quotes, in which a backslash is just a backslash"),
     ("node content", "a value is expected before this", ""),
     ("expected key", "this does not fit the lines above", "check the indentation, brackets and quotation marks"),
     ("<block end>", "this does not fit the lines above", "check the indentation, brackets and quotation marks"),
     ("'-' indicator", "this does not fit the list above", "check the indentation, and the '-' of each line"),
     ("document start>", "this does not fit what stands above", "check the indentation; a spec is one document"),
+    ("nesting depth", f"more than {DEEPEST} levels within each other", ""),
     ("incompatible YAML", "a %YAML line", "leave it out"),
 )  # fmt: skip
 
@@ -77,6 +79,7 @@ class Block:
 
     entries: tuple[tuple[Scalar, Node], ...]
     place: Place
+    sound: bool = True  # False where some words were refused and are missing here
 
     def get(self, word: str) -> Node | None:
         """The value of `word`, or None."""
@@ -85,6 +88,11 @@ class Block:
     def key(self, word: str) -> Scalar | None:
         """`word` itself, with its place, or None."""
         return next((key for key, _ in self.entries if key.text == word), None)
+
+    @property
+    def empty(self) -> bool:
+        """True where nothing was written in it."""
+        return self.sound and not self.entries
 
     @property
     def words(self) -> tuple[str, ...]:
@@ -110,15 +118,13 @@ def is_spec(path: Path) -> bool:
 def parse(data: bytes, shown: str) -> tuple[Node | None, list[Problem]]:
     """The nodes of one file, and every mistake that can be seen without the language.
 
-    The node is None where the file is empty or cannot be parsed at all; then there is at least one problem.
+    The node is None where nothing is written in the file, or where it cannot be parsed, which is a problem then.
     """
     text, problems = _decoded(data, shown)
     if text is None:
         return None, problems
     builder = _Builder(shown, problems)
     builder.read(text)
-    if builder.root is None and not problems:
-        problems.append(Problem(Place(shown), "nothing is written in this file"))
     return (None if builder.stopped else builder.root), problems
 
 
@@ -144,8 +150,8 @@ def _invisible(text: str, shown: str) -> Iterator[Problem]:
         odd = indent and next((i for i, character in enumerate(indent.group()) if character != " "), None)
         if indent and odd is not None:
             character = indent.group()[odd]
-            what = "a tab" if character == "\t" else unicodedata.name(character, f"U+{ord(character):04X}").lower()
-            yield Problem(Place(shown, line, odd + 1), f"{what} in the indentation", "YAML is indented by spaces")
+            what = "tab" if character == "\t" else unicodedata.name(character, f"U+{ord(character):04X}").lower()
+            yield Problem(Place(shown, line, odd + 1), f"a {what} in the indentation", "YAML is indented by spaces")
 
 
 def _place_of(text: str, at: int, shown: str) -> Place:
@@ -203,9 +209,11 @@ class _Builder:
     def _refused(self, error: Any) -> None:
         mark = error.problem_mark or error.context_mark
         place = Place(self.shown, mark.line + 1, mark.column + 1) if mark else Place(self.shown)
-        if "anchor" in str(error.context) or "alias" in str(error.context):
-            self._stop(place, "a '*' or '&' without quotes", "text that starts with it belongs in quotes")
-            return
+        marks = {"anchor": "a '*' or '&'", "alias": "a '*' or '&'", "tag": "a '!'"}
+        for piece, sign in marks.items():
+            if piece in str(error.context):
+                self._stop(place, f"{sign} without quotes", "text that starts with it belongs in quotes")
+                return
         for piece, wrong, expected in _SAID:
             if piece in str(error.problem):
                 self._stop(place, wrong, expected)
@@ -265,22 +273,24 @@ class _Builder:
             if not isinstance(key, Scalar):
                 if not isinstance(key, Broken):
                     self._tell(key.place, "a list or group cannot be a word", "'word: value' is expected")
-            elif self._sound_key(key):
+            elif self._sound_key(key, node):
                 if key.text in first:
                     before = first[key.text]
                     self._tell(key.place, f"{quoted(key.text)} is written twice", f"first in line {before.line}")
                 else:
                     first[key.text] = key.place
                     entries.append((key, node))
-        return Block(tuple(entries), frame.place)
+        return Block(tuple(entries), frame.place, 2 * len(entries) == len(frame.children))
 
-    def _sound_key(self, key: Scalar) -> bool:
+    def _sound_key(self, key: Scalar, node: Node) -> bool:
         if key.plain and key.text == "<<":
             self._tell(
                 key.place, "'<<' is not allowed in a spec", "`every_point` and defaults.yaml hold what is shared"
             )
         elif key.text.strip() == "":
             self._tell(key.place, "a word is missing before ':'")
+        elif key.plain and not is_text(key.text) and isinstance(node, Scalar) and node.plain and not node.text:
+            self._tell(key.place, f"{quoted(key.text)} where a word is due", "a number has a decimal point, no comma")
         elif key.plain and not is_text(key.text):
             self._tell(key.place, f"{quoted(key.text)} is no text to YAML", "put it in quotes, or choose another name")
         else:

@@ -47,7 +47,7 @@ def read_sweep(reader: Reader, key: Scalar, node: Node, files: list[Path]) -> Sw
         names.append(Word(name.text, name.place))
         sound = sound and values is not None
         axes.append(tuple(Entry(name.text, name.place, each) for each in values or ()))
-    if isinstance(node, Block) and not node.entries:
+    if isinstance(node, Block) and node.empty:
         reader.tell(key.place, "nothing is written after `sweep`", "`name: values` is expected")
     if not axes or not sound:
         return None
@@ -108,9 +108,7 @@ def _table(reader: Reader, node: Block, files: list[Path]) -> Sweep | None:
     try:
         content = path.read_bytes().decode("utf-8-sig")
     except (OSError, ValueError) as error:
-        hint = nearest(path.name, [each.name for each in path.parent.glob("*.csv")]) if path.parent.is_dir() else ""
-        what = "is not UTF-8 text" if isinstance(error, UnicodeDecodeError) else "cannot be read"
-        reader.tell(word.place, f"`sweep: table`: the file {quoted(word.text)} {what}", "", hint)
+        _no_table(reader, word, path, error)
         return None
     files.append(path)
     shown = posixpath.normpath((Path(word.place.file).parent / word.text).as_posix())
@@ -119,6 +117,15 @@ def _table(reader: Reader, node: Block, files: list[Path]) -> Sweep | None:
     except csv.Error as error:
         reader.tell(Place(shown), f"this is not CSV: {error}")
         return None
+
+
+def _no_table(reader: Reader, word: Word, path: Path, error: Exception) -> None:
+    if isinstance(error, FileNotFoundError):
+        hint = nearest(path.name, [each.name for each in path.parent.glob("*.csv")])
+        reader.tell(word.place, f"`sweep: table`: there is no file {quoted(word.text)}", "", hint)
+    else:
+        how = " as UTF-8 text" if isinstance(error, UnicodeDecodeError) else ""
+        reader.tell(word.place, f"`sweep: table`: the file {quoted(word.text)} cannot be read{how}")
 
 
 def _rows(reader: Reader, content: str, shown: str) -> Sweep | None:
@@ -174,6 +181,8 @@ def _headings(reader: Reader, line: tuple[int, list[tuple[str, int]]], shown: st
 
 def _cell(reader: Reader, column: tuple[str, str, Place], field: str, place: Place) -> Entry[Quantity] | None:
     name, unit, heading = column
+    if not name:
+        return None
     read = reader.judged(scalars.amount(field), place, name)
     if read is None:
         return None

@@ -23,7 +23,7 @@ from .comparison import Comparison
 
 TOP = 4  # drives a row that are doubled whatever their share: one of them is quoted
 DOUBLED = 256  # drives that are doubled at most
-EXAMINED = 12  # drives a row that are examined alone at most
+EXAMINED = 8  # drives a row that are examined alone at most
 NEAR = 10.0  # errors of ours within which a drive counts as near its limit
 
 
@@ -56,9 +56,11 @@ def _ranked(comparison: Comparison, found: Campaign) -> tuple[list[list[int]], l
     quiet = within(comparison, fine.worst, error, allowed)
     finer = np.where(quiet, 0.0, fine.share)
     clear = (fine.worst + error <= fine.limit) | quiet
+    broken = (fine.worst - error > fine.limit) & ~quiet
     order, doubtful = [], []
     for row in range(len(share)):
-        ranking = np.lexsort((np.array(columns), -finer[row]))
+        # the worst is quoted; behind it what is clearly broken comes before what may be within our own error
+        ranking = np.lexsort((np.array(columns), -finer[row], ~broken[row]))
         order.append([columns[int(at)] for at in ranking])
         left = set(np.flatnonzero(near[row]).tolist()) - set(columns)
         doubtful.append({columns[int(at)] for at in np.flatnonzero(~clear[row])} | left)

@@ -109,8 +109,12 @@ def _time(instant: int, drive: Drive, time_unit: str) -> str:
 
 
 def _number(value: float, unit: str) -> str:
-    return f"{value:.4g} {unit}".rstrip()
+    return f"{value:.4g}{_unit(unit)}"
+
+
+def _unit(unit: str) -> str:
+    return "" if unit in ("", "1") else f" {unit}"
 
 
 def _signed(value: float, unit: str = "") -> str:
-    return f"{value:+.4g} {unit}".rstrip() if value else f"0 {unit}".rstrip()
+    return f"{value:+.4g}{_unit(unit)}" if value else f"0{_unit(unit)}"

@@ -135,9 +135,9 @@ class Equations:
         drift[free] = left[free]
         drift[self.rate_rows] = self.prescribed
         return OperatingPoint(
-            frozen_array(x),
-            frozen_array(u),
-            frozen_array(outputs),
+            frozen_array(x + 0.0),  # no negative zeros in reports
+            frozen_array(u + 0.0),
+            frozen_array(outputs + 0.0),
             frozen_array(drift),
             self.time,
             self.plant.states,
@@ -251,7 +251,7 @@ def with_output_limits(
     unknowns: tuple[str, ...],
     loose: bool,
 ) -> Equations:
-    """The equations with an unknown for each output that has limits or a weight, so that the box keeps it inside.
+    """The equations with an unknown for each output that has limits, so that the box keeps it inside.
 
     With `loose` the held outputs may move as well: their slack is the distance from the value asked.
     """
@@ -259,7 +259,7 @@ def with_output_limits(
     watched = [
         name
         for name in plant.outputs.names
-        if name not in plant.states and name not in held and (name in envelope or name in ask.minimize)
+        if name not in plant.states and name not in held and name in envelope
     ]
     outputs = {**held, **dict.fromkeys(watched, 0.0)}
     wide = equations(plant, ask, envelope, nominal, base.time, unknowns=unknowns, outputs=outputs)

@@ -21,6 +21,7 @@ from .trim_words import told_list
 
 DESCENTS = 6  # local minima are sought from so many different equilibria
 EQUAL = 1e-6  # relative difference of two least distances that cannot be told apart
+LOCATED = 1e-8  # nominal sizes to which a least distance is found along the solutions
 APART = 1e-3  # nominal sizes: nearer minima are one
 
 
@@ -34,15 +35,11 @@ def least(task: Task) -> TrimResult:
     starts = np.concatenate([start_points(wide), target[:, np.newaxis]], axis=1)
     feasible = feasible_ends(wide, starts, weights, target, task.ask.accuracy, most=DESCENTS)
     if not feasible.shape[1]:
-        result = _without(task)
+        ends = solve(wide, starts)
+        result = none(task, joined(ends, stragglers(wide, ends)), (), False, wide)
         return replace(result, starts=starts.shape[1])
     ends = nearest(wide, weights, target, feasible, task.ask.accuracy)
     return replace(_judged(task, wide, ends), starts=starts.shape[1])
-
-
-def _without(task: Task) -> TrimResult:
-    ends = solve(task.system, start_points(task.system))
-    return none(task, joined(ends, stragglers(task.system, ends)), (), False)
 
 
 def _judged(task: Task, wide: Equations, ends: tuple[Nearest, ...]) -> TrimResult:
@@ -90,6 +87,8 @@ def _root(system: Equations, z: Array) -> Root:
     slopes = np.nan_to_num(jacobian(system, z[:, np.newaxis], at))
     spread = np.abs(at) + noise(system, z[:, np.newaxis], at, slopes)
     error = np.einsum("kqr,rk->qk", np.abs(pseudo_inverse(slopes)), spread)[:, 0]
+    # along the solutions the least distance is located by differences of slopes, not by the residual
+    error += LOCATED * (z.size > at.shape[0])
     return Root(z, float(np.abs(at).max(initial=0.0)), error, np.zeros((z.size, 0)))
 
 
@@ -99,5 +98,4 @@ def _weights(task: Task, wide: Equations) -> tuple[Array, Array]:
     weights = np.array([ask.minimize.get(name, 0.0) for name in names])
     sizes = np.array([task.nominal.get(name, 1.0) for name in names])
     guesses = [first_guess(ask, bounds(plant, task.envelope, name), name) for name in names]
-    low, high = wide.box
-    return weights, np.clip(np.array(guesses) / sizes, low, high)
+    return weights, np.array(guesses) / sizes

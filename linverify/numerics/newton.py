@@ -20,6 +20,7 @@ STEP = 6e-6  # cube root of the machine precision: balances truncation and round
 LONGEST = 100.0  # a step is cut to so many times the distance from zero: further away its direction means little
 HALVINGS = 12
 EDGE = 1e-12  # nearer to a bound than this (in nominal sizes) counts as on it
+NOTHING = 1e-100  # smaller slopes are none: their inverses would overflow
 RANK = 1e-12  # singular values below this share of the largest count as zero
 
 
@@ -108,7 +109,7 @@ def shortest_step(slopes: Array, residual: Array) -> Array:
 
 
 def _inverse_of(size: Array) -> Array:
-    return np.where(size > 0.0, 1.0 / np.where(size > 0.0, size, 1.0), 1.0)
+    return np.where(size > NOTHING, 1.0 / np.where(size > NOTHING, size, 1.0), 1.0)
 
 
 def solve(system: Equations, starts: Array, *, iterations: int = 60, goal: float = 0.0) -> Ends:

@@ -11,21 +11,27 @@ from ..core.errors import PlantError
 from ..core.model import OperatingPoint
 from ..core.outcome import Outcome
 from .choose import Candidate, outputs_beyond
+from .equations import Equations
 from .newton import Ends
 from .shortfall import Shortfall, nearest_holds, shortfall
 from .trim_result import Task, TrimResult, outcome_of
 from .trim_words import active_bounds, rate_unit, told, told_list, unit_of
 
 
-def none(task: Task, ends: Ends, beyond: Sequence[Candidate], fading: bool) -> TrimResult:
-    """No equilibrium among `ends`; `beyond`: solutions whose outputs leave the envelope; fading: residuals that pass
-    the accuracy without a solution near."""
+def none(
+    task: Task, ends: Ends, beyond: Sequence[Candidate], fading: bool, limited: Equations | None = None
+) -> TrimResult:
+    """No equilibrium among `ends`.
+
+    beyond: solutions whose outputs leave the envelope; fading: some residuals pass the accuracy without a solution
+    near; limited: the form of the equations, with limits on outputs, that `ends` belong to.
+    """
     plant = task.system.plant
     if not np.isfinite(ends.worst).any() and plant.last_error is not None:
         message = f"the plant could be called at none of {ends.worst.size} starts; the first: {plant.last_error}"
         return TrimResult(outcome_of(plant.last_error), message=message)
     try:
-        short = shortfall(task.system, ends, task.ask.accuracy)
+        short = shortfall(limited or task.system, ends, task.ask.accuracy, task.system)
     except PlantError as error:
         return TrimResult(outcome_of(error), message=f"where the search came nearest, {error}")
     # where the residual itself cannot be trusted, other held values would not be told apart from these
@@ -84,6 +90,9 @@ def _why(task: Task, short: Shortfall) -> str:
         must = "cannot vanish" if wanted == 0 else f"cannot be {wanted:.6g} {rate_unit(plant, name)}"
         left = f"{rest} it stays at {wanted + size:.4g} {rate_unit(plant, name)}"
         return f"{Outcome.NO_TRIM.value}: the rate of {name} {must}: {left}{because}"
+    if name not in task.ask.hold:
+        reached = told(plant, name, short.closest.value(name))
+        return f"{Outcome.NO_TRIM.value}: {name} cannot keep its limits: {rest} the nearest is {reached}{because}"
     asked = told(plant, name, task.ask.hold[name])
     left = f"{rest} it misses by {abs(size):.4g} {unit_of(plant, name)}".rstrip()
     return f"{Outcome.NO_TRIM.value}: {asked} cannot be reached: {left}{because}"

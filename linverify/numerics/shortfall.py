@@ -39,8 +39,12 @@ class Shortfall:
     noisy: bool = False
 
 
-def shortfall(system: Equations, ends: Ends, accuracy: float) -> Shortfall:
-    """How near `ends` came, and what stood in the way. Raises PlantError where the plant fails at the nearest point."""
+def shortfall(system: Equations, ends: Ends, accuracy: float, base: Equations) -> Shortfall:
+    """How near `ends` came, and what stood in the way.
+
+    base: the equations of the trim itself, of which `system` may be a form with limits on outputs. Raises PlantError
+    where the plant fails at the nearest point.
+    """
     if not ends.worst.size or not np.isfinite(ends.worst).any():
         return Shortfall()
     best = int(np.argmin(ends.worst))
@@ -48,9 +52,9 @@ def shortfall(system: Equations, ends: Ends, accuracy: float) -> Shortfall:
     conclusive, noisy = _judged(system, z)
     row = int(np.argmax(np.abs(ends.residual[:, best])))
     only = _let_go(system, row, ends, accuracy)
-    closest = system.point(z if only is None else only)
-    name = system.names[row]
-    return Shortfall(closest, name, closest.residuals[name], only is not None, conclusive, noisy)
+    left = float(ends.residual[row, best] if only is None else only[-1])
+    closest = base.point((z if only is None else only)[: len(base.unknowns)])
+    return Shortfall(closest, system.names[row], left, only is not None, conclusive, noisy)
 
 
 def _judged(system: Equations, z: Array) -> tuple[bool, bool]:
@@ -69,7 +73,7 @@ def _judged(system: Equations, z: Array) -> tuple[bool, bool]:
 
 
 def _let_go(system: Equations, row: int, ends: Ends, accuracy: float) -> Array | None:
-    """z (q,) of least |F[row]| among the points that meet all other equations; None where none is found."""
+    """z (q,) and F[row], least in size among the points that meet all other equations; None where none is found."""
     order = np.argsort(ends.worst, kind="stable")[:8]
     order = order[np.isfinite(ends.worst[order])]
     relaxed = system.relaxed(Slack(row))
@@ -78,7 +82,7 @@ def _let_go(system: Equations, row: int, ends: Ends, accuracy: float) -> Array |
     weights[-1] = 1.0
     feasible = feasible_ends(relaxed, starts, weights, target, accuracy, most=2)
     found = [end for end in nearest(relaxed, weights, target, feasible, accuracy) if end.settled]
-    return found[0].z[:-1] if found else None
+    return found[0].z if found else None
 
 
 def nearest_holds(

@@ -26,17 +26,21 @@ Rates = Callable[[float, Array], Array]  # (time since the piece began, x (n, N)
 SAFETY = 0.9  # closer to one: fewer, but more rejected steps
 SHRINK, GROW = 0.2, 5.0  # limits of the change from step to step; further ones lose what the error tells
 ON_NAN = 0.1  # nothing is known about the right step, only that this one is too long
+LAGGING = 0.01  # of the largest error: a column below it could take steps at least two and a half times longer
 ROUNDING = 1e-12
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Attempt:
-    """One step, not yet accepted: end (n, N), error (n, N), last: rates at the end, between(share) -> (n, N)."""
+    """One step, not yet accepted: end (n, N), error (n, N), last: rates at the end (n, N).
+
+    between(shares (r,)) -> (n, r, N): states after these shares of the step.
+    """
 
     end: Array
     error: Array
     last: Array
-    between: Callable[[float], Array]
+    between: Callable[[Array], Array]
 
 
 class Method(Protocol):
@@ -72,15 +76,15 @@ class DormandPrince:
             slopes[stage] = rates(start + float(tableau.NODES[stage]) * step, end)
         error = step * (tableau.ERROR @ flat).reshape(x.shape)
 
-        def between(share: float) -> Array:
+        def between(shares: Array) -> Array:
             rise = end - x
             bend = step * slopes[0] - rise
             twist = rise - step * slopes[6] - bend
             extra = step * (tableau.DENSE @ flat).reshape(x.shape)
-            rest = 1.0 - share
-            inner: Array = bend + share * (twist + rest * extra)
-            result: Array = x + share * (rise + rest * inner)
-            return result
+            share = shares[:, np.newaxis]
+            inner = twist[:, np.newaxis] + (1.0 - share) * extra[:, np.newaxis]
+            outer = rise[:, np.newaxis] + (1.0 - share) * (bend[:, np.newaxis] + share * inner)
+            return np.asarray(x[:, np.newaxis] + share * outer)
 
         return Attempt(end, error, slopes[6], between)
 
@@ -101,7 +105,8 @@ class Batch:
 
     retire(columns (N,) bool) is called for columns that stop; it must put them to rest where rates are harmless.
     leaving(time, x) -> (N,): columns that the caller wants no further; stuck(columns, time, out of attempts) tells of
-    those that could not go on. begun: when the piece began; stopped (N,): when a column stopped, else NaN.
+    those that could not go on. begun: when the piece began; stopped (N,): when a column stopped, else NaN;
+    within (N,): the same counted from where this piece began, infinite for those that go on.
     """
 
     x: Array
@@ -114,14 +119,16 @@ class Batch:
     tried: int = 0
     stopped: Array = field(init=False)
     last: Array = field(init=False)
+    within: Array = field(init=False)
 
     def __post_init__(self) -> None:
         self.stopped = np.full(self.x.shape[1], np.nan)
         self.last = self.x.copy()
+        self.within = np.full(self.x.shape[1], np.inf)
 
     def stop(self, columns: Mask, when: float) -> None:
         """Take `columns` out of the race `when` into the piece; `last` keeps where they were."""
-        self.stopped[columns] = self.begun + when
+        self.stopped[columns], self.within[columns] = self.begun + when, when
         self.last[:, columns] = self.x[:, columns]
         self.active &= ~columns
         self.retire(columns)
@@ -134,7 +141,8 @@ def advance(method: Method, rates: Rates, batch: Batch, length: float, nodes: in
     """
     instants = length * np.arange(nodes + 1) / nodes
     out = np.full((batch.x.shape[0], nodes + 1, batch.x.shape[1]), np.nan)
-    out[:, 0] = np.where(batch.active, batch.x, np.nan)
+    out[:, 0] = batch.x
+    batch.within = np.where(batch.active, np.inf, -1.0)
     first, now, done, tries = rates(0.0, batch.x), 0.0, 0, 0
     while now < length and batch.active.any():
         parts = max(1, math.ceil((length - now) / min(batch.step, demand.longest) - 1e-9))
@@ -143,31 +151,41 @@ def advance(method: Method, rates: Rates, batch: Batch, length: float, nodes: in
         tries += 1
         sizes = _sizes(attempt, batch.active, demand.scale)
         size = float(sizes.max())
-        if not size <= 1.0:
+        gone = None
+        if size <= 1.0:
+            ahead = length if parts == 1 else now + step
+            done = _sample(out, instants, done, attempt, now, ahead)
+            now, batch.x, first = ahead, attempt.end, attempt.last
+            grown = step * (GROW if size == 0 else min(GROW, SAFETY * size ** (-1.0 / method.order)))
+            # a step cut to fit the end of the piece says nothing against the one that was wanted
+            batch.step = max(grown, batch.step if parts == 1 and size < 0.5 else 0.0)
+            gone = batch.leaving(now, batch.x) & batch.active
+        else:
             batch.step = step * (ON_NAN if math.isinf(size) else max(SHRINK, SAFETY * size ** (-1.0 / method.order)))
-            if batch.step < demand.shortest or tries >= demand.attempts:
-                worst = sizes > (1.0 if batch.step < demand.shortest else 0.01 * min(size, 1e300))
-                batch.stuck(worst, now, tries >= demand.attempts)
-                batch.stop(worst, now)
-                batch.step, tries = step, tries - demand.attempts // 4
-                first = rates(now, batch.x)
-            continue
-        ahead = length if parts == 1 else now + step
-        while done < nodes and instants[done + 1] <= ahead * (1 + ROUNDING):
-            done += 1
-            share = (instants[done] - now) / step
-            values = attempt.end if share >= 1 - ROUNDING else attempt.between(share)
-            out[:, done] = np.where(batch.active, values, np.nan)
-        now, batch.x, first = ahead, attempt.end, attempt.last
-        # a piece cut to fit its end says nothing against the step that was wanted
-        grown = step * (GROW if size == 0 else min(GROW, SAFETY * size ** (-1.0 / method.order)))
-        batch.step = max(grown, batch.step if parts == 1 and size < 0.5 else 0.0)
-        gone = batch.leaving(now, batch.x) & batch.active
-        if gone.any():
+        slow = tries >= demand.attempts and now < length
+        if slow or batch.step < demand.shortest:
+            # those that ask for much shorter steps than the others; all of them where no step is short enough
+            gone = batch.active & (sizes > (LAGGING * min(size, 1e300) if slow else 1.0))
+            batch.stuck(gone, now, slow)
+            batch.step, tries = step, tries - demand.attempts // 4
+        if gone is not None and gone.any():
             batch.stop(gone, now)
             first = rates(now, batch.x)
     batch.tried += tries
+    out[:, instants[:, np.newaxis] > batch.within * (1 + ROUNDING)] = np.nan
     return out
+
+
+def _sample(out: Array, instants: Array, done: int, attempt: Attempt, now: float, ahead: float) -> int:
+    """Fill the nodes of `out` between `now` and `ahead`; `done` and the result: the last node that is filled."""
+    last = int(np.searchsorted(instants, ahead * (1 + ROUNDING), side="right")) - 1
+    inner = slice(done + 1, last + 1)
+    if last > done and instants[last] >= ahead * (1 - ROUNDING):
+        out[:, last] = attempt.end
+        inner = slice(done + 1, last)
+    if inner.stop > inner.start:
+        out[:, inner] = attempt.between((instants[inner] - now) / (ahead - now))
+    return last
 
 
 def _sizes(attempt: Attempt, active: Mask, scale: Array) -> Array:

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -26,6 +26,10 @@ class Piece:
     low: Array
     high: Array
     used: int = 0
+    limited: bool = field(init=False)
+
+    def __post_init__(self) -> None:
+        self.limited = bool(np.isfinite(self.low).any() or np.isfinite(self.high).any())
 
     def inputs(self, s: float) -> Array:
         """Inputs (m, N) after `s`."""
@@ -37,9 +41,10 @@ class Piece:
         x may hold several states a drive, (n, r N), one block of drives after the other.
         """
         self.used += x.shape[1]
-        outside = ((x < self.low) | (x > self.high)).any(axis=0)
-        if outside.any():
-            x = np.where(outside, np.nan, x)
+        if self.limited:
+            outside = (x < self.low) | (x > self.high)
+            if outside.any():
+                x = np.where(outside.any(axis=0), np.nan, x)
         u = self.inputs(s)
         if x.shape[1] != u.shape[1]:
             u = np.tile(u, x.shape[1] // u.shape[1])

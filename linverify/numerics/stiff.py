@@ -70,10 +70,10 @@ class Rosenbrock:
         end = end + stages[5]
         bend, twist = ((weights @ flat).reshape(n, width) for weights in DENSE)
 
-        def between(share: float) -> Array:
-            rest = 1.0 - share
-            result: Array = rest * x + share * (end + rest * (bend + share * twist))
-            return result
+        def between(shares: Array) -> Array:
+            share = shares[:, np.newaxis]
+            inner = end[:, np.newaxis] + (1.0 - share) * (bend[:, np.newaxis] + share * twist[:, np.newaxis])
+            return np.asarray((1.0 - share) * x[:, np.newaxis] + share * inner)
 
         return Attempt(end, stages[5], rates(start + step, end), between)
 

@@ -41,11 +41,11 @@ def test_wilks_is_the_smallest_number(order: int, sides: int) -> None:
 
 @pytest.mark.parametrize("arguments", [(-1, 5, 0.9), (6, 5, 0.9), (0, 0, 0.9), (0, 5, 1.0), (0, 5, 0.0)])
 def test_senseless_trials_are_refused(arguments: tuple[int, int, float]) -> None:
-    with pytest.raises(ValueError, match="make sense|between 0 and 1"):
+    with pytest.raises(ValueError, match=r"make sense|between 0 and 1"):
         upper_bound(*arguments)
 
 
 @pytest.mark.parametrize("arguments", [(1.0, 0.9, 1, 1), (0.9, 0.0, 1, 1), (0.9, 0.9, 0, 1), (0.9, 0.9, 1, 3)])
 def test_senseless_sample_sizes_are_refused(arguments: tuple[float, float, int, int]) -> None:
-    with pytest.raises(ValueError, match="between 0 and 1|order must be"):
+    with pytest.raises(ValueError, match=r"between 0 and 1|order must be"):
         wilks(*arguments)

@@ -52,8 +52,8 @@ def rig_of(
     Cm = np.eye(n)[:k] if C is None else np.asarray(C, dtype=float)
     Dm = np.zeros((k, m)) if D is None else np.asarray(D, dtype=float)
     model = LocalModel(
-        np.asarray(A, dtype=float), np.asarray(B, dtype=float), Cm, Dm, bound.states, bound.inputs, bound.outputs, point,
-        plant.step,
+        np.asarray(A, dtype=float), np.asarray(B, dtype=float), Cm, Dm, bound.states, bound.inputs, bound.outputs,
+        point, plant.step,
     )  # fmt: skip
     size = np.full(n, 1e-3) if weights is None else np.asarray(weights, dtype=float)
     return Rig(bound, point, model, signals or plant.state_signals.names, envelope or {}, size, **limits)
@@ -147,7 +147,7 @@ def test_offsets_start_both_models_away_from_trim() -> None:
 
 
 def test_deviations_are_taken_from_a_drifting_course() -> None:
-    """A craft that climbs steadily; its altitude and an output that bends with altitude start at the course, not trim."""
+    """A craft that climbs steadily, with an output that bends with altitude."""
     plant = plain(
         lambda t, x, u: [3.0 + x[1], -x[1] + u[0]],
         "altitude climb",

@@ -6,7 +6,8 @@ import pytest
 
 from linverify.numerics.confidence import interval, upper_bound, wilks
 
-# S. S. Wilks, Ann. Math. Statist. 12 (1941) 91-96; table for 95 % content after H. Glaeser, NURETH-14, GRS method, slide 8
+# S. S. Wilks, Ann. Math. Statist. 12 (1941) 91-96; table for 95 % content after H. Glaeser, NURETH-14, GRS method,
+# slide 8
 CONFIDENCES = (0.50, 0.80, 0.90, 0.95, 0.99)
 ONE_SIDED = (14, 32, 45, 59, 90)
 TWO_SIDED = (34, 59, 77, 93, 130)

@@ -10,8 +10,8 @@ A number without a unit (unit "") is in whatever unit is expected at its place. 
 * Temperatures are points on their scale, unless the caller asks for a difference. In a compound unit (`degC/min`,
   `J/(kg K)`) they are always differences.
 
-pint does the arithmetic, with the definitions of `unit_words` instead of its own: they load in a tenth of the time, and
-its own Hz would be 1/s. It is imported when the first unit has to be converted, never for plain numbers or equal units.
+pint does the arithmetic, with the definitions of `unit_words` instead of its own: they load in a seventh of the time,
+and its own Hz would be 1/s. It is imported when the first unit has to be converted, never for plain numbers.
 The text of a unit is parsed here, because pint's parser also takes numbers and Python operators.
 """
 

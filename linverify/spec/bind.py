@@ -22,7 +22,7 @@ from linverify.core.case import (
     Setting,
     SlopeAsk,
 )
-from linverify.core.errors import Problem, SpecError
+from linverify.core.errors import Place, Problem, SpecError
 from linverify.core.plant import Plant
 
 from .envelopes import bind_envelope, nominal_sizes
@@ -31,7 +31,7 @@ from .layout import Cell, Point, Spec, matches
 from .motions import bind_band, bind_drives
 from .plants import Loaded, load_plant
 from .read import read
-from .trims import bind_parameters, bind_trim
+from .trims import bind_accuracy, bind_parameters, bind_trim
 
 
 def load(path: Path, root: Path) -> tuple[Case, ...]:
@@ -87,6 +87,7 @@ class _Binder:
         self.settings = (*spec.settings, *told)
         self.slopes = SlopeAsk(spec.slope_gap, MappingProxyType(self._sides()))
         self.time = self._time()
+        self.accuracy = bind_accuracy(ground, spec.accuracy, Place(spec.shown))
         self.family = max(1, sum(not cell.skipped for point in spec.points for cell in point.cells))
 
     def cases(self) -> tuple[Case, ...]:
@@ -107,7 +108,7 @@ class _Binder:
             title=self.spec.title,
             plant=self.plant,
             place=cell.place,
-            trim=bind_trim(self.ground, point, cell, self.envelope, self.spec.accuracy),
+            trim=bind_trim(self.ground, point, cell, self.envelope, self.accuracy),
             parameters=parameters,
             envelope=self.envelope,
             nominal=self.nominal,

@@ -41,7 +41,7 @@ def _range(ground: Ground, line: Entry[Limits]) -> Interval | None:
         wrong = f"`{word}`: {limits.low.text} to {limits.high.text} is an empty range"
         ground.report(limits.high.place, wrong, "low below high is expected")
         return None
-    domain = ground.limits(line.name, {})
+    domain = ground.domain(line.name)
     meeting = interval.meet(domain)
     if meeting.low > meeting.high:
         told = ground.told_interval(domain, line.name)

@@ -108,22 +108,22 @@ class Ground:
         """A time in the plant's time unit."""
         return self.amount(quantity, self.plant.time_unit, word, difference=True)
 
-    def limits(self, name: str, envelope: Mapping[str, Interval]) -> Interval:
-        """Where `name` may be: the envelope met with the plant's domain."""
+    def domain(self, name: str) -> Interval:
+        """Where the plant's functions are defined at all."""
         low, high = self.plant.domain.get(name, (None, None))
-        domain = Interval(-math.inf if low is None else low, math.inf if high is None else high)
-        return envelope.get(name, Interval()).meet(domain)
+        return Interval(-math.inf if low is None else low, math.inf if high is None else high)
 
     def inside(self, value: float, entry: Entry[Quantity], word: str, envelope: Mapping[str, Interval]) -> None:
         """Note a value of a signal that lies outside the envelope or the plant's domain."""
-        limits = envelope.get(entry.name, Interval())
-        place, text = entry.value.place, entry.value.text
-        if value < limits.low or value > limits.high:
-            told = self.told_interval(limits, entry.name)
-            self.report(place, f"{text!r} is outside the envelope", f"`{word}` takes {told}")
-        elif (whole := self.limits(entry.name, envelope)) and (value < whole.low or value > whole.high):
-            told = self.told_interval(self.limits(entry.name, {}), entry.name)
-            self.report(place, f"{text!r} is outside the plant's domain", f"`{word}` takes {told}")
+        allowed = (
+            (envelope.get(entry.name, Interval()), "the envelope"),
+            (self.domain(entry.name), "the plant's domain"),
+        )
+        for interval, what in allowed:
+            if value < interval.low or value > interval.high:
+                told = self.told_interval(interval, entry.name)
+                self.report(entry.value.place, f"{entry.value.text!r} is outside {what}", f"`{word}` takes {told}")
+                return
 
     def told_interval(self, interval: Interval, name: str) -> str:
         """`9.26 to 21.6067 m/s`, `at least 0.1 m/s`."""

@@ -123,7 +123,7 @@ def _executed(path: Path, source: bytes, name: str) -> _Module:
 def _neighbours(folder: Path) -> Iterator[list[Path]]:
     """Let imports find the modules of `folder` first; afterwards they are gone again, and their files are listed."""
     files: list[Path] = []
-    names = {file.stem for file in folder.glob("*.py")} | {file.parent.name for file in folder.glob("*/__init__.py")}
+    names = {file.stem for file in folder.glob("*.py")} | {file.parent.name for file in folder.glob("*/*.py")}
     names -= set(sys.stdlib_module_names)
     own = {name for name in names if _lies_in(sys.modules.get(name), folder)}  # a package that is in use already
     names -= own
@@ -135,7 +135,8 @@ def _neighbours(folder: Path) -> Iterator[list[Path]]:
     try:
         yield files
     finally:
-        sys.path.remove(str(folder))
+        if str(folder) in sys.path:  # the plant file may have put its own hands on the path
+            sys.path.remove(str(folder))
         found = [name for name in sys.modules if name.partition(".")[0] in names]
         files.extend(sorted(Path(file) for name in found if (file := getattr(sys.modules[name], "__file__", None))))
         for name in found:

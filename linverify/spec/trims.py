@@ -2,11 +2,13 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Iterable, Mapping
 from types import MappingProxyType
 
 from linverify.core import units
 from linverify.core.case import Expected, Interval, TrimAsk
+from linverify.core.errors import Place
 
 from .ground import Ground
 from .layout import Cell, Entry, Expect, Point
@@ -15,7 +17,7 @@ _OFFSET_SCALES = ("degC", "degF", "°C", "°F")
 
 
 def bind_trim(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, Interval], accuracy: float) -> TrimAsk:
-    """The trim of `cell`. accuracy: largest scaled residual a second, as the spec states it.
+    """The trim of `cell`. accuracy: largest scaled residual, as `bind_accuracy` has it.
 
     Mistakes go to `ground`. Limits are not checked for a skipped cell, which is known to have no trim.
     """
@@ -35,7 +37,7 @@ def bind_trim(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, I
         free=free,
         minimize=MappingProxyType(minimize),
         expect=MappingProxyType(_expect(ground, point)),
-        accuracy=_accuracy(ground, accuracy),
+        accuracy=accuracy,
     )
 
 
@@ -114,11 +116,15 @@ def _minimize(
         if entry.name not in unknowns:
             told = f"`minimize` weighs unknowns: {', '.join(unknowns)}"
             ground.report(entry.place, f"{entry.name!r} is no unknown of {point.name}", told)
-        elif entry.name not in start and not ground.limits(entry.name, envelope).bounded:
+        elif entry.name not in start and not _limits(ground, entry.name, envelope).bounded:
             wrong = f"{entry.name!r} has no `start` to take its distance from"
             ground.report(entry.place, wrong, "a `start`, or limits on both sides in the envelope, is expected")
         weights[entry.name] = entry.value
     return weights
+
+
+def _limits(ground: Ground, name: str, envelope: Mapping[str, Interval]) -> Interval:
+    return envelope.get(name, Interval()).meet(ground.domain(name))
 
 
 def _all_known(ground: Ground, point: Point, cell: Cell) -> bool:
@@ -194,7 +200,10 @@ def _tolerance(ground: Ground, entry: Entry[Expect], value: float, word: str) ->
             wrong = f"{tolerance.text!r} of a temperature in {unit} depends on where the scale has its zero"
             ground.report(tolerance.place, wrong, "a difference of temperatures is expected")
             return 0.0
-        return abs(value) * tolerance.value / 100.0
+        size = abs(value) * (tolerance.value / 100.0)
+        if math.isinf(size):
+            ground.report(tolerance.place, f"{entry.value.text!r} is too large for a number")
+        return size
     if bool(asked.unit) != bool(tolerance.unit):
         wrong = f"{entry.value.text!r} has a unit on one side only"
         ground.report(entry.value.place, wrong, "units on the value and on the tolerance, or on neither, are expected")
@@ -202,9 +211,11 @@ def _tolerance(ground: Ground, entry: Entry[Expect], value: float, word: str) ->
     return ground.deviation(tolerance, entry.name, word)
 
 
-def _accuracy(ground: Ground, accuracy: float) -> float:
+def bind_accuracy(ground: Ground, accuracy: float, place: Place) -> float:
     """Accuracy a time unit of the plant, from accuracy a second; of a difference equation: a step."""
     unit = ground.plant.time_unit
-    if ground.plant.step is not None or not units.convertible(unit, "s"):
-        return accuracy
-    return accuracy * units.convert(1.0, unit, "s")
+    if ground.plant.step is None and units.convertible(unit, "s"):
+        accuracy *= units.convert(1.0, unit, "s")
+    if not math.isfinite(accuracy):
+        ground.report(place, "`trims: accuracy` is too large for a number")
+    return accuracy

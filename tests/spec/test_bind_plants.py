@@ -82,13 +82,12 @@ def test_each_plant_finds_its_own_neighbours(tmp_path: Path) -> None:
         write(folder, "aero.RATE", "import aero\nfrom parts.deep import SIZE")
         (folder / "aero.py").write_text(f"RATE = {rate}\n")
         (folder / "parts").mkdir()
-        (folder / "parts" / "__init__.py").write_text("")
         (folder / "parts" / "deep.py").write_text("SIZE = 1\n")
     before = (list(sys.path), set(sys.modules))
     results = [loaded(file_ref(tmp_path / rate), tmp_path) for rate in ("-3", "-4")]
     assert [rate_of(result) for result in results] == [-3.0, -4.0]
     names = [file.relative_to(tmp_path / "-3").as_posix() for file in results[0].files]
-    assert names == ["plant.py", "aero.py", "parts/__init__.py", "parts/deep.py"]
+    assert names == ["plant.py", "aero.py", "parts/deep.py"]
     assert sys.path == before[0]
     assert {name for name in sys.modules if not name.startswith("linverify_plant_")} <= before[1]
 

@@ -12,8 +12,11 @@ from types import MappingProxyType
 from typing import Any
 
 from . import provenance
+from .checks.evidence import FOLDER, kept, opened
 from .checks.judge import judge
+from .checks.replay import replayed
 from .core.case import Case, CheckAsk, Options
+from .core.drive import Drive
 from .core.errors import LinverifyError, Problem, SpecError
 from .core.signals import nearest
 from .core.verdict import Status, Verdict
@@ -21,7 +24,7 @@ from .report import files, record, tables, text
 from .spec.bind import load
 from .spec.source import is_spec
 
-EVIDENCE = "evidence"  # folder under the reports folder
+PINNED = "pinned"  # folder beside a spec
 
 
 class SelectionError(LinverifyError):
@@ -76,9 +79,7 @@ def conclude(books: Books, options: Options, root: Path) -> Concluded:
     return Concluded(made, written, lines, not any(verdict.status.breaks_build for verdict in verdicts))
 
 
-def _lines(
-    verdicts: Sequence[Verdict], written: Sequence[Path], options: Options, *, partial: bool
-) -> tuple[str, ...]:
+def _lines(verdicts: Sequence[Verdict], written: Sequence[Path], options: Options, *, partial: bool) -> tuple[str, ...]:
     """The summary of a run, with where the reports are and the next step."""
     report = next((as_typed(path) for path in written if path.suffix == ".md"), "")
     lines = text.summary(verdicts, profile=options.profile, partial=partial, report=report)
@@ -97,7 +98,7 @@ def as_typed(path: Path) -> str:
 
 def evidence_folder(reports: Path) -> str:
     """Where saved drives are, as the reader would type it."""
-    return as_typed(reports / EVIDENCE)
+    return as_typed(reports / FOLDER)
 
 
 def find(paths: Sequence[Path]) -> tuple[Path, ...]:
@@ -160,25 +161,79 @@ def check_paths(
     return conclude(books, options, root)
 
 
-def select(item: str, root: Path) -> tuple[Case, CheckAsk]:
-    """The check with the id `SPEC::POINT::CHECK`. Raises SelectionError, with the nearest right word, and SpecError."""
+def replay(file: Path, item: str | None, options: Options) -> Verdict:
+    """Run one saved drive again, on the check that it was saved for or on `item`: its figures against the bands.
+
+    The same figures as the run quoted, to the last digit. Raises DriveFileError, SelectionError and SpecError.
+    """
+    drive, case, ask = _saved(file, item)
+    return replayed(case, ask, options, drive, file.name)
+
+
+def pin(file: Path, item: str | None) -> list[str]:
+    """Copy a saved drive beside its spec, where `pinned:` finds it; returns lines on what was done and is to be done.
+
+    Raises DriveFileError, SelectionError, SpecError and OSError.
+    """
+    _, case, ask = _saved(file, item)
+    name = f"{case.spec}::{case.point}::{ask.name}"
+    path = kept(file, (root_above(case.spec) / case.spec).parent / PINNED, name)
+    lines = [f"kept {as_typed(path)}"]
+    again, _ = select(name)
+    if path.resolve() in {one.resolve() for one in again.drive_set(ask.drives).pinned}:
+        return [*lines, f"{case.spec} finds it: it is replayed first from now on"]
+    where = f"the drives {ask.drives!r}" if ask.drives else "`drives`"
+    return [*lines, f"to have it replayed first, write into {where} of {case.spec}:", f'  pinned: "{PINNED}/*.json"']
+
+
+def _saved(file: Path, item: str | None) -> tuple[Drive, Case, CheckAsk]:
+    drive, own = opened(file)
+    name = item or own
+    if not name:
+        raise SelectionError(f"{file.name} does not say which check it belongs to; name it: SPEC::POINT::CHECK")
+    case, ask = select(name)
+    if ask.kind != "follows":
+        raise SelectionError(f"{name} drives nothing; a drive belongs to a check `follows`")
+    return drive, case, ask
+
+
+def select(item: str) -> tuple[Case, CheckAsk]:
+    """The check with the id `SPEC::POINT::CHECK`, from the current folder or one above it.
+
+    Raises SelectionError, with the nearest right word, and SpecError.
+    """
     parts = item.split("::")
     if len(parts) != 3:
         raise SelectionError(f"a check is named SPEC::POINT::CHECK, got {item!r}")
-    case = point(Path(parts[0]), parts[1], root)
+    (case,) = points(Path(parts[0]), parts[1])
     for ask in case.checks:
         if ask.name == parts[2]:
             return case, ask
     raise SelectionError(_missing("check", parts[2], [ask.name for ask in case.checks], f"{parts[0]}::{parts[1]}"))
 
 
-def point(spec: Path, name: str, root: Path) -> Case:
-    """One operating point of a spec. Raises SelectionError and SpecError."""
-    cases = cases_of(find([spec if spec.is_absolute() else root / spec]), root)
-    for case in cases:
-        if case.point == name:
-            return case
-    raise SelectionError(_missing("operating point", name, [case.point for case in cases], str(spec)))
+def points(spec: Path, name: str | None = None) -> tuple[Case, ...]:
+    """The operating points of a spec, or the one called `name`. Raises SelectionError and SpecError."""
+    root = root_above(spec)
+    cases = cases_of(find([root / spec]), root)
+    named = cases if name is None else tuple(case for case in cases if case.point == name)
+    if name is not None and not named:
+        raise SelectionError(_missing("operating point", name, [case.point for case in cases], str(spec)))
+    return named
+
+
+def root_above(spec: Path | str) -> Path:
+    """The folder that the path of a spec is relative to: the current one, or the nearest one above where it exists."""
+    here = Path.cwd()
+    return next((folder for folder in (here, *here.parents) if (folder / spec).is_file()), here)
+
+
+def effective(case: Case) -> list[str]:
+    """The effective spec of one operating point: every word, its value, and where it comes from."""
+    width = max((len(item.word) for item in case.settings), default=0)
+    wide = max((len(item.text) for item in case.settings), default=0)
+    lines = [f"{item.word:<{width}}  {item.text:<{wide}}  {item.origin}" for item in case.settings]
+    return [f"{case.spec}::{case.point}", *lines]
 
 
 def _missing(kind: str, name: str, names: Sequence[str], where: str) -> str:

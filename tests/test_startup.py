@@ -32,7 +32,8 @@ print(time.perf_counter() - started)
 
 
 def _python(*arguments: str, folder: Path) -> str:
-    done = subprocess.run([sys.executable, *arguments], cwd=folder, capture_output=True, text=True, check=False, timeout=120)
+    command = [sys.executable, *arguments]
+    done = subprocess.run(command, cwd=folder, capture_output=True, text=True, check=False, timeout=120)
     assert done.returncode == 0, done.stdout + done.stderr
     return done.stdout
 
@@ -64,11 +65,11 @@ def test_loading_the_plugin_takes_less_than_ten_milliseconds(tmp_path: Path) -> 
 
 
 @pytest.mark.parametrize("words", [("--version",), ("--help",)])
-def test_the_command_line_answers_simple_questions_without_heavy_imports(tmp_path: Path, words: tuple[str, ...]) -> None:
+def test_simple_questions_are_answered_without_heavy_imports(tmp_path: Path, words: tuple[str, ...]) -> None:
     code = (
-        "import sys, runpy\nsys.argv = ['linverify', *{words!r}]\n"
+        f"import sys, runpy\nsys.argv = ['linverify', *{words!r}]\n"
         "try:\n    runpy.run_module('linverify', run_name='__main__')\n"
         "except SystemExit as end:\n    assert not end.code\n"
-        "print([name for name in {heavy!r} if name in sys.modules])\n"
-    ).format(words=words, heavy=HEAVY)
+        f"print([name for name in {HEAVY!r} if name in sys.modules])\n"
+    )
     assert _python("-c", code, folder=tmp_path).splitlines()[-1] == "[]"

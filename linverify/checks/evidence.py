@@ -5,6 +5,7 @@ from __future__ import annotations
 import hashlib
 import math
 from collections.abc import Mapping
+from pathlib import Path
 from typing import Any
 
 from ..core.case import Options
@@ -91,3 +92,23 @@ def _rows(values: Array) -> list[list[float | None]]:
 def _number(value: float) -> float | None:
     """To nine digits; what is not finite (after the envelope was left) becomes null."""
     return float(f"{value:.{DIGITS}g}") if math.isfinite(value) else None
+
+
+def opened(path: Path) -> tuple[Drive, str]:
+    """A saved drive, and the id of the check that it was saved for (empty where it names none).
+
+    Raises DriveFileError, naming the file.
+    """
+    drive, about = pinned.read(path)
+    item = about.get("item", "")
+    return drive, item if isinstance(item, str) else ""
+
+
+def kept(path: Path, folder: Path, item: str) -> Path:
+    """Pin a saved drive for the check `item`: its file without the trajectories, under the same name, in `folder`.
+
+    Returns the new path. Raises DriveFileError and OSError.
+    """
+    drive, about = pinned.read(path)
+    text = {"text": about["text"]} if isinstance(about.get("text"), str) else {}
+    return pinned.write(folder, drive, {**text, "item": item}, path.stem)

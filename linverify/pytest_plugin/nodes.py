@@ -25,7 +25,7 @@ from .gather import LEDGER, PROPERTY
 from .options import SETTINGS
 
 
-class NotShown(Exception):
+class NotShownError(Exception):
     """Carries the verdict of a check that did not pass; its text is the report, never a traceback."""
 
     def __init__(self, verdict: Verdict) -> None:
@@ -90,18 +90,18 @@ class CheckItem(pytest.Function):
             self.add_marker(pytest.mark.skip(reason=case.skipped))
 
     def judge(self) -> None:
-        """Judge, attach the verdict, and raise NotShown unless it is a pass."""
+        """Judge, attach the verdict, and raise NotShownError unless it is a pass."""
         settings = self.config.stash[SETTINGS]
         verdict = judge(self.case, self.ask, Options(settings.seed, settings.profile, settings.reports))
         self.user_properties.append((PROPERTY, record.dumps(verdict)))
         if verdict.status is not Status.PASS:
-            raise NotShown(verdict)
+            raise NotShownError(verdict)
 
-    def repr_failure(self, excinfo: pytest.ExceptionInfo[BaseException], style: Any = None) -> Any:
+    def repr_failure(self, excinfo: pytest.ExceptionInfo[BaseException]) -> Any:  # type: ignore[override]
         """The report's text for a verdict; a traceback for anything else, which is a defect or a broken fixture."""
-        if isinstance(excinfo.value, NotShown):
+        if isinstance(excinfo.value, NotShownError):
             return failure_text(excinfo.value.verdict, evidence_folder(self.config.stash[SETTINGS].reports))
-        return super().repr_failure(excinfo, style)
+        return super().repr_failure(excinfo)
 
     def reportinfo(self) -> tuple[os.PathLike[str] | str, int | None, str]:
         """The spec and the operating point's line in it, so that editors and annotations point there."""

@@ -41,18 +41,23 @@ def pytest_configure(config: pytest.Config) -> None:
     if not config.getoption("linverify"):
         return
     from .gather import LEDGER, Gather, Ledger
-    from .progress import Progress
 
     config.stash[SETTINGS] = settings = Settings.of(config)
     if settings.reports.is_file():
         raise pytest.UsageError(f"--linverify-reports: {settings.reports.name} is a file, not a folder")
     ledger = config.stash[LEDGER] = Ledger(how=config.stash.get(THREADS_SET, "unknown"))
     config.pluginmanager.register(ledger, "linverify-ledger")
-    if hasattr(config, "workerinput"):
-        return
-    config.pluginmanager.register(Gather(config, ledger), "linverify-gather")
-    if config.pluginmanager.hasplugin("terminalreporter"):
-        config.pluginmanager.register(Progress.on(config), "linverify-progress")
+    if not hasattr(config, "workerinput"):
+        config.pluginmanager.register(Gather(config, ledger), "linverify-gather")
+
+
+def pytest_sessionstart(session: pytest.Session) -> None:
+    """Signs of life, where there is a terminal to show them; it is not there yet while plugins are configured."""
+    plugins = session.config.pluginmanager
+    if SETTINGS in session.config.stash and plugins.hasplugin("terminalreporter"):
+        from .progress import Progress
+
+        plugins.register(Progress.on(session.config), "linverify-progress")
 
 
 def pytest_collect_file(file_path: Path, parent: pytest.Collector) -> SpecFile | None:

@@ -26,6 +26,22 @@ class Lines(Protocol):
         """Write one line, on a line of its own."""
 
 
+@dataclass(frozen=True, slots=True)
+class Terminal:
+    """pytest's terminal. Its own `write_line` takes a row of dots for an empty line when it is quiet or has workers."""
+
+    config: pytest.Config
+
+    def write_line(self, line: str) -> None:
+        """Write one line, on a line of its own."""
+        reporter, writer = self.config.pluginmanager.getplugin("terminalreporter"), self.config.get_terminal_writer()
+        reporter.ensure_newline()
+        if writer.width_of_current_line:
+            writer.line()
+        writer.line(line)
+        writer.flush()
+
+
 @dataclass
 class Progress:
     """Not frozen: knows what is running. `lines` is where to write; `first` and `again` are in seconds."""
@@ -41,7 +57,7 @@ class Progress:
     @classmethod
     def on(cls, config: pytest.Config) -> Progress:
         """For the terminal of this run."""
-        return cls(config.pluginmanager.getplugin("terminalreporter"), FIRST, AGAIN)
+        return cls(Terminal(config), FIRST, AGAIN)
 
     def pytest_runtest_logstart(self, nodeid: str) -> None:
         """An item has begun, here or on a worker."""

@@ -62,7 +62,10 @@ def test_a_plant_that_cannot_be_imported_is_named_without_our_traceback(project:
 
 
 def test_a_plant_that_is_called_wrongly_leaves_its_checks_undecided(project: Project) -> None:
-    project.write("specs/plant.py", (project.path / "specs/plant.py").read_text().replace("def dynamics(t, x, u, p)", "def dynamics(t, x, u)"))
+    project.write(
+        "specs/plant.py",
+        (project.path / "specs/plant.py").read_text().replace("def dynamics(t, x, u, p)", "def dynamics(t, x, u)"),
+    )
     project.write("specs/basin.yaml", SPEC)
     result = project.run("specs")
     assert result.ret == 1

@@ -83,7 +83,8 @@ def test_a_check_that_was_marked_away_is_not_run_and_no_pass(project: Project) -
     project.write("specs/basin.yaml", SPEC)
     project.write(
         "conftest.py",
-        "import pytest\ndef pytest_collection_modifyitems(items):\n    items[0].add_marker(pytest.mark.skip(reason='no'))\n",
+        "import pytest\ndef pytest_collection_modifyitems(items):\n"
+        "    items[0].add_marker(pytest.mark.skip(reason='no'))\n",
     )
     result = project.run("specs")
     assert result.ret == 1

@@ -25,7 +25,9 @@ def test_ids_read_as_sentences(project: Project) -> None:
 
 def test_a_point_names_its_drives_only_where_they_have_a_name(project: Project) -> None:
     project.write("specs/one.yaml", HOLDS)
-    project.write("specs/two.yaml", HOLDS.replace("drives: {", "drives: {fast: {").replace("search: 10}", "search: 10}}"))
+    project.write(
+        "specs/two.yaml", HOLDS.replace("drives: {", "drives: {fast: {").replace("search: 10}", "search: 10}}")
+    )
     result = project.run("--collect-only", "-q", "specs")
     ids = [line for line in result.outlines if "follows" in line]
     assert ids == [
@@ -103,7 +105,8 @@ def test_fixtures_for_all_tests_reach_items_too(project: Project) -> None:
     project.write(
         "conftest.py",
         "import pytest\n@pytest.fixture(autouse=True)\ndef noted(request, tmp_path):\n"
-        "    (request.config.rootpath / 'noted.txt').open('a').write(request.node.name + '\\n')\n",
+        "    with (request.config.rootpath / 'noted.txt').open('a') as notes:\n"
+        "        notes.write(request.node.name + '\\n')\n",
     )
     assert project.run("specs").ret == 0
     assert (project.path / "noted.txt").read_text().split() == [name.rpartition("::")[2] for name in IDS]

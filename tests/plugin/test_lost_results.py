@@ -5,7 +5,7 @@ from __future__ import annotations
 import pytest
 from basin_project import SPEC, Project
 
-DIES = "\n    import os\n    if abs(float(np.ravel(x)[0]) - 0.5) < 1e-3:\n        os._exit(0)\n    return u"
+DIES = "\n    if abs(float(np.ravel(x)[0]) - 0.5) < 1e-3:\n        os._exit(0)\n    return u"
 
 
 def _deadly(project: Project) -> None:

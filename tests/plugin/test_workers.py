@@ -2,14 +2,22 @@
 
 from __future__ import annotations
 
+import json
 import os
+import re
 from collections import Counter
 from typing import Any
 
 import pytest
 from basin_project import BREAKS, HOLDS, SPEC, Project
 
-MODES = [("-n", "0"), ("-n", "2"), ("-n", "2", "--dist", "loadscope"), ("-n", "2", "--dist", "worksteal"), ("-p", "no:xdist")]
+MODES = [
+    ("-n", "0"),
+    ("-n", "2"),
+    ("-n", "2", "--dist", "loadscope"),
+    ("-n", "2", "--dist", "worksteal"),
+    ("-p", "no:xdist"),
+]
 
 
 def _record(project: Project, *arguments: str) -> tuple[int, str, Any]:
@@ -44,17 +52,14 @@ def test_a_point_stays_on_one_worker(project: Project, monkeypatch: pytest.Monke
     assert result.ret == 0
     where: dict[str, set[str]] = {}
     for line in result.outlines:
-        if " PASSED " in line:
-            worker, _, _, name = line.split()[:4] if line.startswith("[gw") else ("", "", "", "")
-            where.setdefault(name.rpartition("::")[0], set()).add(worker)
+        if match := re.match(r"\[(gw\d)\].* PASSED (\S+)::\w+", line):
+            where.setdefault(match[2], set()).add(match[1])
     assert len(where) == 8
     assert all(len(workers) == 1 for workers in where.values())
     assert len(set().union(*where.values())) == 2
 
 
 def test_linear_algebra_has_one_thread_in_every_worker(project: Project, monkeypatch: pytest.MonkeyPatch) -> None:
-    import json
-
     for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
         monkeypatch.delenv(name, raising=False)
     project.write("specs/basin.yaml", SPEC)
@@ -67,8 +72,6 @@ def test_linear_algebra_has_one_thread_in_every_worker(project: Project, monkeyp
 def test_a_conftest_that_loads_numpy_first_does_not_bring_its_threads(
     project: Project, monkeypatch: pytest.MonkeyPatch
 ) -> None:
-    import json
-
     for name in ("OPENBLAS_NUM_THREADS", "OMP_NUM_THREADS", "MKL_NUM_THREADS"):
         monkeypatch.delenv(name, raising=False)
     project.write("early.py", "import numpy\n")
@@ -81,7 +84,10 @@ def test_a_conftest_that_loads_numpy_first_does_not_bring_its_threads(
 
 def test_other_tests_are_shared_out_as_the_mode_says(project: Project) -> None:
     project.write("specs/basin.yaml", SPEC)
-    project.write("specs/test_other.py", "import pytest\n@pytest.mark.parametrize('n', range(12))\ndef test_one(n):\n    import time; time.sleep(0.05)\n")
+    project.write(
+        "specs/test_other.py",
+        "import pytest, time\n@pytest.mark.parametrize('n', range(12))\ndef test_one(n):\n    time.sleep(0.05)\n",
+    )
     result = project.spawn("-n", "2", "-v", "specs")
     assert result.ret == 0
     result.assert_outcomes(passed=16)

@@ -8,8 +8,6 @@ from typing import Any
 
 import pytest
 
-import linverify.pytest_plugin.nodes  # noqa: F401  loaded here, since pytester forgets what a run inside a test loads
-
 PLANT = '''
 import os
 import numpy as np

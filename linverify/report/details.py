@@ -18,6 +18,7 @@ _MATRICES = {
     "C": ("outputs", "states"),
     "D": ("outputs", "inputs"),
 }
+_IN_THE_RECORD = tuple(f"error_of_{word}" for word in _MATRICES)  # every entry's error: too much for a page
 Signals = Mapping[str, Sequence[Sequence[str]]]  # kind -> [name, unit] in the plant's order
 
 
@@ -33,8 +34,8 @@ def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "") ->
             f"Eigenvalues of the local model, per {time_unit or 'time unit'}:",
             poles(rest.pop("poles"), time_unit),
         ]
-    if _is_model(rest.get("model")):
-        made += model(rest.pop("model"))
+    made += matrices({word: rest.pop(word) for word in _MATRICES if is_matrix(rest.get(word))}, signals)
+    rest = {word: value for word, value in rest.items() if word not in _IN_THE_RECORD}
     if isinstance(rest.get("statistics"), Mapping) and "text" in rest["statistics"]:
         made += statistics(rest.pop("statistics"))
     if isinstance(rest.get("smallest_visible"), Mapping):
@@ -73,7 +74,7 @@ def poles(values: Sequence[Any], time_unit: str = "") -> str:
     """Eigenvalues, one a row, with natural frequency, damping and time constant where they are given."""
     rate = f"rad/{time_unit}" if time_unit else "rad per time unit"
     worded = {
-        "natural": f"natural frequency, {rate}",
+        "natural_frequency": f"natural frequency, {rate}",
         "hertz": "frequency, Hz",
         "damping": "damping ratio",
         "time_constant": f"time constant, {time_unit or 'time units'}",
@@ -102,12 +103,12 @@ def _complex(real: float | None, imaginary: float | None) -> str:
     return f"{first} {'-' if imaginary < 0 else '+'} {quantity.number(abs(imaginary))}j"
 
 
-def model(found: Mapping[str, Any]) -> list[str]:
-    """The local model's matrices under their names; entries' errors stay in the record."""
+def matrices(found: Mapping[str, Sequence[Sequence[float]]], signals: Signals) -> list[str]:
+    """The local model's matrices with the names of their rows and columns."""
     made = []
-    for word, (down, across) in _MATRICES.items():
-        if is_matrix(found.get(word)):
-            made += [f"{word} of the local model:", matrix(found[word], _names(found, down), _names(found, across))]
+    for word, rows in found.items():
+        down, across = _MATRICES[word]
+        made += [f"{word} of the local model:", matrix(rows, _names(signals, down), _names(signals, across))]
     return made
 
 
@@ -140,10 +141,5 @@ def _shown(value: Any, worded: Callable[[float], str]) -> str:
     return worded(value) if math.isfinite(value) else NONE_SHOWS
 
 
-def _is_model(value: Any) -> bool:
-    return isinstance(value, Mapping) and any(is_matrix(value.get(word)) for word in _MATRICES)
-
-
-def _names(found: Mapping[str, Any], kind: str) -> list[str]:
-    names = found.get(kind)
-    return [str(name) for name in names] if isinstance(names, list) else []
+def _names(signals: Signals, kind: str) -> list[str]:
+    return [pair[0] for pair in signals.get(kind, ())]

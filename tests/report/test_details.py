@@ -21,7 +21,7 @@ VALUES = st.recursive(
     max_leaves=10,
 )
 WORDS = st.sampled_from(
-    ["states", "inputs", "outputs", "errors", "poles", "model", "statistics", "smallest_visible", "x"]
+    ["states", "inputs", "outputs", "errors", "poles", "A", "B", "C", "D", "statistics", "smallest_visible", "x"]
 )
 
 
@@ -64,7 +64,7 @@ def test_values_may_bring_their_unit(value: object, shown: str) -> None:
 def test_eigenvalues_show_frequency_and_damping() -> None:
     pole = {
         "damping": 0.36,
-        "natural": 2.2,
+        "natural_frequency": 2.2,
         "hertz": None,
         "imag": -2.1,
         "real": -0.8,
@@ -94,19 +94,12 @@ def test_eigenvalues_of_a_difference_equation_show_both_planes() -> None:
 
 
 def test_matrices_carry_names_where_they_fit() -> None:
-    model = {
-        "states": ["speed", "angle"],
-        "inputs": ["thrust"],
-        "A": [[0.0, 1.0], [-2.0, -3.0]],
-        "B": [[1.0], [2.0]],
-        "C": [[7.0]],
-        "errors": {"A": [[1e-9]]},
-    }
-    made = blocks({"model": model}, SIGNALS)
+    found = {"A": [[0.0, 1.0], [-2.0, -3.0]], "B": [[1.0], [2.0]], "C": [[7.0]], "error_of_A": [[1e-9]]}
+    made = blocks(found, SIGNALS)
     assert made[0] == "A of the local model:"
     assert squeezed(made[1]) == [["", "speed", "angle"], ["speed", "0", "1"], ["angle", "-2", "-3"]]
     assert squeezed(made[3]) == [["", "thrust"], ["speed", "1"], ["angle", "2"]]
-    assert squeezed(made[5]) == [["", "1"], ["1", "7"]]
+    assert squeezed(made[5]) == [["", "1"], ["height", "7"]]
     assert len(made) == 6
 
 

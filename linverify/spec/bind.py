@@ -31,7 +31,7 @@ from .layout import Cell, Point, Spec, matches
 from .motions import bind_band, bind_drives
 from .plants import Loaded, load_plant
 from .read import read
-from .trims import bind_accuracy, bind_parameters, bind_trim
+from .trims import bind_accuracy, bind_parameters, bind_trim, told_middles
 
 
 def load(path: Path, root: Path) -> tuple[Case, ...]:
@@ -102,13 +102,15 @@ class _Binder:
 
     def _case(self, point: Point, cell: Cell, sets: tuple[DriveSet, ...], bands: tuple[Band, ...]) -> Case:
         parameters = bind_parameters(self.ground, point, cell)
+        trim = bind_trim(self.ground, point, cell, self.envelope, self.accuracy)
+        told = (*_told_rates(self.spec, point), *told_middles(self.ground, trim, self.envelope))
         return Case(
             spec=self.spec.shown,
             point=cell.name,
             title=self.spec.title,
             plant=self.plant,
             place=cell.place,
-            trim=bind_trim(self.ground, point, cell, self.envelope, self.accuracy),
+            trim=trim,
             parameters=parameters,
             envelope=self.envelope,
             nominal=self.nominal,
@@ -120,12 +122,7 @@ class _Binder:
             bands=bands,
             exits=Exits(self.spec.complete, self.spec.mismatch),
             requirements=self._requirements(cell, self.spec.check_names(point)),
-            settings=(
-                *self.settings,
-                *point.settings,
-                *_told_rates(self.spec, point),
-                *_told_cell(self.plant, point, cell),
-            ),
+            settings=(*self.settings, *point.settings, *told, *_told_cell(self.plant, point, cell)),
             files=self.files,
             skipped=cell.skipped,
             family=self.family,

@@ -7,7 +7,7 @@ from collections.abc import Iterable, Mapping
 from types import MappingProxyType
 
 from linverify.core import units
-from linverify.core.case import Expected, Interval, TrimAsk
+from linverify.core.case import Expected, Interval, Setting, TrimAsk
 from linverify.core.errors import Place
 
 from .ground import Ground
@@ -149,11 +149,27 @@ def _count(
         f"{point.name} has {_counted(len(find), 'unknown')} ({', '.join(find) or 'none'}) "
         f"for {_counted(len(rates) + len(held), 'equation')} ({equations or 'none'})"
     )
+    ground.report(point.place, wrong, _remedy(more, point.find is not None))
+
+
+def _remedy(more: int, listed: bool) -> str:
+    """What helps where there are `more` unknowns than equations, or fewer; listed: whether `find` names them."""
     if more > 0:
-        expected = f"hold {more} more, name the unknowns under `find`, or weigh them under `minimize`"
-    else:
-        expected = f"hold {-more} fewer, find {-more} more, or let {-more} {'rate' if more == -1 else 'rates'} be free"
-    ground.report(point.place, wrong, expected)
+        fewer = f"find {more} fewer" if listed else "name the unknowns under `find`"
+        return f"hold {more} more, {fewer}, or weigh them under `minimize`"
+    free = f"let {-more} {'rate' if more == -1 else 'rates'} be free"
+    return f"hold {-more} fewer, find {-more} more, or {free}" if listed else f"hold {-more} fewer, or {free}"
+
+
+def told_middles(ground: Ground, ask: TrimAsk, envelope: Mapping[str, Interval]) -> tuple[Setting, ...]:
+    """Where the distances of `minimize` are taken from, for unknowns without a `start`."""
+    told = []
+    for name in ask.minimize:
+        limits = _limits(ground, name, envelope)
+        if name not in ask.start and limits.bounded:
+            middle = units.told(0.5 * (limits.low + limits.high), ground.plant.unit(name))
+            told.append(Setting(f"start.{name}", middle, "middle of the envelope"))
+    return tuple(told)
 
 
 def _group(what: str, names: list[str]) -> str:

@@ -192,6 +192,7 @@ def test_the_effective_spec_tells_where_each_word_comes_from(half: Case, drift: 
     assert words["parameters.area"] == ("200 cm^2", "specs/tank/level.yaml:4:20")
     assert words["parameters.ambient"] == ("293.15 K", "specs/tank/level.yaml:20:27")
     assert Setting("parameters.ambient", "20 degC", "plant") in drift.settings
+    assert Setting("start.pump", "0 rad/s", "middle of the envelope") in drift.settings
     assert words["drives.fast.rate.pump"] == ("1 rpm/s", "specs/tank/level.yaml:9:42")
     assert words["drives.fast.rate.heat"] == ("1 kW/s", "specs/tank/level.yaml:33:18")
     assert len({setting.word for setting in half.settings}) == len(half.settings)

@@ -90,8 +90,27 @@ def build(
             plain(described[key]) for key in sorted(described, key=lambda key: human("::".join(key))) if key in seen
         ],
     }
-    record = {"format": FORMAT, "body": _without(body, root), "provenance": plain(provenance or {})}
+    record = {
+        "format": FORMAT,
+        "body": _without(body, root),
+        "provenance": plain(_told(provenance or {}, found.values())),
+    }
     return parse(canonical(record))  # what is rendered at once and what is rendered from the file are the same
+
+
+def _told(provenance: Mapping[str, Any], verdicts: Iterable[Verdict]) -> dict[str, Any]:
+    """The provenance with the tolerances that the checks say they worked with."""
+    used: dict[str, set[float]] = {"trim residual": set(), "integration": set()}
+    for verdict in verdicts:
+        integration = verdict.details.get("integration", {})
+        tolerance = integration.get("tolerance") if isinstance(integration, Mapping) else None
+        for name, value in (("trim residual", verdict.details.get("accuracy")), ("integration", tolerance)):
+            if isinstance(value, float):
+                used[name].add(value)
+    known = {name: sorted(values) for name, values in used.items() if values}
+    if not known:
+        return dict(provenance)
+    return {**provenance, "tolerances": {**known, **provenance.get("tolerances", {})}}
 
 
 def _one_each(verdicts: Iterable[Verdict]) -> dict[str, Verdict]:

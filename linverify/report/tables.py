@@ -112,9 +112,14 @@ def compliance(verdicts: Iterable[Verdict]) -> tuple[Row, ...]:
     return tuple(row for verdict in verdicts for row in rows_of(verdict))
 
 
+def printable(text: str) -> str:
+    """`text` with every control character but line breaks taken out: names and messages may hold any."""
+    return "".join(sign if sign.isprintable() or sign == "\n" else " " for sign in text)
+
+
 def escaped(text: str) -> str:
     """`text` as one line of Markdown that shows as it is written, inside a table too."""
-    line = " ".join(text.split())
+    line = " ".join(printable(text).split())
     line = re.sub(r"&(?=#?\w+;)", "&amp;", line).replace("<", "&lt;").replace(">", "&gt;")
     line = re.sub(r"([\\`*\[\]|~$]|^#)", r"\\\1", line)
     return re.sub(r"(?<![^\W_])_|_(?![^\W_])", r"\\_", line)

@@ -49,7 +49,7 @@ def _line(label: str, text: str) -> list[str]:
     """A label and its text, wrapped and set off; line breaks of the text are kept."""
     indent = " " * (_LABEL + 4)
     wrapped: list[str] = []
-    for part in text.splitlines() or [""]:
+    for part in tables.printable(text).split("\n"):
         wrapped += textwrap.wrap(part, WIDTH - len(indent), break_long_words=False, break_on_hyphens=False) or [""]
     return [f"  {label:<{_LABEL}}  {wrapped[0]}".rstrip(), *(f"{indent}{part}".rstrip() for part in wrapped[1:])]
 
@@ -142,6 +142,6 @@ def _summary_row(verdict: Verdict) -> tuple[str, ...]:
 def _plain_table(rows: Sequence[Sequence[str]]) -> list[str]:
     from tabulate import tabulate
 
-    cells = [[" ".join(cell.split()) for cell in row] for row in rows]
+    cells = [[" ".join(tables.printable(cell).split()) for cell in row] for row in rows]
     align = ("left", "right", "right", "left", "left")
     return tabulate(cells, _SUMMARY, tablefmt="simple", disable_numparse=True, colalign=align).splitlines()

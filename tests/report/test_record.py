@@ -104,6 +104,15 @@ def test_provenance_stands_outside_the_body() -> None:
     assert one["provenance"] == {"time": "now", "x": {"$float": "nan"}}
 
 
+def test_the_tolerances_that_checks_worked_with_are_told() -> None:
+    trimmed = replace(TRIMS, details={"accuracy": 1e-8})
+    driven = [
+        replace(FOLLOWS, point=f"p{index}", details={"integration": {"tolerance": 10.0**-index}}) for index in (3, 2)
+    ]
+    run = record.build([*driven, trimmed], provenance={"tolerances": {"given": 1}})
+    assert run["provenance"]["tolerances"] == {"given": 1, "integration": [0.001, 0.01], "trim residual": [1e-8]}
+
+
 def test_a_record_comes_back_from_its_file(tmp_path: Path) -> None:
     path = tmp_path / "linverify.json"
     path.write_text(record.canonical(built()), encoding="utf-8")

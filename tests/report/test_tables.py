@@ -91,6 +91,7 @@ def test_numbers_are_read_as_numbers() -> None:
         ("_loud_ *stars* `code`", r"\_loud\_ \*stars\* \`code\`"),
         ("[text](address)", r"\[text\](address)"),
         ("# heading", r"\# heading"),
+        ("bell\x07 and \x1b[31mred", r"bell and \[31mred"),
         ("", ""),
     ],
 )

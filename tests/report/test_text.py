@@ -112,6 +112,12 @@ def test_nothing_run_is_said() -> None:
     assert text.summary([]) == ["no check was run"]
 
 
+def test_control_characters_do_not_reach_the_terminal() -> None:
+    loud = replace(NO_TRIM, reason="\x1b[31mred\x1b[0m\x07 alarm", figures=())
+    for shown in (text.failure(loud), *text.summary([loud])):
+        assert shown.replace("\n", "").isprintable()
+
+
 def test_equal_headroom_is_ordered_by_name() -> None:
     figure = Figure("peak error", "height", 1.0, 2.0)
     verdicts = [replace(TRIMS, point=name, figures=(figure,)) for name in ("kn10", "kn9", "kn30")]

@@ -62,6 +62,12 @@ class Limits:
         """A shape within [-1, 1] as deviations of one input: +1 is its highest, -1 its lowest."""
         return np.asarray(np.where(shape >= 0.0, shape * self.high[column], -shape * self.low[column]))
 
+    def turned(self, share: float, column: int) -> float:
+        """A share of the amplitude, turned to the side where a one-sided input can move at all."""
+        if (share < 0.0 and self.low[column] == 0.0) or (share > 0.0 and self.high[column] == 0.0):
+            return -share
+        return share
+
     def offset(self, column: int, share: float) -> float:
         """An offset from a share within [-1, 1] of what is allowed to that side."""
         side = self.offset_high[column] if share >= 0.0 else -self.offset_low[column]

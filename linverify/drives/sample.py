@@ -2,9 +2,10 @@
 
 The sampler, in words (a report quotes `SAMPLER`): each draw is independent of all others and has the same law. One
 input alone with probability one half, else each input with probability one half (at least one). Every moved input gets
-a shape of the menu, a sign, and its full amplitude with probability one half, else a share that is uniform between a
-tenth and one. Starts, lengths and periods are drawn over the horizon. Every declared offset is there with probability
-one half, at a share that is uniform over its range. What a rate limit forbids is followed as fast as it allows.
+a shape of the menu, a sign (the only one where its range is one-sided), and its full amplitude with probability one
+half, else a share that is uniform between a tenth and one. Starts, lengths and periods are drawn over the horizon.
+Every declared offset is there with probability one half, at a share that is uniform over its range. What a rate limit
+forbids is followed as fast as it allows.
 """
 
 from __future__ import annotations
@@ -43,7 +44,7 @@ def _one(limits: Limits, menu: tuple[str, ...], rng: np.random.Generator) -> Dri
     values = np.zeros((limits.intervals, len(limits.inputs)))
     for column in _moved(len(limits.inputs), rng):
         shape = SHAPES[menu[int(rng.integers(len(menu)))]](at, rng)
-        values[:, column] = limits.sized(_share(rng) * shape, column)
+        values[:, column] = limits.sized(limits.turned(_share(rng), column) * shape, column)
     offsets = {}
     for column, name in enumerate(limits.offsets):
         there, share = rng.random() < 0.5, rng.uniform(-1.0, 1.0)

@@ -89,7 +89,8 @@ def _drive(limits: Limits, parts: list[_Part], offsets: list[tuple[int, int]]) -
     values = np.zeros((limits.intervals, len(limits.inputs)))
     for part in parts:
         column = part.channel % len(limits.inputs)
-        values[:, column] += limits.sized(_share(part.size) * _shape(limits, part), column)
+        share = limits.turned(_share(part.size), column)
+        values[:, column] += limits.sized(share * _shape(limits, part), column)
     start: dict[str, float] = {}
     for channel, size in offsets:
         column = channel % len(limits.offsets)

@@ -1,4 +1,4 @@
-"""The check as a whole: right models pass, planted faults are caught, limits are told apart where the truth is known."""
+"""The check as a whole: right models pass, planted faults are caught, known worst errors are told from their limits."""
 
 from __future__ import annotations
 
@@ -6,14 +6,13 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
+from oscillator import DRIVES, OSCILLATOR, case, largest_response, model, study
 
 from linverify.checks.judge import judge_study
 from linverify.core.case import Amplitude, Band, Case, Exits, Interval, Options
 from linverify.core.model import LocalModel
 from linverify.core.verdict import Status, Verdict
 from linverify.report import record
-
-from oscillator import DRIVES, OSCILLATOR, case, largest_response, model, study
 
 PEAK = Band("y", "peak", 0.02)
 RIGHT_BANDS = (
@@ -63,7 +62,7 @@ def test_a_wrong_model_fails(fault: str, band: Band) -> None:
     assert figure.status is Status.FAIL
     assert figure.worst - figure.error > figure.limit
     assert found.reason == f"{figure.what} of y breaks its limit"
-    assert [item.role for item in found.evidence][0] == "worst"
+    assert found.evidence[0].role == "worst"
     assert "f " in found.evidence[-1].text
 
 

@@ -4,8 +4,9 @@ from __future__ import annotations
 
 from typing import Any
 
-from ..core.errors import Place
-from ..core.signals import nearest
+from linverify.core.errors import Place
+from linverify.core.signals import nearest
+
 from . import scalars
 from .layout import AmplitudeAsk, Entry, Expect, Limits, Quantity, Word
 from .reader import Reader

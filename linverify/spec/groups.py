@@ -4,9 +4,10 @@ from __future__ import annotations
 
 from typing import Any, cast
 
-from ..core.case import BandKind, Course
-from ..core.errors import Place
-from ..core.signals import nearest
+from linverify.core.case import BandKind, Course
+from linverify.core.errors import Place
+from linverify.core.signals import nearest
+
 from . import scalars
 from .kinds import Values, block
 from .layout import BandAsk, DriveAsk, Quantity

@@ -8,8 +8,9 @@ from __future__ import annotations
 
 from collections.abc import Iterator
 
-from ..core.case import Setting
-from ..core.errors import Place, Problem
+from linverify.core.case import Setting
+from linverify.core.errors import Place, Problem
+
 from .source import Block, Broken, Listing, Node, Scalar
 from .words import BAND_WORDS, DRIVE_WORDS, Kind, Row, row_of
 

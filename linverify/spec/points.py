@@ -6,8 +6,9 @@ from collections.abc import Iterator, Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 
-from ..core.case import Setting
-from ..core.errors import Place
+from linverify.core.case import Setting
+from linverify.core.errors import Place
+
 from .groups import drive_sets, error_bands, set_names
 from .kinds import Values, block
 from .layout import BandAsk, Cell, DriveAsk, Entry, Point, Quantity, Word

@@ -7,8 +7,9 @@ import os
 from collections.abc import Iterator
 from pathlib import Path
 
-from ..core.errors import Place, Problem
-from ..core.signals import nearest
+from linverify.core.errors import Place, Problem
+from linverify.core.signals import nearest
+
 from .kinds import Values, block
 from .layout import Point, RequirementAsk, Spec, Word, matches
 from .merge import over, settings

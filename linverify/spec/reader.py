@@ -11,8 +11,9 @@ from collections.abc import Iterator, Mapping, Sequence
 from pathlib import Path
 from typing import TypeVar
 
-from ..core.errors import Place, Problem
-from ..core.signals import nearest
+from linverify.core.errors import Place, Problem
+from linverify.core.signals import nearest
+
 from . import scalars
 from .scalars import Wrong, quoted
 from .source import Block, Broken, Listing, Node, Scalar

@@ -15,7 +15,8 @@ from itertools import islice
 from pathlib import Path
 from typing import Any, TypeAlias
 
-from ..core.errors import Place, Problem
+from linverify.core.errors import Place, Problem
+
 from .scalars import is_text, quoted
 
 DEFAULTS = "defaults.yaml"

@@ -10,8 +10,9 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
-from ..core.errors import Place
-from ..core.signals import nearest
+from linverify.core.errors import Place
+from linverify.core.signals import nearest
+
 from . import scalars
 from .kinds import block
 from .layout import Cell, Entry, Quantity, Word, matches

@@ -6,7 +6,8 @@ returns the value, or None after telling what is wrong.
 
 from __future__ import annotations
 
-from ..core.signals import nearest
+from linverify.core.signals import nearest
+
 from . import scalars
 from .layout import FileWord, PlantRef, Quantity, Word
 from .reader import Reader

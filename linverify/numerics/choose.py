@@ -14,7 +14,7 @@ from .families import Family, family
 from .nearest import nearest
 from .roots import Root, told_errors
 from .trim_result import Task, TrimResult, outcome_of
-from .trim_words import active_bounds, told_list
+from .trim_words import active_bounds, told_unknowns
 
 TIE = 1e-6  # equilibria whose distances from `start` differ by less (in nominal sizes) are equally near
 
@@ -83,7 +83,7 @@ def accepted(task: Task, candidate: Candidate, others: tuple[OperatingPoint, ...
         worst_residual=size,
         errors=told_errors(system, candidate.root),
         active_bounds=active_bounds(system, point, task.envelope, task.nominal),
-        notes=tuple(f"another equilibrium: {told_list(system.plant, system.unknowns, other)}" for other in others),
+        notes=tuple(f"another equilibrium: {told_unknowns(system, other)}" for other in others),
     )
 
 
@@ -113,9 +113,8 @@ def _comes_nearer(task: Task, candidate: Candidate, distance: float) -> bool:
 
 
 def _several(task: Task, candidates: list[Candidate]) -> TrimResult:
-    plant, names = task.system.plant, task.system.unknowns
     points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
-    each = "; ".join(f"({i}) {told_list(plant, names, point)}" for i, point in enumerate(points, 1))
+    each = "; ".join(f"({i}) {told_unknowns(task.system, point)}" for i, point in enumerate(points, 1))
     why = "`start` is as near to one as to another" if _named(task) else "no `start` says which one is meant"
     message = f"{len(candidates)} equilibria lie inside the envelope and {why}: {each}"
     return TrimResult(Outcome.SEVERAL_TRIMS, others=points, message=message)
@@ -123,7 +122,7 @@ def _several(task: Task, candidates: list[Candidate]) -> TrimResult:
 
 def _of_family(task: Task, candidate: Candidate, found: Family) -> TrimResult:
     system = task.system
-    at = f", for example at {told_list(system.plant, system.unknowns, candidate.point)}" if candidate.point else ""
+    at = f", for example at {told_unknowns(system, candidate.point)}" if candidate.point else ""
     names = ", ".join(found.names)
     count = f"{len(system.unknowns)} unknowns, {len(system.names)} equations"
     return TrimResult(

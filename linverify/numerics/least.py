@@ -17,7 +17,7 @@ from .roots import Root, noise
 from .starts import start_points
 from .stragglers import stragglers
 from .trim_result import Task, TrimResult
-from .trim_words import told_list
+from .trim_words import told_unknowns
 
 DESCENTS = 6  # local minima are sought from so many different equilibria
 EQUAL = 1e-6  # relative difference of two least distances that cannot be told apart
@@ -66,7 +66,7 @@ def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:
     names = task.system.unknowns
     share = np.abs(best.flat[: len(names)]).max(axis=1, initial=0.0)
     moving = tuple(name for name, part in zip(names, share, strict=True) if part > 1e-3 * share.max(initial=0.0))
-    at = f", for example at {told_list(task.system.plant, names, candidate.point)}" if candidate.point else ""
+    at = f", for example at {told_unknowns(task.system, candidate.point)}" if candidate.point else ""
     return TrimResult(
         Outcome.NOT_UNIQUE,
         others=(candidate.point,) if candidate.point else (),
@@ -77,8 +77,7 @@ def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:
 
 def _tie(task: Task, candidates: list[Candidate]) -> TrimResult:
     points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
-    plant, names = task.system.plant, task.system.unknowns
-    each = "; ".join(f"({i}) {told_list(plant, names, point)}" for i, point in enumerate(points, 1))
+    each = "; ".join(f"({i}) {told_unknowns(task.system, point)}" for i, point in enumerate(points, 1))
     return TrimResult(Outcome.NOT_UNIQUE, others=points, message=f"equally near to `start` in these weights: {each}")
 
 

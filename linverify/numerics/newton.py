@@ -132,7 +132,7 @@ def _advance(system: Equations, z: Array, at: Array, low: Array, high: Array) ->
     slopes = jacobian(system, z, at)
     usable = np.isfinite(slopes).all(axis=(1, 2))
     slopes[~usable] = 0.0
-    step = _inside(slopes, at, z, low, high)
+    step = bounded_step(slopes, at, z, low, high)
     longest = np.abs(step).max(axis=0, initial=0.0)
     allowed = LONGEST * (1.0 + np.abs(z).max(axis=0, initial=0.0))
     step *= np.minimum(1.0, allowed / np.maximum(longest, allowed))
@@ -153,7 +153,7 @@ def _advance(system: Equations, z: Array, at: Array, low: Array, high: Array) ->
     return moved, values, better
 
 
-def _inside(slopes: Array, at: Array, z: Array, low: Array, high: Array) -> Array:
+def bounded_step(slopes: Array, at: Array, z: Array, low: Array, high: Array) -> Array:
     """Newton steps (q, N) in which unknowns that stand on a bound and would leave it stay where they are."""
     step = shortest_step(slopes, at)
     for _ in range(z.shape[0]):

@@ -15,7 +15,7 @@ from .equations import Equations
 from .newton import Ends
 from .shortfall import Shortfall, nearest_holds, shortfall
 from .trim_result import Task, TrimResult, outcome_of
-from .trim_words import active_bounds, rate_unit, told, told_list, unit_of
+from .trim_words import active_bounds, rate_unit, told, told_unknowns, unit_of
 
 
 def none(
@@ -110,7 +110,7 @@ def _outputs_out(task: Task, candidate: Candidate) -> str:
 
 def _notes(task: Task, point: OperatingPoint, holds: Mapping[str, float], searched: bool) -> tuple[str, ...]:
     plant = task.system.plant
-    notes = [f"nearest the search came: {told_list(plant, task.system.unknowns, point)}"]
+    notes = [f"nearest the search came: {told_unknowns(task.system, point)}"]
     if holds:
         changed = [told(plant, name, value) for name, value in holds.items()]
         notes.append(f"a trim exists at the held values {', '.join(changed)}, the nearest that were found")

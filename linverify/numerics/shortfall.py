@@ -17,11 +17,12 @@ from ..core.errors import PlantError
 from ..core.model import Array, OperatingPoint
 from .equations import Equations, Slack, equations, outputs_outside, with_output_limits
 from .nearest import feasible_ends, nearest
-from .newton import Ends, jacobian, solve
+from .newton import Ends, bounded_step, jacobian, solve
 from .roots import noise, roots_among
 from .starts import start_points
 
-STATIONARY = 1e-3  # share of |J| |F| below which the residual cannot be made smaller by moving
+GAIN = 1e-3  # share of |F|^2 that a move must gain to show that the search had not ended
+BESIDE = 1e-2  # nominal sizes: starts around a fold, where the equations give no direction
 HIDDEN = 10.0  # a residual below so many times the plant's own scatter says nothing
 
 
@@ -58,18 +59,30 @@ def shortfall(system: Equations, ends: Ends, accuracy: float, base: Equations) -
 
 
 def _judged(system: Equations, z: Array) -> tuple[bool, bool]:
-    """Whether |F| at z (q,) is least against every move that the bounds allow; whether it is mere scatter."""
+    """Whether no move that the bounds allow makes |F| at z (q,) smaller; whether F there is mere scatter."""
     at = system.residual(z[:, np.newaxis])
     slopes = jacobian(system, z[:, np.newaxis], at)
     if not np.isfinite(slopes).all():
         return False, False
-    low, high = system.box
-    downhill = -(slopes[0].T @ at[:, 0])
-    blocked = ((z <= low + 1e-7) & (downhill < 0)) | ((z >= high - 1e-7) & (downhill > 0))
-    most = np.linalg.norm(slopes[0], axis=0) * np.linalg.norm(at)
-    conclusive = bool(np.all(blocked | (np.abs(downhill) <= STATIONARY * most)))
     scatter = noise(system, z[:, np.newaxis], at, slopes)
-    return conclusive, bool(np.all(np.abs(at) <= HIDDEN * scatter))
+    noisy = bool(np.all(np.abs(at) <= HIDDEN * scatter))
+    low, high = (side[:, np.newaxis] for side in system.box)
+    tried = system.residual(np.clip(z[:, np.newaxis] + _moves(slopes, at, z, low, high), low, high))
+    reached = np.sum(tried**2, axis=0)
+    reached = reached[np.isfinite(reached)]
+    # a system without unknowns cannot move at all
+    stuck = not z.size or bool(reached.size and reached.min() >= (1.0 - GAIN) * np.sum(at**2))
+    return stuck, noisy
+
+
+def _moves(slopes: Array, at: Array, z: Array, low: Array, high: Array) -> Array:
+    """Moves (q, N) to try: along single unknowns, and long and short along the step that would solve the equations."""
+    single = np.concatenate([share * np.eye(z.size) for share in (1e-2, -1e-2, 1e-3, -1e-3)], axis=1)
+    solving = bounded_step(slopes, at, z[:, np.newaxis], low, high)
+    downhill = -slopes[0].T @ at
+    steepest = downhill / max(float(np.abs(downhill).max(initial=0.0)), 1e-300)
+    shares = 0.25 ** np.arange(10)
+    return np.concatenate([single, solving * shares, steepest * shares], axis=1)
 
 
 def _let_go(system: Equations, row: int, ends: Ends, accuracy: float) -> Array | None:
@@ -125,16 +138,30 @@ def _with_ends(wide: Equations, system: Equations, ends: Ends) -> Array:
 def _verified(
     wide: Equations, ask: TrimAsk, envelope: Mapping[str, Interval], nominal: Mapping[str, float], z: Array
 ) -> dict[str, float]:
-    """The held values at z, if with them the original equations have a solution there by their own residuals."""
+    """The held values at z, if with them the original equations have a solution there; empty if not.
+
+    At the last value that can be held (a fold) the solution hangs on round-off, so a little further is tried as well.
+    """
     try:
         point = wide.point(z)
     except PlantError:
         return {}
-    held = {name: point.value(name) for name in ask.hold}
-    moved = equations(wide.plant, replace(ask, hold=held), envelope, nominal, wide.time)
-    moved = replace(moved, tally=wide.tally)
-    ends = solve(moved, moved.scaled(point)[:, np.newaxis], goal=0.0)
-    found = roots_among(moved, ends, ask.accuracy)
-    if not found.roots or outputs_outside(wide.plant, ask, envelope, nominal, moved.point(found.roots[0].z)):
-        return {}
-    return held
+    for further in (1.0, 1.0 + 1e-6, 1.0 + 1e-3):
+        held = {name: value + further * (point.value(name) - value) for name, value in ask.hold.items()}
+        moved = replace(equations(wide.plant, replace(ask, hold=held), envelope, nominal, wide.time), tally=wide.tally)
+        there = moved.scaled(point)[:, np.newaxis]
+        beside = BESIDE * np.eye(there.size)
+        around = np.concatenate([there, there + beside, there - beside], axis=1)
+        found = roots_among(moved, solve(moved, around), ask.accuracy)
+        if found.roots and not _outside(moved, ask, envelope, nominal, found.roots[0].z):
+            return held
+    return {}
+
+
+def _outside(
+    moved: Equations, ask: TrimAsk, envelope: Mapping[str, Interval], nominal: Mapping[str, float], z: Array
+) -> bool:
+    try:
+        return bool(outputs_outside(moved.plant, ask, envelope, nominal, moved.point(z)))
+    except PlantError:
+        return True

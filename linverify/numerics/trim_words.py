@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Mapping
+from collections.abc import Mapping
 
 import numpy as np
 
@@ -11,6 +11,7 @@ from ..core.case import Interval
 from ..core.model import OperatingPoint
 from .equations import Equations, bounds
 
+ROUND_OFF = 1e-12  # nominal sizes
 ON_LIMIT = 1e-6  # nominal sizes
 
 
@@ -31,9 +32,13 @@ def told(plant: BoundPlant, name: str, value: float) -> str:
     return f"{name} = {value:.6g} {unit_of(plant, name)}".strip()
 
 
-def told_list(plant: BoundPlant, names: Iterable[str], point: OperatingPoint) -> str:
-    """`speed = 12.3 m/s, pitch = 0.01 rad`."""
-    return ", ".join(told(plant, name, point.value(name)) for name in names)
+def told_unknowns(system: Equations, point: OperatingPoint) -> str:
+    """`speed = 12.3 m/s, pitch = 0.01 rad`: what was found, without the round-off of zeros."""
+    words = []
+    for name, size in zip(system.unknowns, system.sizes, strict=True):
+        value = point.value(name)
+        words.append(told(system.plant, name, value if abs(value) > ROUND_OFF * size else 0.0))
+    return ", ".join(words)
 
 
 def active_bounds(

@@ -28,6 +28,7 @@ LEAST_SCALE = (
     1e-3  # of the row's change over the coarsest step: a row whose slopes vanish at the point is not scaleless
 )
 SMALL = 1e-3  # nominal sizes: steps within which a gap that does not shrink is laid to the point
+LEAST_ERROR = 1e-12  # of the row's scale: below this, rounding in the plant's own terms is not told apart
 DOUBT = 10.0  # times the fine noise: coarse noise that makes the finer slopes doubtful
 GRAINY = 8.0  # times rounding: noise that is the plant's own
 LEGIBLE = 10.0  # times its noise, before the shrinking of a gap is judged
@@ -101,6 +102,7 @@ def _slopes(probe: Probe, floors: Array) -> Slopes:
     quotients, probe, lost = sampled(probe)
     rounding = rounding_floor(probe.f0, quotients.widest, probe.z0)
     noise = measured_noise(probe, rounding)
+    grainy = noise.coarse > GRAINY * rounding
     way = one_sided(probe)
     estimate = _estimate(quotients, noise, way)
     done = bool(np.isfinite(probe.f0).all() and np.isfinite(estimate.error).all() and not lost.any())
@@ -112,9 +114,11 @@ def _slopes(probe: Probe, floors: Array) -> Slopes:
         gaps = (*found.findings, *steep_ends(quotients, noise.fine, probe.sizes, scales, found.findings))
         lost = lost | found.lost.any(axis=0)
         hidden = np.minimum(found.hidden, _largest_possible(quotients, noise.coarse, probe.sizes))
-        unresolved = np.maximum(hidden, found.puzzling)
+        # what rounding alone may hide is no finding: every constant row would have it
+        unresolved = np.maximum(np.where(grainy[:, np.newaxis], hidden, 0.0), found.puzzling)
         _widen(estimate, _unexplained(quotients, noise.coarse, probe.sizes), gaps)
         _mend(estimate, gaps, way)
+        _floored(estimate, scales, probe.sizes)
         scales = np.maximum(scales, _scales(probe, estimate, quotients, floors))
     return Slopes(
         frozen_array(estimate.jacobian),
@@ -125,7 +129,7 @@ def _slopes(probe: Probe, floors: Array) -> Slopes:
         gaps,
         frozen_array(unresolved),
         frozen_array(noise.coarse),
-        noise.coarse > GRAINY * rounding,
+        grainy,
         tuple(way.tolist()),
         tuple(lost.tolist()),
         Outcome.DONE if done and not lost.any() else Outcome.NOT_FINITE,
@@ -155,6 +159,11 @@ def _limits(quotients: Quotients, noise: Array) -> tuple[tuple[Array, Array], ..
         extrapolated(quotients.forward, side_floor, 4.0),
         extrapolated(quotients.backward, side_floor, 4.0),
     )
+
+
+def _floored(estimate: _Estimate, scales: Array, sizes: Array) -> None:
+    """Estimates raised to LEAST_ERROR of the row's scale."""
+    np.maximum(estimate.error, LEAST_ERROR * scales[:, np.newaxis] / sizes, out=estimate.error)
 
 
 def _scales(probe: Probe, estimate: _Estimate, quotients: Quotients, floors: Array) -> Array:

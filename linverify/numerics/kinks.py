@@ -1,8 +1,8 @@
 """Corners, jumps and infinite slopes of a function along its axes, near a point: found by looking closer and closer.
 
 A window of 17 samples is narrowed to three of its sixteen segments, those about the largest change of slope, again and
-again. A smooth function loses its change of slope on the way (by 16/3 a round), a corner keeps it, a root gains
-(2.3), a jump gains as much as the window shrinks. Central differences cannot see any of this: at a corner they give the
+again; plain curvature is taken off first. A smooth function loses its change of slope on the way (by at least 16/3 a
+round), a corner keeps it, a root gains (2.3), a jump gains as much as the window shrinks (16/3). Central differences cannot see any of this: at a corner they give the
 mean of both sides with an error estimate of zero. Comparing one-sided slopes at a few fixed steps, the obvious
 other way, tells less: two corners mix, a sharp but smooth bend looks like a corner, and the distance stays unknown.
 
@@ -84,6 +84,11 @@ class _Look:
     @property
     def change(self) -> float:
         return float(self.sights.change[self.index])
+
+    @property
+    def most(self) -> float:
+        """The largest change that may be there: what was seen, or what noise could hide."""
+        return max(self.change, self.change / self.clear) if self.clear > 0 else float("inf")
 
     @property
     def step(self) -> float:
@@ -208,6 +213,8 @@ def _trend(looks: Sequence[_Look]) -> tuple[float, _Look | None]:
     seen = [index for index, look in enumerate(looks) if look.clear > 1.0]
     clean = [index for index in seen if looks[index].clear > CLEAN]
     rounds = (clean if len(clean) >= 3 else seen)[-3:]
+    if rounds and any(look.most < KINK_GAIN * looks[rounds[-1]].change for look in looks[rounds[-1] + 1 :]):
+        return 0.0, looks[rounds[-1]]  # gone, where it would have shown
     if len(rounds) < 2:
         return 0.0, None
     first, last = looks[rounds[0]], looks[rounds[-1]]

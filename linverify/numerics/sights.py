@@ -37,8 +37,7 @@ class Sights:
     @property
     def complete(self) -> Mask:
         """True where every sample of a window is finite, (S,)."""
-        finite: Mask = np.isfinite(self.values).all(axis=1)
-        return finite
+        return np.asarray(np.isfinite(self.values).all(axis=1), dtype=np.bool_)
 
     def closer(self, index: int) -> tuple[float, float]:
         """The three segments about the change in window `index`."""
@@ -59,12 +58,17 @@ def sights(nodes: Array, values: Array) -> Sights:
     slopes = np.diff(values, axis=1) / np.maximum(np.diff(nodes, axis=1), 1e-300)
     before, here, after = slopes[:, 1:-3], slopes[:, 2:-2], slopes[:, 3:-1]
     # a corner changes the slope for good, a jump for one segment only: the next but one must agree
-    bend = np.minimum(np.abs(after - before), np.abs(slopes[:, 4:] - slopes[:, :-4]))
+    bend = np.minimum(_untrended(after - before), _untrended(slopes[:, 4:] - slopes[:, :-4]))
     change = np.maximum(bend, np.abs(here - (before + after) / 2))
     most = np.argmax(np.nan_to_num(change, nan=-1.0), axis=1)
     biggest = np.take_along_axis(change, most[:, np.newaxis], 1)[:, 0]
     step = (nodes[:, -1] - nodes[:, 0]) / SEGMENTS
     return Sights(nodes, values, slopes, most + 2, biggest, step, _roughness(values, most + 2))
+
+
+def _untrended(changes: Array) -> Array:
+    """|changes| of slope less what is common to the window: plain curvature is no corner and must not hide one."""
+    return np.abs(changes - np.median(changes, axis=1, keepdims=True))
 
 
 def _roughness(values: Array, at: Indices) -> Array:

@@ -1,8 +1,8 @@
 """Slopes that grow without bound as the step falls: a root at the edge of its domain, or one odd about the point.
 
 Narrowing windows see a root at a point inside; where its vertex is the last point of the domain no window has it
-inside. The one-sided quotients tell: their changes from level to level fall to a quarter for a smooth function, to a half for
-x^1.5, and rise for a root (by two for the square root) or a jump (by four).
+inside. The one-sided quotients tell: their changes from level to level fall to a quarter for a smooth function, to half
+for x^1.5, and rise for a root (by two for the square root) or a jump (by four).
 """
 
 from __future__ import annotations

@@ -15,17 +15,17 @@ L, C, R, VG, D = 160e-6, 160e-6, 10.0, 30.0, 0.6
 
 def _buck(t, x, u, p):
     (i, v), (d, vg) = x, u
-    return np.stack([(d * vg - v) / L, (i - v / R) / C])
+    return np.stack([(d * vg - v) / L, (i - v / p["load"]) / C])
 
 
 def _boost(t, x, u, p):
     (i, v), (d, vg) = x, u
-    return np.stack([(vg - (1 - d) * v) / L, ((1 - d) * i - v / R) / C])
+    return np.stack([(vg - (1 - d) * v) / L, ((1 - d) * i - v / p["load"]) / C])
 
 
 def _buck_boost(t, x, u, p):
     (i, v), (d, vg) = x, u
-    return np.stack([(d * vg + (1 - d) * v) / L, (-(1 - d) * i - v / R) / C])
+    return np.stack([(d * vg + (1 - d) * v) / L, (-(1 - d) * i - v / p["load"]) / C])
 
 
 def _converter(dynamics) -> Plant:
@@ -33,6 +33,7 @@ def _converter(dynamics) -> Plant:
         states={"current": "A", "voltage": "V"},
         inputs={"duty": "", "supply": "V"},
         outputs={"voltage": "V"},
+        parameters={"load": (R, "ohm")},
         dynamics=dynamics,
     )
 

@@ -24,7 +24,7 @@ def dynamics(t, x, u, p):
         + 93 * v * d + 93 * a * v * d
     )  # fmt: skip
     Y = S * (
-        -1160 * v - 499 * r - 8078 * v**3 + 15356 * v**2 * r - 1160 * v * a - 499 * r * a + 278 * d - 90 * d**3
+        p["sway_damping"] * v - 499 * r - 8078 * v**3 + 15356 * v**2 * r - 1160 * v * a - 499 * r * a + 278 * d - 90 * d**3
         + 556 * a * d + 278 * a**2 * d - 4 * v * d**2 + 1190 * v**2 * d - 4 - 8 * a - 4 * a**2
     )  # fmt: skip
     N = S * (
@@ -42,6 +42,7 @@ ship = Plant(
     states={"surge": "m/s", "sway": "m/s", "yaw_rate": "rad/s"},
     inputs={"rudder": "rad"},
     outputs={"yaw_rate": "rad/s"},
+    parameters={"sway_damping": -1160.0},
     dynamics=dynamics,
     nominal={"yaw_rate": 0.01, "rudder": 0.1},
     domain={"surge": (-7.0, None)},

@@ -18,14 +18,16 @@ BALL, COIL, G_BALL = 0.05, 1e-4, 9.81
 def _pendulum(t, x, u, p):
     angle, rate = x
     torque = u[0]
-    inertia = MASS * LENGTH**2
-    return np.stack([rate, (torque - DAMPING * rate - MASS * GRAVITY * LENGTH * np.sin(angle)) / inertia])
+    mass = p["mass"]
+    inertia = mass * LENGTH**2
+    return np.stack([rate, (torque - DAMPING * rate - mass * GRAVITY * LENGTH * np.sin(angle)) / inertia])
 
 
 def _cart(t, x, u, p):
     _, angle, speed, rate = x
     s, c = np.sin(angle), np.cos(angle)
-    total, swing, coupling = CART + BOB, INERTIA + BOB * ARM**2, BOB * ARM
+    bob = p["bob"]
+    total, swing, coupling = CART + bob, INERTIA + bob * ARM**2, bob * ARM
     # [total, -coupling c; -coupling c, swing] [q''; angle''] = right-hand sides
     first = u[0] - C_CART * speed - coupling * s * rate**2
     second = coupling * G_CART * s - C_ARM * rate
@@ -37,25 +39,28 @@ def _cart(t, x, u, p):
 
 def _ball(t, x, u, p):
     gap, speed = x
-    return np.stack([speed, G_BALL - COIL / BALL * (u[0] / gap) ** 2])
+    return np.stack([speed, G_BALL - p["coil"] / BALL * (u[0] / gap) ** 2])
 
 
 pendulum = Plant(
     states={"angle": "rad", "rate": "rad/s"},
     inputs={"torque": "N*m"},
     outputs={"angle": "rad"},
+    parameters={"mass": (MASS, "kg")},
     dynamics=_pendulum,
 )
 cart = Plant(
     states={"position": "m", "angle": "rad", "speed": "m/s", "rate": "rad/s"},
     inputs={"force": "N"},
     outputs={"position": "m", "angle": "rad"},
+    parameters={"bob": (BOB, "kg")},
     dynamics=_cart,
 )
 ball = Plant(
     states={"gap": "m", "speed": "m/s"},
     inputs={"current": "A"},
     outputs={"gap": "m"},
+    parameters={"coil": (COIL, "N*m^2/A^2")},
     dynamics=_ball,
     nominal={"gap": 1e-3, "speed": 0.1, "current": 0.1},
     domain={"gap": (1e-4, None)},

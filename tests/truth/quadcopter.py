@@ -17,11 +17,12 @@ ROTOR, IX, IY, IZ, DRAG = 3.357e-5, 4.856e-3, 4.856e-3, 8.801e-3, 0.25
 def dynamics(t, x, u, p):
     vx, vy, vz, phi, theta, psi, pp, qq, rr = x[3:]
     w1, w2, w3, w4 = u
-    lift = THRUST * (w1**2 + w2**2 + w3**2 + w4**2) / MASS
+    thrust = p["thrust"]
+    lift = thrust * (w1**2 + w2**2 + w3**2 + w4**2) / MASS
     spin = w1 - w2 + w3 - w4
     (sf, cf), (st, ct), (ss, cs) = ((np.sin(a), np.cos(a)) for a in (phi, theta, psi))
-    roll = ARM * THRUST * (w4**2 - w2**2)
-    pitch = ARM * THRUST * (w3**2 - w1**2)
+    roll = ARM * thrust * (w4**2 - w2**2)
+    pitch = ARM * thrust * (w3**2 - w1**2)
     yaw = TORQUE * (w1**2 - w2**2 + w3**2 - w4**2)
     return np.stack(
         [
@@ -51,6 +52,7 @@ copter = Plant(
     },
     inputs=dict.fromkeys(("w1", "w2", "w3", "w4"), "rad/s"),
     outputs={"pz": "m"},
+    parameters={"thrust": (THRUST, "N*s^2/rad^2")},
     dynamics=dynamics,
     nominal={**{f"w{i}": 50.0 for i in (1, 2, 3, 4)}, **dict.fromkeys(ANGLES, 0.1)},
     domain={"theta": (-1.5, 1.5)},

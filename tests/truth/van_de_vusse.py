@@ -16,13 +16,14 @@ K1, K2, K3, FEED = 5 / 6, 5 / 3, 1 / 6, 10.0
 def dynamics(t, x, u, p):
     ca, cb = x
     q = u[0]
-    return np.stack([q * (FEED - ca) - K1 * ca - K3 * ca**2, -q * cb + K1 * ca - K2 * cb])
+    return np.stack([q * (FEED - ca) - K1 * ca - K3 * ca**2, -q * cb + K1 * ca - p["k2"] * cb])
 
 
 reactor = Plant(
     states={"ca": "mol/l", "cb": "mol/l"},
     inputs={"dilution": "1/min"},
     outputs={"cb": "mol/l"},
+    parameters={"k2": (K2, "1/min")},
     dynamics=dynamics,
     time_unit="min",
 )

@@ -11,6 +11,7 @@ from collections.abc import Iterator
 from linverify.core.case import Setting
 from linverify.core.errors import Place, Problem
 
+from .scalars import printable
 from .source import Block, Broken, Listing, Node, Scalar
 from .words import BAND_WORDS, DRIVE_WORDS, Kind, Row, row_of
 
@@ -83,7 +84,7 @@ def settings(node: Node | None, rows: tuple[Row, ...], above: str = "") -> Itera
     """
     written = node.entries if isinstance(node, Block) else ()
     for key, value in written:
-        yield from _setting(f"{above}{key.text}", value, row_of(rows, key.text) or row_of(rows, "*"))
+        yield from setting(f"{above}{key.text}", value, row_of(rows, key.text) or row_of(rows, "*"))
     for row in rows:
         if row.available and row.word != "*" and row.word not in (key.text for key, _ in written):
             if row.default:
@@ -92,16 +93,17 @@ def settings(node: Node | None, rows: tuple[Row, ...], above: str = "") -> Itera
                 yield from settings(None, row.of, f"{above}{row.word}.")
 
 
-def _setting(word: str, node: Node, row: Row | None) -> Iterator[Setting]:
+def setting(word: str, node: Node, row: Row | None) -> Iterator[Setting]:
+    """The settings behind one word; row: that of the word, None where names and values are the user's own."""
     rows = row.of if row else ()
     if not isinstance(node, Block):
-        yield Setting(word, shown(node), str(node.place))
+        yield Setting(printable(word), shown(node), str(node.place))
     elif row and row.kind is Kind.DRIVES and not is_one_set(node):
         for key, value in node.entries:
             yield from settings(value, rows, f"{word}.{key.text}.")
     elif row and row.kind is Kind.BANDS:
         for key, value in node.entries:
-            yield from _setting(f"{word}.{key.text}", value, None)
+            yield from setting(f"{word}.{key.text}", value, None)
     else:
         yield from settings(node, rows if row and row.kind in (Kind.BLOCK, Kind.NAMED, Kind.DRIVES) else (), f"{word}.")
 
@@ -109,7 +111,7 @@ def _setting(word: str, node: Node, row: Row | None) -> Iterator[Setting]:
 def shown(node: Node) -> str:
     """A value as it could be written on one line."""
     if isinstance(node, Scalar):
-        return " ".join(node.text.split())
+        return printable(" ".join(node.text.split()))
     if isinstance(node, Listing):
         return "[" + ", ".join(shown(item) for item in node.items) + "]"
     if isinstance(node, Block):

@@ -12,7 +12,7 @@ from linverify.core.errors import Place
 from .groups import drive_sets, error_bands, set_names
 from .kinds import Values, block
 from .layout import BandAsk, Cell, DriveAsk, Entry, Point, Quantity, Word
-from .merge import over, settings
+from .merge import over, setting
 from .reader import Reader, check_name, misspelt
 from .scalars import quoted
 from .source import Block, Node, Scalar
@@ -24,6 +24,15 @@ OVERRIDDEN = ("parameters", "drives", "error_bands")
 _NOT_A_NAME = "family"
 
 
+@dataclass(frozen=True, slots=True)
+class _Group:
+    """Drives and bands of a point, with the nodes that they were read from."""
+
+    nodes: tuple[Node | None, Node | None]
+    drives: tuple[DriveAsk, ...]
+    bands: tuple[BandAsk, ...]
+
+
 @dataclass(slots=True)
 class PointReader:
     """Reads the points of one merged spec; mutable, because sets of drives that points share are read once."""
@@ -33,7 +42,9 @@ class PointReader:
     files: list[Path]  # tables are added to it
     checks: list[str] = field(default_factory=list)  # every check of every cell, by its whole name
     unsure: bool = False  # some points could not be read, so `checks` is not all of them
-    _groups: dict[tuple[int, int], tuple[tuple[DriveAsk, ...], tuple[BandAsk, ...]]] = field(default_factory=dict)
+    # by the identity of nodes, which are kept so that no other node can take their place in memory
+    _groups: dict[tuple[int, int], _Group] = field(default_factory=dict)
+    _told: dict[int, tuple[Node, tuple[Setting, ...]]] = field(default_factory=dict)
 
     def points(self, node: Node) -> tuple[Point, ...]:
         """All operating points that can be read."""
@@ -58,32 +69,33 @@ class PointReader:
         merged = self._merged(Block((), Place("")))
         self._parts(merged, whole=True)
 
-    def _parts(self, tree: Block, whole: bool) -> tuple[tuple[DriveAsk, ...], tuple[BandAsk, ...]]:
+    def _parts(self, tree: Block, whole: bool) -> _Group:
         drives, bands = tree.get("drives"), tree.get("error_bands")
         known = (id(drives), id(bands))
         if whole and known in self._groups:
             return self._groups[known]
         drives_key, bands_key = tree.key("drives"), tree.key("error_bands")
         sets = set_names(drives) if whole or drives else None
-        read = (
+        read = _Group(
+            (drives, bands),
             drive_sets(self.reader, drives_key, drives, whole) if drives and drives_key else (),
             error_bands(self.reader, bands_key, bands, sets) if bands and bands_key else (),
         )
         if whole:
             self._groups[known] = read
-            self._together(drives_key, bands_key, *read)
+            self._together(drives_key, bands_key, read)
         return read
 
-    def _together(
-        self, drives: Scalar | None, bands: Scalar | None, sets: tuple[DriveAsk, ...], asks: tuple[BandAsk, ...]
-    ) -> None:
+    def _together(self, drives: Scalar | None, bands: Scalar | None, read: _Group) -> None:
         if drives and not bands and not misspelt("error_bands", self.spec, SPEC_WORDS):
             self.reader.tell(drives.place, "`drives` without `error_bands`", "they come together or not at all")
         if bands and not drives and not misspelt("drives", self.spec, SPEC_WORDS):
             self.reader.tell(bands.place, "`error_bands` without `drives`", "they come together or not at all")
-        named = all(band.drives in (None, *(each.name for each in sets)) for band in asks)
-        for each in sets:
-            if named and asks and all(band.drives not in (None, each.name) for band in asks):
+        names = (None, *(each.name for each in read.drives))
+        if not read.bands or any(band.drives not in names for band in read.bands):
+            return
+        for each in read.drives:
+            if all(band.drives not in (None, each.name) for band in read.bands):
                 wrong = f"no error band is for the drives {quoted(each.name)}"
                 self.reader.tell(each.place, wrong, "a band for this set, or for all sets, is expected")
 
@@ -99,7 +111,7 @@ class PointReader:
             return None
         merged = self._merged(node)
         values = block(self.reader, merged, POINT_WORDS, f"operating_points: {name.text}", "")
-        drives, bands = self._parts(merged, whole=True)
+        group = self._parts(merged, whole=True)
         sweep, skip = self._sweep(node), values.get("skip", ())
         if skip and node.get("sweep") is None:
             self.reader.tell(skip[0].place, "`skip` without `sweep`", "it names points of a sweep")
@@ -119,10 +131,10 @@ class PointReader:
             minimize=values.get("minimize", ()),
             expect=values.get("expect", ()),
             parameters=values.get("parameters", ()),
-            drives=drives,
-            bands=bands,
+            drives=group.drives,
+            bands=group.bands,
             cells=made,
-            settings=tuple(_settings(merged, sweep)),
+            settings=tuple(self._settings(merged, sweep)),
         )
 
     def _merged(self, node: Block) -> Block:
@@ -142,6 +154,18 @@ class PointReader:
         if key is None or value is None or self.reader.is_missing(value, key, "sweep", "a group"):
             return None
         return read_sweep(self.reader, key, value, self.files)
+
+    def _settings(self, merged: Block, sweep: Sweep | None) -> Iterator[Setting]:
+        """The effective words of a point, without the holds and parameters that its sweep replaces."""
+        swept = {f"{word}.{name.text}" for word in ("hold", "parameters") for name in (sweep.names if sweep else ())}
+        for key, node in merged.entries:
+            if key.text != "skip":
+                yield from (each for each in self._settings_of(key.text, node) if each.word not in swept)
+
+    def _settings_of(self, word: str, node: Node) -> tuple[Setting, ...]:
+        if id(node) not in self._told:
+            self._told[id(node)] = (node, tuple(setting(word, node, row_of(POINT_WORDS, word))))
+        return self._told[id(node)][1]
 
     def _note_checks(self, merged: Block, made: tuple[Cell, ...]) -> None:
         drives = merged.get("drives")
@@ -202,11 +226,3 @@ class _Rules:
 def _place(tree: Block, word: str) -> Place | None:
     key = tree.key(word)
     return key.place if key else None
-
-
-def _settings(merged: Block, sweep: Sweep | None) -> Iterator[Setting]:
-    """The effective words of a point, without the holds and parameters that its sweep replaces."""
-    swept = {f"{word}.{name.text}" for word in ("hold", "parameters") for name in (sweep.names if sweep else ())}
-    entries = tuple(entry for entry in merged.entries if entry[0].text != "skip")
-    told = settings(Block(entries, merged.place), POINT_WORDS)
-    return (setting for setting in told if setting.word not in swept)

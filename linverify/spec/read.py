@@ -161,6 +161,8 @@ def _requirements(reader: Reader, merged: Block, values: Values, pointed: PointR
         patterns = entry.value.get("checks", ())
         for pattern in patterns:
             _fits(reader, pattern, pointed)
+        if "checks" in entry.value and not patterns:
+            reader.tell(entry.place, f"no check is listed under `requirements: {entry.name}: checks`")
         text, source = (entry.value.get(word) for word in ("text", "source"))
         told = (text.text if text else "", source.text if source else "")
         asks.append(RequirementAsk(entry.name, *told, patterns, entry.place))

@@ -35,8 +35,9 @@ class Reader:
         self._folders = folders
 
     def tell(self, place: Place, wrong: str, expected: str = "", hint: str = "") -> None:
-        """Add a mistake."""
-        self.problems.append(Problem(place, wrong, expected, hint))
+        """Add a mistake; what the user wrote is made printable."""
+        told = (scalars.printable(text) for text in (wrong, expected, hint))
+        self.problems.append(Problem(place, *told))
 
     def folder(self, place: Place) -> Path:
         """Folder of the file that `place` is in."""
@@ -54,7 +55,7 @@ class Reader:
                 self._unknown(key, rows, called)
             elif not row.available:
                 self.tell(key.place, f"`{row.word}` is not available in this version")
-            elif not self.is_missing(value, key, row.word, row.kind.value):
+            elif not self.is_missing(value, key, row.word, wanted(row)):
                 yield row, key, value
 
     def require(self, node: Block, rows: tuple[Row, ...], place: Place, called: str) -> bool:
@@ -63,7 +64,7 @@ class Reader:
         for word in missing:
             if not misspelt(word.word, node, rows):
                 where = f" in `{called}`" if called else ""
-                self.tell(place, f"`{word.word}` is missing{where}", f"{word.kind.value} is expected")
+                self.tell(place, f"`{word.word}` is missing{where}", f"{wanted(word)} is expected")
         return not missing
 
     def named(self, node: Node, called: str, wanted: str = "") -> Iterator[tuple[Scalar, Node]]:
@@ -163,6 +164,11 @@ def _homes(word: str) -> str:
 
     walk(SPEC_WORDS, "no other word")
     return " or ".join(found)
+
+
+def wanted(row: Row) -> str:
+    """What is due behind a word, for messages."""
+    return "a time" if row.dimension == "time" else row.kind.value
 
 
 def misspelt(word: str, node: Block, rows: tuple[Row, ...]) -> bool:

@@ -59,6 +59,12 @@ def quoted(text: str) -> str:
     return repr(text if len(text) <= _LONGEST_SHOWN else text[: _LONGEST_SHOWN - 3] + "...")
 
 
+def printable(text: str, longest: int = 400) -> str:
+    """`text` on one line: unprintable characters escaped, cut where it is very long."""
+    shown = "".join(each if each.isprintable() else each.encode("unicode_escape").decode() for each in text[:longest])
+    return shown if len(text) <= longest else shown + "..."
+
+
 def is_null(text: str) -> bool:
     """True where YAML 1.2 reads plain `text` as no value."""
     return _CORE_NULL.fullmatch(text) is not None

@@ -149,6 +149,27 @@ def test_a_point_overrides_drives_and_bands_word_by_word(whole: Spec) -> None:
     assert added.start == other.bands[3].start
 
 
+def test_every_point_keeps_its_own_overrides(tmp_path: Path) -> None:
+    points = "".join(
+        f"  p{i}: {{drives: {{count: {i}}}, error_bands: {{pitch: {{peak: {i} deg}}}}}}\n" for i in range(1, 200)
+    )
+    drives = "drives: {horizon: 1 s, every: 1 s, offsets: {pitch: 1}}\nerror_bands: {pitch: {peak: 1 deg}}\n"
+    spec = spec_of(tmp_path, SMALL + "operating_points:\n" + points + drives)
+    for i, point in enumerate(spec.points, 1):
+        assert point.drives[0].count == i
+        limit = point.bands[0].limit
+        assert limit is not None
+        assert limit.text == f"{i} deg"
+        told = {setting.word: setting.text for setting in point.settings}
+        assert (told["drives.count"], told["error_bands.pitch.peak"]) == (str(i), f"{i} deg")
+
+
+def test_what_the_user_wrote_is_printable_in_messages(tmp_path: Path) -> None:
+    (problem,) = told(tmp_path, SMALL + 'operating_points: {a: {hold: {"\\a\\e[31m": [1]}}}\n')
+    assert problem.isprintable()
+    assert "`hold: \\x07\\x1b[31m`: a list is no value for this word" in problem
+
+
 def test_cells_of_a_sweep_come_in_fixed_order_with_names_as_written(whole: Spec) -> None:
     cells = whole.points[1].cells
     combinations = [f"cruise-{speed}-{mass}" for speed in ("20kn", "30kn", "40kn") for mass in ("38t", "44t")]

@@ -14,7 +14,7 @@ from .families import Family, family
 from .nearest import nearest
 from .roots import Root, told_errors
 from .trim_result import Task, TrimResult, outcome_of
-from .trim_words import active_bounds, told_unknowns
+from .trim_words import active_bounds, numbered, told_unknowns
 
 TIE = 1e-6  # equilibria whose distances from `start` differ by less (in nominal sizes) are equally near
 
@@ -83,7 +83,7 @@ def accepted(task: Task, candidate: Candidate, others: tuple[OperatingPoint, ...
         worst_residual=size,
         errors=told_errors(system, candidate.root),
         active_bounds=active_bounds(system, point, task.envelope, task.nominal),
-        notes=tuple(f"another equilibrium: {told_unknowns(system, other)}" for other in others),
+        notes=(f"other equilibria: {numbered(system, others)}",) if others else (),
     )
 
 
@@ -114,9 +114,8 @@ def _comes_nearer(task: Task, candidate: Candidate, distance: float) -> bool:
 
 def _several(task: Task, candidates: list[Candidate]) -> TrimResult:
     points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
-    each = "; ".join(f"({i}) {told_unknowns(task.system, point)}" for i, point in enumerate(points, 1))
     why = "`start` is as near to one as to another" if _named(task) else "no `start` says which one is meant"
-    message = f"{len(candidates)} equilibria lie inside the envelope and {why}: {each}"
+    message = f"{len(candidates)} equilibria lie inside the envelope and {why}: {numbered(task.system, points)}"
     return TrimResult(Outcome.SEVERAL_TRIMS, others=points, message=message)
 
 

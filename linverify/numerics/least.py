@@ -17,7 +17,7 @@ from .roots import Root, noise
 from .starts import start_points
 from .stragglers import stragglers
 from .trim_result import Task, TrimResult
-from .trim_words import told_unknowns
+from .trim_words import numbered, told_unknowns
 
 DESCENTS = 6  # local minima are sought from so many different equilibria
 EQUAL = 1e-6  # relative difference of two least distances that cannot be told apart
@@ -77,7 +77,7 @@ def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:
 
 def _tie(task: Task, candidates: list[Candidate]) -> TrimResult:
     points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
-    each = "; ".join(f"({i}) {told_unknowns(task.system, point)}" for i, point in enumerate(points, 1))
+    each = numbered(task.system, points)
     return TrimResult(Outcome.NOT_UNIQUE, others=points, message=f"equally near to `start` in these weights: {each}")
 
 

@@ -18,6 +18,7 @@ from .equations import Equations
 
 STEP = 6e-6  # cube root of the machine precision: balances truncation and round-off of central differences
 LONGEST = 100.0  # a step is cut to so many times the distance from zero: further away its direction means little
+FINEST = 1e-18  # nominal sizes: a shorter step only chases a zero down to where numbers end
 HALVINGS = 12
 EDGE = 1e-12  # nearer to a bound than this (in nominal sizes) counts as on it
 NOTHING = 1e-100  # smaller slopes are none: their inverses would overflow
@@ -139,7 +140,8 @@ def _advance(system: Equations, z: Array, at: Array, low: Array, high: Array) ->
     weights = row_weights(slopes).T
     before = np.linalg.norm(weights * at, axis=0)
     moved, values, better = z.copy(), at.copy(), np.zeros(z.shape[1], dtype=bool)
-    trying, share = np.flatnonzero(usable & (longest > 0)), 1.0
+    ahead = np.any(np.abs(step) > FINEST + np.finfo(np.float64).eps * np.abs(z), axis=0)
+    trying, share = np.flatnonzero(usable & ahead), 1.0
     for _ in range(HALVINGS):
         if not trying.size:
             break

@@ -58,7 +58,7 @@ def _told(
         outcome, conclusive = Outcome.NOISY, False
         message = (
             f"the scaled residual {abs(short.worst_residual):.3g} that is left in {short.worst_equation} is the "
-            f"plant's own scatter; it cannot be trimmed to {task.ask.accuracy:.3g}"
+            f"plant's own noise; it cannot be trimmed to the accuracy {task.ask.accuracy:.3g}, ask for a larger one"
         )
     if point is None:
         return TrimResult(outcome, conclusive=False, nearest_holds=holds, message=message)

@@ -13,6 +13,8 @@ import numpy as np
 from ..core.model import Array
 from .equations import Equations
 from .newton import Ends, balanced, jacobian, largest, pseudo_inverse, shortest_step, step_sizes
+from .noise import Noise, measured_noise
+from .probe import Probe
 
 NEAR = 1e-3  # largest correction, in nominal sizes, that a point may still need and be called an equilibrium
 APART = 1e-6  # equilibria nearer to each other than this, in nominal sizes, are one
@@ -108,9 +110,20 @@ def _same(system: Equations, one: Root, other: Root, accuracy: float) -> bool:
     return bool(np.all(largest(between) <= accuracy))
 
 
+def roughness(system: Equations, z: Array) -> Noise:
+    """The plant's own noise in each equation at z (q,), on fine and on all scales; zero without unknowns."""
+    at = system.residual(z[:, np.newaxis])
+    if not z.size or not np.isfinite(at).all():
+        return Noise(np.zeros(at.shape[0]), np.zeros(at.shape[0]))
+    low, high = system.box
+    probe = Probe(system.residual, z, at[:, 0], np.ones(z.size), low, high)
+    return measured_noise(probe, np.zeros(at.shape[0]))
+
+
 def told_errors(system: Equations, root: Root) -> dict[str, float]:
     """Estimated error of the trimmed unknowns and of all outputs, in the plant's units."""
-    error = np.maximum(root.error, _flatness(system, root))
+    rough = 3.0 * roughness(system, root.z).fine
+    error = np.maximum(_steep_error(system, root, rough), _flatness(system, root, rough))
     errors = {name: float(error[i] * system.sizes[i]) for i, name in enumerate(system.unknowns)}
     plant, q = system.plant, root.z.size
     steps = np.maximum(error, 1e-7)  # what moves less than this is measured at this and scaled down
@@ -122,14 +135,24 @@ def told_errors(system: Equations, root: Root) -> dict[str, float]:
     return errors
 
 
-def _flatness(system: Equations, root: Root) -> Array:
+def _steep_error(system: Equations, root: Root, rough: Array) -> Array:
+    """Error (q,) that noise `rough` (r,) makes through the linearized equations; the root's own estimate at least."""
+    if not root.z.size:
+        return np.zeros(0)
+    z = root.z[:, np.newaxis]
+    slopes = np.nan_to_num(jacobian(system, z, system.residual(z)))
+    spread: Array = np.abs(pseudo_inverse(slopes))[0] @ rough
+    return np.maximum(root.error, spread) if not root.open_directions.size else root.error
+
+
+def _flatness(system: Equations, root: Root, rough: Array) -> Array:
     """How far each unknown can move (q,) before the residuals leave their round-off: what a flat root hides."""
     q, z = root.z.size, root.z[:, np.newaxis]
     if not q:
         return np.zeros(0)
     at = system.residual(z)
     slopes = np.nan_to_num(jacobian(system, z, at))
-    limit = 4.0 * (np.abs(at) + noise(system, z, at, slopes))
+    limit = 4.0 * (np.abs(at) + noise(system, z, at, slopes) + rough[:, np.newaxis])
     sizes = 10.0 ** np.arange(-9, -2)
     moves = np.concatenate([sizes, -sizes])
     columns = np.concatenate([z + np.eye(q) * move for move in moves], axis=1)

@@ -18,7 +18,7 @@ from ..core.model import Array, OperatingPoint
 from .equations import Equations, Slack, equations, outputs_outside, with_output_limits
 from .nearest import feasible_ends, nearest
 from .newton import Ends, bounded_step, jacobian, solve
-from .roots import noise, roots_among
+from .roots import roots_among, roughness
 from .starts import start_points
 
 GAIN = 1e-3  # share of |F|^2 that a move must gain to show that the search had not ended
@@ -50,29 +50,28 @@ def shortfall(system: Equations, ends: Ends, accuracy: float, base: Equations) -
         return Shortfall()
     best = int(np.argmin(ends.worst))
     z = ends.z[:, best]
-    conclusive, noisy = _judged(system, z)
+    rough = HIDDEN * roughness(system, z).coarse
+    noisy = bool(np.all(np.abs(ends.residual[:, best]) <= np.maximum(rough, accuracy)))
     row = int(np.argmax(np.abs(ends.residual[:, best])))
-    only = _let_go(system, row, ends, accuracy)
+    # with every other equation met to the accuracy, or to the noise where that is larger
+    only = None if noisy else _let_go(system, row, ends, max(accuracy, float(rough.max(initial=0.0))))
     left = float(ends.residual[row, best] if only is None else only[-1])
     closest = base.point((z if only is None else only)[: len(base.unknowns)])
-    return Shortfall(closest, system.names[row], left, only is not None, conclusive, noisy)
+    return Shortfall(closest, system.names[row], left, only is not None, _stuck(system, z), noisy)
 
 
-def _judged(system: Equations, z: Array) -> tuple[bool, bool]:
-    """Whether no move that the bounds allow makes |F| at z (q,) smaller; whether F there is mere scatter."""
+def _stuck(system: Equations, z: Array) -> bool:
+    """Whether no move that the bounds allow makes |F| at z (q,) smaller."""
     at = system.residual(z[:, np.newaxis])
     slopes = jacobian(system, z[:, np.newaxis], at)
     if not np.isfinite(slopes).all():
-        return False, False
-    scatter = noise(system, z[:, np.newaxis], at, slopes)
-    noisy = bool(np.all(np.abs(at) <= HIDDEN * scatter))
+        return False
     low, high = (side[:, np.newaxis] for side in system.box)
     tried = system.residual(np.clip(z[:, np.newaxis] + _moves(slopes, at, z, low, high), low, high))
     reached = np.sum(tried**2, axis=0)
     reached = reached[np.isfinite(reached)]
     # a system without unknowns cannot move at all
-    stuck = not z.size or bool(reached.size and reached.min() >= (1.0 - GAIN) * np.sum(at**2))
-    return stuck, noisy
+    return not z.size or bool(reached.size and reached.min() >= (1.0 - GAIN) * np.sum(at**2))
 
 
 def _moves(slopes: Array, at: Array, z: Array, low: Array, high: Array) -> Array:

@@ -14,11 +14,14 @@ FEWEST, PER_UNKNOWN, MOST = 16, 8, 64  # starts: more unknowns hide more equilib
 SPREAD = 3.0  # half of the starts of an unbounded unknown lie within so many nominal sizes of the first guess
 
 
-def start_points(system: Equations) -> Array:
-    """Starts (q, N) inside the box, the first guess first; slack unknowns start at the allowed value nearest zero."""
+def start_points(system: Equations, centre: Array | None = None) -> Array:
+    """Starts (q, N) inside the box, the first guess first; slack unknowns start at the allowed value nearest zero.
+
+    centre: z (q,) to spread around where sides are open, in place of the first guess.
+    """
     v = len(system.unknowns)
     low, high = system.low / system.sizes, system.high / system.sizes
-    guess = np.clip(_guess(system), low, high)
+    guess = np.clip(_guess(system) if centre is None else centre[:v], low, high)
     count = min(MOST, FEWEST + PER_UNKNOWN * v) if v else 1
     shares = halton(count - 1, v)
     spread = np.stack([_over(low[j], high[j], guess[j], shares[j]) for j in range(v)]) if v else np.zeros((0, 0))

@@ -13,6 +13,8 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import replace
 
+import numpy as np
+
 from ..core.bound import BoundPlant
 from ..core.case import Interval, TrimAsk
 from ..core.outcome import Outcome
@@ -52,6 +54,11 @@ def _searched(task: Task) -> TrimResult:
     starts = start_points(system)
     ends = solve(system, starts)
     found = roots_among(system, ends, accuracy)
+    if found.roots and not np.isfinite(system.box).all():
+        # on open sides the first guess may be far from where the plant lives; look again around what was found
+        starts = np.concatenate([starts, start_points(system, found.roots[0].z)], axis=1)
+        ends = joined(ends, solve(system, starts[:, ends.worst.size :]))
+        found = roots_among(system, ends, accuracy)
     if not found.roots:
         ends = joined(ends, stragglers(system, ends))
         found = roots_among(system, ends, accuracy)

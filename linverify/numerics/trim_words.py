@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Mapping, Sequence
 
 import numpy as np
 
@@ -12,6 +12,7 @@ from ..core.model import OperatingPoint
 from .equations import Equations, bounds
 
 ROUND_OFF = 1e-12  # nominal sizes
+LISTED = 4  # equilibria in one line; all of them stand in the record
 ON_LIMIT = 1e-6  # nominal sizes
 
 
@@ -39,6 +40,12 @@ def told_unknowns(system: Equations, point: OperatingPoint) -> str:
         value = point.value(name)
         words.append(told(system.plant, name, value if abs(value) > ROUND_OFF * size else 0.0))
     return ", ".join(words)
+
+
+def numbered(system: Equations, points: Sequence[OperatingPoint]) -> str:
+    """`(1) speed = 12.3 m/s; (2) speed = 15 m/s; and 3 more`."""
+    words = [f"({i}) {told_unknowns(system, point)}" for i, point in enumerate(points[:LISTED], 1)]
+    return "; ".join([*words, *([f"and {len(points) - LISTED} more"] if len(points) > LISTED else [])])
 
 
 def active_bounds(

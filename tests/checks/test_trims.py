@@ -151,7 +151,7 @@ def test_other_equilibria_are_listed():
         envelope={"speed": Interval(-8.0, 8.0)},
     )
     assert verdict.status is Status.PASS
-    assert verdict.notes == ("another equilibrium: speed = -5 m/s",)
+    assert verdict.notes == ("other equilibria: (1) speed = -5 m/s",)
     assert verdict.details["other_equilibria"] == [{"speed": pytest.approx(-5.0)}]
 
 

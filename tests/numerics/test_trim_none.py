@@ -114,7 +114,7 @@ def test_a_plant_in_single_precision_is_told_to_be_too_noisy_for_the_accuracy():
 
     result = trimmed(plant_of(single, "x"), "x", limits={"x": (0.1, 2.0)}, accuracy=1e-9)
     assert (result.outcome, result.conclusive) == (Outcome.NOISY, False)
-    assert "plant's own scatter" in result.message
+    assert "plant's own noise" in result.message
     assert trimmed(plant_of(single, "x"), "x", limits={"x": (0.1, 2.0)}, accuracy=1e-5).outcome is Outcome.DONE
 
 

@@ -18,7 +18,7 @@ def test_the_equilibrium_nearest_the_start_is_chosen_and_the_other_listed(start,
     result = trimmed(plant_of(_two, "x"), "x", start={"x": start})
     np.testing.assert_allclose(values(result), [chosen], rtol=1e-13)
     np.testing.assert_allclose([point.x[0] for point in result.others], [other], rtol=1e-13)
-    assert result.notes == (f"another equilibrium: x = {other:g}",)
+    assert result.notes == (f"other equilibria: (1) x = {other:g}",)
 
 
 def test_near_is_measured_in_nominal_sizes():

@@ -165,14 +165,14 @@ def test_the_ship_keeps_a_straight_course_with_a_little_rudder():
     assert found.status is Status.PASS
     values = trimmed("mariner", "straight")
     x, u = [values[name] for name in ("surge", "sway", "yaw_rate")], [values["rudder"]]
-    assert np.abs(mariner.dynamics(0.0, np.array(x), np.array(u), {})).max() < 1e-9
+    assert np.abs(mariner.dynamics(0.0, np.array(x), np.array(u), mariner.ship.defaults)).max() < 1e-9
     assert 0.0 < abs(values["rudder"]) < np.deg2rad(3.0)
 
 
 def test_the_ship_amidships_is_no_equilibrium_and_its_rates_become_the_drift():
     found = verdict("mariner", "amidships")
     assert found.status is Status.PASS
-    rates = mariner.dynamics(0.0, np.zeros(3), np.zeros(1), {})
+    rates = mariner.dynamics(0.0, np.zeros(3), np.zeros(1), mariner.ship.defaults)
     assert found.details["drift"]["sway"] == pytest.approx(rates[1], rel=1e-12)
     assert found.details["drift"]["yaw_rate"] == pytest.approx(rates[2], rel=1e-12)
 

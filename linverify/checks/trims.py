@@ -36,7 +36,7 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
         place=ask.place,
         reason=reason,
         figures=figures,
-        notes=(*result.notes, *_failed_calls(study, result)),
+        notes=(*result.notes, *_failed_calls(result)),
         details=_details(study, result),
     )
 
@@ -114,11 +114,10 @@ def _told(value: float, unit: str) -> str:
     return f"{value:.6g} {unit}".strip()
 
 
-def _failed_calls(study: Study, result: TrimResult) -> tuple[str, ...]:
+def _failed_calls(result: TrimResult) -> tuple[str, ...]:
     if not result.failed_calls:
         return ()
-    error = study.bound.last_error
-    first = f"; the first: {error}" if error is not None else ""
+    first = f"; the first: {result.first_failure}" if result.first_failure else ""
     return (f"{result.failed_calls} of {result.evaluations} calls of the plant failed during the search{first}",)
 
 

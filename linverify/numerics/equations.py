@@ -257,9 +257,7 @@ def with_output_limits(
     """
     plant, held = base.plant, held_outputs(base.plant, ask)
     watched = [
-        name
-        for name in plant.outputs.names
-        if name not in plant.states and name not in held and name in envelope
+        name for name in plant.outputs.names if name not in plant.states and name not in held and name in envelope
     ]
     outputs = {**held, **dict.fromkeys(watched, 0.0)}
     wide = equations(plant, ask, envelope, nominal, base.time, unknowns=unknowns, outputs=outputs)

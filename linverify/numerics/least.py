@@ -28,9 +28,7 @@ APART = 1e-3  # nominal sizes: nearer minima are one
 def least(task: Task) -> TrimResult:
     """The equilibrium of least distance; NOT_UNIQUE where a direction is left free or two are equally near."""
     system = task.system
-    wide = with_output_limits(
-        system, task.ask, task.envelope, task.nominal, unknowns=system.unknowns, loose=False
-    )
+    wide = with_output_limits(system, task.ask, task.envelope, task.nominal, unknowns=system.unknowns, loose=False)
     weights, target = _weights(task, wide)
     starts = np.concatenate([start_points(wide), target[:, np.newaxis]], axis=1)
     feasible = feasible_ends(wide, starts, weights, target, task.ask.accuracy, most=DESCENTS)
@@ -52,8 +50,7 @@ def _judged(task: Task, wide: Equations, ends: tuple[Nearest, ...]) -> TrimResul
     rivals = [
         end
         for end in ends[1:]
-        if end.distance - best.distance <= EQUAL * (best.distance + EQUAL)
-        and np.abs(end.z - best.z)[:v].max() > APART
+        if end.distance - best.distance <= EQUAL * (best.distance + EQUAL) and np.abs(end.z - best.z)[:v].max() > APART
     ]
     if rivals:
         return _tie(task, [candidate, *(candidate_at(task, _root(task.system, end.z[:v])) for end in rivals)])

@@ -33,9 +33,7 @@ class Nearest:
     settled: bool
 
 
-def nearest(
-    system: Equations, weights: Array, target: Array, feasible: Array, accuracy: float
-) -> tuple[Nearest, ...]:
+def nearest(system: Equations, weights: Array, target: Array, feasible: Array, accuracy: float) -> tuple[Nearest, ...]:
     """Local minima reached from the solutions `feasible` (q, N) of the equations, least distance first."""
     ends = [_descend(system, weights, target, z, accuracy) for z in feasible.T]
     return tuple(sorted(ends, key=lambda end: round(end.distance, 9)))
@@ -151,5 +149,3 @@ def feasible_ends(system: Equations, starts: Array, weights: Array, target: Arra
         if len(chosen) < most and not any(np.abs(z - other).max(initial=0.0) < 1e-3 for other in chosen):
             chosen.append(z)
     return np.stack(chosen, axis=1) if chosen else np.zeros((starts.shape[0], 0))
-
-

@@ -48,8 +48,7 @@ def halton(count: int, dimensions: int) -> Array:
 def _guess(system: Equations) -> Array:
     x, u, plant = system.base_x, system.base_u, system.plant
     values = [
-        x[plant.states.index(name)] if name in plant.states else u[plant.inputs.index(name)]
-        for name in system.unknowns
+        x[plant.states.index(name)] if name in plant.states else u[plant.inputs.index(name)] for name in system.unknowns
     ]
     return np.array(values) / system.sizes
 

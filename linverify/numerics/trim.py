@@ -46,7 +46,8 @@ def trim(
     if outside := _outside(task):
         return TrimResult(Outcome.NO_TRIM, conclusive=True, message=outside)
     result = least(task) if ask.minimize else _searched(task)
-    return replace(result, evaluations=system.tally.calls, failed_calls=system.tally.failed)
+    first = "" if plant.last_error is None else str(plant.last_error)
+    return replace(result, evaluations=system.tally.calls, failed_calls=system.tally.failed, first_failure=first)
 
 
 def _searched(task: Task) -> TrimResult:

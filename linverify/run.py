@@ -106,9 +106,9 @@ def find(paths: Sequence[Path]) -> tuple[Path, ...]:
     found: dict[Path, None] = {}
     for path in paths:
         if not path.exists():
-            raise SelectionError(f"{path}: no such file or folder")
+            raise SelectionError(f"{as_typed(path)}: no such file or folder")
         if path.is_file() and not is_spec(path):
-            raise SelectionError(f"{path}: is no spec; specs are .yaml files other than defaults.yaml")
+            raise SelectionError(f"{as_typed(path)}: is no spec; specs are .yaml files other than defaults.yaml")
         below = sorted(path.rglob("*.yaml")) if path.is_dir() else [path]
         found.update((one.resolve(), None) for one in below if is_spec(one))
     if not found:

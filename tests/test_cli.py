@@ -60,7 +60,7 @@ def test_check_writes_the_record_that_pytest_writes(project: Path) -> None:
     ours = json.loads((project / "here/linverify.json").read_text(encoding="utf-8"))
     theirs = _record(project)
     assert json.dumps(ours["body"]) == json.dumps(theirs["body"])
-    assert ours["provenance"]["sources"] == theirs["provenance"]["sources"]
+    assert ours["provenance"]["sha256"] == theirs["provenance"]["sha256"]
 
 
 def test_check_with_a_seed_and_the_quick_profile(project: Path, capsys: pytest.CaptureFixture[str]) -> None:

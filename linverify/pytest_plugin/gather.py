@@ -105,6 +105,7 @@ class Gather:
         self.verdicts: dict[str, str] = {}  # id -> JSON
         self.unread: list[str] = []  # specs with mistakes
         self.why: dict[str, str] = {}  # id -> why there is no verdict
+        self.announced: list[str] = []  # ids that look like ours, as workers told them before they ran
         self.stopped = ""  # why the run ended early, where pytest says so
         self.lines: list[str] = []
 
@@ -126,8 +127,7 @@ class Gather:
     @pytest.hookimpl(optionalhook=True)
     def pytest_xdist_node_collection_finished(self, node: Any, ids: Sequence[str]) -> None:
         """What a worker is going to run: known here even if no worker lives to hand its books over."""
-        known = set(self.ledger.selected)
-        self.ledger.selected.extend(name for name in ids if is_check(name) and name not in known)
+        self.announced = self.announced or [name for name in ids if is_check(name)]
 
     @pytest.hookimpl(optionalhook=True)
     def pytest_testnodedown(self, node: Any, error: object) -> None:
@@ -142,6 +142,7 @@ class Gather:
         if self.config.getoption("collectonly"):
             return
         self.stopped = str(session.shouldfail or session.shouldstop or "")
+        self.ledger.selected = self.ledger.selected or self.announced
         passed = self._conclude()
         if not passed and session.exitstatus in (pytest.ExitCode.OK, pytest.ExitCode.NO_TESTS_COLLECTED):
             nothing = not self.ledger.selected

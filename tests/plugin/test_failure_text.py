@@ -32,7 +32,7 @@ def test_a_broken_band_shows_the_drive_and_how_to_replay_it(project: Project) ->
     block = text[text.index("low: follows") :]
     assert re.search(r"required +peak error of level at most 0.01 m \(from specs/basin.yaml:\d+:\d+\)", block)
     assert re.search(r"found +0\.\d+ m .* on level at t = [\d.]+ s; headroom -\d+", block)
-    assert re.search(r"simplest drive +\S+.* inflow ", block)
+    assert re.search(r"simplest drive +inflow steps to -?0\.\d+ m/s at [\d.]+ s", block)
     assert re.search(
         r"replay +python -m linverify replay specs/basin.yaml::low::follows reports/evidence/[0-9a-f]{12}\.json", block
     )

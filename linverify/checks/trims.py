@@ -111,7 +111,7 @@ def _reason(study: Study, point: OperatingPoint, figures: tuple[Figure, ...]) ->
 
 
 def _told(value: float, unit: str) -> str:
-    return f"{value:.6g} {unit}".strip()
+    return f"{value:.6g} {'' if unit == '1' else unit}".strip()
 
 
 def _failed_calls(result: TrimResult) -> tuple[str, ...]:

@@ -12,13 +12,14 @@ import numpy as np
 
 from ..core.model import Array
 from .equations import Equations
-from .newton import Ends, balanced, jacobian, largest, pseudo_inverse, shortest_step, step_sizes
+from .newton import Ends, balanced, jacobian, joined, largest, pseudo_inverse, shortest_step, solve, step_sizes
 from .noise import Noise, measured_noise
 from .probe import Probe
 
 NEAR = 1e-3  # largest correction, in nominal sizes, that a point may still need and be called an equilibrium
 APART = 1e-6  # equilibria nearer to each other than this, in nominal sizes, are one
 SINGULAR = 1e-4  # balanced singular values below this share leave a direction open; a walk then decides
+SAME = 1e-7  # nominal sizes between ends that surely mean one solution
 JITTER = 1e-8  # a change, in nominal sizes, far above double and below single precision: shows the plant's own noise
 
 
@@ -47,14 +48,28 @@ def noise(system: Equations, z: Array, at: Array, slopes: Array) -> Array:
     """How far F (r, N) scatters about its tangent within +-4 JITTER of the columns of z (q, N); (r, N)."""
     if not z.shape[0]:
         return np.zeros_like(at)
-    scatter = np.zeros_like(at)
-    low, high = (side[:, np.newaxis] for side in system.box)
-    for turn in (-4, -3, -2, -1, 1, 2, 3, 4):
-        signs = np.where((np.arange(z.shape[0]) + turn) % 3 == 0, -1.0, 1.0)[:, np.newaxis]
-        moved = np.clip(z + turn * JITTER * signs * np.maximum(1.0, 1e-3 * np.abs(z)), low, high)
-        values = system.residual(moved) - at - np.einsum("krq,qk->rk", slopes, moved - z)
-        scatter = np.fmax(scatter, np.abs(values))
-    return scatter
+    (q, columns), turns = z.shape, np.array([-4, -3, -2, -1, 1, 2, 3, 4])
+    low, high = (side[:, np.newaxis, np.newaxis] for side in system.box)
+    signs = np.where((np.arange(q)[:, np.newaxis] + turns) % 3 == 0, -1.0, 1.0)
+    moves = JITTER * turns * signs
+    whole = z[:, np.newaxis, :]
+    moved = np.clip(whole + moves[:, :, np.newaxis] * np.maximum(1.0, 1e-3 * np.abs(whole)), low, high)
+    values = system.residual(moved.reshape(q, -1)).reshape(-1, turns.size, columns)
+    left = values - at[:, np.newaxis, :] - np.einsum("krq,qtk->rtk", slopes, moved - whole)
+    return np.nan_to_num(np.fmax.reduce(np.abs(left), axis=1))
+
+
+def search(system: Equations, starts: Array, accuracy: float) -> Ends:
+    """Ends of the search from all starts (q, N); of those that reach one solution one stays, taken to round-off."""
+    ends = solve(system, starts, goal=0.01 * accuracy)
+    passing = np.flatnonzero(ends.worst <= accuracy)
+    chosen: list[int] = []
+    for j in passing:
+        if not chosen or np.abs(ends.z[:, chosen] - ends.z[:, [j]]).max(axis=0, initial=0.0).min() > SAME:
+            chosen.append(int(j))
+    others = np.flatnonzero(ends.worst > accuracy)
+    left = Ends(ends.z[:, others], ends.residual[:, others], ends.worst[others])
+    return joined(solve(system, ends.z[:, chosen]), left) if chosen else left
 
 
 def roots_among(system: Equations, ends: Ends, accuracy: float) -> Found:
@@ -157,6 +172,7 @@ def _flatness(system: Equations, root: Root, rough: Array) -> Array:
     moves = np.concatenate([sizes, -sizes])
     columns = np.concatenate([z + np.eye(q) * move for move in moves], axis=1)
     low, high = (side[:, np.newaxis] for side in system.box)
-    values = system.residual(np.clip(columns, low, high))
-    hidden = np.all(np.abs(values) <= limit, axis=0).reshape(moves.size, q)
-    return np.max(np.where(hidden, np.abs(moves)[:, np.newaxis], 0.0), axis=0)
+    inside = np.clip(columns, low, high)
+    hidden = np.all(np.abs(system.residual(inside)) <= limit, axis=0)
+    far = np.abs(inside - z).max(axis=0)  # a root on a bound cannot hide beyond it
+    return np.max(np.where(hidden, far, 0.0).reshape(moves.size, q), axis=0)

@@ -23,7 +23,7 @@ from .comparison import Comparison
 BATCH = 64  # drives of the fixed batch, at least
 QUANTILE = 0.9
 LARGEST = 0.01  # error of a figure as a share of its band, in the end
-LEVELS = 4  # times that accuracy is raised
+LEVELS = 3  # times that accuracy is raised: to steps of an eighth and a tolerance of 1 / 32 768 of the first
 Flags = NDArray[np.bool_]
 
 
@@ -71,13 +71,17 @@ class Noise:
         return allowed
 
     def settled(self, start: Fidelity) -> tuple[Fidelity, bool]:
-        """The first fidelity, from `start` on, whose errors are small enough, and whether one was found at all."""
+        """The first fidelity, from `start` on, whose errors are small enough, and whether one was found at all.
+
+        Where none is found nothing can pass any more, and the cheapest is returned to look for failures with.
+        """
         fidelity = start
         for _ in range(LEVELS):
             if np.all(self.at(fidelity) <= self.allowed(fidelity)):
                 return fidelity, True
             fidelity = fidelity.finer()
-        return fidelity, bool(np.all(self.at(fidelity) <= self.allowed(fidelity)))
+        done = bool(np.all(self.at(fidelity) <= self.allowed(fidelity)))
+        return (fidelity, True) if done else (start, False)
 
 
 def within(comparison: Comparison, worst: Array, error: Array, allowed: Array) -> Flags:
@@ -123,13 +127,15 @@ class Examined:
         return np.where(self.quiet, 0.0, shares(self.worst, self.limit))
 
 
-def examine(comparison: Comparison, drive: Drive, fidelity: Fidelity, noise: Noise, row: int) -> Examined:
-    """The quoted figures of one drive; accuracy is raised a few times where `row` is not settled yet.
+def examine(
+    comparison: Comparison, drive: Drive, fidelity: Fidelity, noise: Noise, row: int, *, levels: int = LEVELS
+) -> Examined:
+    """The quoted figures of one drive; accuracy is raised up to `levels` times where `row` is not settled yet.
 
     A function of the drive and the row alone, so that a replay comes to the same figures.
     """
     found = at(comparison, drive, fidelity, noise)
-    for _ in range(LEVELS - 1):
+    for _ in range(levels):
         exact = found.error[row] <= noise.allowed(fidelity)[row]
         if not found.runs.outcomes[0].done or (found.states[row] is not State.UNCLEAR and exact):
             break

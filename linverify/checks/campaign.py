@@ -73,7 +73,7 @@ def campaign(comparison: Comparison, options: Options, pins: Sequence[Drive]) ->
     figures, still, wrong = comparison.figures(everything, fidelity)
     method = comparison.alone(everything[0], fidelity)[1].method
     found = Campaign(everything, tuple(kinds), figures, still, wrong, fidelity, noise, settled, method)
-    return _climbed(found, comparison, options, ROUNDS if drives.search else 0)
+    return _climbed(found, comparison, options, 0 if any(wrong) or not drives.search else ROUNDS)
 
 
 def _deterministic(comparison: Comparison) -> tuple[Drive, ...]:

@@ -16,7 +16,7 @@ from ..core.model import Array
 from ..core.verdict import Status
 from ..drives.shrink import shrunk
 from ..numerics.independent import run_independent
-from .accuracy import Examined, Flags, State, examine, within
+from .accuracy import LEVELS, Examined, Flags, State, examine, within
 from .bands import judged
 from .campaign import Campaign
 from .comparison import Comparison
@@ -94,7 +94,9 @@ def _word(
     queue = [first, *(column for column in order[1:] if column in doubtful)]
     open_reason, quoted = "", None
     for column in queue[:EXAMINED]:
-        one = examine(comparison, found.drives[column], found.fidelity, found.noise, row)
+        # once something stays open only a failure can change the word, and that shows without more accuracy
+        levels = 0 if open_reason or not found.settled else LEVELS
+        one = examine(comparison, found.drives[column], found.fidelity, found.noise, row, levels=levels)
         if quoted is None or one.share[row] > quoted.share[row]:
             quoted = one
         if one.states[row] is State.BAD:

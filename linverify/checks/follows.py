@@ -53,8 +53,9 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     run = campaign(compared, study.options, pins.drives)
     settled = words(compared, run)[: None if compared.exits else -1]
     _judge(study, compared, run, settled, found)
-    failed = any(word.status is Status.FAIL for word in settled)
-    seen = None if failed else _look(compared, run, found)
+    # a failure shows that the drives can see; where the plant breaks down the question does not arise
+    blind = any(word.status is Status.FAIL for word in settled) or any(run.wrong)
+    seen = None if blind else _look(compared, run, found)
     details = _details(study, compared, run, pins, seen)
     return _verdict(study, ask, found, settled, details)
 

@@ -63,6 +63,19 @@ class Equations:
     output_sizes: Array
     slacks: tuple[Slack, ...] = ()
     tally: Tally = field(default_factory=Tally)
+    box: tuple[Array, Array] = field(init=False)  # bounds of z, both (q,)
+    found_x: Indices = field(init=False)  # rows of the unknown states, then of the unknown inputs
+    found_u: Indices = field(init=False)
+
+    def __post_init__(self) -> None:
+        states, inputs = self.plant.states, self.plant.inputs
+        low = np.concatenate([self.low / self.sizes, [slack.low for slack in self.slacks]])
+        high = np.concatenate([self.high / self.sizes, [slack.high for slack in self.slacks]])
+        rows_x = [states.index(name) for name in self.unknowns if name in states]
+        rows_u = [inputs.index(name) for name in self.unknowns if name not in states]
+        object.__setattr__(self, "box", (low, high))
+        object.__setattr__(self, "found_x", np.array(rows_x, dtype=np.intp))
+        object.__setattr__(self, "found_u", np.array(rows_u, dtype=np.intp))
 
     @property
     def names(self) -> tuple[str, ...]:
@@ -80,13 +93,6 @@ class Equations:
         """Number of unknowns q, slacks included."""
         return len(self.unknowns) + len(self.slacks)
 
-    @property
-    def box(self) -> tuple[Array, Array]:
-        """Bounds of z, both (q,)."""
-        low = np.concatenate([self.low / self.sizes, [slack.low for slack in self.slacks]])
-        high = np.concatenate([self.high / self.sizes, [slack.high for slack in self.slacks]])
-        return low, high
-
     def values(self, z: Array) -> tuple[Array, Array]:
         """States (n,) or (n, N) and inputs (m,) or (m, N) that z (q,) or (q, N) stands for, inside their bounds."""
         v, tail = len(self.unknowns), (1,) * (z.ndim - 1)
@@ -95,11 +101,7 @@ class Equations:
         given = np.clip(given, self.low.reshape(-1, *tail), self.high.reshape(-1, *tail))
         x = np.repeat(self.base_x.reshape(-1, *tail), z.shape[1], axis=1) if tail else self.base_x.copy()
         u = np.repeat(self.base_u.reshape(-1, *tail), z.shape[1], axis=1) if tail else self.base_u.copy()
-        for row, name in enumerate(self.unknowns):
-            if name in self.plant.states:
-                x[self.plant.states.index(name)] = given[row]
-            else:
-                u[self.plant.inputs.index(name)] = given[row]
+        x[self.found_x], u[self.found_u] = given[: self.found_x.size], given[self.found_x.size :]
         return x, u
 
     def scaled(self, point: OperatingPoint) -> Array:

@@ -47,16 +47,22 @@ def _judged(task: Task, wide: Equations, ends: tuple[Nearest, ...]) -> TrimResul
     candidate = candidate_at(task, root)
     if best.flat.size:
         return _flat(task, best, candidate)
-    rivals = [
-        end
-        for end in ends[1:]
-        if end.distance - best.distance <= EQUAL * (best.distance + EQUAL) and np.abs(end.z - best.z)[:v].max() > APART
-    ]
+    rivals = _rivals(ends, v)
     if rivals:
         return _tie(task, [candidate, *(candidate_at(task, _root(task.system, end.z[:v])) for end in rivals)])
     if not best.settled:
         return TrimResult(Outcome.NOT_UNIQUE, message="the search for the least distance from `start` did not settle")
     return accepted(task, candidate, ())
+
+
+def _rivals(ends: tuple[Nearest, ...], v: int) -> list[Nearest]:
+    """Other places, apart in their `v` unknowns, that are as near as the first."""
+    different = [ends[0]]
+    for end in ends[1:]:
+        equal = end.distance - ends[0].distance <= EQUAL * (ends[0].distance + EQUAL)
+        if equal and all(np.abs(end.z - other.z)[:v].max() > APART for other in different):
+            different.append(end)
+    return different[1:]
 
 
 def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:

@@ -142,7 +142,8 @@ def told_errors(system: Equations, root: Root) -> dict[str, float]:
     errors = {name: float(error[i] * system.sizes[i]) for i, name in enumerate(system.unknowns)}
     plant, q = system.plant, root.z.size
     steps = np.maximum(error, 1e-7)  # what moves less than this is measured at this and scaled down
-    x, u = system.values(np.concatenate([root.z[:, np.newaxis], root.z[:, np.newaxis] + np.diag(steps)], axis=1))
+    inwards = np.where(root.z + steps <= system.box[1], steps, -steps)
+    x, u = system.values(root.z[:, np.newaxis] + np.concatenate([np.zeros((q, 1)), np.diag(inwards)], axis=1))
     outputs = plant.measure_or_nan(system.time, x, u)
     change = np.abs(outputs[:, 1:] - outputs[:, :1]) * (error / steps)[np.newaxis, :] if q else np.zeros((plant.k, 0))
     for i, name in enumerate(plant.outputs.names):
@@ -168,11 +169,12 @@ def _flatness(system: Equations, root: Root, rough: Array) -> Array:
     at = system.residual(z)
     slopes = np.nan_to_num(jacobian(system, z, at))
     limit = 4.0 * (np.abs(at) + noise(system, z, at, slopes) + rough[:, np.newaxis])
-    sizes = 10.0 ** np.arange(-9, -2)
+    sizes = 10.0 ** np.arange(-9.0, -2.0, 0.5)
     moves = np.concatenate([sizes, -sizes])
     columns = np.concatenate([z + np.eye(q) * move for move in moves], axis=1)
     low, high = (side[:, np.newaxis] for side in system.box)
     inside = np.clip(columns, low, high)
     hidden = np.all(np.abs(system.residual(inside)) <= limit, axis=0)
     far = np.abs(inside - z).max(axis=0)  # a root on a bound cannot hide beyond it
-    return np.max(np.where(hidden, far, 0.0).reshape(moves.size, q), axis=0)
+    # what is hidden at one size and shows at the next may be hidden up to there
+    return np.sqrt(10.0) * np.max(np.where(hidden, far, 0.0).reshape(moves.size, q), axis=0)

@@ -21,9 +21,9 @@ from ..core.outcome import Outcome
 from .choose import candidate_at, chosen, outputs_beyond
 from .equations import bounds, equations
 from .least import least
-from .newton import joined, solve
+from .newton import joined
 from .no_trim import none
-from .roots import roots_among
+from .roots import roots_among, search
 from .starts import start_points
 from .stragglers import stragglers
 from .trim_result import Task, TrimResult
@@ -53,20 +53,20 @@ def trim(
 def _searched(task: Task) -> TrimResult:
     system, accuracy = task.system, task.ask.accuracy
     starts = start_points(system)
-    ends = solve(system, starts)
+    ends, count = search(system, starts, accuracy), starts.shape[1]
     found = roots_among(system, ends, accuracy)
     if found.roots and not np.isfinite(system.box).all():
         # on open sides the first guess may be far from where the plant lives; look again around what was found
-        starts = np.concatenate([starts, start_points(system, found.roots[0].z)], axis=1)
-        ends = joined(ends, solve(system, starts[:, ends.worst.size :]))
-        found = roots_among(system, ends, accuracy)
+        more = start_points(system, found.roots[0].z)
+        ends = joined(ends, search(system, more, accuracy))
+        found, count = roots_among(system, ends, accuracy), count + more.shape[1]
     if not found.roots:
         ends = joined(ends, stragglers(system, ends))
         found = roots_among(system, ends, accuracy)
     candidates = [candidate_at(task, root) for root in found.roots]
     usable = [candidate for candidate in candidates if not outputs_beyond(task, candidate)]
     result = chosen(task, usable) if usable else none(task, ends, candidates, bool(found.fading))
-    return replace(result, starts=starts.shape[1])
+    return replace(result, starts=count)
 
 
 def _outside(task: Task) -> str:

@@ -18,6 +18,7 @@ if TYPE_CHECKING:
     from .plant_side import Followed
 
 ROUNDING = 1e-9  # of a limit's size: a drive or offset cut to the limit itself is no exit
+UNSEEN = 1e-3  # of a state's acceptable error: a trim that lies on a limit is not left by errors of integration
 TOUCHING = 1e-6  # of the way to a limit: a column that stops this near it (a root's argument runs out) has left there
 EVERYWHERE = Interval()
 Indices = NDArray[np.intp]
@@ -53,8 +54,9 @@ def _bounds(rig: Rig, names: Sequence[str]) -> tuple[Array, Array]:
     low, high = np.empty(len(names)), np.empty(len(names))
     for row, name in enumerate(names):
         interval, trimmed = rig.envelope.get(name, EVERYWHERE), abs(rig.point.value(name))
-        low[row] = interval.low - ROUNDING * max(abs(interval.low), trimmed)
-        high[row] = interval.high + ROUNDING * max(abs(interval.high), trimmed)
+        weight = rig.weights[rig.plant.states.index(name)] if name in rig.plant.states else 0.0
+        low[row] = interval.low - ROUNDING * max(abs(interval.low), trimmed) - UNSEEN * weight
+        high[row] = interval.high + ROUNDING * max(abs(interval.high), trimmed) + UNSEEN * weight
     return low, high
 
 

@@ -22,8 +22,9 @@ from .rig import Exit, Fidelity, Rig, Runs
 
 TIGHTER = 100.0
 RELATIVE = 3e-14  # as small as scipy takes without raising it: the absolute tolerances rule
-DEARER = 10  # times the evaluations that the run to be confirmed may take
+DEARER = 10  # times the calls that the run to be confirmed may take
 LEAST_STEPS = 3  # an interval; unlike the first run's, so that both do not step over a corner alike
+FIRST_STEP = 30  # an interval; scipy's own guess never ends where it meets NaN
 
 
 class _SpentError(Exception):
@@ -54,12 +55,13 @@ class _Second:
     outcome: Outcome = Outcome.DONE
     text: str = ""
     ended: float = float("nan")
+    calls: int = 0
     budget: int = 0
 
     def go(self) -> None:
         """Both sides, interval by interval."""
         readout = self.readout
-        self.budget = readout.rig.plant.evaluations + DEARER * readout.rig.evaluations
+        self.budget = DEARER * readout.rig.evaluations
         self.starts = model_course(readout)
         interval = self._continuous if readout.rig.plant.step is None else self._discrete
         x = readout.rig.point.x + readout.offset()
@@ -120,6 +122,7 @@ class _Second:
         rig, every = self.readout.rig, self.readout.drive.every
         atol = np.maximum(rig.weights * self.fidelity.tolerance / TIGHTER, 1e-15 * np.abs(rig.point.x))
         rates = self._rates(k, begin)
+        rig.plant.rates(rig.point.time + begin, x, rig.point.u + self.readout.inputs(k, 0.0))  # raises where it fails
         rooms = [self._room(k, begin, limit) for limit in self.readout.limits]
         return solve_ivp(
             lambda s, x: rates(float(s), x),
@@ -130,6 +133,7 @@ class _Second:
             rtol=RELATIVE,
             atol=atol,
             events=rooms,
+            first_step=every / FIRST_STEP,
             max_step=every / LEAST_STEPS,
         )
 
@@ -137,7 +141,8 @@ class _Second:
         rig, every = self.readout.rig, self.readout.drive.every
 
         def rates(s: float, x: Array) -> Array:
-            if rig.plant.evaluations > self.budget:
+            self.calls += 1
+            if self.calls > self.budget:
                 raise _SpentError("more plant evaluations were needed than the budget allows")
             u = rig.point.u + self.readout.inputs(k, s / every)
             return rig.plant.rates_or_nan(rig.point.time + begin + s, x, u)

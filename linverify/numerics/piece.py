@@ -9,6 +9,7 @@ import numpy as np
 from ..core.bound import BoundPlant
 from ..core.model import Array
 from ..core.outcome import Outcome
+from ..core.signals import Signals
 
 
 @dataclass(slots=True, eq=False)
@@ -64,19 +65,18 @@ class Piece:
         error, plant.last_error = plant.last_error, kept
         plant.last_error = kept or error
         if error is None:
-            return Outcome.NOT_FINITE, self._domain_text()
+            domain = self.plant.plant.domain
+            limited = [name for name in self.plant.states.names if name in domain]
+            if limited:
+                return Outcome.NOT_FINITE, f"the states leave the plant's domain ({', '.join(limited)})"
+            return Outcome.DIVERGED, "the states overflow"
         # the border chains the plant's own exception, and nothing to what it found wrong in an answer
         return (Outcome.PLANT_RAISED if error.__cause__ is not None else Outcome.NOT_FINITE), str(error)
 
-    def _domain_text(self) -> str:
-        domain = self.plant.plant.domain
-        limited = [name for name in self.plant.states.names if name in domain]
-        return f"the states leave the plant's domain ({', '.join(limited)})" if limited else "the states overflow"
 
-
-def domain_of(plant: BoundPlant) -> tuple[Array, Array]:
-    """Lower and upper ends of the plant's domain for its states, (n, 1) each."""
-    bounds = [plant.plant.domain.get(name, (None, None)) for name in plant.states.names]
+def domain_of(plant: BoundPlant, signals: Signals) -> tuple[Array, Array]:
+    """Lower and upper ends of the plant's domain for its states or inputs, (len(signals), 1) each."""
+    bounds = [plant.plant.domain.get(name, (None, None)) for name in signals.names]
     low = [-np.inf if low is None else low for low, _ in bounds]
     high = [np.inf if high is None else high for _, high in bounds]
     return np.array(low, dtype=np.float64)[:, np.newaxis], np.array(high, dtype=np.float64)[:, np.newaxis]

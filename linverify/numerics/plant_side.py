@@ -20,7 +20,9 @@ from .piece import Piece, domain_of
 from .rig import Fidelity, Rig
 from .stiff import Rosenbrock
 
+ROUNDING = 1e-15  # of a state: smallest local error that a step can be held to
 SHORTEST = 1e-12  # of an interval; a shorter step cannot be told from standing still
+CUT = 1e-9  # of a domain's ends: an input that is cut to its limit may be off by rounding
 SLOW = "more steps an interval were needed than the budget of {} allows"
 SPENT = "more plant evaluations were needed than the budget of {} a drive allows"
 
@@ -46,8 +48,18 @@ class Followed:
 
 
 def follow(rig: Rig, drives: Courses, names: Sequence[str], times: Array, fidelity: Fidelity) -> Followed:
-    """Simulate the plant along `drives`, and read the states and outputs called `names` at `times` (K, S + 1)."""
-    return _Way(rig, drives, tuple(names), times, fidelity).went()
+    """Simulate the plant along `drives`, and read the states and outputs called `names` at `times` (K, S + 1).
+
+    A point may be stiff only away from trim, or its local model may not know a fast pole: where the explicit pair runs
+    out of steps, the implicit method has a try.
+    """
+    stiff = rig.stiff(drives.every)
+    result = _Way(rig, drives, tuple(names), times, fidelity, stiff).went()
+    if not stiff and rig.plant.step is None and Outcome.TOO_MANY_STEPS in result.outcomes:
+        again = _Way(rig, drives, tuple(names), times, fidelity, True).went()
+        again.evaluations += result.evaluations
+        return again
+    return result
 
 
 @dataclass(slots=True, eq=False)
@@ -59,6 +71,7 @@ class _Way:
     names: tuple[str, ...]
     times: Array
     fidelity: Fidelity
+    stiff: bool
     limits: Limits = field(init=False)
     piece: Piece = field(init=False)
     batch: Batch = field(init=False)
@@ -67,9 +80,9 @@ class _Way:
 
     def __post_init__(self) -> None:
         rig, width = self.rig, self.drives.width
-        low, high = domain_of(rig.plant)
+        low, high = domain_of(rig.plant, rig.plant.states)
         self.limits = limits_of(rig, self.names)
-        self.method = Rosenbrock(rig.weights, high) if rig.stiff(self.drives.every) else DormandPrince()
+        self.method = Rosenbrock(rig.weights, high) if self.stiff else DormandPrince()
         self.piece = Piece(rig.plant, rig.point.time, np.zeros((rig.plant.m, width)), None, low, high)
         x = rig.point.x[:, np.newaxis] + self.drives.offsets
         step = self.drives.every * self.fidelity.longest
@@ -132,12 +145,32 @@ class _Way:
         piece.t = point.time + self._ticks(self.batch.begun)
         piece.u = point.u[:, np.newaxis] + drives.start[:, k]
         piece.slope = None if drives.held else (drives.end[:, k] - drives.start[:, k]) / drives.every
+        self._outside(k)
         self._rest(~self.batch.active)
+
+    def _outside(self, k: int) -> None:
+        """Stop the drives whose inputs leave the plant's domain in interval k."""
+        low, high = domain_of(self.rig.plant, self.rig.plant.inputs)
+        if np.isinf(low).all() and np.isinf(high).all():
+            return
+        u = self.rig.point.u[:, np.newaxis]
+        ends = u[:, np.newaxis] + np.stack([self.drives.start[:, k], self.drives.end[:, k]], 1)
+        low, high = (end + side * CUT * np.maximum(np.abs(u), np.abs(end)) for end, side in ((low, -1), (high, 1)))
+        over = (ends < low[:, np.newaxis]) | (ends > high[:, np.newaxis])
+        beyond: Mask = np.asarray(over.any(axis=1))
+        bad: Mask = np.asarray(self.batch.active & beyond.any(axis=0))
+        for column in np.flatnonzero(bad):
+            name = self.rig.plant.inputs.names[int(np.argmax(beyond[:, column]))]
+            text = f"the drive moves {name} out of the plant's domain"
+            self._note(int(column), self.batch.begun, Outcome.NOT_FINITE, text)
+        if bad.any():
+            self.batch.stop(bad, 0.0)
 
     def _differential(self) -> Array:
         every = self.drives.every
-        scale = self.fidelity.tolerance * self.rig.weights[:, np.newaxis]
-        demand = Demand(scale, every * self.fidelity.longest, every * SHORTEST, self.rig.attempts)
+        # below rounding no step is short enough; the halved grid tells what that costs
+        scale = np.maximum(self.fidelity.tolerance * self.rig.weights, ROUNDING * np.abs(self.rig.point.x))
+        demand = Demand(scale[:, np.newaxis], every * self.fidelity.longest, every * SHORTEST, self.rig.attempts)
         return advance(self.method, self.piece.rates, self.batch, every, self.times.shape[1] - 1, demand)
 
     def _difference(self, k: int) -> Array:
@@ -185,11 +218,14 @@ class _Way:
 
     def _unreadable(self, k: int, out: Array, values: Array) -> None:
         """Fail columns whose outputs are not finite where their states are."""
-        blind: Mask = np.asarray(np.isfinite(out).all(axis=0) & ~np.isfinite(values).all(axis=0))
+        seen = self.result.deviations[:, k]
+        blind: Mask = np.asarray(np.isfinite(out).all(axis=0) & ~np.isfinite(seen).all(axis=0))
         for column in np.flatnonzero(blind.any(axis=0)):
             j = int(np.argmax(blind[:, column]))
             alone = out[:, j, [column]]
             outcome, text = self.piece.why(lambda j=j, alone=alone, c=column: self._measure_one(k, j, alone, c))
+            if np.isfinite(values[:, j, column]).all():
+                outcome, text = Outcome.NOT_FINITE, "the outputs on the trimmed course itself are not finite"
             self._note(int(column), float(self.times[k, j]), outcome, text)
         stop = self.batch.active & blind.any(axis=0)
         if stop.any():

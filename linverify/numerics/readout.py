@@ -14,6 +14,7 @@ from .rig import Rig
 
 Side = Literal["low", "high"]
 SLACK = 1e-9  # of a limit's size: what lies on the limit is inside
+UNSEEN = 1e-3  # of a state's acceptable error: what integration may be off
 
 
 @dataclass(frozen=True, slots=True)
@@ -39,6 +40,7 @@ class Readout:
     nodes: int
     names: tuple[str, ...] = field(init=False)
     limits: tuple[Limit, ...] = field(init=False)
+    exponentials: dict[float, Array] = field(default_factory=dict)
 
     def __post_init__(self) -> None:
         rig, plant = self.rig, self.rig.plant
@@ -51,9 +53,10 @@ class Readout:
                 ("low", rig.envelope[name].low),
                 ("high", rig.envelope[name].high),
             )
+            weight = rig.weights[plant.states.index(name)] if name in plant.states else 0.0
             for side, limit in sides:
                 if np.isfinite(limit):
-                    limits.append(Limit(row, side, limit, SLACK * max(abs(limit), trimmed)))
+                    limits.append(Limit(row, side, limit, SLACK * max(abs(limit), trimmed) + UNSEEN * weight))
         self.limits = tuple(limits)
 
     def time(self, k: int, j: int) -> float:
@@ -144,9 +147,11 @@ def model_after(readout: Readout, x: Array, k: int, local: float) -> Array:
     start, end = readout.inputs(k, 0.0), readout.inputs(k, 1.0)
     if readout.drive.course == "held":
         end = start
-    generator = np.zeros((n + 2 * m, n + 2 * m))
-    generator[:n, :n], generator[:n, n : n + m] = model.A, model.B
-    generator[n : n + m, n + m :] = np.eye(m)
+    if local not in readout.exponentials:
+        generator = np.zeros((n + 2 * m, n + 2 * m))
+        generator[:n, :n], generator[:n, n : n + m] = model.A, model.B
+        generator[n : n + m, n + m :] = np.eye(m)
+        readout.exponentials[local] = np.asarray(expm(generator * local), dtype=np.float64)[:n]
     vector = np.concatenate([x, start, (end - start) / every])
-    carried: Array = (np.asarray(expm(generator * local), dtype=np.float64) @ vector)[:n]
+    carried: Array = readout.exponentials[local] @ vector
     return carried

@@ -73,7 +73,7 @@ class Fidelity:
             raise ValueError(f"a run needs at least 4 nodes and a positive tolerance, got {self}")
 
     def finer(self) -> Fidelity:
-        """The halved grid: twice the nodes and, by that and by a tolerance 32 times smaller, at most half of each step.
+        """The halved grid: twice the nodes, half the longest step, and a tolerance that halves each shorter one.
 
         The difference of a figure between both runs holds the integration error and that of peaks between samples. A
         smaller tolerance on the same grid would be blind where both runs take one step an interval.

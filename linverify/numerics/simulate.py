@@ -23,7 +23,8 @@ from .rig import Exit, Fidelity, Rig, Runs
 __all__ = ["Exit", "Fidelity", "Rig", "Runs", "nodes_of", "run", "run_alone", "watched"]
 
 WIDTHS = (8, 64, 256)  # below 64 columns a vectorised plant costs what one costs; above 256 little is gained
-ALONE = 8  # canonical runs: wide enough for the plant's batched path, narrow enough to cost what one column costs
+ALONE = 2  # canonical runs: wide enough for the plant's batched path, narrow enough to cost what one column costs
+SAMPLES = 20_000_000  # numbers of one signal array of a batch; longer drives are taken in narrower batches
 SINGLE = 16  # plants without a batched path share steps in small groups, since the worst column slows all
 
 
@@ -34,7 +35,9 @@ def run(rig: Rig, drives: Sequence[Drive], fidelity: Fidelity) -> Runs:
     tolerance from those of `run_alone`.
     """
     stacked = courses(drives, rig.plant.inputs, rig.plant.states)
-    widest = WIDTHS[-1] if rig.plant.batched else SINGLE
+    each = len(watched(rig)) * stacked.intervals * (nodes_of(rig, stacked.every, fidelity) + 1)
+    widths = WIDTHS if rig.plant.batched else (SINGLE,)
+    widest = max((width for width in widths if width * each <= SAMPLES), default=widths[0])
     parts = [stacked.part(first, first + widest) for first in range(0, stacked.width, widest)]
     return _joined([_simulated(rig, part, _width(rig, part.width), fidelity) for part in parts])
 

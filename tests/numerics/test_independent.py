@@ -133,6 +133,20 @@ def test_short_pulse_is_not_missed() -> None:
     assert second.ended[0] == pytest.approx(1.0)
 
 
+def test_a_jump_into_where_the_plant_has_no_numbers_is_told() -> None:
+    def dynamics(t: float, x: Any, u: Any, p: Any) -> Any:
+        return np.stack([np.sqrt(1.0 + u[0]) - x[0]])
+
+    plant = Plant(states={"x": "1"}, inputs={"u": "1"}, dynamics=dynamics)
+    kind = settled(plant, np.array([1.0]), np.zeros(1), 0.5, [0.5], [0.5])
+    drive = Drive(0.5, ("u",), np.array([[0.1], [-1.5], [0.1]]))
+    first, second = run_alone(rig_of(kind), drive, FIDELITY), run_independent(rig_of(kind), drive, FIDELITY)
+    for runs in (first, second):
+        assert runs.outcomes == (Outcome.NOT_FINITE,)
+        assert "returned nan for x" in runs.errors[0]
+        assert runs.ended.tolist() == [0.5]
+
+
 def test_budget() -> None:
     kind = KINDS["pend"]()
     second = run_independent(rig_of(kind, evaluations=20), kind.drives(1, 100)[0], FIDELITY)

@@ -15,6 +15,7 @@ from linverify.core.drive import Drive
 from linverify.core.model import LocalModel, OperatingPoint
 from linverify.core.outcome import Outcome
 from linverify.core.plant import Plant
+from linverify.numerics import simulate
 from linverify.numerics.simulate import Fidelity, Rig, Runs, run, run_alone
 
 FINE = Fidelity(4, 1e-4)
@@ -344,6 +345,36 @@ def test_leaving_the_domain_inside_the_envelope_is_an_outcome() -> None:
     assert runs.ended[0] == pytest.approx(-0.5 * math.log(1 - 0.4), abs=1e-3)
 
 
+def test_inputs_outside_the_plants_domain_are_an_outcome() -> None:
+    rig = rig_of(lag(domain={"u": (0.0, 1.0)}), [[-2]], [[1]], u=[0.5], x=[0.25])
+    runs = run(rig, [drive([0.5, -0.5, 0.0]), drive([0.1, 0.6, 0.0]), drive([0.1, -0.6, 0.0], course="held")], FINE)
+    assert runs.outcomes == (Outcome.DONE, Outcome.NOT_FINITE, Outcome.NOT_FINITE)
+    assert runs.errors[1] == "the drive moves u out of the plant's domain"
+    assert runs.ended.tolist() == [1.5, 0.5, 0.5]
+
+
+def test_states_that_overflow_are_an_outcome() -> None:
+    rig = rig_of(plain(lambda t, x, u: [x[0] ** 2 + u[0]]), [[0]], [[1]])
+    runs = run(rig, [drive([40.0] * 4), drive([0.1] * 4)], FINE)
+    assert runs.outcomes[0] in (Outcome.DIVERGED, Outcome.NOT_FINITE, Outcome.TOO_MANY_STEPS)
+    assert runs.errors[0]
+    assert runs.ended[0] == pytest.approx(math.pi / 2 / math.sqrt(40.0), rel=1e-2)
+    assert runs.outcomes[1] is Outcome.DONE
+
+
+def test_a_drifting_course_that_cannot_be_read_is_an_outcome() -> None:
+    plant = plain(
+        lambda t, x, u: [1.0 + u[0] + 0 * x[0]],
+        outputs={"y": "1"},
+        measurement=lambda t, x, u, p: np.stack([np.sqrt(1.2 - x[0])]),
+    )
+    rig = rig_of(plant, [[0]], [[1]], C=[[-0.5]], drift=[1], signals=("y",))
+    runs = run_alone(rig, drive([-0.5] * 4), FINE)
+    assert runs.outcomes == (Outcome.NOT_FINITE,)
+    assert "trimmed course itself" in runs.errors[0]
+    assert 1.2 <= runs.ended[0] <= 1.5
+
+
 def test_an_exception_is_told_with_the_arguments_it_came_with() -> None:
     def dynamics(t: float, x: Any, u: Any, p: Any) -> Any:
         if np.any(x[0] > 0.3):
@@ -463,6 +494,41 @@ def test_stiff_points_are_integrated_implicitly_by_a_rule_that_looks_at_the_poin
     assert runs.method == "Rosenbrock 4(3)"
     assert runs.plant[0, -1, -1, 0] == pytest.approx(0.5, abs=2e-5)
     assert runs.evaluations < 8 * 3000
+
+
+def test_a_plant_that_turns_stiff_away_from_trim_is_followed_implicitly() -> None:
+    plant = plain(lambda t, x, u: [-x[0] - 1e6 * np.maximum(x[0] - 0.1, 0.0) + u[0]])
+    rig = rig_of(plant, [[-1]], [[1]], attempts=300)
+    runs = run(rig, [drive([1.0] * 4), drive([0.05] * 4)], FINE)
+    assert runs.method == "Rosenbrock 4(3)"
+    assert runs.outcomes == (Outcome.DONE, Outcome.DONE)
+    assert runs.plant[0, -1, -1, 0] == pytest.approx(0.1, abs=1e-5)
+    assert runs.plant[0, :, :, 1] == pytest.approx(0.05 * (1 - np.exp(-runs.times)), abs=1e-6)
+
+
+def test_a_trim_on_a_limit_is_not_left_by_rounding() -> None:
+    plant = plain(lambda t, x, u: [-2.0 * (x[0] - 0.3) + u[0] * 0.0])
+    rig = rig_of(plant, [[-2]], [[0]], x=[0.3 + 1e-8], envelope={"x": Interval(0.3 + 2e-8, 1.0)})
+    assert run_alone(rig, drive([0.0] * 4), FINE).exits == (None,)
+
+
+def test_weights_below_rounding_end_in_noise_not_in_a_stall() -> None:
+    plant = plain(lambda t, x, u: [-2.0 * (x[0] - 1e6) + u[0]])
+    rig = rig_of(plant, [[-2]], [[1]], x=[1e6], weights=[1e-12])
+    runs = run_alone(rig, drive([1.0] * 2), FINE)
+    assert runs.outcomes == (Outcome.DONE,)
+    assert np.abs(runs.error).max() < 1e-7
+
+
+def test_long_drives_are_taken_in_narrower_batches(monkeypatch: pytest.MonkeyPatch) -> None:
+    rig = rig_of(lag(), [[-2]], [[1]])
+    drives = [drive([0.01 * index] * 3) for index in range(40)]
+    whole = run(rig, drives, FINE)
+    monkeypatch.setattr(simulate, "SAMPLES", 200)
+    parts = run(rig, drives, FINE)
+    assert parts.evaluations != whole.evaluations
+    assert parts.model == pytest.approx(whole.model, abs=1e-15)
+    assert parts.plant == pytest.approx(whole.plant, abs=1e-6)
 
 
 def test_what_does_not_fit_together_is_refused() -> None:

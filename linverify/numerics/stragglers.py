@@ -66,10 +66,10 @@ def _squeezed(system: Equations, z: Array, usable: Array) -> Array:
             bounds=(low[usable], high[usable]),
             method="trf",
             x_scale=1.0,
-            ftol=1e-15,
-            xtol=1e-15,
-            gtol=1e-15,
-            max_nfev=200,
+            ftol=1e-10,  # Newton steps follow; this only has to come near
+            xtol=1e-10,
+            gtol=1e-12,
+            max_nfev=100,
         )
     except ValueError:
         return z  # the search moved to where the plant cannot be called at all

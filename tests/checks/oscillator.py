@@ -35,7 +35,7 @@ OSCILLATOR = Plant(
     dynamics=dynamics,
     measurement=lambda t, x, u, p: np.stack([1.0 * x[0]]),
 )
-DRIVES = DriveSet("", 0.1, 40, {"f": Amplitude(-1.0, 1.0)}, count=80, search=30)
+DRIVES = DriveSet("", 0.1, 40, {"f": Amplitude(-1.0, 1.0)}, count=40, search=10)
 
 
 def case(*bands: Band, plant: Plant = OSCILLATOR, drives: DriveSet = DRIVES, **changes: Any) -> Case:

@@ -37,7 +37,7 @@ def test_the_right_model_passes_every_band() -> None:
     for figure in found.figures:
         assert figure.worst + figure.error <= 0.01 * figure.limit
     assert found.details["statistics"]["broken"] == 0
-    assert found.details["statistics"]["random"] == 80
+    assert found.details["statistics"]["random"] == 40
     assert found.details["completed"] == 1.0
 
 
@@ -51,10 +51,11 @@ FAULTS = {
 }
 
 
-@pytest.mark.parametrize("fault", FAULTS)
-@pytest.mark.parametrize(
-    "band", [PEAK, Band("y", "rms", 0.01), Band("y", "relative", fraction=0.05)], ids=lambda b: b.kind
-)
+OTHERS = (Band("y", "rms", 0.01), Band("y", "relative", fraction=0.05))
+PAIRS = [*((fault, PEAK) for fault in FAULTS), *(("gain", band) for band in OTHERS), ("missing state", OTHERS[1])]
+
+
+@pytest.mark.parametrize("fault, band", PAIRS, ids=[f"{fault}-{band.kind}" for fault, band in PAIRS])
 def test_a_wrong_model_fails(fault: str, band: Band) -> None:
     found = verdict(case(band), FAULTS[fault])
     assert found.status is Status.FAIL
@@ -109,7 +110,7 @@ def _largest_difference(w: float) -> float:
 @pytest.mark.parametrize("kind", ["relative", "wider_of"])
 def test_a_gain_error_is_its_own_relative_error(kind: str) -> None:
     for fraction, status in ((0.102, Status.PASS), (0.098, Status.FAIL)):
-        limit = np.nan if kind == "relative" else 1e-6
+        limit = np.nan if kind == "relative" else 0.005
         found = verdict(case(Band("y", kind, limit, fraction)), model(gain=1.1))  # type: ignore[arg-type]
         assert found.status is status
         if kind == "relative":
@@ -213,7 +214,7 @@ def test_the_smallest_visible_gain_error_is_the_band_over_the_largest_response()
 
 def test_a_quick_profile_says_so_and_draws_less() -> None:
     found = verdict(case(PEAK), options=Options(profile="quick"))
-    assert found.details["drives"]["random"] == 16
+    assert found.details["drives"]["random"] == 8
     assert "quick profile: not for acceptance" in found.notes
 
 
@@ -223,7 +224,7 @@ def test_cut_amplitudes_are_told() -> None:
 
 
 def test_the_same_inputs_give_the_same_bytes() -> None:
-    one = case(*RIGHT_BANDS[:3], parameters={"bend": 0.3})
+    one = case(*RIGHT_BANDS[:2], parameters={"bend": 0.3})
     first, second = verdict(one), verdict(one)
     assert record.dumps(first) == record.dumps(second)
     other = verdict(one, options=Options(seed=1))
@@ -236,4 +237,4 @@ def test_a_family_asks_for_more_confidence() -> None:
     assert alone["confidence"] == 0.95
     assert many["confidence"] == pytest.approx(0.995)
     assert many["bound"] > alone["bound"]
-    assert alone["bound"] == pytest.approx(1 - 0.05 ** (1 / 80))  # closed form for no event
+    assert alone["bound"] == pytest.approx(1 - 0.05 ** (1 / 40))  # closed form for no event

@@ -111,7 +111,7 @@ def _slopes(probe: Probe, floors: Array) -> Slopes:
     scales = _scales(probe, estimate, quotients, floors)
     if done:
         found = corners(probe, scales[:, np.newaxis] / probe.sizes, noise.coarse)
-        gaps = (*found.findings, *steep_ends(quotients, noise.fine, probe.sizes, scales, found.findings))
+        gaps = (*found.findings, *steep_ends(quotients, noise.coarse, probe.sizes, scales, found.findings))
         lost = lost | found.lost.any(axis=0)
         hidden = np.minimum(found.hidden, _largest_possible(quotients, noise.coarse, probe.sizes))
         # what rounding alone may hide is no finding: every constant row would have it
@@ -143,8 +143,8 @@ def _estimate(quotients: Quotients, noise: Noise, way: Indices) -> _Estimate:
     for (slope, error), (other, other_error) in zip(fine, coarse, strict=True):
         apart = np.abs(slope - other)
         consistent = ~doubtful | (apart <= error + other_error)
-        believed = np.where(consistent, slope, other)
-        sides.append((believed, np.where(consistent, error, other_error) + np.where(doubtful, apart, 0.0)))
+        # inconsistent: short steps see the plant's noise (an inner solver's last digits), long ones its course
+        sides.append((np.where(consistent, slope, other), np.where(consistent, error + doubtful * apart, other_error)))
     (middle, middle_error), (right, right_error), (left, left_error) = sides
     jacobian = np.where(way == 0, middle, np.where(way > 0, right, left))
     error = np.where(way == 0, middle_error, np.where(way > 0, right_error, left_error))
@@ -181,7 +181,7 @@ def _largest_possible(quotients: Quotients, noise: Array, sizes: Array) -> Array
     A corner nearer than a quarter of a step shows with three quarters of its gap or more at that step.
     """
     _, side_floor = quotients.floors(noise)
-    gap = np.abs(quotients.forward - quotients.backward) + 4.0 * side_floor
+    gap = np.abs(quotients.forward - quotients.backward) + 6.0 * side_floor
     far_enough = quotients.steps >= 4e-4 * sizes
     bound = np.where(far_enough[:, np.newaxis, :] & np.isfinite(gap), gap / 0.75, np.inf)
     smallest: Array = bound.min(axis=0)
@@ -205,14 +205,14 @@ def _unexplained(quotients: Quotients, noise: Array, sizes: Array) -> Array:
 def _widen(estimate: _Estimate, unexplained: Array, gaps: Sequence[GapFinding]) -> None:
     named = np.zeros(unexplained.shape, dtype=np.bool_)
     for gap in gaps:
-        named[gap.row, gap.column] |= gap.near
+        named[gap.row, gap.column] |= gap.maybe_near
     estimate.error += np.where(named, 0.0, unexplained / 2)
 
 
 def _mend(estimate: _Estimate, gaps: Sequence[GapFinding], way: Indices) -> None:
     """At a corner on the point: the mean of both sides, with an error that covers either."""
     for gap in gaps:
-        if not gap.near:
+        if not gap.maybe_near:
             continue
         entry = gap.row, gap.column
         if gap.kind != "kink" or way[gap.column] != 0:

@@ -1,8 +1,8 @@
 """Slopes from difference quotients at falling steps: extrapolation to step zero, entry by entry.
 
 Every entry takes the level whose own error estimate is least. An estimate is the disagreement of neighbouring cells of
-the extrapolation table (doubled) plus the noise of the quotient (thrice); it is raised where finer levels contradict it, so that
-two coarse levels which agree by chance (a corner further out, a fast wave) do not win.
+the extrapolation table plus the noise of the quotient, each taken thrice; it is raised where finer levels contradict
+it, so that two coarse levels which agree by chance (a corner further out, a fast wave) do not win.
 """
 
 from __future__ import annotations
@@ -26,7 +26,7 @@ def extrapolated(quotients: Array, floors: Array, factor: float) -> tuple[Array,
     for order in range(1, ORDERS + 1):
         gain = (last[1:] - last[:-1]) / (factor**order - 1.0)
         fresh = last[1:] + gain
-        spread = 2.0 * np.maximum(np.abs(gain), np.abs(fresh - last[:-1])) + 3.0 * floors[order:]
+        spread = 3.0 * np.maximum(np.abs(gain), np.abs(fresh - last[:-1])) + 3.0 * floors[order:]
         levels = slice(order - 1, None)
         better = spread < error[levels]
         best[levels] = np.where(better, fresh, best[levels])

@@ -2,16 +2,17 @@
 
 A window of 17 samples is narrowed to three of its sixteen segments, those about the largest change of slope, again and
 again; plain curvature is taken off first. A smooth function loses its change of slope on the way (by at least 16/3 a
-round), a corner keeps it, a root gains (2.3), a jump gains as much as the window shrinks (16/3). Central differences cannot see any of this: at a corner they give the
-mean of both sides with an error estimate of zero. Comparing one-sided slopes at a few fixed steps, the obvious
-other way, tells less: two corners mix, a sharp but smooth bend looks like a corner, and the distance stays unknown.
+round), a corner keeps it, a root gains (2.3), a jump gains as much as the window shrinks (16/3). Central differences
+cannot see any of this: at a corner they give the mean of both sides with an error estimate of zero. Comparing one-sided
+slopes at a few fixed steps, the obvious other way, tells less: two corners mix, a sharp but smooth bend looks like a
+corner, and the distance stays unknown.
 
 Where noise is as large as the change of slope no verdict is made, and the gap it may hide is told.
 """
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, field
 from typing import Literal
 
@@ -41,7 +42,8 @@ class GapFinding:
 
     distance: signed, from the point, in sizes of the column. gap: the difference of slopes in f per z; for a jump its
     height over NEAR sizes, the mean slope that it adds. left, right: slopes beside it. height: of a jump, else zero.
-    error: of the gap, from noise. blur: how far off the distance may be, in sizes.
+    error: of the gap, from noise. blur: length of a sample segment where it was seen, in sizes; spread: how far off
+    noise may have put it, in sizes.
     """
 
     row: int
@@ -54,11 +56,22 @@ class GapFinding:
     height: float = 0.0
     error: float = 0.0
     blur: float = 0.0
+    spread: float = 0.0
 
     @property
     def near(self) -> bool:
         """True where it counts as sitting on the point."""
         return abs(self.distance) < NEAR
+
+    @property
+    def maybe_near(self) -> bool:
+        """True where it may sit on the point, for all that noise lets us know."""
+        return abs(self.distance) - self.spread < NEAR
+
+    @property
+    def surely_near(self) -> bool:
+        """True where it sits on the point whatever noise did."""
+        return abs(self.distance) + self.spread < NEAR
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -119,47 +132,55 @@ def corners(probe: Probe, scales: Array, noise: Array) -> Corners:
     """Search every row and column. scales (r, v): slope that makes up the row's scale, in f per z; noise (r,)."""
     hidden, puzzling = np.zeros(scales.shape), np.zeros(scales.shape)
     lost = np.zeros(scales.shape, dtype=np.bool_)
+    grain = np.zeros(len(noise))
     suspects: list[_Suspect] = []
     for near, windows in ((True, near_windows(probe, scales, noise)), (False, outer_windows(probe))):
         nodes, values = looked(probe, windows.column, windows.low, windows.high)
         for row, own in enumerate(values):
             seen = sights(nodes, own)
             notice = (NEAR_NOTICE if near else FAR_NOTICE) * scales[row, windows.column]
-            floor = 8.0 * noise[row] / seen.step
-            _started(suspects, seen, row, windows, near, notice, floor, noise[row])
+            least = np.maximum(notice, 8.0 * noise[row] / seen.step)
+            suspects += _started(seen, row, windows, near, notice, least, float(noise[row]))
             if near:
-                _left_open(seen, windows, row, notice, floor, hidden, lost)
+                _left_open(seen, windows, row, least, hidden, lost)
+            else:
+                grain[row] = seen.rough.max(initial=0.0)
     _narrow(probe, suspects, noise)
     findings = _judged(probe, suspects, noise, hidden, puzzling)
-    return Corners(_merged(findings), hidden, puzzling, lost)
+    return Corners(_merged(_without_grain(findings, grain, hidden)), hidden, puzzling, lost)
 
 
 def _started(
-    suspects: list[_Suspect],
-    seen: Sights,
-    row: int,
-    windows: Windows,
-    near: bool,
-    notice: Array,
-    floor: Array,
-    noise: float,
-) -> None:
-    """Add the windows of one row in which the change of slope is worth following."""
-    chosen = windows.usable[row] & seen.complete & (seen.change > np.maximum(notice, floor))
-    clear = seen.clearness(np.full(len(seen.change), noise), CLEAR, LOCAL)
-    for index in np.flatnonzero(chosen).tolist():
-        suspect = _Suspect(row, int(windows.column[index]), near, float(notice[index]), bool(clear[index] > 1.0))
-        suspect.looks.append(_Look(seen, index, float(clear[index])))
-        suspects.append(suspect)
+    seen: Sights, row: int, windows: Windows, near: bool, notice: Array, least: Array, noise: float
+) -> Iterator[_Suspect]:
+    """The windows of one row in which the change of slope is worth following, once for each place of change."""
+    for peak in seen.peaks():
+        chosen = windows.usable[row] & peak.complete & (peak.change > least)
+        clear = peak.clearness(np.full(len(peak.change), noise), CLEAR, LOCAL)
+        for index in np.flatnonzero(chosen).tolist():
+            look = _Look(peak, index, float(clear[index]))
+            active = bool(clear[index] > 1.0)
+            yield _Suspect(row, int(windows.column[index]), near, float(notice[index]), active, looks=[look])
 
 
-def _left_open(
-    seen: Sights, windows: Windows, row: int, notice: Array, floor: Array, hidden: Array, lost: Mask
-) -> None:
+def _without_grain(findings: Sequence[GapFinding], grain: Array, hidden: Array) -> list[GapFinding]:
+    """Findings without the jumps that are no higher than the roughness of their row far and wide: they are noise."""
+    kept = []
+    for finding in findings:
+        if finding.kind == "jump" and abs(finding.height) < LOCAL * grain[finding.row]:
+            if finding.maybe_near:
+                entry = finding.row, finding.column
+                hidden[entry] = max(hidden[entry], finding.gap)
+            continue
+        kept.append(finding)
+    return kept
+
+
+def _left_open(seen: Sights, windows: Windows, row: int, least: Array, hidden: Array, lost: Mask) -> None:
     """What near windows of one row that are not followed up leave open."""
     usable = windows.usable[row]
-    quiet = usable & seen.complete & (seen.change <= np.maximum(notice, floor))
-    np.maximum.at(hidden[row], windows.column[quiet], (seen.change + floor)[quiet])
+    quiet = usable & seen.complete & (seen.change <= least)
+    np.maximum.at(hidden[row], windows.column[quiet], (seen.change + least)[quiet])
     lost[row, windows.column[usable & ~seen.complete]] = True
 
 
@@ -198,6 +219,8 @@ def _judged(
         if suspect.handed:
             continue
         gain, look = _trend(suspect.looks)
+        if suspect.looks[-1].change < suspect.notice:
+            continue
         if look is None:
             if suspect.near:
                 _note_open(suspect, float(noise[suspect.row]), hidden, puzzling)
@@ -240,9 +263,12 @@ def _finding(probe: Probe, suspect: _Suspect, gain: float, look: _Look, noise: f
         height = float(values[at + 1] - values[at]) - step * (left + right) / 2
         gap, error = abs(height) / (NEAR * size), error * step / (NEAR * size)
     elif kind == "kink":
-        gap = abs(right - left)
+        gap = max(abs(right - left), gap)
         place = _meeting(nodes[at - 1 : at + 3], values[at - 1 : at + 3], left, right, place)
-    return GapFinding(suspect.row, suspect.column, kind, place / size, gap, left, right, height, error, step / size)
+    spread = (2.0 * error / max(gap, 1e-300) + 1e-12 if kind == "kink" else 1.0) * step / size
+    return GapFinding(
+        suspect.row, suspect.column, kind, place / size, gap, left, right, height, error, step / size, spread
+    )
 
 
 def _meeting(nodes: Array, values: Array, left: float, right: float, middle: float) -> float:

@@ -32,7 +32,7 @@ class Corner:
     row: as a reader calls it (`speed_rate`, or an output); column: state or input; distance: signed, in nominal sizes
     of the column; place: value of the column there; gap, error: difference of the one-sided slopes and its error, as
     shares of the row's largest term; left, right: slopes in plant units; height: of a jump; near: it counts as on the
-    point.
+    point, as far as noise lets us know; sure: it does so whatever noise did.
     """
 
     row: str
@@ -46,6 +46,7 @@ class Corner:
     right: float
     height: float
     near: bool
+    sure: bool
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -171,8 +172,9 @@ def _unanswered(task: _Task, found: Slopes) -> Linearization:
 def _named(task: _Task, found: Slopes, gap: GapFinding) -> Corner:
     size = float(task.sizes[gap.column])
     z0 = np.concatenate([task.point.x, task.point.u])
-    # beside a corner further out the row may have a larger term than on the point
-    scale = max(float(found.scales[gap.row]), size * abs(gap.left), size * abs(gap.right))
+    scale = float(found.scales[gap.row])
+    if gap.kind == "kink":  # beside one further out the row may have a larger term than on the point
+        scale = max(scale, size * abs(gap.left), size * abs(gap.right))
     return Corner(
         row=task.rows[gap.row],
         column=task.columns[gap.column],
@@ -184,7 +186,8 @@ def _named(task: _Task, found: Slopes, gap: GapFinding) -> Corner:
         left=gap.left,
         right=gap.right,
         height=gap.height,
-        near=gap.near,
+        near=gap.maybe_near,
+        sure=gap.surely_near,
     )
 
 
@@ -221,7 +224,7 @@ def _outcome(
     task: _Task, found: Slopes, corners: tuple[Corner, ...], wrong: tuple[Mismatch, ...]
 ) -> tuple[Outcome, str]:
     limit = task.ask.slope_gap
-    over = [corner for corner in corners if corner.near and corner.gap - corner.error > limit]
+    over = [corner for corner in corners if corner.sure and corner.gap - corner.error > limit]
     if over:
         return Outcome.NOT_DIFFERENTIABLE, told_corner(max(over, key=lambda corner: corner.gap))
     if wrong:
@@ -231,7 +234,7 @@ def _outcome(
     row, column = (int(index) for index in np.unravel_index(np.argmax(shares), shares.shape))
     close = [corner for corner in corners if corner.near and corner.gap + corner.error > limit]
     if close:
-        return Outcome.NOISY, f"{told_corner(close[0])}; its own error is {100 * close[0].error:.2g} %"
+        return Outcome.NOISY, f"{told_corner(close[0])}; noise leaves its size or its place open"
     if shares[row, column] > limit:
         return Outcome.NOISY, (
             f"d {task.rows[row]} / d {task.columns[column]} is known to {100 * shares[row, column]:.2g} % of the row's "

@@ -2,7 +2,7 @@
 
 Differences of rising order wipe out what is smooth and leave noise, whose size does not depend on the order once each
 is divided by the root of C(2k, k). Rays start off the point so that a kink on it does not count as noise; of a ray, its
-opposite and its continuation the quietest is taken, so that a corner which one of them crosses does not count either.
+opposite and their continuations a quiet one is taken, so that a corner which some of them cross does not count either.
 Several scales are tried, since a coarse noise (single precision, the staircase of an inner solver) hides from short
 steps. Where the function moves smoothly on a fine scale, what shows on coarser ones may be a fast wave instead:
 both figures are given, and slopes that depend on which is believed say so by their error.
@@ -21,7 +21,10 @@ from .probe import Probe
 DIRECTIONS = 3
 POINTS = 8
 ORDERS = (3, 4, 5)
-SCALES = (1e-8, 1e-6, 1e-4, 2e-3)  # where a ray starts, in nominal sizes; it ends at twice that
+SCALES = (1e-8, 1e-6, 1e-4, 2e-3, 3e-2)  # where a ray starts, in nominal sizes; it ends at twice that
+ORDINARY = 4  # scales for all functions; the widest is for those that rest on the finest, as staircases do
+CALM = 1  # rank among the four rays of a direction: a corner spoils at most two, and the very calmest may be lucky
+QUIETEST = 1.5  # the calmer ones of a few rays are not as noisy as they are on the whole
 STARTS = (1.0, 2.6)  # a ray and its continuation
 FINEST = 2  # scales on which a function must move smoothly to be believed
 RESOLVED = 30.0  # first differences this many times the noise: at this scale the function is smooth and moving
@@ -45,11 +48,12 @@ def measured_noise(probe: Probe, rounding: Array) -> Noise:
     values = probe.f(points).reshape(-1, len(SCALES), DIRECTIONS, 2 * len(STARTS), POINTS)
     quiet, moving = _spread(values), np.sqrt(np.mean(np.diff(values, axis=-1) ** 2, axis=-1))
     quiet = np.where(np.isfinite(quiet), quiet, np.inf)
-    calmest = np.argmin(quiet, axis=-1)[..., np.newaxis]
+    calmest = np.argsort(quiet, axis=-1, kind="stable")[..., [CALM]]
     quiet, moving = (np.take_along_axis(each, calmest, -1)[..., 0] for each in (quiet, moving))
     known = np.isfinite(quiet)
     resolved = np.median(known & (moving > RESOLVED * quiet), axis=-1) > 0.5
-    noise = np.median(np.where(known, quiet, 0.0), axis=-1)
+    noise = QUIETEST * np.median(np.where(known, quiet, 0.0), axis=-1)
+    noise[:, ORDINARY:] *= (np.median(moving[:, 0], axis=-1) == 0)[:, np.newaxis]
     # scales run from fine to coarse; `fine` leaves out those beyond the first resolved one. A function that rests on
     # the finest scales and moves only on coarser ones is a staircase, not a wave
     resolved[:, FINEST:] = False

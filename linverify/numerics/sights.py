@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Iterator
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,17 +11,22 @@ from ..core.model import Array
 from .probe import Indices, Mask, Probe
 
 SEGMENTS = 16
+FURTHER = 2  # places of change that are followed beside the largest
+BESIDE = 2  # segments that belong to one place of change
+STANDS_OUT = 8.0  # times the median of its window
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Sights:
-    """S windows. nodes, values (S, 17); slopes (S, 16) of the segments; at (S,): the segment about which the slope
+    """S windows. nodes, values (S, 17); slopes (S, 16) of the segments; changes (S, 12): of slope about each segment
+    but the outer two on either side; at (S,): the segment about which the slope
     changes most; change (S,): by how much; step (S,): length of a segment; rough (S,): noise of the samples beside it.
     """
 
     nodes: Array
     values: Array
     slopes: Array
+    changes: Array
     at: Indices
     change: Array
     step: Array
@@ -38,6 +44,19 @@ class Sights:
     def complete(self) -> Mask:
         """True where every sample of a window is finite, (S,)."""
         return np.asarray(np.isfinite(self.values).all(axis=1), dtype=np.bool_)
+
+    def peaks(self) -> Iterator[Sights]:
+        """These sights, and again at further places that stand out in their windows (else `change` is zero there)."""
+        yield self
+        usual = STANDS_OUT * np.median(np.abs(self.changes), axis=1, keepdims=True)
+        left = np.where(self.changes > usual, self.changes, 0.0)
+        at = self.at
+        for _ in range(FURTHER):
+            apart = np.abs(np.arange(2, SEGMENTS - 2) - at[:, np.newaxis]) > BESIDE
+            left = np.where(apart, left, 0.0)
+            further = _at_the_largest(self.nodes, self.values, self.slopes, left)
+            at = further.at
+            yield further
 
     def closer(self, index: int) -> tuple[float, float]:
         """The three segments about the change in window `index`."""
@@ -59,11 +78,15 @@ def sights(nodes: Array, values: Array) -> Sights:
     before, here, after = slopes[:, 1:-3], slopes[:, 2:-2], slopes[:, 3:-1]
     # a corner changes the slope for good, a jump for one segment only: the next but one must agree
     bend = np.minimum(_untrended(after - before), _untrended(slopes[:, 4:] - slopes[:, :-4]))
-    change = np.maximum(bend, np.abs(here - (before + after) / 2))
-    most = np.argmax(np.nan_to_num(change, nan=-1.0), axis=1)
-    biggest = np.take_along_axis(change, most[:, np.newaxis], 1)[:, 0]
+    changes = np.maximum(bend, np.abs(here - (before + after) / 2))
+    return _at_the_largest(nodes, values, slopes, np.nan_to_num(changes, nan=-1.0))
+
+
+def _at_the_largest(nodes: Array, values: Array, slopes: Array, changes: Array) -> Sights:
+    most = np.argmax(changes, axis=1)
+    biggest = np.take_along_axis(changes, most[:, np.newaxis], 1)[:, 0]
     step = (nodes[:, -1] - nodes[:, 0]) / SEGMENTS
-    return Sights(nodes, values, slopes, most + 2, biggest, step, _roughness(values, most + 2))
+    return Sights(nodes, values, slopes, changes, most + 2, biggest, step, _roughness(values, most + 2))
 
 
 def _untrended(changes: Array) -> Array:

@@ -26,7 +26,7 @@ def steep_ends(
     quotients: Quotients, noise: Array, sizes: Array, scales: Array, known: Sequence[GapFinding]
 ) -> tuple[GapFinding, ...]:
     """Infinite one-sided slopes on the point, where no finding among `known` sits on it already."""
-    taken = {(gap.row, gap.column) for gap in known if gap.near}
+    taken = {(gap.row, gap.column) for gap in known if gap.maybe_near}
     floor = LEGIBLE * quotients.floors(noise)[1]
     findings = []
     for side in (quotients.forward, quotients.backward):

@@ -112,7 +112,7 @@ def _slopes(probe: Probe, floors: Array) -> Slopes:
     if done:
         found = corners(probe, scales[:, np.newaxis] / probe.sizes, noise.coarse)
         gaps = (*found.findings, *steep_ends(quotients, noise.coarse, probe.sizes, scales, found.findings))
-        lost = lost | found.lost.any(axis=0)
+        lost, grainy = lost | found.lost.any(axis=0), grainy | found.grainy
         hidden = np.minimum(found.hidden, _largest_possible(quotients, noise.coarse, probe.sizes))
         # what rounding alone may hide is no finding: every constant row would have it
         unresolved = np.maximum(np.where(grainy[:, np.newaxis], hidden, 0.0), found.puzzling)

@@ -77,13 +77,15 @@ class GapFinding:
 @dataclass(frozen=True, slots=True, eq=False)
 class Corners:
     """findings, nearest first; hidden (r, v): gaps of slope on the point that noise may be hiding; puzzling (r, v):
-    gaps that were seen and fit no kind; lost (r, v): True where a call next to the point failed.
+    gaps that were seen and fit no kind; lost (r, v): True where a call next to the point failed; grainy (r,): rows with
+    jumps far and wide, which pass for noise.
     """
 
     findings: tuple[GapFinding, ...]
     hidden: Array
     puzzling: Array
     lost: Mask
+    grainy: Mask
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -147,7 +149,9 @@ def corners(probe: Probe, scales: Array, noise: Array) -> Corners:
                 grain[row] = seen.rough.max(initial=0.0)
     _narrow(probe, suspects, noise)
     findings = _judged(probe, suspects, noise, hidden, puzzling)
-    return Corners(_merged(_without_grain(findings, grain, hidden)), hidden, puzzling, lost)
+    kept = _without_grain(findings, grain, hidden)
+    grainy = np.array([any(one.row == row for one in findings if one not in kept) for row in range(len(noise))])
+    return Corners(_merged(kept), hidden, puzzling, lost, grainy)
 
 
 def _started(

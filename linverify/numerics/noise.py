@@ -53,10 +53,12 @@ def measured_noise(probe: Probe, rounding: Array) -> Noise:
     known = np.isfinite(quiet)
     resolved = np.median(known & (moving > RESOLVED * quiet), axis=-1) > 0.5
     noise = QUIETEST * np.median(np.where(known, quiet, 0.0), axis=-1)
-    noise[:, ORDINARY:] *= (np.median(moving[:, 0], axis=-1) == 0)[:, np.newaxis]
+    at_rest = (np.median(moving[:, 0], axis=-1) == 0)[:, np.newaxis]
+    noise[:, ORDINARY:] *= at_rest
     # scales run from fine to coarse; `fine` leaves out those beyond the first resolved one. A function that rests on
     # the finest scales and moves only on coarser ones is a staircase, not a wave
     resolved[:, FINEST:] = False
+    resolved &= ~at_rest
     beyond = np.logical_or.accumulate(resolved, axis=-1)
     counted = np.concatenate([np.ones_like(beyond[:, :1]), ~beyond[:, :-1]], axis=-1)
     fine = np.where(counted, noise, 0.0).max(axis=-1)

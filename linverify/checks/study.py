@@ -79,7 +79,9 @@ class Study:
     @cached_property
     def _linearization(self) -> Linearization:
         case = self.case
-        return linearize(self.bound, self.point(), case.nominal, case.envelope, case.slopes)
+        return linearize(
+            self.bound, self.point(), case.nominal, case.envelope, case.slopes, accuracy=case.trim.accuracy
+        )
 
     def _probes(self) -> tuple[Array, Array]:
         """Points over the envelope and, on open sides, around the held values; the same every time."""

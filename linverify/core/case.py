@@ -12,12 +12,13 @@ from pathlib import Path
 from types import MappingProxyType
 from typing import Literal
 
+from .delivered import NOTHING as NOTHING
+from .delivered import Course as Course
+from .delivered import Delays, LocalAsk
 from .errors import Place
 from .plant import Plant
 
-Course = Literal["held", "straight"]
 BandKind = Literal["peak", "rms", "relative", "wider_of", "final"]
-NOTHING: Mapping[str, float] = MappingProxyType({})
 
 
 @dataclass(frozen=True, slots=True)
@@ -196,6 +197,9 @@ class Case:
     drives: tuple[DriveSet, ...] = ()
     bands: tuple[Band, ...] = ()
     exits: Exits = field(default_factory=Exits)
+    local: LocalAsk = field(default_factory=LocalAsk)
+    delays: Delays = field(default_factory=Delays)
+    wraps: tuple[str, ...] = ()  # angles that are compared modulo a turn
     requirements: tuple[Requirement, ...] = ()
     settings: tuple[Setting, ...] = ()
     files: tuple[Path, ...] = ()  # spec, defaults, plant, tables: hashed into the provenance

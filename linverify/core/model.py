@@ -5,6 +5,7 @@ from __future__ import annotations
 from collections.abc import Mapping
 from dataclasses import dataclass, field
 from types import MappingProxyType
+from typing import Literal
 
 import numpy as np
 from numpy.typing import NDArray
@@ -54,7 +55,9 @@ class LocalModel:
     """x' = A x + B u, y = C x + D u in deviations from an operating point.
 
     A (n, n), B (n, m), C (k, n), D (k, m) in the plant's units; errors: the absolute error estimate of every entry,
-    same shapes, by the names "A", "B", "C", "D"; step: seconds of a difference equation, None when continuous.
+    same shapes, by the names "A", "B", "C", "D"; step: time between the states of a discrete model, None when
+    continuous; course: how a discrete model of a continuous plant takes its inputs between samples. states may be fewer
+    than the plant's; anonymous: they mean nothing by themselves, and only outputs can be compared.
     """
 
     A: Array
@@ -67,3 +70,5 @@ class LocalModel:
     at: OperatingPoint
     step: float | None = None
     errors: Mapping[str, Array] = field(default_factory=lambda: MappingProxyType({}))
+    anonymous: bool = False
+    course: Literal["held", "straight"] = "held"

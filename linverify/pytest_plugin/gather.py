@@ -102,7 +102,7 @@ class Gather:
         self.config = config
         self.settings: Settings = config.stash[SETTINGS]
         self.ledger = ledger
-        self.verdicts: dict[str, str] = {}  # id -> JSON
+        self.verdicts: dict[str, list[str]] = {}  # id -> JSON; of several the record takes the most severe
         self.unread: list[str] = []  # specs with mistakes
         self.why: dict[str, str] = {}  # id -> why there is no verdict
         self.announced: list[str] = []  # ids that look like ours, as workers told them before they ran
@@ -112,8 +112,8 @@ class Gather:
     def pytest_runtest_logreport(self, report: pytest.TestReport) -> None:
         """Pick the verdict off a report; remember what ended without one."""
         for name, value in report.user_properties:
-            if name == PROPERTY:
-                self.verdicts[report.nodeid] = str(value)
+            if name == PROPERTY and value not in (known := self.verdicts.setdefault(report.nodeid, [])):
+                known.append(str(value))
         if report.when not in ("setup", "call", "teardown"):
             self.why[report.nodeid] = "the process that ran this check died while it ran"
         elif report.outcome != "passed" and report.nodeid not in self.verdicts:
@@ -182,13 +182,14 @@ class Gather:
         from ..report import record
         from ..run import Books
 
-        ledger, verdicts = self.ledger, {}
-        for name, text in self.verdicts.items():
+        ledger, verdicts, arrived = self.ledger, [], set()
+        for name, text in ((name, text) for name, texts in self.verdicts.items() for text in texts):
             try:
-                verdicts[name] = record.loads(text)
+                verdicts.append(record.loads(text))
+                arrived.add(name)
             except RecordError as error:
                 self.why[name] = f"its verdict arrived broken: {error}"
-        missing = [name for name in ledger.selected if name not in verdicts]
+        missing = [name for name in ledger.selected if name not in arrived]
         ended = "the run ended before this check began" + (f": {self.stopped}" if self.stopped else "")
         partial = bool(
             self.unread
@@ -197,7 +198,7 @@ class Gather:
             or set(missing) - set(ledger.skipped)
         )
         return Books(
-            verdicts=tuple(verdicts.values()),
+            verdicts=tuple(verdicts),
             planned=tuple(ledger.selected),
             points=tuple(ledger.points),
             sources=tuple(Path(name) for name in ledger.files),

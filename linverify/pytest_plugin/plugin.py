@@ -53,11 +53,13 @@ def pytest_configure(config: pytest.Config) -> None:
 
 def pytest_sessionstart(session: pytest.Session) -> None:
     """Signs of life, where there is a terminal to show them; it is not there yet while plugins are configured."""
-    plugins = session.config.pluginmanager
-    if SETTINGS in session.config.stash and plugins.hasplugin("terminalreporter"):
+    config = session.config
+    # a worker has a terminal too, but nobody sees it
+    seen = config.pluginmanager.hasplugin("terminalreporter") and not hasattr(config, "workerinput")
+    if SETTINGS in config.stash and seen:
         from .progress import Progress
 
-        plugins.register(Progress.on(session.config), "linverify-progress")
+        config.pluginmanager.register(Progress.on(config), "linverify-progress")
 
 
 def pytest_collect_file(file_path: Path, parent: pytest.Collector) -> SpecFile | None:

@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import pytest
-from basin_project import SPEC, Project
+from basin_project import SPEC, WRONG, Project
 
 DIES = "\n    if abs(float(np.ravel(x)[0]) - 0.5) < 1e-3:\n        os._exit(0)\n    return u"
 
@@ -84,3 +84,17 @@ def test_a_fixture_that_fails_leaves_its_check_not_run(project: Project) -> None
     assert result.ret == 1
     items = {item["id"]: item for item in project.body("linverify-partial.json")["items"]}
     assert items["specs/basin.yaml::low::trims"]["reason"] == "its setup phase failed before there was a verdict"
+
+
+def test_a_second_verdict_cannot_hide_a_failure(project: Project) -> None:
+    """As it would come from a plugin that runs failed tests again."""
+    project.write("specs/basin.yaml", WRONG)
+    project.write(
+        "conftest.py",
+        "import pytest\n@pytest.hookimpl(tryfirst=True)\ndef pytest_runtest_logreport(report):\n"
+        "    if report.when == 'teardown':\n        report.user_properties = [\n"
+        '            (name, value.replace(\'"status":"fail"\', \'"status":"pass"\'))'
+        " for name, value in report.user_properties]\n",
+    )
+    assert project.run("specs").ret == 1
+    assert project.statuses()["basin.yaml::high::trims"] == "fail"

@@ -7,7 +7,7 @@ import time
 from types import SimpleNamespace
 
 import pytest
-from basin_project import SPEC, Project
+from basin_project import SPEC, WRONG, Project
 
 import linverify.pytest_plugin.nodes
 import linverify.pytest_plugin.progress
@@ -88,3 +88,22 @@ def test_lines_appear_between_the_others(
     lines = [line for line in result.outlines if line.startswith("still running after 0 s: specs/basin.yaml::")]
     assert len(lines) == 4
     result.assert_outcomes(passed=4)
+
+
+def test_with_workers_the_lines_come_from_the_process_that_has_the_terminal(project: Project) -> None:
+    project.write("specs/basin.yaml", WRONG)
+    project.write(
+        "conftest.py",
+        "import time\nimport pytest\nimport linverify.pytest_plugin.progress as progress\nprogress.FIRST = 0.05\n"
+        "@pytest.fixture(autouse=True)\ndef slow():\n    time.sleep(0.5)\n",
+    )
+    result = project.spawn("-n", "2", "specs")
+    assert result.ret == 1
+    lines = [line for line in result.outlines if "still running" in line]
+    assert {line.removeprefix("still running after 0 s: specs/basin.yaml::") for line in lines} == {
+        "low::trims",
+        "low::differentiable",
+        "high::trims",
+        "high::differentiable",
+    }
+    result.stdout.no_fnmatch_line("*Captured*")

@@ -9,7 +9,7 @@ from collections import Counter
 from typing import Any
 
 import pytest
-from basin_project import BREAKS, HOLDS, SPEC, Project
+from basin_project import BREAKS, HOLDS, SPEC, WRONG, Project
 
 MODES = [
     ("-n", "0"),
@@ -93,3 +93,28 @@ def test_other_tests_are_shared_out_as_the_mode_says(project: Project) -> None:
     result.assert_outcomes(passed=16)
     workers = Counter(line.split()[0] for line in result.outlines if "test_one" in line and "PASSED" in line)
     assert len(workers) == 2
+
+
+def test_stopping_at_the_first_failure_names_what_was_not_run(project: Project) -> None:
+    points = "".join(f"  p{level}:\n    hold: {{level: 1.{level} m}}\n" for level in range(6))
+    project.write("specs/basin.yaml", WRONG + points)
+    result = project.spawn("-n", "2", "-x", "specs")
+    assert result.ret in (1, 2)
+    counts = project.body("linverify-partial.json")["counts"]
+    assert counts["fail"] == 1
+    assert counts["not run"] >= 1
+    assert sum(counts.values()) == 16
+
+
+def test_ctrl_c_in_a_worker_names_what_was_not_run(project: Project) -> None:
+    project.write("specs/basin.yaml", SPEC)
+    project.write(
+        "conftest.py",
+        "import pytest\n@pytest.fixture(autouse=True)\ndef stop(request):\n"
+        "    if request.node.nodeid.endswith('high::trims'):\n        raise KeyboardInterrupt\n",
+    )
+    result = project.spawn("-n", "2", "specs")
+    assert result.ret == 2
+    statuses = project.statuses("linverify-partial.json")
+    assert len(statuses) == 4
+    assert statuses["basin.yaml::high::trims"] == "not run"

@@ -9,7 +9,7 @@ from __future__ import annotations
 import argparse
 import os
 import sys
-from collections.abc import Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
@@ -85,26 +85,35 @@ def _check(given: argparse.Namespace, threads: str) -> int:
     from . import run
 
     root = root_of(given.paths)
-    result = run.check_paths(given.paths, _options(given, root), root, threads=threads, told=_tell)
+    options = _options(given, root)
+    result = run.check_paths(given.paths, options, root, threads=threads, told=_teller(options))
     print("\n".join(("", *result.lines)))
     return 0 if result.passed else 1
 
 
-def _tell(verdict: Verdict) -> None:
-    """A line for a pass, the whole text for everything else, as soon as it is known."""
+def _teller(options: Options) -> Callable[[Verdict], None]:
+    """What shows each verdict as soon as it is known: a line for a pass, the whole text for everything else."""
+    from . import run
     from .report.text import failure
 
-    print(failure(verdict) if verdict.status.breaks_build else f"{verdict.id}: {verdict.status}", flush=True)
+    evidence = run.evidence_folder(options.reports) if options.reports else ""
+
+    def tell(verdict: Verdict) -> None:
+        told = failure(verdict, evidence=evidence) if verdict.status.breaks_build else f"{verdict.id}: {verdict.status}"
+        print(told, flush=True)
+
+    return tell
 
 
 def _replay(given: argparse.Namespace, threads: str) -> int:
     from . import run
+    from .report.quantity import exactly
     from .report.text import failure
 
     verdict = run.replay(given.file, given.item, _options(given, None))
     drive = [f"drive: {one.text}" for one in verdict.evidence]
     exact = [
-        f"to the last digit: {figure.what} of {figure.signal} {figure.worst!r} {figure.unit}"
+        f"to the last digit: {figure.what} of {figure.signal} {exactly(figure.worst, figure.unit)}"
         for figure in verdict.figures
     ]
     # without evidence there is no replay command in the text: this is the replay

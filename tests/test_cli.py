@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 import json
+import re
 import subprocess
 import sys
 from pathlib import Path
@@ -41,6 +42,14 @@ def test_check_that_all_holds(project: Path, capsys: pytest.CaptureFixture[str])
     assert "specs/basin.yaml::low::trims: pass\n" in out
     assert out.endswith("4 checks: 4 pass\nreport: reports/compliance.md\n")
     assert _record(project)["body"]["counts"]["pass"] == 4
+
+
+def test_check_names_saved_drives_where_they_are(project: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    _write(project, "specs/breaks.yaml", BREAKS)
+    assert main(["check", "--reports", "out/here", "specs"]) == 1
+    files = re.findall(r"^  replay .* (\S+\.json)$", capsys.readouterr().out, flags=re.MULTILINE)
+    assert files
+    assert all(name.startswith("out/here/evidence/") and Path(name).is_file() for name in files)
 
 
 def test_check_that_something_does_not_hold(project: Path, capsys: pytest.CaptureFixture[str]) -> None:

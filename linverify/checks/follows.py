@@ -84,10 +84,11 @@ def _judge(study: Study, compared: Comparison, run: Campaign, settled: Sequence[
         _save(study, compared, found, "worst", worst)
         if worst.status is Status.FAIL and (one := simplest(compared, run, worst)) is not None:
             _save(study, compared, found, "simplest", Word(worst.row, worst.status, "", one))
+    _save_cited(study, compared, found, settled)
     if not run.settled:
         found.open.append("the fixed batch of drives did not reach an accuracy of 1 % of every band")
-    _completion(compared, run, found)
     _failures(study, compared, run, found)
+    _completion(compared, run, found)
 
 
 def _tightest(settled: Sequence[Word]) -> Word | None:
@@ -108,16 +109,28 @@ def _save(study: Study, compared: Comparison, found: _Findings, role: str, word:
         found.evidence.append(saved(compared, study.options, role, one.drive, one.runs, one.fidelity, figures))
 
 
+def _save_cited(study: Study, compared: Comparison, found: _Findings, settled: Sequence[Word]) -> None:
+    """Save the drives of the other figures too: a report names the drive of each, and a reader looks for its file."""
+    there = {item.drive for item in found.evidence}
+    for word in settled:
+        one, figure = word.examined, figure_of(compared, word)
+        if one is not None and figure is not None and figure.drive not in there:
+            saved(compared, study.options, "worst of one figure", one.drive, one.runs, one.fidelity, (figure,))
+            there.add(figure.drive)
+
+
 def _completion(compared: Comparison, run: Campaign, found: _Findings) -> None:
     columns = run.of("random")
     if not columns:
         return
     share = float(np.mean(run.figures.completed[columns]))
     if share < compared.case.exits.complete:
-        found.open.append(
-            f"{share:.1%} of the random drives ran their whole horizon, {compared.case.exits.complete:.1%} are asked "
-            "for: the drives are too large for this envelope"
-        )
+        told = f"{100.0 * share:.3g} % of the random drives ran their whole horizon, "
+        told += f"{100.0 * compared.case.exits.complete:.3g} % are asked for"
+        # drives that could not be followed did not complete either, and say nothing about the envelope
+        stopped = sum(1 for column in columns if run.wrong[column]) / len(columns)
+        blame = share + stopped < compared.case.exits.complete
+        found.open.append(told + (": the drives are too large for this envelope" if blame else ""))
     if not compared.exits and (missed := int(np.count_nonzero(run.figures.share[-1] > 1.0))):
         found.notes.append(f"{missed} drives left the envelope where the local model was still well inside")
 

@@ -117,7 +117,8 @@ def _told(value: float, unit: str) -> str:
 def _failed_calls(result: TrimResult) -> tuple[str, ...]:
     if not result.failed_calls:
         return ()
-    first = f"; the first: {result.first_failure}" if result.first_failure else ""
+    is_new = result.first_failure and result.first_failure not in result.message
+    first = f"; the first: {result.first_failure}" if is_new else ""
     return (f"{result.failed_calls} of {result.evaluations} calls of the plant failed during the search{first}",)
 
 

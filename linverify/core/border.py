@@ -45,7 +45,7 @@ def called(
         # what is not finite is told by `accepted`; the plant's floating-point warnings would only repeat it
         with np.errstate(all="ignore"):
             return function(t, x, u, p)
-    except Exception as error:
+    except (Exception, SystemExit) as error:  # a plant that exits would end the run with a status of its own choice
         raise PlantError(f"{what} raised {_told_error(error)} when called with {told()}") from error
 
 
@@ -89,7 +89,7 @@ def _kind(values: np.ndarray[tuple[int, ...], np.dtype[np.generic]]) -> str:
     return names.get(values.dtype.kind, f"values of type {values.dtype}")
 
 
-def _told_error(error: Exception) -> str:
+def _told_error(error: BaseException) -> str:
     text = f"{type(error).__name__}: {error}"
     if "read-only" in str(error):
         text += " (a plant function must not write into x or u)"

@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import json
 import os
-import tempfile
+import secrets
 from collections.abc import Mapping, Sequence
 from pathlib import Path
 from typing import Any
@@ -37,13 +37,14 @@ def write(folder: Path, drive: Drive, about: Mapping[str, Any], name: str = "") 
     """
     folder.mkdir(parents=True, exist_ok=True)
     path = folder / f"{name or drive.digest}.json"
-    handle, temporary = tempfile.mkstemp(dir=folder, prefix=".", suffix=".part")
+    # not by mkstemp: its files can be read by their owner only, and others look at evidence too
+    temporary = path.with_name(f".{path.name}.{os.getpid()}.{secrets.token_hex(4)}.part")
     try:
-        with os.fdopen(handle, "w", encoding="utf-8", newline="\n") as stream:
+        with temporary.open("x", encoding="utf-8", newline="\n") as stream:
             stream.write(to_text(drive, about))
-        os.replace(temporary, path)
+        temporary.replace(path)
     except BaseException:
-        Path(temporary).unlink(missing_ok=True)
+        temporary.unlink(missing_ok=True)
         raise
     return path
 

@@ -25,6 +25,11 @@ def quantity(value: float, unit: str = "", digits: int = 6) -> str:
     return text if text == ABSENT or unit in ("", "1") else f"{text} {unit}"
 
 
+def exactly(value: float, unit: str = "") -> str:
+    """`value` to its last digit, and its unit as in `quantity`."""
+    return f"{value!r}" if unit in ("", "1") else f"{value!r} {unit}"
+
+
 def percent(share: float) -> str:
     """A share in per cent, to a tenth of a per cent or, where that would read as nothing, to two digits."""
     if not math.isfinite(share):

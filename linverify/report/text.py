@@ -97,8 +97,10 @@ def next_steps(verdict: Verdict, evidence: str = "reports/evidence") -> list[str
     """The commands that replay the drive of a verdict and pin it; empty where there is none or it passes."""
     if not verdict.evidence or not verdict.status.breaks_build:
         return []
-    simplest = next((item for item in verdict.evidence if item.role == "simplest"), verdict.evidence[0])
-    saved = (PurePath(evidence) / f"{simplest.drive}.json").as_posix()
+    # where nothing failed, a drive that could not be followed tells more than the worst of those that could
+    roles = ("simplest",) if verdict.status is Status.FAIL else ("simplest", "stopped")
+    telling = next((item for item in verdict.evidence if item.role in roles), verdict.evidence[0])
+    saved = (PurePath(evidence) / f"{telling.drive}.json").as_posix()
     item, file = shlex.quote(verdict.id), shlex.quote(saved)
     # commands stand on one line each, unwrapped, so that they can be copied
     return [

@@ -9,6 +9,7 @@ from pathlib import Path
 from types import MappingProxyType
 
 from linverify.core.case import Amplitude, Band, DriveSet
+from linverify.core.signals import nearest
 
 from .ground import Ground, whole_ratio
 from .layout import AmplitudeAsk, BandAsk, DriveAsk, Entry, FileWord
@@ -33,7 +34,7 @@ def bind_drives(ground: Ground, ask: DriveAsk, rate_limits: Mapping[str, float])
         shapes=ask.shapes,
         count=ask.count,
         search=ask.search,
-        pinned=_pinned(ask.pinned),
+        pinned=_pinned(ground, ask.pinned),
         discerns_gain=ask.discerns_gain,
         discerns_delay=delay,
         place=ask.place,
@@ -127,14 +128,23 @@ def _offsets(ground: Ground, ask: DriveAsk, word: str) -> dict[str, float]:
     return offsets
 
 
-def _pinned(patterns: tuple[FileWord, ...]) -> tuple[Path, ...]:
-    """The files that match, in order of name; a pattern without a match is fine."""
+def _pinned(ground: Ground, patterns: tuple[FileWord, ...]) -> tuple[Path, ...]:
+    """The files that match, in order of name; a pattern without a match is fine, a file that is not there is none."""
     found: dict[Path, None] = {}
     for pattern in patterns:
+        if not glob.has_magic(pattern.text) and not (pattern.folder / pattern.text).is_file():
+            near = nearest(pattern.text, _drive_files(pattern))
+            told = "a path relative to this file, or a pattern as in pinned/*.json, is expected"
+            ground.report(pattern.place, f"there is no file {pattern.text!r}", told, near)
         for name in sorted(glob.glob(pattern.text, root_dir=pattern.folder, recursive=True)):
             if (path := pattern.folder / name).is_file():
                 found[path] = None
     return tuple(found)
+
+
+def _drive_files(pattern: FileWord) -> list[str]:
+    folder = Path(pattern.text).parent
+    return [(folder / path.name).as_posix() for path in sorted((pattern.folder / folder).glob("*.json"))]
 
 
 def _start(ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...]) -> float:

@@ -188,6 +188,11 @@ def test_a_plant_that_raises_is_undecided_and_the_drive_is_kept() -> None:
     assert "could not be followed" in found.reason
     assert "table left" in found.reason
     assert found.evidence[-1].role == "stopped"
+    # drives that were stopped are not said to be too large for the envelope
+    asked = verdict(case(PEAK, plant=plant, drives=replace(few, count=40), exits=Exits(complete=1.0)))
+    assert "table left" in asked.reason
+    (note,) = (note for note in asked.notes if "ran their whole horizon" in note)
+    assert "too large" not in note
 
 
 def test_no_room_in_the_envelope_is_undecided() -> None:

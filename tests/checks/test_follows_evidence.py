@@ -43,6 +43,17 @@ def test_worst_and_simplest_are_saved_whole_and_canonically(tmp_path: Path) -> N
     assert data["figures"][0]["what"] == "peak error"
 
 
+def test_the_drive_of_every_figure_is_saved_and_open_to_all_readers(tmp_path: Path) -> None:
+    bands = (PEAK, Band("y", "rms", 0.01), Band("y", "final", 0.02), Band("y", "relative", fraction=0.02))
+    found = failed(tmp_path, case(*bands, parameters={"bend": 0.1}))
+    cited = {figure.drive for figure in found.figures if figure.drive}
+    assert len(cited) > 1
+    assert cited <= {path.stem for path in (tmp_path / "evidence").iterdir()}
+    plain = tmp_path / "plain"
+    plain.write_text("written in the usual way")
+    assert {path.stat().st_mode for path in (tmp_path / "evidence").iterdir()} == {plain.stat().st_mode}
+
+
 def test_the_simplest_keeps_half_the_excess(tmp_path: Path) -> None:
     found = failed(tmp_path, case(PEAK))
     simplest = tmp_path / "evidence" / f"{found.evidence[1].drive}.json"

@@ -199,6 +199,7 @@ def test_a_plant_that_cannot_be_called_is_undecided_with_the_call_named(answer, 
     assert verdict.status is Status.UNDECIDED
     assert told in verdict.reason
     assert "called with t = 0, speed = 5 m/s, thrust = 40000 N" in verdict.reason
+    assert not any("called with" in note for note in verdict.notes)  # once is enough
 
 
 def test_failed_calls_on_the_way_are_told_beside_a_pass():

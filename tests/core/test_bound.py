@@ -4,6 +4,7 @@ from __future__ import annotations
 
 import itertools
 import math
+import sys
 from collections.abc import Callable
 from typing import Any
 
@@ -113,6 +114,14 @@ def test_an_exception_is_named_with_its_call_and_line() -> None:
     text = str(caught.value)
     assert text.startswith("dynamics raised KeyError: 'drag' (test_bound.py, line ")
     assert text.endswith(CALL)
+
+
+def test_a_plant_that_exits_does_not_end_the_run() -> None:
+    def leaves(t: float, x: Any, u: Any, p: Any) -> Any:
+        sys.exit(0)
+
+    with pytest.raises(PlantError, match=r"raised SystemExit: 0 \(test_bound.py, line "):
+        bound(leaves).rates(0.0, np.array([0.5, -1.0]), np.array([2.0]))
 
 
 def test_writing_into_the_arguments_is_caught_and_harms_nobody() -> None:

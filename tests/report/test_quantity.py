@@ -99,3 +99,8 @@ def test_subject_and_instant() -> None:
     assert quantity.subject(replace(FIGURE, signal="")) == "peak error"
     assert quantity.instant(FIGURE) == ""
     assert quantity.instant(replace(FIGURE, when=3.25, time_unit="s")) == "t = 3.25 s"
+
+
+@pytest.mark.parametrize(("unit", "text"), [("", "0.1"), ("1", "0.1"), ("m", "0.1 m")])
+def test_exact_figures(unit: str, text: str) -> None:
+    assert quantity.exactly(0.1, unit) == text

@@ -7,7 +7,7 @@ from dataclasses import replace
 import pytest
 from invented import EVERY, FOLLOWS, NO_TRIM, SPEC, TRIMS, UNDECIDED
 
-from linverify.core.verdict import Figure, Status
+from linverify.core.verdict import Evidence, Figure, Status
 from linverify.report import text
 
 FAILURE = f"""\
@@ -50,6 +50,13 @@ def test_a_passing_check_needs_no_next_step() -> None:
 def test_the_worst_drive_is_replayed_where_none_is_simplest() -> None:
     alone = replace(FOLLOWS, evidence=FOLLOWS.evidence[:1])
     assert text.next_steps(alone, "out/evidence")[0].endswith("out/evidence/3fa9c1d20b77.json")
+
+
+def test_a_stopped_drive_is_replayed_where_nothing_failed() -> None:
+    stopped = (*FOLLOWS.evidence[:1], Evidence("stopped", "aaaaaaaaaaaa", "pitch steps"))
+    undecided = replace(FOLLOWS, status=Status.UNDECIDED, evidence=stopped)
+    assert text.next_steps(undecided)[0].endswith("/aaaaaaaaaaaa.json")
+    assert text.next_steps(replace(undecided, status=Status.FAIL))[0].endswith("/3fa9c1d20b77.json")
 
 
 def test_commands_are_quoted_for_a_shell() -> None:

@@ -30,6 +30,7 @@ LEAST_SCALE = (
 SMALL = 1e-3  # nominal sizes: steps within which a gap that does not shrink is laid to the point
 LEAST_ERROR = 1e-12  # of the row's scale: below this, rounding in the plant's own terms is not told apart
 DOUBT = 10.0  # times the fine noise: coarse noise that makes the finer slopes doubtful
+FAR_APART = 30.0  # times their errors: slopes at short and long steps that measure different things
 GRAINY = 8.0  # times rounding: noise that is the plant's own
 LEGIBLE = 10.0  # times its noise, before the shrinking of a gap is judged
 
@@ -141,10 +142,11 @@ def _estimate(quotients: Quotients, noise: Noise, way: Indices) -> _Estimate:
     doubtful = (noise.coarse > DOUBT * noise.fine)[:, np.newaxis]
     sides = []
     for (slope, error), (other, other_error) in zip(fine, coarse, strict=True):
-        apart = np.abs(slope - other)
-        consistent = ~doubtful | (apart <= error + other_error)
-        # inconsistent: short steps see the plant's noise (an inner solver's last digits), long ones its course
-        sides.append((np.where(consistent, slope, other), np.where(consistent, error + doubtful * apart, other_error)))
+        apart = np.abs(slope - other) * doubtful
+        agree = apart <= error + other_error
+        # apart by far: short steps see the plant's noise (an inner solver's last digits), long ones its course
+        far = apart > FAR_APART * (error + other_error)
+        sides.append((np.where(agree, slope, other), np.where(agree, error, other_error) + np.where(far, 0.0, apart)))
     (middle, middle_error), (right, right_error), (left, left_error) = sides
     jacobian = np.where(way == 0, middle, np.where(way > 0, right, left))
     error = np.where(way == 0, middle_error, np.where(way > 0, right_error, left_error))
@@ -206,7 +208,7 @@ def _widen(estimate: _Estimate, unexplained: Array, gaps: Sequence[GapFinding]) 
     named = np.zeros(unexplained.shape, dtype=np.bool_)
     for gap in gaps:
         named[gap.row, gap.column] |= gap.maybe_near
-    estimate.error += np.where(named, 0.0, unexplained / 2)
+    estimate.error += np.where(named, 0.0, 0.55 * unexplained)
 
 
 def _mend(estimate: _Estimate, gaps: Sequence[GapFinding], way: Indices) -> None:

@@ -292,8 +292,12 @@ def _notes(task: _Task, found: Slopes) -> tuple[str, ...]:
 def _model(task: _Task, jacobian: Array, error: Array) -> LocalModel:
     plant, n = task.plant, task.plant.n
     blocks = {"A": np.s_[:n, :n], "B": np.s_[:n, n:], "C": np.s_[n:, :n], "D": np.s_[n:, n:]}
+    entries = {name: frozen_array(jacobian[block]) for name, block in blocks.items()}
     return LocalModel(
-        **{name: frozen_array(jacobian[block]) for name, block in blocks.items()},
+        A=entries["A"],
+        B=entries["B"],
+        C=entries["C"],
+        D=entries["D"],
         states=plant.states,
         inputs=plant.inputs,
         outputs=plant.outputs,

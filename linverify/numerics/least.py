@@ -36,8 +36,8 @@ def least(task: Task) -> TrimResult:
         ends = solve(wide, starts)
         result = none(task, joined(ends, stragglers(wide, ends)), (), False, wide)
         return replace(result, starts=starts.shape[1])
-    ends = nearest(wide, weights, target, feasible, task.ask.accuracy)
-    return replace(_judged(task, wide, ends), starts=starts.shape[1])
+    found = nearest(wide, weights, target, feasible, task.ask.accuracy)
+    return replace(_judged(task, wide, found), starts=starts.shape[1])
 
 
 def _judged(task: Task, wide: Equations, ends: tuple[Nearest, ...]) -> TrimResult:

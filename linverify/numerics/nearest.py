@@ -95,7 +95,7 @@ def _step(system: Equations, weights: Array, target: Array, z: Array, slopes: Ar
     pull = weights * (z - target)
     held = (z <= low + EDGE) | (z >= high - EDGE)
     for _ in range(z.size + 1):
-        multipliers = np.linalg.lstsq(slopes[:, ~held].T, -pull[~held], rcond=None)[0]
+        multipliers = np.asarray(np.linalg.lstsq(slopes[:, ~held].T, -pull[~held], rcond=None)[0], dtype=np.float64)
         bend = _curvature(system, z, multipliers)
         along = _tangents(slopes, held)
         reduced = along.T @ (np.diag(weights) + bend) @ along

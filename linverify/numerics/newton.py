@@ -129,7 +129,7 @@ def _inverted(even: Array) -> Array:
     """Pseudo-inverses (N, q, r); by elimination, much faster, where a matrix is square and far from singular."""
     _, r, q = even.shape
     if r != q or not r:
-        return np.linalg.pinv(even, rcond=RANK)
+        return np.asarray(np.linalg.pinv(even, rcond=RANK), dtype=np.float64)
     weak = (np.abs(even).max(axis=1) == 0.0).any(axis=1) | (np.abs(even).max(axis=2) == 0.0).any(axis=1)
     inverse = np.empty_like(even)
     try:
@@ -144,7 +144,7 @@ def _inverted(even: Array) -> Array:
 
 def shortest_step(slopes: Array, residual: Array) -> Array:
     """The step d (q, N) with slopes d = -residual in the least-squares sense; slopes (N, r, q), residual (r, N)."""
-    return -np.einsum("kqr,rk->qk", pseudo_inverse(slopes), residual)
+    return np.asarray(-np.einsum("kqr,rk->qk", pseudo_inverse(slopes), residual), dtype=np.float64)
 
 
 def _inverse_of(size: Array) -> Array:

@@ -56,7 +56,7 @@ def noise(system: Equations, z: Array, at: Array, slopes: Array) -> Array:
     moved = np.clip(whole + moves[:, :, np.newaxis] * np.maximum(1.0, 1e-3 * np.abs(whole)), low, high)
     values = system.residual(moved.reshape(q, -1)).reshape(-1, turns.size, columns)
     left = values - at[:, np.newaxis, :] - np.einsum("krq,qtk->rtk", slopes, moved - whole)
-    return np.nan_to_num(np.fmax.reduce(np.abs(left), axis=1))
+    return np.asarray(np.nan_to_num(np.fmax.reduce(np.abs(left), axis=1)), dtype=np.float64)
 
 
 def search(system: Equations, starts: Array, accuracy: float) -> Ends:
@@ -177,4 +177,4 @@ def _flatness(system: Equations, root: Root, rough: Array) -> Array:
     hidden = np.all(np.abs(system.residual(inside)) <= limit, axis=0)
     far = np.abs(inside - z).max(axis=0)  # a root on a bound cannot hide beyond it
     # what is hidden at one size and shows at the next may be hidden up to there
-    return np.sqrt(10.0) * np.max(np.where(hidden, far, 0.0).reshape(moves.size, q), axis=0)
+    return np.asarray(np.sqrt(10.0) * np.max(np.where(hidden, far, 0.0).reshape(moves.size, q), axis=0), dtype=np.float64)

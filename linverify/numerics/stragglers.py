@@ -7,6 +7,7 @@ success is not looked at.
 from __future__ import annotations
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..core.model import Array
 from .equations import Equations
@@ -38,7 +39,7 @@ def stragglers(system: Equations, ends: Ends) -> Ends:
     )
 
 
-def _squeezed(system: Equations, z: Array, usable: Array) -> Array:
+def _squeezed(system: Equations, z: Array, usable: NDArray[np.bool_]) -> Array:
     from scipy.optimize import least_squares  # a fifth of a second to import, and most trims never need it
 
     low, high = system.box
@@ -53,7 +54,7 @@ def _squeezed(system: Equations, z: Array, usable: Array) -> Array:
 
     def slope(part: Array) -> Array:
         whole = filled(part)
-        return np.nan_to_num(jacobian(system, whole, system.residual(whole))[0][:, usable])
+        return np.asarray(np.nan_to_num(jacobian(system, whole, system.residual(whole))[0][:, usable]), dtype=np.float64)
 
     inside = np.clip(z[usable], low[usable], high[usable])
     if not np.isfinite(value(inside)).all():

@@ -71,7 +71,8 @@ def _notes(study: Study, found: Linearization) -> tuple[str, ...]:
     if hidden > 0:
         notes.append(f"{hidden} more corners are in the record")
     if small:
-        notes.append(f"{small} smaller corners lie within 0.01 nominal sizes, each below `slope_gap`")
+        lie = "smaller corner lies" if small == 1 else "smaller corners lie"
+        notes.append(f"{small} {lie} within 0.01 nominal sizes, below `slope_gap`")
     notes += [mismatch.told() for mismatch in found.cross_check[:TOLD] if mismatch.told() != found.message]
     return tuple(notes)
 

@@ -22,6 +22,7 @@ from .kinks import GapFinding, GapKind
 
 ACCURACY = 1e-8  # default of the trim: scaled residual up to which a point is an equilibrium
 SLACK = 1.5  # a residual that the trim accepted is not refused here for its last bits
+AT = 1e-10  # nominal sizes: closer than this is told as "at the point"
 LEAST_SCALE = 1e-9  # nominal sizes per time unit and nominal size: terms of a row below this are noise, not structure
 
 
@@ -248,7 +249,7 @@ def told_corner(corner: Corner) -> str:
     entry = f"d {corner.row} / d {corner.column}"
     where = (
         "at the point"
-        if abs(corner.distance) < 1e-12
+        if abs(corner.distance) < AT
         else f"{abs(corner.distance):.3g} nominal sizes " + ("above" if corner.distance > 0 else "below")
     )
     spot = f"{where}, at {corner.column} = {corner.place:.9g}"
@@ -257,7 +258,7 @@ def told_corner(corner: Corner) -> str:
     if corner.kind == "steep":
         return f"{entry}: the slope grows without bound {spot}"
     share = 100 * corner.gap
-    return f"{entry}: slopes {corner.left:.6g} below and {corner.right:.6g} above differ by {share:.3g} % {spot}"
+    return f"{entry}: slopes {corner.left:.4g} below and {corner.right:.4g} above differ by {share:.3g} % {spot}"
 
 
 def _largest(task: _Task, found: Slopes, corners: tuple[Corner, ...]) -> tuple[float, str, float]:

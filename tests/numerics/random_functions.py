@@ -137,4 +137,4 @@ def scattered(values: np.ndarray) -> np.ndarray:
     bits = np.ascontiguousarray(values).view(np.uint64)
     bits = (bits * np.uint64(0x9E3779B97F4A7C15)) ^ (bits >> np.uint64(29))
     bits = bits * np.uint64(0xBF58476D1CE4E5B9)
-    return (bits ^ (bits >> np.uint64(32))).astype(np.float64) / 2.0**64 - 0.5
+    return ((bits ^ (bits >> np.uint64(32))).astype(np.float64) / 2.0**64 - 0.5).reshape(np.shape(values))

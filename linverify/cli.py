@@ -64,6 +64,9 @@ def _parser() -> argparse.ArgumentParser:
     explain.add_argument("point", nargs="?", metavar="POINT", help="one operating point; default: all of them")
     explain.set_defaults(command=_explain)
 
+    schema = commands.add_parser("schema", help="print a JSON Schema of specs, for completion in editors")
+    schema.set_defaults(command=_schema)
+
     for command in (check, replay):
         command.add_argument("--seed", type=_seed, default=0, metavar="N", help="seed of the drives (default: 0)")
         command.add_argument(
@@ -133,6 +136,15 @@ def _explain(given: argparse.Namespace, threads: str) -> int:
 
     cases = run.points(given.spec, given.point)
     print("\n\n".join("\n".join(run.effective(case)) for case in cases))
+    return 0
+
+
+def _schema(given: argparse.Namespace, threads: str) -> int:
+    import json
+
+    from .spec.schema import schema
+
+    print(json.dumps(schema(), indent=1, sort_keys=True))
     return 0
 
 

@@ -19,7 +19,7 @@ from .core.case import Case, CheckAsk, Options
 from .core.drive import Drive
 from .core.errors import LinverifyError, Problem, SpecError
 from .core.signals import nearest
-from .core.verdict import Status, Verdict
+from .core.verdict import Verdict
 from .report import files, record, tables, text
 from .spec.bind import load
 from .spec.source import is_spec
@@ -69,10 +69,8 @@ def conclude(books: Books, options: Options, root: Path) -> Concluded:
         partial=books.partial,
         profile=options.profile,
         root=root,
+        why=books.why,
     )
-    for item in made["body"]["items"]:
-        if item["status"] == Status.NOT_RUN:
-            item["reason"] = books.why.get(item["id"], item["reason"])
     verdicts = record.verdicts_of(made)
     written = files.write(made, options.reports) if options.reports else ()
     lines = _lines(verdicts, written, options, partial=books.partial)

@@ -31,8 +31,8 @@ def _write(project: Path, name: str, text: str) -> Path:
     return path
 
 
-def _record(project: Path) -> dict[str, Any]:
-    return dict(json.loads((project / "reports/linverify.json").read_text(encoding="utf-8")))
+def _record(project: Path, name: str = "linverify.json") -> dict[str, Any]:
+    return dict(json.loads((project / "reports" / name).read_text(encoding="utf-8")))
 
 
 def test_check_that_all_holds(project: Path, capsys: pytest.CaptureFixture[str]) -> None:
@@ -76,7 +76,14 @@ def test_check_with_a_seed_and_the_quick_profile(project: Path, capsys: pytest.C
     _write(project, "specs/basin.yaml", SPEC)
     assert main(["check", "--seed", "9", "--profile", "quick", "specs"]) == 0
     assert "Quick profile: not for acceptance." in capsys.readouterr().out
-    assert _record(project)["provenance"]["seed"] == 9
+    assert _record(project, "linverify-quick.json")["provenance"]["seed"] == 9
+
+
+def test_schema_prints_what_editors_read(capsys: pytest.CaptureFixture[str]) -> None:
+    assert main(["schema"]) == 0
+    printed = json.loads(capsys.readouterr().out)
+    assert printed["$schema"] == "http://json-schema.org/draft-07/schema#"
+    assert {"plant", "operating_points", "error_bands"} <= printed["properties"].keys()
 
 
 MISTAKES: list[tuple[list[str], str]] = [

@@ -177,4 +177,5 @@ def _flatness(system: Equations, root: Root, rough: Array) -> Array:
     hidden = np.all(np.abs(system.residual(inside)) <= limit, axis=0)
     far = np.abs(inside - z).max(axis=0)  # a root on a bound cannot hide beyond it
     # what is hidden at one size and shows at the next may be hidden up to there
-    return np.asarray(np.sqrt(10.0) * np.max(np.where(hidden, far, 0.0).reshape(moves.size, q), axis=0), dtype=np.float64)
+    farthest = np.max(np.where(hidden, far, 0.0).reshape(moves.size, q), axis=0)
+    return np.asarray(np.sqrt(10.0) * farthest, dtype=np.float64)

@@ -54,7 +54,8 @@ def _squeezed(system: Equations, z: Array, usable: NDArray[np.bool_]) -> Array:
 
     def slope(part: Array) -> Array:
         whole = filled(part)
-        return np.asarray(np.nan_to_num(jacobian(system, whole, system.residual(whole))[0][:, usable]), dtype=np.float64)
+        slopes = jacobian(system, whole, system.residual(whole))[0]
+        return np.asarray(np.nan_to_num(slopes[:, usable]), dtype=np.float64)
 
     inside = np.clip(z[usable], low[usable], high[usable])
     if not np.isfinite(value(inside)).all():

@@ -22,7 +22,8 @@ class TrimResult:
     conclusive: without a trim, whether the search says that there is none (else it could not tell).
     nearest_holds: values of the held quantities, nearest to those asked, at which a trim exists; empty if none found.
     free_names: the unknowns that a family (or `minimize`) leaves open. starts, evaluations (columns of states and
-    inputs), failed_calls: what the search cost; first_failure: the first call that failed. message: one line for a reader, empty when DONE; notes: further lines.
+    inputs), failed_calls: what the search cost; first_failure: the first call that failed. message: one line for a
+    reader, empty when DONE; notes: further lines.
     """
 
     outcome: Outcome

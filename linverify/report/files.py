@@ -7,7 +7,6 @@ renamed only when all of them are on the disk. What existed before stays until t
 from __future__ import annotations
 
 import os
-import re
 import secrets
 from collections.abc import Mapping
 from contextlib import suppress
@@ -16,18 +15,18 @@ from typing import Any
 
 from ..core.errors import RecordError
 from . import markdown, record, tables
-from .wire import plain, text_of
 
 FULL = {"record": "linverify.json", "page": "compliance.md", "rows": "compliance.csv"}
+QUICK = {"record": "linverify-quick.json", "page": "linverify-quick.md", "rows": "linverify-quick.csv"}
 PARTIAL = {"record": "linverify-partial.json", "page": "linverify-partial.md", "rows": "linverify-partial.csv"}
 
 
 def write(run: Mapping[str, Any], folder: Path) -> tuple[Path, ...]:
     """Write the record, the compliance report and its rows; returns their paths.
 
-    A partial run has names of its own. Raises RecordError, with all earlier files as they were.
+    A partial run and a quick one have names of their own. Raises RecordError, with all earlier files as they were.
     """
-    names = PARTIAL if run["body"]["partial"] else FULL
+    names = PARTIAL if run["body"]["partial"] else QUICK if run["body"]["profile"] == "quick" else FULL
     texts = {
         folder / names["record"]: record.canonical(run),
         folder / names["page"]: markdown.page(run),
@@ -35,18 +34,6 @@ def write(run: Mapping[str, Any], folder: Path) -> tuple[Path, ...]:
     }
     write_texts(texts)
     return tuple(texts)
-
-
-def write_evidence(folder: Path, digest: str, data: Mapping[str, Any]) -> Path:
-    """Write a drive with its trajectories to FOLDER/DIGEST.json, every digit kept; returns the path.
-
-    Raises RecordError, for what is no digest too.
-    """
-    if not re.fullmatch(r"[0-9a-f]{6,64}", digest):
-        raise RecordError(f"{digest!r} is not the digest of a drive")
-    path = folder / f"{digest}.json"
-    write_texts({path: text_of(plain(data, exact=True), indent=1) + "\n"})
-    return path
 
 
 def write_texts(texts: Mapping[Path, str]) -> None:

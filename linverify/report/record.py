@@ -72,7 +72,7 @@ def build(
     """The record of one run, as plain data {format, body, provenance}.
 
     planned: ids of all items that were started; one without a verdict becomes a "not run" item. points: `describe` of
-    each operating point. partial: items were left out on purpose. root: folder whose absolute path is cut out of
+    each operating point. partial: some check has no verdict. root: folder whose absolute path is cut out of
     every text of the body. why: reasons, by id, for verdicts that are missing. Raises RecordError.
     """
     described = {(point["spec"], point["point"]): dict(point) for point in points}

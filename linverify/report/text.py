@@ -19,7 +19,7 @@ CAUTION = (
     "local codes or the judgement of licensed engineers."
 )
 QUICK = "Quick profile: not for acceptance."
-PARTIAL = "Partial run: items were left out on purpose; this is not a full report."
+PARTIAL = "Partial run: not every check of these specs has a verdict; this is not a full report."
 
 
 def failure(verdict: Verdict, *, evidence: str = "reports/evidence") -> str:

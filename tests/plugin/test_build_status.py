@@ -120,7 +120,7 @@ def test_quick_is_marked_in_the_summary_and_the_record(project: Project) -> None
     result = project.run("--linverify-profile", "quick", "specs")
     assert result.ret == 0
     result.stdout.fnmatch_lines(["Quick profile: not for acceptance."])
-    assert project.body()["profile"] == "quick"
+    assert project.body("linverify-quick.json")["profile"] == "quick"
 
 
 def test_reports_that_cannot_be_written_fail_the_build(project: Project) -> None:

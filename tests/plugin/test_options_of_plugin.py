@@ -34,7 +34,7 @@ def test_seed_profile_and_folder_arrive_in_the_header_and_the_record(project: Pr
     result = project.run("--linverify-seed=7", "--linverify-profile=quick", "--linverify-reports=out/deep", "specs")
     assert result.ret == 0
     result.stdout.fnmatch_lines(["linverify: version *, seed 7, profile quick"])
-    record = json.loads((project.path / "out/deep/linverify.json").read_text(encoding="utf-8"))
+    record = json.loads((project.path / "out/deep/linverify-quick.json").read_text(encoding="utf-8"))
     assert record["provenance"]["seed"] == 7
     assert record["body"]["profile"] == "quick"
     assert project.reports == []

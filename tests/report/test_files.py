@@ -2,12 +2,10 @@
 
 from __future__ import annotations
 
-import json
 import os
 from pathlib import Path
 from typing import Any
 
-import numpy as np
 import pytest
 from invented import EVERY, PLANNED, POINTS, PROVENANCE
 
@@ -50,6 +48,14 @@ def test_a_partial_run_leaves_a_full_report_alone(tmp_path: Path) -> None:
         "linverify-partial.csv",
     ]
     assert {name: data for name, data in contents(tmp_path).items() if "partial" not in name} == before
+
+
+def test_a_quick_run_leaves_a_full_report_alone(tmp_path: Path) -> None:
+    files.write(run(), tmp_path)
+    before = contents(tmp_path)
+    written = files.write(record.build(EVERY, profile="quick"), tmp_path)
+    assert [path.name for path in written] == ["linverify-quick.json", "linverify-quick.md", "linverify-quick.csv"]
+    assert {name: data for name, data in contents(tmp_path).items() if "quick" not in name} == before
 
 
 def test_a_later_run_replaces_an_earlier_one(tmp_path: Path) -> None:
@@ -106,21 +112,6 @@ def test_a_failing_rename_leaves_no_temporary_file(tmp_path: Path, monkeypatch: 
     monkeypatch.setattr(Path, "replace", denied)
     with pytest.raises(RecordError, match="Permission denied"):
         files.write(run(), tmp_path)
-    assert contents(tmp_path) == {}
-
-
-def test_evidence_keeps_every_digit(tmp_path: Path) -> None:
-    data = {"values": [[1 / 3]], "times": np.array([0.1, np.nan]), "text": "x"}
-    path = files.write_evidence(tmp_path / "evidence", "3fa9c1d20b77", data)
-    assert path == tmp_path / "evidence" / "3fa9c1d20b77.json"
-    kept = json.loads(path.read_text(encoding="utf-8"))
-    assert kept == {"values": [[1 / 3]], "times": [0.1, {"$float": "nan"}], "text": "x"}
-
-
-@pytest.mark.parametrize("digest", ["", "../escape", "3FA9C1D20B77", "abc", "3fa9c1d20b77.json"])
-def test_what_is_no_digest_is_refused(tmp_path: Path, digest: str) -> None:
-    with pytest.raises(RecordError, match="is not the digest of a drive"):
-        files.write_evidence(tmp_path, digest, {})
     assert contents(tmp_path) == {}
 
 

@@ -85,3 +85,24 @@ def test_an_empty_vessel_is_known_to_be_empty() -> None:
     found = verdict("robertson", "empty")
     assert found.status is Status.PASS, found.reason
     assert found.details["states"]["a"] == {"value": 0.0, "unit": "1"}
+
+
+# c at the end of each horizon: printed (from memory), derived (Radau at a relative tolerance of 1e-10), verdict
+ROWS = [
+    ("s4", 9.4452e-2, 9.44589167e-2, Status.PASS),
+    pytest.param("s40", 2.8417e-1, 2.84163746e-1, Status.FAIL, marks=pytest.mark.slow),
+    ("s4000", 8.1680e-1, 8.16796848e-1, Status.PASS),
+]
+
+
+@pytest.mark.parametrize(("drives", "printed", "derived", "status"), ROWS)
+def test_further_rows_of_the_table(drives: str, printed: float, derived: float, status: Status) -> None:
+    """Stiff only away from the operating point: explicit steps are given up where they grow too many."""
+    found = verdict("robertson_long", "empty", f"follows.{drives}")
+    assert found.status is status, found.reason
+    c = found.figures[0]
+    assert (c.signal, c.status) == ("c", status)
+    assert c.worst == pytest.approx(printed, rel=5e-4)
+    assert c.worst == pytest.approx(derived, rel=1e-6)
+    if drives == "s4000":
+        assert found.details["integration"]["method"] == "Rosenbrock 4(3)"

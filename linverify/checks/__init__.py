@@ -31,6 +31,7 @@ TABLE = {
     for row in (
         Row("trims", ()),
         Row("differentiable", ("trim",)),
+        Row("agrees", ("trim", "reference")),
         Row("follows", ("trim", "model")),
     )
 }

@@ -19,6 +19,7 @@ from __future__ import annotations
 
 import math
 import re
+from collections.abc import Sequence
 from functools import lru_cache
 from typing import TYPE_CHECKING, Any
 
@@ -107,6 +108,27 @@ def per_time(unit: str, time_unit: str) -> str:
     if unit.endswith(f"/{time_unit}") and unit.count("/") == 1:
         return f"{unit}^2"
     return f"{unit}/{time_unit}"
+
+
+def composed(above: Sequence[str], below: Sequence[str]) -> str:
+    """The unit of a product over a product, cleared: `rad/s^2` over `m/s` is `rad/(m s)`; "1" where nothing is left.
+
+    Names are kept as they are spelled. Raises UnitError for what is no unit text.
+    """
+    powers: dict[str, float] = {}
+    for units, sign in ((above, 1.0), (below, -1.0)):
+        for unit in units:
+            try:
+                if unit not in _PLAIN:
+                    _add_product(_Tokens(unit), powers, sign, closing=False)
+            except (_NoUnitError, RecursionError):
+                raise UnitError(f"{unit!r} is no unit", _EXAMPLES) from None
+    top = [_power(name, power) for name, power in powers.items() if power > 0]
+    bottom = [_power(name, -power) for name, power in powers.items() if power < 0]
+    if not bottom:
+        return " ".join(top) or "1"
+    joined = f"({' '.join(bottom)})" if len(bottom) > 1 else bottom[0]
+    return f"{' '.join(top) or '1'}/{joined}"
 
 
 def amplitude_ratio(number: float, unit: str) -> float:

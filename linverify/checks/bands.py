@@ -6,6 +6,7 @@ the share is their quotient, and accuracy is judged on their difference. What th
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass
 
@@ -137,8 +138,13 @@ def _rms(error: Array, times: Array, counts: NDArray[np.bool_]) -> Array:
 
 
 def _exits(runs: Runs) -> tuple[Array, Array, Array, Array]:
-    """How far the local model still was from the limit that the plant left through, as a share of the way."""
-    missed = [0.0 if left is None else max(0.0, 1.0 - left.model_way) for left in runs.exits]
+    """How far the local model still was from the limit that the plant left through, as a share of the way.
+
+    Of a signal that it does not have the local model says nothing, so there is nothing that it could have missed.
+    """
+    missed = [
+        0.0 if left is None or math.isnan(left.model_way) else max(0.0, 1.0 - left.model_way) for left in runs.exits
+    ]
     when = [np.nan if left is None else left.time for left in runs.exits]
     count = len(missed)
     return np.array(missed), np.full(count, MISMATCH), np.array(when), np.ones(count)

@@ -82,8 +82,11 @@ def comparison(study: Study, name: str) -> Comparison:
     signals = tuple(dict.fromkeys(band.signal for band in bands))
     plant = study.bound
     watched = {signal: room for signal, room in case.envelope.items() if signal not in plant.inputs}
-    rig = Rig(plant, point, model, signals, watched, _weights(study, model, limits, bands, signals))
-    start = Fidelity(_nodes(model, drives.every), TOLERANCE)
+    about = study.about()
+    weights = _weights(study, model if about is None else about, limits, bands, signals)
+    rig = Rig(plant, point, model, signals, watched, weights, about=about)
+    nodes = max(_nodes(one, drives.every) for one in (model, about) if one is not None)
+    start = Fidelity(nodes, TOLERANCE)
     return Comparison(case, drives, bands, limits, rig, start, case.exits.mismatch == "fail")
 
 
@@ -105,13 +108,14 @@ def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Ba
     An error in a state reaches a signal later, through the dynamics: the largest effect over the horizon counts. The
     size of the state's own motion under these drives bounds the weight from above.
     """
-    names = (*model.states.names, *signals)
+    plant = study.bound.states.names
+    names = tuple(dict.fromkeys(name for name in (*plant, *signals) if name in model.states or name in model.outputs))
     inputs, states = reaches(model, names, limits.every, limits.intervals, limits.course)
     moved = dict(zip(names, _excursions(model, limits, inputs, states), strict=True))
-    effect = dict(zip(names, states, strict=True))
-    nominal = np.array([study.case.nominal.get(name, 1.0) for name in model.states.names])
-    excursion = np.array([moved[name] for name in model.states.names])
+    nominal = np.array([study.case.nominal.get(name, 1.0) for name in plant])
+    excursion = np.array([moved.get(name, 0.0) for name in plant])
     excursion = np.where(excursion > 0.0, np.minimum(excursion, nominal), nominal)
+    effect = {name: _by_state(model, plant, row) for name, row in zip(names, states, strict=True)}
     found = excursion
     for band in bands:
         size = band.limit if band.kind != "relative" else band.fraction * moved[band.signal]
@@ -123,11 +127,18 @@ def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Ba
     return weights
 
 
+def _by_state(model: LocalModel, plant: Sequence[str], row: Array) -> Array:
+    """What each of the plant's states adds; nothing is known of those that the model does not have."""
+    return np.array([row[model.states.index(name)] if name in model.states else 0.0 for name in plant])
+
+
 def _excursions(model: LocalModel, limits: Limits, inputs: Array, states: Array) -> Array:
     """Largest possible deviation of each signal in the local model under these drives and offsets together."""
     total = np.zeros(len(inputs))
     for column, name in enumerate(limits.inputs):
-        total += max(limits.high[column], -limits.low[column]) * inputs[:, model.inputs.index(name)]
+        if name in model.inputs:
+            total += max(limits.high[column], -limits.low[column]) * inputs[:, model.inputs.index(name)]
     for column, name in enumerate(limits.offsets):
-        total += max(limits.offset_high[column], -limits.offset_low[column]) * states[:, model.states.index(name)]
+        if name in model.states:
+            total += max(limits.offset_high[column], -limits.offset_low[column]) * states[:, model.states.index(name)]
     return total

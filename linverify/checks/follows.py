@@ -15,6 +15,7 @@ import numpy as np
 
 from ..core.case import CheckAsk
 from ..core.verdict import Evidence, Figure, Sense, Status, Verdict, merged
+from . import fitting
 from .campaign import KINDS, Campaign, Pins, campaign, read_pins
 from .comparison import Comparison, comparison
 from .confirm import Word, random_breaks, simplest, words
@@ -39,8 +40,12 @@ class _Findings:
 
 def check(study: Study, ask: CheckAsk) -> Verdict:
     """The verdict on one set of drives. Raises KeyError for a set that the case does not have, OSError from saving."""
-    compared = comparison(study, ask.drives)
     found = _Findings()
+    if reasons := fitting.misfits(study, ask.drives):
+        found.open += reasons
+        return _verdict(study, ask, found, [], {})
+    compared = comparison(study, ask.drives)
+    found.notes += fitting.told(study, ask.drives)
     if study.options.profile == "quick":
         found.notes.append(QUICK_NOTE)
     found.notes += compared.limits.told

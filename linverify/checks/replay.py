@@ -11,6 +11,7 @@ from ..core.drive import Drive
 from ..core.errors import PlantError
 from ..core.verdict import Evidence, Figure, Status, Verdict, merged
 from ..drives import pinned
+from . import fitting
 from .accuracy import State, examine
 from .campaign import noise_of
 from .comparison import comparison
@@ -41,6 +42,8 @@ def replayed_study(study: Study, ask: CheckAsk, drive: Drive, name: str = "drive
 
 
 def _replayed(study: Study, ask: CheckAsk, drive: Drive, name: str) -> Verdict:
+    if reasons := fitting.misfits(study, ask.drives):
+        return blank(study.case, ask, Status.UNDECIDED, "; ".join(reasons))
     compared, plant = comparison(study, ask.drives), study.case.plant
     if reasons := pinned.misfits(name, drive, compared.limits, tuple(plant.inputs), tuple(plant.states)):
         return blank(study.case, ask, Status.UNDECIDED, "; ".join(reasons))

@@ -15,6 +15,9 @@ from ..core.bound import BoundPlant
 from ..core.case import Case, Interval, Options
 from ..core.model import Array, LocalModel, OperatingPoint
 from ..numerics.linearize import Linearization, linearize
+from ..numerics.placed import placed
+from ..numerics.reduce import Reduction, reduced, restricted
+from ..numerics.sampled import sampled
 from ..numerics.trim import TrimResult, trim
 
 PROBES = 7  # points at which a plant is tried for batches and determinism
@@ -47,10 +50,38 @@ class Study:
         return self._linearization
 
     def model(self) -> LocalModel:
-        """The local model that is verified. Raises ValueError where there is none: ask `unmet` first."""
-        model = self.model_override or self.linearization().model
-        if model is None:
-            raise ValueError(f"{self.case.point} has no local model")
+        """The local model that is verified: delivered, or derived here, or derived and reduced.
+
+        Raises ValueError where there is none: ask `unmet("model")` first.
+        """
+        if self.model_override is not None:
+            return self.model_override
+        if self.case.local.delivered is not None:
+            return self._delivered
+        return self.reference()
+
+    def derived(self) -> LocalModel:
+        """The full derived local model. Raises ValueError where there is none: ask `unmet("derived")` first."""
+        linear = self.linearization()
+        if not linear.outcome.done or linear.model is None:
+            raise ValueError(f"{self.case.point} has no derived local model")
+        return linear.model
+
+    def reference(self) -> LocalModel:
+        """What an exact delivery would be: the derived model on the same states, inputs and outputs, in plant order.
+
+        Reduced where the spec keeps less, sampled where a sampled model was delivered; all states where those of the
+        delivered model are anonymous. Raises ValueError where there is none: ask `unmet("reference")` first.
+        """
+        if self._reference.model is None:
+            raise ValueError(f"{self.case.point} has no reference: {self._reference.refusal}")
+        return self._reference.model
+
+    def about(self) -> LocalModel | None:
+        """The derived slopes even where the plant has corners at the point: good for choosing steps, not for proof."""
+        model = self.linearization().model
+        if model is None or not all(np.isfinite(getattr(model, name)).all() for name in ("A", "B", "C", "D")):
+            return None
         return model
 
     def point(self) -> OperatingPoint:
@@ -61,15 +92,51 @@ class Study:
         return point
 
     def unmet(self, need: str) -> str:
-        """Why `need` ("trim" or "model") cannot be met here; empty where it is met."""
+        """Why `need` ("trim", "model", "derived" or "reference") cannot be met here; empty where it is met.
+
+        A delivered model needs no derived one: it is driven even where the plant has no slopes.
+        """
         result = self.trim()
         if not result.outcome.done or result.point is None:
             return f"no operating point to work from: {result.outcome.value}"
-        if need == "model" and self.model_override is None:
+        if need == "model":
+            if self.model_override is not None:
+                return ""
+            if self.case.local.delivered is not None:
+                return self._unfit
+            need = "reference"
+        if need in ("derived", "reference"):
             linear = self.linearization()
             if not linear.outcome.done or linear.model is None:
                 return f"no derived local model: {linear.outcome.value}"
+        return self._reference.refusal if need == "reference" else ""
+
+    @cached_property
+    def _delivered(self) -> LocalModel:
+        delivered = self.case.local.delivered
+        if delivered is None:
+            raise ValueError(f"{self.case.point} has no delivered model")
+        return placed(delivered, self.point())
+
+    @cached_property
+    def _unfit(self) -> str:
+        """Why the delivered model is none of this plant; empty where it is one."""
+        try:
+            _ = self._delivered
+        except ValueError as error:
+            return f"the delivered model does not fit the plant: {error}"
         return ""
+
+    @cached_property
+    def _reference(self) -> Reduction:
+        keep, delivered = self.case.local.keep, self.case.local.delivered
+        found = reduced(self.derived(), keep) if keep is not None else Reduction(self.derived())
+        if delivered is None or found.model is None:
+            return found
+        model = restricted(found.model, delivered.inputs, delivered.outputs)
+        if delivered.step is not None and model.step is None:
+            model = sampled(model, delivered.step, delivered.course)
+        return Reduction(model)
 
     @cached_property
     def _trim(self) -> TrimResult:

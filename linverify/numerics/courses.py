@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -78,16 +78,34 @@ def grid(every: float, intervals: int, nodes: int) -> Array:
     return times
 
 
+def model_offsets(rig: Rig, drives: Courses) -> Array:
+    """Initial deviations of the local model's states (n, N): of those that are the plant's, by name."""
+    found = np.zeros((len(rig.model.states), drives.width))
+    for row, name in enumerate(rig.model.states.names):
+        if name in rig.plant.states:
+            found[row] = drives.offsets[rig.plant.states.index(name)]
+    return found
+
+
+def _for_model(rig: Rig, drives: Courses) -> Courses:
+    """The inputs that the local model has, in its order."""
+    if rig.model.inputs.names == rig.plant.inputs.names:
+        return drives
+    pick = [rig.plant.inputs.index(name) for name in rig.model.inputs.names]
+    return replace(drives, start=drives.start[pick], end=drives.end[pick])
+
+
 def linear(rig: Rig, drives: Courses, nodes: int) -> Array:
     """The local model's states at all nodes, (n, K, S + 1, N): exact, as deviations from the trimmed course."""
+    drives = _for_model(rig, drives)
     A, B = rig.model.A, rig.model.B
     out = np.empty((A.shape[0], drives.intervals, nodes + 1, drives.width))
     if rig.plant.step is not None:
-        _stepped(A, B, drives, nodes, out)
+        _stepped(rig, drives, nodes, out)
         return out
     times = drives.every * np.arange(1, nodes + 1) / nodes
     P, Q, R = responses(A, B, times)
-    x = drives.offsets.copy()
+    x = model_offsets(rig, drives)
     slopes = None if drives.held else (drives.end - drives.start) / drives.every
     for k in range(drives.intervals):
         out[:, k, 0] = x
@@ -99,8 +117,8 @@ def linear(rig: Rig, drives: Courses, nodes: int) -> Array:
     return out
 
 
-def _stepped(A: Array, B: Array, drives: Courses, nodes: int, out: Array) -> None:
-    x = drives.offsets.copy()
+def _stepped(rig: Rig, drives: Courses, nodes: int, out: Array) -> None:
+    A, B, x = rig.model.A, rig.model.B, model_offsets(rig, drives)
     for k in range(drives.intervals):
         out[:, k, 0] = x
         for j in range(nodes):
@@ -117,13 +135,19 @@ def input_at(drives: Courses, k: int, share: float) -> Array:
 
 
 def linear_signals(rig: Rig, drives: Courses, states: Array, names: Sequence[str]) -> Array:
-    """The local model's states and outputs called `names` at all nodes, (len(names), K, S + 1, N)."""
-    nodes = states.shape[2] - 1
+    """The local model's states and outputs called `names` at all nodes, (len(names), K, S + 1, N).
+
+    NaN for what the model does not have.
+    """
+    nodes, drives = states.shape[2] - 1, _for_model(rig, drives)
     out = np.empty((len(names), *states.shape[1:]))
     model = rig.model
     for row, name in enumerate(names):
         if name in model.states:
             out[row] = states[model.states.index(name)]
+            continue
+        if name not in model.outputs:
+            out[row] = np.nan
             continue
         index = model.outputs.index(name)
         out[row] = np.tensordot(model.C[index], states, axes=1)

@@ -83,6 +83,14 @@ class Readout:
         """Initial deviations of the states (n,)."""
         return np.array([self.drive.offsets.get(name, 0.0) for name in self.rig.plant.states.names])
 
+    def model_offset(self) -> Array:
+        """Initial deviations of the local model's own states."""
+        return np.array([self.drive.offsets.get(name, 0.0) for name in self.rig.model.states.names])
+
+    def known(self, u: Array) -> Array:
+        """Of all plant inputs (m,) those that the local model has, in its order."""
+        return u[[self.rig.plant.inputs.index(name) for name in self.rig.model.inputs.names]]
+
     def plant(self, time: float, x: Array, u: Array) -> Array:
         """The plant's signals, absolute, for input deviations u; raises PlantError."""
         plant, point = self.rig.plant, self.rig.point
@@ -105,12 +113,14 @@ class Readout:
         return self.plant(time, point.x + point.drift * self.tick(time), np.zeros(self.rig.plant.m))
 
     def model(self, x: Array, u: Array) -> Array:
-        """The local model's signals, as deviations."""
-        model = self.rig.model
+        """The local model's signals for its own states x and all plant inputs, as deviations; NaN for what it lacks."""
+        model, u = self.rig.model, self.known(u)
         values = []
         for name in self.names:
             if name in model.states:
                 values.append(float(x[model.states.index(name)]))
+            elif name not in model.outputs:
+                values.append(float("nan"))
             else:
                 row = model.outputs.index(name)
                 values.append(float(model.C[row] @ x + model.D[row] @ u))
@@ -119,7 +129,7 @@ class Readout:
 
 def model_course(readout: Readout) -> list[Array]:
     """The local model's states where each interval begins, and at the end of the last, (n,) each."""
-    x = readout.offset()
+    x = readout.model_offset()
     starts = [x]
     for k in range(readout.drive.intervals):
         x = model_within(readout, x, k, readout.nodes)
@@ -132,7 +142,7 @@ def model_within(readout: Readout, x: Array, k: int, node: int) -> Array:
     model = readout.rig.model
     if readout.rig.plant.step is not None:
         for j in range(node):
-            x = model.A @ x + model.B @ readout.inputs(k, j / readout.nodes)
+            x = model.A @ x + model.B @ readout.known(readout.inputs(k, j / readout.nodes))
         return x
     return model_after(readout, x, k, readout.drive.every * node / readout.nodes)
 
@@ -144,7 +154,7 @@ def model_after(readout: Readout, x: Array, k: int, local: float) -> Array:
     """
     model, every = readout.rig.model, readout.drive.every
     n, m = model.B.shape
-    start, end = readout.inputs(k, 0.0), readout.inputs(k, 1.0)
+    start, end = readout.known(readout.inputs(k, 0.0)), readout.known(readout.inputs(k, 1.0))
     if readout.drive.course == "held":
         end = start
     if local not in readout.exponentials:

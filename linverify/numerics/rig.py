@@ -17,6 +17,7 @@ from ..core.bound import BoundPlant
 from ..core.case import Interval
 from ..core.model import Array, LocalModel, OperatingPoint
 from ..core.outcome import Outcome
+from .reduce import rates
 
 STIFF = 12.0  # rho(A) x every from which an explicit pair takes more than four steps an interval for stability alone
 
@@ -28,7 +29,7 @@ class Rig:
     signals: the compared ones, states or outputs of plant and model; envelope: absolute ranges of states and outputs
     (inputs are not looked at: drives are cut to their ranges); weights (n,): absolute error of each state that is
     acceptable at all, in its unit. attempts: steps tried an interval, and evaluations: plant columns a drive, before a
-    run ends with TOO_MANY_STEPS.
+    run ends with TOO_MANY_STEPS. about: the plant's own slopes, by which its integrator is chosen; None: the model's.
     """
 
     plant: BoundPlant
@@ -39,6 +40,7 @@ class Rig:
     weights: Array
     attempts: int = 4000
     evaluations: int = 2_000_000
+    about: LocalModel | None = None
 
     def __post_init__(self) -> None:
         if self.weights.shape != (self.plant.n,) or not np.all(self.weights > 0) or not np.isfinite(self.weights).all():
@@ -46,10 +48,16 @@ class Rig:
         for name in self.signals:
             if name not in self.plant.states and name not in self.plant.outputs:
                 raise ValueError(f"the plant has no state or output {name!r} to compare")
+            if name not in self.model.states and name not in self.model.outputs:
+                raise ValueError(f"the local model has no state or output {name!r} to compare")
 
     def stiffness(self, every: float) -> float:
-        """Spectral radius of the local model's A times the time between instants."""
-        return float(np.abs(np.linalg.eigvals(self.model.A)).max(initial=0.0)) * every
+        """Spectral radius of the plant's slopes times the time between instants."""
+        model = self.about or self.model
+        if self.plant.step is None and model.step is not None:
+            poles = rates(model.A, model.step)
+            return float(np.abs(poles[np.isfinite(poles)]).max(initial=0.0)) * every
+        return float(np.abs(np.linalg.eigvals(model.A)).max(initial=0.0)) * every
 
     def stiff(self, every: float) -> bool:
         """Whether drives that change every `every` time units are integrated by an implicit method."""
@@ -91,7 +99,7 @@ class Exit:
     """The plant left the envelope: through which side of which signal, and when (time since the drive began).
 
     limit: the absolute limit; model_way: how far the local model had gone by then from trim to that limit: 0 not at
-    all, 1 at it.
+    all, 1 at it, NaN where the model does not have this signal.
     """
 
     signal: str

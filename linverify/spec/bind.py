@@ -27,30 +27,34 @@ from linverify.core.plant import Plant
 
 from .envelopes import bind_envelope, nominal_sizes
 from .ground import Ground, whole_ratio
-from .layout import Cell, Point, Spec, matches
+from .layout import Cell, Point, Spec, always_checked, matches
+from .local_models import LocalModels, bind_delays, bind_wraps
 from .motions import bind_band, bind_drives
 from .plants import Loaded, load_plant
 from .read import read
 from .trims import bind_accuracy, bind_parameters, bind_trim, told_middles
 
 
-def load(path: Path, root: Path) -> tuple[Case, ...]:
+def load(path: Path, root: Path, *, delivered: bool = True) -> tuple[Case, ...]:
     """Read the spec at `path` and bind it to its plant: one Case a cell of every operating point, in fixed order.
 
     root: the folder that ids count from, and the last place where `package.module` is looked for.
+    delivered: False where files of models are not to be read, as if all were derived: they may not be there yet.
     Raises SpecError with every mistake in the spec, its defaults.yaml, its tables and the import of its plant.
     """
     shown = Path(os.path.relpath(path.resolve(), root.resolve())).as_posix()
     spec, problems = read(path, shown, root)
     if spec is None:
         raise SpecError(problems)
-    cases, more = bind(spec, root, complete=not problems)
+    cases, more = bind(spec, root, complete=not problems, delivered=delivered)
     if problems or more:
         raise SpecError((*problems, *more))
     return cases
 
 
-def bind(spec: Spec, root: Path, *, complete: bool = True) -> tuple[tuple[Case, ...], tuple[Problem, ...]]:
+def bind(
+    spec: Spec, root: Path, *, complete: bool = True, delivered: bool = True
+) -> tuple[tuple[Case, ...], tuple[Problem, ...]]:
     """Cases and mistakes of a spec that has been read; the cases are for use only where there is no mistake.
 
     complete: False where parts of the spec could not be read, so that nothing is counted that may be among them.
@@ -60,7 +64,7 @@ def bind(spec: Spec, root: Path, *, complete: bool = True) -> tuple[tuple[Case, 
         return (), (loaded,)
     ground = Ground(loaded.plant, complete)
     _check_clock(ground, spec)
-    cases = _Binder(spec, ground, loaded).cases()
+    cases = _Binder(spec, ground, loaded, LocalModels(ground, spec, root, delivered)).cases()
     return cases, tuple(ground.problems)
 
 
@@ -79,14 +83,15 @@ def _check_clock(ground: Ground, spec: Spec) -> None:
 class _Binder:
     """What all cells of one spec share, bound once."""
 
-    def __init__(self, spec: Spec, ground: Ground, loaded: Loaded) -> None:
-        self.spec, self.ground, self.plant = spec, ground, loaded.plant
+    def __init__(self, spec: Spec, ground: Ground, loaded: Loaded, local: LocalModels) -> None:
+        self.spec, self.ground, self.plant, self.local = spec, ground, loaded.plant, local
         self.files = tuple(dict.fromkeys((*spec.files, *loaded.files)))
         self.envelope, self.rate_limits = bind_envelope(ground, spec.envelope)
         self.nominal, told = nominal_sizes(self.plant, self.envelope)
         self.settings = (*spec.settings, *told)
         self.slopes = SlopeAsk(spec.slope_gap, MappingProxyType(self._sides()))
         self.time = self._time()
+        self.delays, self.wraps = bind_delays(ground, spec), bind_wraps(ground, spec)
         self.accuracy = bind_accuracy(ground, spec.accuracy, Place(spec.shown))
         self.family = max(1, sum(not cell.skipped for point in spec.points for cell in point.cells))
 
@@ -103,7 +108,8 @@ class _Binder:
     def _case(self, point: Point, cell: Cell, sets: tuple[DriveSet, ...], bands: tuple[Band, ...]) -> Case:
         parameters = bind_parameters(self.ground, point, cell)
         trim = bind_trim(self.ground, point, cell, self.envelope, self.accuracy)
-        told = (*_told_rates(self.spec, point), *told_middles(self.ground, trim, self.envelope))
+        local, told_local = self.local.of(cell, sets, bands)
+        told = (*told_local, *_told_rates(self.spec, point), *told_middles(self.ground, trim, self.envelope))
         return Case(
             spec=self.spec.shown,
             point=cell.name,
@@ -121,15 +127,20 @@ class _Binder:
             drives=sets,
             bands=bands,
             exits=Exits(self.spec.complete, self.spec.mismatch),
+            local=local,
+            delays=self.delays,
+            wraps=self.wraps,
             requirements=self._requirements(cell, self.spec.check_names(point)),
             settings=(*self.settings, *point.settings, *told, *_told_cell(self.plant, point, cell)),
-            files=self.files,
+            files=(*self.files, *self.local.files_of(local)),
             skipped=cell.skipped,
             family=self.family,
         )
 
     def _checks(self, cell: Cell, sets: tuple[DriveSet, ...]) -> tuple[CheckAsk, ...]:
-        always = (CheckAsk("trims", cell.place), CheckAsk("differentiable", cell.place))
+        source, agree = self.spec.local.source, self.local.agree.place
+        kinds = always_checked(delivered=source is not None and self.local.delivered)
+        always = tuple(CheckAsk(kind, agree if kind == "agrees" else cell.place) for kind in kinds)
         return (*always, *(CheckAsk("follows", drives.place, drives.name) for drives in sets))
 
     def _requirements(self, cell: Cell, checks: tuple[str, ...]) -> tuple[Requirement, ...]:

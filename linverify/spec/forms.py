@@ -30,6 +30,12 @@ def _span(reader: Reader, row: Row, called: str, node: Node) -> tuple[Quantity, 
     return None if low is None or high is None else (low, high)
 
 
+def span(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> tuple[Quantity, Quantity] | None:
+    """`[low, high]`, low below high as far as that shows without a unit."""
+    read = _span(reader, _PLAIN, called, node)
+    return read if read is not None and _apart(reader, *read, called) else None
+
+
 def limits(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Limits | None:
     """One line of the envelope."""
     if isinstance(node, Listing):

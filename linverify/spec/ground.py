@@ -65,7 +65,7 @@ class Ground:
         if not kind and name in self.plant.parameters:
             kind = "parameter"
         wrong = f"{name!r} is {_article(kind)} of the plant" if kind else f"the plant has no {name!r}"
-        self.report(place, wrong, f"{what} is expected: {_listed(among)}", "" if kind else nearest(name, among))
+        self.report(place, wrong, f"{what} is expected: {listed(among)}", "" if kind else nearest(name, among))
         return False
 
     def amount(self, quantity: Quantity, unit: str, word: str, *, difference: bool = False) -> float:
@@ -108,6 +108,13 @@ class Ground:
         """A time in the plant's time unit."""
         return self.amount(quantity, self.plant.time_unit, word, difference=True)
 
+    def frequency(self, quantity: Quantity, word: str) -> float:
+        """An angular frequency per time unit of the plant; Hz counts turns of 2 pi."""
+        time_unit = self.plant.time_unit
+        if units.convertible(quantity.unit, "Hz"):
+            return 2.0 * math.pi * self.amount(quantity, f"cycle/{time_unit}", word)
+        return self.amount(quantity, f"rad/{time_unit}", word)
+
     def domain(self, name: str) -> Interval:
         """Where the plant's functions are defined at all."""
         low, high = self.plant.domain.get(name, (None, None))
@@ -145,7 +152,7 @@ def _article(kind: str) -> str:
     return f"an {kind}" if kind[0] in "aeiou" else f"a {kind}"
 
 
-def _listed(names: Iterable[str], most: int = 12) -> str:
+def listed(names: Iterable[str], most: int = 12) -> str:
     """Names for a message; a long list is cut."""
     words = list(names)
     if not words:

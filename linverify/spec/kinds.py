@@ -62,6 +62,8 @@ READERS: dict[Kind, Callable[[Reader, Row, str, Scalar, Node], Any]] = {
     Kind.CHOICES: values.choices,
     Kind.PATTERNS: values.names,
     Kind.FILES: values.files,
+    Kind.SOURCE: values.source,
+    Kind.RANGE: forms.span,
     Kind.LIMITS: forms.limits,
     Kind.AMPLITUDE: forms.amplitude,
     Kind.EXPECT: forms.expect,

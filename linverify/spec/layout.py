@@ -13,12 +13,16 @@ Order: tables keep the order of writing (words of the spec first, then those tha
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from collections.abc import Mapping
+from dataclasses import dataclass, field
 from pathlib import Path
-from typing import Generic, Literal, TypeVar
+from types import MappingProxyType
+from typing import Any, Generic, Literal, TypeVar
 
 from linverify.core.case import BandKind, Course, Setting
 from linverify.core.errors import Place
+
+from .words import CHECKS
 
 T = TypeVar("T")
 
@@ -199,6 +203,45 @@ class Point:
 
 
 @dataclass(frozen=True, slots=True)
+class KeepWords:
+    """What a reduced model keeps; None where a kind is not written (then: all of it). place: the word `keep`."""
+
+    states: tuple[Word, ...] | None
+    inputs: tuple[Word, ...] | None
+    outputs: tuple[Word, ...] | None
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class ResponseWords:
+    """Limits on the frequency response: fractions, and two frequencies."""
+
+    within: float
+    low: Quantity
+    high: Quantity
+    floor: float
+    place: Place
+
+
+@dataclass(frozen=True, slots=True)
+class LocalWords:
+    """`local_models`. source: None for models that are derived here and now; text may hold `{point}`.
+
+    point, entries: fractions, None where not written. places: of the words that are written, by their names.
+    gains: the words under `gains` with their values; None where it is not written.
+    """
+
+    source: FileWord | None = None
+    keep: KeepWords | None = None
+    others: Literal["freeze", "settle"] | None = None
+    point: float | None = None
+    entries: float | None = None
+    response: ResponseWords | None = None
+    gains: Mapping[str, Any] | None = None
+    places: Mapping[str, Place] = field(default_factory=lambda: MappingProxyType({}))
+
+
+@dataclass(frozen=True, slots=True)
 class RequirementAsk:
     """One line of `requirements`; each pattern matches at least one check (see `matches` and `Spec.check_names`)."""
 
@@ -232,11 +275,19 @@ class Spec:
     points: tuple[Point, ...]
     requirements: tuple[RequirementAsk, ...]
     settings: tuple[Setting, ...]
+    local: LocalWords = field(default_factory=LocalWords)
+    wraps: tuple[Word, ...] = ()
+    delays: Mapping[str, tuple[Entry[Quantity], ...]] = field(default_factory=lambda: MappingProxyType({}))
 
     def check_names(self, point: Point) -> tuple[str, ...]:
-        """Names of the checks of each cell of `point`, in order: trims, differentiable, follows or follows.SET ..."""
+        """Names of the checks of each cell of `point`, in order: trims, differentiable, agrees, follows.SET ..."""
         sets = tuple("follows" + (f".{drives.name}" if drives.name else "") for drives in point.drives)
-        return ("trims", "differentiable", *sets)
+        return (*always_checked(delivered=self.local.source is not None), *sets)
+
+
+def always_checked(*, delivered: bool) -> tuple[str, ...]:
+    """The checks that no word asks for: every point has them, `agrees` where its model was handed over."""
+    return ("trims", "differentiable", *(("agrees",) if delivered and CHECKS["agrees"] else ()))
 
 
 def matches(pattern: str, name: str) -> bool:

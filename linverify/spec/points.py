@@ -11,13 +11,13 @@ from linverify.core.errors import Place
 
 from .groups import drive_sets, error_bands, set_names
 from .kinds import Values, block
-from .layout import BandAsk, Cell, DriveAsk, Entry, Point, Quantity, Word
+from .layout import BandAsk, Cell, DriveAsk, Entry, Point, Quantity, Word, always_checked
 from .merge import over, setting
 from .reader import Reader, check_name, misspelt
 from .scalars import quoted
 from .source import Block, Node, Scalar
 from .sweeps import Sweep, cells, read_sweep
-from .words import POINT_WORDS, SHARED_POINT_WORDS, SPEC_WORDS, row_of
+from .words import DERIVE, POINT_WORDS, SHARED_POINT_WORDS, SPEC_WORDS, row_of
 
 # words of the whole spec that a point may override
 OVERRIDDEN = ("parameters", "drives", "error_bands")
@@ -172,7 +172,10 @@ class PointReader:
         names = sorted(set_names(drives)) or ["follows"] if isinstance(drives, Block) else []
         follows = [name if name == "follows" else f"follows.{name}" for name in names]
         self.unsure = self.unsure or not made or not isinstance(drives, Block | None)
-        self.checks += [f"{cell.name}.{check}" for cell in made for check in ("trims", "differentiable", *follows)]
+        local = self.spec.get("local_models")
+        source = local.get("source") if isinstance(local, Block) else None
+        always = always_checked(delivered=isinstance(source, Scalar) and source.text != DERIVE)
+        self.checks += [f"{cell.name}.{check}" for cell in made for check in (*always, *follows)]
 
     def _unique(self, points: list[Point]) -> None:
         first: dict[str, Place] = {}

@@ -12,6 +12,7 @@ from linverify.core.signals import nearest
 
 from .kinds import Values, block
 from .layout import Point, RequirementAsk, Spec, Word, matches
+from .local_words import local_words, settings_told
 from .merge import over, settings
 from .points import PointReader
 from .reader import Reader, check_name, misspelt
@@ -117,6 +118,7 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
         return None
     exits, differentiable = values.get("exits", {}), values.get("differentiable", {})
     title = values.get("title")
+    local = local_words(reader, merged, values)
     own_words = Block(tuple(entry for entry in merged.entries if entry[0].text not in _NO_SETTINGS), merged.place)
     own_rows = tuple(row for row in SPEC_WORDS if row.word not in _NO_SETTINGS)
     return Spec(
@@ -134,7 +136,10 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
         side=differentiable.get("side", ()),
         points=points,
         requirements=requirements,
-        settings=tuple(settings(own_words, own_rows)),
+        settings=tuple(settings_told(settings(own_words, own_rows), local)),
+        local=local,
+        wraps=values.get("wraps", ()),
+        delays=values.get("delays", {}),
     )
 
 

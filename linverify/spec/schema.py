@@ -28,6 +28,7 @@ _SIMPLE: dict[Kind, Schema] = {
     Kind.COUNT: {"type": "integer"},
     Kind.NAMES: _TEXTS,
     Kind.PATTERNS: _TEXTS,
+    Kind.SOURCE: {"type": "string"},
     Kind.FILES: {"anyOf": [{"type": "string"}, _TEXTS]},
     Kind.RANGE: _PAIR,
     Kind.EXPECT: {"type": "string", "pattern": r"\+-|\+/-|±"},

@@ -110,6 +110,18 @@ def plant(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Pla
     return PlantRef(where if is_file else "", "" if is_file else where, name, folder, scalar.text, scalar.place)
 
 
+def source(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> FileWord | None:
+    """`derive`, or a file that models are read from; a row with a refusal takes no file."""
+    expected = "derive is expected" if row.refusal else 'derive or a file is expected, as in "models/{point}.json"'
+    scalar = reader.scalar(node, called, expected)
+    if scalar is None:
+        return None
+    if scalar.text == row.default or not row.refusal:
+        return FileWord(scalar.text, reader.folder(scalar.place), scalar.place)
+    reader.tell(scalar.place, f"`{called}`: {row.refusal}", expected, nearest(scalar.text, (row.default,)))
+    return None
+
+
 def choice(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> str | None:
     """One of the row's choices."""
     expected = ", ".join(row.choices[:-1]) + " or " + row.choices[-1] if len(row.choices) > 1 else row.choices[0]

@@ -27,6 +27,7 @@ class Kind(Enum):
     CHOICE = "one of a few words"
     NAMES = "a list of names"
     CHOICES = "a list of some of a few words"
+    SOURCE = "derive, or a file or folder of models, {point} in its name standing for the operating point"
     PATTERNS = "a list of patterns"
     FILES = "a file pattern or a list of them"
     LIMITS = "[low, high] or a group of min, max, range, rate"
@@ -75,6 +76,7 @@ def later(word: str, meaning: str) -> Row:
 
 
 SIGNAL = "the signal's"
+DERIVE = "derive"  # behind `local_models: source`, for models that nobody delivered
 SHAPES = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
 
 LIMIT_WORDS = (
@@ -146,14 +148,46 @@ POINT_WORDS = (
     Row("skip", Kind.PATTERNS, "cells known to have no trim; reported as skipped"),
 )  # fmt: skip
 
-LOCAL_MODEL_WORDS = (
-    Row("source", Kind.CHOICE, "where local models come from", default="derive", choices=("derive",),
-        refusal="local models from files are not available in this version"),
-    later("keep", "states, inputs, outputs of a reduced model"),
-    later("others", "what is left out is frozen or settled"),
-    later("with", "loops that are closed inside the model"),
-    later("agree", "delivered against derived"),
+RESPONSE_WORDS = (
+    Row("within", Kind.FRACTION, "largest difference, of |G|", required=True, sign="+"),
+    Row("between", Kind.RANGE, "frequencies, in rad/s or Hz", dimension="frequency", required=True),
+    Row("floor", Kind.FRACTION, "share of the peak of |G| below which |G| does not shrink the limit", default="1 %",
+        sign="0+"),
 )  # fmt: skip
+
+GAIN_WORDS = (
+    Row("singular_values", Kind.FRACTION, "largest difference of static singular values, of each", sign="+"),
+    Row("relative_gain", Kind.NUMBER, "largest difference of static relative gains", sign="+"),
+    Row("determinant_sign", Kind.CHOICE, "sign of the determinant of the static gains", choices=("same",)),
+)
+
+AGREE_WORDS = (
+    Row("point", Kind.FRACTION, "claimed operating point against ours, in nominal sizes", default="1 %", sign="+"),
+    Row("entries", Kind.FRACTION, "each entry in nominal sizes, of the largest term of its row", sign="+"),
+    Row("response", Kind.BLOCK, "frequency response", RESPONSE_WORDS),
+    Row("gains", Kind.BLOCK, "static gains", GAIN_WORDS),
+)
+
+KEEP_WORDS = (
+    Row("states", Kind.NAMES, "states of the reduced model; default: all"),
+    Row("inputs", Kind.NAMES, "its inputs; default: all"),
+    Row("outputs", Kind.NAMES, "its outputs; default: all"),
+)
+
+# a word with available=False is refused; so is a file behind `source` as long as its row has a refusal
+LOCAL_MODEL_WORDS = (
+    Row("source", Kind.SOURCE, "where local models come from", default=DERIVE,
+        refusal="local models from files are not available in this version"),
+    Row("keep", Kind.BLOCK, "states, inputs, outputs of a reduced model", KEEP_WORDS, available=False),
+    Row("others", Kind.CHOICE, "what is left out is frozen or settled", choices=("freeze", "settle"), available=False),
+    later("with", "loops that are closed inside the model"),
+    Row("agree", Kind.BLOCK, "delivered against derived", AGREE_WORDS, available=False),
+)  # fmt: skip
+
+DELAY_WORDS = (
+    Row("inputs", Kind.NAMED, "dead time of each input", each(Kind.QUANTITY, dimension="time", sign="0+")),
+    Row("outputs", Kind.NAMED, "dead time of each output", each(Kind.QUANTITY, dimension="time", sign="0+")),
+)
 
 REQUIREMENT_WORDS = (
     Row("text", Kind.TEXT, "the requirement"),
@@ -168,8 +202,8 @@ SPEC_WORDS = (
     Row("parameters", Kind.NAMED, "overrides of the plant's own defaults",
         each(Kind.QUANTITY, dimension="the parameter's")),
     Row("time", Kind.QUANTITY, "the time of trim, for a plant that depends on it", dimension="time"),
-    later("wraps", "angles compared modulo a turn"),
-    later("delays", "dead time outside the plant function"),
+    Row("wraps", Kind.NAMES, "angles compared modulo a turn", available=False),
+    Row("delays", Kind.BLOCK, "dead time outside the plant function", DELAY_WORDS, available=False),
     Row("envelope", Kind.NAMED, "where the plant may be", each(Kind.LIMITS, LIMIT_WORDS, SIGNAL)),
     Row("exits", Kind.BLOCK, "what leaving the envelope means", (
         Row("complete", Kind.FRACTION, "share of the random drives that must run to the end", default="90 %", sign="+"),
@@ -233,6 +267,9 @@ def reference(rows: tuple[Row, ...] = SPEC_WORDS, above: str = "") -> Iterator[t
     for row in rows:
         path = f"{above}{row.word.replace('*', 'NAME')}"
         behind = ", ".join(row.choices) if row.kind is Kind.CHOICE else row.kind.value
+        if not row.available:
+            yield path, Kind.NONE.value, "", row.meaning
+            continue
         if row.word != "*":
             yield path, behind, row.default or ("required" if row.required else ""), row.meaning
         inner = row.of[0].of if row.kind in (Kind.NAMED, Kind.POINTS) else row.of

@@ -19,7 +19,7 @@ from typing import Literal
 import numpy as np
 
 from ..core.model import Array
-from .probe import Mask, Probe
+from .probe import Indices, Mask, Probe
 from .sights import Sights, looked, sights
 from .windows import FAR, NEAR, Windows, near_windows, outer_windows
 
@@ -89,6 +89,21 @@ class Corners:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class _First:
+    """The first look at S windows. asked (S,): windows that their row takes; usable (S,): those with finite samples;
+    notice, least (S,): changes of slope that matter, and that are followed up.
+    """
+
+    seen: Sights
+    row: Indices
+    column: Indices
+    usable: Mask
+    asked: Mask
+    notice: Array
+    least: Array
+
+
+@dataclass(frozen=True, slots=True, eq=False)
 class _Look:
     """Window `index` of `sights`, and how clear of noise it was."""
 
@@ -134,19 +149,11 @@ def corners(probe: Probe, scales: Array, noise: Array) -> Corners:
     """Search every row and column. scales (r, v): slope that makes up the row's scale, in f per z; noise (r,)."""
     hidden, puzzling = np.zeros(scales.shape), np.zeros(scales.shape)
     lost = np.zeros(scales.shape, dtype=np.bool_)
-    grain = np.zeros(len(noise))
-    suspects: list[_Suspect] = []
-    for near, windows in ((True, near_windows(probe, scales, noise)), (False, outer_windows(probe))):
-        nodes, values = looked(probe, windows.column, windows.low, windows.high)
-        for row, own in enumerate(values):
-            seen = sights(nodes, own)
-            notice = (NEAR_NOTICE if near else FAR_NOTICE) * scales[row, windows.column]
-            least = np.maximum(notice, 8.0 * noise[row] / seen.step)
-            suspects += _started(seen, row, windows, near, notice, least, float(noise[row]))
-            if near:
-                _left_open(seen, windows, row, least, hidden, lost)
-            else:
-                grain[row] = seen.rough.max(initial=0.0)
+    near = _first_look(probe, near_windows(probe, scales, noise), scales, noise, NEAR_NOTICE)
+    far = _first_look(probe, outer_windows(probe), scales, noise, FAR_NOTICE)
+    _left_open(near, hidden, lost)
+    grain = far.seen.rough.reshape(len(noise), -1).max(axis=1, initial=0.0)
+    suspects = [*_started(near, noise, near=True), *_started(far, noise, near=False)]
     _narrow(probe, suspects, noise)
     findings = _judged(probe, suspects, noise, hidden, puzzling)
     kept = _without_grain(findings, grain, hidden)
@@ -154,17 +161,36 @@ def corners(probe: Probe, scales: Array, noise: Array) -> Corners:
     return Corners(_merged(kept), hidden, puzzling, lost, grainy)
 
 
-def _started(
-    seen: Sights, row: int, windows: Windows, near: bool, notice: Array, least: Array, noise: float
-) -> Iterator[_Suspect]:
-    """The windows of one row in which the change of slope is worth following, once for each place of change."""
-    for peak in seen.peaks():
-        chosen = windows.usable[row] & peak.complete & (peak.change > least)
-        clear = peak.clearness(np.full(len(peak.change), noise), CLEAR, LOCAL)
-        for index in np.flatnonzero(chosen).tolist():
+def _first_look(probe: Probe, windows: Windows, scales: Array, noise: Array, share: float) -> _First:
+    """Every row in every window."""
+    nodes, values = looked(probe, windows.column, windows.low, windows.high)
+    rows = len(noise)
+    seen = sights(np.tile(nodes, (rows, 1)), values.reshape(rows * len(nodes), -1))
+    row, column = np.repeat(np.arange(rows), len(nodes)), np.tile(windows.column, rows)
+    notice = share * scales[row, column]
+    least = np.maximum(notice, 8.0 * noise[row] / seen.step)
+    asked = windows.usable.ravel()
+    return _First(seen, row, column, asked & seen.complete, asked, notice, least)
+
+
+def _started(first: _First, noise: Array, *, near: bool) -> Iterator[_Suspect]:
+    """The windows in which the change of slope is worth following, once for each place of change."""
+    if not (first.usable & (first.seen.change > first.least)).any():
+        return
+    for peak in first.seen.peaks():
+        clear = peak.clearness(noise[first.row], CLEAR, LOCAL)
+        for index in np.flatnonzero(first.usable & (peak.change > first.least)).tolist():
+            row, column, notice = int(first.row[index]), int(first.column[index]), float(first.notice[index])
             look = _Look(peak, index, float(clear[index]))
-            active = bool(clear[index] > 1.0)
-            yield _Suspect(row, int(windows.column[index]), near, float(notice[index]), active, looks=[look])
+            yield _Suspect(row, column, near, notice, active=look.clear > 1.0, looks=[look])
+
+
+def _left_open(first: _First, hidden: Array, lost: Mask) -> None:
+    """What near windows that are not followed up leave open."""
+    quiet = first.usable & (first.seen.change <= first.least)
+    np.maximum.at(hidden, (first.row[quiet], first.column[quiet]), (first.seen.change + first.least)[quiet])
+    broken = first.asked & ~first.usable
+    lost[first.row[broken], first.column[broken]] = True
 
 
 def _without_grain(findings: Sequence[GapFinding], grain: Array, hidden: Array) -> list[GapFinding]:
@@ -178,14 +204,6 @@ def _without_grain(findings: Sequence[GapFinding], grain: Array, hidden: Array) 
             continue
         kept.append(finding)
     return kept
-
-
-def _left_open(seen: Sights, windows: Windows, row: int, least: Array, hidden: Array, lost: Mask) -> None:
-    """What near windows of one row that are not followed up leave open."""
-    usable = windows.usable[row]
-    quiet = usable & seen.complete & (seen.change <= least)
-    np.maximum.at(hidden[row], windows.column[quiet], (seen.change + least)[quiet])
-    lost[row, windows.column[usable & ~seen.complete]] = True
 
 
 def _narrow(probe: Probe, suspects: Sequence[_Suspect], noise: Array) -> None:

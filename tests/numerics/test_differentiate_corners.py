@@ -6,6 +6,8 @@ from collections.abc import Callable
 
 import numpy as np
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from random_functions import CORNERS, planted, scattered, smooth
 
 from linverify.core.outcome import Outcome
@@ -220,3 +222,19 @@ def test_many_planted_corners(kind: str) -> None:
             missed[distance] += not any(one.near == (distance < 1e-4) for one in here)
     assert all(count == 0 for distance, count in missed.items() if distance < 1e-4)
     assert all(count <= 5 for count in missed.values())
+
+
+@settings(max_examples=60, derandomize=True, database=None, deadline=None)
+@given(
+    powers=st.lists(st.integers(-3, 3), min_size=1, max_size=4),
+    place=st.integers(-90, 90),
+    size=st.integers(-6, 6),
+)
+def test_polynomials_of_any_scale(powers: list[int], place: int, size: int) -> None:
+    unit = 10.0**size
+    coefficients = np.array(powers, dtype=float)
+    exact = np.polyval(np.polyder(coefficients), place / 30) / unit if len(powers) > 1 else 0.0
+    point, open_ = np.array([unit * place / 30]), np.array([np.inf])
+    found = slopes(lambda z: np.polyval(coefficients, z / unit), point, np.array([unit]), -open_, open_)
+    assert found.gaps == ()
+    assert abs(found.jacobian[0, 0] - exact) <= found.error[0, 0]

@@ -6,31 +6,15 @@ words ask for them. Where the two differ in another way than that, poles, zeros 
 
 from __future__ import annotations
 
-from dataclasses import dataclass, field
 from typing import Any
 
 from ..core.case import CheckAsk
-from ..core.delivered import AgreeAsk, DeliveredModel
-from ..core.verdict import Figure, Status, Verdict, merged
+from ..core.delivered import DeliveredModel
+from ..core.verdict import Status, Verdict
 from ..numerics.pair import Pair, paired
-from . import claims, entries
+from . import banded, claims, entries, moved, static
+from .findings import Findings
 from .study import Study
-
-
-@dataclass(slots=True)
-class Findings:
-    """What one comparison adds to the verdict. Mutable: each comparison adds its part."""
-
-    figures: list[Figure] = field(default_factory=list)
-    reasons: list[tuple[Status, str]] = field(default_factory=list)
-    notes: list[str] = field(default_factory=list)
-    details: dict[str, Any] = field(default_factory=dict)
-
-    @property
-    def status(self) -> Status:
-        """The worst of all that was found."""
-        found = [figure.status for figure in self.figures] + [status for status, _ in self.reasons]
-        return merged(found) if found else Status.PASS
 
 
 def check(study: Study, ask: CheckAsk) -> Verdict:
@@ -41,16 +25,14 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     findings = Findings()
     _point(study, delivered, findings)
     pair = paired(delivered, study.reference(), study.case.nominal)
-    _entries(study, pair, findings)
-    _nothing_asked(study.case.local.agree, findings)
-    worst = findings.status
+    _model(study, pair, findings)
     return Verdict(
         spec=study.case.spec,
         point=study.case.point,
         check=ask.name,
-        status=worst,
+        status=findings.status,
         place=ask.place,
-        reason="; ".join(text for status, text in findings.reasons if status is worst),
+        reason=findings.reason,
         figures=tuple(findings.figures),
         notes=tuple(findings.notes),
         details={"file": delivered.file, **findings.details},
@@ -80,22 +62,36 @@ def _point(study: Study, delivered: DeliveredModel, findings: Findings) -> None:
     ]
 
 
-def _entries(study: Study, pair: Pair, findings: Findings) -> None:
+def _model(study: Study, pair: Pair, findings: Findings) -> None:
+    agree, time_unit = study.case.local.agree, study.case.plant.time_unit
+    asked = (agree.entries, agree.response, agree.gains) != (None, None, None)
+    if not asked:
+        findings.notes.append(
+            "`agree` asks for no comparison of the model itself: names, units and the claimed point were looked at"
+        )
+    elif pair.time_clash:
+        findings.reasons.append((Status.FAIL, f"{pair.time_clash} {time_unit}"))
+        return
+    if agree.entries is not None:
+        _entries(study, pair, agree.entries, findings)
+    if agree.response is not None:
+        banded.compare(pair, agree.response, time_unit, findings)
+    if agree.gains is not None:
+        static.compare(pair, agree.gains, findings)
+    moved.tell(pair, findings, entries_differ=not pair.anonymous and entries.differ(pair))
+
+
+def _entries(study: Study, pair: Pair, limit: float, findings: Findings) -> None:
     agree = study.case.local.agree
-    if agree.entries is None:
-        return
-    if pair.time_clash:
-        findings.reasons.append((Status.FAIL, f"{pair.time_clash} {study.case.plant.time_unit}"))
-        return
     if pair.anonymous:
         findings.reasons.append(
             (Status.UNDECIDED, "the delivered states have no names, so entries cannot be compared; ask for `response`")
         )
         return
     found = entries.entries(pair, study.case.plant.time_unit)
-    figures = entries.judged(found, agree.entries, str(agree.entries_place or agree.place))
+    figures = entries.judged(found, limit, str(agree.entries_place or agree.place))
     findings.figures += figures
-    broken = entries.broken(found, agree.entries)
+    broken = entries.broken(found, limit)
     for figure in figures:
         if figure.status is not Status.PASS:
             findings.reasons.append((figure.status, entries.reason(broken)))
@@ -111,10 +107,3 @@ def _plain(entry: entries.Entry) -> dict[str, Any]:
         "unit": entry.unit,
         "share": entry.away,
     }
-
-
-def _nothing_asked(agree: AgreeAsk, findings: Findings) -> None:
-    if agree.entries is None and agree.response is None and agree.gains is None:
-        findings.notes.append(
-            "`agree` asks for no comparison of the model itself: names, units and the claimed point were looked at"
-        )

@@ -136,6 +136,19 @@ def judged(found: tuple[Entry, ...], limit: float, origin: str) -> tuple[Figure,
     )
 
 
+def differ(pair: Pair) -> bool:
+    """True where an entry differs by more than printed digits and our own error explain."""
+    return any(
+        bool(
+            (
+                np.abs(getattr(pair.delivered, name) - getattr(pair.reference, name))
+                > pair.rounding[name] + pair.reference.errors[name]
+            ).any()
+        )
+        for name in MATRICES
+    )
+
+
 def broken(found: tuple[Entry, ...], limit: float) -> tuple[Entry, ...]:
     """The entries that do not keep the limit for sure, largest share first."""
     return tuple(entry for entry in found if status_of(entry.away, entry.error, limit) is not Status.PASS)

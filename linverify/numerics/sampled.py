@@ -34,7 +34,7 @@ def sampled(model: LocalModel, step: float, course: Course) -> LocalModel:
         D=frozen_array(made[3]),
         step=step,
         course=course,
-        errors=_carried(model, lambda *changed: transform(*changed, step), made),
+        errors=_carried(model, lambda A, B, C, D: transform(A, B, C, D, step), made),
     )
 
 
@@ -47,7 +47,9 @@ def _straight(A: Array, B: Array, C: Array, D: Array, step: float) -> Blocks:
     return Ad, start + Ad @ ahead, C, D + C @ ahead
 
 
-def _carried(model: LocalModel, transform: Callable[..., Blocks], made: Blocks) -> dict[str, Array]:
+def _carried(
+    model: LocalModel, transform: Callable[[Array, Array, Array, Array], Blocks], made: Blocks
+) -> dict[str, Array]:
     """Sum over the entries of what each one's error does to the transformed entries, to first order."""
     blocks = {name: getattr(model, name) for name in "ABCD"}
     totals = {name: np.zeros_like(block) for name, block in zip("ABCD", made, strict=True)}
@@ -58,7 +60,7 @@ def _carried(model: LocalModel, transform: Callable[..., Blocks], made: Blocks) 
             step = max(size, 1e-6 * float(np.abs(blocks[name]).max(initial=0.0)))
             moved = {key: np.array(block) for key, block in blocks.items()}
             moved[name][place] += step
-            changed = transform(*moved.values())
+            changed = transform(moved["A"], moved["B"], moved["C"], moved["D"])
             for key, new, old in zip("ABCD", changed, made, strict=True):
                 totals[key] += np.abs(new - old) * (size / step)
     return {

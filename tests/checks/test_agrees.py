@@ -6,10 +6,12 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from delivering import ENTRIES_AT, POINT_AT, changed, delivered, derived, verdict
+from delivering import CART, ENTRIES_AT, POINT_AT, changed, delivered, derived, verdict
 
-from linverify.core.delivered import AgreeAsk
+from linverify.checks import moved
+from linverify.core.delivered import AgreeAsk, GainsAsk, ResponseAsk
 from linverify.core.verdict import Status
+from linverify.numerics.sampled import sampled
 from linverify.report import record
 
 ENTRIES = AgreeAsk(entries=0.01, place=POINT_AT, entries_place=ENTRIES_AT)
@@ -115,3 +117,104 @@ def test_an_absent_output_is_no_difference():
 def test_the_verdict_survives_the_record():
     written = record.dumps(verdict(changed(delivered(), "B", {(2, 0): -4.0}), ENTRIES))
     assert record.dumps(record.loads(written)) == written
+
+
+RESPONSE = AgreeAsk(response=ResponseAsk(0.02, 0.01, 20.0, 0.01, POINT_AT), place=POINT_AT)
+
+
+def test_a_response_within_the_band_passes_and_every_channel_is_told():
+    found = verdict(delivered(), RESPONSE)
+    assert found.status is Status.PASS
+    assert [(figure.what, figure.unit, figure.limit) for figure in found.figures] == [("frequency response", "%", 2.0)]
+    assert {(one["input"], one["output"]) for one in found.details["response"]} == {
+        ("command", "place"),
+        ("command", "pull"),
+    }
+
+
+def test_a_response_off_by_too_much_fails_and_names_channel_frequency_and_both_values():
+    right = delivered()
+    found = verdict(replace(right, B=1.05 * right.B), RESPONSE)
+    assert found.status is Status.FAIL
+    assert found.figures[0].worst == pytest.approx(5.0, rel=1e-6)
+    assert found.figures[0].status is Status.FAIL
+    assert "command to place at " in found.reason
+    assert "command to pull at " in found.reason
+    assert "rad/s: delivered " in found.reason
+    assert "off by 5 %" in found.reason
+    assert verdict(replace(right, B=1.0199 * right.B), RESPONSE).status is Status.PASS
+
+
+def test_anonymous_states_are_compared_by_what_outputs_do_and_recognised():
+    right = delivered()
+    T = np.array([[1.0, 0.2, 0.0], [0.3, 2.0, 0.1], [0.0, -1.0, 0.5]])
+    turned = replace(right, A=np.linalg.solve(T, right.A @ T), B=np.linalg.solve(T, right.B), C=right.C @ T)
+    found = verdict(replace(turned, states=None), RESPONSE)
+    assert found.status is Status.PASS
+    assert moved.SAME in found.notes
+    named = verdict(turned, ENTRIES)
+    assert named.status is Status.FAIL
+    assert moved.SAME in named.notes
+    assert moved.SAME not in verdict(changed(right, "A", {(1, 0): -2.5}), ENTRIES).notes
+
+
+def test_a_state_that_no_output_sees_may_differ_without_a_change_of_what_outputs_do():
+    right = delivered(outputs=("pull",), C=delivered().C[1:], D=delivered().D[1:])
+    found = verdict(changed(right, "A", {(1, 1): -0.9}), ENTRIES)
+    assert found.status is Status.FAIL
+    assert moved.UNSEEN in found.notes
+
+
+def test_poles_zeros_and_static_gains_are_told_in_pairs():
+    details = verdict(changed(delivered(), "A", {(2, 2): -5.0}), ENTRIES).details
+    fast = details["poles_moved"][-1]
+    assert (fast["delivered"]["real"], fast["plant"]["real"]) == (pytest.approx(-5.0), pytest.approx(-4.0, rel=1e-7))
+    assert len(details["poles_moved"]) == 3
+    gain = details["static_gains"][1]
+    assert (gain["input"], gain["output"]) == ("command", "pull")
+    assert (gain["delivered"], gain["plant"]) == (pytest.approx(4.0), pytest.approx(5.0, rel=1e-7))
+
+
+def test_static_gains_are_judged_as_asked():
+    right = delivered()
+    ask = AgreeAsk(gains=GainsAsk(POINT_AT, singular_values=0.1), place=POINT_AT)
+    assert verdict(replace(right, B=1.09 * right.B), ask).status is Status.PASS
+    found = verdict(replace(right, B=1.11 * right.B), ask)
+    assert found.status is Status.FAIL
+    assert found.figures[0].what == "static gain, scaled by nominal sizes"
+    assert found.figures[0].worst == pytest.approx(11.0, rel=1e-6)
+    assert found.reason.startswith("singular value 1 of the static gain, scaled by nominal sizes: delivered ")
+
+
+def test_a_determinant_of_gains_that_are_not_square_is_undecided():
+    ask = AgreeAsk(gains=GainsAsk(POINT_AT, determinant_sign="same"), place=POINT_AT)
+    found = verdict(delivered(), ask)
+    assert found.status is Status.UNDECIDED
+    assert "2 outputs and 1 inputs" in found.reason
+    one = delivered(outputs=("place",), C=delivered().C[:1], D=delivered().D[:1])
+    assert verdict(one, ask).status is Status.PASS
+    flipped = verdict(replace(one, B=-one.B), ask)
+    assert flipped.status is Status.FAIL
+    assert flipped.reason.startswith("determinant of the static gain: delivered negative, plant positive")
+
+
+@pytest.mark.parametrize("course", ["held", "straight"])
+def test_a_sampled_model_is_compared_with_the_plant_sampled_alike(course: str):
+    right = sampled(derived(), 0.05, course)
+    given = delivered(right, step=0.05, course=course)
+    assert verdict(given, ENTRIES).status is Status.PASS
+    assert verdict(given, RESPONSE).status is Status.PASS
+    other = delivered(sampled(derived(), 0.06, course), step=0.05, course=course)
+    assert verdict(other, ENTRIES).status is Status.FAIL
+    # A is nearly the identity: a fast sample time must not make errors of the dynamics look small
+    wrong = delivered(sampled(derived(parameters={**CART.defaults, "damping": 2.2}), 1e-3, course), step=1e-3)
+    assert verdict(replace(wrong, course=course), ENTRIES).status is Status.FAIL
+
+
+def test_a_band_beyond_nyquist_is_cut_and_said():
+    given = delivered(sampled(derived(), 0.5, "held"), step=0.5)
+    found = verdict(given, RESPONSE)
+    assert found.status is Status.PASS
+    assert "responses are compared up to half the sampling frequency, 6.28319 rad/s" in found.notes
+    above = AgreeAsk(response=ResponseAsk(0.02, 7.0, 20.0, 0.01, POINT_AT), place=POINT_AT)
+    assert verdict(given, above).status is Status.UNDECIDED

@@ -18,6 +18,9 @@ from .layout import Entry, Word
 MATRICES = ("A", "B", "C", "D")
 NAMES = ("states", "inputs", "outputs")
 POINTS = ("x0", "u0", "y0")
+ANY = "point"  # values by name alone, whichever of x0, u0 and y0 they belong to
+ROWS_OF = MappingProxyType({"A": "states", "B": "states", "C": "outputs", "D": "outputs"})
+COLUMNS_OF = MappingProxyType({"A": "states", "B": "inputs", "C": "states", "D": "inputs"})
 # the words of a model, the same in every format that has words
 KEYS = (*MATRICES, "dt", *NAMES, "units", *POINTS, "time_unit", "hold", "point", "note")
 KIND_OF = MappingProxyType({"x0": "states", "u0": "inputs", "y0": "outputs"})
@@ -63,7 +66,7 @@ class Claimed:
 class Claim:
     """One model as its file has it. file: as messages show it; place: where the model begins.
 
-    names: by "states", "inputs", "outputs", those that the file gives; at: by "x0", "u0", "y0".
+    names: by "states", "inputs", "outputs", those that the file gives; at: by "x0", "u0", "y0" or `ANY`.
     digits: significant digits of the matrix that shows fewest; 17 where they are exact.
     """
 

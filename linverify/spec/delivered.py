@@ -19,7 +19,7 @@ from linverify.core.delivered import Course, DeliveredModel, Keep
 from linverify.core.model import Array, frozen_array
 from linverify.core.signals import nearest
 
-from .claims import KIND_OF, ONE, POINTS, Claim, Claimed, Listed, Matrix, Number
+from .claims import ANY, KIND_OF, ONE, POINTS, Claim, Listed, Matrix, Number
 from .ground import WHOLE, Ground, listed
 from .layout import Quantity
 from .scalars import quoted
@@ -92,8 +92,8 @@ class _Binding:
     def _names(self) -> _Names | None:
         """The names of all three kinds, each known to the plant and written once."""
         claim, ground = self.claim, self.ground
-        missing = [word for word in ("A", "B") if word not in claim.matrices]
-        missing += ["inputs"] if "inputs" not in claim.names else []
+        missing = [word for word in ("A", "B") if word not in claim.matrices and (word == "A" or ground.inputs)]
+        missing += ["inputs"] if "inputs" not in claim.names and ground.inputs else []
         missing += ["outputs"] if "outputs" not in claim.names and ("C" in claim.matrices) else []
         if "C" not in claim.matrices and ("D" in claim.matrices or claim.names.get("outputs", _NOTHING).words):
             missing.append("C")
@@ -240,12 +240,9 @@ class _Binding:
 
     def _claimed(self, word: str, names: _Names | None) -> Mapping[str, float]:
         """The part of the operating point that the file claims under `word`, in the plant's units."""
-        claimed = self.claim.at.get(word)
-        if claimed is None:
-            return MappingProxyType({})
         units_of = {entry.name: entry.value.text for entry in self.claim.units}
         values = {}
-        for name, number in self._pairs(word, claimed, names):
+        for name, number in (*self._pairs(word, names), *self._by_name(word)):
             unit = units_of.get(name, "").strip()
             told = f"{units.shown(number.value)} {unit}".strip()
             if unit and not units.convertible(unit, self.ground.plant.unit(name)):
@@ -253,8 +250,20 @@ class _Binding:
             values[name] = self.ground.signal(Quantity(number.value, unit, told, number.place), name, f"{word}: {name}")
         return MappingProxyType(values)
 
-    def _pairs(self, word: str, claimed: Claimed, names: _Names | None) -> list[tuple[str, Number]]:
-        kind = KIND_OF[word]
+    def _by_name(self, word: str) -> list[tuple[str, Number]]:
+        """Those of the values that are claimed by name alone that belong under `word`."""
+        claimed = self.claim.at.get(ANY)
+        among: Sequence[str] = getattr(self.ground, KIND_OF[word])
+        entries = claimed.named if claimed else ()
+        if word == POINTS[0]:
+            for entry in entries:
+                self.ground.known(entry.name, entry.place, self.ground.signals, "a state, input or output")
+        return [(entry.name, entry.value) for entry in entries if entry.name in among]
+
+    def _pairs(self, word: str, names: _Names | None) -> list[tuple[str, Number]]:
+        kind, claimed = KIND_OF[word], self.claim.at.get(word)
+        if claimed is None:
+            return []
         if claimed.ordered is None:
             among: Sequence[str] = getattr(self.ground, kind)
             article = "an" if kind[0] in "aeiou" else "a"

@@ -15,13 +15,22 @@ from linverify.core.signals import nearest
 
 from .claims import Claim
 from .layout import FileWord
+from .models_binary import read_mat, read_npz
+from .models_csv import files_in, read_folder
 from .models_json import read_json
+from .models_long import read_long
 from .reader import Reader
 from .scalars import quoted
 
 POINT = "{point}"
-SUFFIXES = (".json",)
-_READERS: Mapping[str, Callable[[Reader, bytes, str], dict[str, Claim]]] = {".json": read_json}
+SUFFIXES = (".json", ".csv", ".npz", ".mat")
+MOST_BYTES = 1 << 30
+_READERS: Mapping[str, Callable[[Reader, bytes, str], dict[str, Claim]]] = {
+    ".json": read_json,
+    ".csv": read_long,
+    ".npz": read_npz,
+    ".mat": read_mat,
+}
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -44,25 +53,42 @@ def place_of(source: FileWord, point: str, root: Path) -> tuple[Path, str]:
 def read_models(source: FileWord, path: Path, shown: str) -> Models:
     """Read what lies at `path`. A file that is missing or of another format is a mistake at the place of `source`."""
     reader = Reader({})
-    suffix = path.suffix.lower()
-    named = path.name
-    if suffix not in _READERS:
-        wrong = f"`local_models: source`: {quoted(named)} is no file of models"
-        reader.tell(source.place, wrong, f"one of {', '.join(SUFFIXES)} is expected")
-        return Models(shown, {}, tuple(reader.problems), (), False)
-    if not path.is_file():
-        reader.tell(source.place, f"there is no file {quoted(shown)}", *_near(source, path))
-        return Models(shown, {}, tuple(reader.problems), (), False)
-    try:
-        data = path.read_bytes()
-    except OSError as error:
-        reader.tell(Place(shown), f"the file cannot be read: {error.strerror}")
-        return Models(shown, {}, tuple(reader.problems), (), False)
-    claims = _READERS[suffix](reader, data, shown)
-    return Models(shown, claims, tuple(reader.problems), (path,), bool(claims) and "" not in claims)
+    suffix = Path(source.text).suffix.lower()  # of the text: a point's name may have a dot in it
+    known = ", ".join(SUFFIXES)
+    if suffix and suffix not in SUFFIXES and not path.is_dir():
+        wrong = f"`local_models: source`: {quoted(source.text)} is no file of models"
+        reader.tell(source.place, wrong, f"one of {known} is expected, or a folder", nearest(suffix, SUFFIXES))
+    elif path.is_dir():
+        return _read(reader, files_in(path), shown, path)
+    elif not path.exists():
+        what = "file" if suffix else "folder"
+        reader.tell(source.place, f"there is no {what} {quoted(shown)}", *_near(source, path))
+    elif not suffix:
+        reader.tell(source.place, f"{quoted(shown)} is no folder", f"a folder is expected, or one of {known}")
+    elif path.stat().st_size > MOST_BYTES:
+        reader.tell(Place(shown), f"the file is larger than {MOST_BYTES >> 20} MB")
+    else:
+        return _read(reader, {path.name: path}, shown, path)
+    return Models(shown, {}, tuple(reader.problems), (), False)
+
+
+def _read(reader: Reader, files: Mapping[str, Path], shown: str, path: Path) -> Models:
+    data: dict[str, bytes] = {}
+    for name, file in files.items():
+        try:
+            data[name] = file.read_bytes()
+        except OSError as error:
+            reader.tell(Place(shown), f"{name} cannot be read: {error.strerror}")
+    claims: dict[str, Claim] = {}
+    if not reader.problems and path.is_dir():
+        claims = read_folder(reader, data, shown)
+    elif not reader.problems:
+        claims = _READERS[path.suffix.lower()](reader, data[path.name], shown)
+    return Models(shown, claims, tuple(reader.problems), tuple(files.values()), bool(claims) and "" not in claims)
 
 
 def _near(source: FileWord, path: Path) -> tuple[str, str]:
     folder = path.parent
-    there = sorted(file.name for file in folder.iterdir() if file.suffix == path.suffix) if folder.is_dir() else []
-    return "a path relative to the spec is expected", nearest(path.name, there)
+    suffix = Path(source.text).suffix
+    there = [file.name for file in folder.iterdir() if file.suffix == suffix or not suffix] if folder.is_dir() else []
+    return "a path relative to the spec is expected", nearest(path.name, sorted(there))

@@ -108,10 +108,20 @@ def find(paths: Sequence[Path]) -> tuple[Path, ...]:
         if path.is_file() and not is_spec(path):
             raise SelectionError(f"{as_typed(path)}: is no spec; specs are .yaml files other than defaults.yaml")
         below = sorted(path.rglob("*.yaml")) if path.is_dir() else [path]
-        found.update((one.resolve(), None) for one in below if is_spec(one))
+        found.update(
+            (one.resolve(), None) for one in below if is_spec(one) and not _is_aside(one.relative_to(path), path)
+        )
     if not found:
         raise SelectionError(f"no spec under {', '.join(map(str, paths))}")
     return tuple(found)
+
+
+def _is_aside(below: Path, folder: Path) -> bool:
+    """True in a hidden folder, an environment or installed packages, where pytest looks for no specs either."""
+    parts = below.parts[:-1]
+    if any(part.startswith(".") or part == "node_modules" for part in parts):
+        return True
+    return any((folder.joinpath(*parts[: at + 1]) / "pyvenv.cfg").is_file() for at in range(len(parts)))
 
 
 def cases_of(specs: Iterable[Path], root: Path) -> tuple[Case, ...]:
@@ -175,9 +185,9 @@ def pin(file: Path, item: str | None) -> list[str]:
     """
     _, case, ask = _saved(file, item)
     name = f"{case.spec}::{case.point}::{ask.name}"
-    path = kept(file, (root_above(case.spec) / case.spec).parent / PINNED, name)
+    path = kept(file, (root_above(case.spec, file) / case.spec).parent / PINNED, name)
     lines = [f"kept {as_typed(path)}"]
-    again, _ = select(name)
+    again, _ = select(name, file)
     if path.resolve() in {one.resolve() for one in again.drive_set(ask.drives).pinned}:
         return [*lines, f"{case.spec} finds it: it is replayed first from now on"]
     where = f"the drives {ask.drives!r}" if ask.drives else "`drives`"
@@ -189,30 +199,30 @@ def _saved(file: Path, item: str | None) -> tuple[Drive, Case, CheckAsk]:
     name = item or own
     if not name:
         raise SelectionError(f"{file.name} does not say which check it belongs to; name it: SPEC::POINT::CHECK")
-    case, ask = select(name)
+    case, ask = select(name, file)
     if ask.kind != "follows":
         raise SelectionError(f"{name} drives nothing; a drive belongs to a check `follows`")
     return drive, case, ask
 
 
-def select(item: str) -> tuple[Case, CheckAsk]:
-    """The check with the id `SPEC::POINT::CHECK`, from the current folder or one above it.
+def select(item: str, near: Path | None = None) -> tuple[Case, CheckAsk]:
+    """The check with the id `SPEC::POINT::CHECK`, from the current folder or one above, else from those above `near`.
 
     Raises SelectionError, with the nearest right word, and SpecError.
     """
     parts = item.split("::")
     if len(parts) != 3:
         raise SelectionError(f"a check is named SPEC::POINT::CHECK, got {item!r}")
-    (case,) = points(Path(parts[0]), parts[1])
+    (case,) = points(Path(parts[0]), parts[1], near)
     for ask in case.checks:
         if ask.name == parts[2]:
             return case, ask
     raise SelectionError(_missing("check", parts[2], [ask.name for ask in case.checks], f"{parts[0]}::{parts[1]}"))
 
 
-def points(spec: Path, name: str | None = None) -> tuple[Case, ...]:
+def points(spec: Path, name: str | None = None, near: Path | None = None) -> tuple[Case, ...]:
     """The operating points of a spec, or the one called `name`. Raises SelectionError and SpecError."""
-    root = root_above(spec)
+    root = root_above(spec, near)
     cases = cases_of(find([root / spec]), root)
     named = cases if name is None else tuple(case for case in cases if case.point == name)
     if name is not None and not named:
@@ -220,10 +230,14 @@ def points(spec: Path, name: str | None = None) -> tuple[Case, ...]:
     return named
 
 
-def root_above(spec: Path | str) -> Path:
-    """The folder that the path of a spec is relative to: the current one, or the nearest one above where it exists."""
+def root_above(spec: Path | str, near: Path | None = None) -> Path:
+    """The folder that the path of a spec is relative to: the current one, or the nearest one above where it exists.
+
+    near: a file, as a rule evidence under the root folder, above which is looked next: commands work from anywhere.
+    """
     here = Path.cwd()
-    return next((folder for folder in (here, *here.parents) if (folder / spec).is_file()), here)
+    places = (here, *here.parents, *(near.absolute().parents if near else ()))
+    return next((folder for folder in places if (folder / spec).is_file()), here)
 
 
 def effective(case: Case) -> list[str]:

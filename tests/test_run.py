@@ -135,6 +135,26 @@ def test_the_summary_ends_in_the_next_step(root: Path, monkeypatch: pytest.Monke
     ]
 
 
+def test_a_spec_is_found_from_anywhere_by_the_evidence_under_its_root(
+    root: Path, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    monkeypatch.chdir(root.anchor)
+    evidence = root / "reports/evidence/0123456789ab.json"
+    assert run.root_above("specs/basin.yaml", evidence) == root
+    case, ask = run.select("specs/basin.yaml::high::trims", evidence)
+    assert (case.spec, ask.name) == ("specs/basin.yaml", "trims")
+
+
+def test_no_specs_are_looked_for_where_pytest_looks_for_none(root: Path) -> None:
+    expected = run.find([root])
+    for folder in (".github", "node_modules/pack", "env/lib"):
+        (root / folder).mkdir(parents=True)
+        (root / folder / "other.yaml").write_text("a: 1")
+    (root / "env/pyvenv.cfg").touch()
+    assert run.find([root]) == expected
+    assert len(run.find([root / ".github"])) == 1  # what is named is looked at
+
+
 def test_a_spec_is_found_from_a_folder_below_its_root(root: Path, monkeypatch: pytest.MonkeyPatch) -> None:
     monkeypatch.chdir(root / "specs")
     assert run.root_above("specs/basin.yaml") == root

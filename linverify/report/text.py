@@ -120,7 +120,9 @@ def summary(
     lines = _plain_table([_summary_row(verdict) for verdict in ranked[:cap]]) if ranked else []
     if hidden := ranked[cap:]:
         lines.append(f"... and {len(hidden)} more: {tally(hidden)}" + (f"; all of them in {report}" if report else ""))
-    lines.append(f"{len(ranked)} checks: {tally(ranked)}" if ranked else "no check was run")
+    lines.append(
+        f"{len(ranked)} {'check' if len(ranked) == 1 else 'checks'}: {tally(ranked)}" if ranked else "no check was run"
+    )
     if profile != "full":
         lines.append(QUICK)
     if partial:

@@ -67,6 +67,18 @@ def _parser() -> argparse.ArgumentParser:
     schema = commands.add_parser("schema", help="print a JSON Schema of specs, for completion in editors")
     schema.set_defaults(command=_schema)
 
+    derive = commands.add_parser("derive", help="write the local models that are derived here to files")
+    derive.add_argument("spec", type=Path, metavar="SPEC")
+    derive.add_argument("point", nargs="?", metavar="POINT", help="one operating point; default: all of them")
+    derive.add_argument(
+        "--to",
+        required=True,
+        metavar="FILE",
+        help='.json, .csv, .npz or .mat, or a folder of .csv; "models/{point}.json" makes a file a point',
+    )
+    derive.add_argument("--force", action="store_true", help="replace files that are there already")
+    derive.set_defaults(command=_derive)
+
     for command in (check, replay):
         command.add_argument("--seed", type=_seed, default=0, metavar="N", help="seed of the drives (default: 0)")
         command.add_argument(
@@ -146,6 +158,19 @@ def _schema(given: argparse.Namespace, threads: str) -> int:
 
     print(json.dumps(schema(), indent=1, sort_keys=True))
     return 0
+
+
+def _derive(given: argparse.Namespace, threads: str) -> int:
+    from . import run
+    from .core.case import Options
+    from .derive import derive
+
+    made = derive(run.points(given.spec, given.point, delivered=False), given.to, Options(), force=given.force)
+    for path in made.written:
+        print(f"wrote {run.as_typed(path)}")
+    if made.failed:
+        print("\n".join((*made.failed, "nothing was written")), file=sys.stderr)
+    return 1 if made.failed else 0
 
 
 def _options(given: argparse.Namespace, root: Path | None) -> Options:

@@ -124,13 +124,16 @@ def _is_aside(below: Path, folder: Path) -> bool:
     return any((folder.joinpath(*parts[: at + 1]) / "pyvenv.cfg").is_file() for at in range(len(parts)))
 
 
-def cases_of(specs: Iterable[Path], root: Path) -> tuple[Case, ...]:
-    """All operating points of all specs. Raises SpecError with the mistakes of all of them."""
+def cases_of(specs: Iterable[Path], root: Path, *, delivered: bool = True) -> tuple[Case, ...]:
+    """All operating points of all specs. Raises SpecError with the mistakes of all of them.
+
+    delivered: False leaves files of models unread, as if all models were derived.
+    """
     cases: list[Case] = []
     problems: list[Problem] = []
     for spec in specs:
         try:
-            cases += load(spec, root)
+            cases += load(spec, root, delivered=delivered)
         except SpecError as error:
             problems += error.problems
     if problems:
@@ -220,10 +223,12 @@ def select(item: str, near: Path | None = None) -> tuple[Case, CheckAsk]:
     raise SelectionError(_missing("check", parts[2], [ask.name for ask in case.checks], f"{parts[0]}::{parts[1]}"))
 
 
-def points(spec: Path, name: str | None = None, near: Path | None = None) -> tuple[Case, ...]:
+def points(
+    spec: Path, name: str | None = None, near: Path | None = None, *, delivered: bool = True
+) -> tuple[Case, ...]:
     """The operating points of a spec, or the one called `name`. Raises SelectionError and SpecError."""
     root = root_above(spec, near)
-    cases = cases_of(find([root / spec]), root)
+    cases = cases_of(find([root / spec]), root, delivered=delivered)
     named = cases if name is None else tuple(case for case in cases if case.point == name)
     if name is not None and not named:
         raise SelectionError(_missing("operating point", name, [case.point for case in cases], str(spec)))

@@ -139,32 +139,31 @@ class _Binding:
         return tuple(seen) if sound else None
 
     def _complete(self, names: _Names) -> bool:
-        """No state or input of the plant may be missing, unless the spec keeps only some."""
-        wanted = {"states": self.ground.states, "inputs": self.ground.inputs}
-        given = {"states": names.states, "inputs": names.inputs}
-        sound = True
-        for kind, all_of in wanted.items():
-            have = given[kind]
-            if have is None:
-                continue
-            kept = all_of if self.keep is None else getattr(self.keep, kind)
-            place = self.claim.names[kind].place
-            missing = [name for name in kept if name not in have]
-            if missing:
-                expected = f"`keep` in {self.keep.place} keeps it" if self.keep else _KEEP
-                self.ground.report(place, f"`{kind}` lacks {listed(missing)}", expected)
-                sound = False
-            extra = [word for word in self.claim.names[kind].words if word.text not in kept]
-            for word in extra:
-                where = f"`keep` in {self.keep.place} leaves it out" if self.keep else ""
+        """No state or input of the plant may be missing, nor anything that the spec keeps."""
+        ground, keep = self.ground, self.keep
+        wanted = {"states": ground.states, "inputs": ground.inputs, "outputs": ()}
+        if keep is not None:
+            wanted = {"states": keep.states, "inputs": keep.inputs, "outputs": keep.outputs}
+        before = len(ground.problems)
+        for kind, kept in wanted.items():
+            have: tuple[str, ...] | None = getattr(names, kind)
+            if have is not None:  # anonymous states are judged by what outputs do
+                self._lacks(kind, [name for name in kept if name not in have])
+        for kind in ("states", "inputs") if keep is not None else ():
+            self._leaves_out(kind, wanted[kind])
+        return len(ground.problems) == before
+
+    def _lacks(self, kind: str, missing: Sequence[str]) -> None:
+        if missing:
+            expected = f"`keep` in {self.keep.place} keeps it" if self.keep else _KEEP
+            place = self.claim.names[kind].place if kind in self.claim.names else self.claim.place
+            self.ground.report(place, f"`{kind}` lacks {listed(missing)}", expected)
+
+    def _leaves_out(self, kind: str, kept: Sequence[str]) -> None:
+        where = f"`keep` in {self.keep.place} leaves it out" if self.keep else ""
+        for word in self.claim.names.get(kind, _NOTHING).words:
+            if word.text and word.text not in kept:
                 self.ground.report(word.place, f"{quoted(word.text)} is not kept", where)
-                sound = False
-        missing = [name for name in (self.keep.outputs if self.keep else ()) if name not in names.outputs]
-        if missing and self.keep is not None:
-            place = self.claim.names["outputs"].place if "outputs" in self.claim.names else self.claim.place
-            self.ground.report(place, f"`outputs` lacks {listed(missing)}", f"`keep` in {self.keep.place} keeps it")
-            sound = False
-        return sound
 
     def _shaped(self, names: _Names) -> tuple[Array, Array, Array, Array] | None:
         n, m, k = names.n, len(names.inputs), len(names.outputs)

@@ -70,15 +70,21 @@ def targets(to: str, points: Sequence[str]) -> dict[str, Path]:
     return {point: Path(to.replace(POINT, point)) for point in points}
 
 
+def check_targets(to: str, points: Sequence[str], *, force: bool) -> dict[str, Path]:
+    """As `targets`, and refuses what is there already unless `force` is set. Raises ModelFileError."""
+    paths = targets(to, points)
+    there = [path for path in dict.fromkeys(paths.values()) if path.exists()]
+    if there and not force:
+        raise ModelFileError(f"{there[0]}: is there already; --force replaces it")
+    return paths
+
+
 def write_models(sheets: Mapping[str, Sheet], to: str, *, force: bool = False) -> tuple[Path, ...]:
     """Write models by point to `to`; returns the paths written. All or none, as far as the disk allows.
 
     Raises ModelFileError where something is there already and `force` is not set, and OSError.
     """
-    paths = targets(to, list(sheets))
-    there = [path for path in dict.fromkeys(paths.values()) if path.exists()]
-    if there and not force:
-        raise ModelFileError(f"{there[0]}: is there already; --force replaces it")
+    paths = check_targets(to, list(sheets), force=force)
     grouped: dict[Path, dict[str, Sheet]] = {}
     for point, path in paths.items():
         grouped.setdefault(path, {})[point] = sheets[point]

@@ -192,6 +192,6 @@ def test_what_cannot_be_written(to: str, message: str) -> None:
 
 
 def test_a_stack_is_of_one_kind(tmp_path: Path) -> None:
-    with pytest.raises(ModelFileError, match="models of one stack differ in hold; put .point. into the name"):
+    with pytest.raises(ModelFileError, match=r"models of one stack differ in hold; put \{point\} into the name"):
         write_models({"a": model(step=1.0), "b": model(step=1.0, course="straight")}, str(tmp_path / "all.npz"))
     assert list(tmp_path.iterdir()) == []

@@ -15,6 +15,7 @@ from numpy.typing import NDArray
 
 from ..core.case import Band
 from ..core.model import Array
+from ..numerics.rig import wrapped
 from ..numerics.simulate import Runs
 
 MISMATCH = 0.2  # of the way from trim to a limit: a plant exit that the model misses by more was not predicted
@@ -84,27 +85,32 @@ def judged(runs: Runs, bands: Sequence[Band], *, model: Array | None = None) -> 
     rows = []
     for band in bands:
         at = runs.signals.index(band.signal)
-        rows.append(_row(band, runs, runs.plant[at], response[at], counts))
+        rows.append(_row(band, runs, at, response[at], counts))
     rows.append(_exits(runs))
     columns = [np.stack([row[part] for row in rows]) for part in range(4)]
     ok = np.array([outcome.done for outcome in runs.outcomes], dtype=bool)
     return Figures(columns[0], columns[1], columns[2], columns[3], ok, runs.completed)
 
 
-def _row(
-    band: Band, runs: Runs, plant: Array, model: Array, counts: NDArray[np.bool_]
-) -> tuple[Array, Array, Array, Array]:
-    """Error, limit, time and plant peak of one band, (N,) each; plant and model (K, S + 1, N)."""
-    error = np.where(counts, np.abs(plant - model), 0.0)
-    peak = np.max(np.where(counts, np.abs(plant), 0.0), axis=(0, 1))
-    late = runs.times >= band.start - 1e-9 * runs.horizon
+def _row(band: Band, runs: Runs, at: int, model: Array, counts: NDArray[np.bool_]) -> tuple[Array, Array, Array, Array]:
+    """Error, limit, time and plant peak of one band, (N,) each; at: row of its signal; model (K, S + 1, N)."""
+    turn = runs.turns[at] if runs.turns else 0.0
+    plant, times, tiny = runs.plant[at], runs.arrives(at), 1e-9 * runs.horizon
+    counts = counts & (times <= runs.horizon + tiny)[:, :, np.newaxis]
+    error = np.where(counts, np.abs(wrapped(plant - model, turn)), 0.0)
+    peak = np.max(np.where(counts, np.abs(wrapped(plant, turn)), 0.0), axis=(0, 1))
+    from_ = times >= band.start - tiny
     if band.kind == "rms":
-        worst, when = _rms(error, runs.times, counts & late[:, :, np.newaxis]), np.full(peak.shape, np.nan)
+        still = max(0.0, times[0, 0] - band.start)  # before the first sample arrives both are at trim
+        worst = _rms(error, times, counts & from_[:, :, np.newaxis], still)
+        when = np.full(peak.shape, np.nan)
     elif band.kind == "final":
-        worst = np.where(runs.completed, error[-1, -1], 0.0)
+        arrived = times >= runs.horizon - tiny
+        last = np.unravel_index(int(np.argmax(arrived)), times.shape) if arrived.any() else (-1, -1)
+        worst = np.where(runs.completed, error[last], 0.0)
         when = np.where(runs.completed, runs.horizon, np.nan)
     else:
-        worst, when = _peak(np.where(late[:, :, np.newaxis], error, 0.0), runs.times)
+        worst, when = _peak(np.where(from_[:, :, np.newaxis], error, 0.0), times)
     return worst, _limit(band, peak), when, peak
 
 
@@ -127,13 +133,16 @@ def _peak(error: Array, times: Array) -> tuple[Array, Array]:
     return flat[at, np.arange(flat.shape[1])], times.reshape(-1)[at]
 
 
-def _rms(error: Array, times: Array, counts: NDArray[np.bool_]) -> Array:
-    """Root of the mean over time of the squared error, by the trapezoidal rule between samples that count."""
+def _rms(error: Array, times: Array, counts: NDArray[np.bool_], still: float) -> Array:
+    """Root of the mean over time of the squared error, by the trapezoidal rule between samples that count.
+
+    still: time without any error that belongs to the mean.
+    """
     both = counts[:, :-1] & counts[:, 1:]
     width = np.where(both, np.diff(times, axis=1)[:, :, np.newaxis], 0.0)
     squares = error**2
     area = np.sum(0.5 * (squares[:, :-1] + squares[:, 1:]) * width, axis=(0, 1))
-    span = np.sum(width, axis=(0, 1))
+    span = still + np.sum(width, axis=(0, 1))
     return np.asarray(np.sqrt(np.divide(area, span, out=np.zeros_like(area), where=span > 0.0)))
 
 

@@ -6,6 +6,7 @@ of the error that was observed (its response to steps, turned round in time), an
 
 from __future__ import annotations
 
+import math
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
@@ -78,8 +79,14 @@ def campaign(comparison: Comparison, options: Options, pins: Sequence[Drive]) ->
 
 def _deterministic(comparison: Comparison) -> tuple[Drive, ...]:
     squares = [band.signal for band in comparison.bands if band.kind == "rms"]
-    worst = seeds.worst_of_model(comparison.limits, comparison.rig.model, comparison.rig.signals, squares)
-    return seeds.unique((*seeds.plain(comparison.limits), *worst))
+    rig, limits = comparison.rig, comparison.limits
+    worst = seeds.worst_of_model(limits, rig.model, rig.signals, squares, rig.delays)
+    apart = [
+        drive
+        for other in comparison.others
+        for drive in seeds.worst_of_difference(limits, rig.model, other, rig.signals, squares, rig.delays)
+    ]
+    return seeds.unique((*seeds.plain(limits), *worst, *apart))
 
 
 def noise_of(comparison: Comparison) -> Noise:
@@ -109,7 +116,12 @@ def _observed(comparison: Comparison, fidelity: Fidelity) -> tuple[Drive, ...]:
     sizes = np.array([drive.values[-1, column] for column, drive in enumerate(steps)])
     found: list[Drive] = []
     for at in range(len(signals)):
-        rows = pulses[at, ::-1, :] * np.sign(sizes)
+        # what arrives by the end of the horizon is older than it
+        age = (
+            max(0, limits.intervals - math.ceil(runs.late[at] / limits.every - 1e-9)) if runs.late else limits.intervals
+        )
+        rows = np.zeros_like(pulses[at])
+        rows[:age] = pulses[at, :age][::-1] * np.sign(sizes)
         found += seeds.worst_of_weights(limits, rows, {})
     return seeds.unique(found)
 

@@ -10,6 +10,7 @@ import numpy as np
 from ..core.case import Band, Case, DriveSet
 from ..core.drive import Drive
 from ..core.model import Array, LocalModel
+from ..core.units import convert
 from ..drives.declared import Limits, declared
 from ..numerics.simulate import Fidelity, Rig, Runs, run, run_alone
 from ..numerics.worst import reaches
@@ -24,7 +25,11 @@ BATCH = 256  # drives simulated at once; the trajectories of a batch are let go 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Comparison:
-    """One set of drives at one operating point, ready to be run. `exits`: unpredicted exits fail."""
+    """One set of drives at one operating point, ready to be run.
+
+    exits: unpredicted exits fail; others: models that the verified one is told apart from by drives of their own (the
+    full derived model, and what an exact delivery would be), as far as they exist and differ.
+    """
 
     case: Case
     drives: DriveSet
@@ -33,6 +38,7 @@ class Comparison:
     rig: Rig
     start: Fidelity
     exits: bool
+    others: tuple[LocalModel, ...] = ()
 
     @property
     def id(self) -> str:
@@ -78,16 +84,33 @@ def comparison(study: Study, name: str) -> Comparison:
     case, model, point = study.case, study.model(), study.point()
     drives = case.drive_set(name)
     bands = case.bands_for(name)
-    limits = declared(drives, point, model, case.envelope, case.rate_limits)
+    limits = declared(drives, point, model, case.envelope, case.rate_limits, case.delays)
     signals = tuple(dict.fromkeys(band.signal for band in bands))
     plant = study.bound
     watched = {signal: room for signal, room in case.envelope.items() if signal not in plant.inputs}
     about = study.about()
     weights = _weights(study, model if about is None else about, limits, bands, signals)
-    rig = Rig(plant, point, model, signals, watched, weights, about=about)
+    rig = Rig(plant, point, model, signals, watched, weights, about=about, delays=case.delays, turns=_turns(case))
     nodes = max(_nodes(one, drives.every) for one in (model, about) if one is not None)
     start = Fidelity(nodes, TOLERANCE)
-    return Comparison(case, drives, bands, limits, rig, start, case.exits.mismatch == "fail")
+    return Comparison(
+        case, drives, bands, limits, rig, start, case.exits.mismatch == "fail", _others(study, model, about)
+    )
+
+
+def _others(study: Study, model: LocalModel, about: LocalModel | None) -> tuple[LocalModel, ...]:
+    """The plant's own slopes, where it has them and they are not the verified model themselves, and the reference."""
+    if about is None or about is model or study.unmet("derived"):
+        return ()
+    if study.unmet("reference") or (reference := study.reference()) is model or study.case.local.keep is None:
+        return (about,)
+    return (about, reference)
+
+
+def _turns(case: Case) -> dict[str, float]:
+    """A whole turn of each angle that is compared modulo one, in the plant's unit for it."""
+    units = {**case.plant.states, **(case.plant.outputs or {})}
+    return {name: convert(1.0, "rev", units[name]) for name in case.wraps if name in units}
 
 
 def _nodes(model: LocalModel, every: float) -> int:
@@ -110,7 +133,7 @@ def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Ba
     """
     plant = study.bound.states.names
     names = tuple(dict.fromkeys(name for name in (*plant, *signals) if name in model.states or name in model.outputs))
-    inputs, states = reaches(model, names, limits.every, limits.intervals, limits.course)
+    inputs, states = reaches(model, names, limits.every, limits.intervals, limits.course, study.case.delays)
     moved = dict(zip(names, _excursions(model, limits, inputs, states), strict=True))
     nominal = np.array([study.case.nominal.get(name, 1.0) for name in plant])
     excursion = np.array([moved.get(name, 0.0) for name in plant])

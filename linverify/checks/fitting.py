@@ -3,9 +3,8 @@
 from __future__ import annotations
 
 from ..core.model import LocalModel
+from ..numerics.pieces import SNAP, whole_steps
 from .study import Study
-
-SLACK = 1e-9  # of a time: whole multiples may miss by rounding
 
 
 def misfits(study: Study, name: str) -> tuple[str, ...]:
@@ -29,7 +28,7 @@ def misfits(study: Study, name: str) -> tuple[str, ...]:
         found.append(
             f"the local model's states are anonymous: it cannot start with {', '.join(started)} off the operating point"
         )
-    return (*found, *_clocks(study, model, drives.every))
+    return (*found, *_clocks(study, model, drives.every), *_straight_states(study, name, model))
 
 
 def told(study: Study, name: str) -> tuple[str, ...]:
@@ -41,26 +40,40 @@ def told(study: Study, name: str) -> tuple[str, ...]:
     )
     if model.step is not None and study.case.plant.step is None and drives.course != model.course:
         found.append(f"the drives are {drives.course} between instants, the sampled model takes {model.course} inputs")
+    if study.case.local.delivered is not None and (why := study.unmet("derived")):
+        found.append(f"{why}: no drives were sought that tell delivered from derived, and errors are not split")
     return tuple(found)
 
 
 def _clocks(study: Study, model: LocalModel, every: float) -> list[str]:
-    """Sample times that do not go together."""
+    """Sample times and dead times that do not go together."""
     plant, unit = study.case.plant.step, study.case.plant.time_unit
-    if plant is not None:
-        if model.step is None:
-            return [f"the local model is continuous, the plant steps every {plant:.6g} {unit}"]
-        if abs(model.step - plant) > SLACK * plant:
-            return [f"the local model steps every {model.step:.6g} {unit}, the plant every {plant:.6g} {unit}"]
+    if plant is not None and model.step is None:
+        return [f"the local model is continuous, the plant steps every {plant:.6g} {unit}"]
+    if plant is not None and model.step is not None and abs(model.step - plant) > SNAP * plant:
+        return [f"the local model steps every {model.step:.6g} {unit}, the plant every {plant:.6g} {unit}"]
+    if model.step is None:
         return []
-    if model.step is None or whole(every, model.step):
+    found = []
+    if not whole_steps(every, model.step):
+        found.append(f"the drives change every {every:.6g} {unit}, which is no whole multiple of")
+    delays = study.case.delays
+    for name, late in (*delays.inputs.items(), *delays.outputs.items()):
+        if whole_steps(late, model.step) is None:
+            found.append(f"the dead time of {name}, {late:.6g} {unit}, is no whole multiple of")
+    return [f"{one} the local model's step of {model.step:.6g} {unit}" for one in found]
+
+
+def _straight_states(study: Study, name: str, model: LocalModel) -> list[str]:
+    """Bands on states that cannot be read: a model sampled for straight inputs carries others than the plant's."""
+    if study.case.plant.step is not None or model.step is None or model.course == "held" or model.ahead is not None:
         return []
-    return [
-        f"the drives change every {every:.6g} {unit}, which is no whole multiple of the local model's step of "
-        f"{model.step:.6g} {unit}"
+    states = [
+        band.signal
+        for band in study.case.bands_for(name)
+        if band.signal in model.states and band.signal not in model.outputs
     ]
-
-
-def whole(time: float, step: float) -> bool:
-    """True where `time` is a whole multiple of `step`, zero included."""
-    return abs(time / step - round(time / step)) <= SLACK * max(1.0, abs(time / step))
+    return [
+        f"the state {one} of a model sampled for straight inputs cannot be read without the derived slopes"
+        for one in dict.fromkeys(states)
+    ]

@@ -22,6 +22,7 @@ from .confirm import Word, random_breaks, simplest, words
 from .evidence import saved, text_of
 from .figures import figure_of
 from .sight import Sight, sees_motion, sight
+from .split import sentences, splits
 from .statistics import statement
 from .study import Study
 
@@ -62,6 +63,9 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     blind = any(word.status is Status.FAIL for word in settled) or any(run.wrong)
     seen = None if blind else _look(compared, run, found)
     details = _details(study, compared, run, pins, seen)
+    if parts := splits(study, compared, settled):
+        details["error_split"] = [part.to_data() for part in parts]
+        found.notes += sentences(compared, parts)
     return _verdict(study, ask, found, settled, details)
 
 

@@ -89,15 +89,10 @@ def _threshold(caught: Callable[[float], bool], smallest: float, largest: float)
 
 def _delayed(runs: Runs, delay: float) -> Array:
     """The local model's trajectories `delay` later; before that the first value stands, which shows least."""
-    model = runs.model
-    signals, intervals, nodes, drives = model.shape
-    line = np.concatenate(
-        [model[:, :, :-1].reshape(signals, -1, drives), model[:, -1:, -1].reshape(signals, 1, drives)], axis=1
-    )
-    spacing = runs.horizon / (line.shape[1] - 1)
-    asked = np.clip(runs.times / spacing - delay / spacing, 0.0, line.shape[1] - 1.0)
-    before = np.minimum(np.floor(asked).astype(np.intp), line.shape[1] - 2)
-    share = (asked - before)[np.newaxis, :, :, np.newaxis]
-    return np.asarray(line[:, before] * (1.0 - share) + line[:, before + 1] * share).reshape(
-        signals, intervals, nodes, drives
-    )
+    model, times = runs.model, runs.times.ravel()
+    line = model.reshape(model.shape[0], times.size, model.shape[3])
+    asked = np.maximum(times - delay, times[0])
+    before = np.minimum(np.searchsorted(times, asked, side="right") - 1, times.size - 2)
+    width = times[before + 1] - times[before]
+    share = np.divide(asked - times[before], width, out=np.zeros_like(asked), where=width > 0.0)[:, np.newaxis]
+    return np.asarray(line[:, before] * (1.0 - share) + line[:, before + 1] * share).reshape(model.shape)

@@ -7,13 +7,16 @@ first: every answer is a function of the case alone, so an item that runs by its
 from __future__ import annotations
 
 from collections import OrderedDict
+from dataclasses import replace
 from functools import cached_property
 
 import numpy as np
 
 from ..core.bound import BoundPlant
 from ..core.case import Case, Interval, Options
-from ..core.model import Array, LocalModel, OperatingPoint
+from ..core.delivered import Keep
+from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
+from ..numerics.hold import straight
 from ..numerics.linearize import Linearization, linearize
 from ..numerics.placed import placed
 from ..numerics.reduce import Reduction, reduced, restricted
@@ -116,7 +119,11 @@ class Study:
         delivered = self.case.local.delivered
         if delivered is None:
             raise ValueError(f"{self.case.point} has no delivered model")
-        return placed(delivered, self.point())
+        model = placed(delivered, self.point())
+        about = self.about()
+        if model.step is None or model.anonymous or self.case.plant.step is not None or model.course == "held":
+            return model
+        return model if about is None else replace(model, ahead=_ahead(about, model, self.case.local.keep))
 
     @cached_property
     def _unfit(self) -> str:
@@ -135,7 +142,9 @@ class Study:
             return found
         model = restricted(found.model, delivered.inputs, delivered.outputs)
         if delivered.step is not None and model.step is None:
-            model = sampled(model, delivered.step, delivered.course)
+            continuous, model = model, sampled(model, delivered.step, delivered.course)
+            if delivered.course == "straight":
+                model = replace(model, ahead=_ahead(continuous, model, None))
         return Reduction(model)
 
     @cached_property
@@ -172,6 +181,19 @@ class Study:
         middle = case.trim.hold.get(name, case.trim.start.get(name, 0.0))
         middle = min(max(middle, inside.low + size), inside.high - size)
         return middle - size, middle + size
+
+
+def _ahead(continuous: LocalModel, model: LocalModel, keep: Keep | None) -> Array | None:
+    """What inputs at an instant add to the states of a model sampled for straight inputs; None where nobody knows."""
+    if keep is not None:
+        found = reduced(continuous, keep).model
+        if found is None:
+            return None
+        continuous = found
+    ahead = straight(continuous.A, continuous.B, model.step or 0.0)[2]
+    rows = [continuous.states.index(name) for name in model.states.names]
+    columns = [continuous.inputs.index(name) for name in model.inputs.names]
+    return frozen_array(ahead[np.ix_(rows, columns)])
 
 
 _studies: OrderedDict[tuple[int, int], Study] = OrderedDict()

@@ -57,7 +57,8 @@ class LocalModel:
     A (n, n), B (n, m), C (k, n), D (k, m) in the plant's units; errors: the absolute error estimate of every entry,
     same shapes, by the names "A", "B", "C", "D"; step: time between the states of a discrete model, None when
     continuous; course: how a discrete model of a continuous plant takes its inputs between samples. states may be fewer
-    than the plant's; anonymous: they mean nothing by themselves, and only outputs can be compared.
+    than the plant's; anonymous: they mean nothing by themselves, and only outputs can be compared. ahead (n, m): of a
+    model sampled for straight inputs, what the inputs at an instant add to its states to give the plant's.
     """
 
     A: Array
@@ -72,3 +73,4 @@ class LocalModel:
     errors: Mapping[str, Array] = field(default_factory=lambda: MappingProxyType({}))
     anonymous: bool = False
     course: Literal["held", "straight"] = "held"
+    ahead: Array | None = None

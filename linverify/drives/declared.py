@@ -13,9 +13,10 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from ..core.case import Course, DriveSet, Interval
+from ..core.delivered import Delays
 from ..core.drive import Drive
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
-from ..numerics.worst import reaches
+from ..numerics.worst import NO_DELAYS, reaches
 
 # A value read back from a file, or a sum of many small changes, may miss a limit by rounding.
 SLACK = 1e-9
@@ -128,6 +129,7 @@ def declared(
     model: LocalModel,
     envelope: Mapping[str, Interval],
     rate_limits: Mapping[str, float],
+    delays: Delays = NO_DELAYS,
 ) -> Limits:
     """The declared set at this operating point.
 
@@ -137,7 +139,7 @@ def declared(
     """
     inputs = tuple(name for name in point.inputs.names if name in drives.amplitude)
     told: list[str] = []
-    ranges = [_input_range(drives, name, model, point, envelope, told) for name in inputs]
+    ranges = [_input_range(drives, name, model, point, envelope, delays, told) for name in inputs]
     states = tuple(name for name in point.states.names if drives.offsets.get(name, 0.0) > 0.0)
     offsets = [
         _cut(name, -drives.offsets[name], drives.offsets[name], point, envelope, told, "offset") for name in states
@@ -157,13 +159,14 @@ def _input_range(
     model: LocalModel,
     point: OperatingPoint,
     envelope: Mapping[str, Interval],
+    delays: Delays,
     told: list[str],
 ) -> tuple[float, float]:
     amplitude = drives.amplitude[name]
     low, high = amplitude.low, amplitude.high
     if amplitude.until is not None:
         signal, size = amplitude.until
-        inputs, _ = reaches(model, (signal,), drives.every, drives.intervals, drives.course)
+        inputs, _ = reaches(model, (signal,), drives.every, drives.intervals, drives.course, delays)
         gain = float(inputs[0, model.inputs.index(name)])
         if not gain > 0.0:
             told.append(f"{name} does not move {signal} in the local model: its amplitude `until` {size:.6g} is zero")

@@ -12,9 +12,10 @@ from itertools import product
 
 import numpy as np
 
+from ..core.delivered import Delays
 from ..core.drive import Drive
 from ..core.model import Array, LocalModel
-from ..numerics.worst import furthest, furthest_square, weights
+from ..numerics.worst import NO_DELAYS, WITHIN, furthest, furthest_square, reach, weights
 from . import shapes
 from .declared import Limits
 
@@ -38,7 +39,7 @@ def steps(limits: Limits) -> tuple[Drive, ...]:
 
 
 def worst_of_model(
-    limits: Limits, model: LocalModel, signals: Sequence[str], squares: Sequence[str]
+    limits: Limits, model: LocalModel, signals: Sequence[str], squares: Sequence[str], delays: Delays = NO_DELAYS
 ) -> tuple[Drive, ...]:
     """Both signs of the drives that move each of `signals` furthest at the end of the horizon.
 
@@ -46,11 +47,83 @@ def worst_of_model(
     """
     found: list[Drive] = []
     for signal in signals:
-        rows, offsets = weights(model, signal, limits.every, limits.intervals, limits.course)
+        rows, offsets = weights(model, signal, limits.every, limits.intervals, limits.course, delays)
         columns = [model.inputs.index(name) for name in limits.inputs]
         gains = dict(zip(model.states.names, offsets, strict=True))
         found += worst_of_weights(limits, rows[:, columns], gains, square=signal in squares)
     return unique(found)
+
+
+def worst_of_difference(
+    limits: Limits,
+    first: LocalModel,
+    second: LocalModel,
+    signals: Sequence[str],
+    squares: Sequence[str],
+    delays: Delays = NO_DELAYS,
+) -> tuple[Drive, ...]:
+    """Both signs of the drives that move `signals` of two local models furthest apart, anywhere in the horizon.
+
+    For `squares` (signals with an rms band) the drive with a large mean square is added. Either model may be sampled.
+    """
+    found: list[Drive] = []
+    for signal in signals:
+        apart = [_apart(limits, (first, second), signal, delays, share) for share in _places(limits, first, second)]
+        found += worst_of_weights(limits, apart[-1][0], {}, square=signal in squares)
+        for sign in (1.0, -1.0):
+            sized = [_oldest(limits, sign * rows, sign * offsets) for rows, offsets in apart]
+            for place in {len(apart) - 1, int(np.argmax([size for size, _ in sized]))}:
+                found += _begun(limits, sign * apart[place][0], sign * apart[place][1], sized[place][1])
+    return unique(found)
+
+
+def _places(limits: Limits, first: LocalModel, second: LocalModel) -> list[float]:
+    """Shares of an interval at which both models say something; the whole one last."""
+    step = first.step if first.step is not None else second.step
+    count = WITHIN if step is None else max(1, round(limits.every / step))
+    return [place / count for place in range(count + 1)]
+
+
+def _apart(
+    limits: Limits, models: tuple[LocalModel, LocalModel], signal: str, delays: Delays, share: float
+) -> tuple[Array, Array]:
+    """First less second: what rows (K, m) of the driven inputs add, and offsets (K, states in `limits.offsets`)."""
+    rows = np.zeros((limits.intervals, len(limits.inputs)))
+    offsets = np.zeros((limits.intervals, len(limits.offsets)))
+    for sign, model in zip((1.0, -1.0), models, strict=True):
+        found = reach(model, (signal,), limits.every, limits.intervals, limits.course, delays, share)
+        for column, name in enumerate(limits.inputs):
+            if name in model.inputs:
+                rows[:, column] += sign * found.rows[0, :, model.inputs.index(name)]
+        for column, name in enumerate(limits.offsets):
+            if name in model.states:
+                offsets[:, column] += sign * found.offsets[0, :, model.states.index(name)]
+    return rows, offsets
+
+
+def _oldest(limits: Limits, rows: Array, offsets: Array) -> tuple[float, int]:
+    """The largest sum of inputs and offsets, without limits on rates, and the intervals after which it is reached."""
+    inputs = np.cumsum(np.sum(np.maximum(rows * limits.high, rows * limits.low), axis=1)[::-1])
+    started = np.sum(np.maximum(offsets * limits.offset_high, offsets * limits.offset_low), axis=1)
+    total = inputs + started
+    if not np.all(np.isfinite(total)):
+        return 0.0, limits.intervals
+    at = limits.intervals - 1 if not np.any(started) else int(np.argmax(total))
+    return float(total[at]), at + 1
+
+
+def _begun(limits: Limits, rows: Array, offsets: Array, age: int) -> list[Drive]:
+    """The worst drive whose worst instant is `age` intervals old, followed by what keeps the last value."""
+    if not np.all(np.isfinite(rows)) or not np.all(np.isfinite(offsets)):
+        return []
+    values = np.empty_like(rows)
+    values[:age] = furthest(rows[limits.intervals - age :], limits.low, limits.high, limits.change)
+    values[age:] = values[age - 1]
+    starts = {
+        name: limits.offset(column, float(np.sign(offsets[age - 1, column])))
+        for column, name in enumerate(limits.offsets)
+    }
+    return [limits.drive(values, starts)]
 
 
 def worst_of_weights(limits: Limits, rows: Array, offsets: Mapping[str, float], *, square: bool = False) -> list[Drive]:

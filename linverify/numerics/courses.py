@@ -4,25 +4,27 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
+from itertools import pairwise
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..core.drive import Drive
 from ..core.model import Array
-from ..core.signals import Signals
 from .hold import responses
-from .rig import Rig
+from .pieces import SNAP, Pieces, cut
+from .rig import Fidelity, Rig
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Courses:
-    """N drives of one grid as deviations from trim.
+    """N drives of one grid as deviations from trim, piece by piece.
 
-    every, intervals K, course: what they share; start, end (m, K, N): each input at both ends of each interval;
-    offsets (n, N): initial deviations of the states.
+    pieces, intervals K: what they share; start, end (m, K P, N): each input at both ends of each piece; offsets (n, N):
+    initial deviations of the states.
     """
 
-    every: float
+    pieces: Pieces
     intervals: int
     held: bool
     start: Array
@@ -34,25 +36,31 @@ class Courses:
         """Number of drives N."""
         return int(self.start.shape[2])
 
+    @property
+    def count(self) -> int:
+        """Number of pieces K P."""
+        return int(self.start.shape[1])
+
     def padded(self, width: int) -> Courses:
         """The same drives and copies of the last one up to `width` columns."""
-        pick = np.minimum(np.arange(width), self.width - 1)
-        return Courses(
-            self.every, self.intervals, self.held, self.start[:, :, pick], self.end[:, :, pick], self.offsets[:, pick]
-        )
+        return self._picked(np.minimum(np.arange(width), self.width - 1))
 
     def part(self, first: int, last: int) -> Courses:
         """Columns `first` to `last` (excluded)."""
-        pick = slice(first, last)
-        return Courses(
-            self.every, self.intervals, self.held, self.start[:, :, pick], self.end[:, :, pick], self.offsets[:, pick]
-        )
+        return self._picked(slice(first, last))
+
+    def _picked(self, pick: slice | NDArray[np.intp]) -> Courses:
+        return replace(self, start=self.start[:, :, pick], end=self.end[:, :, pick], offsets=self.offsets[:, pick])
 
 
-def courses(drives: Sequence[Drive], inputs: Signals, states: Signals) -> Courses:
-    """Stack `drives`; raises ValueError where they differ in every, intervals or course, or name foreign signals."""
+def courses(rig: Rig, drives: Sequence[Drive], fidelity: Fidelity) -> Courses:
+    """Stack `drives`, each input after its dead time.
+
+    Raises ValueError where they differ in every, intervals or course, name foreign signals or do not fit the rig.
+    """
     if not drives:
         raise ValueError("no drive to simulate")
+    inputs, states = rig.plant.inputs, rig.plant.states
     every, intervals, course = drives[0].every, drives[0].intervals, drives[0].course
     start = np.zeros((len(inputs), intervals, len(drives)))
     end, offsets = np.zeros_like(start), np.zeros((len(states), len(drives)))
@@ -65,17 +73,30 @@ def courses(drives: Sequence[Drive], inputs: Signals, states: Signals) -> Course
             start[row, :, column] = values if course == "held" else np.concatenate(([0.0], values[:-1]))
         for name, value in drive.offsets.items():
             offsets[states.index(name), column] = value
-    return Courses(every, intervals, course == "held", start, end, offsets)
+    pieces = cut(rig, every, fidelity)
+    if pieces.count > 1 or any(rig.delays.inputs.values()):
+        late = np.array([rig.delays.inputs.get(name, 0.0) for name in inputs.names])
+        start, end = _after(pieces, late, start, end)
+    return Courses(pieces, intervals, course == "held", start, end, offsets)
 
 
-def grid(every: float, intervals: int, nodes: int) -> Array:
-    """Instants of all nodes since the drive began, (K, S + 1); the last of a row is the first of the next."""
-    ends = every * np.arange(intervals + 1)
-    inner = every * np.arange(nodes) / nodes
-    times = np.empty((intervals, nodes + 1))
-    times[:, :-1] = ends[:-1, np.newaxis] + inner
-    times[:, -1] = ends[1:]
-    return times
+def _after(pieces: Pieces, late: Array, start: Array, end: Array) -> tuple[Array, Array]:
+    """Both ends of each piece, (m, K P, N), of inputs that arrive `late` (m,); at trim before they do."""
+    intervals = start.shape[1]
+    begins = pieces.begins(intervals)
+    first = np.zeros((len(start), len(begins) - 1, start.shape[2]))
+    last = np.zeros_like(first)
+    for row, delay in enumerate(late):
+        for k, (begin, stop) in enumerate(pairwise(begins - delay)):
+            source = int(np.floor(0.5 * (begin + stop) / pieces.every))
+            if source < 0:
+                continue
+            shares = np.clip((np.array([begin, stop]) - pieces.every * source) / pieces.every, 0.0, 1.0)
+            from_, to = (share if SNAP < share < 1.0 - SNAP else round(share) for share in shares)
+            here, there = start[row, source], end[row, source]
+            first[row, k] = here + from_ * (there - here) if from_ < 1.0 else there
+            last[row, k] = here + to * (there - here) if to < 1.0 else there
+    return first, last
 
 
 def model_offsets(rig: Rig, drives: Courses) -> Array:
@@ -95,39 +116,54 @@ def _for_model(rig: Rig, drives: Courses) -> Courses:
     return replace(drives, start=drives.start[pick], end=drives.end[pick])
 
 
-def linear(rig: Rig, drives: Courses, nodes: int) -> Array:
-    """The local model's states at all nodes, (n, K, S + 1, N): exact, as deviations from the trimmed course."""
-    drives = _for_model(rig, drives)
+def linear(rig: Rig, drives: Courses) -> Array:
+    """The local model's states at all nodes, (n, K P, S + 1, N): exact, as deviations from the trimmed course.
+
+    Between the instants of a sampled model, which says nothing there, straight lines stand for them.
+    """
+    pieces, drives = drives.pieces, _for_model(rig, drives)
     A, B = rig.model.A, rig.model.B
-    out = np.empty((A.shape[0], drives.intervals, nodes + 1, drives.width))
-    if rig.plant.step is not None:
-        _stepped(rig, drives, nodes, out)
-        return out
-    times = drives.every * np.arange(1, nodes + 1) / nodes
-    P, Q, R = responses(A, B, times)
+    if rig.model.step is not None:
+        steps = pieces.nodes // pieces.stride
+        return _filled(_stepped(rig, drives, steps), pieces.stride)
+    out = np.empty((A.shape[0], drives.count, pieces.nodes + 1, drives.width))
+    maps = [responses(A, B, length * np.arange(1, pieces.nodes + 1) / pieces.nodes) for length in pieces.lengths]
     x = model_offsets(rig, drives)
-    slopes = None if drives.held else (drives.end - drives.start) / drives.every
-    for k in range(drives.intervals):
+    for k in range(drives.count):
+        P, Q, R = maps[k % pieces.count]
         out[:, k, 0] = x
         after = P @ x + Q @ drives.start[:, k]
-        if slopes is not None:
-            after += R @ slopes[:, k]
+        if not drives.held:
+            after += R @ ((drives.end[:, k] - drives.start[:, k]) / pieces.length(k))
         out[:, k, 1:] = after.transpose(1, 0, 2)
         x = np.ascontiguousarray(after[-1])
     return out
 
 
-def _stepped(rig: Rig, drives: Courses, nodes: int, out: Array) -> None:
+def _stepped(rig: Rig, drives: Courses, steps: int) -> Array:
     A, B, x = rig.model.A, rig.model.B, model_offsets(rig, drives)
-    for k in range(drives.intervals):
+    out = np.empty((A.shape[0], drives.count, steps + 1, drives.width))
+    for k in range(drives.count):
         out[:, k, 0] = x
-        for j in range(nodes):
-            x = A @ x + B @ input_at(drives, k, j / nodes)
+        for j in range(steps):
+            x = A @ x + B @ input_at(drives, k, j / steps)
             out[:, k, j + 1] = x
+    return out
+
+
+def _filled(states: Array, stride: int) -> Array:
+    """Nodes in straight lines between instants; at instants the very values."""
+    if stride == 1:
+        return states
+    last = states.shape[2] - 1
+    nodes = np.arange(last * stride + 1)
+    before = nodes // stride
+    share = (nodes % stride / stride)[:, np.newaxis]
+    return np.asarray(states[:, :, before] * (1.0 - share) + states[:, :, np.minimum(before + 1, last)] * share)
 
 
 def input_at(drives: Courses, k: int, share: float) -> Array:
-    """Inputs in interval k after `share` of it, (m, N), as deviations."""
+    """Inputs in piece k after `share` of it, (m, N), as deviations."""
     if drives.held:
         return drives.start[:, k]
     result: Array = drives.start[:, k] + share * (drives.end[:, k] - drives.start[:, k])
@@ -135,7 +171,7 @@ def input_at(drives: Courses, k: int, share: float) -> Array:
 
 
 def linear_signals(rig: Rig, drives: Courses, states: Array, names: Sequence[str]) -> Array:
-    """The local model's states and outputs called `names` at all nodes, (len(names), K, S + 1, N).
+    """The local model's states and outputs called `names` at all nodes, (len(names), K P, S + 1, N).
 
     NaN for what the model does not have.
     """
@@ -145,24 +181,16 @@ def linear_signals(rig: Rig, drives: Courses, states: Array, names: Sequence[str
     for row, name in enumerate(names):
         if name in model.states:
             out[row] = states[model.states.index(name)]
+            feed = None if model.ahead is None else model.ahead[model.states.index(name)]
+        elif name in model.outputs:
+            index = model.outputs.index(name)
+            out[row], feed = np.tensordot(model.C[index], states, axes=1), model.D[index]
+        else:
+            out[row], feed = np.nan, None
+        if feed is None:
             continue
-        if name not in model.outputs:
-            out[row] = np.nan
-            continue
-        index = model.outputs.index(name)
-        out[row] = np.tensordot(model.C[index], states, axes=1)
         for j in range(nodes + 1):
             share = j / nodes
             inputs = drives.start if drives.held else drives.start + share * (drives.end - drives.start)
-            out[row, :, j] += np.tensordot(model.D[index], inputs, axes=1)
+            out[row, :, j] += np.tensordot(feed, inputs, axes=1)
     return out
-
-
-def settled_ends(rig: Rig, values: Array) -> Array:
-    """For a difference equation, give the last node of each interval the values of the next instant.
-
-    Its outputs are read at instants only, with the input of that instant: there is no left side of a jump to see.
-    """
-    if rig.plant.step is not None:
-        values[:, :-1, -1] = values[:, 1:, 0]
-    return values

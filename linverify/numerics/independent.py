@@ -17,6 +17,7 @@ from ..core.drive import Drive
 from ..core.errors import PlantError
 from ..core.model import Array
 from ..core.outcome import Outcome
+from .pieces import cut
 from .readout import Limit, Readout, model_after, model_course, model_within
 from .rig import Exit, Fidelity, Rig, Runs
 
@@ -36,8 +37,7 @@ def run_independent(rig: Rig, drive: Drive, fidelity: Fidelity) -> Runs:
 
     Sampled at the nodes of `simulate.run` with the same fidelity. Outcomes and errors as there.
     """
-    nodes = fidelity.nodes if rig.plant.step is None else round(drive.every / rig.plant.step)
-    second = _Second(Readout(rig, drive, nodes), fidelity)
+    second = _Second(Readout(rig, drive, cut(rig, drive.every, fidelity)), fidelity)
     with np.errstate(all="ignore"):  # what is not finite is told by the outcome
         second.go()
     return second.told()
@@ -59,13 +59,13 @@ class _Second:
     budget: int = 0
 
     def go(self) -> None:
-        """Both sides, interval by interval."""
+        """Both sides, piece by piece."""
         readout = self.readout
         self.budget = DEARER * readout.rig.evaluations
         self.starts = model_course(readout)
         interval = self._continuous if readout.rig.plant.step is None else self._discrete
         x = readout.rig.point.x + readout.offset()
-        for k in range(readout.drive.intervals):
+        for k in range(readout.count):
             after = interval(k, x)
             if after is None:
                 return
@@ -74,7 +74,7 @@ class _Second:
     def told(self) -> Runs:
         """Everything as `Runs` of one drive."""
         readout, rig = self.readout, self.readout.rig
-        K, S, q = readout.drive.intervals, readout.nodes, len(rig.signals)
+        K, S, q = readout.count, readout.nodes, len(rig.signals)
         times = np.array([[readout.time(k, j) for j in range(S + 1)] for k in range(K)])
         plant, model = np.full((q, K, S + 1, 1), np.nan), np.empty((q, K, S + 1, 1))
         for place, values in enumerate(self.plant):
@@ -86,9 +86,13 @@ class _Second:
             plant[:, :-1, -1], model[:, :-1, -1] = plant[:, 1:, 0], model[:, 1:, 0]
         ended = float(times[-1, -1]) if np.isnan(self.ended) else self.ended
         method = f"scipy {self._method()}" if rig.plant.step is None else "difference equation, one column"
+        pieces = readout.pieces
         return Runs(
-            rig.signals, times, plant, model, np.array([ended]), (self.left,), (self.outcome,), (self.text,), method
-        )
+            rig.signals, pieces.folded(times[np.newaxis])[0], pieces.folded(plant), pieces.folded(model),
+            np.array([ended]), (self.left,), (self.outcome,), (self.text,), method,
+            late=tuple(rig.delays.outputs.get(name, 0.0) for name in rig.signals),
+            turns=tuple(rig.turns.get(name, 0.0) for name in rig.signals),
+        )  # fmt: skip
 
     def _method(self) -> Literal["DOP853", "Radau"]:
         return "Radau" if self.readout.rig.stiff(self.readout.drive.every) else "DOP853"
@@ -100,7 +104,7 @@ class _Second:
         try:
             found = self._solved(k, begin, x)
             for j in range(self.readout.nodes + 1):
-                local = self.readout.drive.every * j / self.readout.nodes
+                local = self.readout.pieces.length(k) * j / self.readout.nodes
                 if local <= found.t[-1]:
                     self._keep(begin + local, found.sol(local) if local < found.t[-1] else found.y[:, -1], k, j)
         except (PlantError, _SpentError, ValueError, FloatingPointError) as error:
@@ -119,42 +123,42 @@ class _Second:
     def _solved(self, k: int, begin: float, x: Array) -> Any:
         from scipy.integrate import solve_ivp  # slow to import, and needed only where something failed
 
-        rig, every = self.readout.rig, self.readout.drive.every
+        rig, length = self.readout.rig, self.readout.pieces.length(k)
         atol = np.maximum(rig.weights * self.fidelity.tolerance / TIGHTER, 1e-15 * np.abs(rig.point.x))
         rates = self._rates(k, begin)
         rig.plant.rates(rig.point.time + begin, x, rig.point.u + self.readout.inputs(k, 0.0))  # raises where it fails
         rooms = [self._room(k, begin, limit) for limit in self.readout.limits]
         return solve_ivp(
             lambda s, x: rates(float(s), x),
-            (0.0, every),
+            (0.0, length),
             x,
             method=self._method(),
             dense_output=True,
             rtol=RELATIVE,
             atol=atol,
             events=rooms,
-            first_step=every / FIRST_STEP,
-            max_step=every / LEAST_STEPS,
+            first_step=length / FIRST_STEP,
+            max_step=length / LEAST_STEPS,
         )
 
     def _rates(self, k: int, begin: float) -> Callable[[float, Array], Array]:
-        rig, every = self.readout.rig, self.readout.drive.every
+        rig, length = self.readout.rig, self.readout.pieces.length(k)
 
         def rates(s: float, x: Array) -> Array:
             self.calls += 1
             if self.calls > self.budget:
                 raise _SpentError("more plant evaluations were needed than the budget allows")
-            u = rig.point.u + self.readout.inputs(k, s / every)
+            u = rig.point.u + self.readout.inputs(k, s / length)
             return rig.plant.rates_or_nan(rig.point.time + begin + s, x, u)
 
         return rates
 
     def _room(self, k: int, begin: float, limit: Limit) -> Callable[[float, Array], float]:
         """A function that falls through zero where the plant crosses `limit` outwards."""
-        every = self.readout.drive.every
+        length = self.readout.pieces.length(k)
 
         def room(s: float, x: Array) -> float:
-            return limit.room(float(self.readout.plant(begin + s, x, self.readout.inputs(k, s / every))[limit.row]))
+            return limit.room(float(self.readout.plant(begin + s, x, self.readout.inputs(k, s / length))[limit.row]))
 
         room.terminal = True  # type: ignore[attr-defined]
         room.direction = -1.0  # type: ignore[attr-defined]
@@ -164,8 +168,8 @@ class _Second:
         rig, readout = self.readout.rig, self.readout
         for j in range(readout.nodes + 1):
             time = readout.time(k, j)
-            last = k == readout.drive.intervals - 1
-            # the last node of an interval is the next one's first, and is looked at there
+            last = k == readout.count - 1
+            # the last node of a piece is the next one's first, and is looked at there
             if (j < readout.nodes or last) and not self._within(time, x, k, j / readout.nodes):
                 return None
             try:
@@ -194,18 +198,15 @@ class _Second:
             return False
         for limit in self.readout.limits:
             if limit.room(float(values[limit.row])) < 0:
-                self._leave(limit, k, share * self.readout.drive.every)
+                self._leave(limit, k, share * self.readout.pieces.length(k))
                 return False
         return True
 
     def _leave(self, limit: Limit, k: int, local: float) -> None:
         readout = self.readout
         time = readout.time(k, 0) + local
-        if readout.rig.plant.step is None:
-            x = model_after(readout, self.starts[k], k, local)
-        else:
-            x = model_within(readout, self.starts[k], k, round(local / readout.drive.every * readout.nodes))
-        gone = readout.model(x, readout.inputs(k, local / readout.drive.every))[limit.row]
+        x = model_after(readout, self.starts[k], k, local)
+        gone = readout.model(x, readout.inputs(k, local / readout.pieces.length(k)))[limit.row]
         way = limit.limit - readout.course(time)[limit.row]
         self.left = Exit(readout.names[limit.row], limit.side, time, limit.limit, float(gone / way) if way else 1.0)
         self.ended = time
@@ -223,7 +224,7 @@ class _Second:
         plant, x = self.readout.rig.plant, found.y[:, -1]
         kept, plant.last_error = plant.last_error, None
         rates = self._rates(k, begin)
-        ahead = x + 1e-6 * self.readout.drive.every * rates(float(found.t[-1]), x)
+        ahead = x + 1e-6 * self.readout.pieces.length(k) * rates(float(found.t[-1]), x)
         rates(float(found.t[-1]), ahead)
         error, plant.last_error = plant.last_error, kept
         return error or ArithmeticError(found.message)

@@ -5,10 +5,13 @@ from __future__ import annotations
 from collections.abc import Sequence
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..core.delivered import DeliveredModel
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
 from ..core.signals import Signals, nearest
+
+Places = NDArray[np.intp]
 
 
 def placed(delivered: DeliveredModel, point: OperatingPoint) -> LocalModel:
@@ -21,7 +24,7 @@ def placed(delivered: DeliveredModel, point: OperatingPoint) -> LocalModel:
     outputs, rows = _picked(delivered.outputs, point.outputs, "output")
     if delivered.states is None:
         count = int(np.shape(delivered.A)[0])
-        states, inner = anonymous_states(count), np.arange(count)
+        states, inner = anonymous_states(count), np.arange(count, dtype=np.intp)
     else:
         states, inner = _picked(delivered.states, point.states, "state")
     n, m, k = len(states), len(inputs), len(outputs)
@@ -49,14 +52,14 @@ def anonymous_states(count: int) -> Signals:
     return Signals(tuple(f"state {index + 1}" for index in range(count)), ("",) * count)
 
 
-def part(signals: Signals, names: Sequence[str]) -> tuple[Signals, Array]:
+def part(signals: Signals, names: Sequence[str]) -> tuple[Signals, Places]:
     """Those of `signals` that are among `names`, in the order of `signals`, with their rows."""
     rows = [row for row, name in enumerate(signals.names) if name in names]
     kept = Signals(tuple(signals.names[row] for row in rows), tuple(signals.units[row] for row in rows))
     return kept, np.array(rows, dtype=np.intp)
 
 
-def _picked(names: Sequence[str], known: Signals, what: str) -> tuple[Signals, Array]:
+def _picked(names: Sequence[str], known: Signals, what: str) -> tuple[Signals, Places]:
     """Signals in the plant's order, and where each stands in the delivered order."""
     for name in names:
         if name not in known:
@@ -68,6 +71,6 @@ def _picked(names: Sequence[str], known: Signals, what: str) -> tuple[Signals, A
     return kept, np.array([list(names).index(name) for name in kept.names], dtype=np.intp)
 
 
-def _block(matrix: Array, rows: Array, columns: Array) -> Array:
+def _block(matrix: Array, rows: Places, columns: Places) -> Array:
     whole = np.asarray(matrix, dtype=np.float64)
-    return frozen_array(whole[np.ix_(rows.astype(np.intp), columns.astype(np.intp))])
+    return frozen_array(whole[np.ix_(rows, columns)])

@@ -53,7 +53,7 @@ def follow(rig: Rig, drives: Courses, names: Sequence[str], times: Array, fideli
     A point may be stiff only away from trim, or its local model may not know a fast pole: where the explicit pair runs
     out of steps, the implicit method has a try.
     """
-    stiff = rig.stiff(drives.every)
+    stiff = rig.stiff(drives.pieces.every)
     result = _Way(rig, drives, tuple(names), times, fidelity, stiff).went()
     if not stiff and rig.plant.step is None and Outcome.TOO_MANY_STEPS in result.outcomes:
         again = _Way(rig, drives, tuple(names), times, fidelity, True).went()
@@ -85,7 +85,7 @@ class _Way:
         self.method = Rosenbrock(rig.weights, high) if self.stiff else DormandPrince()
         self.piece = Piece(rig.plant, rig.point.time, np.zeros((rig.plant.m, width)), None, low, high)
         x = rig.point.x[:, np.newaxis] + self.drives.offsets
-        step = self.drives.every * self.fidelity.longest
+        step = self.drives.pieces.length(0) * self.fidelity.longest
         self.batch = Batch(x, np.ones(width, dtype=bool), step, self._rest, self._leaving, self._stuck)
         self.result = Followed(
             np.full((len(self.names), *self.times.shape, width), np.nan),
@@ -101,12 +101,12 @@ class _Way:
     def went(self) -> Followed:
         """The whole way."""
         discrete = self.rig.plant.step is not None
-        for k in range(self.drives.intervals):
+        for k in range(self.drives.count):
             if not self.batch.active.any():
                 break
             running = self.batch.active.copy()
             self._begin(k)
-            out = self._difference(k) if discrete else self._differential()
+            out = self._difference(k) if discrete else self._differential(k)
             self._read(k, out, running)
             if self.piece.used > self.rig.evaluations * self.drives.width:
                 self._fail(self.batch.active, self.times[k, -1], SPENT.format(self.rig.evaluations))
@@ -144,12 +144,12 @@ class _Way:
         self.batch.begun = float(self.times[k, 0])
         piece.t = point.time + self._ticks(self.batch.begun)
         piece.u = point.u[:, np.newaxis] + drives.start[:, k]
-        piece.slope = None if drives.held else (drives.end[:, k] - drives.start[:, k]) / drives.every
+        piece.slope = None if drives.held else (drives.end[:, k] - drives.start[:, k]) / drives.pieces.length(k)
         self._outside(k)
         self._rest(~self.batch.active)
 
     def _outside(self, k: int) -> None:
-        """Stop the drives whose inputs leave the plant's domain in interval k."""
+        """Stop the drives whose inputs leave the plant's domain in piece k."""
         low, high = domain_of(self.rig.plant, self.rig.plant.inputs)
         if np.isinf(low).all() and np.isinf(high).all():
             return
@@ -166,8 +166,8 @@ class _Way:
         if bad.any():
             self.batch.stop(bad, 0.0)
 
-    def _differential(self) -> Array:
-        every = self.drives.every
+    def _differential(self, k: int) -> Array:
+        every = self.drives.pieces.length(k)
         # below rounding no step is short enough; the halved grid tells what that costs
         scale = np.maximum(self.fidelity.tolerance * self.rig.weights, ROUNDING * np.abs(self.rig.point.x))
         demand = Demand(scale[:, np.newaxis], every * self.fidelity.longest, every * SHORTEST, self.rig.attempts)
@@ -191,7 +191,7 @@ class _Way:
         return out
 
     def _read(self, k: int, out: Array, running: Mask) -> None:
-        """Keep the watched signals of interval k, and stop what left the envelope or cannot be read."""
+        """Keep the watched signals of piece k, and stop what left the envelope or cannot be read."""
         states, outputs = self.rig.plant.states, self.rig.plant.outputs
         values = np.empty((len(self.names), *out.shape[1:]))
         read = [row for row, name in enumerate(self.names) if name not in states]
@@ -236,11 +236,11 @@ class _Way:
         self.rig.plant.measure_or_nan(self.rig.point.time + self._ticks(float(self.times[k, j])), x, u)
 
     def _stopped_between(self, k: int, columns: Mask) -> None:
-        """Read the watched signals where columns stopped within interval k."""
+        """Read the watched signals where columns stopped within piece k."""
         plant, point = self.rig.plant, self.rig.point
         for column in np.flatnonzero(columns):
             when = float(self.batch.stopped[column])
-            share = (when - self.times[k, 0]) / self.drives.every
+            share = (when - self.times[k, 0]) / self.drives.pieces.length(k)
             x = self.batch.last[:, column]
             u = point.u + input_at(self.drives, k, share)[:, column]
             y = plant.measure_or_nan(point.time + self._ticks(when), x, u)
@@ -277,7 +277,7 @@ class _Way:
     def _tried(self, alone: Piece, when: float, x: Array) -> None:
         first = alone.rates(when, x)
         if self.rig.plant.step is None:
-            self.method.attempt(alone.rates, when, x, first, 10 * SHORTEST * self.drives.every)
+            self.method.attempt(alone.rates, when, x, first, 10 * SHORTEST * self.drives.pieces.every)
 
     def _fail(self, columns: Mask, time: float, text: str) -> None:
         for column in np.flatnonzero(columns):

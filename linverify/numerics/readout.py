@@ -10,6 +10,7 @@ from scipy.linalg import expm
 
 from ..core.drive import Drive
 from ..core.model import Array
+from .pieces import Pieces
 from .rig import Rig
 
 Side = Literal["low", "high"]
@@ -33,11 +34,11 @@ class Limit:
 
 @dataclass(slots=True, eq=False)
 class Readout:
-    """names: the compared signals, then what the envelope limits besides; nodes: samples an interval, less one."""
+    """names: the compared signals, then what the envelope limits besides; pieces: where inputs change, and nodes."""
 
     rig: Rig
     drive: Drive
-    nodes: int
+    pieces: Pieces
     names: tuple[str, ...] = field(init=False)
     limits: tuple[Limit, ...] = field(init=False)
     exponentials: dict[float, Array] = field(default_factory=dict)
@@ -59,25 +60,50 @@ class Readout:
                     limits.append(Limit(row, side, limit, SLACK * max(abs(limit), trimmed) + UNSEEN * weight))
         self.limits = tuple(limits)
 
+    @property
+    def count(self) -> int:
+        """Number of pieces of the whole drive."""
+        return self.drive.intervals * self.pieces.count
+
+    @property
+    def nodes(self) -> int:
+        """Sub-intervals of a piece."""
+        return self.pieces.nodes
+
     def time(self, k: int, j: int) -> float:
-        """Time of node j of interval k; the last node is the next interval's first, to the bit."""
-        every = self.drive.every
-        return every * (k + 1) if j == self.nodes else every * k + every * j / self.nodes
+        """Time of node j of piece k; the last node is the next piece's first, to the bit."""
+        if j == self.nodes:
+            k, j = k + 1, 0
+        whole, part = divmod(k, self.pieces.count)
+        begin = self.pieces.every * whole + float(sum(self.pieces.lengths[:part]))
+        return begin + self.pieces.length(k) * j / self.nodes
 
     def tick(self, time: float) -> float:
         """`time` since the drive began as the plant counts it."""
         return time if self.rig.plant.step is None else float(round(time / self.rig.plant.step))
 
     def inputs(self, k: int, share: float) -> Array:
-        """Deviations of all plant inputs (m,) in interval k after `share` of it."""
-        row = np.array(self.drive.values[k])
-        if self.drive.course == "straight":
-            before = self.drive.values[k - 1] if k else np.zeros_like(row)
-            row = before + share * (row - before)
+        """Deviations of all plant inputs (m,) in piece k after `share` of it, each after its dead time."""
         u = np.zeros(self.rig.plant.m)
-        for name, value in zip(self.drive.inputs, row, strict=True):
-            u[self.rig.plant.inputs.index(name)] = value
+        begin, length = self.time(k, 0), self.pieces.length(k)
+        for column, name in enumerate(self.drive.inputs):
+            late = self.rig.delays.inputs.get(name, 0.0)
+            if not late and self.pieces.count == 1:
+                u[self.rig.plant.inputs.index(name)] = self._course(k, column, share)
+                continue
+            # the middle of a piece tells the interval: its ends may miss an instant by rounding
+            interval = int(np.floor((begin + 0.5 * length - late) / self.drive.every))
+            if interval >= 0:
+                within = (begin + share * length - late) / self.drive.every - interval
+                u[self.rig.plant.inputs.index(name)] = self._course(interval, column, min(max(within, 0.0), 1.0))
         return u
+
+    def _course(self, interval: int, column: int, share: float) -> float:
+        here = float(self.drive.values[interval, column])
+        if self.drive.course == "held":
+            return here
+        before = float(self.drive.values[interval - 1, column]) if interval else 0.0
+        return before + share * (here - before)
 
     def offset(self) -> Array:
         """Initial deviations of the states (n,)."""
@@ -118,7 +144,8 @@ class Readout:
         values = []
         for name in self.names:
             if name in model.states:
-                values.append(float(x[model.states.index(name)]))
+                row = model.states.index(name)
+                values.append(float(x[row]) + (0.0 if model.ahead is None else float(model.ahead[row] @ u)))
             elif name not in model.outputs:
                 values.append(float("nan"))
             else:
@@ -128,31 +155,29 @@ class Readout:
 
 
 def model_course(readout: Readout) -> list[Array]:
-    """The local model's states where each interval begins, and at the end of the last, (n,) each."""
+    """The local model's states where each piece begins, and at the end of the last, (n,) each."""
     x = readout.model_offset()
     starts = [x]
-    for k in range(readout.drive.intervals):
+    for k in range(readout.count):
         x = model_within(readout, x, k, readout.nodes)
         starts.append(x)
     return starts
 
 
 def model_within(readout: Readout, x: Array, k: int, node: int) -> Array:
-    """The local model's states at a node of interval k that begins with x."""
-    model = readout.rig.model
-    if readout.rig.plant.step is not None:
-        for j in range(node):
-            x = model.A @ x + model.B @ readout.known(readout.inputs(k, j / readout.nodes))
-        return x
-    return model_after(readout, x, k, readout.drive.every * node / readout.nodes)
+    """The local model's states at a node of piece k that begins with x."""
+    return model_after(readout, x, k, readout.pieces.length(k) * node / readout.nodes)
 
 
 def model_after(readout: Readout, x: Array, k: int, local: float) -> Array:
-    """The local model's states `local` after interval k began with x.
+    """The local model's states `local` after piece k began with x.
 
-    States, inputs and slopes of the inputs are one vector that a single exponential carries on.
+    States, inputs and slopes of the inputs are one vector that a single exponential carries on. Between the instants of
+    a sampled model a straight line stands for it.
     """
-    model, every = readout.rig.model, readout.drive.every
+    if readout.rig.model.step is not None:
+        return _sampled_after(readout, x, k, local / readout.pieces.length(k))
+    model, length = readout.rig.model, readout.pieces.length(k)
     n, m = model.B.shape
     start, end = readout.known(readout.inputs(k, 0.0)), readout.known(readout.inputs(k, 1.0))
     if readout.drive.course == "held":
@@ -162,6 +187,20 @@ def model_after(readout: Readout, x: Array, k: int, local: float) -> Array:
         generator[:n, :n], generator[:n, n : n + m] = model.A, model.B
         generator[n : n + m, n + m :] = np.eye(m)
         readout.exponentials[local] = np.asarray(expm(generator * local), dtype=np.float64)[:n]
-    vector = np.concatenate([x, start, (end - start) / every])
+    vector = np.concatenate([x, start, (end - start) / length])
     carried: Array = readout.exponentials[local] @ vector
     return carried
+
+
+def _sampled_after(readout: Readout, x: Array, k: int, share: float) -> Array:
+    model, steps = readout.rig.model, readout.nodes // readout.pieces.stride
+    done = share * steps
+    if abs(done - round(done)) <= SLACK * steps:
+        done = float(round(done))
+    for j in range(int(done)):
+        x = model.A @ x + model.B @ readout.known(readout.inputs(k, j / steps))
+    rest = done - int(done)
+    if rest > 0.0:
+        ahead = model.A @ x + model.B @ readout.known(readout.inputs(k, int(done) / steps))
+        x = x + rest * (ahead - x)
+    return x

@@ -64,10 +64,9 @@ def restricted(model: LocalModel, inputs: Sequence[str], outputs: Sequence[str])
 
 
 def _blocks(model: LocalModel, keep: Keep) -> _Blocks:
-    states, rows = part(model.states, keep.states)
-    inputs, columns = part(model.inputs, keep.inputs)
-    outputs, read = part(model.outputs, keep.outputs)
-    i, j, k = (np.asarray(index, dtype=np.intp) for index in (rows, columns, read))
+    states, i = part(model.states, keep.states)
+    inputs, j = part(model.inputs, keep.inputs)
+    outputs, k = part(model.outputs, keep.outputs)
     out = np.setdiff1d(np.arange(len(model.states)), i)
     kept = replace(
         model,

@@ -7,7 +7,8 @@ operating point and never by what else happens to be simulated.
 from __future__ import annotations
 
 from collections.abc import Mapping
-from dataclasses import dataclass
+from dataclasses import dataclass, field
+from types import MappingProxyType
 from typing import Literal
 
 import numpy as np
@@ -15,6 +16,7 @@ from numpy.typing import NDArray
 
 from ..core.bound import BoundPlant
 from ..core.case import Interval
+from ..core.delivered import Delays
 from ..core.model import Array, LocalModel, OperatingPoint
 from ..core.outcome import Outcome
 from .reduce import rates
@@ -30,6 +32,8 @@ class Rig:
     (inputs are not looked at: drives are cut to their ranges); weights (n,): absolute error of each state that is
     acceptable at all, in its unit. attempts: steps tried an interval, and evaluations: plant columns a drive, before a
     run ends with TOO_MANY_STEPS. about: the plant's own slopes, by which its integrator is chosen; None: the model's.
+    delays: dead times of inputs and outputs, the same for plant and model; turns: a whole turn of each signal that is
+    compared modulo one, in its unit. The envelope holds for outputs before their dead time.
     """
 
     plant: BoundPlant
@@ -41,6 +45,8 @@ class Rig:
     attempts: int = 4000
     evaluations: int = 2_000_000
     about: LocalModel | None = None
+    delays: Delays = field(default_factory=Delays)
+    turns: Mapping[str, float] = field(default_factory=lambda: MappingProxyType({}))
 
     def __post_init__(self) -> None:
         if self.weights.shape != (self.plant.n,) or not np.all(self.weights > 0) or not np.isfinite(self.weights).all():
@@ -117,7 +123,9 @@ class Runs:
     kept, since an output with direct feedthrough jumps there. plant, model (q, K, S + 1, N): deviations of the compared
     signals from the trimmed course. ended (N,): the horizon, or when the comparison ends before it (exit or failure);
     plant is NaN after it. outcomes: DONE for a drive that completed or left the envelope, else why it could not be
-    followed further, with `errors` naming the call. evaluations: plant columns that were evaluated.
+    followed further, with `errors` naming the call. evaluations: plant columns that were evaluated. late (q,): dead
+    time of each signal: a sample taken at t arrives at t + late, and one that arrives after the horizon does not count;
+    turns (q,): a whole turn of a signal that is compared modulo one, else zero. Empty: zero for all.
     """
 
     signals: tuple[str, ...]
@@ -130,6 +138,8 @@ class Runs:
     errors: tuple[str, ...]
     method: str = ""
     evaluations: int = 0
+    late: tuple[float, ...] = ()
+    turns: tuple[float, ...] = ()
 
     def __len__(self) -> int:
         return len(self.outcomes)
@@ -142,7 +152,14 @@ class Runs:
     @property
     def error(self) -> Array:
         """Plant minus local model, (q, K, S + 1, N); NaN where the comparison has ended."""
-        return self.plant - self.model
+        found = self.plant - self.model
+        for row, turn in enumerate(self.turns):
+            found[row] = wrapped(found[row], turn)
+        return found
+
+    def arrives(self, row: int) -> Array:
+        """When the samples of a signal arrive, (K, S + 1)."""
+        return self.times + self.late[row] if self.late else self.times
 
     @property
     def completed(self) -> NDArray[np.bool_]:
@@ -154,3 +171,10 @@ class Runs:
     def counts(self) -> NDArray[np.bool_]:
         """Samples that count, (K, S + 1, N): those before the comparison ended."""
         return np.asarray(np.isfinite(self.plant).all(axis=0))
+
+
+def wrapped(values: Array, turn: float) -> Array:
+    """`values` less whole turns, within half a turn of zero; unchanged where `turn` is zero."""
+    if not turn > 0.0:
+        return values
+    return np.asarray(values - turn * np.round(values / turn))

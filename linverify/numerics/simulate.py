@@ -9,18 +9,20 @@ rounds differently at another width.
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 
 from ..core.drive import Drive
-from ..core.model import Array
+from ..core.model import Array, LocalModel
 from ..core.outcome import Outcome
 from . import exits
-from .courses import Courses, courses, grid, linear, linear_signals, settled_ends
+from .courses import Courses, courses, linear, linear_signals
+from .pieces import grid
 from .plant_side import Followed, follow
 from .rig import Exit, Fidelity, Rig, Runs
 
-__all__ = ["Exit", "Fidelity", "Rig", "Runs", "nodes_of", "run", "run_alone", "watched"]
+__all__ = ["Exit", "Fidelity", "Rig", "Runs", "respond", "run", "run_alone", "watched"]
 
 WIDTHS = (8, 64, 256)  # below 64 columns a vectorised plant costs what one costs; above 256 little is gained
 ALONE = 2  # canonical runs: wide enough for the plant's batched path, narrow enough to cost what one column costs
@@ -34,8 +36,8 @@ def run(rig: Rig, drives: Sequence[Drive], fidelity: Fidelity) -> Runs:
     Raises ValueError where they do not, or name signals that the plant does not have. Figures may differ within the
     tolerance from those of `run_alone`.
     """
-    stacked = courses(drives, rig.plant.inputs, rig.plant.states)
-    each = len(watched(rig)) * stacked.intervals * (nodes_of(rig, stacked.every, fidelity) + 1)
+    stacked = courses(rig, drives, fidelity)
+    each = len(watched(rig)) * stacked.count * (stacked.pieces.nodes + 1)
     widths = WIDTHS if rig.plant.batched else (SINGLE,)
     widest = max((width for width in widths if width * each <= SAMPLES), default=widths[0])
     parts = [stacked.part(first, first + widest) for first in range(0, stacked.width, widest)]
@@ -44,18 +46,21 @@ def run(rig: Rig, drives: Sequence[Drive], fidelity: Fidelity) -> Runs:
 
 def run_alone(rig: Rig, drive: Drive, fidelity: Fidelity) -> Runs:
     """The canonical run of one drive (N = 1): same bits for same rig, drive and fidelity, on its own or in a replay."""
-    alone = courses([drive], rig.plant.inputs, rig.plant.states)
+    alone = courses(rig, [drive], fidelity)
     return _simulated(rig, alone, ALONE if rig.plant.batched else 1, fidelity)
 
 
-def nodes_of(rig: Rig, every: float, fidelity: Fidelity) -> int:
-    """Sub-intervals an interval: what `fidelity` asks for, or the steps of a difference equation."""
-    if rig.plant.step is None:
-        return fidelity.nodes
-    steps = round(every / rig.plant.step)
-    if steps < 1 or abs(steps * rig.plant.step - every) > 1e-9 * every:
-        raise ValueError(f"drives every {every} do not fit a plant that steps every {rig.plant.step}")
-    return steps
+def respond(rig: Rig, model: LocalModel, drive: Drive, fidelity: Fidelity) -> Array:
+    """What another local model answers to a drive, at the samples of `run_alone`: (q, K, W); NaN for what it lacks.
+
+    Sampled models must have the step of the rig's. Raises ValueError as `run` does.
+    """
+    drives = courses(rig, [drive], fidelity)
+    other = replace(rig, model=model, signals=())
+    with np.errstate(all="ignore"):
+        signals = linear_signals(other, drives, linear(other, drives), rig.signals)
+    found: Array = drives.pieces.folded(signals)[:, :, :, 0]
+    return found
 
 
 def watched(rig: Rig) -> tuple[str, ...]:
@@ -71,21 +76,22 @@ def _width(rig: Rig, count: int) -> int:
 
 
 def _simulated(rig: Rig, drives: Courses, width: int, fidelity: Fidelity) -> Runs:
-    nodes = nodes_of(rig, drives.every, fidelity)
     wide = drives.padded(width)
-    times = grid(drives.every, drives.intervals, nodes)
+    times = grid(drives.pieces, drives.intervals)
     names = watched(rig)
     with np.errstate(all="ignore"):  # what is not finite is told by outcomes
         followed = follow(rig, wide, names, times, fidelity)
-        states = linear(rig, wide, nodes)
-        model = settled_ends(rig, linear_signals(rig, wide, states, names))
+        states = linear(rig, wide)
+        model = linear_signals(rig, wide, states, names)
+        if rig.plant.step is not None:  # its outputs are read at instants only: there is no left side of a jump
+            model[:, :-1, -1] = model[:, 1:, 0]
         left, first = exits.find(rig, names, times, followed, model)
-    return _narrowed(rig, drives.width, times, followed, model, left, first)
+    return _narrowed(rig, drives, times, followed, model, left, first)
 
 
 def _narrowed(
     rig: Rig,
-    count: int,
+    drives: Courses,
     times: Array,
     followed: Followed,
     model: Array,
@@ -93,7 +99,7 @@ def _narrowed(
     first: exits.Indices,
 ) -> Runs:
     """Drop padding and signals that are only watched, and settle what ended each drive: the earlier event counts."""
-    q = len(rig.signals)
+    q, count, pieces = len(rig.signals), drives.width, drives.pieces
     ended, last = np.full(count, times[-1, -1]), np.full(count, times.size)
     outcomes, errors, found = [], [], []
     for column in range(count):
@@ -108,9 +114,12 @@ def _narrowed(
     plant = np.array(followed.deviations[:q, :, :, :count])
     order = np.arange(times.size).reshape(times.shape)
     plant[:, (times[:, :, np.newaxis] > ended) | (order[:, :, np.newaxis] >= last)] = np.nan
+    late = tuple(rig.delays.outputs.get(name, 0.0) for name in rig.signals)
+    turns = tuple(rig.turns.get(name, 0.0) for name in rig.signals)
     return Runs(
-        rig.signals, times, plant, np.array(model[:q, :, :, :count]), ended, tuple(found), tuple(outcomes),
-        tuple(errors), followed.method, followed.evaluations,
+        rig.signals, pieces.folded(times[np.newaxis])[0], pieces.folded(plant),
+        pieces.folded(np.array(model[:q, :, :, :count])), ended, tuple(found), tuple(outcomes), tuple(errors),
+        followed.method, followed.evaluations, late, turns,
     )  # fmt: skip
 
 
@@ -128,4 +137,6 @@ def _joined(parts: Sequence[Runs]) -> Runs:
         tuple(item for part in parts for item in part.errors),
         parts[0].method,
         sum(part.evaluations for part in parts),
+        parts[0].late,
+        parts[0].turns,
     )

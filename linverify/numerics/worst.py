@@ -10,17 +10,18 @@ that finds a local maximum.
 
 from __future__ import annotations
 
-from collections.abc import Sequence
+from collections.abc import Mapping, Sequence
 from dataclasses import dataclass
 from typing import Any
 
 import numpy as np
 
-from ..core.case import Course
+from ..core.delivered import Course, Delays
 from ..core.model import Array, LocalModel
 from .hold import responses
 
 CLIMBS = 20  # linearizations of a sum of squares; in trials it stood still after 3 to 8
+NO_DELAYS = Delays()
 WITHIN = 8  # places inside an interval at which a peak is looked for
 
 
@@ -33,18 +34,68 @@ class _Map:
     new: Array
 
 
-def weights(model: LocalModel, signal: str, every: float, intervals: int, course: Course) -> tuple[Array, Array]:
+@dataclass(frozen=True, slots=True, eq=False)
+class Reach:
+    """What moves some signals of a local model at one time of the horizon.
+
+    rows (q, K, m): what each row of a drive adds; offsets (q, K, n): what each initial state adds when the drive is
+    only 1, 2, ..., K intervals old (the last is the time in question). In units of the signal per unit of input, state.
+    """
+
+    rows: Array
+    offsets: Array
+
+
+def reach(
+    model: LocalModel,
+    signals: Sequence[str],
+    every: float,
+    intervals: int,
+    course: Course,
+    delays: Delays = NO_DELAYS,
+    share: float = 1.0,
+) -> Reach:
+    """What moves `signals` when `share` of the last interval has passed; 0: just after its first instant.
+
+    At whole instants the values are those left of a jump, but for share 0. Raises ValueError for a signal that is
+    neither state nor output of the model.
+    """
+    rows = np.zeros((len(signals), intervals, len(model.inputs)))
+    offsets = np.zeros((len(signals), intervals, len(model.states)))
+    for late, some in _alike({name: delays.outputs.get(name, 0.0) for name in signals}).items():
+        picked = [signals[at] for at in some]
+        for delay, columns in _alike({name: delays.inputs.get(name, 0.0) for name in model.inputs.names}).items():
+            count, part = _age(every, intervals, share, late + delay)
+            if count > 0:
+                found, _ = _weights(model, picked, every, count, course, part)
+                rows[np.ix_(some, range(count), columns)] = found[:, :, columns]
+        count, part = _age(every, intervals, share, late)
+        if count > 0:
+            offsets[np.ix_(some, range(intervals - count, intervals))] = _weights(
+                model, picked, every, count, course, part
+            )[1]
+    return Reach(rows, offsets)
+
+
+def weights(
+    model: LocalModel, signal: str, every: float, intervals: int, course: Course, delays: Delays = NO_DELAYS
+) -> tuple[Array, Array]:
     """What each row of a drive and each initial state adds to `signal` at the end of the horizon.
 
     Returns (rows (K, m), offsets (n,)) in units of the signal per unit of the input or state; left of the last instant.
     Raises ValueError for a signal that is neither state nor output of the model.
     """
-    rows, offsets, _ = _weights(model, (signal,), every, intervals, course, 1.0)
-    return rows[0], offsets[0]
+    found = reach(model, (signal,), every, intervals, course, delays)
+    return found.rows[0], found.offsets[0, -1]
 
 
 def reaches(
-    model: LocalModel, signals: Sequence[str], every: float, intervals: int, course: Course
+    model: LocalModel,
+    signals: Sequence[str],
+    every: float,
+    intervals: int,
+    course: Course,
+    delays: Delays = NO_DELAYS,
 ) -> tuple[Array, Array]:
     """How far unit inputs and unit initial states can move signals of the local model at any time of the horizon.
 
@@ -55,37 +106,57 @@ def reaches(
     inputs = np.zeros((len(signals), len(model.inputs)))
     states = np.abs(np.stack([_row(model, signal)[0] for signal in signals]))
     for place in range(WITHIN):
-        rows, _, largest = _weights(model, signals, every, intervals, course, (place + 1) / WITHIN)
-        inputs = np.maximum(inputs, np.abs(rows).sum(axis=1))
-        states = np.maximum(states, largest)
+        found = reach(model, signals, every, intervals, course, delays, (place + 1) / WITHIN)
+        inputs = np.maximum(inputs, np.abs(found.rows).sum(axis=1))
+        states = np.maximum(states, np.abs(found.offsets).max(axis=1))
     return inputs, states
+
+
+def _alike(delays: Mapping[str, float]) -> dict[float, list[int]]:
+    """Positions by their dead time."""
+    found: dict[float, list[int]] = {}
+    for at, delay in enumerate(delays.values()):
+        found.setdefault(delay, []).append(at)
+    return found
+
+
+def _age(every: float, intervals: int, share: float, late: float) -> tuple[int, float]:
+    """The same place `late` before, as intervals and share of the last; no intervals where nothing has arrived yet."""
+    if not late > 0.0:
+        return intervals, share
+    passed = intervals - 1 + share - late / every
+    whole = round(passed)
+    if abs(passed - whole) <= 1e-9 * intervals:
+        return (whole, 1.0) if share > 0.0 else (whole + 1, 0.0)
+    count = int(np.floor(passed)) + 1
+    return count, passed - (count - 1)
 
 
 def _weights(
     model: LocalModel, signals: Sequence[str], every: float, intervals: int, course: Course, share: float
-) -> tuple[Array, Array, Array]:
-    """As `weights` for several signals, at time (intervals - 1 + share) * every.
+) -> tuple[Array, Array]:
+    """At time (intervals - 1 + share) * every: rows (q, K, m), and offsets (q, K, n) at that share of each interval.
 
-    Returns rows (q, K, m), offsets (q, n), and the largest |effect| of each initial state in any interval (q, n). For a
-    difference equation `share` is rounded to whole steps.
+    For a sampled model `share` is rounded to whole steps.
     """
     pairs = [_row(model, signal) for signal in signals]
     read, feed = np.stack([pair[0] for pair in pairs]), np.stack([pair[1] for pair in pairs])
     whole, part = _map(model, every, course, 1.0), _map(model, every, course, share)
     rows = np.zeros((len(signals), intervals, len(model.inputs)))
+    offsets = np.zeros((len(signals), intervals, len(model.states)))
     reached = share if course == "straight" else 1.0
     rows[:, -1] = read @ part.new + feed * reached
     if intervals > 1:
         rows[:, -2] = read @ part.before + feed * (1.0 - reached)
     back = read @ part.state
-    largest = np.abs(back)
+    offsets[:, 0] = back
     for k in range(intervals - 2, -1, -1):
         rows[:, k] += back @ whole.new
         if k > 0:
             rows[:, k - 1] += back @ whole.before
         back = back @ whole.state
-        largest = np.maximum(largest, np.abs(back))
-    return rows, back, largest
+        offsets[:, intervals - 1 - k] = back
+    return rows, offsets
 
 
 def furthest(rows: Array, low: Array, high: Array, change: Array) -> Array:
@@ -145,7 +216,8 @@ def _row(model: LocalModel, signal: str) -> tuple[Array, Array]:
         at = model.outputs.index(signal)
         return np.asarray(model.C[at]), np.asarray(model.D[at])
     at = model.states.index(signal)
-    return np.eye(len(model.states))[at], np.zeros(len(model.inputs))
+    feed = np.zeros(len(model.inputs)) if model.ahead is None else np.asarray(model.ahead[at])
+    return np.eye(len(model.states))[at], feed
 
 
 def _map(model: LocalModel, every: float, course: Course, share: float) -> _Map:
@@ -166,7 +238,7 @@ def _discrete(model: LocalModel, steps: int, course: Course, share: float) -> _M
     """Steps of x[k+1] = A x[k] + B u[k]; a straight course is read at the beginning of each step."""
     n, m = len(model.states), len(model.inputs)
     state, before, new = np.eye(n), np.zeros((n, m)), np.zeros((n, m))
-    for step in range(max(1, round(share * steps))):
+    for step in range(max(1, round(share * steps)) if share > 0.0 else 0):
         reached = 1.0 if course == "held" else step / steps
         state, before, new = (
             model.A @ state,

@@ -159,4 +159,4 @@ def test_no_integration_code_is_shared() -> None:
     for module in (independent, readout):
         tree = ast.parse(Path(module.__file__).read_text(encoding="utf-8"))
         near = {node.module for node in ast.walk(tree) if isinstance(node, ast.ImportFrom) and node.level == 1}
-        assert near <= {"rig", "readout"}
+        assert near <= {"rig", "readout", "pieces"}  # where nodes lie is shared, how to get there is not

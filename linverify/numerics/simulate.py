@@ -55,7 +55,8 @@ def respond(rig: Rig, model: LocalModel, drive: Drive, fidelity: Fidelity) -> Ar
 
     Sampled models must have the step of the rig's. Raises ValueError as `run` does.
     """
-    drives = courses(rig, [drive], fidelity)
+    # as wide as the run it is set against: an equal model then gives equal bits
+    drives = courses(rig, [drive], fidelity).padded(ALONE if rig.plant.batched else 1)
     other = replace(rig, model=model, signals=())
     with np.errstate(all="ignore"):
         signals = linear_signals(other, drives, linear(other, drives), rig.signals)

@@ -14,6 +14,7 @@ from ..core.verdict import Status, Verdict
 from ..numerics.pair import Pair, paired
 from . import banded, claims, entries, moved, static
 from .findings import Findings
+from .guesses import guessed
 from .study import Study
 
 
@@ -26,6 +27,7 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     _point(study, delivered, findings)
     pair = paired(delivered, study.reference(), study.case.nominal)
     _model(study, pair, findings)
+    _cause(study, pair, findings)
     return Verdict(
         spec=study.case.spec,
         point=study.case.point,
@@ -79,6 +81,15 @@ def _model(study: Study, pair: Pair, findings: Findings) -> None:
     if agree.gains is not None:
         static.compare(pair, agree.gains, findings)
     moved.tell(pair, findings, entries_differ=not pair.anonymous and entries.differ(pair))
+
+
+def _cause(study: Study, pair: Pair, findings: Findings) -> None:
+    if findings.status is not Status.FAIL:
+        return
+    cause = guessed(study, pair)
+    if cause is not None:
+        findings.reasons.append((Status.FAIL, cause.told))
+        findings.details["cause"] = {"kind": cause.kind, "text": cause.text}
 
 
 def _entries(study: Study, pair: Pair, limit: float, findings: Findings) -> None:

@@ -17,6 +17,7 @@ from .delivered import Course as Course
 from .delivered import Delays, LocalAsk
 from .errors import Place
 from .plant import Plant
+from .shown import Shown
 
 BandKind = Literal["peak", "rms", "relative", "wider_of", "final"]
 
@@ -48,6 +49,7 @@ class Expected:
     value: float
     tolerance: float
     place: Place
+    shown: Shown | None = None  # as the spec writes it; None: in the plant's unit
 
 
 @dataclass(frozen=True, slots=True)
@@ -57,7 +59,7 @@ class TrimAsk:
     hold: required values of states, inputs or outputs; find: the unknowns, in plant order (states, then inputs);
     start: first guesses, and the values of what is neither held nor found; rates: prescribed rates of states, per time
     unit (of a difference equation: the change a step); free: states whose rate may be anything; minimize: weights;
-    accuracy: largest scaled residual of any equation, in the same counting of time.
+    accuracy: largest scaled residual of any equation, in the same counting of time; accuracy_told: as the spec has it.
     """
 
     hold: Mapping[str, float]
@@ -68,6 +70,7 @@ class TrimAsk:
     minimize: Mapping[str, float] = field(default_factory=lambda: NOTHING)
     expect: Mapping[str, Expected] = field(default_factory=lambda: MappingProxyType({}))
     accuracy: float = 1e-8
+    accuracy_told: str = ""
 
 
 @dataclass(frozen=True, slots=True)
@@ -96,6 +99,8 @@ class DriveSet:
 
     every: time between the instants at which inputs may change; intervals: how many of them make the horizon.
     rate: largest |change| of an input per time unit; offsets: largest initial deviation of a state, both signs.
+    shown, shown_time, shown_delay: the units in which amplitudes and offsets, times and `discerns_delay` are written;
+    where there is none, the plant's.
     """
 
     name: str
@@ -112,6 +117,9 @@ class DriveSet:
     discerns_gain: float | None = None
     discerns_delay: float | None = None
     place: Place = field(default_factory=lambda: Place("<python>"))
+    shown: Mapping[str, Shown] = field(default_factory=lambda: MappingProxyType({}))
+    shown_time: Shown | None = None
+    shown_delay: Shown | None = None
 
     @property
     def horizon(self) -> float:
@@ -124,7 +132,8 @@ class Band:
     """One error band on plant minus local model.
 
     limit: absolute limit in the signal's unit (NaN for `relative`); fraction: of the plant's own peak deviation
-    (`relative`, `wider_of`); start: time before which nothing counts; drives: name of the one set it is for, or None.
+    (`relative`, `wider_of`); start: time before which nothing counts; drives: name of the one set it is for, or None;
+    shown: the unit that the limit is written in, None for the plant's.
     """
 
     signal: str
@@ -134,6 +143,7 @@ class Band:
     start: float = 0.0
     drives: str | None = None
     place: Place = field(default_factory=lambda: Place("<python>"))
+    shown: Shown | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -178,6 +188,15 @@ class Setting:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class Relative:
+    """Another operating point of the same spec, as far as it takes to derive its local model."""
+
+    point: str
+    trim: TrimAsk
+    parameters: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True, eq=False)
 class Case:
     """One operating point of one spec, bound to its plant. spec: path as ids show it; place: the point's own line."""
 
@@ -204,6 +223,11 @@ class Case:
     settings: tuple[Setting, ...] = ()
     files: tuple[Path, ...] = ()  # spec, defaults, plant, tables: hashed into the provenance
     skipped: str = ""  # reason, for a swept cell listed under `skip`
+    relatives: tuple[Relative, ...] = ()  # the spec's other points: a model may have been handed over for one of them
+    shown: Mapping[str, Shown] = field(
+        default_factory=lambda: MappingProxyType({})
+    )  # signals as this point writes them
+    shown_limits: Mapping[str, Shown] = field(default_factory=lambda: MappingProxyType({}))  # as the envelope does
     family: int = 1  # operating points that one statement of confidence covers: each is stated at 1 - 0.05 / family
 
     def drive_set(self, name: str) -> DriveSet:
@@ -212,6 +236,31 @@ class Case:
             if drives.name == name:
                 return drives
         raise KeyError(name)
+
+    def shown_as(self, name: str) -> Shown:
+        """The unit in which values of a signal are told. Raises KeyError for a name that the plant does not have."""
+        return self.shown.get(name) or Shown(self.plant.unit(name))
+
+    def shown_limit(self, name: str) -> Shown:
+        """The unit in which limits of a signal are told: the envelope's, else as for its values."""
+        return self.shown_limits.get(name) or self.shown_as(name)
+
+    def shown_band(self, band: Band) -> Shown:
+        """The unit in which errors of a band's signal are told: the band's own, where it has one."""
+        return band.shown or Shown(self.plant.unit(band.signal))
+
+    def shown_moves(self, drives: DriveSet) -> dict[str, Shown]:
+        """The units in which inputs and states move in drives: as the set writes them, else as for their values."""
+        names = (*self.plant.states, *self.plant.inputs)
+        return {name: drives.shown.get(name) or Shown(self.plant.unit(name)) for name in names}
+
+    def shown_time(self, drives: DriveSet | None = None) -> Shown:
+        """The unit in which times are told, those of a set of drives as it writes them."""
+        return (drives.shown_time if drives else None) or Shown(self.plant.time_unit)
+
+    def origin(self, word: str) -> str:
+        """Where the effective value of a word of the spec comes from; empty where nobody has told."""
+        return next((item.origin for item in self.settings if item.word == word), "")
 
     def bands_for(self, name: str) -> tuple[Band, ...]:
         """The error bands that hold for the set of drives called `name`."""

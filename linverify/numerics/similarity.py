@@ -23,7 +23,7 @@ def same_behaviour(pair: Pair) -> bool:
     """True where inputs do the same to outputs in both models, to within errors and printed digits."""
     if pair.time_clash or not pair.reference.D.size:
         return False
-    omega = _frequencies(pair)
+    omega = frequencies(pair)
     delivered, printed = respond_within(pair.delivered, pair.rounding, omega)
     reference, error = respond_within(pair.reference, pair.reference.errors, omega)
     size = np.abs(reference).max(axis=0)
@@ -63,7 +63,7 @@ def _leveled(matrix: Array, right: Array) -> tuple[Array, Array]:
     return matrix / size, right / size
 
 
-def _frequencies(pair: Pair) -> Array:
+def frequencies(pair: Pair) -> Array:
     """More points than both orders together, about where the poles are; of discrete models inside (0, Nyquist)."""
     speeds = np.abs(np.concatenate([poles(pair.delivered), poles(pair.reference)]))
     speeds = speeds[(speeds > 1e-12 * speeds.max(initial=1.0)) & np.isfinite(speeds)]

@@ -103,15 +103,6 @@ def changed(model: DeliveredModel, matrix: str, entries: Mapping[tuple[int, int]
     return replace(model, **{matrix: block})
 
 
-class Handed(Study):
-    """A study whose reference is the derived model."""
-
-    def reference(self) -> LocalModel:
-        model = self.linearization().model
-        assert model is not None
-        return model
-
-
 def verdict(given: DeliveredModel, agree: AgreeAsk | None = None, **changes: Any) -> Verdict:
     """What `agrees` says."""
-    return judge_study(Handed(case(given, agree, **changes), Options()), CheckAsk("agrees", PLACE))
+    return judge_study(Study(case(given, agree, **changes), Options()), CheckAsk("agrees", PLACE))

@@ -37,7 +37,8 @@ def test_without_words_only_names_and_the_claimed_point_are_looked_at_and_it_say
 def test_a_wrong_entry_fails_and_is_named_with_both_values_and_its_unit():
     found = verdict(changed(delivered(), "A", {(1, 0): -2.5}), ENTRIES)
     assert found.status is Status.FAIL
-    start, plant = "A[speed, place]: delivered -2.5, plant -2.75625 +- ", " 1/s^2"
+    start = "A[speed, place]: delivered -2.5, plant -2.75625 +- "
+    plant = " 1/s^2; only A[speed, place] differs from the plant"
     assert found.reason.startswith(start)
     assert found.reason.endswith(plant)
     assert found.figures[0].signal == "A[speed, place]"

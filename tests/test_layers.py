@@ -30,8 +30,7 @@ THIRD_PARTY: dict[str, set[str]] = {
     "numerics": {"scipy"},
     "drives/search.py": {"hypothesis"},
     "spec/source.py": {"yaml"},
-    "spec/models_binary.py": {"scipy"},  # scipy.io is the one reader of MAT files
-    "spec/write_binary.py": {"scipy"},
+    "spec/write_binary.py": {"scipy"},  # scipy.io writes MAT files
     "report": {"tabulate"},
     "report/plots.py": {"matplotlib"},
     "pytest_plugin": {"pytest", "xdist"},

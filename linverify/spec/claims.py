@@ -6,14 +6,19 @@ Every format is read into the same `Claim`, so that names, shapes and units are 
 from __future__ import annotations
 
 import re
-from collections.abc import Iterable, Mapping
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from types import MappingProxyType
 
 from linverify.core.errors import Place
 from linverify.core.model import Array
+from linverify.core.signals import nearest
 
+from . import scalars
 from .layout import Entry, Word
+from .reader import Reader
+from .scalars import Wrong, quoted
+from .source import Scalar
 
 MATRICES = ("A", "B", "C", "D")
 NAMES = ("states", "inputs", "outputs")
@@ -81,6 +86,23 @@ class Claim:
     hold: Word | None = None
     point: Word | None = None
     digits: int = EXACT
+
+
+def finite(reader: Reader, scalar: Scalar, called: str) -> Number | None:
+    """The number that a scalar is, or None after telling why it is none."""
+    read = scalars.number(scalar.text, scalar.plain)
+    if isinstance(read, Wrong):
+        expected = "a finite number is expected" if "unit" in read.expected else read.expected
+        read = Wrong(read.wrong, expected)
+    value = reader.judged(read, scalar.place, called)
+    return None if value is None else Number(value, scalar.place)
+
+
+def unknown(reader: Reader, word: Word, words: Sequence[str], called: str = "") -> None:
+    """Tell of a word that no model has."""
+    hint = nearest(word.text, words)
+    expected = "" if hint else f"one of {', '.join(words)} is expected"
+    reader.tell(word.place, f"unknown word {quoted(called + word.text)}", expected, hint)
 
 
 def shown_digits(text: str) -> int:

@@ -12,11 +12,11 @@ import numpy as np
 from linverify.core.errors import Place
 from linverify.core.signals import nearest
 
-from . import scalars
-from .claims import COLUMNS_OF, ROWS_OF, Claim, Claimed, Listed, Matrix, Number, fewest_digits
+from .claims import COLUMNS_OF, ROWS_OF, Claim, Claimed, Listed, Matrix, Number, fewest_digits, finite
 from .layout import Entry, Word
 from .reader import Reader
 from .scalars import quoted
+from .source import Scalar
 
 _CELL = re.compile(r'[ \t]*"(?P<quoted>(?:[^"]|"")*)"[ \t]*(?=,|\Z)|(?P<plain>[^,]*)')
 _ANONYMOUS = re.compile(r"#[0-9]+")
@@ -102,13 +102,13 @@ def _ordered(reader: Reader, word: str, table: Table, names: Mapping[str, Listed
     return Matrix(values, table.place)
 
 
-def lines_of(reader: Reader, data: bytes, shown: str) -> list[Line]:
-    """The cells of every line that is not blank, each with its place."""
+def lines_of(reader: Reader, data: bytes, shown: str) -> list[Line] | None:
+    """The cells of every line that is not blank, each with its place; None, and told, where the file is no text."""
     try:
         text = data.removeprefix(b"\xef\xbb\xbf").decode("utf-8")
     except UnicodeDecodeError:
         reader.tell(Place(shown), "the file is not UTF-8 text", "save it as UTF-8")
-        return []
+        return None
     lines = []
     for count, line in enumerate(re.split(r"\r\n|\r|\n", text), 1):
         if line.strip(" \t,"):
@@ -134,8 +134,7 @@ def number(reader: Reader, cell: Word, called: str) -> Number | None:
     if not cell.text:
         reader.tell(cell.place, f"`{called}`: nothing is written here", "a finite number is expected")
         return None
-    value = reader.judged(scalars.number(cell.text), cell.place, called)
-    return None if value is None else Number(value, cell.place)
+    return finite(reader, Scalar(cell.text, True, cell.place), called)
 
 
 def separator(header: Sequence[str]) -> str:

@@ -61,10 +61,10 @@ class _Binding:
         step = self._step(a_time)
         course = self._course()
         x0, u0, y0 = (self._claimed(word, names) for word in POINTS)
-        if names is None or not math.isfinite(a_time) or not self._complete(names):
+        if names is None or not self._complete(names):
             return None
         shaped = self._shaped(names)
-        if shaped is None:
+        if shaped is None or not all(map(math.isfinite, (a_time, *factors.values()))):
             return None
         A, B, C, D = _converted(shaped, names, factors, 1.0 if step else a_time)
         for word, values in zip("ABCD", (A, B, C, D), strict=True):
@@ -99,7 +99,7 @@ class _Binding:
             missing.append("C")
         if missing:
             ground.report(
-                claim.place, f"`{missing[0]}` is missing", f"it has {listed([*claim.matrices, *claim.names])}"
+                claim.place, f"`{missing[0]}` is missing", f"the model has {listed([*claim.matrices, *claim.names])}"
             )
             return None
         states = self._states()
@@ -301,10 +301,8 @@ def _reshaped(values: Array, rows: int, columns: int) -> Array | None:
     """The table that the names ask for; a line or a single number only where there is one way to read it."""
     if values.shape == (rows, columns):
         return values
-    line = values.ndim < 2 or 1 in values.shape or values.size == 0
-    if line and values.size == rows * columns and (values.size == 0 or 1 in (rows, columns)):
-        return values.reshape(rows, columns)
-    return None
+    one_way = values.size == rows * columns and (values.size == 0 or (values.ndim < 2 and 1 in (rows, columns)))
+    return values.reshape(rows, columns) if one_way else None
 
 
 def _converted(

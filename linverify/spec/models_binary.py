@@ -5,14 +5,14 @@ The names are those of the JSON form; lists of names are arrays of text (NPZ) or
 `x0_names` and so on. `op` names the points of a stack: A is then (points, n, n) in NPZ and n x n x points in MAT, x0
 (points, n) and n x points. A table without the points' axis holds for all of them.
 
-No pickles are read. MAT files are loaded plainly, since the comfortable way turns tables of one column into lines and
-tables of one entry into numbers; names give every table its shape back.
+No pickles are read. A line of numbers gets its shape from the names: MAT has no lines, only tables of one row or one
+column, and which of the two it is says nothing.
 """
 
 from __future__ import annotations
 
 import io
-import warnings
+import zipfile
 from collections.abc import Mapping
 from dataclasses import dataclass
 from types import MappingProxyType
@@ -23,9 +23,9 @@ from numpy.typing import NDArray
 
 from linverify.core.errors import Place
 from linverify.core.model import Array
-from linverify.core.signals import nearest
 
-from .claims import EXACT, MATRICES, NAMES, POINTS, Claim, Claimed, Listed, Matrix, Number
+from . import mat5
+from .claims import EXACT, MATRICES, NAMES, POINTS, Claim, Claimed, Listed, Matrix, Number, unknown
 from .layout import Entry, Word
 from .reader import Reader
 from .scalars import quoted
@@ -38,12 +38,16 @@ _LISTS = (*NAMES, *UNITS_OF, *NAMES_OF, "op")
 _KEYS = (*_NUMBERS, *_TEXTS, *_LISTS)
 _SINGLE_DIGITS = 7  # that a number of single precision holds
 _HDF5 = b"\x89HDF\r\n\x1a\n"
+_SAVEZ = "write it with numpy.savez and arrays of numbers and text"
 _VERSION_5 = "save it as version 5, for example with save(..., '-v7')"
 
 
 def read_npz(reader: Reader, data: bytes, shown: str) -> dict[str, Claim]:
     """The models of an NPZ archive by the name of their point; "" for one that stands alone."""
     arrays: dict[str, NDArray[Any]] = {}
+    if not zipfile.is_zipfile(io.BytesIO(data)):
+        reader.tell(Place(shown), "this is no NPZ archive", _SAVEZ)
+        return {}
     try:
         # whatever bytes the file holds, what cannot be read is its own mistake
         with np.load(io.BytesIO(data), allow_pickle=False) as archive:
@@ -51,10 +55,8 @@ def read_npz(reader: Reader, data: bytes, shown: str) -> dict[str, Claim]:
                 found = _unpickled(reader, archive, name, shown)
                 if found is not None:
                     arrays[name] = found
-    except Exception as error:
-        pickled = "pickled" in str(error)
-        wrong = "the file holds pickled Python objects, which are never loaded" if pickled else "this is no NPZ archive"
-        reader.tell(Place(shown), wrong, "write it with numpy.savez and arrays of numbers and text")
+    except Exception:
+        reader.tell(Place(shown), "this NPZ archive is damaged", _SAVEZ)
         return {}
     return _Stack(reader, shown, arrays).claims()
 
@@ -72,44 +74,16 @@ def _unpickled(reader: Reader, archive: Any, name: str, shown: str) -> NDArray[A
 
 def read_mat(reader: Reader, data: bytes, shown: str) -> dict[str, Claim]:
     """The models of a MAT file of version 5; of another version it is told what to do."""
-    from scipy.io import loadmat  # late: costs a quarter of a second, and most specs do without
-
     place = Place(shown)
     if _HDF5 in data[:1024] or data[:30].startswith(b"MATLAB 7.3"):
         reader.tell(place, "this is a MAT file of version 7.3, which is HDF5 inside", _VERSION_5)
         return {}
     try:
-        with warnings.catch_warnings():
-            warnings.simplefilter("error")  # a variable that stands there twice is only warned of
-            stream: Any = io.BytesIO(data)  # the types say names only
-            loaded = loadmat(stream, mat_dtype=False, struct_as_record=True, squeeze_me=False)
-    except Exception as error:  # whatever bytes the file holds, what cannot be read is its own mistake
-        twice = "Duplicate variable name" in str(error)
-        reader.tell(place, "a variable stands twice in the file" if twice else "this is no MAT file of version 5")
+        arrays = mat5.arrays(data)
+    except mat5.MatError as error:
+        reader.tell(place, str(error))
         return {}
-    arrays = {}
-    for name, value in loaded.items():
-        if not (name.startswith("__") and name.endswith("__")):
-            found = _from_mat(reader, place, name, value)
-            if found is not None:
-                arrays[name] = found
     return _Stack(reader, shown, _points_first(arrays)).claims()
-
-
-def _from_mat(reader: Reader, place: Place, name: str, value: Any) -> NDArray[Any] | None:
-    """Sparse tables made full, cell arrays of text to arrays of text; other kinds are told."""
-    if hasattr(value, "toarray"):
-        return np.asarray(value.toarray())
-    if not isinstance(value, np.ndarray) or value.dtype.names is not None:
-        reader.tell(place, f"`{name}` is no array", "numbers, text and cell arrays of text are read")
-        return None
-    if value.dtype != object:
-        return value
-    cells = [cell.ravel() if isinstance(cell, np.ndarray) else np.array([cell]) for cell in value.ravel()]
-    if any(cell.size > 1 or (cell.size and cell.dtype.kind != "U") for cell in cells):
-        reader.tell(place, f"`{name}` is a cell array of something else than text", "names are expected in it")
-        return None
-    return np.array([str(cell[0]) if cell.size else "" for cell in cells], dtype=str)
 
 
 def _points_first(arrays: Mapping[str, NDArray[Any]]) -> dict[str, NDArray[Any]]:
@@ -119,7 +93,9 @@ def _points_first(arrays: Mapping[str, NDArray[Any]]) -> dict[str, NDArray[Any]]
         values = turned.get(name)
         if values is None:
             continue
-        if values.ndim == 3:
+        if name in MATRICES and values.ndim == 2 and 1 in values.shape:
+            turned[name] = values.ravel()  # a line lies or stands, whichever way it was saved
+        elif values.ndim == 3:
             turned[name] = np.moveaxis(values, -1, 0)
         elif name in POINTS and "op" in arrays and values.ndim == 2 and values.shape[1] == arrays["op"].size:
             turned[name] = values.T
@@ -139,7 +115,7 @@ class _Stack:
         before = len(self.reader.problems)
         for name in self.arrays:
             if name not in _KEYS:
-                self._tell(f"unknown word {quoted(name)}", "", nearest(name, _KEYS))
+                unknown(self.reader, Word(name, Place(self.shown)), _KEYS)
         lists = {name: self._list(name) for name in _LISTS if name in self.arrays}
         numbers = {name: self._numbers(name) for name in _NUMBERS if name in self.arrays}
         texts = {name: self._text(name) for name in _TEXTS if name in self.arrays}
@@ -199,7 +175,7 @@ class _Stack:
             kind: Listed(tuple(Word(text, place) for text in lists[kind]), place) for kind in NAMES if kind in lists
         }
         step = own.get("dt")
-        if step is not None and step.size != 1:
+        if step is not None and step.size > 1:
             self._tell(f"`dt` holds {step.size} numbers", "one is expected")
         singles = any(self.arrays[name].dtype == np.float32 for name in MATRICES if name in self.arrays)
         return Claim(

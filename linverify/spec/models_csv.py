@@ -13,7 +13,7 @@ from pathlib import Path
 from linverify.core.errors import Place
 from linverify.core.signals import nearest
 
-from .claims import ANY, MATRICES, Claim, Claimed
+from .claims import ANY, MATRICES, Claim, Claimed, unknown
 from .csv_tables import SINGLE, Line, Table, claim_of, counted, lines_of, number, separator
 from .layout import Entry, Word
 from .reader import Reader
@@ -51,6 +51,8 @@ def read_folder(reader: Reader, files: Mapping[str, bytes], shown: str) -> dict[
 def _table(reader: Reader, data: bytes, shown: str, word: str) -> Table | None:
     """A matrix with the names of its columns in the first line and those of its rows in the first column."""
     lines = lines_of(reader, data, shown)
+    if lines is None:
+        return None
     if not lines:
         reader.tell(Place(shown), "nothing is written in this file", "names of columns are expected in its first line")
         return None
@@ -87,7 +89,7 @@ def _said(reader: Reader, data: bytes, shown: str) -> dict[str, Word]:
     for line in _body(reader, data, shown, ("word", "value")):
         word = line[0]
         if word.text not in SINGLE:
-            reader.tell(word.place, f"unknown word {quoted(word.text)}", "", nearest(word.text, SINGLE))
+            unknown(reader, word, SINGLE)
         elif word.text in said:
             reader.tell(word.place, f"{quoted(word.text)} is written twice")
         else:
@@ -112,6 +114,8 @@ def _point(reader: Reader, data: bytes, shown: str) -> tuple[dict[str, Claimed],
 def _body(reader: Reader, data: bytes, shown: str, header: tuple[str, ...]) -> list[Line]:
     """Lines under a fixed first line; the last column may be left out."""
     lines = lines_of(reader, data, shown)
+    if lines is None:
+        return []
     given = tuple(cell.text for cell in lines[0]) if lines else ()
     if given not in (header, header[:-1] if len(header) > 2 else header):
         place = lines[0][0].place if lines else Place(shown)

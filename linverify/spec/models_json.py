@@ -11,13 +11,24 @@ from collections.abc import Iterator
 import numpy as np
 
 from linverify.core.errors import Place
-from linverify.core.signals import nearest
 
-from . import json_nodes, scalars
-from .claims import KEYS, MATRICES, NAMES, POINTS, Claim, Claimed, Listed, Matrix, Number, fewest_digits
+from . import json_nodes
+from .claims import (
+    KEYS,
+    MATRICES,
+    NAMES,
+    POINTS,
+    Claim,
+    Claimed,
+    Listed,
+    Matrix,
+    Number,
+    fewest_digits,
+    finite,
+    unknown,
+)
 from .layout import Entry, Word
 from .reader import Reader
-from .scalars import quoted
 from .source import Block, Listing, Node, Scalar
 
 
@@ -84,7 +95,7 @@ def _claim(reader: Reader, block: Block, place: Place, shown: str, above: str) -
 def _known(reader: Reader, block: Block, above: str) -> None:
     for key, _ in block.entries:
         if key.text not in KEYS:
-            reader.tell(key.place, f"unknown word {quoted(above + key.text)}", "", nearest(key.text, (*KEYS, "points")))
+            unknown(reader, Word(key.text, key.place), (*KEYS, "points"), above)
 
 
 def _matrix(reader: Reader, node: Node, called: str) -> tuple[Matrix, list[str]] | None:
@@ -97,8 +108,8 @@ def _matrix(reader: Reader, node: Node, called: str) -> tuple[Matrix, list[str]]
     cells = [item for row in rows for item in (row.items if isinstance(row, Listing) else (row,))]
     odd = next((row for row in nested if len(row.items) != len(nested[0].items)), None)
     if odd is not None:
-        wrong = f"`{called}`: this row has {len(odd.items)} numbers, the first one {len(nested[0].items)}"
-        reader.tell(odd.place, wrong, "rows of one length are expected")
+        wrong = f"`{called}`: rows of {len(nested[0].items)} and of {len(odd.items)}"
+        reader.tell(odd.place, wrong, "as many numbers in each row are expected")
         return None
     numbers = [_number(reader, cell, called) for cell in cells]
     values = np.array([number.value for number in numbers if number is not None], dtype=np.float64)
@@ -116,8 +127,7 @@ def _number(reader: Reader, node: Node | None, called: str) -> Number | None:
     if node is None:
         return None
     scalar = reader.scalar(node, called, "a finite number is expected")
-    value = None if scalar is None else reader.judged(scalars.number(scalar.text, scalar.plain), scalar.place, called)
-    return None if value is None else Number(value, node.place)
+    return None if scalar is None else finite(reader, scalar, called)
 
 
 def _text(reader: Reader, node: Node | None, called: str) -> Word | None:

@@ -11,9 +11,8 @@ from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass, field
 
 from linverify.core.errors import Place
-from linverify.core.signals import nearest
 
-from .claims import MATRICES, POINTS, Claim, Claimed
+from .claims import MATRICES, POINTS, Claim, Claimed, unknown
 from .csv_tables import SINGLE, Line, Table, claim_of, counted, lines_of, number, separator
 from .layout import Entry, Word
 from .reader import Reader
@@ -28,7 +27,7 @@ def read_long(reader: Reader, data: bytes, shown: str) -> dict[str, Claim]:
     """The models of one file in long form by the name of their point; "" for a model without one."""
     before = len(reader.problems)
     lines = lines_of(reader, data, shown)
-    entries = _entries(reader, lines, shown)
+    entries = _entries(reader, lines, shown) if lines is not None else []
     if len(reader.problems) > before:
         return {}
     lines_of_point: dict[str, list[dict[str, Word]]] = {}
@@ -62,7 +61,7 @@ def _entries(reader: Reader, lines: Sequence[Line], shown: str) -> list[dict[str
         entry = {"op": Word("", line[0].place), **dict(zip(header, line, strict=True))}
         word = entry["matrix"]
         if word.text not in _WORDS:
-            reader.tell(word.place, f"unknown word {quoted(word.text)}", "", nearest(word.text, _WORDS))
+            unknown(reader, word, _WORDS)
         else:
             entries.append(entry)
     return entries

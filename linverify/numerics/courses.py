@@ -4,7 +4,6 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 from dataclasses import dataclass, replace
-from itertools import pairwise
 
 import numpy as np
 from numpy.typing import NDArray
@@ -82,20 +81,19 @@ def courses(rig: Rig, drives: Sequence[Drive], fidelity: Fidelity) -> Courses:
 
 def _after(pieces: Pieces, late: Array, start: Array, end: Array) -> tuple[Array, Array]:
     """Both ends of each piece, (m, K P, N), of inputs that arrive `late` (m,); at trim before they do."""
-    intervals = start.shape[1]
-    begins = pieces.begins(intervals)
+    begins = pieces.begins(start.shape[1])
     first = np.zeros((len(start), len(begins) - 1, start.shape[2]))
     last = np.zeros_like(first)
     for row, delay in enumerate(late):
-        for k, (begin, stop) in enumerate(pairwise(begins - delay)):
-            source = int(np.floor(0.5 * (begin + stop) / pieces.every))
-            if source < 0:
-                continue
-            shares = np.clip((np.array([begin, stop]) - pieces.every * source) / pieces.every, 0.0, 1.0)
-            from_, to = (share if SNAP < share < 1.0 - SNAP else round(share) for share in shares)
-            here, there = start[row, source], end[row, source]
-            first[row, k] = here + from_ * (there - here) if from_ < 1.0 else there
-            last[row, k] = here + to * (there - here) if to < 1.0 else there
+        ends = (begins - delay) / pieces.every  # in intervals
+        # the middle of a piece tells its interval: its ends may miss an instant by rounding
+        source = np.floor(0.5 * (ends[:-1] + ends[1:])).astype(np.intp)
+        arrived = np.flatnonzero(source >= 0)
+        here, there = start[row, source[arrived]], end[row, source[arrived]]
+        for side, shares in ((first, ends[:-1] - source), (last, ends[1:] - source)):
+            share = shares[arrived, np.newaxis]
+            share = np.where(share < SNAP, 0.0, np.where(share > 1.0 - SNAP, 1.0, share))
+            side[row, arrived] = np.where(share < 1.0, here + share * (there - here), there)
     return first, last
 
 

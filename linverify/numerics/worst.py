@@ -62,14 +62,17 @@ def reach(
     """
     rows = np.zeros((len(signals), intervals, len(model.inputs)))
     offsets = np.zeros((len(signals), intervals, len(model.states)))
+    sampled = model.step is not None
     for late, some in _alike({name: delays.outputs.get(name, 0.0) for name in signals}).items():
         picked = [signals[at] for at in some]
+        # a sequence has right-hand values only, but at the end of the horizon
+        right = share == 0.0 or (sampled and (share < 1.0 or late > 0.0))
         for delay, columns in _alike({name: delays.inputs.get(name, 0.0) for name in model.inputs.names}).items():
-            count, part = _age(every, intervals, share, late + delay)
+            count, part = _age(every, intervals, share, late + delay, right)
             if count > 0:
                 found, _ = _weights(model, picked, every, count, course, part)
                 rows[np.ix_(some, range(count), columns)] = found[:, :, columns]
-        count, part = _age(every, intervals, share, late)
+        count, part = _age(every, intervals, share, late, right)
         if count > 0:
             offsets[np.ix_(some, range(intervals - count, intervals))] = _weights(
                 model, picked, every, count, course, part
@@ -120,14 +123,14 @@ def _alike(delays: Mapping[str, float]) -> dict[float, list[int]]:
     return found
 
 
-def _age(every: float, intervals: int, share: float, late: float) -> tuple[int, float]:
+def _age(every: float, intervals: int, share: float, late: float, right: bool) -> tuple[int, float]:
     """The same place `late` before, as intervals and share of the last; no intervals where nothing has arrived yet."""
     if not late > 0.0:
         return intervals, share
     passed = intervals - 1 + share - late / every
     whole = round(passed)
     if abs(passed - whole) <= 1e-9 * intervals:
-        return (whole, 1.0) if share > 0.0 else (whole + 1, 0.0)
+        return (whole + 1, 0.0) if right else (whole, 1.0)
     count = int(np.floor(passed)) + 1
     return count, passed - (count - 1)
 

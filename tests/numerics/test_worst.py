@@ -2,19 +2,24 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from itertools import product
 
 import numpy as np
 import pytest
+from scipy.linalg import expm
 
 from linverify.core.bound import BoundPlant
 from linverify.core.case import Course
+from linverify.core.delivered import Delays
 from linverify.core.drive import Drive
 from linverify.core.model import Array, LocalModel, OperatingPoint
 from linverify.core.plant import Plant
 from linverify.core.signals import Signals
-from linverify.numerics.simulate import Fidelity, Rig, run_alone
-from linverify.numerics.worst import furthest, furthest_square, reaches, weights
+from linverify.drives import seeds
+from linverify.drives.declared import Limits
+from linverify.numerics.simulate import Fidelity, Rig, run, run_alone
+from linverify.numerics.worst import furthest, furthest_square, reach, reaches, weights
 
 A = np.array([[0.0, 1.0, 0.0], [-4.0, -0.3, 1.0], [0.0, 0.2, -1.5]])
 B = np.array([[0.0, 0.1], [1.0, 0.0], [0.0, 2.0]])
@@ -126,3 +131,60 @@ def _square(rows: Array, drive: Array) -> float:
     pulse = rows[::-1]
     signal = sum(np.convolve(pulse[:, j], drive[:, j])[: len(rows)] for j in range(2))
     return float(np.sum(np.square(signal)))
+
+
+# dead times, places inside an interval, and the difference of two models
+
+
+@pytest.mark.parametrize("share", [0.0, 0.25, 1.0])
+@pytest.mark.parametrize("course", ["held", "straight"])
+@pytest.mark.parametrize("step", [None, 0.0625])
+def test_reach_is_what_the_model_does_with_dead_times(step: float | None, course: Course, share: float) -> None:
+    model, bound = made(step)
+    late = Delays({"f": 0.375, "g": 1.0}, {"y": 0.3125})
+    found = reach(model, ("y", "b"), EVERY, COUNT, course, late, share)
+    rng = np.random.default_rng(8)
+    drive = Drive(EVERY, ("f", "g"), rng.normal(size=(COUNT, 2)), course, {"a": 0.3, "c": -0.7})
+    rig = Rig(bound, model.at, model, ("y", "b"), {}, np.ones(3), delays=late)
+    runs = run_alone(rig, drive, Fidelity(16))
+    time = (COUNT - 1 + share) * EVERY
+    for row in range(2):
+        arrives = runs.arrives(row).ravel()
+        at = np.flatnonzero(np.abs(arrives - time) < 1e-9)
+        assert at.size
+        # just after an instant for share 0, left of it otherwise
+        seen = runs.model[row].reshape(-1)[at[-1 if share == 0.0 else 0]]
+        expected = np.sum(found.rows[row] * drive.values) + found.offsets[row, -1] @ [0.3, 0.0, -0.7]
+        assert expected == pytest.approx(seen, rel=1e-9)
+
+
+def test_offsets_are_told_at_every_age() -> None:
+    model, _ = made(None)
+    found = reach(model, ("a",), EVERY, COUNT, "held")
+    expected = [expm(A * EVERY * (age + 1))[0] for age in range(COUNT)]
+    assert np.abs(found.offsets[0] - expected).max() < 1e-12
+
+
+def test_the_worst_drive_of_a_difference_reaches_the_largest_sum_of_all_corners() -> None:
+    model, bound = made(None)
+    other = replace(model, B=model.B * [1.1, 0.8])
+    limits = Limits(EVERY, 5, "held", ("f", "g"), -np.ones(2), np.array([1.0, 0.5]), np.full(2, np.inf))
+    rig = Rig(bound, model.at, model, ("y",), {}, np.ones(3))
+    drives = [limits.drive(np.array(corner).reshape(5, 2)) for corner in product(*([(-1.0, 1.0), (-1.0, 0.5)] * 5))]
+    apart = np.abs(run(rig, drives, Fidelity()).model - run(replace(rig, model=other), drives, Fidelity()).model)
+    found = seeds.worst_of_difference(limits, model, other, ("y",), ())
+    seen = np.abs(run(rig, found, Fidelity()).model - run(replace(rig, model=other), found, Fidelity()).model)
+    assert seen.max() >= apart.max() * (1.0 - 1e-12)
+
+
+def test_the_worst_drive_with_offsets_peaks_where_they_still_count() -> None:
+    """Two lags that differ by their poles: an initial unit is 0.05 exp(-1) off at most, after 1 / 1.05 time units."""
+    signals = (Signals.of({"x": ""}), Signals.of({"f": ""}), Signals.of({"x": ""}))
+    point = OperatingPoint(np.zeros(1), np.zeros(1), np.zeros(1), np.zeros(1), 0.0, *signals)
+    slow = LocalModel(np.array([[-1.0]]), np.zeros((1, 1)), np.eye(1), np.zeros((1, 1)), *signals, point)
+    fast = replace(slow, A=np.array([[-1.1]]))
+    limits = Limits(
+        0.05, 200, "held", ("f",), -np.ones(1), np.ones(1), np.full(1, np.inf), ("x",), -np.ones(1), np.ones(1)
+    )
+    drives = seeds.worst_of_difference(limits, slow, fast, ("x",), ())
+    assert {drive.offsets["x"] for drive in drives if drive.offsets} == {1.0, -1.0}

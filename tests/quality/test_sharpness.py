@@ -193,6 +193,12 @@ SYSTEMS: dict[str, System] = {
     "delayed": System(
         TWO, CROSSED, 0.2, 40, (1.0, 1.0), late_in=(0.33, 0.4), late_out=0.27,
     ),
+    "delayed, straight": System(
+        TWO, CROSSED, 0.2, 30, (1.0, 1.0), course="straight", rate={0: 2.0}, late_in=(0.05, 0.4), late_out=0.1
+    ),
+    "sampled and delayed": System(
+        oscillator(2, 0.2), sampled(oscillator(2.1, 0.2), 0.1), 0.2, 30, (1.0,), late_in=(0.3,), late_out=0.4
+    ),
     "unstable, short horizon": System(
         linear([[0.6, 1], [0, -2]], [[0], [1]], [[1, 0]]), linear([[0.65, 1], [0, -2]], [[0], [1]], [[1, 0]]),
         0.1, 30, (1.0,),

@@ -62,7 +62,7 @@ def bind(
     loaded = load_plant(spec.plant, root)
     if isinstance(loaded, Problem):
         return (), (loaded,)
-    ground = Ground(loaded.plant, complete)
+    ground = Ground(loaded.plant, complete, spec.plant.place)
     _check_clock(ground, spec)
     cases = _Binder(spec, ground, loaded, LocalModels(ground, spec, root, delivered)).cases()
     return cases, tuple(ground.problems)
@@ -92,7 +92,7 @@ class _Binder:
         self.slopes = SlopeAsk(spec.slope_gap, MappingProxyType(self._sides()))
         self.time = self._time()
         self.delays, self.wraps = bind_delays(ground, spec), bind_wraps(ground, spec)
-        self.accuracy = bind_accuracy(ground, spec.accuracy, Place(spec.shown))
+        self.accuracy = bind_accuracy(ground, spec.accuracy, spec.accuracy_place or Place(spec.shown))
         self.family = max(1, sum(not cell.skipped for point in spec.points for cell in point.cells))
 
     def cases(self) -> tuple[Case, ...]:
@@ -133,7 +133,7 @@ class _Binder:
             requirements=self._requirements(cell, self.spec.check_names(point)),
             settings=(*self.settings, *point.settings, *told, *_told_cell(self.plant, point, cell)),
             files=(*self.files, *self.local.files_of(local)),
-            skipped=cell.skipped,
+            skipped=f"skipped by `skip: {cell.skipped.text}`, {cell.skipped.place}" if cell.skipped else "",
             family=self.family,
         )
 

@@ -18,6 +18,7 @@ from linverify.core.signals import nearest
 
 from .layout import Entry, Quantity
 
+MOST_UNITS = 6  # of a plant that are told as none
 WHOLE = 1e-9  # relative; a ratio of two times nearer than this to a whole number is that number
 
 
@@ -25,11 +26,13 @@ WHOLE = 1e-9  # relative; a ratio of two times nearer than this to a whole numbe
 class Ground:
     """A plant and the mistakes found so far. Mutable: `problems` grows, nothing else changes.
 
-    complete: False where parts of the spec could not be read; what is not there may then be among them.
+    complete: False where parts of the spec could not be read; what is not there may then be among them. named: where
+    the spec names the plant, the place of mistakes of the plant itself.
     """
 
     plant: Plant
     complete: bool = True
+    named: Place = field(default_factory=lambda: Place("<python>"))
     problems: list[Problem] = field(default_factory=list)
 
     @property
@@ -70,22 +73,30 @@ class Ground:
 
     def amount(self, quantity: Quantity, unit: str, word: str, *, difference: bool = False) -> float:
         """The quantity in `unit`, or NaN where that is a mistake; word: what takes it, as the spec calls it."""
+        if math.isnan(quantity.value):  # refused when it was read
+            return math.nan
         try:
             value = units.convert(quantity.value, quantity.unit, unit, difference=difference, text=quantity.text)
         except units.UnitError as error:
-            self.report(quantity.place, *self._told(error, quantity, unit, word))
+            if not self._blames_plant(unit):
+                self.report(quantity.place, *self._told(error, quantity, unit, word))
             return math.nan
         if not math.isfinite(value):
             self.report(quantity.place, f"{quantity.text!r} is too large for a number in {unit}")
             return math.nan
         return value
 
-    def _told(self, error: units.UnitError, quantity: Quantity, unit: str, word: str) -> tuple[str, str, str]:
+    def _blames_plant(self, unit: str) -> bool:
+        """True, and told once for all that need it, where the plant's `unit` is none that anything converts into."""
         try:
             units.check(unit)
         except units.UnitError:
-            wrong = f"{quantity.text!r} cannot be converted: the plant's unit {unit!r} of `{word}` is not known"
-            return wrong, "write the plain number, or correct the plant", ""
+            if told := _told_units(self.plant):  # else it is the time unit, which is judged anyway
+                self.report(self.named, *told)
+            return True
+        return False
+
+    def _told(self, error: units.UnitError, quantity: Quantity, unit: str, word: str) -> tuple[str, str, str]:
         if error.hint or error.wrong.endswith("is no unit"):
             return f"{error.wrong} (in {quantity.text!r})", f"`{word}` is in {unit or '1'}", error.hint
         expected = error.expected.removesuffix(" is expected")
@@ -146,6 +157,24 @@ def whole_ratio(length: float, part: float) -> int | None:
     ratio = length / part if part > 0.0 else math.inf
     count = round(ratio) if math.isfinite(ratio) else 0
     return count if count >= 1 and abs(ratio - count) <= WHOLE * count else None
+
+
+def _told_units(plant: Plant) -> tuple[str, ...]:
+    """What is wrong with the units of the plant: all that are none, and the nearest to the first of them."""
+    outputs = plant.outputs or {}
+    names = dict.fromkeys((*plant.states, *plant.inputs, *outputs, *plant.parameters))
+    wrong: list[str] = []
+    hint = ""
+    for name in names:
+        try:
+            units.check(plant.unit(name))
+        except units.UnitError as error:
+            wrong.append(f"{plant.unit(name)!r} of {name}")
+            hint = hint or error.hint
+    if not wrong:
+        return ()
+    expected = "correct the plant, or write plain numbers for what is in these units"
+    return f"the plant has units that are none: {', '.join(wrong[:MOST_UNITS])}", expected, hint
 
 
 def _article(kind: str) -> str:

@@ -132,6 +132,8 @@ def _bands(reader: Reader, signal: Scalar, node: Node, drives: str | None) -> li
         kinds = ", ".join(BAND_KINDS)
         reader.tell(signal.place, f"`{called}` has no limit", f"at least one of {kinds} is expected")
     start = values.pop("from", None)
+    if not values:  # told; the signal is still to be judged
+        return [_band(signal, "peak", None, start, drives, node.place)]
     return [
         _band(signal, cast(BandKind, kind), value, start, drives, _place(node, kind)) for kind, value in values.items()
     ]

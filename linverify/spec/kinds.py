@@ -2,11 +2,14 @@
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable
 from typing import Any
 
+from linverify.core.errors import Place
+
 from . import forms, values
-from .layout import Entry
+from .layout import AmplitudeAsk, Entry, Expect, Limits, Quantity
 from .reader import Reader
 from .source import Node, Scalar
 from .words import Kind, Row
@@ -34,6 +37,8 @@ def named(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> tup
     entries: list[Entry[Any]] = []
     for name, value in reader.named(node, called, inner.kind.value):
         read = READERS[inner.kind](reader, inner, f"{called}: {name.text}", name, value)
+        if read is None and inner.kind in _REFUSED:
+            read = _REFUSED[inner.kind](value.place)  # its name is still to be judged
         if read is not None:
             entries.append(Entry(name.text, name.place, read))
     return tuple(entries)
@@ -47,6 +52,20 @@ def _raw(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Node
     """Left as a node: read where what belongs to it is known."""
     return node
 
+
+def _no_number(place: Place) -> Quantity:
+    return Quantity(math.nan, "", "", place)
+
+
+# what stands for a value that was refused and told: nothing more can be said against it
+_REFUSED: dict[Kind, Callable[[Place], Any]] = {
+    Kind.QUANTITY: _no_number,
+    Kind.RATE: _no_number,
+    Kind.LIMITS: lambda place: Limits(None, None, None, place),
+    Kind.AMPLITUDE: lambda place: AmplitudeAsk(None, None, None, place),
+    Kind.EXPECT: lambda place: Expect(_no_number(place), _no_number(place), "", place),
+    Kind.NUMBER: lambda place: math.nan,
+}
 
 READERS: dict[Kind, Callable[[Reader, Row, str, Scalar, Node], Any]] = {
     Kind.FORMAT: values.format_number,

@@ -167,12 +167,12 @@ class Cell:
 
     name: unique in the spec, made of allowed characters. swept: name -> value of states, inputs, outputs or
     parameters, to be held (or set) on top of `Point.hold` and `Point.parameters`; the value's text is as written.
-    skipped: the pattern under `skip` that matched, "" for none. place: of the point's name (of the row for a table).
+    skipped: the pattern under `skip` that matched, None for none. place: of the point's name (of the row for a table).
     """
 
     name: str
     swept: tuple[Entry[Quantity], ...]
-    skipped: str
+    skipped: Word | None
     place: Place
 
 
@@ -256,7 +256,8 @@ class RequirementAsk:
 class Spec:
     """A whole spec. shown: its path as reports show it; path: where it lies; files: itself and its defaults.yaml files.
 
-    accuracy, complete, slope_gap: plain numbers (0.9 for 90 %), defaults filled in. side: signal -> "up" or "down".
+    accuracy, complete, slope_gap: plain numbers (0.9 for 90 %), defaults filled in; accuracy_place: None for the
+    default. side: signal -> "up" or "down".
     settings: the effective words that no point can change, with the place each came from.
     """
 
@@ -270,6 +271,7 @@ class Spec:
     complete: float
     mismatch: Literal["fail", "report"]
     accuracy: float
+    accuracy_place: Place | None
     slope_gap: float
     side: tuple[Entry[Literal["up", "down"]], ...]
     points: tuple[Point, ...]

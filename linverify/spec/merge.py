@@ -11,7 +11,7 @@ from collections.abc import Iterator
 from linverify.core.case import Setting
 from linverify.core.errors import Place, Problem
 
-from .scalars import printable
+from .scalars import printable, quoted
 from .source import Block, Broken, Listing, Node, Scalar
 from .words import BAND_WORDS, DRIVE_WORDS, Kind, Row, row_of
 
@@ -30,20 +30,27 @@ def over(nearer: Node, farther: Node | None, problems: list[Problem], path: tupl
         nearer, farther = _sides(nearer), _sides(farther)
     if not isinstance(nearer, Block) or not isinstance(farther, Block) or path[-1:] == ("until",):
         return nearer
-    if (
-        path[-1:] == ("drives",)
-        and not nearer.empty
-        and not farther.empty
-        and is_one_set(nearer) != is_one_set(farther)
-    ):
-        forms = ("one set without a name", "sets with names")
-        mine, theirs = forms if is_one_set(nearer) else forms[::-1]
-        wrong = f"`drives` has {mine} here, and {theirs} at {farther.place.file}:{farther.place.line}"
-        problems.append(Problem(nearer.place, wrong, "both must be written in the same way to be merged"))
-        return Broken(nearer.place)
+    if path[-1:] in (("drives",), ("error_bands",)) and not farther.empty:
+        if nearer.empty:  # not the same as nothing: it looks as if it took away what it takes over
+            expected = f"leave the word out to take over what is written at {farther.place}"
+            problems.append(Problem(nearer.place, f"`{path[-1]}` is an empty group", expected))
+            return farther
+        if path[-1] == "drives" and is_one_set(nearer) != is_one_set(farther):
+            problems.append(_unlike_sets(nearer, farther))
+            return Broken(nearer.place)
     entries = [(key, over(node, farther.get(key.text), problems, (*path, key.text))) for key, node in nearer.entries]
     entries += [(key, node) for key, node in farther.entries if nearer.get(key.text) is None]
     return Block(tuple(entries), nearer.place, nearer.sound and farther.sound)
+
+
+def _unlike_sets(nearer: Block, farther: Block) -> Problem:
+    """Named sets of drives over the one set without a name, or the other way round."""
+    names = ", ".join(quoted(name) for name in (farther if is_one_set(nearer) else nearer).words)
+    if is_one_set(nearer):
+        wrong = f"`drives` says nothing of the sets {names} at {farther.place}"
+        return Problem(nearer.place, wrong, "the same names are expected: `drives: {NAME: {...}}`")
+    wrong = f"`drives` names {names}, but the set at {farther.place} has no name"
+    return Problem(nearer.place, wrong, "write the words to be changed without a name, or give that set the name")
 
 
 def is_one_set(drives: Block) -> bool:

@@ -113,6 +113,7 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
     pointed.shared()
     points = _points(reader, pointed, merged)
     requirements = _requirements(reader, merged, values, pointed)
+    _judges_something(reader, points)
     plant = values.get("plant")
     if plant is None or not points:
         return None
@@ -132,6 +133,7 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
         complete=exits.get("complete", _per_cent("exits", "complete")),
         mismatch=exits.get("mismatch", _default("exits", "mismatch")),
         accuracy=values.get("trims", {}).get("accuracy", float(_default("trims", "accuracy"))),
+        accuracy_place=_place_of(merged, "trims", "accuracy"),
         slope_gap=differentiable.get("slope_gap", _per_cent("differentiable", "slope_gap")),
         side=differentiable.get("side", ()),
         points=points,
@@ -141,6 +143,21 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
         wraps=values.get("wraps", ()),
         delays=values.get("delays", {}),
     )
+
+
+def _place_of(merged: Block, above: str, word: str) -> Place | None:
+    """Where the value of `word` within `above` is written."""
+    group = merged.get(above)
+    value = group.get(word) if isinstance(group, Block) else None
+    return value.place if value else None
+
+
+def _judges_something(reader: Reader, points: tuple[Point, ...]) -> None:
+    """A spec whose points are all skipped would end well, and nothing would have been judged."""
+    skipped = [cell.skipped for point in points for cell in point.cells]
+    if skipped and all(skipped) and skipped[0]:
+        expected = "at least one point that is judged is expected"
+        reader.tell(skipped[0].place, "`skip` takes every operating point of this spec", expected)
 
 
 def _points(reader: Reader, pointed: PointReader, merged: Block) -> tuple[Point, ...]:

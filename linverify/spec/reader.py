@@ -8,6 +8,7 @@ from __future__ import annotations
 
 import re
 from collections.abc import Iterator, Mapping, Sequence
+from itertools import pairwise
 from pathlib import Path
 from typing import TypeVar
 
@@ -120,7 +121,8 @@ class Reader:
             return None
         if count is not None and len(node.items) != count:
             many = f"{len(node.items)} value{'' if len(node.items) == 1 else 's'}"
-            self.tell(node.place, f"`{called}`: {many} in the list", expected)
+            comma = "; a number has a decimal point, no comma" if _is_cut_by_comma(node.items) else ""
+            self.tell(node.place, f"`{called}`: {many} in the list", expected + comma)
             return None
         return node.items
 
@@ -145,6 +147,19 @@ class Reader:
             self.tell(key.place, f"unknown word {quoted(key.text)}", hint=hint)
         else:
             self.tell(key.place, f"unknown word {quoted(key.text)}", f"{where}{_listed(rows)}", hint)
+
+
+def _is_cut_by_comma(items: Sequence[Node]) -> bool:
+    """True where `0,01` stands in a list: two numbers, and no space between."""
+    pairs = [pair for pair in pairwise(items) if all(isinstance(each, Scalar) and each.plain for each in pair)]
+    return any(
+        first.place.line == second.place.line
+        and second.place.column == first.place.column + len(first.text) + 1
+        and first.text.isdecimal()
+        and second.text[:1].isdecimal()
+        for first, second in pairs
+        if isinstance(first, Scalar) and isinstance(second, Scalar)
+    )
 
 
 def _listed(rows: Sequence[Row]) -> str:

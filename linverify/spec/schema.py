@@ -64,6 +64,9 @@ def _described(row: Row) -> Schema:
 
 
 def _behind(row: Row) -> Schema:
+    if row.kind is Kind.COUNT:
+        lowest = {"+": {"minimum": 1}, "0+": {"minimum": 0}}.get(row.sign, {})
+        return {**_SIMPLE[row.kind], **lowest, **({} if row.most is None else {"maximum": row.most})}
     if row.kind in _SIMPLE:
         return _SIMPLE[row.kind]
     if row.kind in (Kind.CHOICE, Kind.CHOICES):

@@ -57,6 +57,10 @@ _SAID: tuple[tuple[str, str, str], ...] = (
 )  # fmt: skip
 
 
+# `{level: 0,01 m}` is `level: 0` and this word to YAML
+_AFTER_COMMA = re.compile(r"[0-9]+(\.[0-9]*)?([eE][-+]?[0-9]+)?(\s.*)?")
+
+
 @dataclass(frozen=True, slots=True)
 class Scalar:
     """One value as written, without its quotes. plain: it had no quotes."""
@@ -290,8 +294,8 @@ class _Builder:
             )
         elif key.text.strip() == "":
             self._tell(key.place, "a word is missing before ':'")
-        elif key.plain and not is_text(key.text) and isinstance(node, Scalar) and node.plain and not node.text:
-            self._tell(key.place, f"{quoted(key.text)} where a word is due", "a number has a decimal point, no comma")
+        elif key.plain and _AFTER_COMMA.fullmatch(key.text) and isinstance(node, Scalar) and node.plain and not node.text:
+            self._tell(key.place, f"{quoted(key.text)} where a word is due", "write a decimal point, not a comma")
         elif key.plain and not is_text(key.text):
             self._tell(key.place, f"{quoted(key.text)} is no text to YAML", "put it in quotes, or choose another name")
         else:

@@ -10,6 +10,7 @@ from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
+from linverify.core import units
 from linverify.core.errors import Place
 from linverify.core.signals import nearest
 
@@ -78,17 +79,34 @@ def _steps(reader: Reader, called: str, key: Scalar, node: Block) -> list[Quanti
     if not reader.require(node, AXIS_WORDS, key.place, called) or len(values) < len(AXIS_WORDS):
         return None
     first, last, count = values["from"], values["to"], values["count"]
-    if first.unit != last.unit:
-        reader.tell(last.place, f"`{called}`: {first.text} and {last.text} differ in unit", "both need the same unit")
-    elif count < 2 or first.value == last.value:
+    end = _end(reader, called, first, last)
+    if end is None:
+        return None
+    if count < 2 or first.value == end:
         reader.tell(node.place, f"`{called}` is a single value", "a count of 2 or more, and two different ends")
     elif count > MOST_CELLS:
         reader.tell(node.place, f"`{called}` has {count} values", f"at most {MOST_CELLS} are expected")
     else:
-        step = (last.value - first.value) / (count - 1)
+        step = (end - first.value) / (count - 1)
         inner = [first.value + step * i for i in range(1, count - 1)]
         return [first, *(_computed(value, first) for value in inner), last]
     return None
+
+
+def _end(reader: Reader, called: str, first: Quantity, last: Quantity) -> float | None:
+    """The last value in the unit of the first one; None, and told, where both cannot be compared."""
+    if first.unit == last.unit:
+        return last.value
+    if not (first.unit and last.unit):
+        wrong = f"`{called}`: only one of {first.text} and {last.text} has a unit"
+        reader.tell(last.place, wrong, "units on both ends, or on neither, are expected")
+        return None
+    try:
+        return units.convert(last.value, last.unit, first.unit, text=last.text)
+    except units.UnitError as error:
+        expected = f"the other end is {first.text}: {error.expected}" if error.expected else ""
+        reader.tell(last.place, f"`{called}`: {error.wrong}", expected, error.hint)
+        return None
 
 
 def _computed(value: float, like: Quantity) -> Quantity:
@@ -197,11 +215,11 @@ def _cell(reader: Reader, column: tuple[str, str, Place], field: str, place: Pla
 def cells(reader: Reader, name: Scalar, sweep: Sweep | None, skip: tuple[Word, ...]) -> tuple[Cell, ...]:
     """The cells of a point, named and marked as skipped; a pattern that fits none of them is told."""
     if sweep is None:
-        return (Cell(name.text, (), "", name.place),)
+        return (Cell(name.text, (), None, name.place),)
     made = []
     for values, place in sweep.rows:
         cell = "-".join([name.text, *(_NOT_IN_NAMES.sub("", entry.value.text) for entry in values)])
-        skipped = next((pattern.text for pattern in skip if matches(pattern.text, cell)), "")
+        skipped = next((pattern for pattern in skip if matches(pattern.text, cell)), None)
         made.append(Cell(cell, values, skipped, place or name.place))
     for pattern in skip:
         if not any(matches(pattern.text, cell.name) for cell in made):

@@ -36,7 +36,7 @@ def bind_trim(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, I
         rates=MappingProxyType(rates),
         free=free,
         minimize=MappingProxyType(minimize),
-        expect=MappingProxyType(_expect(ground, point)),
+        expect=MappingProxyType(_expect(ground, point, cell, envelope)),
         accuracy=accuracy,
     )
 
@@ -192,13 +192,15 @@ def _settle(
             ground.report(point.place, wrong, "a `hold`, a `start` or a place under `find` is expected")
 
 
-def _expect(ground: Ground, point: Point) -> dict[str, Expected]:
+def _expect(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, Interval]) -> dict[str, Expected]:
     expected: dict[str, Expected] = {}
     for entry in point.expect:
         if not ground.known(entry.name, entry.place, ground.signals, "a state, input or output"):
             continue
         word = f"expect: {entry.name}"
         value = ground.signal(entry.value.value, entry.name, word)
+        if not cell.skipped:
+            ground.inside(value, Entry(entry.name, entry.place, entry.value.value), word, envelope)
         tolerance = _tolerance(ground, entry, value, word)
         expected[entry.name] = Expected(value, tolerance, entry.value.place)
     return expected

@@ -76,6 +76,9 @@ def whole(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> int
     read = reader.judged(scalars.whole(scalar.text, scalar.plain), scalar.place, called)
     if read is None or not reader.sign(read, row, scalar.text, scalar.place, called):
         return None
+    if row.most is not None and read > row.most:
+        reader.tell(scalar.place, f"`{called}`: {quoted(scalar.text)} is too many", f"at most {row.most} are expected")
+        return None
     return read
 
 

@@ -62,6 +62,7 @@ class Row:
     choices: tuple[str, ...] = ()
     refusal: str = ""  # what is told of any other choice
     sign: str = ""  # "+": above zero, "0+": zero or above
+    most: int | None = None  # of a COUNT: a larger one is most likely a slip, and would take for ever
     available: bool = True
 
 
@@ -101,8 +102,8 @@ DRIVE_WORDS = (
     Row("offsets", Kind.NAMED, "initial states off the operating point, up to this much",
         each(Kind.QUANTITY, dimension=SIGNAL, sign="+")),
     Row("shapes", Kind.CHOICES, "menu of the random drives", default="[" + ", ".join(SHAPES) + "]", choices=SHAPES),
-    Row("count", Kind.COUNT, "how many random drives", default="300", sign="+"),
-    Row("search", Kind.COUNT, "how many examples hunt the worst case", default="150", sign="0+"),
+    Row("count", Kind.COUNT, "how many random drives", default="300", sign="+", most=100_000),
+    Row("search", Kind.COUNT, "how many examples hunt the worst case", default="150", sign="0+", most=10_000),
     later("loop", "both models run with this loop closed"),
     later("at", "drives add to the set point, or to what the loop moves"),
     Row("discerns", Kind.BLOCK, "what these drives must be able to show", DISCERNS),
@@ -201,7 +202,8 @@ SPEC_WORDS = (
     Row("plant", Kind.PLANT, "the plant", required=True),
     Row("parameters", Kind.NAMED, "overrides of the plant's own defaults",
         each(Kind.QUANTITY, dimension="the parameter's")),
-    Row("time", Kind.QUANTITY, "the time of trim, for a plant that depends on it", dimension="time"),
+    Row("time", Kind.QUANTITY, "the time of trim; needed by a plant that depends on it", dimension="time",
+        default="0 s"),
     Row("wraps", Kind.NAMES, "angles compared modulo a turn", available=False),
     Row("delays", Kind.BLOCK, "dead time outside the plant function", DELAY_WORDS, available=False),
     Row("envelope", Kind.NAMED, "where the plant may be", each(Kind.LIMITS, LIMIT_WORDS, SIGNAL)),

@@ -233,13 +233,22 @@ def test_a_sweep_makes_one_case_a_combination(load: Load) -> None:
         ("low-100cm-4", 1.0, 4.0, ""),
         ("low-150cm-2m2", 1.5, 2.0, ""),
         ("low-150cm-4", 1.5, 4.0, ""),
-        ("low-200cm-2m2", 2.0, 2.0, "low-200cm-*"),
-        ("low-200cm-4", 2.0, 4.0, "low-200cm-*"),
+        ("low-200cm-2m2", 2.0, 2.0, "skipped by `skip: low-200cm-*`, specs/tank/level.yaml:8:12"),
+        ("low-200cm-4", 2.0, 4.0, "skipped by `skip: low-200cm-*`, specs/tank/level.yaml:8:12"),
     ]
     assert all(case.trim.find == ("inflow", "heat", "pump") for case in cases)
     assert {case.family for case in cases} == {4}
     words = {setting.word: setting.text for setting in cases[2].settings}
     assert (words["hold.level"], words["parameters.area"]) == ("150 cm", "2 m^2")
+
+
+def test_ends_of_a_sweep_in_two_units_convert(load: Load) -> None:
+    cases = load(SWEPT.replace(", area: [2 m^2, 4]", "").replace('"low-2m-*"', "low-2m"))
+    assert [(case.point, case.trim.hold["level"]) for case in cases] == [
+        ("low-100cm", 1.0),
+        ("low-150cm", 1.5),
+        ("low-2m", 2.0),
+    ]
 
 
 def test_a_table_makes_one_case_a_row(load: Load, tmp_path: Path) -> None:
@@ -317,6 +326,6 @@ def test_a_plant_that_cannot_be_had_is_told_with_the_mistakes_of_the_reader(load
 
 
 def test_the_spec_is_shown_from_the_root(load: Load, tmp_path: Path) -> None:
-    assert load(SWEPT.replace("to: 2 m", "to: 200 cm").replace("low-2m-*", "*"))[0].spec == "specs/tank/level.yaml"
+    assert load(SWEPT.replace("to: 2 m", "to: 200 cm").replace("low-2m-*", "low-2*"))[0].spec == "specs/tank/level.yaml"
     (case, *_) = bind.load(tmp_path / "specs" / "tank" / "level.yaml", tmp_path / "specs")
     assert case.spec == "tank/level.yaml"

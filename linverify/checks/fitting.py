@@ -40,8 +40,12 @@ def told(study: Study, name: str) -> tuple[str, ...]:
     )
     if model.step is not None and study.case.plant.step is None and drives.course != model.course:
         found.append(f"the drives are {drives.course} between instants, the sampled model takes {model.course} inputs")
-    if study.case.local.delivered is not None and (why := study.unmet("derived")):
+    if study.case.local.delivered is None:
+        return tuple(found)
+    if why := study.unmet("derived"):
         found.append(f"{why}: no drives were sought that tell delivered from derived, and errors are not split")
+    elif why := study.unmet("reference"):
+        found.append(f"no model to tell the delivered numbers by: {why}")
     return tuple(found)
 
 

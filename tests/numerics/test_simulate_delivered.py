@@ -102,6 +102,19 @@ def test_an_exit_between_the_instants_of_a_coarse_model_is_found_and_was_predict
         assert np.isfinite(runs.plant[0, :, :, 0]).sum() == 3  # instants 0, 1 and 1 again
 
 
+@pytest.mark.parametrize("steps", [1, 3, 20])
+def test_the_halved_grid_halves_steps_though_instants_stay(steps: int) -> None:
+    """A grid that did not change where samples are would hide the error of integration from itself."""
+    one = rig(PLANT, sampled(local(PLANT, A, B, C, D), 0.2 / steps, "held"), ("y1",), weight=1e3)
+    coarse, fine = Fidelity(4, 1.0), Fidelity(4, 1.0).finer()
+    first, second = run_alone(one, drive(), coarse), run_alone(one, drive(), fine)
+    assert first.times.shape == second.times.shape
+    assert second.evaluations >= 1.8 * first.evaluations
+    exact = run_alone(one, drive(), Fidelity(64, 1e-9))
+    off = [np.abs(runs.plant - exact.plant).max() for runs in (first, second)]
+    assert 0.0 < off[1] < 0.2 * off[0]
+
+
 # fewer states, other orders, no names
 
 

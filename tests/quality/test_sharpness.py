@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field, replace
+from itertools import product
 from typing import Any
 
 import numpy as np
@@ -280,6 +281,35 @@ def test_a_band_beside_the_worst_error_is_told_from_it(name: str) -> None:
     assert below.status is Status.FAIL, below.reason
     (figure,) = below.figures
     assert figure.worst <= worst * (1.0 + 1e-6) + figure.error
+
+
+def corners(system: System) -> Array:
+    """Root mean square of the error for every course that stays at its ends, one input; the largest is among them."""
+    times = system.every * np.arange(system.intervals * FINE + 1) / FINE
+    rows = np.array(
+        [(system._rows(system.plant, t, False) - system._rows(system.model, t, False))[:, 0] for t in times]
+    )
+    signs = np.array(list(product([-1.0, 1.0], repeat=system.intervals)))
+    squares = (signs * system.high[0] @ rows.T) ** 2
+    mean = (squares.sum(axis=1) - 0.5 * (squares[:, 0] + squares[:, -1])) / (len(times) - 1)
+    return np.sqrt(mean)
+
+
+@pytest.mark.parametrize(
+    "system",
+    [
+        System(oscillator(2, 0.1), oscillator(2.1, 0.1), 0.4, 11, (1.0,)),
+        System(linear([[-1]], [[1]], [[1]]), linear([[-1.2]], [[1.3]], [[1]]), 0.3, 11, (1.0,)),
+        System(oscillator(3, 0.05), oscillator(3, 0.05, 1.2), 0.3, 11, (1.0,), late_in=(0.45,)),
+    ],
+    ids=["wrong frequency", "errors that cancel in the end", "wrong gain behind a dead time"],
+)
+def test_a_band_on_the_mean_square_is_told_from_the_worst_of_all_corners(system: System) -> None:
+    worst = float(corners(system).max())
+    above = verdict(system, Band("y1", "rms", 1.02 * worst))
+    assert above.status is Status.PASS, above.reason
+    below = verdict(system, Band("y1", "rms", 0.98 * worst))
+    assert below.status is Status.FAIL, below.reason
 
 
 def test_the_truth_itself_against_a_closed_form() -> None:

@@ -126,20 +126,24 @@ class LocalModels:
         for band in bands:
             if band.signal in plant and band.signal not in compared:
                 wrong = f"an error band for {quoted(band.signal)}, which the local model does not have"
-                self.ground.report(band.place, wrong, f"{where} has {listed(dict.fromkeys(compared))}")
+                self.ground.report(band.place, wrong, _has(where, compared))
         for drives in sets:
             for name, amplitude in drives.amplitude.items():
                 if name in self.ground.inputs and name not in inputs:
                     wrong = f"the drives move {quoted(name)}, which is no input of the local model"
-                    self.ground.report(drives.place, wrong, f"{where} has {listed(inputs)}")
+                    self.ground.report(drives.place, wrong, _has(where, inputs))
                 until = amplitude.until[0] if amplitude.until else ""
                 if until in plant and until not in compared:
                     wrong = f"an amplitude until {quoted(until)} moves, which the local model does not have"
-                    self.ground.report(drives.place, wrong, f"{where} has {listed(dict.fromkeys(compared))}")
+                    self.ground.report(drives.place, wrong, _has(where, compared))
             for name in drives.offsets:
                 if name in self.ground.states and name not in states:
                     wrong = f"an offset of {quoted(name)}, which is no named state of the local model"
-                    self.ground.report(drives.place, wrong, f"{where} has {listed(states)}")
+                    self.ground.report(drives.place, wrong, _has(where, states))
+
+
+def _has(where: str, names: Sequence[str]) -> str:
+    return f"{where} has {listed(dict.fromkeys(names)) if names else 'none'}"
 
 
 def _keep(ground: Ground, local: LocalWords) -> Keep | None:

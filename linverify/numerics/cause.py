@@ -2,12 +2,13 @@
 
 Explanations without a number to choose (a sign, exchanged names, a unit, another point's model) are tried first: one
 that fits leaves nothing to explain. Only then one number may be chosen (a parameter, a held value). Two that fit
-equally well are no guess. Where nothing fits but a single entry differs, that is said: it is a fact and no guess.
+equally well are no guess. Where nothing fits but a single entry differs, that is said: it is a fact and no guess. Last,
+for a model that is a little off everywhere besides, a slip may explain all but a hundredth of the largest difference.
 """
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -54,14 +55,15 @@ def guess(
         return _only_time(pair) if pair.time_clash else None
     if pair.time_clash:
         return None
-    found = _slipped(pair, wanted, continuous, time_unit) + _others(wanted, others or {})
+    tried = list(_all_slips(pair, wanted, continuous, time_unit))
+    found = _distinct([slip for slip in tried if wanted.explained(slip.model)]) + _others(wanted, others or {})
     if found:
         return found[0] if len(found) == 1 else None
     if derive is not None:
         found = _turned(wanted, knobs, derive, pair.reference)
         if found:
             return found[0] if len(found) == 1 else None
-    return _single(pair, wanted)
+    return _single(pair, wanted) or _nearly(wanted, tried)
 
 
 def _only_time(pair: Pair) -> Cause:
@@ -70,19 +72,22 @@ def _only_time(pair: Pair) -> Cause:
     return Cause("sampling", "the matrices are those of the plant's steps, and only the sample time is wrong")
 
 
-def _slipped(pair: Pair, wanted: Target, continuous: LocalModel | None, time_unit: str) -> list[Cause]:
-    fits = [slip for slip in slips(pair.reference, time_unit, named=not pair.anonymous) if wanted.explained(slip.model)]
-    base = pair.reference if pair.reference.step is None else continuous
-    if base is not None and base is not pair.reference and pair.reference.step is not None:
-        # slips made before the model was sampled
-        step, course, base = pair.reference.step, pair.delivered.course, replace(base, errors={})
-        before = (
-            Slip(slip.text, slip.kind, sampled(slip.model, step, course), slip.narrow)
-            for slip in slips(base, time_unit, named=not pair.anonymous)
-        )
-        fits += [slip for slip in before if wanted.explained(slip.model)]
-    fits += [slip for slip in sampling_slips(wanted, base, time_unit) if wanted.explained(slip.model)]
-    return _distinct(fits)
+def _all_slips(pair: Pair, wanted: Target, continuous: LocalModel | None, time_unit: str) -> Iterator[Slip]:
+    named = not pair.anonymous
+    yield from slips(pair.reference, time_unit, named=named)
+    step, course = pair.reference.step, pair.delivered.course
+    if step is None:
+        yield from sampling_slips(wanted, pair.reference, time_unit)
+    elif continuous is not None:
+        # slips made before the model was sampled; errors are dear to carry along and far below what counts
+        for slip in slips(replace(continuous, errors={}), time_unit, named=named):
+            yield replace(slip, model=sampled(slip.model, step, course))
+        yield from sampling_slips(wanted, continuous, time_unit)
+
+
+def _nearly(wanted: Target, tried: list[Slip]) -> Cause | None:
+    found = _distinct([slip for slip in tried if wanted.nearly_explained(slip.model)])
+    return found[0] if len(found) == 1 else None
 
 
 def _distinct(fits: list[Slip]) -> list[Cause]:

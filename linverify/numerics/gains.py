@@ -16,6 +16,8 @@ from ..core.model import Array, LocalModel
 from .frequency import respond_within
 from .pair import Pair
 
+TIE = 9  # digits: of changes that differ by rounding alone the first one is quoted, on every machine
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class StaticGains:
@@ -62,7 +64,7 @@ def singular_values(gains: StaticGains, inputs: Array, outputs: Array) -> Moved:
     with np.errstate(divide="ignore", invalid="ignore"):
         change = np.where(theirs == ours, 0.0, np.abs(theirs - ours) / ours)
         error = spread * (1.0 + change) / ours if spread else np.zeros_like(ours)
-    place = int(np.argmax(np.where(np.isfinite(change), change, np.inf)))
+    place = int(np.argmax(np.round(np.where(np.isfinite(change), change, np.inf), TIE)))
     return Moved(float(change[place]), float(error[place]), float(theirs[place]), float(ours[place]), (place,))
 
 
@@ -76,7 +78,7 @@ def relative_gain(gains: StaticGains) -> Moved:
     theirs, ours = relative_gains(gains.delivered), relative_gains(gains.reference)
     change = np.abs(theirs - ours)
     error = _carried(relative_gains, gains.reference, gains.error)
-    row, column = (int(index) for index in np.unravel_index(np.argmax(change), change.shape))
+    row, column = (int(index) for index in np.unravel_index(np.argmax(np.round(change, TIE)), change.shape))
     place = (row, column)
     return Moved(float(change[place]), float(error[place]), float(theirs[place]), float(ours[place]), place)
 

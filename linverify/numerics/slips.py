@@ -103,13 +103,20 @@ def _states(model: LocalModel) -> Iterator[Slip]:
     for index, (name, unit) in enumerate(zip(model.states.names, model.states.units, strict=True)):
         turned = _at(n, index, -1.0)
         yield Slip(f"the signs in the row of {name} are reversed", "sign", scaled(model, rows=turned))
-        yield Slip(f"the signs in the column of {name} are reversed", "sign", scaled(model, columns=turned))
+        yield from _column(model, index, -1.0, f"by {name} have the wrong sign", "sign")
         yield Slip(f"state {name} counts the other way", "sign", scaled(model, rows=turned, columns=turned))
         for other, factor in alternatives(unit):
             up, down = _at(n, index, factor), _at(n, index, 1.0 / factor)
             yield Slip(f"state {name} is in {other}, not in {unit}", "unit", scaled(model, rows=up, columns=down))
-            yield Slip(f"slopes by {name} are for {other}, not for {unit}", "unit", scaled(model, columns=down))
+            yield from _column(model, index, 1.0 / factor, f"by {name} are for {other}, not for {unit}", "unit")
             yield Slip(f"the row of {name} is in {other}, not in {unit}", "unit", scaled(model, rows=up))
+
+
+def _column(model: LocalModel, index: int, factor: float, text: str, kind: str) -> Iterator[Slip]:
+    whole = scaled(model, columns=_at(len(model.states), index, factor))
+    yield Slip(f"all slopes {text}", kind, whole)
+    if model.C[:, index].any():
+        yield Slip(f"slopes of rates {text}", kind, replace(model, A=whole.A))
 
 
 def _entries(model: LocalModel) -> Iterator[Slip]:

@@ -15,6 +15,7 @@ from .frequency import Complex, respond_within
 from .pair import MATRICES, Pair
 from .similarity import frequencies
 
+NEARLY = 0.01
 FLOOR = 1e-6  # of a row's largest term: trims and slopes found twice differ by less, faults that matter by more
 
 
@@ -39,6 +40,11 @@ class Target:
     def explained(self, model: LocalModel) -> bool:
         """True where no number of the delivered model is off from `model` by more than is allowed."""
         return not self.unexplained(model).any()
+
+    def nearly_explained(self, model: LocalModel) -> bool:
+        """True where `model` leaves less than a hundredth of the largest gap that the reference leaves, everywhere."""
+        left, found = np.abs(self.gap(model)), np.abs(self.gap(self.pair.reference))
+        return bool(left.max(initial=0.0) <= NEARLY * found.max(initial=0.0))
 
     def unexplained(self, model: LocalModel) -> Array:
         """Which numbers are off, (q,)."""

@@ -167,7 +167,7 @@ def test_degrees_for_radians_are_named(digits: int):
     assert _told("ferry", turned, digits) == "state pitch is in deg, not in rad"
     assert (
         _told("ferry", replace(model, A=model.A / up, C=model.C / up), digits)
-        == "slopes by pitch are for deg, not for rad"
+        == "all slopes by pitch are for deg, not for rad"
     )
     one = _told("ferry", _entry(model, "A", 1, 3, 1.0 / f), digits)
     assert one == "A[heave_rate, pitch] takes pitch in deg, not in rad"

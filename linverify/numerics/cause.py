@@ -116,7 +116,7 @@ def _turned(wanted: Target, knobs: Sequence[Knob], derive: Derive, reference: Lo
 
 
 def _told(knob: Knob, value: float) -> Cause:
-    then, now = told(float(f"{value:.4g}"), knob.unit), told(knob.value, knob.unit)
+    then, now = told(value, knob.unit), told(knob.value, knob.unit)
     if knob.kind == "parameter":
         return Cause("parameter", f"a stale parameter: {knob.name} = {then} explains all of it; the plant has {now}")
     return Cause("trim", f"another trim: {knob.name} held at {then} explains all of it; here it is held at {now}")

@@ -17,6 +17,7 @@ from .target import Target
 FIRST = 1e-3  # of the value, or of its size: the first change that is tried
 TRIES = 12  # derivations for one number; Newton needs three to six
 ALIKE = 0.2  # least cosine between what the number moves and what is to be explained
+DIGITS, EDGE = 10, 0.1  # most digits that are told; share of what is allowed that a told value keeps off its ends
 SETTLED = 1e-9  # of the value: a smaller correction changes no digit that is told
 LEAST = 2  # numbers of the delivered model that must have moved
 SHRINK = 0.3  # a value that would change its sign is only made smaller
@@ -75,9 +76,7 @@ def fitted(knob: Knob, derive: Derive, target: Target, reference: LocalModel) ->
     here, slope = _descended(search, first, slope)
     if here is first:
         return None
-    if target.explained(here.model):
-        return here.value
-    return _within(search, here, slope)
+    return _shortest(search, here, _allowed(here, slope))
 
 
 def _descended(search: _Search, here: _Tried, slope: Array) -> tuple[_Tried, Array]:
@@ -107,20 +106,28 @@ def _better(search: _Search, here: _Tried, step: float) -> _Tried | None:
     return None
 
 
-def _within(search: _Search, here: _Tried, slope: Array) -> float | None:
-    """Near the best fit: the middle of the values at which every number is within what is allowed, if there are any.
+def _allowed(here: _Tried, slope: Array) -> tuple[float, float]:
+    """Between which values every number is within what is allowed, as far as slopes tell; empty where low > high.
 
-    The best fit of rounded numbers need not be one of them.
+    The best fit of rounded numbers need not lie there.
     """
     moving = np.abs(slope) > 1e-12 * np.abs(slope).max(initial=0.0)
-    ends = np.sort(
-        np.stack([(-1.0 - here.gap[moving]) / slope[moving], (1.0 - here.gap[moving]) / slope[moving]]), axis=0
-    )
-    low, high = float(ends[0].max(initial=-np.inf)), float(ends[1].min(initial=np.inf))
-    if not low <= high:
-        return None
-    tried = search.at(here.value + 0.5 * (low + high))
-    return tried.value if tried is not None and search.target.explained(tried.model) else None
+    gap, slope = here.gap[moving], slope[moving]
+    ends = np.sort(np.stack([(-1.0 - gap) / slope, (1.0 - gap) / slope]), axis=0)
+    return here.value + float(ends[0].max(initial=-np.inf)), here.value + float(ends[1].min(initial=np.inf))
+
+
+def _shortest(search: _Search, here: _Tried, allowed: tuple[float, float]) -> float | None:
+    """The value with fewest digits that explains everything: more digits than printed ones tell would be invented."""
+    low, high = allowed
+    middle = 0.5 * (low + high) if low <= high and np.isfinite(high - low) else here.value
+    short = [float(f"{middle:.{digits}g}") for digits in range(1, DIGITS)]
+    inside = [value for value in short if low + EDGE * (high - low) <= value <= high - EDGE * (high - low)]
+    for value in (*inside[:1], middle, here.value):
+        tried = search.at(value)
+        if tried is not None and search.target.explained(tried.model):
+            return value
+    return None
 
 
 def _limited(knob: Knob, value: float, step: float) -> float:

@@ -23,7 +23,7 @@ def transmission_zeros(model: LocalModel) -> Complex:
     """Finite transmission zeros in s (or z), sorted; states scaled, entries below the noise of differences dropped."""
     scaled = blocks(model)
     size = float(np.abs(scaled.A).max(initial=0.0)) or 1.0
-    system = _leveled((scaled.A / size, scaled.B, scaled.C, scaled.D))
+    system = _leveled((scaled.A / size, scaled.B / size, scaled.C, scaled.D))
     A, B, C, D = _dual(_reduced(_dual(_reduced(system))))
     if not len(A) or not B.shape[1]:
         return np.zeros(0, dtype=np.complex128)

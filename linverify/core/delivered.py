@@ -25,7 +25,9 @@ class DeliveredModel:
     A (n, n), B (n, m), C (k, n), D (k, m) in the plant's units and per its time unit; states: names in order, None when
     anonymous; inputs, outputs: names in order. step: sample time in the plant's time unit; course: how a discrete model
     takes its inputs between samples. x0, u0, y0: the operating point it claims, by name, as far as it claims one.
-    digits: significant digits that its entries are written with, at least; 17 where they are exact.
+    digits: significant digits of the longest entry, of the matrix that shows fewest; 17 where entries are exact, also
+    where all are short, as 0, 1 and 0.25 are. rounding: by "A", "B", "C", "D", half a unit of the last printed digit of
+    every entry, in the plant's units; a matrix without is exact.
     """
 
     file: str
@@ -44,6 +46,7 @@ class DeliveredModel:
     y0: Mapping[str, float] = field(default_factory=lambda: NOTHING)
     point: str = ""
     digits: int = 17
+    rounding: Mapping[str, Array] = field(default_factory=lambda: MappingProxyType({}))
 
 
 @dataclass(frozen=True, slots=True)

@@ -10,6 +10,8 @@ from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
 from types import MappingProxyType
 
+import numpy as np
+
 from linverify.core.errors import Place
 from linverify.core.model import Array
 from linverify.core.signals import nearest
@@ -36,10 +38,14 @@ _SHORTEST = 4  # digits; a matrix that shows fewer holds round numbers, not roun
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Matrix:
-    """Finite numbers as written: a table, a line of numbers or one number."""
+    """Finite numbers as written: a table, a line of numbers or one number.
+
+    rounding: half a unit of the last digit of each, same shape; None where they are exact.
+    """
 
     values: Array
     place: Place
+    rounding: Array | None = None
 
 
 @dataclass(frozen=True, slots=True)
@@ -120,3 +126,20 @@ def fewest_digits(matrices: Iterable[Iterable[str]]) -> int:
     """
     most = [max((shown_digits(text) for text in texts), default=0) for texts in matrices]
     return min((min(digits, EXACT) for digits in most if digits >= _SHORTEST), default=EXACT)
+
+
+def half_units(values: Array, texts: Sequence[str]) -> Array | None:
+    """Half a unit of the last printed digit of every number, shape of `values`; None where they are exact.
+
+    Numbers that all show equally many decimals were printed to that many; others to as many significant digits as the
+    longest of them has, with zeros at the end left out.
+    """
+    digits = fewest_digits([texts])
+    if digits >= EXACT:
+        return None
+    decimals = {len(text.partition(".")[2]) if "e" not in text.lower() else -1 for text in texts}
+    if len(texts) > 1 and len(decimals) == 1 and (count := decimals.pop()) > 0:
+        return np.full(values.shape, 0.5 * 10.0**-count)
+    size = np.abs(values)
+    decade = np.floor(np.log10(np.where(size > 0.0, size, 1.0)))
+    return np.where(size > 0.0, 0.5 * 10.0 ** (decade + 1 - digits), 0.0)

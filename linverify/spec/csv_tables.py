@@ -12,7 +12,7 @@ import numpy as np
 from linverify.core.errors import Place
 from linverify.core.signals import nearest
 
-from .claims import COLUMNS_OF, ROWS_OF, Claim, Claimed, Listed, Matrix, Number, fewest_digits, finite
+from .claims import COLUMNS_OF, ROWS_OF, Claim, Claimed, Listed, Matrix, Number, fewest_digits, finite, half_units
 from .layout import Entry, Word
 from .reader import Reader
 from .scalars import quoted
@@ -99,7 +99,13 @@ def _ordered(reader: Reader, word: str, table: Table, names: Mapping[str, Listed
             cell = table.cells.get((row.text, column.text))
             read = None if cell is None else number(reader, cell, f"{word}[{row.text}, {column.text}]")
             values[i, j] = 0.0 if read is None else read.value
-    return Matrix(values, table.place)
+    texts = [
+        table.cells[row.text, column.text].text
+        for row in rows
+        for column in columns
+        if (row.text, column.text) in table.cells
+    ]
+    return Matrix(values, table.place, half_units(values, texts))
 
 
 def lines_of(reader: Reader, data: bytes, shown: str) -> list[Line] | None:

@@ -87,6 +87,7 @@ class _Binding:
             y0=y0,
             point=claim.point.text if claim.point else "",
             digits=claim.digits,
+            rounding=self._rounding(names, factors, 1.0 if step else a_time),
         )
 
     def _names(self) -> _Names | None:
@@ -166,8 +167,7 @@ class _Binding:
                 self.ground.report(word.place, f"{quoted(word.text)} is not kept", where)
 
     def _shaped(self, names: _Names) -> tuple[Array, Array, Array, Array] | None:
-        n, m, k = names.n, len(names.inputs), len(names.outputs)
-        sizes = {"A": (n, n), "B": (n, m), "C": (k, n), "D": (k, m)}
+        sizes = self._sizes(names)
         kinds = {"A": ("states", "states"), "B": ("states", "inputs"), "C": ("outputs", "states")}
         shaped = []
         for word, (rows, columns) in sizes.items():
@@ -186,6 +186,22 @@ class _Binding:
         if A is None or B is None or C is None or D is None:
             return None
         return A, B, C, D
+
+    def _rounding(self, names: _Names, factors: Mapping[str, float], a_time: float) -> Mapping[str, Array]:
+        """Half a printed unit of every entry, in the plant's units; matrices that are exact are left out."""
+        printed = {word: matrix.rounding for word, matrix in self.claim.matrices.items()}
+        sizes = self._sizes(names)
+        tables = {
+            word: np.zeros(size) if (half := printed.get(word)) is None else half.reshape(size)
+            for word, size in sizes.items()
+        }
+        scaled = _converted((tables["A"], tables["B"], tables["C"], tables["D"]), names, factors, a_time)
+        found = {word: frozen_array(np.abs(values)) for word, values in zip("ABCD", scaled, strict=True)}
+        return MappingProxyType({word: found[word] for word in found if printed.get(word) is not None})
+
+    def _sizes(self, names: _Names) -> dict[str, tuple[int, int]]:
+        n, m, k = names.n, len(names.inputs), len(names.outputs)
+        return {"A": (n, n), "B": (n, m), "C": (k, n), "D": (k, m)}
 
     def _factors(self) -> Mapping[str, float]:
         """What one unit of the file is in the plant's unit, by signal."""

@@ -37,6 +37,7 @@ _TEXTS = ("time_unit", "hold", "point", "note")
 _LISTS = (*NAMES, *UNITS_OF, *NAMES_OF, "op")
 _KEYS = (*_NUMBERS, *_TEXTS, *_LISTS)
 _SINGLE_DIGITS = 7  # that a number of single precision holds
+_HALF_SINGLE = float(np.finfo(np.float32).eps) / 2
 _HDF5 = b"\x89HDF\r\n\x1a\n"
 _SAVEZ = "write it with numpy.savez and arrays of numbers and text"
 _VERSION_5 = "save it as version 5, for example with save(..., '-v7')"
@@ -181,7 +182,9 @@ class _Stack:
         return Claim(
             file=self.shown,
             place=place,
-            matrices={name: Matrix(own[name], place) for name in MATRICES if name in own},
+            matrices={
+                name: Matrix(own[name], place, self._rounding(name, own[name])) for name in MATRICES if name in own
+            },
             names=names,
             units=tuple(self._units(lists)),
             at={word: self._claimed(word, own[word], lists.get(f"{word}_names")) for word in POINTS if word in own},
@@ -209,6 +212,9 @@ class _Stack:
         due = f"`op` names {points}" if points else "`op` with a name for each point is expected"
         self._tell(f"`{name}` is {held}", due)
         return np.zeros(0)
+
+    def _rounding(self, name: str, values: Array) -> Array | None:
+        return _HALF_SINGLE * np.abs(values) if self.arrays[name].dtype == np.float32 else None
 
     def _units(self, lists: Mapping[str, list[str]]) -> list[Entry[Word]]:
         place = Place(self.shown)

@@ -25,6 +25,7 @@ from .claims import (
     Number,
     fewest_digits,
     finite,
+    half_units,
     unknown,
 )
 from .layout import Entry, Word
@@ -120,7 +121,7 @@ def _matrix(reader: Reader, node: Node, called: str) -> tuple[Matrix, list[str]]
         values = values.reshape(len(nested), len(nested[0].items))
     elif not isinstance(node, Listing):
         values = values.reshape(())
-    return Matrix(values, node.place), texts
+    return Matrix(values, node.place, half_units(values, texts)), texts
 
 
 def _number(reader: Reader, node: Node | None, called: str) -> Number | None:

@@ -146,6 +146,22 @@ def test_digits_of_what_was_printed(load: Load) -> None:
 
 
 @pytest.mark.usefixtures("delivered_words")
+def test_rounding_is_that_of_the_print_in_the_units_of_the_plant(load: Load) -> None:
+    def rounding(entries: str, **words: Any) -> dict[str, Any]:
+        text = js(**words).replace(str(MODEL["A"]), entries)
+        assert entries in text
+        model = load(SOURCE, text).local.delivered
+        assert model is not None
+        return {name: values.tolist() for name, values in model.rounding.items()}
+
+    assert rounding(str(MODEL["A"])) == {}
+    np.testing.assert_allclose(rounding("[[-12.346, 0.5], [0, 0.25]]")["A"], [[0.5e-3, 0.5e-5], [0.0, 0.5e-5]])
+    assert rounding("[[-12.346, 0.500], [0.000, 0.250]]") == {"A": [[0.5e-3] * 2] * 2}
+    converted = rounding("[[-12.346, 0.5], [0, 0.25]]", units={"level": "cm"}, time_unit="min")["A"]
+    np.testing.assert_allclose(converted, [[0.5e-3 / 60, 0.5e-7 / 60], [0.0, 0.5e-5 / 60]])
+
+
+@pytest.mark.usefixtures("delivered_words")
 def test_delays_and_wraps(load: Load) -> None:
     case = load("delays: {inputs: {heat: 1 min}, outputs: {excess: 250 ms}}\nwraps: [temperature]\n", plant=TURNING)
     assert dict(case.delays.inputs) == {"heat": 60.0}

@@ -49,9 +49,10 @@ def _point(study: Study, delivered: DeliveredModel, findings: Findings) -> None:
         return
     figures = claims.judged(found, agree.point, str(agree.point_place or agree.place))
     findings.figures += figures
-    for claim, figure in zip(found, figures, strict=True):
-        if figure.status is not Status.PASS:
-            findings.reasons.append((figure.status, claim.told()))
+    for status in (Status.FAIL, Status.UNDECIDED):
+        off = [claim for claim, figure in zip(found, figures, strict=True) if figure.status is status]
+        if off:
+            findings.reasons.append((status, claims.reason(off)))
     findings.details["claimed_point"] = [
         {
             "signal": claim.signal,

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 from ..core.case import Case
@@ -10,6 +10,8 @@ from ..core.delivered import DeliveredModel
 from ..core.units import told
 from ..core.verdict import Figure, Status
 from ..numerics.trim import TrimResult
+
+TOLD = 3  # claims that a message names; all of them are in the details
 
 
 @dataclass(frozen=True, slots=True)
@@ -62,6 +64,14 @@ def judged(found: tuple[Claim, ...], limit: float, origin: str) -> tuple[Figure,
         )
         for claim in found
     )
+
+
+def reason(off: Sequence[Claim]) -> str:
+    """What a reader is told of claims that do not hold, the furthest off first."""
+    order = sorted(off, key=lambda claim: -round(claim.away, 9))
+    words = "; ".join(claim.told() for claim in order[:TOLD])
+    more = len(order) - TOLD
+    return f"{words}; and {more} more claimed values" if more > 0 else words
 
 
 def status_of(worst: float, error: float, limit: float) -> Status:

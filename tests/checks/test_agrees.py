@@ -104,6 +104,15 @@ def test_the_claimed_point_is_held_against_the_trim_in_nominal_sizes():
     assert verdict(replace(right, u0={"command": 0.97}), AgreeAsk(point=0.013, place=POINT_AT)).status is Status.PASS
 
 
+def test_a_wrong_point_tells_its_worst_claims_and_how_many_more():
+    found = verdict(delivered(x0={"place": 0.4, "speed": 0.1, "winch": 0.8}, u0={"command": 0.8}, y0={"pull": 4.0}))
+    assert found.status is Status.FAIL
+    assert found.reason == (
+        "place: claimed 0.4 m, trimmed 0.5 m; winch: claimed 0.8 rad, trimmed 0.9675 rad; "
+        "command: claimed 0.8 rad, trimmed 0.9675 rad; and 2 more claimed values"
+    )
+
+
 def test_anonymous_states_have_no_entries_to_compare():
     found = verdict(delivered(states=None), ENTRIES)
     assert found.status is Status.UNDECIDED

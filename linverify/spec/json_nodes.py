@@ -10,6 +10,7 @@ import json
 import re
 from bisect import bisect_right
 from dataclasses import dataclass, field
+from typing import NoReturn
 
 from linverify.core.errors import Place, Problem
 
@@ -123,7 +124,6 @@ class _Scanner:
             frames.pop()
             return Block(tuple(frame.entries), frame.place) if frame.block else Listing(tuple(frame.items), frame.place)
         self._stop(place, self._told(kind, text), "',' or '}' is expected" if frame.block else "',' or ']' is expected")
-        return None
 
     def _key(self, frame: _Frame) -> None:
         kind, text, place = self._next()
@@ -155,13 +155,11 @@ class _Scanner:
             return str(json.loads(token))
         except ValueError:
             self._stop(place, "an escape that JSON does not know", "write a backslash as \\\\")
-            raise
 
     def _next(self) -> tuple[str, str, Place]:
         match = _TOKEN.match(self.text, self._at)
         if match is None or match.lastgroup is None:  # only whitespace that JSON does not know
             self._stop(self._place(self._at), "a character that JSON does not know", "delete it")
-            raise AssertionError
         self._at = match.end()
         return match.lastgroup, match[match.lastgroup], self._place(match.start(match.lastgroup))
 
@@ -176,5 +174,5 @@ class _Scanner:
             return "a quotation mark is not closed"
         return f"{quoted(text)} cannot stand here"
 
-    def _stop(self, place: Place, wrong: str, expected: str = "") -> None:
+    def _stop(self, place: Place, wrong: str, expected: str = "") -> NoReturn:
         raise _StopError(Problem(place, wrong, expected))

@@ -120,10 +120,11 @@ class _Scanner:
             if frame.block:
                 self._key(frame)
             return None
-        if kind == "mark" and text == ("}" if frame.block else "]"):
-            frames.pop()
-            return Block(tuple(frame.entries), frame.place) if frame.block else Listing(tuple(frame.items), frame.place)
-        self._stop(place, self._told(kind, text), "',' or '}' is expected" if frame.block else "',' or ']' is expected")
+        close = "}" if frame.block else "]"
+        if kind != "mark" or text != close:
+            self._stop(place, self._told(kind, text), f"',' or '{close}' is expected")
+        frames.pop()
+        return Block(tuple(frame.entries), frame.place) if frame.block else Listing(tuple(frame.items), frame.place)
 
     def _key(self, frame: _Frame) -> None:
         kind, text, place = self._next()

@@ -10,6 +10,7 @@ the checks, and holds the verdicts against brute force. One table comes out, and
 from __future__ import annotations
 
 import argparse
+import re
 import tempfile
 import time
 from collections import Counter
@@ -23,16 +24,17 @@ import numpy as np
 from linverify.checks.judge import judge_study
 from linverify.checks.study import Study
 from linverify.core.case import Band, Case, CheckAsk, Options
-from linverify.core.delivered import AgreeAsk, DeliveredModel, LocalAsk
+from linverify.core.delivered import AgreeAsk, DeliveredModel, LocalAsk, ResponseAsk
 from linverify.core.drive import Drive
 from linverify.core.verdict import Status, Verdict
 from linverify.drives import pinned
 
 from .deliver import FAULTS, MATRICES, Delivery, Ground, handed, right
 from .hunt import Drives, Field, Worst, excursions
-from .nature import Matrices, equilibrium, held, slopes, without
-from .subjects import PLACE, TABLE, subject
+from .nature import Matrices, equilibrium, held, responses, slopes, without
+from .subjects import PLACE, TABLE, Subject, subject
 
+FREQUENCIES = 4000
 NEAR = 0.005  # of the limit: a truth nearer than this says nothing about the gate
 SLACK = 1.05  # bands are this much wider than the worst error of the right model, and a share of the motion more
 SHARES = (0.005, 0.02, 0.08)
@@ -75,12 +77,20 @@ class Answer:
 
 
 @dataclass(frozen=True)
+class Guess:
+    """What the gate takes for the cause."""
+
+    kind: str
+    text: str
+
+
+@dataclass(frozen=True)
 class Result:
-    """All checks of one case. cause: the guess of the gate, empty where it made none."""
+    """All checks of one case. cause: the guess of the gate, None where it made none."""
 
     ask: Ask
     answers: tuple[Answer, ...]
-    cause: str
+    cause: Guess | None
 
     @property
     def outcome(self) -> str:
@@ -162,10 +172,20 @@ def drawn(seed: int, faulty: bool, among: Sequence[str] = tuple(TABLE)) -> Ask:
     case = replace(
         case,
         spec=f"faults/{seed}{'f' if faulty else 'r'}.yaml",
-        local=LocalAsk(model, keep, AgreeAsk(entries=limit, place=PLACE)),
+        local=LocalAsk(
+            model, keep, AgreeAsk(entries=limit, response=_response(ground.subject, generator), place=PLACE)
+        ),
         checks=tuple(CheckAsk(check, PLACE) for check in checks),
     )
     return Ask(seed, kind, form, delivery, model, case, ground, field)
+
+
+def _response(one: Subject, generator: np.random.Generator) -> ResponseAsk | None:
+    """Asked for in half of the cases, from once a horizon to far below what a sampled model can say."""
+    if generator.random() < 0.5:
+        return None
+    within = float(generator.choice([0.01, 0.05, 0.2]))
+    return ResponseAsk(within, 1.0 / one.drives.horizon, 2.0 / one.drives.every, 0.02, PLACE)
 
 
 def _form_and_subject(kind: str, generator: np.random.Generator, among: Sequence[str]) -> tuple[str, str]:
@@ -229,6 +249,31 @@ def true_entries(ask: Ask) -> float:
     return worst / (ask.case.local.agree.entries or np.inf)
 
 
+def true_response(ask: Ask) -> float:
+    """Largest share of the limit on the response, over a dense grid that is made denser about its largest values."""
+    wanted = ask.case.local.agree.response
+    if wanted is None:
+        return 0.0
+    ours, theirs = ask.ground.right, by_name(ask.model, ask.ground.right)
+    u, y = (np.array([ask.case.nominal.get(name, 1.0) for name in names]) for names in (ours.inputs, ours.outputs))
+    grid = np.geomspace(wanted.low, wanted.high, FREQUENCIES)
+    right_, wrong = responses(ours, grid), responses(theirs, grid)
+    peak = np.abs(right_).max(axis=0)
+    # what is nothing but rounding beside all that these inputs do to all outputs is no difference
+    nothing = 1e-10 * (peak * u / y[:, np.newaxis]).max() * y[:, np.newaxis] / u
+
+    def share(right_: np.ndarray, wrong: np.ndarray) -> np.ndarray:
+        away = np.abs(wrong - right_)
+        least = np.maximum(np.abs(right_), np.maximum(wanted.floor * peak, 1e-300))
+        return np.where(away > nothing, away / least, 0.0).max(axis=(1, 2))
+
+    worst = share(right_, wrong)
+    for at in np.argsort(-worst)[:3]:
+        near = np.geomspace(grid[max(at - 1, 0)], grid[min(at + 1, len(grid) - 1)], FREQUENCIES // 4)
+        worst = np.append(worst, share(responses(ours, near), responses(theirs, near)))
+    return float(worst.max()) / wanted.within
+
+
 def true_point(ask: Ask) -> float:
     """Largest share of the limit on what is claimed of the operating point."""
     plant, here = ask.case.plant, ask.ground.here
@@ -290,7 +335,7 @@ def judged(ask: Ask) -> Result:
 
 
 def _agrees(ask: Ask) -> float:
-    return max(true_entries(ask), true_point(ask))
+    return max(true_entries(ask), true_point(ask), true_response(ask))
 
 
 def _follows(verdict: Verdict):
@@ -303,14 +348,20 @@ def _follows(verdict: Verdict):
     return share
 
 
-def guessed(verdict: Verdict) -> str:
-    """The guess at a cause, as the report holds it; empty for none."""
-    found = verdict.details.get("cause", "")
-    return str(found.get("kind", "")) if isinstance(found, dict) else str(found or "")
+def guessed(verdict: Verdict) -> Guess | None:
+    """The guess at a cause, as the report holds it."""
+    found = verdict.details.get("cause")
+    return Guess(str(found["kind"]), str(found["text"])) if found else None
 
 
 def run(seeds: Iterable[int], *, faulty: bool, among: Sequence[str] = tuple(TABLE)) -> list[Result]:
-    return [judged(drawn(seed, faulty, among)) for seed in seeds]
+    """Judge the cases of some seeds; a disagreement is told at once, since a long run is long."""
+    results = []
+    for seed in seeds:
+        results.append(judged(drawn(seed, faulty, among)))
+        for line in disagreements(results[-1:]):
+            print(line, flush=True)
+    return results
 
 
 # -- telling ---------------------------------------------------------------------------------------------------------
@@ -339,16 +390,24 @@ def causes(results: Sequence[Result]) -> str:
             a.check == "agrees" and a.status is Status.FAIL for a in result.answers
         ):
             continue
-        word = "none" if not result.cause else "right" if fits(result) else "wrong"
-        counts.setdefault(result.ask.kind, Counter())[word] += 1
+        counts.setdefault(result.ask.kind, Counter())[word_of(result)] += 1
     lines = [f"{'guess at a cause':18s}" + "".join(f"{word:>19s}" for word in ("right", "none", "wrong"))]
     for kind, found in counts.items():
         lines.append(f"{kind:18s}" + "".join(f"{found[word] or '.':>19}" for word in ("right", "none", "wrong")))
     return "\n".join(lines)
 
 
-def fits(result: Result) -> bool:
-    return result.cause == result.ask.kind
+def word_of(result: Result) -> str:
+    """Whether the guess names what was done: the kind of fault, the signals or entry, and the value."""
+    cause, made = result.cause, result.ask.delivery
+    if cause is None:
+        return "none"
+    if cause.kind not in made.kinds or not all(clue in cause.text for clue in made.clues):
+        return "wrong"
+    if np.isnan(made.value):
+        return "right"
+    numbers = [float(text) for text in re.findall(r"(?<![\w.])-?\d+(?:\.\d+)?(?:e[+-]?\d+)?", cause.text)]
+    return "right" if any(abs(number - made.value) <= 2e-3 * abs(made.value) for number in numbers) else "wrong"
 
 
 def disagreements(results: Sequence[Result]) -> list[str]:
@@ -372,11 +431,20 @@ def undecided(results: Sequence[Result]) -> list[str]:
     ]
 
 
+def misled(results: Sequence[Result]) -> list[str]:
+    """A line for every guess at a cause that is wrong."""
+    return [
+        f"wrong guess: {result.ask.told} ({', '.join(result.ask.delivery.clues)}): {result.cause.text}"
+        for result in results
+        if result.cause is not None and result.ask.kind != "none" and word_of(result) == "wrong"
+    ]
+
+
 def report(results: Sequence[Result], *, full: bool = False) -> str:
     """Tables and lines, ready to be printed."""
     checks = dict.fromkeys(answer.check for result in results for answer in result.answers)
     parts = [table(results), *(table(results, check) for check in checks), causes(results)]
-    lines = disagreements(results) + (undecided(results) if full else [])
+    lines = disagreements(results) + (misled(results) + undecided(results) if full else [])
     return "\n\n".join(parts) + "\n\n" + "\n".join(lines)
 
 

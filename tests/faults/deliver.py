@@ -40,6 +40,9 @@ class Delivery:
     model: Matrices
     x0: Mapping[str, float]
     u0: Mapping[str, float]
+    kinds: tuple[str, ...] = ()  # kinds of guesses at the cause that are right
+    clues: tuple[str, ...] = ()  # what a right guess names
+    value: float = np.nan  # and the number that it gives
     plant: Plant | None = None  # the plant itself, where the fault is there
 
 
@@ -53,8 +56,17 @@ def claimed(ground: Ground, here: Here) -> tuple[dict[str, float], dict[str, flo
     return x0, {name: float(v) for name, v in zip(plant.inputs, here.u, strict=True)}
 
 
-def _with(ground: Ground, cause: str, size: str, model: Matrices, here: Here | None = None) -> Delivery:
-    return Delivery(cause, size, model, *claimed(ground, here or ground.here))
+def _with(
+    ground: Ground, cause: str, size: str, model: Matrices, here: Here | None = None, kinds: str = "", clues: str = ""
+) -> Delivery:
+    """kinds, clues: words with a bar between them."""
+    told = (tuple(word for word in text.split("|") if word) for text in (kinds, clues))
+    return Delivery(cause, size, model, *claimed(ground, here or ground.here), *told)
+
+
+def _named(model: Matrices, name: str, i: int, j: int) -> str:
+    rows, columns = (model.states if name in "AB" else model.outputs), (model.states if name in "AC" else model.inputs)
+    return f"{name}[{rows[i]}, {columns[j]}]"
 
 
 def _entry(ground: Ground, generator: np.random.Generator) -> tuple[str, int, int]:
@@ -87,7 +99,8 @@ def scaled(ground: Ground, generator: np.random.Generator) -> Delivery:
     def change(block: Matrix) -> None:
         block[i, j] = step + (block[i, j] - step) * (factor if generator.random() < 0.5 else 1.0 / factor)
 
-    return _with(ground, "entry scaled", f"{factor:g}", _put(ground.right, name, change))
+    told = _named(ground.right, name, i, j)
+    return _with(ground, "entry scaled", f"{factor:g}", _put(ground.right, name, change), kinds="entry", clues=told)
 
 
 def sign(ground: Ground, generator: np.random.Generator) -> Delivery:
@@ -96,7 +109,8 @@ def sign(ground: Ground, generator: np.random.Generator) -> Delivery:
     def change(block: Matrix) -> None:
         block[i, j] = -block[i, j]
 
-    return _with(ground, "sign", name, _put(ground.right, name, change))
+    told = _named(ground.right, name, i, j)
+    return _with(ground, "sign", name, _put(ground.right, name, change), kinds="sign", clues=told)
 
 
 def swapped(ground: Ground, generator: np.random.Generator) -> Delivery:
@@ -105,11 +119,13 @@ def swapped(ground: Ground, generator: np.random.Generator) -> Delivery:
     names = list(getattr(ground.right, kind))
     i, j = generator.choice(len(names), size=2, replace=False)
     names[i], names[j] = names[j], names[i]
-    return _with(ground, "names swapped", kind, replace(ground.right, **{kind: tuple(names)}))
+    model, told = replace(ground.right, **{kind: tuple(names)}), f"{names[i]}|{names[j]}"
+    return _with(ground, "names swapped", kind, model, kinds="exchange", clues=told)
 
 
 def transposed(ground: Ground, generator: np.random.Generator) -> Delivery:
-    return _with(ground, "transpose", "A", replace(ground.right, A=ground.right.A.T.copy()))
+    model = replace(ground.right, A=ground.right.A.T.copy())
+    return _with(ground, "transpose", "A", model, kinds="transpose", clues="A")
 
 
 def unit(ground: Ground, generator: np.random.Generator) -> Delivery:
@@ -118,32 +134,35 @@ def unit(ground: Ground, generator: np.random.Generator) -> Delivery:
     known = [name for name in angles if name in (*model.states, *model.inputs, *model.outputs)]
     if not known or generator.random() < 0.25:
         factor = float(generator.choice([60.0, 1.0 / 60.0]))
-        return _with(ground, "unit", "time", replace(model, A=model.A * factor, B=model.B * factor))
+        model = replace(model, A=model.A * factor, B=model.B * factor)
+        return _with(ground, "unit", "time", model, kinds="time")
     name, degrees = known[int(generator.integers(len(known)))], 180.0 / np.pi
     if name in model.inputs:
         j = model.inputs.index(name)
         B, D = model.B.copy(), model.D.copy()
         B[:, j] /= degrees
         D[:, j] /= degrees
-        return _with(ground, "unit", "degrees", replace(model, B=B, D=D))
+        return _with(ground, "unit", "degrees", replace(model, B=B, D=D), kinds="unit", clues=f"{name}|deg")
     if name in model.outputs and (name not in model.states or generator.random() < 0.5):
         i = model.outputs.index(name)
         C, D = model.C.copy(), model.D.copy()
         C[i] *= degrees
         D[i] *= degrees
-        return _with(ground, "unit", "degrees", replace(model, C=C, D=D))
+        return _with(ground, "unit", "degrees", replace(model, C=C, D=D), kinds="unit", clues=f"{name}|deg")
     i = model.states.index(name)
     A, B, C = model.A.copy(), model.B.copy(), model.C.copy()
     A[i], B[i] = A[i] * degrees, B[i] * degrees
     A[:, i], C[:, i] = A[:, i] / degrees, C[:, i] / degrees
-    return _with(ground, "unit", "degrees", replace(model, A=A, B=B, C=C))
+    return _with(ground, "unit", "degrees", replace(model, A=A, B=B, C=C), kinds="unit", clues=f"{name}|deg")
 
 
 def neighbour(ground: Ground, generator: np.random.Generator) -> Delivery:
     case = ground.subject.case
     there = equilibrium(case, case.parameters, ground.here, ground.subject.row.neighbour)
     told = there if generator.random() < 0.5 else ground.here
-    return _with(ground, "another point", "", _alike(ground, slopes(case, case.parameters, there)), told)
+    model = _alike(ground, slopes(case, case.parameters, there))
+    (moved,) = ground.subject.row.neighbour
+    return _with(ground, "another point", "", model, told, kinds="trim|point", clues=moved)
 
 
 def stale(ground: Ground, generator: np.random.Generator) -> Delivery:
@@ -154,7 +173,9 @@ def stale(ground: Ground, generator: np.random.Generator) -> Delivery:
     old = {**case.parameters, name: case.parameters[name] * (1.0 + share)}
     there = equilibrium(case, old, ground.here)
     told = there if generator.random() < 0.5 else ground.here
-    return _with(ground, "stale parameter", f"{name} {share:+g}", _alike(ground, slopes(case, old, there)), told)
+    model = _alike(ground, slopes(case, old, there))
+    made = _with(ground, "stale parameter", f"{name} {share:+g}", model, told, kinds="parameter", clues=name)
+    return replace(made, value=old[name])
 
 
 def mistrimmed(ground: Ground, generator: np.random.Generator) -> Delivery:
@@ -169,9 +190,17 @@ def mistrimmed(ground: Ground, generator: np.random.Generator) -> Delivery:
 
 
 def missing(ground: Ground, generator: np.random.Generator) -> Delivery:
-    """Reduced the other way than the spec says: what is left out frozen instead of settled, or settled instead."""
+    """Reduced the other way than the spec says: what is left out frozen instead of settled, or settled instead.
+
+    What cannot settle (it integrates) gives another slip: a state that was kept is frozen as well.
+    """
     row = ground.subject.row
     other = "freeze" if row.others == "settle" else "settle"
+    out = [ground.whole.states.index(name) for name in ground.whole.states if name not in row.keep]
+    if other == "settle" and np.linalg.matrix_rank(ground.whole.A[np.ix_(out, out)]) < len(out):
+        A = ground.right.A.copy()
+        A[:, int(generator.integers(len(A)))] = 0.0
+        return _with(ground, "reduced wrongly", "one frozen too", replace(ground.right, A=A))
     return _with(ground, "reduced wrongly", other, without(ground.whole, row.keep, other))
 
 
@@ -179,7 +208,8 @@ def mistimed(ground: Ground, generator: np.random.Generator) -> Delivery:
     """Sampled with another step than it says, or by the forward difference instead of the exponential."""
     step = ground.right.step or 1.0
     factor = float(generator.choice([0.5, 0.9, 0.99, 1.01, 1.1, 2.0]))
-    return _with(ground, "sample time", f"{factor:g}", held(ground.whole, step * factor, step))
+    model = held(ground.whole, step * factor, step)
+    return replace(_with(ground, "sample time", f"{factor:g}", model, kinds="sampling"), value=step * factor)
 
 
 def _alike(ground: Ground, whole: Matrices) -> Matrices:

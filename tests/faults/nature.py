@@ -202,3 +202,10 @@ def without(model: Matrices, keep: tuple[str, ...], others: str) -> Matrices:
         A, B = A - into @ model.A[np.ix_(outside, inside)], B - into @ model.B[outside]
         C, D = C - read @ model.A[np.ix_(outside, inside)], D - read @ model.B[outside]
     return Matrices(A, B, C, D, tuple(model.states[row] for row in inside), model.inputs, model.outputs)
+
+
+def responses(model: Matrices, frequencies: Matrix) -> Matrix:
+    """C (s - A)^-1 B + D at angular frequencies, (F, k, m); s on the unit circle for a sampled model."""
+    s = 1j * frequencies if model.step is None else np.exp(1j * frequencies * model.step)
+    inner = s[:, np.newaxis, np.newaxis] * np.eye(len(model.A)) - model.A
+    return model.C @ np.linalg.solve(inner, np.broadcast_to(model.B, (len(s), *model.B.shape))) + model.D

@@ -9,6 +9,7 @@ from collections.abc import Mapping, Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..core.delivered import DeliveredModel
 from ..core.model import Array, LocalModel, frozen_array
@@ -70,12 +71,13 @@ def paired(delivered: DeliveredModel, reference: LocalModel, nominal: Mapping[st
         ours = sampled(ours, delivered.step, delivered.course)
     states = _state_order(delivered, reference)
     rows, columns = _order(delivered.outputs, outputs), _order(delivered.inputs, inputs)
-    blocks = {
-        "A": delivered.A[np.ix_(states, states)],
-        "B": delivered.B[np.ix_(states, columns)],
-        "C": delivered.C[np.ix_(rows, states)],
-        "D": delivered.D[np.ix_(rows, columns)],
+    places = {
+        "A": np.ix_(states, states),
+        "B": np.ix_(states, columns),
+        "C": np.ix_(rows, states),
+        "D": np.ix_(rows, columns),
     }
+    blocks = {name: getattr(delivered, name)[place] for name, place in places.items()}
     anonymous = delivered.states is None
     theirs = LocalModel(
         A=frozen_array(blocks["A"]),
@@ -90,9 +92,18 @@ def paired(delivered: DeliveredModel, reference: LocalModel, nominal: Mapping[st
         anonymous=anonymous,
         course=delivered.course,
     )
-    rounding = {name: printed_to(block, delivered.digits) for name, block in blocks.items()}
+    rounding = {name: _rounding(delivered, name, place) for name, place in places.items()}
     sizes = [_sizes(signals, nominal) for signals in (ours.states, ours.inputs, ours.outputs)]
     return Pair(theirs, ours, rounding, *sizes)
+
+
+def _rounding(delivered: DeliveredModel, name: str, place: tuple[NDArray[np.intp], ...]) -> Array:
+    """What the file says of its printed digits; of a model that came from no file, what `digits` says."""
+    entries = getattr(delivered, name)[place]
+    if not delivered.rounding:
+        return printed_to(entries, delivered.digits)
+    exact = printed_to(entries, EXACT)
+    return exact if name not in delivered.rounding else np.asarray(delivered.rounding[name][place] + exact)
 
 
 def printed_to(entries: Array, digits: int) -> Array:

@@ -15,7 +15,7 @@ from .frequency import Complex, respond_within
 from .pair import MATRICES, Pair
 from .similarity import frequencies
 
-NEARLY = 0.01
+NEARLY, NEAR = 0.01, 0.005  # of the largest gap, and of a row's largest term
 FLOOR = 1e-6  # of a row's largest term: trims and slopes found twice differ by less, faults that matter by more
 
 
@@ -42,9 +42,9 @@ class Target:
         return not self.unexplained(model).any()
 
     def nearly_explained(self, model: LocalModel) -> bool:
-        """True where `model` leaves less than a hundredth of the largest gap that the reference leaves, everywhere."""
+        """True where `model` is near everywhere, and nearer than a hundredth of the reference's largest gap."""
         left, found = np.abs(self.gap(model)), np.abs(self.gap(self.pair.reference))
-        return bool(left.max(initial=0.0) <= NEARLY * found.max(initial=0.0))
+        return bool(left.max(initial=0.0) <= min(NEAR, NEARLY * found.max(initial=0.0)))
 
     def unexplained(self, model: LocalModel) -> Array:
         """Which numbers are off, (q,)."""

@@ -119,6 +119,25 @@ def test_anonymous_states_have_no_entries_to_compare():
     assert found.reason == "the delivered states have no names, so entries cannot be compared; ask for `response`"
 
 
+def test_what_the_file_says_of_its_printed_digits_goes_with_its_names():
+    right = changed(delivered(), "A", {(1, 0): -2.76})
+    order = [2, 0, 1]
+    rounding = np.zeros((3, 3))
+    rounding[1, 0] = 0.005
+    turned = replace(
+        right,
+        A=right.A[np.ix_(order, order)],
+        B=right.B[order],
+        C=right.C[:, order],
+        states=tuple(right.states[i] for i in order),
+        rounding={"A": rounding[np.ix_(order, order)]},
+    )
+    found = verdict(turned, replace(ENTRIES, entries=1e-3))
+    assert found.status is Status.FAIL
+    assert found.reason.startswith("A[speed, place]: delivered -2.76, plant -2.75625 +- ")
+    assert found.reason.endswith("1/s^2 (within the printed digits)")
+
+
 def test_an_absent_output_is_no_difference():
     right = delivered()
     assert verdict(replace(right, C=right.C[:1], D=right.D[:1], outputs=("place",)), ENTRIES).status is Status.PASS

@@ -235,3 +235,10 @@ def test_anonymous_states_are_explained_by_what_outputs_do():
         found.details["cause"]["text"]
         == "a stale parameter: mass = 44000 kg explains all of it; the plant has 41000 kg"
     )
+
+
+def test_a_sampled_stiff_model_is_not_taken_for_one_in_milliseconds():
+    model = _right("converter")
+    step = 0.1 / np.abs(np.linalg.eigvals(model.A)).max()
+    text = _told("converter", sampled(model, step, "held"), 4, step=None)
+    assert text == "" or text.startswith("the matrices are those of a discrete model with a sample time of ")

@@ -11,7 +11,7 @@ from ..core.model import Array, LocalModel
 from ..core.outcome import Outcome
 from ..core.units import convert
 from ..core.verdict import Figure, Status, Verdict
-from ..numerics.linearize import Corner, Linearization, told_corner
+from ..numerics.linearize import Corner, Linearization, row_names, row_units, told_corner
 from ..numerics.poles import eigenvalues
 from .study import Study
 
@@ -55,6 +55,7 @@ def _figures(study: Study, found: Linearization, status: Status) -> tuple[Figure
             limit=100 * study.case.slopes.slope_gap,
             unit="%",
             error=100 * found.largest_error,
+            origin=study.case.origin("differentiable.slope_gap"),
             status=status if found.outcome is not Outcome.WRONG_JACOBIAN else Status.PASS,
         ),
     )
@@ -78,10 +79,11 @@ def _notes(study: Study, found: Linearization) -> tuple[str, ...]:
 
 
 def _details(study: Study, found: Linearization) -> dict[str, Any]:
+    units = dict(zip(row_names(study.bound), row_units(study.bound), strict=True))
     details: dict[str, Any] = {
         "jacobian_source": found.jacobian_source,
-        "noise": {name: float(value) for name, value in (found.noise or {}).items()},
-        "corners": [_corner(corner) for corner in found.gaps],
+        "noise": {name: _with_unit(float(value), units.get(name, "")) for name, value in (found.noise or {}).items()},
+        "corners": [_corner(study, corner) for corner in found.gaps],
         "wrong_entries": [mismatch.told() for mismatch in found.cross_check],
     }
     if found.model is not None and _usable(found.model):
@@ -94,15 +96,20 @@ def _usable(model: LocalModel) -> bool:
     return all(np.isfinite(block).all() for block in (model.A, model.B, model.C, model.D, *model.errors.values()))
 
 
-def _corner(corner: Corner) -> dict[str, Any]:
+def _with_unit(value: float, unit: str) -> dict[str, Any]:
+    return {"value": value, "unit": unit}
+
+
+def _corner(study: Study, corner: Corner) -> dict[str, Any]:
+    column = study.case.shown_as(corner.column)
     return {
         "entry": f"d {corner.row} / d {corner.column}",
         "kind": corner.kind,
-        "distance": corner.distance,
-        "at": corner.place,
-        "gap": corner.gap,
-        "below": corner.left,
-        "above": corner.right,
+        "distance": _with_unit(corner.distance, "nominal sizes"),
+        "at": _with_unit(column.value(corner.place), column.unit),
+        "gap": _with_unit(100 * corner.gap, "%"),
+        "below": _with_unit(corner.left, corner.slope_unit),
+        "above": _with_unit(corner.right, corner.slope_unit),
         "on_point": corner.near,
     }
 

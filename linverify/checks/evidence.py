@@ -28,7 +28,8 @@ def key_of(comparison: Comparison, drive: Drive) -> str:
 
 def text_of(comparison: Comparison, drive: Drive) -> str:
     """The drive in one readable line."""
-    return worded(drive, comparison.units, comparison.case.plant.time_unit)
+    case, drives = comparison.case, comparison.drives
+    return worded(drive, case.shown_moves(drives), case.shown_time(drives))
 
 
 def saved(
@@ -82,6 +83,7 @@ def _figure(figure: Figure) -> dict[str, Any]:
         "error": _number(figure.error),
         "unit": figure.unit,
         "when": _number(figure.when),
+        "time_unit": figure.time_unit,
     }
 
 

@@ -14,13 +14,14 @@ from typing import Any
 import numpy as np
 
 from ..core.case import CheckAsk
+from ..core.shown import number, with_unit
 from ..core.verdict import Evidence, Figure, Sense, Status, Verdict, merged
 from . import fitting
 from .campaign import KINDS, Campaign, Pins, campaign, read_pins
 from .comparison import Comparison, comparison
 from .confirm import Word, random_breaks, simplest, words
 from .evidence import saved, text_of
-from .figures import figure_of
+from .figures import break_told, figure_of, name_of
 from .sight import Sight, sees_motion, sight
 from .split import sentences, splits
 from .statistics import statement
@@ -50,6 +51,8 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     if study.options.profile == "quick":
         found.notes.append(QUICK_NOTE)
     found.notes += compared.limits.told
+    if study.bound.why_single:
+        found.notes.append(f"the plant is called one column at a time, which is slow: {study.bound.why_single}")
     if reason := _nothing_to_do(compared):
         found.open.append(reason)
         return _verdict(study, ask, found, [], {})
@@ -133,13 +136,17 @@ def _completion(compared: Comparison, run: Campaign, found: _Findings) -> None:
     if not columns:
         return
     share = float(np.mean(run.figures.completed[columns]))
-    if share < compared.case.exits.complete:
-        told = f"{100.0 * share:.3g} % of the random drives ran their whole horizon, "
-        told += f"{100.0 * compared.case.exits.complete:.3g} % are asked for"
+    asked = compared.case.exits.complete
+    if share < asked:
+        told = f"{number(100.0 * share, 3)} % of the random drives ran their whole horizon, "
+        told += f"{number(100.0 * asked, 3)} % are asked for"
         # drives that could not be followed did not complete either, and say nothing about the envelope
         stopped = sum(1 for column in columns if run.wrong[column]) / len(columns)
-        blame = share + stopped < compared.case.exits.complete
+        blame = share + stopped < asked
         found.open.append(told + (": the drives are too large for this envelope" if blame else ""))
+        what, origin = "share of random drives that ran their whole horizon", compared.case.origin("exits.complete")
+        share, asked = 100.0 * share, 100.0 * asked
+        found.figures.append(Figure(what, "", share, asked, "%", Sense.LOWER, origin=origin, status=Status.UNDECIDED))
     if not compared.exits and (missed := int(np.count_nonzero(run.figures.share[-1] > 1.0))):
         found.notes.append(f"{missed} drives left the envelope where the local model was still well inside")
 
@@ -167,19 +174,22 @@ def _look(compared: Comparison, run: Campaign, found: _Findings) -> Sight:
             "horizons or tighter bands are needed"
         )
     seen = sight(compared, run.drives, run.still, run.fidelity, noise)
-    limits = compared.drives
+    drives, delay = compared.drives, compared.drives.shown_delay or compared.case.shown_time()
+    late = None if drives.discerns_delay is None else delay.size(drives.discerns_delay)
+    gain = None if drives.discerns_gain is None else 100.0 * drives.discerns_gain
     asked = (
-        ("smallest gain error that these drives catch", seen.gain, limits.discerns_gain, ""),
-        ("smallest delay that these drives catch", seen.delay, limits.discerns_delay, compared.case.plant.time_unit),
+        ("smallest gain error that these drives catch", 100.0 * seen.gain, gain, "%"),
+        ("smallest delay that these drives catch", delay.size(seen.delay), late, delay.unit),
     )
     for what, value, limit, unit in asked:
         if limit is not None:
             status = Status.PASS if value <= limit else Status.UNDECIDED
             found.figures.append(
-                Figure(what, "", value, limit, unit, Sense.UPPER, origin=f"{limits.place} discerns", status=status)
+                Figure(what, "", value, limit, unit, Sense.UPPER, origin=f"{drives.place} discerns", status=status)
             )
             if status is Status.UNDECIDED:
-                found.open.append(f"{what} is {value:.4g} {unit}".rstrip() + f", at most {limit:.4g} is asked for")
+                value_told, limit_told = (with_unit(number(each, 4), unit) for each in (value, limit))
+                found.open.append(f"{what} is {value_told}, at most {limit_told} is asked for")
     for name, (gain, _) in seen.signals.items():
         if np.isinf(gain):
             found.notes.append(f"no gain error of {name} alone would break its bands on these drives")
@@ -189,8 +199,7 @@ def _look(compared: Comparison, run: Campaign, found: _Findings) -> Sight:
 def _row_name(compared: Comparison, row: int) -> str:
     if row >= len(compared.bands):
         return "unpredicted exit"
-    band = compared.bands[row]
-    return f"{band.signal} {band.kind}"
+    return name_of(compared.bands[row])
 
 
 def _details(study: Study, compared: Comparison, run: Campaign, pins: Pins, seen: Sight | None) -> dict[str, Any]:
@@ -204,22 +213,34 @@ def _details(study: Study, compared: Comparison, run: Campaign, pins: Pins, seen
             "method": run.method,
             "nodes": run.fidelity.nodes,
             "tolerance": run.fidelity.tolerance,
-            "error_90": [float(value) for value in run.noise.at(run.fidelity)[: len(compared.bands)]],
+            "error_90": _errors(compared, run),
         },
         "amplitudes": list(compared.limits.told),
         "seed": study.options.seed,
         "profile": study.options.profile,
         "pinned_elsewhere": list(pins.told),
     }
+    time = compared.case.shown_time(compared.drives)
     if seen is not None:
         details["smallest_visible"] = {
             "gain": seen.gain,
-            "delay": seen.delay,
-            "signals": {name: {"gain": gain, "delay": delay} for name, (gain, delay) in seen.signals.items()},
+            "delay": time.size(seen.delay),
+            "unit_of_delay": time.unit,
+            "signals": {name: {"gain": gain, "delay": time.size(late)} for name, (gain, late) in seen.signals.items()},
         }
     if columns:
         details["completed"] = float(np.mean(run.figures.completed[columns]))
     return details
+
+
+def _errors(compared: Comparison, run: Campaign) -> dict[str, Any]:
+    """90th percentile of our own error of each band, in its unit (of a share: in the unit of its signal)."""
+    errors = run.noise.at(run.fidelity)
+    told = {}
+    for row, band in enumerate(compared.bands):
+        shown = compared.case.shown_band(band)
+        told[name_of(band)] = {"value": shown.size(float(errors[row])), "unit": shown.unit}
+    return told
 
 
 def _verdict(
@@ -231,7 +252,7 @@ def _verdict(
     reason = found.open[0] if status is Status.UNDECIDED else ""
     if status is Status.FAIL:
         broken = [figure for figure in found.figures if figure.status is Status.FAIL]
-        reason = "; ".join(f"{figure.what} of {figure.signal} breaks its limit" for figure in broken)
+        reason = "; ".join(break_told(figure) for figure in broken)
         notes += [f"also undecided: {line}" for line in found.open]
     else:
         notes += [f"also: {line}" for line in found.open[1:]]

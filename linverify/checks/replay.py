@@ -17,7 +17,7 @@ from .campaign import noise_of
 from .comparison import comparison
 from .confirm import Word, confirmed
 from .evidence import key_of, text_of
-from .figures import figure_of
+from .figures import break_told, figure_of
 from .judge import blank
 from .study import Study, study_of
 
@@ -85,7 +85,7 @@ def _told(
     reason = ""
     if status is Status.FAIL:
         broken = [figure for figure in figures if figure.status is Status.FAIL]
-        reason = "; ".join(f"{figure.what} of {figure.signal} breaks its limit" for figure in broken)
+        reason = "; ".join(break_told(figure) for figure in broken)
     elif status is Status.UNDECIDED:
         reason = troubles[0] if troubles else "the figure is nearer to its limit than our own error"
     return Verdict(

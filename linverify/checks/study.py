@@ -150,14 +150,18 @@ class Study:
     @cached_property
     def _trim(self) -> TrimResult:
         case = self.case
-        return trim(self.bound, case.trim, case.envelope, case.nominal, case.time)
+        return trim(
+            self.bound, case.trim, case.envelope, case.nominal, case.time,
+            shown=case.shown, shown_limits=case.shown_limits,
+        )  # fmt: skip
 
     @cached_property
     def _linearization(self) -> Linearization:
         case = self.case
         return linearize(
-            self.bound, self.point(), case.nominal, case.envelope, case.slopes, accuracy=case.trim.accuracy
-        )
+            self.bound, self.point(), case.nominal, case.envelope, case.slopes, accuracy=case.trim.accuracy,
+            shown=case.shown,
+        )  # fmt: skip
 
     def _probes(self) -> tuple[Array, Array]:
         """Points over the envelope and, on open sides, around the held values; the same every time."""

@@ -12,13 +12,13 @@ equilibrium that other checks could work at. For those other checks every one of
 
 from __future__ import annotations
 
-from collections.abc import Mapping
 from typing import Any
 
-from ..core.case import CheckAsk, Expected
+from ..core.case import Case, CheckAsk, Expected
 from ..core.model import OperatingPoint
 from ..core.outcome import Outcome
-from ..core.signals import Signals
+from ..core.shown import Shown, number, with_unit
+from ..core.units import per_time
 from ..core.verdict import Figure, Status, Verdict, merged
 from ..numerics.trim import TrimResult
 from .study import Study
@@ -52,12 +52,14 @@ def _judged(study: Study, result: TrimResult) -> tuple[Status, str, tuple[Figure
 
 
 def _residual(study: Study, result: TrimResult, status: Status) -> Figure:
+    told = study.case.trim.accuracy_told
+    place = study.case.origin("trims.accuracy")
     return Figure(
         what="scaled residual",
         signal=result.worst_equation,
         worst=result.worst_residual,
         limit=study.case.trim.accuracy,
-        origin="accuracy of the trim",
+        origin=", ".join(part for part in ("accuracy of the trim", told, place) if part),
         status=status,
     )
 
@@ -77,7 +79,7 @@ def _expectations(study: Study, result: TrimResult, point: OperatingPoint) -> li
 
 
 def _expectation(study: Study, name: str, expected: Expected, value: float, error: float) -> Figure:
-    away = abs(value - expected.value)
+    away, shown = abs(value - expected.value), _shown(study, name, expected)
     status = Status.UNDECIDED
     if away + error <= expected.tolerance:
         status = Status.PASS
@@ -86,10 +88,10 @@ def _expectation(study: Study, name: str, expected: Expected, value: float, erro
     return Figure(
         what="distance from the expected value",
         signal=name,
-        worst=away,
-        limit=expected.tolerance,
-        unit=study.case.plant.unit(name),
-        error=error,
+        worst=shown.size(away),
+        limit=shown.size(expected.tolerance),
+        unit=shown.unit,
+        error=shown.size(error),
         origin=str(expected.place),
         status=status,
     )
@@ -101,17 +103,20 @@ def _reason(study: Study, point: OperatingPoint, figures: tuple[Figure, ...]) ->
         if figure.status is Status.PASS:
             continue
         expected = study.case.trim.expect[figure.signal]
-        value, unit = point.value(figure.signal), figure.unit
-        told = f"{figure.signal} trims at {_told(value, unit)}, {_told(figure.worst, unit)} from the expected"
-        told += f" {_told(expected.value, unit)}; {_told(expected.tolerance, unit)} are allowed"
+        shown = _shown(study, figure.signal, expected)
+        told = f"{figure.signal} trims at {shown.told(point.value(figure.signal))}, "
+        told += f"{with_unit(number(figure.worst), figure.unit)} from the expected {shown.told(expected.value)}; "
+        told += f"{shown.told_size(expected.tolerance)} are allowed"
         if figure.status is Status.UNDECIDED:
-            told += f", and the trimmed value is known only to within {_told(figure.error, unit)}"
+            known = with_unit(number(figure.error), figure.unit)
+            told += f", and the trimmed value is known only to within {known}"
         words.append(told)
     return "; ".join(words)
 
 
-def _told(value: float, unit: str) -> str:
-    return f"{value:.6g} {'' if unit == '1' else unit}".strip()
+def _shown(study: Study, name: str, expected: Expected) -> Shown:
+    """The unit that the expected value is written in."""
+    return expected.shown or Shown(study.case.plant.unit(name))
 
 
 def _failed_calls(result: TrimResult) -> tuple[str, ...]:
@@ -123,44 +128,65 @@ def _failed_calls(result: TrimResult) -> tuple[str, ...]:
 
 
 def _details(study: Study, result: TrimResult) -> dict[str, Any]:
-    """Plain values for the record; what does not apply is left out."""
-    names = study.case.trim.find
+    """Plain values for the record, a unit beside each; what does not apply is left out."""
+    case, names = study.case, study.case.trim.find
     details: dict[str, Any] = {
         "outcome": result.outcome.name.lower().replace("_", " "),
-        "accuracy": study.case.trim.accuracy,
+        "accuracy": _with_unit(case.trim.accuracy, _scaled_unit(study)),
+        "accuracy_asked": case.trim.accuracy_told,
         "starts": result.starts,
         "evaluations": result.evaluations,
         "failed_calls": result.failed_calls,
-        "residuals": _plain(result.residuals),
+        "residuals": {name: _with_unit(value, _scaled_unit(study, name)) for name, value in result.residuals.items()},
         "active_bounds": list(result.active_bounds),
-        "other_equilibria": [{name: other.value(name) for name in names} for other in result.others],
+        "other_equilibria": [{name: _value(case, name, one.value(name)) for name in names} for one in result.others],
     }
     if result.point is not None:
-        details |= _values(result.point)
+        details |= _values(case, result.point)
         details["drift"] = {
-            name: float(rate) for name, rate in zip(result.point.states.names, result.point.drift, strict=True) if rate
+            name: _with_unit(float(rate), _rate_unit(study, name))
+            for name, rate in zip(result.point.states.names, result.point.drift, strict=True)
+            if rate
         }
-        details["errors"] = _plain(result.errors)
+        details["errors"] = {
+            name: _with_unit(case.shown_as(name).size(error), case.shown_as(name).unit)
+            for name, error in result.errors.items()
+        }
     if result.closest is not None:
-        details["closest"] = {name: result.closest.value(name) for name in names}
+        details["closest"] = {name: _value(case, name, result.closest.value(name)) for name in names}
     if result.nearest_holds:
-        details["nearest_holds"] = _plain(result.nearest_holds)
-    return {word: value for word, value in details.items() if value not in ([], {})}
+        details["nearest_holds"] = {name: _value(case, name, value) for name, value in result.nearest_holds.items()}
+    return {word: value for word, value in details.items() if value not in ([], {}, "")}
 
 
-def _values(point: OperatingPoint) -> dict[str, Any]:
+def _values(case: Case, point: OperatingPoint) -> dict[str, Any]:
+    # names shared by a state and an output mean one value, so looking up by name is safe
+    kinds = {"states": point.states, "inputs": point.inputs, "outputs": point.outputs}
     return {
-        "states": _with_units(point.states, point),
-        "inputs": _with_units(point.inputs, point),
-        "outputs": _with_units(point.outputs, point),
+        kind: {name: _value(case, name, point.value(name)) for name in signals.names} for kind, signals in kinds.items()
     }
 
 
-def _with_units(signals: Signals, point: OperatingPoint) -> dict[str, Any]:
-    # names shared by a state and an output mean one value, so looking up by name is safe
-    pairs = zip(signals.names, signals.units, strict=True)
-    return {name: {"value": point.value(name), "unit": unit} for name, unit in pairs}
+def _value(case: Case, name: str, value: float) -> dict[str, Any]:
+    """A value of a signal as the spec writes it, and in the plant's unit where that is another."""
+    shown, own = case.shown_as(name), case.plant.unit(name)
+    told = _with_unit(shown.value(value), shown.unit)
+    return told if shown == Shown(own) else {**told, "in_plant": _with_unit(value, own)}
 
 
-def _plain(values: Mapping[str, float]) -> dict[str, float]:
-    return {name: float(value) for name, value in values.items()}
+def _with_unit(value: float, unit: str) -> dict[str, Any]:
+    return {"value": float(value), "unit": unit}
+
+
+def _scaled_unit(study: Study, name: str = "") -> str:
+    """What a scaled residual counts in: of a rate nominal sizes per time, of a held output nominal sizes."""
+    plant = study.case.plant
+    if name and name not in plant.states:
+        return "nominal sizes"
+    return "nominal sizes a step" if plant.step is not None else f"nominal sizes per {plant.time_unit}"
+
+
+def _rate_unit(study: Study, name: str) -> str:
+    plant = study.case.plant
+    unit = plant.unit(name)
+    return f"{unit} a step" if plant.step is not None else per_time(unit, plant.time_unit)

@@ -14,19 +14,25 @@ import numpy as np
 from .errors import PlantError
 from .model import Array
 from .plant import PlantFunction
+from .shown import number, with_unit
 from .signals import Signals
 
 Told = Callable[[], str]  # put into words only where a call failed
 
 
-def told_call(t: float, x: Array, u: Array, states: Signals, inputs: Signals) -> str:
-    """The arguments of one call in words: `t = 0, speed = 12.3 m/s, fore_flap = 0.01 rad`."""
-    words = [f"t = {t:.9g}"]
+def told_instant(t: float, time_unit: str, step: float | None) -> str:
+    """The time of a call in words: `t = 0.3 s`, or `step 158` of a difference equation, which counts steps."""
+    return f"t = {number(t, 9)} {time_unit}" if step is None else f"step {number(t, 9)}"
+
+
+def told_call(instant: str, x: Array, u: Array, states: Signals, inputs: Signals) -> str:
+    """The arguments of one call in words: `t = 0 s, speed = 12.3 m/s`; instant: the first part, by `told_instant`."""
+    words = [instant]
     for signals, values in ((states, x), (inputs, u)):
         if values.ndim == 2:
-            return f"t = {t:.9g} and {values.shape[1]} columns of states and inputs"
+            return f"{instant} and {values.shape[1]} columns of states and inputs"
         pairs = zip(signals.names, values, signals.units, strict=True)
-        words += [f"{name} = {float(value):.9g} {unit}".rstrip() for name, value, unit in pairs]
+        words += [f"{name} = {with_unit(number(float(value), 9), unit)}" for name, value, unit in pairs]
     return ", ".join(words)
 
 

@@ -13,7 +13,7 @@ from types import MappingProxyType
 import numpy as np
 from numpy.typing import NDArray
 
-from .border import accepted, called, read_only, require_finite, told_call
+from .border import accepted, called, read_only, require_finite, told_call, told_instant
 from .errors import PlantError
 from .model import Array
 from .plant import Plant, PlantFunction
@@ -100,7 +100,12 @@ class BoundPlant:
         return np.array(x, dtype=np.float64)[[self.states.index(name) for name in self.outputs.names]]
 
     def _told(self, t: float, x: Array, u: Array) -> Callable[[], str]:
-        return lambda: told_call(t, x, u, self.states, self.inputs)
+        return lambda: self.told_call(t, x, u)
+
+    def told_call(self, t: float, x: Array, u: Array) -> str:
+        """The arguments of one call in words, for messages."""
+        instant = told_instant(t, self.plant.time_unit, self.step)
+        return told_call(instant, x, u, self.states, self.inputs)
 
     def _call(self, asked: _Function, t: float, x: Array, u: Array) -> Array:
         """One call of the plant's function with one column or, where it can, many; NaN is let through."""
@@ -141,7 +146,7 @@ class BoundPlant:
         alone = self._call(asked, t, x[:, j], u[:, j])
         asked.largest = np.maximum(asked.largest, np.nan_to_num(np.abs(values)).max(axis=1))
         if not _agree(values[:, [j]], alone[:, np.newaxis], asked.largest):
-            told = told_call(t, x[:, j], u[:, j], self.states, self.inputs)
+            told = self.told_call(t, x[:, j], u[:, j])
             raise PlantError(
                 f"{asked.what} answers differently alone and among {x.shape[1]} columns, called with {told}"
             )
@@ -224,7 +229,7 @@ class BoundPlant:
                 row = int(np.argmax(again != singles[j]))
                 raise PlantError(
                     f"{asked.what} is not deterministic: called twice with "
-                    f"{told_call(t, x[:, j], u[:, j], self.states, self.inputs)} it returned "
+                    f"{self.told_call(t, x[:, j], u[:, j])} it returned "
                     f"{float(singles[j][row])!r} and {float(again[row])!r} for {asked.rows.names[row]}"
                 )
         return singles

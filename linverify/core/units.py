@@ -24,6 +24,7 @@ from functools import lru_cache
 from typing import TYPE_CHECKING, Any
 
 from .errors import LinverifyError
+from .shown import number as in_digits
 from .signals import nearest
 from .unit_words import DEFINITIONS, HABITS, WORDS
 
@@ -55,7 +56,7 @@ class UnitError(LinverifyError, ValueError):
 
 def shown(number: float) -> str:
     """A number as messages show it: at most six significant digits."""
-    return f"{number:.6g}"
+    return in_digits(number)
 
 
 def told(number: float, unit: str) -> str:

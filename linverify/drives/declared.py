@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from types import MappingProxyType
 
 import numpy as np
 
@@ -16,10 +17,12 @@ from ..core.case import Course, DriveSet, Interval
 from ..core.delivered import Delays
 from ..core.drive import Drive
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
+from ..core.shown import Shown
 from ..numerics.worst import NO_DELAYS, reaches
 
 # A value read back from a file, or a sum of many small changes, may miss a limit by rounding.
 SLACK = 1e-9
+PLAIN = Shown()
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -28,7 +31,8 @@ class Limits:
 
     low, high (m,): smallest and largest deviation of each driven input, low <= 0 <= high; change (m,): largest change
     from one instant to the next, infinite where no rate is declared; offset_low, offset_high: of each state in
-    `offsets`; told: one line for each amplitude that was cut to the envelope or found from `until`.
+    `offsets`; told: one line for each amplitude that was cut to the envelope or found from `until`; shown: the units
+    that inputs and states are told in, shown_time: that of times.
     """
 
     every: float
@@ -42,6 +46,8 @@ class Limits:
     offset_low: Array = field(default_factory=lambda: frozen_array(()))
     offset_high: Array = field(default_factory=lambda: frozen_array(()))
     told: tuple[str, ...] = ()
+    shown: Mapping[str, Shown] = field(default_factory=lambda: MappingProxyType({}))
+    shown_time: Shown = PLAIN
 
     def drive(self, values: Array, offsets: Mapping[str, float] | None = None) -> Drive:
         """A drive of this set from wanted values (K, m): cut to amplitude and, instant by instant, to the rate."""
@@ -77,8 +83,9 @@ class Limits:
     def problems(self, drive: Drive) -> tuple[str, ...]:
         """Why a drive does not belong to the declared set, a line each; empty where it does."""
         if drive.course != self.course or drive.intervals != self.intervals or not _same(drive.every, self.every):
-            made = f"every {drive.every:.6g} over {drive.intervals} intervals, course {drive.course}"
-            due = f"every {self.every:.6g} over {self.intervals} intervals, course {self.course}"
+            time = self.shown_time
+            made = f"every {time.told_size(drive.every)} over {drive.intervals} intervals, course {drive.course}"
+            due = f"every {time.told_size(self.every)} over {self.intervals} intervals, course {self.course}"
             return (f"it changes {made}; the spec declares {due}",)
         found = [f"{name} is not driven in this set" for name in drive.inputs if name not in self.inputs]
         found += [f"{name} has no offset in this set" for name in drive.offsets if name not in self.offsets]
@@ -91,16 +98,17 @@ class Limits:
             course = drive.values[:, position]
             slack = SLACK * max(self.high[at], -self.low[at])
             low, high = float(np.min(course)), float(np.max(course))
+            told = self.shown.get(name, PLAIN)
             if low < self.low[at] - slack or high > self.high[at] + slack:
                 found.append(
-                    f"{name} goes from {low:+.6g} to {high:+.6g} about trim; "
-                    f"the set allows {self.low[at]:+.6g} to {self.high[at]:+.6g}"
+                    f"{name} goes from {told.told_range(low, high)} about trim; "
+                    f"the set allows {told.told_range(float(self.low[at]), float(self.high[at]))}"
                 )
             change = float(np.max(np.abs(np.diff(course, prepend=0.0))))
             if change > self.change[at] + slack:
                 found.append(
-                    f"{name} changes by {change:.6g} from one instant to the next; "
-                    f"the rate allows {self.change[at]:.6g}"
+                    f"{name} changes by {told.told_size(change)} from one instant to the next; "
+                    f"the rate allows {told.told_size(self.change[at])}"
                 )
         return found
 
@@ -111,7 +119,9 @@ class Limits:
             low, high = float(self.offset_low[at]), float(self.offset_high[at])
             slack = SLACK * max(high, -low)
             if not low - slack <= value <= high + slack:
-                found.append(f"{name} starts {value:+.6g} off trim; the set allows {low:+.6g} to {high:+.6g}")
+                told = self.shown.get(name, PLAIN)
+                room = f"the set allows {told.told_range(low, high)}"
+                found.append(f"{name} starts {told.told_change(value)} off trim; {room}")
         return found
 
     def contains(self, drive: Drive) -> bool:
@@ -142,7 +152,8 @@ def declared(
     ranges = [_input_range(drives, name, model, point, envelope, delays, told) for name in inputs]
     states = tuple(name for name in point.states.names if drives.offsets.get(name, 0.0) > 0.0)
     offsets = [
-        _cut(name, -drives.offsets[name], drives.offsets[name], point, envelope, told, "offset") for name in states
+        _cut(drives, name, -drives.offsets[name], drives.offsets[name], point, envelope, told, "offset")
+        for name in states
     ]
     rates = [drives.rate.get(name, rate_limits.get(name, np.inf)) for name in inputs]
     return Limits(
@@ -150,6 +161,8 @@ def declared(
         frozen_array([low for low, _ in ranges]), frozen_array([high for _, high in ranges]),
         frozen_array([rate * drives.every for rate in rates]), states,
         frozen_array([low for low, _ in offsets]), frozen_array([high for _, high in offsets]), tuple(told),
+        MappingProxyType({name: _shown(drives, name, point) for name in (*inputs, *states)}),
+        drives.shown_time or Shown(),
     )  # fmt: skip
 
 
@@ -169,18 +182,28 @@ def _input_range(
         inputs, _ = reaches(model, (signal,), drives.every, drives.intervals, drives.course, delays)
         gain = float(inputs[0, model.inputs.index(name)])
         if not gain > 0.0:
-            told.append(f"{name} does not move {signal} in the local model: its amplitude `until` {size:.6g} is zero")
+            reach = _shown(drives, signal, point).told_size(size)
+            told.append(f"{name} does not move {signal} in the local model: its amplitude `until` {reach} is zero")
             return 0.0, 0.0
         low, high = -size / gain, size / gain
-        unit = point.inputs.unit(name)
         told.append(
-            f"amplitude of {name}: {high:.6g} {unit}, at which the largest possible deviation of {signal} in the "
-            f"local model over the horizon under {name} alone is {size:.6g}"
+            f"amplitude of {name}: {_shown(drives, name, point).told_size(high)}, at which the largest possible "
+            f"deviation of {signal} in the local model over the horizon under {name} alone is "
+            f"{_shown(drives, signal, point).told_size(size)}"
         )
-    return _cut(name, low, high, point, envelope, told, "amplitude")
+    return _cut(drives, name, low, high, point, envelope, told, "amplitude")
+
+
+def _shown(drives: DriveSet, name: str, point: OperatingPoint) -> Shown:
+    """The unit that a signal's deviations are told in."""
+    if name in drives.shown:
+        return drives.shown[name]
+    kinds = (point.states, point.inputs, point.outputs)
+    return Shown(next((signals.unit(name) for signals in kinds if name in signals), ""))
 
 
 def _cut(
+    drives: DriveSet,
     name: str,
     low: float,
     high: float,
@@ -194,5 +217,6 @@ def _cut(
     here = point.value(name)
     kept_low, kept_high = max(low, min(room.low - here, 0.0)), min(high, max(room.high - here, 0.0))
     if (kept_low, kept_high) != (low, high):
-        told.append(f"{what} of {name} cut to the envelope: {kept_low:+.6g} to {kept_high:+.6g}")
+        shown = _shown(drives, name, point)
+        told.append(f"{what} of {name} cut to the envelope: {shown.told_range(kept_low, kept_high)}")
     return kept_low, kept_high

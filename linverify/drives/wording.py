@@ -9,8 +9,11 @@ import numpy as np
 
 from ..core.drive import Drive
 from ..core.model import Array
+from ..core.shown import Shown
 
 MOST_MOVES = 6  # a course with more moves is told by its range
+DIGITS = 4
+PLAIN = Shown()
 WIDTH = 3  # changes in a row that read as one ramp
 
 
@@ -23,42 +26,42 @@ class _Move:
     value: float
 
 
-def worded(drive: Drive, units: Mapping[str, str], time_unit: str) -> str:
+def worded(drive: Drive, shown: Mapping[str, Shown], time: Shown) -> str:
     """For example "fore_flap steps to +1.5 deg at 0.4 s, back at 1.2 s; pitch starts 0.5 deg high".
 
-    units: of inputs and states. Values are deviations from trim.
+    shown: the units that inputs and states are told in; time: that of instants. Values are deviations from trim.
     """
     parts = []
     for column, name in enumerate(drive.inputs):
         course = drive.values[:, column]
         if np.any(course):
-            parts.append(f"{name} {_course(course, drive, units.get(name, ''), time_unit)}")
+            parts.append(f"{name} {_course(course, drive, shown.get(name, PLAIN), time)}")
     for name, value in drive.offsets.items():
         if value != 0.0:
             side = "high" if value > 0.0 else "low"
-            parts.append(f"{name} starts {_number(abs(value), units.get(name, ''))} {side}")
+            parts.append(f"{name} starts {shown.get(name, PLAIN).told_size(abs(value), DIGITS)} {side}")
     return "; ".join(parts) if parts else "nothing moves"
 
 
-def _course(course: Array, drive: Drive, unit: str, time_unit: str) -> str:
+def _course(course: Array, drive: Drive, shown: Shown, time: Shown) -> str:
     moves = _held_moves(course) if drive.course == "held" else _straight_moves(course)
     if len(moves) > MOST_MOVES:
         low, high = float(np.min(course)), float(np.max(course))
         changes = int(np.count_nonzero(np.diff(course, prepend=0.0)))
         first = int(np.flatnonzero(course)[0]) + (0 if drive.course == "held" else 1)
         return (
-            f"changes {changes} times between {_signed(low)} and {_signed(high, unit)} "
-            f"from {_time(first, drive, time_unit)} on"
+            f"changes {changes} times between {shown.told_range(low, high, 'and', DIGITS)} "
+            f"from {_time(first, drive, time)} on"
         )
     said: list[str] = []
     before = 0.0
     for position, move in enumerate(moves):
-        target = "back" if move.value == 0.0 and position else f"to {_signed(move.value, unit)}"
+        target = "back" if move.value == 0.0 and position else f"to {shown.told_change(move.value, DIGITS)}"
         if move.first == move.last:
             verb = "steps " if not said else ""
-            said.append(f"{verb}{target} at {_time(move.first, drive, time_unit)}")
+            said.append(f"{verb}{target} at {_time(move.first, drive, time)}")
         else:
-            span = f"from {_time(move.first, drive, time_unit)} to {_time(move.last, drive, time_unit)}"
+            span = f"from {_time(move.first, drive, time)} to {_time(move.last, drive, time)}"
             verb = "ramps " if not said or target != "back" else ""
             said.append(f"{verb}{target} {span}")
         before = move.value
@@ -104,17 +107,5 @@ def _straight_moves(course: Array) -> list[_Move]:
     return moves
 
 
-def _time(instant: int, drive: Drive, time_unit: str) -> str:
-    return _number(instant * drive.every, time_unit)
-
-
-def _number(value: float, unit: str) -> str:
-    return f"{value:.4g}{_unit(unit)}"
-
-
-def _unit(unit: str) -> str:
-    return "" if unit in ("", "1") else f" {unit}"
-
-
-def _signed(value: float, unit: str = "") -> str:
-    return f"{value:+.4g}{_unit(unit)}" if value else f"0{_unit(unit)}"
+def _time(instant: int, drive: Drive, time: Shown) -> str:
+    return time.told_size(instant * drive.every, DIGITS)

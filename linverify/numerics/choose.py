@@ -82,8 +82,8 @@ def accepted(task: Task, candidate: Candidate, others: tuple[OperatingPoint, ...
         worst_equation=worst,
         worst_residual=size,
         errors=told_errors(system, candidate.root),
-        active_bounds=active_bounds(system, point, task.envelope, task.nominal),
-        notes=(f"other equilibria: {numbered(system, others)}",) if others else (),
+        active_bounds=active_bounds(task, point),
+        notes=(f"other equilibria: {numbered(task, others)}",) if others else (),
     )
 
 
@@ -115,13 +115,13 @@ def _comes_nearer(task: Task, candidate: Candidate, distance: float) -> bool:
 def _several(task: Task, candidates: list[Candidate]) -> TrimResult:
     points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
     why = "`start` is as near to one as to another" if _named(task) else "no `start` says which one is meant"
-    message = f"{len(candidates)} equilibria lie inside the envelope and {why}: {numbered(task.system, points)}"
+    message = f"{len(candidates)} equilibria lie inside the envelope and {why}: {numbered(task, points)}"
     return TrimResult(Outcome.SEVERAL_TRIMS, others=points, message=message)
 
 
 def _of_family(task: Task, candidate: Candidate, found: Family) -> TrimResult:
     system = task.system
-    at = f", for example at {told_unknowns(system, candidate.point)}" if candidate.point else ""
+    at = f", for example at {told_unknowns(task, candidate.point)}" if candidate.point else ""
     names = ", ".join(found.names)
     count = f"{len(system.unknowns)} unknowns, {len(system.names)} equations"
     return TrimResult(

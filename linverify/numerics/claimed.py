@@ -6,7 +6,7 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ..core.border import called, read_only, told_call
+from ..core.border import called, read_only
 from ..core.bound import BoundPlant
 from ..core.errors import PlantError
 from ..core.model import Array, OperatingPoint
@@ -44,7 +44,7 @@ def claimed_jacobian(plant: BoundPlant, point: OperatingPoint) -> Array:
     x, u = read_only(point.x), read_only(point.u)
 
     def told() -> str:
-        return told_call(point.time, x, u, plant.states, plant.inputs)
+        return plant.told_call(point.time, x, u)
 
     answer = called(function, "jacobian", point.time, x, u, plant.parameters, told)
     kind = type(answer).__name__

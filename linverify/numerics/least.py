@@ -69,7 +69,7 @@ def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:
     names = task.system.unknowns
     share = np.abs(best.flat[: len(names)]).max(axis=1, initial=0.0)
     moving = tuple(name for name, part in zip(names, share, strict=True) if part > 1e-3 * share.max(initial=0.0))
-    at = f", for example at {told_unknowns(task.system, candidate.point)}" if candidate.point else ""
+    at = f", for example at {told_unknowns(task, candidate.point)}" if candidate.point else ""
     return TrimResult(
         Outcome.NOT_UNIQUE,
         others=(candidate.point,) if candidate.point else (),
@@ -80,7 +80,7 @@ def _flat(task: Task, best: Nearest, candidate: Candidate) -> TrimResult:
 
 def _tie(task: Task, candidates: list[Candidate]) -> TrimResult:
     points = tuple(candidate.point for candidate in candidates if candidate.point is not None)
-    each = numbered(task.system, points)
+    each = numbered(task, points)
     return TrimResult(Outcome.NOT_UNIQUE, others=points, message=f"equally near to `start` in these weights: {each}")
 
 

@@ -9,6 +9,7 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass
+from types import MappingProxyType
 
 import numpy as np
 
@@ -16,10 +17,13 @@ from ..core.bound import BoundPlant
 from ..core.case import Interval, SlopeAsk
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
 from ..core.outcome import Outcome
+from ..core.shown import Shown, number, with_unit
+from ..core.units import UnitError, composed, per_time
 from .claimed import Mismatch, claimed_jacobian, mismatches
 from .differentiate import Slopes, slopes
 from .kinks import GapFinding, GapKind
 
+NOTHING_SHOWN: Mapping[str, Shown] = MappingProxyType({})
 ACCURACY = 1e-8  # default of the trim: scaled residual up to which a point is an equilibrium
 SLACK = 1.5  # a residual that the trim accepted is not refused here for its last bits
 AT = 1e-10  # nominal sizes: closer than this is told as "at the point"
@@ -48,6 +52,9 @@ class Corner:
     height: float
     near: bool
     sure: bool
+    at: str = ""  # the column's value there in words: fore_flap = 0.2 rad
+    row_unit: str = ""
+    slope_unit: str = ""
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -84,6 +91,7 @@ class _Task:
     rows: tuple[str, ...]
     columns: tuple[str, ...]
     ask: SlopeAsk
+    shown: Mapping[str, Shown]
 
 
 def linearize(
@@ -94,14 +102,16 @@ def linearize(
     ask: SlopeAsk,
     *,
     accuracy: float = ACCURACY,
+    shown: Mapping[str, Shown] = NOTHING_SHOWN,
 ) -> Linearization:
     """The local model about `point`, with error estimates.
 
     nominal: typical sizes by name, 1 where missing; they scale steps, distances and gaps. envelope: not a limit for
-    steps (the plant's domain is) and not used. accuracy: largest scaled residual that still is an equilibrium. Raises
-    PlantError where the plant fails at the point itself.
+    steps (the plant's domain is) and not used. accuracy: largest scaled residual that still is an equilibrium; shown:
+    the units that values of signals are told in, the plant's where missing. Raises PlantError where the plant fails at
+    the point itself.
     """
-    task = _task(plant, point, nominal, ask)
+    task = _task(plant, point, nominal, ask, shown)
     if refusal := _not_an_equilibrium(task, nominal, accuracy):
         return Linearization(Outcome.NOT_EQUILIBRIUM, message=refusal)
     found = _differences(task)
@@ -120,12 +130,33 @@ def row_names(plant: BoundPlant) -> tuple[str, ...]:
     return (*(f"{suffix} of {state}" if row in taken else row for state, row in pairs), *plant.outputs.names)
 
 
-def _task(plant: BoundPlant, point: OperatingPoint, nominal: Mapping[str, float], ask: SlopeAsk) -> _Task:
+def row_units(plant: BoundPlant) -> tuple[str, ...]:
+    """Units of the rows of the Jacobian, in the order of `row_names`."""
+    time_unit = plant.plant.time_unit
+    rates = (unit if plant.step is not None else per_time(unit, time_unit) for unit in plant.states.units)
+    return (*rates, *plant.outputs.units)
+
+
+def _slope_unit(above: str, below: str) -> str:
+    """The unit of a slope; spelled out where the plant's own units are none that we know."""
+    try:
+        return composed([above], [below])
+    except UnitError:
+        return f"({above})/({below})"
+
+
+def _task(
+    plant: BoundPlant,
+    point: OperatingPoint,
+    nominal: Mapping[str, float],
+    ask: SlopeAsk,
+    shown: Mapping[str, Shown],
+) -> _Task:
     columns = (*plant.states.names, *plant.inputs.names)
     sizes = np.array([nominal.get(name, 1.0) for name in columns])
     outputs = np.array([nominal.get(name, 1.0) for name in plant.outputs.names])
     rows = np.concatenate([sizes[: plant.n], outputs])
-    return _Task(plant, point, sizes, rows, row_names(plant), columns, ask)
+    return _Task(plant, point, sizes, rows, row_names(plant), columns, ask, shown)
 
 
 def _not_an_equilibrium(task: _Task, nominal: Mapping[str, float], accuracy: float) -> str:
@@ -138,8 +169,9 @@ def _not_an_equilibrium(task: _Task, nominal: Mapping[str, float], accuracy: flo
     if scaled[worst] <= SLACK * accuracy:
         return ""
     return (
-        f"{task.rows[worst]} is off by {float(left[worst]):.6g}, {float(scaled[worst]):.3g} nominal sizes of "
-        f"{plant.states.names[worst]}; at most {accuracy:.3g} is an equilibrium"
+        f"{task.rows[worst]} is off by {with_unit(number(float(left[worst])), row_units(plant)[worst])}, "
+        f"{number(float(scaled[worst]), 3)} nominal sizes of {plant.states.names[worst]}; at most "
+        f"{number(accuracy, 3)} is an equilibrium"
     )
 
 
@@ -176,12 +208,15 @@ def _named(task: _Task, found: Slopes, gap: GapFinding) -> Corner:
     scale = float(found.scales[gap.row])
     if gap.kind == "kink":  # beside one further out the row may have a larger term than on the point
         scale = max(scale, size * abs(gap.left), size * abs(gap.right))
+    place = float(z0[gap.column] + gap.distance * size)
+    name, unit = task.columns[gap.column], (*task.plant.states.units, *task.plant.inputs.units)[gap.column]
+    row_unit = row_units(task.plant)[gap.row]
     return Corner(
         row=task.rows[gap.row],
-        column=task.columns[gap.column],
+        column=name,
         kind=gap.kind,
         distance=gap.distance,
-        place=float(z0[gap.column] + gap.distance * size),
+        place=place,
         gap=gap.gap * size / scale,
         error=gap.error * size / scale,
         left=gap.left,
@@ -189,6 +224,9 @@ def _named(task: _Task, found: Slopes, gap: GapFinding) -> Corner:
         height=gap.height,
         near=gap.maybe_near,
         sure=gap.surely_near,
+        at=f"{name} = {(task.shown.get(name) or Shown(unit)).told(place, 9)}",
+        row_unit=row_unit,
+        slope_unit=_slope_unit(row_unit, unit),
     )
 
 
@@ -238,8 +276,9 @@ def _outcome(
         return Outcome.NOISY, f"{told_corner(close[0])}; noise leaves its size or its place open"
     if shares[row, column] > limit:
         return Outcome.NOISY, (
-            f"d {task.rows[row]} / d {task.columns[column]} is known to {100 * shares[row, column]:.2g} % of the row's "
-            f"largest term only; one evaluation of {task.rows[row]} carries a noise of {found.noise[row]:.2g}"
+            f"d {task.rows[row]} / d {task.columns[column]} is known to {number(100 * shares[row, column], 2)} % of "
+            f"the row's largest term only; one evaluation of {task.rows[row]} carries a noise of "
+            f"{with_unit(number(found.noise[row], 2), row_units(task.plant)[row])}"
         )
     return Outcome.DONE, ""
 
@@ -247,18 +286,18 @@ def _outcome(
 def told_corner(corner: Corner) -> str:
     """One line: what, where, how large."""
     entry = f"d {corner.row} / d {corner.column}"
-    where = (
-        "at the point"
-        if abs(corner.distance) < AT
-        else f"{abs(corner.distance):.3g} nominal sizes " + ("above" if corner.distance > 0 else "below")
-    )
-    spot = f"{where}, at {corner.column} = {corner.place:.9g}"
+    where = " at the point"
+    if abs(corner.distance) >= AT:
+        side = "above" if corner.distance > 0 else "below"
+        where = f", {number(abs(corner.distance), 3)} nominal sizes {side} the point"
+    spot = f"{where}, at {corner.at or f'{corner.column} = {number(corner.place, 9)}'}"
     if corner.kind == "jump":
-        return f"{entry}: {corner.row} jumps by {abs(corner.height):.4g} {spot}"
+        return f"{entry}: {corner.row} jumps by {with_unit(number(abs(corner.height), 4), corner.row_unit)}{spot}"
     if corner.kind == "steep":
-        return f"{entry}: the slope grows without bound {spot}"
-    share = 100 * corner.gap
-    return f"{entry}: slopes {corner.left:.4g} below and {corner.right:.4g} above differ by {share:.3g} % {spot}"
+        return f"{entry}: the slope grows without bound{spot}"
+    above = with_unit(number(corner.right, 4), corner.slope_unit)
+    share = number(100 * corner.gap, 3)
+    return f"{entry}: slopes {number(corner.left, 4)} below and {above} above differ by {share} %{spot}"
 
 
 def _largest(task: _Task, found: Slopes, corners: tuple[Corner, ...]) -> tuple[float, str, float]:

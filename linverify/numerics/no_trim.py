@@ -15,7 +15,7 @@ from .equations import Equations
 from .newton import Ends
 from .shortfall import Shortfall, nearest_holds, shortfall
 from .trim_result import Task, TrimResult, outcome_of
-from .trim_words import active_bounds, rate_unit, told, told_unknowns, unit_of
+from .trim_words import active_bounds, shown_as, told, told_limit, told_rate, told_unknowns
 
 
 def none(
@@ -67,7 +67,7 @@ def _told(
         residuals=point.residuals,
         worst_equation=short.worst_equation,
         worst_residual=abs(short.worst_residual),
-        active_bounds=active_bounds(task.system, point, task.envelope, task.nominal),
+        active_bounds=active_bounds(task, point),
         nearest_holds=holds,
         closest=point,
         conclusive=conclusive,
@@ -82,26 +82,26 @@ def _why(task: Task, short: Shortfall) -> str:
         return Outcome.NO_TRIM.value
     plant, name = task.system.plant, short.worst_equation
     rest = "with every other equation met" if short.alone else "where the search came nearest"
-    limits = active_bounds(task.system, short.closest, task.envelope, task.nominal)
+    limits = active_bounds(task, short.closest)
     because = f", with {' and '.join(limits)}" if limits else ""
     size = task.nominal.get(name, 1.0) * short.worst_residual
     if name in plant.states:
         wanted = task.ask.rates.get(name, 0.0)
-        must = "cannot vanish" if wanted == 0 else f"cannot be {wanted:.6g} {rate_unit(plant, name)}"
-        left = f"{rest} it stays at {wanted + size:.4g} {rate_unit(plant, name)}"
+        must = "cannot vanish" if wanted == 0 else f"cannot be {told_rate(task, name, wanted)}"
+        left = f"{rest} it stays at {told_rate(task, name, wanted + size, 4)}"
         return f"{Outcome.NO_TRIM.value}: the rate of {name} {must}: {left}{because}"
     if name not in task.ask.hold:
-        reached = told(plant, name, short.closest.value(name))
+        reached = told(task, name, short.closest.value(name))
         return f"{Outcome.NO_TRIM.value}: {name} cannot keep its limits: {rest} the nearest is {reached}{because}"
-    asked = told(plant, name, task.ask.hold[name])
-    left = f"{rest} it misses by {abs(size):.4g} {unit_of(plant, name)}".rstrip()
+    asked = told(task, name, task.ask.hold[name])
+    left = f"{rest} it misses by {shown_as(task, name).told_size(abs(size), 4)}"
     return f"{Outcome.NO_TRIM.value}: {asked} cannot be reached: {left}{because}"
 
 
 def _outputs_out(task: Task, candidate: Candidate) -> str:
-    plant, point = task.system.plant, candidate.point
+    point = candidate.point
     words = [
-        f"{told(plant, name, point.value(name))} is beyond its limit {limit:.6g}"
+        f"{told(task, name, point.value(name))} is beyond its limit {told_limit(task, name, limit)}"
         for name, limit in outputs_beyond(task, candidate).items()
         if point is not None
     ]
@@ -109,10 +109,9 @@ def _outputs_out(task: Task, candidate: Candidate) -> str:
 
 
 def _notes(task: Task, point: OperatingPoint, holds: Mapping[str, float], searched: bool) -> tuple[str, ...]:
-    plant = task.system.plant
-    notes = [f"nearest the search came: {told_unknowns(task.system, point)}"]
+    notes = [f"nearest the search came: {told_unknowns(task, point)}"]
     if holds:
-        changed = [told(plant, name, value) for name, value in holds.items()]
+        changed = [told(task, name, value) for name, value in holds.items()]
         notes.append(f"a trim exists at the held values {', '.join(changed)}, the nearest that were found")
     elif task.ask.hold and searched:
         notes.append("no other values of the held quantities were found at which a trim exists")

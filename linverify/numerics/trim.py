@@ -18,6 +18,7 @@ import numpy as np
 from ..core.bound import BoundPlant
 from ..core.case import Interval, TrimAsk
 from ..core.outcome import Outcome
+from ..core.shown import Shown
 from .choose import candidate_at, chosen, outputs_beyond
 from .equations import bounds, equations
 from .least import least
@@ -26,22 +27,30 @@ from .no_trim import none
 from .roots import roots_among, search
 from .starts import start_points
 from .stragglers import stragglers
-from .trim_result import Task, TrimResult
-from .trim_words import told
+from .trim_result import NO_UNITS, Task, TrimResult
+from .trim_words import told, told_limit
 
 __all__ = ["TrimResult", "trim"]
 
 
 def trim(
-    plant: BoundPlant, ask: TrimAsk, envelope: Mapping[str, Interval], nominal: Mapping[str, float], time: float
+    plant: BoundPlant,
+    ask: TrimAsk,
+    envelope: Mapping[str, Interval],
+    nominal: Mapping[str, float],
+    time: float,
+    *,
+    shown: Mapping[str, Shown] = NO_UNITS,
+    shown_limits: Mapping[str, Shown] = NO_UNITS,
 ) -> TrimResult:
     """The equilibrium that `ask` states, within `envelope` and the plant's domain, at `time` (time units, or steps).
 
-    Missing nominal sizes count as 1 of the signal's unit. Raises KeyError for a name that the plant does not have;
+    Missing nominal sizes count as 1 of the signal's unit. shown, shown_limits: the units that words tell values of
+    signals and their limits in; the plant's where missing. Raises KeyError for a name that the plant does not have;
     whatever the plant does when it is called ends in the result's `outcome`, not in an exception.
     """
     system = equations(plant, ask, envelope, nominal, time)
-    task = Task(system, ask, envelope, nominal)
+    task = Task(system, ask, envelope, nominal, shown, shown_limits)
     plant.last_error = None
     if outside := _outside(task):
         return TrimResult(Outcome.NO_TRIM, conclusive=True, message=outside)
@@ -86,5 +95,5 @@ def _outside(task: Task) -> str:
         limits = bounds(plant, task.envelope, name)
         if value not in limits:
             limit = limits.high if value > limits.high else limits.low
-            return f"{told(plant, name, float(value))} is required, beyond its limit {limit:.6g}"
+            return f"{told(task, name, float(value))} is required, beyond its limit {told_limit(task, name, limit)}"
     return ""

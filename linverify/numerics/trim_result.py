@@ -4,12 +4,16 @@ from __future__ import annotations
 
 from collections.abc import Mapping
 from dataclasses import dataclass, field
+from types import MappingProxyType
 
 from ..core.case import NOTHING, Interval, TrimAsk
 from ..core.errors import PlantError
 from ..core.model import OperatingPoint
 from ..core.outcome import Outcome
+from ..core.shown import Shown
 from .equations import Equations
+
+NO_UNITS: Mapping[str, Shown] = MappingProxyType({})  # of the spec's own: everything is told in the plant's
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -48,12 +52,14 @@ class TrimResult:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Task:
-    """What every step of a trim needs to see."""
+    """What every step of a trim needs to see. shown, shown_limits: the units that values and limits are told in."""
 
     system: Equations
     ask: TrimAsk
     envelope: Mapping[str, Interval]
     nominal: Mapping[str, float]
+    shown: Mapping[str, Shown] = field(default_factory=lambda: NO_UNITS)
+    shown_limits: Mapping[str, Shown] = field(default_factory=lambda: NO_UNITS)
 
 
 def outcome_of(error: PlantError) -> Outcome:

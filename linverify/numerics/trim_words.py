@@ -2,62 +2,65 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Sequence
 
 import numpy as np
 
-from ..core.bound import BoundPlant
-from ..core.case import Interval
 from ..core.model import OperatingPoint
-from .equations import Equations, bounds
+from ..core.shown import Shown
+from .equations import bounds
+from .trim_result import Task
 
 ROUND_OFF = 1e-12  # nominal sizes
 LISTED = 4  # equilibria in one line; all of them stand in the record
 ON_LIMIT = 1e-6  # nominal sizes
 
 
-def unit_of(plant: BoundPlant, name: str) -> str:
-    """Unit of a state, input or output, empty for a number without unit."""
-    unit = plant.plant.unit(name)
-    return "" if unit == "1" else unit
+def shown_as(task: Task, name: str) -> Shown:
+    """The unit in which values of a state, input or output are told: as the spec writes them, else the plant's."""
+    return task.shown.get(name) or Shown(task.system.plant.plant.unit(name))
 
 
-def rate_unit(plant: BoundPlant, name: str) -> str:
-    """Unit of the rate of a state: `m/s per s`, or `mol/l a step` for a difference equation."""
+def told_rate(task: Task, name: str, rate: float, digits: int = 6) -> str:
+    """A rate of a state: `0.2 m/s per s`, or `0.1 mol/l a step` for a difference equation."""
+    plant = task.system.plant
     per = "a step" if plant.step is not None else f"per {plant.plant.time_unit}"
-    return f"{unit_of(plant, name)} {per}".strip()
+    return f"{shown_as(task, name).told_size(rate, digits)} {per}"
 
 
-def told(plant: BoundPlant, name: str, value: float) -> str:
+def told(task: Task, name: str, value: float) -> str:
     """`speed = 12.3 m/s`."""
-    return f"{name} = {value:.6g} {unit_of(plant, name)}".strip()
+    return f"{name} = {shown_as(task, name).told(value)}"
 
 
-def told_unknowns(system: Equations, point: OperatingPoint) -> str:
+def told_limit(task: Task, name: str, limit: float) -> str:
+    """A limit of the envelope or of the plant's domain: `3 deg`."""
+    return (task.shown_limits.get(name) or shown_as(task, name)).told(limit)
+
+
+def told_unknowns(task: Task, point: OperatingPoint) -> str:
     """`speed = 12.3 m/s, pitch = 0.01 rad`: what was found, without the round-off of zeros."""
     words = []
-    for name, size in zip(system.unknowns, system.sizes, strict=True):
+    for name, size in zip(task.system.unknowns, task.system.sizes, strict=True):
         value = point.value(name)
-        words.append(told(system.plant, name, value if abs(value) > ROUND_OFF * size else 0.0))
+        words.append(told(task, name, value if abs(value) > ROUND_OFF * size else 0.0))
     return ", ".join(words)
 
 
-def numbered(system: Equations, points: Sequence[OperatingPoint]) -> str:
+def numbered(task: Task, points: Sequence[OperatingPoint]) -> str:
     """`(1) speed = 12.3 m/s; (2) speed = 15 m/s; and 3 more`."""
-    words = [f"({i}) {told_unknowns(system, point)}" for i, point in enumerate(points[:LISTED], 1)]
+    words = [f"({i}) {told_unknowns(task, point)}" for i, point in enumerate(points[:LISTED], 1)]
     return "; ".join([*words, *([f"and {len(points) - LISTED} more"] if len(points) > LISTED else [])])
 
 
-def active_bounds(
-    system: Equations, point: OperatingPoint, envelope: Mapping[str, Interval], nominal: Mapping[str, float]
-) -> tuple[str, ...]:
+def active_bounds(task: Task, point: OperatingPoint) -> tuple[str, ...]:
     """The limits that unknowns and outputs stand on: `thrust at its upper limit 80000 N`."""
     words = []
-    plant = system.plant
+    plant = task.system.plant
     outputs = [name for name in plant.outputs.names if name not in plant.states]
-    for name in (*system.unknowns, *outputs):
-        limits, value, size = bounds(plant, envelope, name), point.value(name), nominal.get(name, 1.0)
+    for name in (*task.system.unknowns, *outputs):
+        limits, value, size = bounds(plant, task.envelope, name), point.value(name), task.nominal.get(name, 1.0)
         for side, limit in (("lower", limits.low), ("upper", limits.high)):
             if np.isfinite(limit) and abs(value - limit) <= ON_LIMIT * size:
-                words.append(f"{name} at its {side} limit {limit:.6g} {unit_of(plant, name)}".strip())
+                words.append(f"{name} at its {side} limit {told_limit(task, name, limit)}")
     return tuple(words)

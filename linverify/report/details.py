@@ -7,23 +7,30 @@ from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
 from . import quantity
-from .forms import cell, is_matrix, is_number, listing, matrix, plain_blocks
+from .forms import cell, is_matrix, is_number, is_quantity, listing, matrix, plain_blocks
 from .tables import escaped, grid
 
 KINDS = {"states": "state", "inputs": "input", "outputs": "output"}
 NONE_SHOWS = "none shows"
+ENTRIES = (
+    "Entries of the local model are in the unit of their row per unit of their column; +- is the estimated error of an "
+    "entry, none is told for one that is exact."
+)
 _MATRICES = {
     "A": ("states", "states"),
     "B": ("states", "inputs"),
     "C": ("outputs", "states"),
     "D": ("outputs", "inputs"),
 }
-_IN_THE_RECORD = tuple(f"error_of_{word}" for word in _MATRICES)  # every entry's error: too much for a page
+_BESIDE_ENTRIES = tuple(f"error_of_{word}" for word in _MATRICES)
 Signals = Mapping[str, Sequence[Sequence[str]]]  # kind -> [name, unit] in the plant's order
 
 
-def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "") -> list[str]:
-    """Blocks of Markdown, known words first and the rest in alphabetical order."""
+def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "", *, discrete: bool = False) -> list[str]:
+    """Blocks of Markdown, known words first and the rest in alphabetical order.
+
+    discrete: the plant is a difference equation, whose rows are next states and not rates.
+    """
     rest = dict(details)
     made: list[str] = []
     if found := {kind: rest.pop(kind) for kind in KINDS if isinstance(rest.get(kind), Mapping)}:
@@ -34,8 +41,10 @@ def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "") ->
             f"Eigenvalues of the local model, per {time_unit or 'time unit'}:",
             poles(rest.pop("poles"), time_unit),
         ]
-    made += matrices({word: rest.pop(word) for word in _MATRICES if is_matrix(rest.get(word))}, signals)
-    rest = {word: value for word, value in rest.items() if word not in _IN_THE_RECORD}
+    per = "" if discrete else time_unit or "time unit"
+    errors_of = {word: rest.get(f"error_of_{word}") for word in _MATRICES}
+    made += matrices({word: rest.pop(word) for word in _MATRICES if is_matrix(rest.get(word))}, errors_of, signals, per)
+    rest = {word: value for word, value in rest.items() if word not in _BESIDE_ENTRIES}
     if isinstance(rest.get("statistics"), Mapping) and "text" in rest["statistics"]:
         made += statistics(rest.pop("statistics"))
     if isinstance(rest.get("smallest_visible"), Mapping):
@@ -44,7 +53,10 @@ def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "") ->
 
 
 def trimmed(found: Mapping[str, Mapping[str, Any]], signals: Signals, errors: Mapping[str, Any]) -> str:
-    """Trimmed values with their units, in the plant's order; an output that is a state is told once."""
+    """Trimmed values with their units, in the plant's order; an output that is a state is told once.
+
+    Values stand in the unit that the spec writes; where that is not the plant's, the plant's stands beside.
+    """
     rows: list[tuple[str, ...]] = []
     told: set[str] = set()
     for kind, values in found.items():
@@ -52,22 +64,29 @@ def trimmed(found: Mapping[str, Mapping[str, Any]], signals: Signals, errors: Ma
         order = [name for name in units if name in values] + sorted(set(values) - set(units))
         for name in order:
             if name not in told:
-                value, unit = _valued(values[name], units.get(name, ""))
-                rows.append((name, KINDS[kind], value, _known(errors.get(name), unit)))
+                value, own, unit = _valued(values[name], units.get(name, ""))
+                rows.append((name, KINDS[kind], value, own, _known(errors.get(name), unit)))
         told.update(values)
-    headers = ("signal", "kind", "trimmed value", "known to")[: 4 if errors else 3]
-    return grid(headers, [row[: len(headers)] for row in rows], right=headers[2:])
+    headers = ("signal", "kind", "trimmed value", "in the plant's unit", "known to")
+    shown = [0, 1, 2, *([3] if any(row[3] != quantity.ABSENT for row in rows) else []), *([4] if errors else [])]
+    return grid([headers[at] for at in shown], [[row[at] for at in shown] for row in rows], right=headers[2:])
 
 
 def _known(error: Any, unit: str) -> str:
-    return quantity.quantity(error, unit, 2) if is_number(error) else cell(error)
+    """How well a trimmed value is known; a dash for one that was given and not found."""
+    if is_quantity(error):
+        error, unit = error["value"], str(error["unit"])
+    if is_number(error):
+        return quantity.quantity(error, unit, 2) if error else quantity.ABSENT
+    return cell(error)
 
 
-def _valued(value: Any, unit: str) -> tuple[str, str]:
-    """A number, or {"value", "unit"}, as text; and its unit."""
-    if isinstance(value, Mapping) and "value" in value:
-        return _valued(value["value"], str(value.get("unit", unit)))
-    return (quantity.quantity(value, unit) if is_number(value) else cell(value)), unit
+def _valued(value: Any, unit: str) -> tuple[str, str, str]:
+    """A number, or {"value", "unit"}, as text; the same in the plant's unit, if told; and its unit."""
+    if is_quantity(value):
+        own = cell(value["in_plant"]) if "in_plant" in value else quantity.ABSENT
+        return quantity.quantity(value["value"], str(value["unit"])), own, str(value["unit"])
+    return (quantity.quantity(value, unit) if is_number(value) else cell(value)), quantity.ABSENT, unit
 
 
 def poles(values: Sequence[Any], time_unit: str = "") -> str:
@@ -103,13 +122,34 @@ def _complex(real: float | None, imaginary: float | None) -> str:
     return f"{first} {'-' if imaginary < 0 else '+'} {quantity.number(abs(imaginary))}j"
 
 
-def matrices(found: Mapping[str, Sequence[Sequence[float]]], signals: Signals) -> list[str]:
-    """The local model's matrices with the names of their rows and columns."""
-    made = []
+def matrices(
+    found: Mapping[str, Sequence[Sequence[float]]], errors: Mapping[str, Any], signals: Signals, per: str
+) -> list[str]:
+    """The local model's matrices with names and units at their sides and the error of every entry beside it.
+
+    errors: a matrix for each; per: the unit of time of rates, empty where rows are next states.
+    """
+    made = [ENTRIES] if found else []
     for word, rows in found.items():
         down, across = _MATRICES[word]
-        made += [f"{word} of the local model:", matrix(rows, _names(signals, down), _names(signals, across))]
+        known: Any = errors.get(word)
+        fits = is_matrix(known) and [len(row) for row in known] == [len(row) for row in rows]
+        names = _with_units(signals, down, per if word in "AB" else "")
+        of = f"{'rates of states' if per else 'next states'}" if word in "AB" else "outputs"
+        made += [
+            f"{word} of the local model, {of} by {across}:",
+            matrix(rows, names, _with_units(signals, across), known if fits else ()),
+        ]
     return made
+
+
+def _with_units(signals: Signals, kind: str, per: str = "") -> list[str]:
+    """Names with their units: fore_flap (rad); with the time that rates are per: pitch_rate (rad/s per s)."""
+    told = []
+    for name, unit, *_ in signals.get(kind, ()):
+        words = " ".join(part for part in ("" if unit == "1" else unit, f"per {per}" if per else "") if part)
+        told.append(f"{name} ({words})" if words else name)
+    return told
 
 
 def statistics(found: Mapping[str, Any]) -> list[str]:
@@ -120,7 +160,7 @@ def statistics(found: Mapping[str, Any]) -> list[str]:
 
 def visible(found: Mapping[str, Any], time_unit: str) -> str:
     """The smallest errors of the local model that a set of drives would catch, in all signals and in each."""
-    signals = found.get("signals")
+    signals, time_unit = found.get("signals"), str(found.get("unit_of_delay", time_unit))
     each = signals if isinstance(signals, Mapping) else {}
     rows = [
         (
@@ -139,7 +179,3 @@ def _shown(value: Any, worded: Callable[[float], str]) -> str:
     if not is_number(value):
         return cell(value)
     return worded(value) if math.isfinite(value) else NONE_SHOWS
-
-
-def _names(signals: Signals, kind: str) -> list[str]:
-    return [pair[0] for pair in signals.get(kind, ())]

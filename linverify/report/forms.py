@@ -11,18 +11,47 @@ from .tables import bullets, escaped, grid
 CELL_WIDTH = 40
 CELL_NUMBERS = 8
 _WORDED = {  # words of the record that read better in full
+    "accuracy": "accuracy of the trim (largest scaled residual)",
+    "accuracy_asked": "accuracy as asked, in nominal sizes",
     "completed": "share of random drives that ran their whole horizon",
-    "error_90": "90th percentile of the error, band by band",
+    "drives": "drives that were run, by kind",
+    "error_90": "error of our own in each band's figure, 90th percentile over a fixed batch of drives",
+    "errors": "trimmed values are known to",
+    "evaluations": "states and inputs at which the plant was evaluated",
+    "failed_calls": "calls of the plant that failed",
+    "nearest_holds": "nearest held values at which a trim exists",
+    "closest": "nearest the search came",
+    "nodes": "samples between two instants",
+    "noise": "noise of one evaluation of the plant (standard deviation)",
+    "on_point": "on the point",
+    "residuals": "scaled residuals (what is left of each equation, in nominal sizes of its signal)",
+    "starts": "starts of the search",
+    "tolerance": "tolerance (share of the state errors that the bands allow)",
 }
+_QUANTITY = {"value", "unit"}
 
 
-def matrix(rows: Sequence[Sequence[float]], down: Sequence[str], across: Sequence[str]) -> str:
-    """A matrix with names at its sides where they fit."""
+def matrix(
+    rows: Sequence[Sequence[float]],
+    down: Sequence[str],
+    across: Sequence[str],
+    errors: Sequence[Sequence[float]] = (),
+) -> str:
+    """A matrix with names at its sides where they fit, and errors, of the same shape, beside its entries."""
     width = len(rows[0])
     columns = list(across) if len(across) == width else [str(index + 1) for index in range(width)]
     names = list(down) if len(down) == len(rows) else [str(index + 1) for index in range(len(rows))]
-    cells = [(name, *(quantity.number(value) for value in row)) for name, row in zip(names, rows, strict=True)]
+    known = errors or [[0.0] * width] * len(rows)
+    cells = [
+        (name, *(_entry(value, error) for value, error in zip(row, own, strict=True)))
+        for name, row, own in zip(names, rows, known, strict=True)
+    ]
     return grid(("", *columns), cells, right=columns)
+
+
+def _entry(value: float, error: float) -> str:
+    told = quantity.number(value)
+    return f"{told} +- {quantity.number(error, 2)}" if error else told
 
 
 def plain_blocks(values: Mapping[str, Any], worded: Callable[[str], str] | None = None) -> list[str]:
@@ -56,7 +85,7 @@ def listing(values: Sequence[Mapping[str, Any]]) -> str:
     """A list of mappings as one table; columns in order of first appearance."""
     columns = list(dict.fromkeys(word for value in values for word in value))
     rows = [[cell(value[word]) if word in value else quantity.ABSENT for word in columns] for value in values]
-    return grid(columns, rows)
+    return grid([label(word) for word in columns], rows)
 
 
 def label(word: str) -> str:
@@ -72,6 +101,9 @@ def cell(value: Any) -> str:
         return "yes" if value else "no"
     if is_number(value):
         return quantity.number(value)
+    if is_quantity(value):
+        told = quantity.quantity(value["value"], str(value["unit"]))
+        return f"{told} ({cell(value['in_plant'])})" if "in_plant" in value else told
     if isinstance(value, Mapping):
         return ", ".join(f"{word} {cell(item)}" for word, item in sorted(value.items()))
     if isinstance(value, list):
@@ -84,6 +116,11 @@ def is_number(value: Any) -> bool:
     return isinstance(value, (int, float)) and not isinstance(value, bool)
 
 
+def is_quantity(value: Any) -> bool:
+    """True for {"value": number, "unit": text}, which may have the same value in the plant's unit under "in_plant"."""
+    return isinstance(value, Mapping) and set(value) - {"in_plant"} == _QUANTITY and is_number(value["value"])
+
+
 def is_matrix(value: Any) -> bool:
     """True for a list of equally long lists of numbers."""
     if not (isinstance(value, list) and value and all(isinstance(row, list) and row for row in value)):
@@ -92,9 +129,9 @@ def is_matrix(value: Any) -> bool:
 
 
 def is_short(value: Any) -> bool:
-    """True for what fits into one cell: a number, a truth value, a short text, a few numbers or nothing."""
+    """True for what fits into one cell: a number, with or without its unit, a truth value, a short text, nothing."""
     if isinstance(value, str):
         return len(value) <= CELL_WIDTH
     if isinstance(value, list):
         return len(value) <= CELL_NUMBERS and all(is_number(item) for item in value)
-    return value is None or isinstance(value, bool) or is_number(value)
+    return value is None or isinstance(value, bool) or is_number(value) or is_quantity(value)

@@ -17,6 +17,10 @@ _READING = (
     "Bounds from random drives are one-sided Clopper-Pearson bounds. They concern the declared sampler, not operation, "
     "and are void if the model was tuned on the drives of this seed. Searched, pinned and regular drives never enter "
     "them.",
+    "Figures stand in the units that the spec writes. A nominal size is the typical size of a deviation of a signal "
+    "(`nominal` under Effective specs). A scaled residual is what is left of an equation at the trim: of a rate in "
+    "nominal sizes of its state per time unit of the plant (per step of a difference equation), of a held output in "
+    "nominal sizes of that output.",
 )
 
 
@@ -112,7 +116,8 @@ def _check(verdict: Verdict, point: Mapping[str, Any]) -> Iterator[str]:
     if lines := [*verdict.notes, *told]:
         yield tables.bullets(lines)
     told_once = {word: value for word, value in verdict.details.items() if not _repeats(value, verdict.notes)}
-    yield from details.blocks(told_once, point.get("signals", {}), str(point.get("time_unit", "")))
+    discrete = point.get("step") is not None
+    yield from details.blocks(told_once, point.get("signals", {}), str(point.get("time_unit", "")), discrete=discrete)
 
 
 def _repeats(value: Any, notes: Sequence[str]) -> bool:

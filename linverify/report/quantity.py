@@ -4,9 +4,12 @@ from __future__ import annotations
 
 import math
 
+from ..core.shown import number as in_digits
+from ..core.shown import with_unit
 from ..core.verdict import Figure, Sense
 
 ABSENT = "-"
+FAR = 100.0  # used share beyond which headroom is told in words
 
 
 def number(value: float, digits: int = 6) -> str:
@@ -15,19 +18,18 @@ def number(value: float, digits: int = 6) -> str:
         return ABSENT
     if math.isinf(value):
         return "infinite" if value > 0 else "-infinite"
-    mantissa, _, exponent = f"{value + 0.0:.{digits}g}".partition("e")
-    return f"{mantissa}e{int(exponent)}" if exponent else mantissa
+    return in_digits(value, digits)
 
 
 def quantity(value: float, unit: str = "", digits: int = 6) -> str:
     """`value` and its unit; a dash for NaN. Units "" and "1" are not written."""
     text = number(value, digits)
-    return text if text == ABSENT or unit in ("", "1") else f"{text} {unit}"
+    return text if text == ABSENT else with_unit(text, unit)
 
 
 def exactly(value: float, unit: str = "") -> str:
     """`value` to its last digit, and its unit as in `quantity`."""
-    return f"{value!r}" if unit in ("", "1") else f"{value!r} {unit}"
+    return with_unit(f"{value!r}", unit)
 
 
 def percent(share: float) -> str:
@@ -36,6 +38,21 @@ def percent(share: float) -> str:
         return ABSENT
     value = 100.0 * share
     return f"{number(round(value, 1) if abs(value) >= 0.1 else value, 6 if abs(value) >= 0.1 else 2)} %"
+
+
+def headroom(figure: Figure) -> str:
+    """The headroom in per cent; words where a limit is missed by so much that per cent mean nothing; else a dash."""
+    if figure.used_share > FAR:
+        return f"over {FAR:g} times the limit" if figure.sense is Sense.UPPER else f"under 1/{FAR:g} of the limit"
+    return percent(figure.headroom)
+
+
+def headroom_told(figure: Figure) -> str:
+    """The same inside a sentence: headroom 60 %; empty where a share has no meaning."""
+    text = headroom(figure)
+    if text == ABSENT:
+        return ""
+    return text if figure.used_share > FAR else f"headroom {text}"
 
 
 def worst(figure: Figure) -> str:

@@ -100,14 +100,16 @@ def build(
 
 def _told(provenance: Mapping[str, Any], verdicts: Iterable[Verdict]) -> dict[str, Any]:
     """The provenance with the tolerances that the checks say they worked with."""
-    used: dict[str, set[float]] = {"trim residual": set(), "integration": set()}
+    used: dict[str, set[float]] = {}
     for verdict in verdicts:
         integration = verdict.details.get("integration", {})
         tolerance = integration.get("tolerance") if isinstance(integration, Mapping) else None
-        for name, value in (("trim residual", verdict.details.get("accuracy")), ("integration", tolerance)):
-            if isinstance(value, float):
-                used[name].add(value)
-    known = {name: sorted(values) for name, values in used.items() if values}
+        if isinstance(tolerance, float):
+            used.setdefault("integration, share of the state errors that bands allow", set()).add(tolerance)
+        accuracy = verdict.details.get("accuracy")
+        if isinstance(accuracy, Mapping) and isinstance(accuracy.get("value"), float):
+            used.setdefault(f"scaled residual of a trim, {accuracy.get('unit')}", set()).add(accuracy["value"])
+    known = {name: sorted(values) for name, values in used.items()}
     if not known:
         return dict(provenance)
     return {**provenance, "tolerances": {**known, **provenance.get("tolerances", {})}}

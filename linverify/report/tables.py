@@ -16,6 +16,7 @@ from .quantity import ABSENT
 COMPLIANCE = ("requirement", "operating point", "check", "limit", "worst", "headroom", "verdict", "evidence")
 _RAW = ("worst number", "limit number", "unit")  # added to the CSV for those who calculate on
 _ORDER = (Status.FAIL, Status.UNDECIDED, Status.NOT_RUN, Status.PASS, Status.SKIPPED)
+_EXPONENT = re.compile(r"(?<=[0-9])e(?:\+|(-))0*([0-9]+)\b")  # 9.3e+04 is 9.3e4, 1e-08 is 1e-8
 _HARMLESS = re.compile(r"-|-?[0-9.]+(e-?[0-9]+)?( [A-Za-z0-9%/*^. ]+)?|-infinite( [A-Za-z0-9%/*^. ]+)?")
 
 
@@ -37,10 +38,15 @@ class Row:
             verdict.check,
             f"{quantity.subject(figure)} {quantity.limit(figure)}" if figure else ABSENT,
             quantity.worst(figure) if figure else ABSENT,
-            quantity.percent(figure.headroom) if figure else ABSENT,
+            quantity.headroom(figure) if figure and self.counts else ABSENT,
             self.status.value,
             evidence(verdict, figure),
         )
+
+    @property
+    def counts(self) -> bool:
+        """False where the check is open for another reason: headroom of a figure would say that it was tested."""
+        return self.figure is not None and (self.status is not Status.UNDECIDED or self.figure.status is self.status)
 
     @property
     def badness(self) -> tuple[int, float]:
@@ -113,8 +119,9 @@ def compliance(verdicts: Iterable[Verdict]) -> tuple[Row, ...]:
 
 
 def printable(text: str) -> str:
-    """`text` with every control character but line breaks taken out: names and messages may hold any."""
-    return "".join(sign if sign.isprintable() or sign == "\n" else " " for sign in text)
+    """`text` without control characters but line breaks (names and messages may hold any), numbers in one form."""
+    plain = "".join(sign if sign.isprintable() or sign == "\n" else " " for sign in text)
+    return _EXPONENT.sub(r"e\1\2", plain)
 
 
 def escaped(text: str) -> str:

@@ -34,15 +34,20 @@ def failure(verdict: Verdict, *, evidence: str = "reports/evidence") -> str:
     if verdict.reason:
         lines += _line("reason", verdict.reason)
     figures = _worst_first(verdict)
-    if figures:
-        lines += _figure_lines(figures[0])
+    if figures and _decides(verdict, figures[0]):
+        lines += _figure_lines(figures.pop(0))
     for item in verdict.evidence:
         lines += _line(f"{item.role} drive", f"{item.text} [{item.drive}]" if item.text else f"[{item.drive}]")
-    for figure in figures[1:]:
-        lines += _line("also", figure_line(figure))
+    for figure in figures:
+        lines += _line("also", figure_line(figure, judged=_decides(verdict, figure)))
     for note in verdict.notes:
         lines += _line("note", note)
     return "\n".join([*lines, *next_steps(verdict, evidence)])
+
+
+def _decides(verdict: Verdict, figure: Figure) -> bool:
+    """False for a figure inside its limit of a check that is open for another reason: its headroom shows nothing."""
+    return verdict.status is not Status.UNDECIDED or figure.status is not Status.PASS
 
 
 def _line(label: str, text: str) -> list[str]:
@@ -78,18 +83,24 @@ def found(figure: Figure) -> str:
         parts.append(f"on {figure.signal}")
     if instant := quantity.instant(figure):
         parts.append(f"at {instant}")
-    headroom = quantity.percent(figure.headroom)
-    return " ".join(parts) + (f"; headroom {headroom}" if headroom != quantity.ABSENT else "")
+    headroom = quantity.headroom_told(figure)
+    return " ".join(parts) + (f"; {headroom}" if headroom else "")
 
 
-def figure_line(figure: Figure) -> str:
-    """One figure in one line: peak error of pitch 0.002 rad, at most 0.005 rad, headroom 60 %: pass."""
+def figure_line(figure: Figure, *, judged: bool = True) -> str:
+    """One figure in one line: peak error of pitch 0.002 rad, at most 0.005 rad, headroom 60 %: pass.
+
+    judged: False leaves out headroom and verdict.
+    """
     required = quantity.limit(figure)
     parts = [f"{quantity.subject(figure)} {quantity.worst(figure)}"]
     if instant := quantity.instant(figure):
         parts[0] += f" at {instant}"
     if required != quantity.ABSENT:
-        parts += [required, f"headroom {quantity.percent(figure.headroom)}: {figure.status.value}"]
+        parts.append(required)
+    if required != quantity.ABSENT and judged:
+        parts.append(quantity.headroom_told(figure))
+        return f"{', '.join(part for part in parts if part)}: {figure.status.value}"
     return ", ".join(parts)
 
 
@@ -140,7 +151,7 @@ def _summary_row(verdict: Verdict) -> tuple[str, ...]:
         reason = textwrap.shorten(verdict.reason, 60, placeholder=" ...") or quantity.ABSENT
         return verdict.status.value, quantity.ABSENT, quantity.ABSENT, reason, verdict.id
     limit = f"{quantity.subject(figure)} {quantity.limit(figure)}"
-    return verdict.status.value, quantity.percent(figure.headroom), quantity.worst(figure), limit, verdict.id
+    return verdict.status.value, quantity.headroom(figure), quantity.worst(figure), limit, verdict.id
 
 
 def _plain_table(rows: Sequence[Sequence[str]]) -> list[str]:

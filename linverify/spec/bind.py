@@ -7,6 +7,7 @@ from __future__ import annotations
 
 import math
 import os
+from dataclasses import replace
 from pathlib import Path
 from types import MappingProxyType
 from typing import Literal
@@ -18,6 +19,7 @@ from linverify.core.case import (
     CheckAsk,
     DriveSet,
     Exits,
+    Relative,
     Requirement,
     Setting,
     SlopeAsk,
@@ -33,6 +35,7 @@ from .motions import bind_band, bind_drives
 from .plants import Loaded, load_plant
 from .read import read
 from .trims import bind_accuracy, bind_parameters, bind_trim, told_middles
+from .written import limits_shown, signals_shown
 
 
 def load(path: Path, root: Path, *, delivered: bool = True) -> tuple[Case, ...]:
@@ -80,6 +83,9 @@ def _check_clock(ground: Ground, spec: Spec) -> None:
         ground.report(place, wrong, "its step counts seconds, so time_unit='s' is expected")
 
 
+BESIDE = 20  # points before and behind one that a model may have been meant for
+
+
 class _Binder:
     """What all cells of one spec share, bound once."""
 
@@ -93,21 +99,27 @@ class _Binder:
         self.time = self._time()
         self.delays, self.wraps = bind_delays(ground, spec), bind_wraps(ground, spec)
         self.accuracy = bind_accuracy(ground, spec.accuracy, spec.accuracy_place or Place(spec.shown))
+        self.accuracy_told = f"{units.shown(spec.accuracy)} {'a second' if self.plant.step is None else 'a step'}"
+        self.limits_shown = limits_shown(ground, spec.envelope)
         self.family = max(1, sum(not cell.skipped for point in spec.points for cell in point.cells))
 
     def cases(self) -> tuple[Case, ...]:
         """One case a cell, points and cells in the order of the spec."""
-        return tuple(case for point in self.spec.points for case in self._point(point))
+        found = tuple(case for point in self.spec.points for case in self._point(point))
+        return tuple(
+            case if case.local.delivered is None else replace(case, relatives=_relatives(found, index))
+            for index, case in enumerate(found)
+        )
 
     def _point(self, point: Point) -> tuple[Case, ...]:
-        sets = tuple(bind_drives(self.ground, ask, self.rate_limits) for ask in point.drives)
+        sets = tuple(bind_drives(self.ground, ask, self.rate_limits, self.limits_shown) for ask in point.drives)
         bound = [bind_band(self.ground, ask, sets) for ask in point.bands]
         bands = tuple(band for band in bound if band is not None)
         return tuple(self._case(point, cell, sets, bands) for cell in point.cells)
 
     def _case(self, point: Point, cell: Cell, sets: tuple[DriveSet, ...], bands: tuple[Band, ...]) -> Case:
         parameters = bind_parameters(self.ground, point, cell)
-        trim = bind_trim(self.ground, point, cell, self.envelope, self.accuracy)
+        trim = bind_trim(self.ground, point, cell, self.envelope, self.accuracy, self.accuracy_told)
         local, told_local = self.local.of(cell, sets, bands)
         told = (*told_local, *_told_rates(self.spec, point), *told_middles(self.ground, trim, self.envelope))
         return Case(
@@ -134,6 +146,8 @@ class _Binder:
             settings=(*self.settings, *point.settings, *told, *_told_cell(self.plant, point, cell)),
             files=(*self.files, *self.local.files_of(local)),
             skipped=f"skipped by `skip: {cell.skipped.text}`, {cell.skipped.place}" if cell.skipped else "",
+            shown=signals_shown(self.ground, point, cell, self.limits_shown),
+            shown_limits=self.limits_shown,
             family=self.family,
         )
 
@@ -174,6 +188,12 @@ class _Binder:
             self.ground.report(self.spec.time.place, wrong, "a multiple of the plant's step is expected")
             return 0.0
         return math.copysign(count, time)
+
+
+def _relatives(cases: tuple[Case, ...], index: int) -> tuple[Relative, ...]:
+    """The points beside one, in the order of the spec: for one of them its model may have been handed over."""
+    beside = (*cases[max(index - BESIDE, 0) : index], *cases[index + 1 : index + 1 + BESIDE])
+    return tuple(Relative(case.point, case.trim, case.parameters) for case in beside if not case.skipped)
 
 
 def _told_cell(plant: Plant, point: Point, cell: Cell) -> tuple[Setting, ...]:

@@ -9,16 +9,24 @@ from pathlib import Path
 from types import MappingProxyType
 
 from linverify.core.case import Amplitude, Band, DriveSet
+from linverify.core.shown import Shown
 from linverify.core.signals import nearest
 
 from .ground import Ground, whole_ratio
 from .layout import AmplitudeAsk, BandAsk, DriveAsk, Entry, FileWord
+from .written import moves_shown, shown_size, time_shown
 
+NO_UNITS: Mapping[str, Shown] = MappingProxyType({})
 MOST_INTERVALS = 100_000  # a drive of more has most likely a wrong unit, and would not fit into memory
 
 
-def bind_drives(ground: Ground, ask: DriveAsk, rate_limits: Mapping[str, float]) -> DriveSet:
-    """One set of drives. rate_limits: by signal, from the envelope, for inputs without a `rate` in this set."""
+def bind_drives(
+    ground: Ground, ask: DriveAsk, rate_limits: Mapping[str, float], limits: Mapping[str, Shown] = NO_UNITS
+) -> DriveSet:
+    """One set of drives.
+
+    rate_limits: by signal, from the envelope, for inputs without a `rate` in this set; limits: the envelope's units.
+    """
     word = f"drives: {ask.name}" if ask.name else "drives"
     every, intervals = _clock(ground, ask, word)
     amplitude = _amplitudes(ground, ask, word)
@@ -38,6 +46,9 @@ def bind_drives(ground: Ground, ask: DriveAsk, rate_limits: Mapping[str, float])
         discerns_gain=ask.discerns_gain,
         discerns_delay=delay,
         place=ask.place,
+        shown=moves_shown(ground, ask, limits),
+        shown_time=time_shown(ground, ask),
+        shown_delay=None if ask.discerns_delay is None else shown_size(ask.discerns_delay, ground.plant.time_unit),
     )
 
 
@@ -62,6 +73,7 @@ def bind_band(ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...]) -> Band 
         start=_start(ground, ask, sets),
         drives=ask.drives,
         place=ask.place,
+        shown=None if ask.limit is None else shown_size(ask.limit, ground.plant.unit(ask.signal)),
     )
 
 

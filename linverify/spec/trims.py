@@ -12,12 +12,20 @@ from linverify.core.errors import Place
 
 from .ground import Ground
 from .layout import Cell, Entry, Expect, Point
+from .written import shown_value
 
 _OFFSET_SCALES = ("degC", "degF", "°C", "°F")
 
 
-def bind_trim(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, Interval], accuracy: float) -> TrimAsk:
-    """The trim of `cell`. accuracy: largest scaled residual, as `bind_accuracy` has it.
+def bind_trim(
+    ground: Ground,
+    point: Point,
+    cell: Cell,
+    envelope: Mapping[str, Interval],
+    accuracy: float,
+    accuracy_told: str = "",
+) -> TrimAsk:
+    """The trim of `cell`. accuracy: largest scaled residual, as `bind_accuracy` has it; accuracy_told: as written.
 
     Mistakes go to `ground`. Limits are not checked for a skipped cell, which is known to have no trim.
     """
@@ -38,6 +46,7 @@ def bind_trim(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, I
         minimize=MappingProxyType(minimize),
         expect=MappingProxyType(_expect(ground, point, cell, envelope)),
         accuracy=accuracy,
+        accuracy_told=accuracy_told,
     )
 
 
@@ -202,7 +211,8 @@ def _expect(ground: Ground, point: Point, cell: Cell, envelope: Mapping[str, Int
         if not cell.skipped:
             ground.inside(value, Entry(entry.name, entry.place, entry.value.value), word, envelope)
         tolerance = _tolerance(ground, entry, value, word)
-        expected[entry.name] = Expected(value, tolerance, entry.value.place)
+        shown = shown_value(entry.value.value, ground.plant.unit(entry.name))
+        expected[entry.name] = Expected(value, tolerance, entry.value.place, shown)
     return expected
 
 

@@ -66,7 +66,7 @@ def test_a_kink_on_the_point_fails() -> None:
     assert found.status is Status.FAIL
     assert found.reason == (
         "the plant has a kink or a jump on the operating point: d speed_rate / d fore_flap: slopes -1 below and -1.5 "
-        "above differ by 33.3 % at the point, at fore_flap = 0.2"
+        "m/(s^2 rad) above differ by 33.3 % at the point, at fore_flap = 0.2 rad"
     )
     (figure,) = found.figures
     assert (figure.what, figure.signal, figure.unit) == ("slope gap", "d speed_rate / d fore_flap", "%")
@@ -74,6 +74,8 @@ def test_a_kink_on_the_point_fails() -> None:
     assert figure.status is Status.FAIL
     (corner,) = found.details["corners"]
     assert (corner["kind"], corner["on_point"]) == ("kink", True)
+    assert corner["at"] == {"value": pytest.approx(0.2), "unit": "rad"}
+    assert corner["below"] == {"value": pytest.approx(-1.0), "unit": "m/(s^2 rad)"}
 
 
 def test_a_kink_that_is_allowed_passes_and_is_told() -> None:
@@ -82,8 +84,8 @@ def test_a_kink_that_is_allowed_passes_and_is_told() -> None:
     assert found.reason == ""
     assert found.figures[0].headroom == pytest.approx(1 - (1 / 3) / 0.4, rel=1e-3)
     assert found.notes == (
-        "corner: d speed_rate / d fore_flap: slopes -1 below and -1.5 above differ by 33.3 % at the point, at "
-        "fore_flap = 0.2",
+        "corner: d speed_rate / d fore_flap: slopes -1 below and -1.5 m/(s^2 rad) above differ by 33.3 % at the "
+        "point, at fore_flap = 0.2 rad",
     )
     assert found.details["B"][0][0] == pytest.approx(-1.25, rel=1e-6)
     assert found.details["error_of_B"][0][0] >= 0.25
@@ -93,8 +95,8 @@ def test_a_kink_nearby_passes_and_is_told_with_its_distance() -> None:
     found = checked(flap=0.195)
     assert found.status is Status.PASS
     assert found.notes == (
-        "corner: d speed_rate / d fore_flap: slopes -1 below and -1.5 above differ by 33.3 % 0.005 nominal sizes "
-        "above, at fore_flap = 0.2",
+        "corner: d speed_rate / d fore_flap: slopes -1 below and -1.5 m/(s^2 rad) above differ by 33.3 %, 0.005 "
+        "nominal sizes above the point, at fore_flap = 0.2 rad",
     )
     assert found.details["B"][0][0] == pytest.approx(-1.0, rel=1e-9)
     assert found.figures[0].worst == 0.0

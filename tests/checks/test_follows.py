@@ -114,7 +114,8 @@ def test_a_gain_error_is_its_own_relative_error(kind: str) -> None:
         found = verdict(case(Band("y", kind, limit, fraction)), model(gain=1.1))  # type: ignore[arg-type]
         assert found.status is status
         if kind == "relative":
-            assert found.figures[0].worst == pytest.approx(0.1, rel=1e-3)
+            assert found.figures[0].worst == pytest.approx(10.0, rel=1e-3)
+            assert found.figures[0].unit == "%"
 
 
 def test_a_plant_that_does_not_move_while_the_model_does_fails_a_relative_band() -> None:
@@ -225,7 +226,7 @@ def test_a_quick_profile_says_so_and_draws_less() -> None:
 
 def test_cut_amplitudes_are_told() -> None:
     found = verdict(case(PEAK, envelope={"f": Interval(-0.5, 3.0)}))
-    assert "amplitude of f cut to the envelope: -0.5 to +1" in found.notes
+    assert "amplitude of f cut to the envelope: -0.5 to +1 N" in found.notes
 
 
 def test_the_same_inputs_give_the_same_bytes() -> None:

@@ -90,8 +90,8 @@ def test_no_equilibrium_fails_and_says_what_a_tired_engineer_needs():
     )
     assert (verdict.figures[0].worst, verdict.figures[0].status) == (pytest.approx(0.15), Status.FAIL)
     assert verdict.details["active_bounds"] == ["thrust at its upper limit 20000 N"]
-    assert verdict.details["nearest_holds"]["speed"] == pytest.approx(np.sqrt(10.0))
-    assert verdict.details["closest"]["thrust"] == pytest.approx(20e3)
+    assert verdict.details["nearest_holds"]["speed"]["value"] == pytest.approx(np.sqrt(10.0))
+    assert verdict.details["closest"]["thrust"]["value"] == pytest.approx(20e3)
 
 
 @pytest.mark.parametrize(
@@ -141,7 +141,7 @@ def test_of_a_failed_and_a_kept_expectation_only_the_failed_is_told():
 
 def test_a_drift_is_listed():
     verdict = _verdict(trim={"rates": {"speed": 0.1}})
-    assert verdict.details["drift"] == {"speed": 0.1}
+    assert verdict.details["drift"] == {"speed": {"value": 0.1, "unit": "m/s^2"}}
     assert verdict.details["inputs"]["thrust"]["value"] == pytest.approx(70e3)
 
 
@@ -152,7 +152,7 @@ def test_other_equilibria_are_listed():
     )
     assert verdict.status is Status.PASS
     assert verdict.notes == ("other equilibria: (1) speed = -5 m/s",)
-    assert verdict.details["other_equilibria"] == [{"speed": pytest.approx(-5.0)}]
+    assert verdict.details["other_equilibria"] == [{"speed": {"value": pytest.approx(-5.0), "unit": "m/s"}}]
 
 
 @pytest.mark.parametrize(
@@ -198,7 +198,7 @@ def test_a_plant_that_cannot_be_called_is_undecided_with_the_call_named(answer, 
     verdict = _verdict(plant=_broken(answer))
     assert verdict.status is Status.UNDECIDED
     assert told in verdict.reason
-    assert "called with t = 0, speed = 5 m/s, thrust = 40000 N" in verdict.reason
+    assert "called with t = 0 s, speed = 5 m/s, thrust = 40000 N" in verdict.reason
     assert not any("called with" in note for note in verdict.notes)  # once is enough
 
 

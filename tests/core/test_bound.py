@@ -72,7 +72,7 @@ def test_what_cannot_batch_is_told_why_and_still_answers(style: str) -> None:
     np.testing.assert_array_equal(together[:, 3], plant.rates(0.0, POINTS_X[:, 3], POINTS_U[:, 3]))
 
 
-CALL = " when called with t = 0, angle = 0.5 rad, spin = -1 rad/s, torque = 2 N*m"
+CALL = " when called with t = 0 s, angle = 0.5 rad, spin = -1 rad/s, torque = 2 N*m"
 WRONG: dict[str, tuple[Function, str]] = {
     "nan": (lambda t, x, u, p: [x[1], np.nan], "dynamics returned nan for spin" + CALL),
     "inf": (lambda t, x, u, p: [np.inf, x[1]], "dynamics returned inf for angle" + CALL),
@@ -148,7 +148,7 @@ def test_memory_and_randomness_are_found() -> None:
     counter = itertools.count()
     for hidden in (lambda: next(counter), np.random.default_rng(0).normal):
         plant = bound(lambda t, x, u, p, hidden=hidden: [x[1], x[0] + 1e-3 * hidden()])
-        with pytest.raises(PlantError, match="dynamics is not deterministic: called twice with t = 0, angle = "):
+        with pytest.raises(PlantError, match="dynamics is not deterministic: called twice with t = 0 s, angle = "):
             plant.detect(0.0, POINTS_X, POINTS_U)
 
 
@@ -158,7 +158,7 @@ def test_failing_columns_come_back_as_nan_and_the_first_error_is_kept() -> None:
     for _ in range(2):  # column by column at first, in one batch after detection
         answer = plant.rates_or_nan(0.0, x, np.zeros(1))
         np.testing.assert_array_equal(answer, [[0.0, np.nan, 0.0], [1.0, np.nan, 3.0]])
-        assert "returned nan for spin when called with t = 0, angle = -4 rad" in str(plant.last_error)
+        assert "returned nan for spin when called with t = 0 s, angle = -4 rad" in str(plant.last_error)
         plant.detect(0.0, np.abs(POINTS_X), POINTS_U)
         plant.last_error = None
     assert plant.batched

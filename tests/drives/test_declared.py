@@ -37,8 +37,8 @@ def test_what_the_envelope_does_not_leave_is_cut_and_told() -> None:
     assert (found.low.tolist(), found.high.tolist()) == ([-0.5], [1.0])
     assert (found.offset_low.tolist(), found.offset_high.tolist()) == ([-0.5], [0.25])
     assert found.told == (
-        "amplitude of f cut to the envelope: -0.5 to +1",
-        "offset of x cut to the envelope: -0.5 to +0.25",
+        "amplitude of f cut to the envelope: -0.5 to +1 N",
+        "offset of x cut to the envelope: -0.5 to +0.25 m",
     )
 
 

@@ -6,9 +6,10 @@ import numpy as np
 import pytest
 
 from linverify.core.drive import Drive
+from linverify.core.shown import Shown
 from linverify.drives.wording import worded
 
-UNITS = {"flap": "deg", "valve": "1", "pitch": "rad"}
+UNITS = {"flap": Shown("deg"), "valve": Shown("1"), "pitch": Shown("rad")}
 
 
 @pytest.mark.parametrize(
@@ -23,13 +24,13 @@ UNITS = {"flap": "deg", "valve": "1", "pitch": "rad"}
     ],
 )
 def test_held(values: list[float], said: str) -> None:
-    assert worded(Drive(0.2, ("flap",), np.array(values)[:, np.newaxis]), UNITS, "s") == said
+    assert worded(Drive(0.2, ("flap",), np.array(values)[:, np.newaxis]), UNITS, Shown("s")) == said
 
 
 def test_straight_offsets_and_several_inputs() -> None:
     values = np.array([[0.5, 0.0], [1.0, -0.1], [1.0, -0.1], [0.0, 0.0]])
     drive = Drive(1.0, ("flap", "valve"), values, "straight", {"pitch": -0.2})
-    assert worded(drive, UNITS, "min") == (
+    assert worded(drive, UNITS, Shown("min")) == (
         "flap ramps to +1 deg from 0 min to 2 min, back from 3 min to 4 min; "
         "valve ramps to -0.1 from 1 min to 2 min, back from 3 min to 4 min; pitch starts 0.2 rad low"
     )
@@ -37,4 +38,12 @@ def test_straight_offsets_and_several_inputs() -> None:
 
 def test_busy_courses_are_told_by_their_range() -> None:
     drive = Drive(0.5, ("flap",), np.array([[(-1.0) ** k] for k in range(20)]))
-    assert worded(drive, UNITS, "s") == "flap changes 20 times between -1 and +1 deg from 0 s on"
+    assert worded(drive, UNITS, Shown("s")) == "flap changes 20 times between -1 and +1 deg from 0 s on"
+
+
+def test_the_units_are_those_that_were_written() -> None:
+    shown = {"flap": Shown("deg", 180.0 / np.pi), "pitch": Shown("deg", 180.0 / np.pi)}
+    values = np.full((4, 1), 0.4 * np.pi / 180.0)
+    drive = Drive(30.0, ("flap",), values, offsets={"pitch": 0.3 * np.pi / 180.0})
+    told = worded(drive, shown, Shown("min", 1.0 / 60.0))
+    assert told == "flap steps to +0.4 deg at 0 min; pitch starts 0.3 deg high"

@@ -96,7 +96,7 @@ def test_a_point_that_is_no_equilibrium_is_refused() -> None:
     assert found.outcome is Outcome.NOT_EQUILIBRIUM
     assert found.model is None
     assert found.message == (
-        "rate_rate is off by -7.64039, 7.64 nominal sizes of rate; at most 1e-08 is an equilibrium"
+        "rate_rate is off by -7.64039 rad/s^2, 7.64 nominal sizes of rate; at most 1e-8 is an equilibrium"
     )
 
 
@@ -281,9 +281,9 @@ def test_a_corner_counts_against_the_largest_term_of_its_row() -> None:
 @pytest.mark.parametrize(
     ("term", "words"),
     [
-        (lambda x: 0.5 * np.where(x >= 1e-6, 1.0, 0.0), "rate_rate jumps by 0.5 1e-06 nominal sizes above"),
+        (lambda x: 0.5 * np.where(x >= 1e-6, 1.0, 0.0), "rate_rate jumps by 0.5 rad/s^2, 1e-6 nominal sizes above the point"),
         (lambda x: np.sqrt(np.abs(x)), "the slope grows without bound at the point"),
-        (lambda x: np.abs(x), "slopes -4 below and -2 above differ by 50 % at the point, at angle = 0"),
+        (lambda x: np.abs(x), "slopes -4 below and -2 1/s^2 above differ by 50 % at the point, at angle = 0 rad"),
     ],
 )
 def test_the_message_says_what_is_wrong(term: Any, words: str) -> None:
@@ -318,7 +318,7 @@ def test_what_fails_next_to_the_point_is_undecided_and_named() -> None:
     found = local(replace(SWING, dynamics=f), [0.0, 0.0], [0.0])
     assert found.outcome is Outcome.NOT_FINITE
     assert found.model is None
-    assert "along angle: dynamics returned nan for rate when called with t = 0, angle = -" in found.message
+    assert "along angle: dynamics returned nan for rate when called with t = 0 s, angle = -" in found.message
 
 
 def test_what_raises_next_to_the_point_is_undecided_and_named() -> None:

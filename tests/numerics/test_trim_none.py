@@ -144,7 +144,7 @@ def test_a_measurement_that_fails_at_the_answer_decides():
     result = trimmed(plant, "x")
     assert (result.outcome, result.point) == (Outcome.NOT_FINITE, None)
     assert result.message == (
-        "at the equilibrium that the search found, measurement returned nan for y when called with t = 0, x = 3"
+        "at the equilibrium that the search found, measurement returned nan for y when called with t = 0 s, x = 3"
     )
 
 

@@ -30,8 +30,8 @@ def test_a_broken_band_shows_the_drive_and_how_to_replay_it(project: Project) ->
     result = project.run("specs")
     text = "\n".join(result.outlines)
     block = text[text.index("low: follows") :]
-    assert re.search(r"required +peak error of level at most 0.01 m \(from specs/basin.yaml:\d+:\d+\)", block)
-    assert re.search(r"found +0\.\d+ m .* on level at t = [\d.]+ s; headroom -\d+", block)
+    assert re.search(r"required +peak error of level at most 1 cm \(from specs/basin.yaml:\d+:\d+\)", block)
+    assert re.search(r"found +\d\.\d+ cm .* on level at t = [\d.]+ s; headroom -\d+", block)
     assert re.search(r"simplest drive +inflow steps to -?0\.\d+ m/s at [\d.]+ s", block)
     assert re.search(
         r"replay +python -m linverify replay specs/basin.yaml::low::follows reports/evidence/[0-9a-f]{12}\.json", block

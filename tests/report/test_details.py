@@ -9,7 +9,8 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from linverify.report.details import blocks
+from linverify.report import forms
+from linverify.report.details import ENTRIES, blocks
 from linverify.report.forms import cell
 from linverify.report.wire import plain, restored
 
@@ -46,6 +47,21 @@ def test_trimmed_values_are_told_with_what_they_are_known_to() -> None:
     assert squeezed(blocks(details, SIGNALS)[0])[1:] == [
         ["speed", "state", "15 m/s", "2.3e-9 m/s"],
         ["angle", "state", "0.05 rad", "-"],
+    ]
+
+
+def test_trimmed_values_stand_in_the_unit_of_the_spec_with_the_plants_beside() -> None:
+    details = {
+        "states": {
+            "speed": {"value": 30.0, "unit": "kn", "in_plant": {"value": 15.43333, "unit": "m/s"}},
+            "angle": {"value": 0.05, "unit": "rad"},
+        },
+        "errors": {"speed": {"value": 0.0, "unit": "kn"}, "angle": {"value": 1.234e-9, "unit": "rad"}},
+    }
+    assert squeezed(blocks(details, SIGNALS)[0]) == [
+        ["signal", "kind", "trimmed value", "in the plant's unit", "known to"],
+        ["speed", "state", "30 kn", "15.4333 m/s", "-"],  # held: there is nothing to be known better
+        ["angle", "state", "0.05 rad", "-", "1.2e-9 rad"],
     ]
 
 
@@ -95,12 +111,27 @@ def test_eigenvalues_of_a_difference_equation_show_both_planes() -> None:
 
 def test_matrices_carry_names_where_they_fit() -> None:
     found = {"A": [[0.0, 1.0], [-2.0, -3.0]], "B": [[1.0], [2.0]], "C": [[7.0]], "error_of_A": [[1e-9]]}
-    made = blocks(found, SIGNALS)
-    assert made[0] == "A of the local model:"
-    assert squeezed(made[1]) == [["", "speed", "angle"], ["speed", "0", "1"], ["angle", "-2", "-3"]]
-    assert squeezed(made[3]) == [["", "thrust"], ["speed", "1"], ["angle", "2"]]
-    assert squeezed(made[5]) == [["", "1"], ["height", "7"]]
-    assert len(made) == 6
+    note, caption, *made = blocks(found, SIGNALS, "s")
+    assert note == ENTRIES
+    assert caption == "A of the local model, rates of states by states:"
+    assert squeezed(made[0]) == [
+        ["", "speed (m/s)", "angle (rad)"],
+        ["speed (m/s per s)", "0", "1"],
+        ["angle (rad per s)", "-2", "-3"],
+    ]
+    assert squeezed(made[2]) == [["", "thrust (N)"], ["speed (m/s per s)", "1"], ["angle (rad per s)", "2"]]
+    assert squeezed(made[4]) == [["", "1"], ["height (m)", "7"]]
+    assert len(made) == 5
+
+
+def test_entries_show_what_they_are_known_to() -> None:
+    found = {"A": [[0.0, 1.0], [-2.0, -3.0]], "error_of_A": [[0.0, 1.23e-9], [2e-7, 0.0]]}
+    _, caption, table = blocks(found, SIGNALS, "s", discrete=True)
+    assert caption == "A of the local model, next states by states:"
+    assert squeezed(table)[1:] == [
+        ["speed (m/s)", "0", "1 +- 1.2e-9"],
+        ["angle (rad)", "-2 +- 2e-7", "-3"],
+    ]
 
 
 def test_other_words_have_a_plain_form() -> None:
@@ -123,8 +154,16 @@ def test_other_words_have_a_plain_form() -> None:
     assert "- one\n- two" in text
     assert r"a\|b" in text
     assert "empty" not in text
-    assert squeezed(made[0])[1] == ["90th percentile of the error, band by band", "0.1, 0.2"]
+    assert squeezed(made[0])[1] == [forms.label("error_90"), "0.1, 0.2"]
     assert "coil_current" in text  # a name stays a name
+
+
+def test_numbers_with_units_are_one_cell() -> None:
+    (table,) = blocks({"accuracy": {"value": 6e-7, "unit": "nominal sizes per min"}}, {})
+    assert squeezed(table)[1] == ["accuracy of the trim (largest scaled residual)", "6e-7 nominal sizes per min"]
+    made = blocks({"integration": {"nodes": 8, "error_90": {"rms error of pitch": {"value": 2e-5, "unit": "deg"}}}}, {})
+    assert squeezed(made[1])[1] == ["samples between two instants", "8"]
+    assert squeezed(made[-1])[1] == ["rms error of pitch", "2e-5 deg"]
 
 
 def test_cells() -> None:

@@ -94,6 +94,25 @@ def test_limits(change: dict[str, object], text: str) -> None:
     assert quantity.limit(replace(FIGURE, **change)) == text  # type: ignore[arg-type]
 
 
+@pytest.mark.parametrize(
+    ("change", "text", "told"),
+    [
+        ({"worst": 0.03}, "25 %", "headroom 25 %"),
+        ({"worst": 4.0}, "-9900 %", "headroom -9900 %"),
+        ({"worst": 4.1}, "over 100 times the limit", "over 100 times the limit"),
+        ({"worst": math.inf}, "over 100 times the limit", "over 100 times the limit"),
+        ({"worst": 0.0001, "sense": Sense.LOWER}, "under 1/100 of the limit", "under 1/100 of the limit"),
+        ({"worst": 0.03, "limit": 0.0}, "-", ""),
+        ({"sense": Sense.NONE}, "-", ""),
+    ],
+)
+def test_headroom_is_told_in_words_where_per_cent_mean_nothing(
+    change: dict[str, object], text: str, told: str
+) -> None:
+    figure = replace(FIGURE, **change)  # type: ignore[arg-type]
+    assert (quantity.headroom(figure), quantity.headroom_told(figure)) == (text, told)
+
+
 def test_subject_and_instant() -> None:
     assert quantity.subject(FIGURE) == "peak error of height"
     assert quantity.subject(replace(FIGURE, signal="")) == "peak error"

@@ -105,12 +105,16 @@ def test_provenance_stands_outside_the_body() -> None:
 
 
 def test_the_tolerances_that_checks_worked_with_are_told() -> None:
-    trimmed = replace(TRIMS, details={"accuracy": 1e-8})
+    trimmed = replace(TRIMS, details={"accuracy": {"value": 1e-8, "unit": "nominal sizes per s"}})
     driven = [
         replace(FOLLOWS, point=f"p{index}", details={"integration": {"tolerance": 10.0**-index}}) for index in (3, 2)
     ]
     run = record.build([*driven, trimmed], provenance={"tolerances": {"given": 1}})
-    assert run["provenance"]["tolerances"] == {"given": 1, "integration": [0.001, 0.01], "trim residual": [1e-8]}
+    assert run["provenance"]["tolerances"] == {
+        "given": 1,
+        "integration, share of the state errors that bands allow": [0.001, 0.01],
+        "scaled residual of a trim, nominal sizes per s": [1e-8],
+    }
 
 
 def test_a_record_comes_back_from_its_file(tmp_path: Path) -> None:

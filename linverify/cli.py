@@ -10,13 +10,16 @@ import argparse
 import os
 import sys
 from collections.abc import Callable, Sequence
+from contextlib import redirect_stdout
 from dataclasses import replace
 from pathlib import Path
 from typing import TYPE_CHECKING
 
 from . import __version__
-from .core.errors import LinverifyError
+from .core.errors import LinverifyError, RecordError
+from .core.heard import Heard
 from .core.threads import one_thread
+from .report.folder import refusal
 
 if TYPE_CHECKING:
     from .core.case import Options
@@ -28,9 +31,11 @@ ROOT_MARKS = ("pyproject.toml", "pytest.ini", "tox.ini", "setup.cfg", ".git")
 def main(arguments: Sequence[str] | None = None) -> int:
     """Run one command; returns the exit status. Mistakes of the user are one message, never a traceback."""
     given = _parser().parse_args(arguments)
+    given.out, heard = sys.stdout, Heard()
     threads = one_thread()  # before anything imports numpy
     try:
-        return int(given.command(given, threads))
+        with redirect_stdout(heard):
+            return int(given.command(given, threads))
     except LinverifyError as error:
         print(error, file=sys.stderr)
     except BrokenPipeError:  # the reader of our output has gone (`| head`): nothing can be told any more
@@ -39,7 +44,15 @@ def main(arguments: Sequence[str] | None = None) -> int:
         print(f"{error.filename or 'a file'}: {error.strerror or error}", file=sys.stderr)
     except KeyboardInterrupt:
         print("interrupted; no report was written", file=sys.stderr)
+    finally:
+        if heard.told:
+            print(heard.told, file=sys.stderr)
     return 2
+
+
+def _say(given: argparse.Namespace, *lines: str) -> None:
+    """Print to the terminal, whatever the plants print meanwhile."""
+    print("\n".join(lines), file=given.out, flush=True)
 
 
 def _parser() -> argparse.ArgumentParser:
@@ -101,12 +114,14 @@ def _check(given: argparse.Namespace, threads: str) -> int:
 
     root = root_of(given.paths)
     options = _options(given, root)
-    result = run.check_paths(given.paths, options, root, threads=threads, told=_teller(options))
-    print("\n".join(("", *result.lines)))
+    if options.reports and (refused := refusal(options.reports)):
+        raise RecordError(refused)
+    result = run.check_paths(given.paths, options, root, threads=threads, told=_teller(given, options))
+    _say(given, "", *result.lines)
     return 0 if result.passed else 1
 
 
-def _teller(options: Options) -> Callable[[Verdict], None]:
+def _teller(given: argparse.Namespace, options: Options) -> Callable[[Verdict], None]:
     """What shows each verdict as soon as it is known: a line for a pass, the whole text for everything else."""
     from . import run
     from .report.text import failure
@@ -115,7 +130,7 @@ def _teller(options: Options) -> Callable[[Verdict], None]:
 
     def tell(verdict: Verdict) -> None:
         told = failure(verdict, evidence=evidence) if verdict.status.breaks_build else f"{verdict.id}: {verdict.status}"
-        print(told, flush=True)
+        _say(given, told)
 
     return tell
 
@@ -132,14 +147,14 @@ def _replay(given: argparse.Namespace, threads: str) -> int:
         for figure in verdict.figures
     ]
     # without evidence there is no replay command in the text: this is the replay
-    print(failure(replace(verdict, evidence=(), notes=(*drive, *verdict.notes, *exact))))
+    _say(given, failure(replace(verdict, evidence=(), notes=(*drive, *verdict.notes, *exact))))
     return 1 if verdict.status.breaks_build else 0
 
 
 def _pin(given: argparse.Namespace, threads: str) -> int:
     from . import run
 
-    print("\n".join(run.pin(given.file, given.item)))
+    _say(given, *run.pin(given.file, given.item))
     return 0
 
 
@@ -147,7 +162,7 @@ def _explain(given: argparse.Namespace, threads: str) -> int:
     from . import run
 
     cases = run.points(given.spec, given.point)
-    print("\n\n".join("\n".join(run.effective(case)) for case in cases))
+    _say(given, "\n\n".join("\n".join(run.effective(case)) for case in cases))
     return 0
 
 
@@ -156,7 +171,7 @@ def _schema(given: argparse.Namespace, threads: str) -> int:
 
     from .spec.schema import schema
 
-    print(json.dumps(schema(), indent=1, sort_keys=True))
+    _say(given, json.dumps(schema(), indent=1, sort_keys=True))
     return 0
 
 
@@ -167,7 +182,7 @@ def _derive(given: argparse.Namespace, threads: str) -> int:
 
     made = derive(run.points(given.spec, given.point, delivered=False), given.to, Options(), force=given.force)
     for path in made.written:
-        print(f"wrote {run.as_typed(path)}")
+        _say(given, f"wrote {run.as_typed(path)}")
     if made.failed:
         print("\n".join((*made.failed, "nothing was written")), file=sys.stderr)
     return 1 if made.failed else 0

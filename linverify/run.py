@@ -17,7 +17,7 @@ from .checks.judge import judge
 from .checks.replay import replayed
 from .core.case import Case, CheckAsk, Options
 from .core.drive import Drive
-from .core.errors import LinverifyError, Problem, SpecError
+from .core.errors import LinverifyError, Problem, RecordError, SpecError
 from .core.signals import nearest
 from .core.verdict import Verdict
 from .report import files, record, tables, text
@@ -60,7 +60,10 @@ class Concluded:
 
 
 def conclude(books: Books, options: Options, root: Path) -> Concluded:
-    """Make the record, write the reports, and say how the run went. Raises RecordError."""
+    """Make the record, write the reports, and say how the run went. Raises RecordError for what makes no record.
+
+    Reports that cannot be written take nothing from the verdicts, but the run has not passed.
+    """
     made = record.build(
         books.verdicts,
         planned=books.planned,
@@ -72,9 +75,15 @@ def conclude(books: Books, options: Options, root: Path) -> Concluded:
         why=books.why,
     )
     verdicts = record.verdicts_of(made)
-    written = files.write(made, options.reports) if options.reports else ()
-    lines = _lines(verdicts, written, options, partial=books.partial)
-    return Concluded(made, written, lines, not any(verdict.status.breaks_build for verdict in verdicts))
+    written: tuple[Path, ...] = ()
+    unwritten: tuple[str, ...] = ()
+    try:
+        written = files.write(made, options.reports) if options.reports else ()
+    except RecordError as error:
+        unwritten = (f"the reports could not be written: {error}",)
+    lines = (*_lines(verdicts, written, options, partial=books.partial), *unwritten)
+    broken = any(verdict.status.breaks_build for verdict in verdicts)
+    return Concluded(made, written, lines, not broken and not unwritten)
 
 
 def _lines(verdicts: Sequence[Verdict], written: Sequence[Path], options: Options, *, partial: bool) -> tuple[str, ...]:
@@ -201,7 +210,7 @@ def _saved(file: Path, item: str | None) -> tuple[Drive, Case, CheckAsk]:
     drive, own = opened(file)
     name = item or own
     if not name:
-        raise SelectionError(f"{file.name} does not say which check it belongs to; name it: SPEC::POINT::CHECK")
+        raise SelectionError(f"{file} does not say which check it belongs to; name it: SPEC::POINT::CHECK")
     case, ask = select(name, file)
     if ask.kind != "follows":
         raise SelectionError(f"{name} drives nothing; a drive belongs to a check `follows`")

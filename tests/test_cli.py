@@ -2,7 +2,9 @@
 
 from __future__ import annotations
 
+import errno
 import json
+import os
 import re
 import subprocess
 import sys
@@ -95,7 +97,48 @@ MISTAKES: list[tuple[list[str], str]] = [
     (["replay", "nowhere.json"], "nowhere.json: cannot be read: No such file or directory"),
     (["replay", "notes.json"], "notes.json: is no JSON: Expecting value: line 1 column 1 (char 0)"),
     (["pin", "nowhere.json"], "nowhere.json: cannot be read: No such file or directory"),
+    (["replay", "specs/../no/where.json"], "specs/../no/where.json: cannot be read: No such file or directory"),
+    (["replay", "specs"], "specs: cannot be read: Is a directory"),
+    (["replay", "specs/plant.py"], "specs/plant.py: is no JSON: Expecting value: line 2 column 1 (char 1)"),
+    (
+        ["check", "--reports", "notes.json", "specs/basin.yaml"],
+        "no reports can be written to notes.json: notes.json is in the way and no folder",
+    ),
 ]
+
+
+def test_what_a_plant_prints_is_told_once(project: Path, capsys: pytest.CaptureFixture[str]) -> None:
+    _write(project, "specs/basin.yaml", SPEC)
+    _write(project, "specs/plant.py", PLANT.replace("    return u", '    print("level is", x)\n    return u'))
+    assert main(["check", "specs"]) == 0
+    told = capsys.readouterr()
+    assert "level is" not in told.out
+    assert told.out.endswith("4 checks: 4 pass\nreport: reports/compliance.md\n")
+    said = r"note: the plant printed \d+ lines while it was called, which are not shown; it began with 'level is .*'\n"
+    assert re.fullmatch(said, told.err)
+
+
+def test_a_disk_that_fills_up_takes_nothing_from_the_verdicts(
+    project: Path, capsys: pytest.CaptureFixture[str], monkeypatch: pytest.MonkeyPatch
+) -> None:
+    """Evidence and reports cannot be saved: each says so in a sentence, and the verdicts are told all the same."""
+    _write(project, "specs/breaks.yaml", BREAKS)
+    full = OSError(errno.ENOSPC, os.strerror(errno.ENOSPC))
+    opened = Path.open
+
+    def open_less(path: Path, mode: str = "r", *rest: Any, **named: Any) -> Any:
+        if "x" in mode:
+            raise full
+        return opened(path, mode, *rest, **named)
+
+    monkeypatch.setattr(Path, "open", open_less)
+    assert main(["check", "specs"]) == 1
+    told = capsys.readouterr()
+    assert "specs/breaks.yaml::low::follows: fail" in told.out
+    assert "(not saved: No space left on device)" in told.out
+    assert re.search("\\d+ checks: .* fail", told.out)
+    assert re.search("^the reports could not be written: .*: No space left on device$", told.out, flags=re.MULTILINE)
+    assert not told.err
 
 
 @pytest.mark.parametrize("words, message", MISTAKES, ids=[" ".join(words) for words, _ in MISTAKES])

@@ -61,7 +61,10 @@ def saved(
             "model": {name: _rows(runs.model[at, :, :, 0]) for at, name in enumerate(runs.signals)},
             "ended": float(runs.ended[0]),
         }
-        pinned.write(options.reports / FOLDER, drive, about, key)
+        try:
+            pinned.write(options.reports / FOLDER, drive, about, key)
+        except OSError as error:  # a full disk takes nothing from the verdict
+            text += f" (not saved: {error.strerror or error})"
     return Evidence(role, key, text)
 
 
@@ -101,7 +104,7 @@ def opened(path: Path) -> tuple[Drive, str]:
 
     Raises DriveFileError, naming the file.
     """
-    drive, about = pinned.read(path)
+    drive, about = pinned.read(path, str(path))
     item = about.get("item", "")
     return drive, item if isinstance(item, str) else ""
 
@@ -111,6 +114,6 @@ def kept(path: Path, folder: Path, item: str) -> Path:
 
     Returns the new path. Raises DriveFileError and OSError.
     """
-    drive, about = pinned.read(path)
+    drive, about = pinned.read(path, str(path))
     text = {"text": about["text"]} if isinstance(about.get("text"), str) else {}
     return pinned.write(folder, drive, {**text, "item": item}, path.stem)

@@ -49,22 +49,26 @@ def write(folder: Path, drive: Drive, about: Mapping[str, Any], name: str = "") 
     return path
 
 
-def read(path: Path) -> tuple[Drive, dict[str, Any]]:
-    """The drive of a file and everything else that stands in it. Raises DriveFileError, naming the file."""
+def read(path: Path, shown: str = "") -> tuple[Drive, dict[str, Any]]:
+    """The drive of a file and everything else that stands in it. Raises DriveFileError, naming the file.
+
+    shown: how messages call the file; left out: by its name.
+    """
+    shown = shown or path.name
     try:
         data = json.loads(path.read_text(encoding="utf-8"))
     except OSError as error:
-        raise DriveFileError(f"{path.name}: cannot be read: {error.strerror or error}") from error
+        raise DriveFileError(f"{shown}: cannot be read: {error.strerror or error}") from error
     except ValueError as error:
-        raise DriveFileError(f"{path.name}: is no JSON: {error}") from error
+        raise DriveFileError(f"{shown}: is no JSON: {error}") from error
     if not isinstance(data, dict) or WORD not in data:
-        raise DriveFileError(f"{path.name}: is no drive file: the word {WORD!r} is missing")
+        raise DriveFileError(f"{shown}: is no drive file: the word {WORD!r} is missing")
     if data[WORD] != FORMAT:
-        raise DriveFileError(f"{path.name}: has format {data[WORD]!r}; this version reads format {FORMAT}")
+        raise DriveFileError(f"{shown}: has format {data[WORD]!r}; this version reads format {FORMAT}")
     try:
         drive = Drive.from_data(data["drive"])
     except (KeyError, TypeError, ValueError) as error:
-        raise DriveFileError(f"{path.name}: holds no usable drive: {error}") from error
+        raise DriveFileError(f"{shown}: holds no usable drive: {error}") from error
     return drive, {key: value for key, value in data.items() if key not in (WORD, "drive")}
 
 

@@ -59,6 +59,11 @@ class Ledger:
         points = [point for point in self.points if point["skipped"]]
         return [f"{point['spec']}::{point['point']}::{check}" for point in points for check in point["checks"]]
 
+    @property
+    def nothing(self) -> bool:
+        """True where nothing is to be judged: no check was selected, or only such as are skipped."""
+        return not set(self.selected) - set(self.skipped)
+
     def absorb(self, text: str) -> None:
         """Take over what another process wrote (`dumps`); the same specs read there count once."""
         other = json.loads(text)
@@ -145,7 +150,7 @@ class Gather:
         self.ledger.selected = self.ledger.selected or self.announced
         passed = self._conclude()
         if not passed and session.exitstatus in (pytest.ExitCode.OK, pytest.ExitCode.NO_TESTS_COLLECTED):
-            nothing = not self.ledger.selected
+            nothing = self.ledger.nothing
             session.exitstatus = pytest.ExitCode.NO_TESTS_COLLECTED if nothing else pytest.ExitCode.TESTS_FAILED
 
     def pytest_terminal_summary(self, terminalreporter: Any) -> None:
@@ -158,7 +163,7 @@ class Gather:
     def _conclude(self) -> bool:
         """Whether the build may go on; writes the reports and the lines."""
         if not self.ledger.selected:
-            self.lines = [self._nothing()]
+            self.lines = [*self._misspelt(), self._nothing()]
             return False
         if not self.verdicts and self.unread:
             self.lines = ["nothing was judged, because of the mistakes above; earlier reports are kept"]
@@ -174,7 +179,9 @@ class Gather:
             self.lines = [f"the reports could not be written: {error}"]
             return False
         self.lines = [*(f"{name} was not judged: it could not be read" for name in self.unread), *result.lines]
-        return result.passed and not self.unread
+        if self.ledger.nothing:
+            self.lines.append("every check that was selected is skipped, so nothing was judged")
+        return result.passed and not self.unread and not self.ledger.nothing
 
     def books(self) -> Books:
         """What `run.conclude` needs: verdicts, the plan, the points, the sources, and whether something is left out."""
@@ -206,6 +213,22 @@ class Gather:
             threads=ledger.threads,
             why={name: self.why.get(name, ended) for name in missing},
         )
+
+    def _misspelt(self) -> list[str]:
+        """The nearest right word for each check or operating point on the command line that is not there."""
+        from ..core.signals import nearest
+
+        points = [f"{point['spec']}::{point['point']}" for point in self.ledger.points]
+        lines = []
+        for given in self.config.args:
+            name = given.partition("[")[0]
+            offered = self.ledger.offered if name.count("::") > 1 else points
+            # as pytest names them: from its root folder, wherever it was started
+            ends = [one for one in offered if one.split("::")[0].endswith(Path(name.split("::")[0]).name)]
+            typed = "::".join([ends[0].split("::")[0], *name.split("::")[1:]]) if ends else name
+            if "::" in name and typed not in offered and (near := nearest(typed, ends)):
+                lines.append(f"there is no {given}; did you mean {near!r}?")
+        return lines
 
     def _nothing(self) -> str:
         if self.unread:

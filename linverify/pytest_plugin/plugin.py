@@ -6,6 +6,10 @@ scipy is therefore imported inside the hooks, and only where `--linverify` was g
 
 from __future__ import annotations
 
+import os
+import sys
+from collections.abc import Generator
+from contextlib import suppress
 from pathlib import Path
 from typing import TYPE_CHECKING, Any
 
@@ -18,6 +22,7 @@ if TYPE_CHECKING:
     from .scheduler import PointScheduling
 
 THREADS_SET = pytest.StashKey[str]()
+TERMINAL = pytest.StashKey[int]()  # a descriptor of standard output as it was before anything captured it
 
 
 def pytest_addoption(parser: pytest.Parser) -> None:
@@ -25,13 +30,19 @@ def pytest_addoption(parser: pytest.Parser) -> None:
     add_options(parser)
 
 
-@pytest.hookimpl(tryfirst=True)
-def pytest_load_initial_conftests(early_config: pytest.Config) -> None:
-    """One thread for linear algebra, before any conftest can load numpy; workers inherit the environment."""
+@pytest.hookimpl(wrapper=True, tryfirst=True)
+def pytest_load_initial_conftests(early_config: pytest.Config) -> Generator[None, object, object]:
+    """One thread for linear algebra, before any conftest can load numpy; workers inherit the environment.
+
+    The terminal's output is kept here for signs of life: further in, standard output is captured.
+    """
     if early_config.known_args_namespace.linverify:
         from ..core.threads import one_thread
 
         early_config.stash[THREADS_SET] = one_thread()
+        with suppress(OSError, ValueError, AttributeError):  # not every standard output is a file
+            early_config.stash[TERMINAL] = os.dup(sys.stdout.fileno())
+    return (yield)
 
 
 def pytest_configure(config: pytest.Config) -> None:
@@ -43,8 +54,11 @@ def pytest_configure(config: pytest.Config) -> None:
     from .gather import LEDGER, Gather, Ledger
 
     config.stash[SETTINGS] = settings = Settings.of(config)
-    if settings.reports.is_file():
-        raise pytest.UsageError(f"--linverify-reports: {settings.reports.name} is a file, not a folder")
+    from ..report.folder import refusal
+
+    reports = not hasattr(config, "workerinput") and not config.getoption("collectonly")
+    if reports and (refused := refusal(settings.reports)):
+        raise pytest.UsageError(refused)
     ledger = config.stash[LEDGER] = Ledger(how=config.stash.get(THREADS_SET, "unknown"))
     config.pluginmanager.register(ledger, "linverify-ledger")
     if not hasattr(config, "workerinput"):
@@ -59,7 +73,14 @@ def pytest_sessionstart(session: pytest.Session) -> None:
     if SETTINGS in config.stash and seen:
         from .progress import Progress
 
-        config.pluginmanager.register(Progress.on(config), "linverify-progress")
+        config.pluginmanager.register(Progress.on(config, config.stash.get(TERMINAL, None)), "linverify-progress")
+
+
+def pytest_unconfigure(config: pytest.Config) -> None:
+    """Let the terminal go."""
+    if TERMINAL in config.stash:
+        os.close(config.stash[TERMINAL])
+        del config.stash[TERMINAL]
 
 
 def pytest_collect_file(file_path: Path, parent: pytest.Collector) -> SpecFile | None:

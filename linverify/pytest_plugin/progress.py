@@ -6,6 +6,7 @@ workers and without. The lines come from a thread of its own, because the check 
 
 from __future__ import annotations
 
+import os
 import threading
 import time
 from dataclasses import dataclass, field
@@ -26,16 +27,34 @@ class Lines(Protocol):
         """Write one line, on a line of its own."""
 
 
-@dataclass(frozen=True, slots=True)
+@dataclass(slots=True)
 class Terminal:
-    """pytest's terminal. Its own `write_line` takes a row of dots for an empty line when it is quiet or has workers."""
+    """The terminal, written to past pytest's own writer: while a test runs that one's output is captured with the rest.
+
+    pytest's writer does not know of our lines and goes on where it believes to be. Mutable: remembers where that was.
+    """
+
+    config: pytest.Config
+    descriptor: int
+    width: int = 0
+
+    def write_line(self, line: str) -> None:
+        """Write one line, on a line of its own."""
+        width = self.config.get_terminal_writer().width_of_current_line
+        begun = "\n" if width and width != self.width else ""
+        self.width = width
+        os.write(self.descriptor, f"{begun}{line}\n".encode(errors="replace"))
+
+
+@dataclass(frozen=True, slots=True)
+class Writer:
+    """pytest's own writer, where standard output is no file: nothing captures it then."""
 
     config: pytest.Config
 
     def write_line(self, line: str) -> None:
         """Write one line, on a line of its own."""
-        reporter, writer = self.config.pluginmanager.getplugin("terminalreporter"), self.config.get_terminal_writer()
-        reporter.ensure_newline()
+        writer = self.config.get_terminal_writer()
         if writer.width_of_current_line:
             writer.line()
         writer.line(line)
@@ -55,9 +74,9 @@ class Progress:
     _thread: threading.Thread | None = None
 
     @classmethod
-    def on(cls, config: pytest.Config) -> Progress:
-        """For the terminal of this run."""
-        return cls(Terminal(config), FIRST, AGAIN)
+    def on(cls, config: pytest.Config, descriptor: int | None) -> Progress:
+        """For the terminal of this run; descriptor: of its standard output, where that is a file."""
+        return cls(Writer(config) if descriptor is None else Terminal(config, descriptor), FIRST, AGAIN)
 
     def pytest_runtest_logstart(self, nodeid: str) -> None:
         """An item has begun, here or on a worker."""

@@ -64,7 +64,7 @@ def _written_aside(path: Path, text: str) -> Path:
     except (OSError, UnicodeEncodeError) as error:
         with suppress(OSError):
             temporary.unlink(missing_ok=True)
-        raise RecordError(f"{path} cannot be written: {error}") from error
+        raise RecordError(f"{path} cannot be written: {getattr(error, 'strerror', None) or error}") from error
     return temporary
 
 
@@ -72,7 +72,7 @@ def _renamed(temporary: Path, path: Path) -> None:
     try:
         temporary.replace(path)
     except OSError as error:
-        raise RecordError(f"{path} cannot be written: {error}") from error
+        raise RecordError(f"{path} cannot be written: {getattr(error, 'strerror', None) or error}") from error
     with suppress(OSError, AttributeError):  # not every system can flush a folder
         folder = os.open(path.parent, os.O_RDONLY | os.O_DIRECTORY)
         try:

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import pytest
 from basin_project import SPEC, Project
 
 BAD = SPEC.replace("title", "titel").replace("0.5 m}", "0.5 kg}")
@@ -50,6 +51,21 @@ def test_a_yaml_file_that_is_no_spec_is_an_error(project: Project) -> None:
     result = project.run("specs")
     assert result.ret == 2
     result.stdout.fnmatch_lines(["specs/notes.yaml:1:1: *linverify*"])
+
+
+@pytest.mark.parametrize(
+    "given, near",
+    [
+        ("specs/basin.yaml::low::trim", "specs/basin.yaml::low::trims"),
+        ("specs/basin.yaml::hihg::trims", "specs/basin.yaml::high::trims"),
+        ("specs/basin.yaml::hihg", "specs/basin.yaml::high"),
+    ],
+)
+def test_a_check_that_is_not_there_is_told_with_the_nearest(project: Project, given: str, near: str) -> None:
+    project.write("specs/basin.yaml", SPEC)
+    result = project.run(given)
+    assert result.ret == 4
+    result.stdout.fnmatch_lines([f"there is no {given}; did you mean '{near}'?"])
 
 
 def test_a_plant_that_cannot_be_imported_is_named_without_our_traceback(project: Project) -> None:

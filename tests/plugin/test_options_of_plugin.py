@@ -26,7 +26,18 @@ def test_a_reports_folder_that_is_a_file_is_told_before_anything_runs(project: P
     project.write("out", "a file")
     result = project.run("--linverify-reports=out", "specs")
     assert result.ret == 4
-    result.stderr.fnmatch_lines(["ERROR: --linverify-reports: out is a file, not a folder"])
+    result.stderr.fnmatch_lines(["ERROR: no reports can be written to out: out is in the way and no folder"])
+
+
+def test_a_folder_that_cannot_be_written_to_is_told_before_anything_runs(
+    project: Project, monkeypatch: pytest.MonkeyPatch
+) -> None:
+    project.write("specs/basin.yaml", SPEC)
+    monkeypatch.setattr("os.access", lambda place, mode: False)  # as on a disk mounted for reading only
+    result = project.run("specs")
+    assert result.ret == 4
+    result.stderr.fnmatch_lines(["ERROR: no reports can be written to reports: . cannot be written to"])
+    assert project.run("--collect-only", "specs").ret == 0  # writes nothing
 
 
 def test_seed_profile_and_folder_arrive_in_the_header_and_the_record(project: Project) -> None:

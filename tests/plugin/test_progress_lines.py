@@ -90,16 +90,20 @@ def test_lines_appear_between_the_others(
     result.assert_outcomes(passed=4)
 
 
-def test_with_workers_the_lines_come_from_the_process_that_has_the_terminal(project: Project) -> None:
+@pytest.mark.parametrize("arguments", [("-n", "2"), (), ("-v",), ("-q",), ("-s",)])
+def test_lines_reach_the_terminal_once_and_repeat_nothing(project: Project, arguments: tuple[str, ...]) -> None:
+    """Whatever is captured: the lines come from the process that has the terminal, past what captures its output."""
     project.write("specs/basin.yaml", WRONG)
     project.write(
         "conftest.py",
         "import time\nimport pytest\nimport linverify.pytest_plugin.progress as progress\nprogress.FIRST = 0.05\n"
         "@pytest.fixture(autouse=True)\ndef slow():\n    time.sleep(0.5)\n",
     )
-    result = project.spawn("-n", "2", "specs")
+    result = project.spawn(*arguments, "specs")
     assert result.ret == 1
     lines = [line for line in result.outlines if "still running" in line]
+    assert len(lines) == 4
+    assert sum(line.startswith("specs/basin.yaml ") for line in result.outlines) <= 1
     assert {line.removeprefix("still running after 0 s: specs/basin.yaml::") for line in lines} == {
         "low::trims",
         "low::differentiable",

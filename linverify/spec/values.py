@@ -114,15 +114,11 @@ def plant(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Pla
 
 
 def source(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> FileWord | None:
-    """`derive`, or a file that models are read from; a row with a refusal takes no file."""
-    expected = "derive is expected" if row.refusal else 'derive or a file is expected, as in "models/{point}.json"'
-    scalar = reader.scalar(node, called, expected)
+    """`derive`, or a file that models are read from."""
+    scalar = reader.scalar(node, called, 'derive or a file is expected, as in "models/{point}.json"')
     if scalar is None:
         return None
-    if scalar.text == row.default or not row.refusal:
-        return FileWord(scalar.text, reader.folder(scalar.place), scalar.place)
-    reader.tell(scalar.place, f"`{called}`: {row.refusal}", expected, nearest(scalar.text, (row.default,)))
-    return None
+    return FileWord(scalar.text, reader.folder(scalar.place), scalar.place)
 
 
 def choice(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> str | None:
@@ -134,8 +130,6 @@ def choice(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> st
     if scalar.text in row.choices:
         return scalar.text
     wrong = f"`{called}`: {quoted(scalar.text)} is no choice"
-    if row.refusal:
-        wrong = f"`{called}`: {row.refusal}"
     reader.tell(scalar.place, wrong, f"{expected} is expected", nearest(scalar.text, row.choices))
     return None
 

@@ -60,7 +60,6 @@ class Row:
     required: bool = False
     shared: bool = True  # may stand in defaults.yaml
     choices: tuple[str, ...] = ()
-    refusal: str = ""  # what is told of any other choice
     sign: str = ""  # "+": above zero, "0+": zero or above
     most: int | None = None  # of a COUNT: a larger one is most likely a slip, and would take for ever
     available: bool = True
@@ -175,14 +174,12 @@ KEEP_WORDS = (
     Row("outputs", Kind.NAMES, "its outputs; default: all"),
 )
 
-# a word with available=False is refused; so is a file behind `source` as long as its row has a refusal
 LOCAL_MODEL_WORDS = (
-    Row("source", Kind.SOURCE, "where local models come from", default=DERIVE,
-        refusal="local models from files are not available in this version"),
-    Row("keep", Kind.BLOCK, "states, inputs, outputs of a reduced model", KEEP_WORDS, available=False),
-    Row("others", Kind.CHOICE, "what is left out is frozen or settled", choices=("freeze", "settle"), available=False),
+    Row("source", Kind.SOURCE, "where local models come from", default=DERIVE),
+    Row("keep", Kind.BLOCK, "states, inputs, outputs of a reduced model", KEEP_WORDS),
+    Row("others", Kind.CHOICE, "what is left out is frozen or settled", choices=("freeze", "settle")),
     later("with", "loops that are closed inside the model"),
-    Row("agree", Kind.BLOCK, "delivered against derived", AGREE_WORDS, available=False),
+    Row("agree", Kind.BLOCK, "delivered against derived", AGREE_WORDS),
 )  # fmt: skip
 
 DELAY_WORDS = (
@@ -204,15 +201,15 @@ SPEC_WORDS = (
         each(Kind.QUANTITY, dimension="the parameter's")),
     Row("time", Kind.QUANTITY, "the time of trim; needed by a plant that depends on it", dimension="time",
         default="0 s"),
-    Row("wraps", Kind.NAMES, "angles compared modulo a turn", available=False),
-    Row("delays", Kind.BLOCK, "dead time outside the plant function", DELAY_WORDS, available=False),
+    Row("wraps", Kind.NAMES, "angles compared modulo a turn"),
+    Row("delays", Kind.BLOCK, "dead time outside the plant function", DELAY_WORDS),
     Row("envelope", Kind.NAMED, "where the plant may be", each(Kind.LIMITS, LIMIT_WORDS, SIGNAL)),
     Row("exits", Kind.BLOCK, "what leaving the envelope means", (
         Row("complete", Kind.FRACTION, "share of the random drives that must run to the end", default="90 %", sign="+"),
         Row("mismatch", Kind.CHOICE, "an exit that the local model did not predict", default="fail",
             choices=("fail", "report")))),
     Row("trims", Kind.BLOCK, "how exact an equilibrium is", (
-        Row("accuracy", Kind.NUMBER, "each rate, in nominal sizes of its state a time unit", default="1e-8",
+        Row("accuracy", Kind.NUMBER, "each rate, in nominal sizes of its state a second", default="1e-8",
             sign="+"),)),
     Row("every_point", Kind.BLOCK, "what all operating points share", SHARED_POINT_WORDS),
     Row("operating_points", Kind.POINTS, "the operating points", each(Kind.BLOCK, POINT_WORDS), required=True,
@@ -241,7 +238,7 @@ SPEC_WORDS = (
 CHECKS = {
     "trims": True,
     "differentiable": True,
-    "agrees": False,
+    "agrees": True,
     "follows": True,
     "responds": False,
     "modes": False,

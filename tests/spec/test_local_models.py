@@ -15,7 +15,7 @@ from linverify.core.case import Case, CheckAsk, Setting
 from linverify.core.delivered import AgreeAsk, Delays, GainsAsk, Keep, ResponseAsk
 from linverify.core.errors import Place, SpecError
 from linverify.spec import bind
-from linverify.spec.words import CHECKS, LOCAL_MODEL_WORDS, SPEC_WORDS, row_of
+from linverify.spec.words import CHECKS
 
 TURNING = PLANT.replace('"temperature": "degC"}', '"temperature": "deg"}').replace("degC/s", "deg/s")
 STEPPING = PLANT.replace("measurement=measurement,", "measurement=measurement,\n    step=0.5,")
@@ -48,22 +48,6 @@ def load(tmp_path: Path) -> Load:
     return loaded
 
 
-def test_the_words_are_refused_until_their_checks_work(load: Load) -> None:
-    switches = [row_of(LOCAL_MODEL_WORDS, word) for word in ("keep", "others", "agree")]
-    switches += [row_of(SPEC_WORDS, word) for word in ("delays", "wraps")]
-    source = row_of(LOCAL_MODEL_WORDS, "source")
-    assert source is not None
-    if source.refusal:  # the one place to let files in is the row itself
-        with pytest.raises(SpecError, match="local models from files are not available in this version"):
-            load(SOURCE)
-    for row in switches:
-        assert row is not None
-        if not row.available:
-            above = "" if row in SPEC_WORDS else "local_models: "
-            with pytest.raises(SpecError, match=f"`{row.word}` is not available in this version"):
-                load(f"{above}{{{row.word}: {{}}}}\n" if above else f"{row.word}: {{}}\n")
-
-
 def test_without_words_models_are_derived(load: Load) -> None:
     case = load("")
     assert case.local.delivered is None
@@ -72,7 +56,6 @@ def test_without_words_models_are_derived(load: Load) -> None:
     assert "agrees" not in [check.kind for check in case.checks]
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_agree_with_all_its_words(load: Load) -> None:
     words = """\
 local_models:
@@ -97,7 +80,6 @@ local_models:
     assert Setting("local_models.agree.response.floor", "1 %", "default of the language") in case.settings
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_only_what_is_asked_for_is_told(load: Load) -> None:
     words = {setting.word: setting.text for setting in load(SOURCE).settings if setting.word.startswith("local")}
     assert words == {"local_models.source": "m.json", "local_models.agree.point": "1 %", "local_models.file": "m.json"}
@@ -106,7 +88,6 @@ def test_only_what_is_asked_for_is_told(load: Load) -> None:
     ]
 
 
-@pytest.mark.usefixtures("delivered_words")
 @pytest.mark.parametrize("source", ["", "source: m.json, "])
 def test_keep(load: Load, source: str) -> None:
     model = js(**ONE)
@@ -121,7 +102,6 @@ def test_keep(load: Load, source: str) -> None:
     assert (case.local.delivered is None) == (not source)
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_anonymous_states(load: Load) -> None:
     for states in (None, ["", ""]):
         model = load(SOURCE, js(states=states, x0={"level": 1.5})).local.delivered
@@ -133,7 +113,6 @@ def test_anonymous_states(load: Load) -> None:
     assert larger.local.delivered.A.shape == (3, 3)
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_digits_of_what_was_printed(load: Load) -> None:
     def digits(A: Any) -> int:
         model = load(SOURCE, js(A=A)).local.delivered
@@ -145,7 +124,6 @@ def test_digits_of_what_was_printed(load: Load) -> None:
     assert digits([[-1.0 / 3.0, 0.5], [0.0, 0.25]]) == 16
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_rounding_is_that_of_the_print_in_the_units_of_the_plant(load: Load) -> None:
     def rounding(entries: str, **words: Any) -> dict[str, Any]:
         text = js(**words).replace(str(MODEL["A"]), entries)
@@ -161,7 +139,6 @@ def test_rounding_is_that_of_the_print_in_the_units_of_the_plant(load: Load) -> 
     np.testing.assert_allclose(converted, [[0.5e-3 / 60, 0.5e-7 / 60], [0.0, 0.5e-5 / 60]])
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_delays_and_wraps(load: Load) -> None:
     case = load("delays: {inputs: {heat: 1 min}, outputs: {excess: 250 ms}}\nwraps: [temperature]\n", plant=TURNING)
     assert dict(case.delays.inputs) == {"heat": 60.0}
@@ -170,7 +147,6 @@ def test_delays_and_wraps(load: Load) -> None:
     assert dict(load("delays: {inputs: {heat: 1.5 s}}\n", plant=STEPPING).delays.inputs) == {"heat": 1.5}
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_a_discrete_plant_takes_its_own_sample_time(load: Load) -> None:
     model = load(SOURCE, js(dt=500, time_unit="ms"), STEPPING).local.delivered
     assert model is not None
@@ -261,7 +237,6 @@ MISTAKES: dict[str, tuple[str, str, str, str]] = {
 }  # fmt: skip
 
 
-@pytest.mark.usefixtures("delivered_words")
 @pytest.mark.parametrize("name", MISTAKES)
 def test_the_whole_text_is_told(load: Load, name: str) -> None:
     spec, model, plant, told = MISTAKES[name]
@@ -270,7 +245,6 @@ def test_the_whole_text_is_told(load: Load, name: str) -> None:
     assert str(caught.value) == told
 
 
-@pytest.mark.usefixtures("delivered_words")
 def test_requirements_may_ask_for_agrees(load: Load) -> None:
     case = load(SOURCE + "requirements: {R: {checks: [full.agrees]}}\n")
     assert case.requirements[0].checks == ("agrees",)

@@ -16,8 +16,6 @@ from linverify.core.delivered import DeliveredModel
 from linverify.core.errors import Place, SpecError
 from linverify.spec import bind
 
-pytestmark = pytest.mark.usefixtures("delivered_words")
-
 PLANT = """
 from linverify import Plant
 

@@ -18,8 +18,6 @@ from linverify.core.case import Case
 from linverify.core.errors import SpecError
 from linverify.spec import bind
 
-pytestmark = pytest.mark.usefixtures("delivered_words")
-
 TOLD: dict[str, str] = {}
 for block in (Path(__file__).parent / "bad_models.txt").read_text(encoding="utf-8").strip().split("\n\n"):
     name, *lines = block.split("\n")

@@ -21,13 +21,13 @@ DEMOS = Path(__file__).parents[2] / "specs"
 
 # every word that stands at the head of a line of the language, and whether this version has it
 TOP = {
-    "linverify": True, "title": True, "plant": True, "parameters": True, "time": True, "wraps": False, "delays": False,
+    "linverify": True, "title": True, "plant": True, "parameters": True, "time": True, "wraps": True, "delays": True,
     "envelope": True, "exits": True, "trims": True, "every_point": True, "operating_points": True, "local_models": True,
     "differentiable": True, "drives": True, "error_bands": True, "frequency_bands": False, "modes": False,
     "actuators": False, "loops": False, "variations": False, "reach": False, "handover": False, "coverage": False,
     "budget": False, "requirements": True, "accepted": False,
 }  # fmt: skip
-INNER_LATER = {"loop", "at", "keep", "others", "with", "agree", "modes", "loops"}
+INNER_LATER = {"loop", "at", "with", "modes", "loops"}
 
 
 def rows_of(rows: tuple[Row, ...]) -> Iterator[Row]:

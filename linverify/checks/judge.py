@@ -26,6 +26,8 @@ def judge_study(study: Study, ask: CheckAsk) -> Verdict:
     if study.case.skipped:
         return blank(study.case, ask, Status.SKIPPED, study.case.skipped)
     try:
+        if study.timeless:
+            return blank(study.case, ask, Status.UNDECIDED, study.timeless)
         for need in row.needs:
             if unmet := study.unmet(need):
                 return blank(study.case, ask, Status.UNDECIDED, unmet)

@@ -24,6 +24,8 @@ from ..numerics.sampled import sampled
 from ..numerics.trim import TrimResult, trim
 
 PROBES = 7  # points at which a plant is tried for batches and determinism
+SPANS = (0.37139, 1.93473, 13.7371, 211.393)  # time units after the trim at which dependence on t is looked for
+STEPS = (1, 2, 7, 53)  # the same of a difference equation, in steps
 SHARE = 0.9  # of the envelope: wide enough to cross saturations, inside its edges
 KEPT = 64  # studies kept in a process; a scheduler hands points out in blocks, so more are never alive
 
@@ -40,9 +42,27 @@ class Study:
     def bound(self) -> BoundPlant:
         """The plant with this point's parameters. Raises PlantError where it is not deterministic."""
         plant = BoundPlant(self.case.plant, self.case.parameters)
-        plant.detect(self.case.time, *self._probes())
+        plant.detect(self.case.moment, *self._probes())
         plant.last_error = None
         return plant
+
+    @cached_property
+    def moved_by_time(self) -> str:
+        """The name of a row of the plant that t moves; empty where the plant does not depend on t."""
+        case, step = self.case, self.case.plant.step
+        spans = [*SPANS, *(share * drives.horizon for drives in case.drives for share in (0.31, 0.97))]
+        if step is not None:
+            spans = [*STEPS, *(round(span / step) for span in spans[len(SPANS) :])]
+        name = self.bound.moved_by_time([case.moment, *(case.moment + span for span in spans)], *self._probes())
+        self.bound.last_error = None
+        return name
+
+    @property
+    def timeless(self) -> str:
+        """Why nothing can be judged before the spec says at which time; empty where it does, or need not."""
+        if self.case.time is not None or not self.moved_by_time:
+            return ""
+        return f"the plant depends on t ({self.moved_by_time} changes with it); say at which `time` it is trimmed"
 
     def trim(self) -> TrimResult:
         """The equilibrium of this point, searched once."""
@@ -99,6 +119,8 @@ class Study:
 
         A delivered model needs no derived one: it is driven even where the plant has no slopes.
         """
+        if self.timeless:
+            return self.timeless
         result = self.trim()
         if not result.outcome.done or result.point is None:
             return f"no operating point to work from: {result.outcome.value}"
@@ -151,7 +173,7 @@ class Study:
     def _trim(self) -> TrimResult:
         case = self.case
         return trim(
-            self.bound, case.trim, case.envelope, case.nominal, case.time,
+            self.bound, case.trim, case.envelope, case.nominal, case.moment,
             shown=case.shown, shown_limits=case.shown_limits,
         )  # fmt: skip
 

@@ -14,6 +14,7 @@ from __future__ import annotations
 
 from typing import Any
 
+from ..core import units
 from ..core.case import Case, CheckAsk, Expected
 from ..core.model import OperatingPoint
 from ..core.outcome import Outcome
@@ -36,7 +37,7 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
         place=ask.place,
         reason=reason,
         figures=figures,
-        notes=(*result.notes, *_failed_calls(result)),
+        notes=(*result.notes, *_frozen(study), *_failed_calls(result)),
         details=_details(study, result),
     )
 
@@ -117,6 +118,15 @@ def _reason(study: Study, point: OperatingPoint, figures: tuple[Figure, ...]) ->
 def _shown(study: Study, name: str, expected: Expected) -> Shown:
     """The unit that the expected value is written in."""
     return expected.shown or Shown(study.case.plant.unit(name))
+
+
+def _frozen(study: Study) -> tuple[str, ...]:
+    """Where the plant depends on t: that its local model does not."""
+    case, step = study.case, study.case.plant.step
+    if case.time is None or not study.moved_by_time:
+        return ()
+    moment = units.told(case.time if step is None else case.time * step, case.plant.time_unit)
+    return (f"the plant depends on t ({study.moved_by_time}): its local model is that of {moment}, frozen",)
 
 
 def _failed_calls(result: TrimResult) -> tuple[str, ...]:

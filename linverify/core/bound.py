@@ -6,7 +6,7 @@ compared with single calls at several points. Until then, and where it cannot, c
 
 from __future__ import annotations
 
-from collections.abc import Callable, Mapping
+from collections.abc import Callable, Mapping, Sequence
 from dataclasses import dataclass, field
 from types import MappingProxyType
 
@@ -95,6 +95,20 @@ class BoundPlant:
                 reason = self._why_single(asked, t, points_x, points_u)
                 asked.batched = not reason
                 self.why_single = self.why_single or (f"{asked.what}: {reason}" if reason else "")
+
+    def moved_by_time(self, times: Sequence[float], points_x: Array, points_u: Array) -> str:
+        """The name of a row that is not the same at all `times`, "level" or "rate of level"; empty where t moves none.
+
+        points (n, P) and (m, P). Calls that fail are left out.
+        """
+        asked = [("rate of ", self._dynamics), ("", self._measurement)]
+        for word, function in ((word, function) for word, function in asked if function is not None):
+            first, *others = (self._columns_or_nan(function, t, points_x, points_u) for t in times)
+            for other in others:
+                moved = (first != other) & np.isfinite(first) & np.isfinite(other)
+                if moved.any():
+                    return f"{word}{function.rows.names[int(np.argmax(moved.any(axis=1)))]}"
+        return ""
 
     def _measured_states(self, x: Array) -> Array:
         return np.array(x, dtype=np.float64)[[self.states.index(name) for name in self.outputs.names]]

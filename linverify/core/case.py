@@ -210,7 +210,7 @@ class Case:
     envelope: Mapping[str, Interval]
     nominal: Mapping[str, float]  # typical size of a deviation of every state, input and output
     checks: tuple[CheckAsk, ...]
-    time: float = 0.0
+    time: float | None = None  # t of the trim; None: nobody said, which will do for a plant that does not depend on t
     rate_limits: Mapping[str, float] = field(default_factory=lambda: NOTHING)
     slopes: SlopeAsk = field(default_factory=SlopeAsk)
     drives: tuple[DriveSet, ...] = ()
@@ -229,6 +229,11 @@ class Case:
     )  # signals as this point writes them
     shown_limits: Mapping[str, Shown] = field(default_factory=lambda: MappingProxyType({}))  # as the envelope does
     family: int = 1  # operating points that one statement of confidence covers: each is stated at 1 - 0.05 / family
+
+    @property
+    def moment(self) -> float:
+        """The t of the trim, zero where nobody said."""
+        return 0.0 if self.time is None else self.time
 
     def drive_set(self, name: str) -> DriveSet:
         """The set of drives called `name`; raises KeyError."""

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -10,11 +11,12 @@ from ..core.errors import PlantError
 from ..core.model import Array, OperatingPoint
 from ..core.outcome import Outcome
 from .equations import outputs_outside
-from .families import Family, family
+from .edges import Edge
+from .families import Family, family, joined_by
 from .nearest import nearest
 from .roots import Root, told_errors
 from .trim_result import Task, TrimResult, outcome_of
-from .trim_words import active_bounds, numbered, told_unknowns
+from .trim_words import active_bounds, numbered, shown_as, told_rate, told_unknowns
 
 TIE = 1e-6  # equilibria whose distances from `start` differ by less (in nominal sizes) are equally near
 
@@ -55,6 +57,10 @@ def chosen(task: Task, candidates: list[Candidate]) -> TrimResult:
         continues = family(task.system, candidate.root, task.ask.accuracy)
         if continues and (candidate is first or not _named(task) or _comes_nearer(task, candidate, away[0])):
             return _of_family(task, candidate, continues)
+    for candidate in candidates[1:]:
+        continues = joined_by(task.system, first.root, candidate.root, task.ask.accuracy)
+        if continues:  # the ends of a dead zone are regular roots, seen from outside
+            return _of_family(task, first, continues)
     if len(candidates) > 1 and away[1] - away[0] <= TIE:
         return _several(task, candidates)
     others = tuple(candidate.point for candidate in candidates[1:] if candidate.point is not None)
@@ -85,6 +91,27 @@ def accepted(task: Task, candidate: Candidate, others: tuple[OperatingPoint, ...
         active_bounds=active_bounds(task, point),
         notes=(f"other equilibria: {numbered(task, others)}",) if others else (),
     )
+
+
+def on_edge(task: Task, candidates: list[Candidate], edges: Sequence[Edge | None]) -> TrimResult:
+    """Every solution has a jump beside it, so none of them is an equilibrium that anything could rest at."""
+    pairs = [(one, beside) for one, beside in zip(candidates, edges, strict=True) if one.point and beside]
+    pairs.sort(key=lambda pair: round(_from_start(task, pair[0].root.z), 9))
+    (candidate, beside), *_ = pairs
+    system, name = task.system, beside.equation
+    row = system.names.index(name)
+    size = float(np.concatenate([system.rate_sizes, system.output_sizes])[row])
+    what, words = (name, [shown_as(task, name).told_size(side * size) for side in (beside.below, beside.above)])
+    if row < system.rate_rows.size:
+        what = f"the rate of {name}"
+        words = [told_rate(task, name, side * size) for side in (beside.below, beside.above)]
+    across = "jumps across zero" if beside.below * beside.above < 0 else "jumps"
+    at = told_unknowns(task, candidate.point) if candidate.point else ""
+    message = (
+        f"what solves the equations is no equilibrium: {what} {across} at {at}, "
+        f"from {words[0]} below to {words[1]} above in {beside.unknown}; hold {beside.unknown}, or smooth the jump"
+    )
+    return TrimResult(Outcome.NOT_EQUILIBRIUM, closest=candidate.point, message=message)
 
 
 def _named(task: Task) -> list[int]:

@@ -17,6 +17,7 @@ from .roots import Root, open_directions
 
 FIRST_STEP, LONGEST_STEP, SHORTEST_STEP = 5e-3, 5e-2, 1e-4  # nominal sizes
 FAR = 0.25  # nominal sizes of arc that make a family
+LEAST_PLATEAU = 1e-3  # nominal sizes over which equal values are no accident of round-off
 TAKES_PART = 1e-3  # share of the direction from which on an unknown is named
 
 
@@ -36,7 +37,8 @@ def family(system: Equations, root: Root, accuracy: float) -> Family | None:
         (there, end), (back, other) = (_walk(system, root.z, sign * direction, accuracy) for sign in (1.0, -1.0))
         room = _room(system, root.z, direction) + _room(system, root.z, -direction)
         # between close bounds a family is as long as the bounds let it be
-        if there + back >= min(FAR, 0.9 * room) and there + back > 10 * SHORTEST_STEP:
+        far_enough = there + back >= min(FAR, 0.9 * room) and there + back > 10 * SHORTEST_STEP
+        if far_enough or _is_plateau(system, root.z, direction):
             weights = np.maximum(np.abs(end - root.z), np.abs(other - root.z))[: len(system.unknowns)]
             moving = weights >= TAKES_PART * weights.max(initial=0.0)
             names |= {name for name, moves in zip(system.unknowns, moving, strict=True) if moves}
@@ -44,6 +46,32 @@ def family(system: Equations, root: Root, accuracy: float) -> Family | None:
     if not names:
         return None
     return Family(tuple(name for name in system.unknowns if name in names), length)
+
+
+def joined_by(system: Equations, one: Root, other: Root, accuracy: float) -> Family | None:
+    """The family that joins two roots by a straight line of solutions; None where they are not joined."""
+    gap, v = other.z - one.z, len(system.unknowns)
+    size = float(np.abs(gap[:v]).max(initial=0.0))
+    if size < LEAST_PLATEAU:
+        return None  # two ends of one root of higher order
+    between = system.residual(one.z[:, np.newaxis] + gap[:, np.newaxis] * np.linspace(0.0, 1.0, 17)[1:-1])
+    if not np.all(largest(between) <= accuracy):
+        return None
+    names = [name for name, moves in zip(system.unknowns, np.abs(gap[:v]), strict=True) if moves >= TAKES_PART * size]
+    return Family(tuple(names), float(np.linalg.norm(gap)))
+
+
+def _is_plateau(system: Equations, z: Array, direction: Array) -> bool:
+    """Whether the equations have the very same values along a straight piece, as in a dead zone; no power has."""
+    straight = np.where(np.abs(direction) > TAKES_PART * np.abs(direction).max(initial=0.0), direction, 0.0)
+    for side in (-1.0, 1.0):
+        columns = z[:, np.newaxis] + side * LEAST_PLATEAU * straight[:, np.newaxis] * np.linspace(0.0, 1.0, 17)
+        low, high = (bound[:, np.newaxis] for bound in system.box)
+        inside = bool(np.all((columns >= low) & (columns <= high)))
+        values = system.residual(columns)
+        if inside and np.isfinite(values).all() and np.all(values == values[:, :1]):
+            return True
+    return False
 
 
 def _walk(system: Equations, z: Array, direction: Array, accuracy: float) -> tuple[float, Array]:

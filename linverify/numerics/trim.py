@@ -19,7 +19,8 @@ from ..core.bound import BoundPlant
 from ..core.case import Interval, TrimAsk
 from ..core.outcome import Outcome
 from ..core.shown import Shown
-from .choose import candidate_at, chosen, outputs_beyond
+from .choose import candidate_at, chosen, on_edge, outputs_beyond
+from .edges import edge
 from .equations import bounds, equations
 from .least import least
 from .newton import joined
@@ -74,7 +75,12 @@ def _searched(task: Task) -> TrimResult:
         found = roots_among(system, ends, accuracy)
     candidates = [candidate_at(task, root) for root in found.roots]
     usable = [candidate for candidate in candidates if not outputs_beyond(task, candidate)]
-    result = chosen(task, usable) if usable else none(task, ends, candidates, bool(found.fading))
+    edges = [edge(system, candidate.root, accuracy) for candidate in usable]
+    sound = [candidate for candidate, beside in zip(usable, edges, strict=True) if beside is None]
+    if sound or not usable:
+        result = chosen(task, sound) if sound else none(task, ends, candidates, bool(found.fading))
+    else:
+        result = on_edge(task, usable, edges)
     return replace(result, starts=count)
 
 

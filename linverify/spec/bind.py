@@ -174,10 +174,10 @@ class _Binder:
             side.name: side.value for side in self.spec.side if self.ground.known(side.name, side.place, names, what)
         }
 
-    def _time(self) -> float:
-        """The t of the trim, in the plant's unit; steps for a difference equation."""
+    def _time(self) -> float | None:
+        """The t of the trim, in the plant's unit; steps for a difference equation. None where it is not written."""
         if self.spec.time is None:
-            return 0.0
+            return None
         time = self.ground.time(self.spec.time, "time")
         step = self.plant.step
         if step is None or time == 0.0 or math.isnan(time):

@@ -10,8 +10,8 @@ import numpy as np
 from ..core.errors import PlantError
 from ..core.model import Array, OperatingPoint
 from ..core.outcome import Outcome
-from .equations import outputs_outside
 from .edges import Edge
+from .equations import outputs_outside
 from .families import Family, family, joined_by
 from .nearest import nearest
 from .roots import Root, told_errors

@@ -1,8 +1,8 @@
 """Solutions that are none: the equations jump right beside them.
 
-Dry friction as `-0.3 * sign(speed)` lets a search end a hair away from rest, where friction still has its full size and
-happens to balance the push; at rest itself the rate is far from zero. The residual alone cannot tell such an end from an
-equilibrium, so the neighbourhood is asked. A smooth change shrinks with the distance, a jump does not.
+Dry friction as `-0.3 * sign(speed)` lets a search end a hair away from rest, where friction still has its full size
+and happens to balance the push; at rest itself the rate is far from zero. The residual alone cannot tell such an end
+from an equilibrium, so the neighbourhood is asked. A smooth change shrinks with the distance, a jump does not.
 """
 
 from __future__ import annotations

@@ -21,6 +21,7 @@ from .rig import Fidelity, Rig
 from .stiff import Rosenbrock
 
 ROUNDING = 1e-15  # of a state: smallest local error that a step can be held to
+EXPLICIT = 400  # steps an interval that the explicit pair may try before the implicit method has a try
 SHORTEST = 1e-12  # of an interval; a shorter step cannot be told from standing still
 CUT = 1e-9  # of a domain's ends: an input that is cut to its limit may be off by rounding
 SLOW = "more steps an interval were needed than the budget of {} allows"
@@ -51,14 +52,21 @@ def follow(rig: Rig, drives: Courses, names: Sequence[str], times: Array, fideli
     """Simulate the plant along `drives`, and read the states and outputs called `names` at `times` (K, S + 1).
 
     A point may be stiff only away from trim, or its local model may not know a fast pole: where the explicit pair runs
-    out of steps, the implicit method has a try.
+    out of steps, the implicit method has a try. What both give up is fast without being stiff, and is followed by the
+    explicit pair with all the steps that the budget has.
     """
     stiff = rig.stiff(drives.pieces.every)
-    result = _Way(rig, drives, tuple(names), times, fidelity, stiff).went()
-    if not stiff and rig.plant.step is None and Outcome.TOO_MANY_STEPS in result.outcomes:
-        again = _Way(rig, drives, tuple(names), times, fidelity, True).went()
-        again.evaluations += result.evaluations
-        return again
+    first = rig.attempts if stiff or rig.plant.step is not None else min(rig.attempts, EXPLICIT)
+    ways = [(stiff, first)]
+    if not stiff and rig.plant.step is None:
+        ways += [(True, rig.attempts), *([(False, rig.attempts)] if rig.attempts > first else [])]
+    spent = 0
+    for implicit, attempts in ways:
+        result = _Way(rig, drives, tuple(names), times, fidelity, implicit, attempts).went()
+        spent += result.evaluations
+        if Outcome.TOO_MANY_STEPS not in result.outcomes:
+            break
+    result.evaluations = spent
     return result
 
 
@@ -72,6 +80,7 @@ class _Way:
     times: Array
     fidelity: Fidelity
     stiff: bool
+    attempts: int
     limits: Limits = field(init=False)
     piece: Piece = field(init=False)
     batch: Batch = field(init=False)
@@ -170,7 +179,7 @@ class _Way:
         every = self.drives.pieces.length(k)
         # below rounding no step is short enough; the halved grid tells what that costs
         scale = np.maximum(self.fidelity.tolerance * self.rig.weights, ROUNDING * np.abs(self.rig.point.x))
-        demand = Demand(scale[:, np.newaxis], every * self.fidelity.longest, every * SHORTEST, self.rig.attempts)
+        demand = Demand(scale[:, np.newaxis], every * self.fidelity.longest, every * SHORTEST, self.attempts)
         return advance(self.method, self.piece.rates, self.batch, every, self.times.shape[1] - 1, demand)
 
     def _difference(self, k: int) -> Array:
@@ -267,7 +276,7 @@ class _Way:
         """Say why `columns` cannot go on from `when` into the interval."""
         time = self.batch.begun + when
         if slow:
-            self._fail(columns, time, SLOW.format(self.rig.attempts))
+            self._fail(columns, time, SLOW.format(self.attempts))
             return
         for column in np.flatnonzero(columns):
             alone, x = self.piece.alone(int(column)), self.batch.x[:, [column]]

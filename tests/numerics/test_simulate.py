@@ -506,6 +506,17 @@ def test_a_plant_that_turns_stiff_away_from_trim_is_followed_implicitly() -> Non
     assert runs.plant[0, :, :, 1] == pytest.approx(0.05 * (1 - np.exp(-runs.times)), abs=1e-6)
 
 
+def test_what_is_fast_and_not_stiff_gets_all_steps_of_the_budget() -> None:
+    """Fifty turns an interval: too many for the first try, and for an implicit method of order 4 at any time."""
+    fast = 2.0 * np.pi * 100.0
+    plant = plain(lambda t, x, u: [np.cos(fast * t) * fast * 1e-3 + 0.0 * x[0] + u[0] * 1e-3])
+    runs = run_alone(rig_of(plant, [[0]], [[1e-3]], weights=[1e-6]), drive([0.5] * 2), FINE)
+    assert runs.outcomes == (Outcome.DONE,)
+    assert runs.method == "Dormand-Prince 5(4)"
+    assert runs.plant[0, -1, -1, 0] == pytest.approx(5e-4, abs=1e-6)
+    assert runs.evaluations > 8 * 7 * 400 + 8 * 4000  # both others were tried
+
+
 def test_a_trim_on_a_limit_is_not_left_by_rounding() -> None:
     plant = plain(lambda t, x, u: [-2.0 * (x[0] - 0.3) + u[0] * 0.0])
     rig = rig_of(plant, [[-2]], [[0]], x=[0.3 + 1e-8], envelope={"x": Interval(0.3 + 2e-8, 1.0)})

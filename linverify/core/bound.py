@@ -87,14 +87,31 @@ class BoundPlant:
     def detect(self, t: float, points_x: Array, points_u: Array) -> None:
         """Find out whether the plant is deterministic, and whether it answers batches; points (n, P) and (m, P).
 
-        Columns where the plant fails are left out. Raises PlantError where the same call is answered differently.
+        Columns where the plant fails are left out. Raises PlantError where the same call is answered differently, and
+        where an output that is called like a state does not read it.
         """
         self.why_single = ""
+        self._same_as_states(t, points_x, points_u)
         for asked in (self._dynamics, self._measurement):
             if asked is not None:
                 reason = self._why_single(asked, t, points_x, points_u)
                 asked.batched = not reason
                 self.why_single = self.why_single or (f"{asked.what}: {reason}" if reason else "")
+
+    def _same_as_states(self, t: float, points_x: Array, points_u: Array) -> None:
+        """One name is one signal: bands, holds and models take the output for the state."""
+        if self._measurement is None or not (shared := [name for name in self.outputs.names if name in self.states]):
+            return
+        answers = self._columns_or_nan(self._measurement, t, points_x, points_u)
+        for name in shared:
+            state, output = points_x[self.states.index(name)], answers[self.outputs.index(name)]
+            apart = np.isfinite(output) & (np.abs(output - state) > AGREEMENT * np.abs(state).max(initial=0.0))
+            if apart.any():
+                j = int(np.argmax(apart))
+                raise PlantError(
+                    f"output {name} is not the state of that name: called with "
+                    f"{self.told_call(t, points_x[:, j], points_u[:, j])} it returned {float(output[j])!r}"
+                )
 
     def moved_by_time(self, times: Sequence[float], points_x: Array, points_u: Array) -> str:
         """The name of a row that is not the same at all `times`, "level" or "rate of level"; empty where t moves none.

@@ -177,12 +177,12 @@ def linear_signals(rig: Rig, drives: Courses, states: Array, names: Sequence[str
     out = np.empty((len(names), *states.shape[1:]))
     model = rig.model
     for row, name in enumerate(names):
-        if name in model.states:
-            out[row] = states[model.states.index(name)]
-            feed = None if model.ahead is None else model.ahead[model.states.index(name)]
-        elif name in model.outputs:
+        if name in model.outputs:  # before the state of that name: it is what the model says of the signal
             index = model.outputs.index(name)
             out[row], feed = np.tensordot(model.C[index], states, axes=1), model.D[index]
+        elif name in model.states:
+            out[row] = states[model.states.index(name)]
+            feed = None if model.ahead is None else model.ahead[model.states.index(name)]
         else:
             out[row], feed = np.nan, None
         if feed is None:

@@ -143,14 +143,14 @@ class Readout:
         model, u = self.rig.model, self.known(u)
         values = []
         for name in self.names:
-            if name in model.states:
-                row = model.states.index(name)
-                values.append(float(x[row]) + (0.0 if model.ahead is None else float(model.ahead[row] @ u)))
-            elif name not in model.outputs:
-                values.append(float("nan"))
-            else:
+            if name in model.outputs:  # before the state of that name: it is what the model says of the signal
                 row = model.outputs.index(name)
                 values.append(float(model.C[row] @ x + model.D[row] @ u))
+            elif name in model.states:
+                row = model.states.index(name)
+                values.append(float(x[row]) + (0.0 if model.ahead is None else float(model.ahead[row] @ u)))
+            else:
+                values.append(float("nan"))
         return np.array(values)
 
 

@@ -199,8 +199,10 @@ def missing(ground: Ground, generator: np.random.Generator) -> Delivery:
     out = [ground.whole.states.index(name) for name in ground.whole.states if name not in row.keep]
     if other == "settle" and np.linalg.matrix_rank(ground.whole.A[np.ix_(out, out)]) < len(out):
         A = ground.right.A.copy()
-        A[:, int(generator.integers(len(A)))] = 0.0
-        return _with(ground, "reduced wrongly", "one frozen too", replace(ground.right, A=A))
+        column = int(generator.integers(len(A)))
+        A[:, column] = 0.0
+        model, told = replace(ground.right, A=A), f", {ground.right.states[column]}]"
+        return _with(ground, "reduced wrongly", "one frozen too", model, kinds="entry", clues=told)
     return _with(ground, "reduced wrongly", other, without(ground.whole, row.keep, other))
 
 

@@ -294,7 +294,9 @@ class _Builder:
             )
         elif key.text.strip() == "":
             self._tell(key.place, "a word is missing before ':'")
-        elif key.plain and _AFTER_COMMA.fullmatch(key.text) and isinstance(node, Scalar) and node.plain and not node.text:
+        elif (
+            key.plain and _AFTER_COMMA.fullmatch(key.text) and isinstance(node, Scalar) and node.plain and not node.text
+        ):
             self._tell(key.place, f"{quoted(key.text)} where a word is due", "write a decimal point, not a comma")
         elif key.plain and not is_text(key.text):
             self._tell(key.place, f"{quoted(key.text)} is no text to YAML", "put it in quotes, or choose another name")

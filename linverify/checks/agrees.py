@@ -89,7 +89,7 @@ def _cause(study: Study, pair: Pair, findings: Findings) -> None:
         return
     cause = guessed(study, pair)
     if cause is not None:
-        findings.reasons.append((Status.FAIL, cause.told))
+        findings.notes.insert(0, cause.told)
         findings.details["cause"] = {"kind": cause.kind, "text": cause.text}
 
 

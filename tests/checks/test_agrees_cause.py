@@ -56,7 +56,7 @@ def _cause(case: Case, given: DeliveredModel) -> str:
     found = judge_study(Study(handed, Options()), CheckAsk("agrees", POINT_AT))
     assert found.status is Status.FAIL
     text = found.details.get("cause", {}).get("text", "")
-    assert found.reason.endswith(text)
+    assert not text or found.notes[0].endswith(text)
     return text
 
 

@@ -6,6 +6,7 @@ After a change of the language, `python -m tests.test_readme` writes the table a
 from __future__ import annotations
 
 import re
+import shutil
 from pathlib import Path
 
 import pytest
@@ -98,6 +99,18 @@ def test_a_changed_plant_fails_as_shown(rinse: pytest.Pytester) -> None:
     assert result.ret == 1
     assert_shown(result.stdout.str(), blocks("text")[2])
     assert_shown(result.stdout.str(), blocks("text")[3])
+
+
+def test_the_plant_change_is_stopped_as_shown(pytester: pytest.Pytester) -> None:
+    shutil.copytree(README.parent / "specs" / "foil_ferry", pytester.path / "specs" / "foil_ferry")
+    before, after = (line[1:] for line in blocks("diff")[0].splitlines())
+    plant = pytester.path / "specs" / "foil_ferry" / "plant.py"
+    text = plant.read_text(encoding="utf-8")
+    assert before.strip() in text
+    plant.write_text(text.replace(before.strip(), after.strip()), encoding="utf-8")
+    result = pytester.runpytest_subprocess("--linverify", "specs/foil_ferry", "-k", "kn24 and agrees")
+    assert result.ret == 1
+    assert_shown(result.stdout.str(), blocks("text")[4])
 
 
 if __name__ == "__main__":

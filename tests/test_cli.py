@@ -198,7 +198,8 @@ def test_a_failing_drive_is_replayed_with_the_same_figures_and_pinned(
 
     assert main(["replay", item["id"], file]) == 1
     out = capsys.readouterr().out
-    assert f"{quoted['worst']:.4g} m" in out
+    assert f"{quoted['worst']:.4g} {quoted['unit']}" in out
+    assert quoted["unit"] == "cm"
 
     assert main(["replay", file]) == 1  # the file itself says which check it belongs to
     assert capsys.readouterr().out == out

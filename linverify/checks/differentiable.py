@@ -82,7 +82,7 @@ def _details(study: Study, found: Linearization) -> dict[str, Any]:
     units = dict(zip(row_names(study.bound), row_units(study.bound), strict=True))
     details: dict[str, Any] = {
         "jacobian_source": found.jacobian_source,
-        "noise": {name: _with_unit(float(value), units.get(name, "")) for name, value in (found.noise or {}).items()},
+        "noise": {name: _with_unit(float(f"{value:.3g}"), units[name]) for name, value in (found.noise or {}).items()},
         "corners": [_corner(study, corner) for corner in found.gaps],
         "wrong_entries": [mismatch.told() for mismatch in found.cross_check],
     }

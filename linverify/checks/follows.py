@@ -229,7 +229,7 @@ def _details(study: Study, compared: Comparison, run: Campaign, pins: Pins, seen
             "signals": {name: {"gain": gain, "delay": time.size(late)} for name, (gain, late) in seen.signals.items()},
         }
     if columns:
-        details["completed"] = float(np.mean(run.figures.completed[columns]))
+        details["completed"] = {"value": 100.0 * float(np.mean(run.figures.completed[columns])), "unit": "%"}
     return details
 
 
@@ -239,7 +239,7 @@ def _errors(compared: Comparison, run: Campaign) -> dict[str, Any]:
     told = {}
     for row, band in enumerate(compared.bands):
         shown = compared.case.shown_band(band)
-        told[name_of(band)] = {"value": shown.size(float(errors[row])), "unit": shown.unit}
+        told[name_of(band)] = {"value": float(f"{shown.size(float(errors[row])):.3g}"), "unit": shown.unit}
     return told
 
 

@@ -24,7 +24,7 @@ from .study import Study
 
 @dataclass(frozen=True, slots=True)
 class Split:
-    """The error of one band's signal at one instant (plant less model, signed, in the signal's unit) and its parts."""
+    """The error of one band's signal at one instant (plant less model, signed, in the band's unit) and its parts."""
 
     signal: str
     kind: str
@@ -34,6 +34,8 @@ class Split:
     reduction: float
     delivered: float
     drive: str
+    unit: str
+    time_unit: str
 
     def to_data(self) -> dict[str, Any]:
         """Plain values for the record."""
@@ -71,17 +73,20 @@ def _split(compared: Comparison, word: Word, full: LocalModel, reference: LocalM
     plant, mine = float(runs.plant[row, :, :, 0][at]), float(runs.model[row, :, :, 0][at])
     turn = runs.turns[row] if runs.turns else 0.0
     parts = (plant - lines[0], lines[0] - lines[1], lines[1] - mine)
-    curved, left_out, numbers = (float(wrapped(np.array(part), turn)) for part in parts)
-    when = float(times[at])
-    return Split(band.signal, band.kind, when, float(error[at]), curved, left_out, numbers, key_of(compared, one.drive))
+    shown, time = compared.case.shown_band(band), compared.case.shown_time(compared.drives)
+    curved, left_out, numbers = (shown.size(float(wrapped(np.array(part), turn))) for part in parts)
+    when, total = time.size(float(times[at])), shown.size(float(error[at]))
+    drive = key_of(compared, one.drive)
+    return Split(
+        band.signal, band.kind, when, total, curved, left_out, numbers, drive, shown.unit, time.unit
+    )  # fmt: skip
 
 
 def sentences(compared: Comparison, found: Sequence[Split]) -> list[str]:
     """One line a band that broke or not: how much of its worst error comes from where."""
-    units, time = compared.units, compared.case.plant.time_unit
     lines = []
     for one in found:
-        unit = units[one.signal]
+        unit, time = one.unit, one.time_unit
         parts = [f"{told(one.nonlinearity, unit)} from nonlinearity"]
         if compared.case.local.keep is not None:
             parts.append(f"{told(one.reduction, unit)} from the states left out")

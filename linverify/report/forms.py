@@ -65,8 +65,12 @@ def plain_blocks(values: Mapping[str, Any], worded: Callable[[str], str] | None 
     made = [grid(("what", "value"), short)] if short else []
     for word, value in words:
         if not is_short(value):
-            made += _long_blocks(f"{escaped(named(word))}:", value)
+            made += _long_blocks(_caption(named(word)), value)
     return made
+
+
+def _caption(words: str) -> str:
+    return escaped(words[:1].upper() + words[1:] if " " in words else words) + ":"
 
 
 def _long_blocks(title: str, value: Any) -> list[str]:

@@ -38,7 +38,7 @@ def test_the_right_model_passes_every_band() -> None:
         assert figure.worst + figure.error <= 0.01 * figure.limit
     assert found.details["statistics"]["broken"] == 0
     assert found.details["statistics"]["random"] == 40
-    assert found.details["completed"] == 1.0
+    assert found.details["completed"] == {"value": 100.0, "unit": "%"}
 
 
 FAULTS = {

@@ -281,7 +281,10 @@ def test_a_corner_counts_against_the_largest_term_of_its_row() -> None:
 @pytest.mark.parametrize(
     ("term", "words"),
     [
-        (lambda x: 0.5 * np.where(x >= 1e-6, 1.0, 0.0), "rate_rate jumps by 0.5 rad/s^2, 1e-6 nominal sizes above the point"),
+        (
+            lambda x: 0.5 * np.where(x >= 1e-6, 1.0, 0.0),
+            "rate_rate jumps by 0.5 rad/s^2, 1e-6 nominal sizes above the point",
+        ),
         (lambda x: np.sqrt(np.abs(x)), "the slope grows without bound at the point"),
         (lambda x: np.abs(x), "slopes -4 below and -2 1/s^2 above differ by 50 % at the point, at angle = 0 rad"),
     ],

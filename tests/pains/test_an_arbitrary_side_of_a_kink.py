@@ -44,8 +44,8 @@ def test_the_corner_is_named_and_nothing_is_built_on_it(judged, record_property:
         assert "valve" in slope.reason
         (corner,) = (one for one in slope.details["corners"] if one["entry"].endswith("/ d valve"))
         assert (corner["kind"], corner["on_point"]) == ("kink", True)
-        assert corner["below"] == pytest.approx(1.0, abs=1e-3)
-        assert corner["above"] == pytest.approx(0.0, abs=1e-3)
+        assert corner["below"]["value"] == pytest.approx(1.0, abs=1e-3)
+        assert corner["above"]["value"] == pytest.approx(0.0, abs=1e-3)
         assert found[f"{point}.trims"].status is Status.PASS
         assert found[f"{point}.follows"].status is Status.UNDECIDED
         assert "kink" in found[f"{point}.follows"].reason

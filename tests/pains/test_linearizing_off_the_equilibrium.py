@@ -49,7 +49,7 @@ def test_a_free_rate_is_carried_as_drift_and_the_plant_has_to_keep_it(judged) ->
     """The rate of 4 m/s is told; the plant curves away from that course at once, and that is a failure."""
     found = judged(PLANT, LIMITS + DRIFTING + DRIVES)
     assert found["high.trims"].status is Status.PASS
-    assert found["high.trims"].details["drift"] == {"level": 4.0}
+    assert found["high.trims"].details["drift"] == {"level": {"value": 4.0, "unit": "m/s"}}
     assert found["high.differentiable"].details["A"] == [[pytest.approx(-2.0, rel=1e-9)]]
     assert found["high.follows"].status is Status.FAIL
 
@@ -58,5 +58,5 @@ def test_a_steady_drift_is_an_operating_course_like_any_other(judged) -> None:
     """Without a leak the tank fills at 4 m/s for as long as it likes: deviations from that course are exact."""
     filling = DRIFTING.replace("inflow: 5 m/s", "inflow: 4 m/s")
     found = judged(PLANT, "parameters: {leak: 0}\n" + LIMITS + filling + DRIVES)
-    assert found["high.trims"].details["drift"] == {"level": 4.0}
+    assert found["high.trims"].details["drift"] == {"level": {"value": 4.0, "unit": "m/s"}}
     assert found["high.follows"].status is Status.PASS, found["high.follows"].reason

@@ -39,16 +39,16 @@ def test_where_both_are_allowed_both_are_told(judged) -> None:
     found = judged(PLANT, _spec(-10, 10))["steady.trims"]
     assert found.status is Status.UNDECIDED
     assert found.reason.startswith("2 equilibria lie inside the envelope")
-    values = [other["acid"] for other in found.details["other_equilibria"]]
+    values = [other["acid"]["value"] for other in found.details["other_equilibria"]]
     assert sorted(values) == pytest.approx([-3.0, 2.0])
     chosen = judged(PLANT, _spec(-10, 10, "start: {acid: 1}"))["steady.trims"]
     assert chosen.status is Status.PASS
     assert chosen.details["states"]["acid"]["value"] == pytest.approx(2.0)
-    assert [other["acid"] for other in chosen.details["other_equilibria"]] == pytest.approx([-3.0])
+    assert [other["acid"]["value"] for other in chosen.details["other_equilibria"]] == pytest.approx([-3.0])
 
 
 def test_none_inside_the_limits_is_a_failure(judged) -> None:
     found = judged(PLANT, _spec(3, 10))["steady.trims"]
     assert found.status is Status.FAIL
-    assert found.details["closest"]["acid"] == pytest.approx(3.0)
+    assert found.details["closest"]["acid"]["value"] == pytest.approx(3.0)
     assert "acid at its lower limit 3" in found.reason

@@ -45,4 +45,4 @@ def test_no_equilibrium_is_an_answer_of_its_own(road):
     found = road("none", "{hold: {feed: 0.5 mol/l/s}}")
     assert found.status is Status.FAIL
     assert "the rate of x cannot vanish: with every other equation met it stays at 0.5 mol/l per s" in found.reason
-    assert found.details["nearest_holds"] == {"feed": pytest.approx(1.0, abs=1e-6)}
+    assert found.details["nearest_holds"] == {"feed": {"value": pytest.approx(1.0, abs=1e-6), "unit": "mol/l/s"}}

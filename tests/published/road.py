@@ -2,8 +2,10 @@
 
 from __future__ import annotations
 
+from collections.abc import Mapping
 from functools import cache
 from pathlib import Path
+from typing import Any
 
 from linverify.checks.judge import judge
 from linverify.core.case import Case, Options
@@ -27,7 +29,12 @@ def verdict(spec: str, point: str, check: str = "trims") -> Verdict:
 
 
 def trimmed(spec: str, point: str) -> dict[str, float]:
-    """Trimmed values of states, inputs and outputs by name."""
+    """Trimmed values of states, inputs and outputs by name, in the plant's units."""
     details = verdict(spec, point).details
     kinds = ("states", "inputs", "outputs")
-    return {name: told["value"] for kind in kinds for name, told in details.get(kind, {}).items()}
+    return {name: plant_value(told) for kind in kinds for name, told in details.get(kind, {}).items()}
+
+
+def plant_value(told: Mapping[str, Any]) -> float:
+    """A value of the details in the plant's unit, whichever the spec writes."""
+    return float(told.get("in_plant", told)["value"])

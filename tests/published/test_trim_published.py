@@ -5,7 +5,7 @@ from __future__ import annotations
 
 import numpy as np
 import pytest
-from road import cases, trimmed, verdict
+from road import cases, plant_value, trimmed, verdict
 from truth import car, mariner, mechanics, quadcopter, quadruple_tank
 
 from linverify.core.verdict import Status
@@ -61,7 +61,7 @@ def test_no_dilution_gives_more_than_the_highest_yield_and_the_highest_is_named(
     assert found.status is Status.FAIL
     assert found.reason.startswith("no equilibrium was found inside the envelope: the rate of cb cannot vanish")
     # 1.266 mol/l from memory, 1.265986 derived
-    assert found.details["nearest_holds"]["cb"] == pytest.approx(1.265986, abs=1e-6)
+    assert found.details["nearest_holds"]["cb"]["value"] == pytest.approx(1.265986, abs=1e-6)
 
 
 def test_reactor_steady_state_in_closed_form():
@@ -81,7 +81,7 @@ def test_the_upright_pendulum_is_the_equilibrium_nearest_its_start():
     found = verdict("pendulum", "upright")
     assert found.status is Status.PASS
     assert found.details["states"]["angle"]["value"] == pytest.approx(np.pi, rel=1e-12)
-    others = sorted(other["angle"] for other in found.details["other_equilibria"])
+    others = sorted(plant_value(other["angle"]) for other in found.details["other_equilibria"])
     np.testing.assert_allclose(others, [-np.pi, 0.0], atol=1e-9)
 
 
@@ -95,7 +95,7 @@ def test_a_torque_that_gravity_cannot_balance_fails_and_the_largest_is_named():
     found = verdict("pendulum", "too_heavy")
     assert found.status is Status.FAIL
     most = mechanics.MASS * mechanics.GRAVITY * mechanics.LENGTH
-    assert found.details["nearest_holds"]["torque"] == pytest.approx(most, rel=1e-6)
+    assert found.details["nearest_holds"]["torque"]["value"] == pytest.approx(most, rel=1e-6)
 
 
 def test_the_balance_system_stands_upright_where_it_is_held_and_anywhere_if_not():
@@ -123,7 +123,7 @@ def test_hover_in_closed_form(point):
 def test_a_steady_climb_needs_the_thrust_of_weight_and_drag():
     found = verdict("quadcopter", "climb")
     assert found.status is Status.PASS
-    assert found.details["drift"] == {"pz": 2.0}
+    assert found.details["drift"]["pz"] == {"value": 2.0, "unit": "m/s"}
     lift = quadcopter.MASS * quadcopter.GRAVITY + 2.0 * quadcopter.DRAG
     values = trimmed("quadcopter", "climb")
     assert values["w3"] == pytest.approx(np.sqrt(lift / (4 * quadcopter.THRUST)), rel=1e-9)
@@ -157,7 +157,7 @@ def test_next_to_the_critical_speed_the_car_has_no_steady_turn_inside_the_envelo
     found = verdict("car_oversteering", "near_critical")
     assert found.status is Status.FAIL
     assert found.details["active_bounds"]
-    assert found.details["nearest_holds"]["speed"] < 53.0
+    assert found.details["nearest_holds"]["speed"]["value"] < 53.0
 
 
 def test_the_ship_keeps_a_straight_course_with_a_little_rudder():
@@ -173,8 +173,8 @@ def test_the_ship_amidships_is_no_equilibrium_and_its_rates_become_the_drift():
     found = verdict("mariner", "amidships")
     assert found.status is Status.PASS
     rates = mariner.dynamics(0.0, np.zeros(3), np.zeros(1), mariner.ship.defaults)
-    assert found.details["drift"]["sway"] == pytest.approx(rates[1], rel=1e-12)
-    assert found.details["drift"]["yaw_rate"] == pytest.approx(rates[2], rel=1e-12)
+    assert found.details["drift"]["sway"]["value"] == pytest.approx(rates[1], rel=1e-12)
+    assert found.details["drift"]["yaw_rate"]["value"] == pytest.approx(rates[2], rel=1e-12)
 
 
 def test_all_operating_points_of_these_specs_are_looked_at():

@@ -106,9 +106,7 @@ def test_limits(change: dict[str, object], text: str) -> None:
         ({"sense": Sense.NONE}, "-", ""),
     ],
 )
-def test_headroom_is_told_in_words_where_per_cent_mean_nothing(
-    change: dict[str, object], text: str, told: str
-) -> None:
+def test_headroom_is_told_in_words_where_per_cent_mean_nothing(change: dict[str, object], text: str, told: str) -> None:
     figure = replace(FIGURE, **change)  # type: ignore[arg-type]
     assert (quantity.headroom(figure), quantity.headroom_told(figure)) == (text, told)
 

@@ -7,8 +7,8 @@ from dataclasses import replace
 import pytest
 from invented import EVERY, FOLLOWS, NO_TRIM, SPEC, TRIMS, UNDECIDED
 
-from linverify.core.verdict import Evidence, Figure, Status
-from linverify.report import text
+from linverify.core.verdict import Evidence, Figure, Sense, Status
+from linverify.report import tables, text
 
 FAILURE = f"""\
 {SPEC}::wind9::follows.fast: fail
@@ -130,3 +130,22 @@ def test_equal_headroom_is_ordered_by_name() -> None:
     verdicts = [replace(TRIMS, point=name, figures=(figure,)) for name in ("kn10", "kn9", "kn30")]
     shown = [line.split("::")[1] for line in text.summary(verdicts)[2:5]]
     assert shown == ["kn9", "kn10", "kn30"]
+
+
+def test_an_open_check_shows_no_headroom_of_figures_that_do_not_matter() -> None:
+    told = text.failure(UNDECIDED)
+    assert "headroom" not in told
+    assert "also            peak error of height 0.001 m, at most 0.04 m" in told
+    assert [row.cells[5] for row in tables.rows_of(UNDECIDED)] == ["-"]
+
+
+def test_a_check_that_is_open_for_a_figure_shows_its_headroom() -> None:
+    share = Figure("share of drives", "", 85.0, 90.0, "%", Sense.LOWER, origin="x:1:1", status=Status.UNDECIDED)
+    told = text.failure(replace(UNDECIDED, figures=(*UNDECIDED.figures, share)))
+    assert "required        share of drives at least 90 % (from x:1:1)" in told
+    assert "found           85 %; headroom -5.9 %" in told
+
+
+def test_numbers_have_one_form_in_every_text() -> None:
+    odd = replace(UNDECIDED, reason="9.3e+04 % and 1e-08 of state_e-05x, 2e+10")
+    assert "9.3e4 % and 1e-8 of state_e-05x, 2e10" in text.failure(odd)

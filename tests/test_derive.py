@@ -2,7 +2,6 @@
 
 from __future__ import annotations
 
-from collections.abc import Iterator
 from pathlib import Path
 
 import numpy as np
@@ -13,7 +12,6 @@ from linverify import run
 from linverify.checks.study import study_of
 from linverify.cli import main
 from linverify.core.case import Options
-from linverify.spec.words import LOCAL_MODEL_WORDS, row_of
 
 TARGETS = ("models/{point}.json", "models/{point}.csv", "models/{point}.npz", "models/{point}.mat", "models/{point}",
            "all.json", "all.csv", "all.npz", "all.mat")  # fmt: skip
@@ -29,18 +27,6 @@ def project(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
     return tmp_path
 
 
-@pytest.fixture
-def files_allowed() -> Iterator[None]:
-    """Files behind `source`, whatever this version says."""
-    row = row_of(LOCAL_MODEL_WORDS, "source")
-    assert row is not None
-    before = row.refusal
-    object.__setattr__(row, "refusal", "")
-    yield
-    object.__setattr__(row, "refusal", before)
-
-
-@pytest.mark.usefixtures("files_allowed")
 @pytest.mark.parametrize("to", TARGETS)
 def test_what_is_derived_is_delivered_again(project: Path, to: str, capsys: pytest.CaptureFixture[str]) -> None:
     derived = run.points(Path("basin.yaml"))

@@ -61,6 +61,8 @@ def saved(
             "model": {name: _rows(runs.model[at, :, :, 0]) for at, name in enumerate(runs.signals)},
             "ended": float(runs.ended[0]),
         }
+        if late := {name: late for name, late in zip(runs.signals, runs.late, strict=False) if late}:
+            about["dead_times"] = late  # samples are shown when the plant makes them; these arrive so much later
         try:
             pinned.write(options.reports / FOLDER, drive, about, key)
         except OSError as error:  # a full disk takes nothing from the verdict

@@ -6,8 +6,8 @@ import math
 from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
-from . import quantity
-from .forms import cell, is_matrix, is_number, is_quantity, listing, matrix, plain_blocks
+from . import agreement, quantity
+from .forms import cell, complex_told, is_matrix, is_number, is_quantity, listing, matrix, plain_blocks
 from .tables import escaped, grid
 
 KINDS = {"states": "state", "inputs": "input", "outputs": "output"}
@@ -49,6 +49,8 @@ def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "", *,
         made += statistics(rest.pop("statistics"))
     if isinstance(rest.get("smallest_visible"), Mapping):
         made.append(visible(rest.pop("smallest_visible"), time_unit))
+    units = {str(pair[0]): str(pair[1]) for pairs in signals.values() for pair in pairs}
+    made += agreement.blocks(rest, units, time_unit)
     return made + plain_blocks(rest)
 
 
@@ -110,16 +112,9 @@ def _pole(pole: Any, worded: Mapping[str, str]) -> dict[str, Any]:
     for word, name in joined.items():
         pair = (rest.get(word), rest.get(word.replace("real", "imag")))
         if all(is_number(part) or part is None for part in pair) and word in rest:
-            told[name] = _complex(*pair)
+            told[name] = complex_told(*pair)
             rest = {key: value for key, value in rest.items() if key not in (word, word.replace("real", "imag"))}
     return {**told, **{worded[word]: rest.pop(word) for word in worded if word in rest}, **rest}
-
-
-def _complex(real: float | None, imaginary: float | None) -> str:
-    first = cell(real)
-    if not imaginary:
-        return first
-    return f"{first} {'-' if imaginary < 0 else '+'} {quantity.number(abs(imaginary))}j"
 
 
 def matrices(

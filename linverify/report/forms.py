@@ -115,6 +115,14 @@ def cell(value: Any) -> str:
     return str(value)
 
 
+def complex_told(real: float | None, imaginary: float | None) -> str:
+    """A complex number in one cell; a real one without its zero part."""
+    first = cell(real)
+    if not imaginary:
+        return first
+    return f"{first} {'-' if imaginary < 0 else '+'} {quantity.number(abs(imaginary))}j"
+
+
 def is_number(value: Any) -> bool:
     """True for a number that is no truth value."""
     return isinstance(value, (int, float)) and not isinstance(value, bool)

@@ -76,7 +76,8 @@ def assert_shown(printed: str, block: str) -> None:
     """Every line of a README block was printed, figures apart; wrapped lines are compared as one text."""
     flat = shape(" ".join(printed.split()))
     for line in block.splitlines():
-        if wanted := shape(line):
+        # a slow machine says in between that a check is still running, which breaks pytest's line of dots
+        if (wanted := shape(line)) and "%]" not in line:
             assert wanted in flat, line
 
 

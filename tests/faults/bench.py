@@ -400,8 +400,10 @@ def causes(results: Sequence[Result]) -> str:
 def word_of(result: Result) -> str:
     """Whether the guess names what was done: the kind of fault, the signals or entry, and the value."""
     cause, made = result.cause, result.ask.delivery
-    if cause is None:
-        return "none"
+    if cause is None or (cause.kind == "entry" and "entry" not in made.kinds):
+        return "none"  # that a single entry differs is a fact and no guess
+    if cause.kind == "point" and "point" in made.kinds:
+        return "right"  # the spec has a point with these very holds
     if cause.kind not in made.kinds or not all(clue in cause.text for clue in made.clues):
         return "wrong"
     if np.isnan(made.value):

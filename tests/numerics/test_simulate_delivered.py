@@ -122,8 +122,9 @@ def test_reordered_states_and_inputs_are_no_change() -> None:
     plant = linear_plant(A, [[0.0, 0.3], [1.0, 0.0]])
     right = local(plant, A, [[0.0, 0.3], [1.0, 0.0]])
     turned = local(
-        plant, [[-0.6, -9.0], [1.0, 0.0]], [[0.0, 1.0], [0.3, 0.0]], states=("x2", "x1"), inputs=("u2", "u1")
-    )
+        plant, [[-0.6, -9.0], [1.0, 0.0]], [[0.0, 1.0], [0.3, 0.0]], [[0.0, 1.0], [1.0, 0.0]],
+        states=("x2", "x1"), inputs=("u2", "u1"),
+    )  # fmt: skip
     what = drive(np.random.default_rng(1).uniform(-1, 1, (9, 2)), x1=0.2, x2=-0.4)
     for first, second in zip(
         both(rig(plant, right, ("x1", "x2")), what), both(rig(plant, turned, ("x1", "x2")), what), strict=True

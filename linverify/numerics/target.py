@@ -16,6 +16,7 @@ from .pair import MATRICES, Pair
 from .similarity import frequencies
 
 NEARLY, NEAR = 0.01, 0.005  # of the largest gap, and of a row's largest term
+OWN = 0.1  # of a changed number itself
 FLOOR = 1e-6  # of a row's largest term: trims and slopes found twice differ by less, faults that matter by more
 
 
@@ -42,9 +43,17 @@ class Target:
         return not self.unexplained(model).any()
 
     def nearly_explained(self, model: LocalModel) -> bool:
-        """True where `model` is near everywhere, and nearer than a hundredth of the reference's largest gap."""
-        left, found = np.abs(self.gap(model)), np.abs(self.gap(self.pair.reference))
-        return bool(left.max(initial=0.0) <= min(NEAR, NEARLY * found.max(initial=0.0)))
+        """True where `model` is near everywhere, and nearer than a hundredth of the reference's largest gap.
+
+        What it changes it must also get right by its own size: numbers that are simply missing are near to whatever a
+        unit a thousand times larger would have left of them.
+        """
+        gap, found = self.gap(model), self.gap(self.pair.reference)
+        left, most = np.abs(gap), np.abs(found).max(initial=0.0)
+        changed = np.abs(found - gap) > NEARLY * most
+        own = np.abs(self.values / self.scale - gap)
+        near = left.max(initial=0.0) <= min(NEAR, NEARLY * most)
+        return bool(near and np.all(left[changed] <= OWN * own[changed]))
 
     def unexplained(self, model: LocalModel) -> Array:
         """Which numbers are off, (q,)."""

@@ -242,3 +242,13 @@ def test_a_sampled_stiff_model_is_not_taken_for_one_in_milliseconds():
     step = 0.1 / np.abs(np.linalg.eigvals(model.A)).max()
     text = _told("converter", sampled(model, step, "held"), 4, step=None)
     assert text == "" or text.startswith("the matrices are those of a discrete model with a sample time of ")
+
+
+@pytest.mark.parametrize("state", ["pitch", "ride_height", "heave_rate"])
+def test_a_column_that_is_missing_is_no_unit_slip(state: str) -> None:
+    """Zeros are near to what a unit a thousand times larger would leave; that explains nothing."""
+    right = _right("ferry")
+    A, C = np.array(right.A), np.array(right.C)
+    at = right.states.index(state)
+    A[:, at], C[:, at] = 0.0, 0.0
+    assert _told("ferry", replace(right, A=A, C=C), 17) == ""

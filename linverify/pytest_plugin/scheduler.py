@@ -48,6 +48,15 @@ class PointScheduling(LoadScopeScheduling):
             for node in self.nodes:
                 self._reschedule(node)
 
+    def _reschedule(self, node: WorkerController) -> None:
+        """As xdist does, but a replacement that is still collecting is left alone; it is asked again when it has.
+
+        Two workers that die at about the same time bring two replacements, and the first to finish collecting would
+        have xdist hand work to the other, whose items are not known yet: the whole run ended in an internal error.
+        """
+        if node in self.registered_collections:
+            super()._reschedule(node)
+
     def remove_node(self, node: WorkerController) -> str | None:
         """Take a worker out; the check that it died on is done, and what it had not begun goes to others.
 

@@ -131,3 +131,24 @@ def test_a_worker_that_ends_with_nothing_left_crashed_on_nothing() -> None:
     scheduling, nodes = _scheduling(names, 1)
     _finish(scheduling, nodes, names)
     assert scheduling.remove_node(nodes[0]) is None
+
+
+def test_two_replacements_at_once_wait_for_their_own_collection() -> None:
+    """The first of two new workers to finish collecting must not have work handed to the other."""
+    names = _names("a", 8)
+    scheduling, nodes = _scheduling(names, 2)
+    for node in nodes:
+        assert scheduling.remove_node(node)
+    first, second = Worker("gw2"), Worker("gw3")
+    scheduling.add_node(first)
+    scheduling.add_node(second)
+    scheduling.add_node_collection(first, names)
+    scheduling.schedule()
+    assert first.queue
+    assert not second.queue
+    assert not second.shutting_down
+    scheduling.add_node_collection(second, names)
+    scheduling.schedule()
+    assert second.queue
+    done = _finish(scheduling, [first, second], names)
+    assert len(done) == len(set(done)) == len(names) - 2  # each of the dead ones took one along

@@ -26,6 +26,7 @@ from .comparison import Comparison
 
 KINDS = ("pinned", "deterministic", "random", "searched")
 QUICK = 5  # a quick profile draws and searches so many times less
+SWITCHED = 160  # corners of the declared set that the search looks at, beside what Hypothesis draws
 ROUNDS, FROM, AROUND = 4, 2, 12  # of climbing: rounds, drives a band, neighbours of each
 
 
@@ -68,7 +69,9 @@ def campaign(comparison: Comparison, options: Options, pins: Sequence[Drive]) ->
     drawn = sample(limits, drives.shapes, max(1, drives.count // quick) if drives.count else 0, rng)
     noise = noise_of(comparison)
     fidelity, settled = noise.settled(comparison.start)
-    searched = (*_searched(comparison, options, drives.search // quick), *_observed(comparison, fidelity), *noise.batch)
+    corners = SWITCHED // quick if drives.search else 0
+    hunted = _searched(comparison, options, drives.search // quick, corners)
+    searched = (*hunted, *_observed(comparison, fidelity), *noise.batch)
     kinds = [kind for kind, some in zip(KINDS, (pins, fixed, drawn, searched), strict=True) for _ in some]
     everything = (*pins, *fixed, *drawn, *searched)
     figures, still, wrong = comparison.figures(everything, fidelity)
@@ -98,10 +101,14 @@ def noise_of(comparison: Comparison) -> Noise:
     return Noise(comparison, sample(comparison.limits, comparison.drives.shapes, BATCH, rng))
 
 
-def _searched(comparison: Comparison, options: Options, examples: int) -> tuple[Drive, ...]:
+def _searched(comparison: Comparison, options: Options, examples: int, corners: int) -> tuple[Drive, ...]:
     from ..drives.search import searched
 
-    return searched(comparison.limits, examples, seed_of(options.seed, comparison.id, "search"))
+    rng = np.random.default_rng(seed_of(options.seed, comparison.id, "corners"))
+    return (
+        *searched(comparison.limits, examples, seed_of(options.seed, comparison.id, "search")),
+        *seeds.switched(comparison.limits, corners, rng),
+    )
 
 
 def _observed(comparison: Comparison, fidelity: Fidelity) -> tuple[Drive, ...]:

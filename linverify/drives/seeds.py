@@ -20,6 +20,7 @@ from . import shapes
 from .declared import Limits
 
 TOGETHER = 4  # up to so many inputs every combination of signs is stepped
+SWITCHES = 3  # of an input in a switched drive, at most
 SMALL = 0.1  # of the amplitude: a dead zone shows at small sizes, a limit at large ones
 
 
@@ -36,6 +37,25 @@ def steps(limits: Limits) -> tuple[Drive, ...]:
         sign = 1.0 if limits.high[column] >= -limits.low[column] else -1.0
         found.append(_single(limits, column, sign * shapes.step(at, 0.0)))
     return tuple(found)
+
+
+def switched(limits: Limits, count: int, rng: np.random.Generator) -> tuple[Drive, ...]:
+    """`count` corners of the declared set: every input at one end of its range, and a few switches to the other.
+
+    Where the error bends (a corner in the plant, say) it has many local maxima, and most of them lie at such corners.
+    They are places to climb from: what is drawn elsewhere seldom moves all inputs fully all the time.
+    """
+    found = []
+    for _ in range(count):
+        values = np.empty((limits.intervals, len(limits.inputs)))
+        for column in range(len(limits.inputs)):
+            turns = np.zeros(limits.intervals, dtype=np.intp)
+            np.add.at(turns, rng.integers(limits.intervals, size=int(rng.integers(SWITCHES + 1))), 1)
+            high = (np.cumsum(turns) + int(rng.integers(2))) % 2 == 0
+            values[:, column] = np.where(high, limits.high[column], limits.low[column])
+        start = {name: _end(limits, name, float(rng.integers(-1, 2))) for name in limits.offsets}
+        found.append(limits.drive(values, start))
+    return unique(found)
 
 
 def worst_of_model(

@@ -119,3 +119,22 @@ def _run(folder: Path, *words: str) -> str:
     environment = {**os.environ, "CI": "1" if words else ""}
     done = subprocess.run(command, cwd=folder, env=environment, capture_output=True, text=True, check=True)
     return done.stdout
+
+
+def test_switched_drives_stand_at_corners_of_the_declared_set() -> None:
+    free = limits()
+    drives = seeds.switched(free, 60, np.random.default_rng(4))
+    assert len(drives) > 50
+    for drive in drives:
+        for column, ends in enumerate(((-1.5, 1.0), (0.0, 0.5))):
+            course = drive.values[:, column]
+            assert set(course.tolist()) <= set(ends)
+            assert np.count_nonzero(np.diff(course)) <= seeds.SWITCHES
+        assert drive.offsets["pitch"] in (-0.2, 0.0, 0.3)
+    assert {int(np.count_nonzero(np.diff(drive.values[:, 0]))) for drive in drives} == {0, 1, 2, 3}
+
+
+def test_switched_drives_keep_the_rate() -> None:
+    slow = limits(rate=0.4)
+    for drive in seeds.switched(slow, 20, np.random.default_rng(4)):
+        assert np.abs(np.diff(drive.values[:, 0], prepend=0.0)).max() <= 0.4 + 1e-12

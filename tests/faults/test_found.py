@@ -6,7 +6,7 @@ from dataclasses import replace
 
 import numpy as np
 import pytest
-from faults.bench import drawn
+from faults.bench import drawn, judged
 from truth import mechanics
 
 from linverify.checks.judge import judge_study
@@ -66,3 +66,10 @@ def test_a_band_that_is_broken_in_one_corner_of_the_declared_set_alone_is_found(
     assert ask.told.startswith("seed 263: buck, full, corner 0.1"), ask.told
     found = [judge_study(Study(ask.case, Options(seed=seed)), FOLLOWS).status for seed in range(4)]
     assert found.count(Status.FAIL) >= 2
+
+
+def test_a_corner_that_the_drives_fall_short_of_is_stopped_all_the_same() -> None:
+    """Brute force finds a drive 0.65 % over a band; `follows` stays within it, and `differentiable` sees the corner."""
+    found = judged(drawn(252, faulty=True))
+    assert found.ask.told.startswith("seed 252: reactor, full, corner 0.1"), found.ask.told
+    assert found.outcome == "caught"

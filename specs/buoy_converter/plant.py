@@ -21,7 +21,7 @@ def output_voltage(x, u, p):
 
 def dynamics(t, x, u, p):
     """Rates of the coil current and of the capacitor's inner voltage."""
-    current, charge_voltage = x
+    current, _ = x
     duty, battery, load = u
     rail = output_voltage(x, u, p)
     resistance = p["battery_resistance"] + p["coil_resistance"] + duty * p["switch_resistance"]

@@ -60,17 +60,16 @@ def measurement(t, x, u, p):
 
 
 pasteurizer = Plant(
-    states={
-        name: "degC"
-        for name in ("water", "plate_1", "plate_2", "juice_1", "juice_2", "cell_1", "cell_2", "cell_3", "cell_4")
-    },
+    states=dict.fromkeys(
+        ("water", "plate_1", "plate_2", "juice_1", "juice_2", "cell_1", "cell_2", "cell_3", "cell_4"), "degC"
+    ),
     inputs={"steam_valve": "1", "juice_flow": "kg/s", "juice_inlet": "degC"},
     outputs={"holding_exit": "degC", "holding_entry": "degC", "water_loop": "degC"},
     parameters={"fouling": (1.0, "1"), "room": (19.0, "degC")},
     dynamics=dynamics,
     measurement=measurement,
-    nominal={name: 2.0 for name in ("water", "plate_1", "plate_2", "juice_1", "juice_2")}
-    | {name: 2.0 for name in ("cell_1", "cell_2", "cell_3", "cell_4")}
+    nominal=dict.fromkeys(("water", "plate_1", "plate_2", "juice_1", "juice_2"), 2.0)
+    | dict.fromkeys(("cell_1", "cell_2", "cell_3", "cell_4"), 2.0)
     | {"steam_valve": 0.1, "juice_flow": 0.1, "juice_inlet": 2.0},
     domain={"juice_flow": (0.05, None)},
 )

@@ -16,6 +16,10 @@ from .delivered import NOTHING as NOTHING
 from .delivered import Course as Course
 from .delivered import Delays, LocalAsk
 from .errors import Place
+from .loop import NO_ACTUATORS as NO_ACTUATORS
+from .loop import NO_LOOPS as NO_LOOPS
+from .loop import Actuator, Loop
+from .mode import ModeAsk
 from .plant import Plant
 from .shown import Shown
 
@@ -100,7 +104,8 @@ class DriveSet:
     every: time between the instants at which inputs may change; intervals: how many of them make the horizon.
     rate: largest |change| of an input per time unit; offsets: largest initial deviation of a state, both signs.
     shown, shown_time, shown_delay: the units in which amplitudes and offsets, times and `discerns_delay` are written;
-    where there is none, the plant's.
+    where there is none, the plant's. loop: both models run with this loop closed (empty: none); at: drives add to what
+    the loops move, or to its set point, whose signals are then named in `amplitude` beside plant inputs.
     """
 
     name: str
@@ -120,6 +125,8 @@ class DriveSet:
     shown: Mapping[str, Shown] = field(default_factory=lambda: MappingProxyType({}))
     shown_time: Shown | None = None
     shown_delay: Shown | None = None
+    loop: str = ""
+    at: Literal["input", "set_point"] = "input"
 
     @property
     def horizon(self) -> float:
@@ -156,16 +163,18 @@ class Exits:
 
 @dataclass(frozen=True, slots=True)
 class CheckAsk:
-    """One check of one operating point: `trims`, `differentiable`, or `follows` with the name of a set of drives."""
+    """One check of one operating point: `trims`, `modes`, `follows` of a set of drives, `margins` of a loop."""
 
     kind: str
     place: Place
     drives: str = ""
+    loop: str = ""
 
     @property
     def name(self) -> str:
-        """The check's name as ids show it: `follows.fast`."""
-        return f"{self.kind}.{self.drives}" if self.drives else self.kind
+        """The check's name as ids show it: `follows.fast`, `margins.ride`."""
+        of = self.drives or self.loop
+        return f"{self.kind}.{of}" if of else self.kind
 
 
 @dataclass(frozen=True, slots=True)
@@ -219,6 +228,9 @@ class Case:
     local: LocalAsk = field(default_factory=LocalAsk)
     delays: Delays = field(default_factory=Delays)
     wraps: tuple[str, ...] = ()  # angles that are compared modulo a turn
+    modes: tuple[ModeAsk, ...] = ()
+    loops: Mapping[str, Loop] = field(default_factory=lambda: NO_LOOPS)  # all that are declared, by name
+    actuators: Mapping[str, Actuator] = field(default_factory=lambda: NO_ACTUATORS)  # by plant input
     requirements: tuple[Requirement, ...] = ()
     settings: tuple[Setting, ...] = ()
     files: tuple[Path, ...] = ()  # spec, defaults, plant, tables: hashed into the provenance

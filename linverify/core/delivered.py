@@ -103,11 +103,15 @@ class Keep:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class LocalAsk:
-    """What is being verified: a model derived here and now (`delivered` is None) or one that was handed over."""
+    """What is being verified: a model derived here and now (`delivered` is None) or one that was handed over.
+
+    closed: names of the loops that are closed inside the model, and stay closed in every comparison.
+    """
 
     delivered: DeliveredModel | None = None
     keep: Keep | None = None
     agree: AgreeAsk = field(default_factory=AgreeAsk)
+    closed: tuple[str, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)

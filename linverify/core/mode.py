@@ -34,9 +34,10 @@ class Chosen:
 class ModeAsk:
     """One line of `modes`.
 
-    name: of the line, for reports; limits: on damping, natural_frequency, time_constant, time_to_half, time_to_double,
-    period of every chosen mode. stable: every chosen mode must be stable but for `at_zero` (as many poles at the origin
-    as it names states) and unstable ones whose time to double is at least `time_to_double`. controllable, observable:
+    name: of the line, for reports; limits: on damping, natural_frequency, decay_rate (-Re, which is damping times
+    natural frequency), time_constant, time_to_half, time_to_double, period of every chosen mode; ready-made ones carry
+    the name of their `rule`. stable: every chosen mode must be stable but for `at_zero` (as many poles at the origin as
+    it names states) and unstable ones whose time to double is at least `time_to_double`. controllable, observable:
     input or output -> least scaled measure for every chosen mode. minimum_phase: no zero right of the axis from
     `inputs` to `outputs` (all where empty); zeros: limits on them. static_gain: (input, output) with limit.
     """

@@ -37,6 +37,16 @@ class Shown:
         """A difference of two values of the plant's unit as text: `0.3 deg`."""
         return with_unit(number(self.size(size), digits), self.unit)
 
+    def ratio(self, value: float) -> float:
+        """A ratio in decibels where this unit is dB, else as `size`; zero is -infinite dB, NaN for a negative one."""
+        if self.unit != "dB":
+            return self.size(value)
+        return decibels(value)
+
+    def told_ratio(self, value: float, digits: int = 6) -> str:
+        """A ratio as text: `6 dB` where this unit is dB, else the number itself."""
+        return with_unit(number(self.ratio(value), digits), self.unit)
+
     def told_change(self, size: float, digits: int = 6) -> str:
         """As `told_size`, with its sign: `+0.3 deg`."""
         return with_unit(self._signed(size, digits), self.unit)
@@ -47,6 +57,13 @@ class Shown:
 
     def _signed(self, size: float, digits: int) -> str:
         return f"{'+' if self.size(size) > 0.0 else ''}{number(self.size(size), digits)}"
+
+
+def decibels(ratio: float) -> float:
+    """A ratio of amplitudes in decibels: zero is -infinite, NaN for a negative one."""
+    if ratio == 0.0:
+        return -math.inf
+    return 20.0 * math.log10(ratio) if ratio > 0.0 else math.nan
 
 
 def number(value: float, digits: int = 6) -> str:

@@ -57,7 +57,8 @@ class Figure:
 
     what: "peak error", "scaled residual"; signal: what it was measured on; error: estimate of our own error in
     `worst`; when: time of the worst, NaN where time has no meaning; drive: digest of the drive it was met on.
-    origin: place of the limit in the spec or a word on where it comes from.
+    origin: place of the limit in the spec or a word on where it comes from; at_frequency, frequency_unit: where it was
+    met, NaN where frequency has no meaning. Figures in dB are ratios told in decibels: shares are those of the ratios.
     """
 
     what: str
@@ -72,13 +73,16 @@ class Figure:
     drive: str = ""
     origin: str = ""
     status: Status = Status.PASS
+    at_frequency: float = math.nan
+    frequency_unit: str = ""
 
     @property
     def used_share(self) -> float:
         """How much of the limit is used up; NaN where headroom has no meaning (a zero limit, a yes/no property)."""
         if self.sense is Sense.NONE or math.isnan(self.limit) or math.isnan(self.worst):
             return math.nan
-        above, below = (self.worst, self.limit) if self.sense is Sense.UPPER else (self.limit, self.worst)
+        worst, limit = (_ratio(self.worst), _ratio(self.limit)) if self.unit == "dB" else (self.worst, self.limit)
+        above, below = (worst, limit) if self.sense is Sense.UPPER else (limit, worst)
         if math.isinf(below):
             return 0.0
         return above / below if below > 0 else math.nan
@@ -87,6 +91,13 @@ class Figure:
     def headroom(self) -> float:
         """1 - used share."""
         return 1.0 - self.used_share
+
+
+def _ratio(decibels: float) -> float:
+    try:
+        return float(10.0 ** (decibels / 20.0))
+    except OverflowError:
+        return math.inf
 
 
 @dataclass(frozen=True, slots=True)

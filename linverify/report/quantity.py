@@ -74,6 +74,21 @@ def limit(figure: Figure) -> str:
     return f"{figure.sense.value} {quantity(figure.limit, figure.unit)}"
 
 
+def met_at(figure: Figure) -> str:
+    """Where the worst was met: t = 3.25 s, 3.2 rad/s, or both; empty where neither has meaning."""
+    return ", ".join(part for part in (instant(figure), frequency(figure)) if part)
+
+
+def worst_met(figure: Figure) -> str:
+    """The measured figure and the frequency it was met at: 4.1 dB at 3.2 rad/s."""
+    return " at ".join(part for part in (worst(figure), frequency(figure)) if part)
+
+
+def frequency(figure: Figure) -> str:
+    """At which frequency the worst was met: 3.2 rad/s; empty where frequency has no meaning."""
+    return "" if math.isnan(figure.at_frequency) else quantity(figure.at_frequency, figure.frequency_unit, 4)
+
+
 def instant(figure: Figure) -> str:
     """When the worst was met: t = 3.25 s; empty where time has no meaning."""
     return "" if math.isnan(figure.when) else f"t = {quantity(figure.when, figure.time_unit)}"

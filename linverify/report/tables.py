@@ -37,7 +37,7 @@ class Row:
             f"{verdict.spec}::{verdict.point}",
             verdict.check,
             f"{quantity.subject(figure)} {quantity.limit(figure)}" if figure else ABSENT,
-            quantity.worst(figure) if figure else ABSENT,
+            quantity.worst_met(figure) if figure else ABSENT,
             quantity.headroom(figure) if figure and self.counts else ABSENT,
             self.status.value,
             evidence(verdict, figure),

@@ -81,8 +81,8 @@ def found(figure: Figure) -> str:
         parts.append(f"(known to {quantity.quantity(figure.error, figure.unit, 2)})")
     if figure.signal:
         parts.append(f"on {figure.signal}")
-    if instant := quantity.instant(figure):
-        parts.append(f"at {instant}")
+    if where := quantity.met_at(figure):
+        parts.append(f"at {where}")
     headroom = quantity.headroom_told(figure)
     return " ".join(parts) + (f"; {headroom}" if headroom else "")
 
@@ -94,8 +94,8 @@ def figure_line(figure: Figure, *, judged: bool = True) -> str:
     """
     required = quantity.limit(figure)
     parts = [f"{quantity.subject(figure)} {quantity.worst(figure)}"]
-    if instant := quantity.instant(figure):
-        parts[0] += f" at {instant}"
+    if where := quantity.met_at(figure):
+        parts[0] += f" at {where}"
     if required != quantity.ABSENT:
         parts.append(required)
     if required != quantity.ABSENT and judged:

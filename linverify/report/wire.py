@@ -28,6 +28,7 @@ _TEXTS = ("what", "signal", "unit", "time_unit", "drive", "origin")
 _NUMBERS = ("worst", "limit", "error", "when")
 _KEYS = frozenset({"id", "spec", "point", "check", "status", "place", "reason", "figures", "notes", "requirements",
                    "evidence", "details"})  # fmt: skip
+_WHERE = frozenset({"at_frequency", "frequency_unit"})  # of figures that were met at a frequency, else left out
 _DERIVED = frozenset({"headroom"})  # written for readers of the file; computed anew when read back
 
 
@@ -85,8 +86,10 @@ def _figure_data(figure: Figure) -> dict[str, Any]:
         limit=rounded(float(figure.limit)),
         error=rounded(float(figure.error)),
         when=rounded(float(figure.when)),
+        at_frequency=rounded(float(figure.at_frequency)),
     )
-    data = {name: plain(value) for name, value in asdict(written).items()}
+    left_out = _WHERE if math.isnan(written.at_frequency) else frozenset()
+    data = {name: plain(value) for name, value in asdict(written).items() if name not in left_out}
     return data | {"sense": figure.sense.value, "status": figure.status.value, "headroom": plain(written.headroom)}
 
 
@@ -109,10 +112,14 @@ def to_data(verdict: Verdict) -> dict[str, Any]:
 
 
 def _figure(data: Mapping[str, Any]) -> Figure:
-    expect_keys(data, set(_TEXTS) | set(_NUMBERS) | {"sense", "status"} | _DERIVED, "a figure")
+    where = _WHERE if _WHERE & set(data) else frozenset()
+    expect_keys(data, {*_TEXTS, *_NUMBERS, "sense", "status", *_DERIVED, *where}, "a figure")
     texts = {name: _text(data, name) for name in _TEXTS}
     numbers = {name: _float(data, name) for name in _NUMBERS}
-    return Figure(**texts, **numbers, sense=Sense(data["sense"]), status=Status(data["status"]))  # type: ignore[arg-type]
+    figure = Figure(**texts, **numbers, sense=Sense(data["sense"]), status=Status(data["status"]))  # type: ignore[arg-type]
+    if not where:
+        return figure
+    return replace(figure, at_frequency=_float(data, "at_frequency"), frequency_unit=_text(data, "frequency_unit"))
 
 
 def _place(data: Mapping[str, Any]) -> Place:

@@ -121,3 +121,29 @@ def test_subject_and_instant() -> None:
 @pytest.mark.parametrize(("unit", "text"), [("", "0.1"), ("1", "0.1"), ("m", "0.1 m")])
 def test_exact_figures(unit: str, text: str) -> None:
     assert quantity.exactly(0.1, unit) == text
+
+
+@pytest.mark.parametrize(
+    ("worst", "limit", "sense", "share"),
+    [
+        (6.0, 6.0, Sense.LOWER, 1.0),
+        (12.0, 6.0, Sense.LOWER, 10.0**-0.3),
+        (3.0, 6.0, Sense.LOWER, 10.0**0.15),
+        (math.inf, 6.0, Sense.LOWER, 0.0),
+        (-6.0, 6.0, Sense.LOWER, 10.0**0.6),
+        (3.0, 6.0, Sense.UPPER, 10.0**-0.15),
+        (3.0, 0.0, Sense.LOWER, 10.0**-0.15),
+        (1e6, 6.0, Sense.UPPER, math.inf),
+    ],
+)
+def test_headroom_of_decibels_is_that_of_the_ratios(worst: float, limit: float, sense: Sense, share: float) -> None:
+    assert Figure("gain margin", "ride", worst, limit, "dB", sense).used_share == pytest.approx(share, rel=1e-12)
+
+
+def test_where_a_figure_was_met() -> None:
+    margin = Figure("gain margin", "ride", 5.1, 6.0, "dB", Sense.LOWER, at_frequency=3.24159, frequency_unit="rad/s")
+    assert quantity.met_at(margin) == "3.242 rad/s"
+    assert quantity.worst_met(margin) == "5.1 dB at 3.242 rad/s"
+    assert quantity.met_at(replace(margin, when=2.0, time_unit="s")) == "t = 2 s, 3.242 rad/s"
+    assert quantity.met_at(FIGURE) == ""
+    assert quantity.worst_met(FIGURE) == "0.05 m"

@@ -27,7 +27,7 @@ DETAILS = st.recursive(
 )
 FIGURES = st.builds(
     Figure, TEXTS, TEXTS, NUMBERS, NUMBERS, TEXTS, st.sampled_from(Sense), NUMBERS, NUMBERS, TEXTS, TEXTS, TEXTS,
-    st.sampled_from(Status),
+    st.sampled_from(Status), st.floats(allow_nan=False), TEXTS,
 )  # fmt: skip
 VERDICTS = st.builds(
     Verdict,
@@ -182,3 +182,14 @@ def test_damaged_figures_are_refused() -> None:
 def test_json_text_refuses_nan() -> None:
     with pytest.raises(RecordError, match="cannot be written as JSON"):
         text_of({"x": math.nan})
+
+
+def test_a_figure_without_a_frequency_is_written_without_one() -> None:
+    assert "frequency" not in dumps(TRIMS)
+    figure = Figure("gain margin", "ride", 5.1, 6.0, "dB", Sense.LOWER, at_frequency=3.2, frequency_unit="rad/s")
+    again = loads(dumps(replace(TRIMS, figures=(figure,)))).figures[0]
+    assert again == replace(figure, when=again.when)
+    half = to_data(replace(TRIMS, figures=(figure,)))
+    del half["figures"][0]["frequency_unit"]
+    with pytest.raises(RecordError, match="frequency_unit"):
+        from_data(half)

@@ -25,6 +25,10 @@ class Outcome(Enum):
     TOO_MANY_STEPS = "the integration needed more steps than the budget allows"
     DIVERGED = "the plant left every bound before the envelope could end the comparison"
     BUDGET = "the budget of plant evaluations was used up"
+    ILL_POSED = "the loop has no solution: one plus its feedthrough is zero"
+    ON_THE_EDGE = "a closed-loop pole lies on the boundary of stability to within rounding"
+    DELAY_NOT_DECIDED = "a dead time in a loop whose gain does not fall below one at high frequency"
+    UNVERIFIED = "a figure could not be verified by evaluation"
 
     @property
     def done(self) -> bool:

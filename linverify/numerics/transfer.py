@@ -13,7 +13,8 @@ class Transfer:
 
     A (n, n), B (n, m), C (k, n), D (k, m) in the plant's units and per its time unit; delay, step in time units;
     inputs, outputs: names of the channels. A loop transfer function L has as many inputs as outputs; its loop is closed
-    by u = -y, so that the poles of the closed loop are where det(I + L) = 0.
+    by u = -y, so that the poles of the closed loop are where det(I + L) = 0. change (n, n): A - I of a sampled one
+    where it is known to more digits than A shows, as after fast sampling of slow states (`bilinear.held_change`).
     """
 
     A: Array
@@ -24,6 +25,7 @@ class Transfer:
     step: float | None = None
     inputs: tuple[str, ...] = ()
     outputs: tuple[str, ...] = ()
+    change: Array | None = None
 
     def __post_init__(self) -> None:
         n, m, k = self.A.shape[0], self.B.shape[1], self.C.shape[0]
@@ -32,3 +34,5 @@ class Transfer:
             raise ValueError(f"A, B, C, D do not fit together: {shapes}")
         if self.delay and self.step is not None:
             raise ValueError("a dead time of a sampled transfer function belongs into its states")
+        if self.change is not None and (self.step is None or self.change.shape != self.A.shape):
+            raise ValueError("`change` is A - I of a sampled transfer function")

@@ -1,0 +1,213 @@
+"""Stability margins of one channel of a loop: the public entry.
+
+Stability comes first: an unstable loop has no margins. Every figure is met at a frequency, where the response is
+evaluated anew, and carries an estimate of its error.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+
+import numpy as np
+
+from ..core.model import Array
+from ..core.outcome import Outcome
+from . import crossings as cross
+from .bilinear import at_nyquist, change
+from .crossings import Met
+from .curve import HUGE, Complex, Curve, curve
+from .level_sets import Kind, peak
+from .loop_stability import Poles, closed, ill_posed, of_matrix
+from .transfer import Transfer
+
+NEGATIVE = 1e-7  # |Im L| of |L| where L counts as real; nearer than this a crossing is polished
+
+
+@dataclass(frozen=True, slots=True)
+class Found:
+    """frequency: where the figure is met, rad per time unit, 0 and infinity allowed, NaN for none; error: absolute."""
+
+    value: float
+    frequency: float = math.nan
+    error: float = 0.0
+
+
+@dataclass(frozen=True, slots=True)
+class Crossing:
+    """Where |L| = 1 or L is real and negative.
+
+    frequency: rad per time unit; at: L there; margin: rad in (-pi, pi] that phase may still lag (negative: lead) where
+    |L| = 1, else the factor that makes L = -1; error: of margin, absolute; shift: of frequency, absolute.
+    """
+
+    frequency: float
+    at: complex
+    margin: float
+    error: float
+    shift: float
+
+
+NOT_FOUND = Found(math.nan, math.nan, math.nan)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Margins:
+    """What a loop can bear. Figures of a loop that is not surely stable are NaN.
+
+    stable: all closed-loop poles are; poles: those, in s per time unit, of sampled loops in z; unstable: the ones right
+    of the axis (outside the circle); opposite_stable: the loop closed with the opposite sign would be stable.
+    gain_up >= 1 (infinite for none), gain_down <= 1 (0 for none): the nearest factors that make the loop unstable, at
+    frequencies 0 and infinity (half the sample rate) too; phase: smallest |angle| in rad at any gain crossing, infinite
+    for none; delay: dead time beyond what is declared, infinite for none; disk: alpha of skew 0; sensitivity,
+    complementary: the largest |S| and |T|. A gain that touches one without crossing it counts as a gain crossing. Of a
+    sampled loop `delay` is left NaN: see `delay_margin.sampled_delay_margin`.
+    """
+
+    outcome: Outcome
+    why: str = ""
+    stable: bool = False
+    poles: Complex = field(default_factory=lambda: np.zeros(0, dtype=np.complex128))
+    unstable: tuple[complex, ...] = ()
+    opposite_stable: bool = False
+    gain_up: Found = NOT_FOUND
+    gain_down: Found = NOT_FOUND
+    phase: Found = NOT_FOUND
+    delay: Found = NOT_FOUND
+    disk: Found = NOT_FOUND
+    sensitivity: Found = NOT_FOUND
+    complementary: Found = NOT_FOUND
+    crossovers: tuple[Crossing, ...] = ()
+    phase_crossings: tuple[Crossing, ...] = ()
+
+
+def guarantee(alpha: float) -> tuple[float, float]:
+    """What a disk margin of skew 0 promises: gain factor up (down: its inverse), and phase in rad, both at once."""
+    return (math.inf if alpha >= 2.0 else (2.0 + alpha) / (2.0 - alpha)), 2.0 * math.atan(0.5 * alpha)
+
+
+def margins(loop: Transfer) -> Margins:
+    """Margins of a loop with one channel, closed by u = -y. Raises ValueError for several channels or NaN."""
+    if loop.step is not None and at_nyquist(change(loop)):
+        return Margins(Outcome.UNVERIFIED, "a pole of the loop lies at half the sample rate")
+    if loop.delay:
+        return Margins(Outcome.DELAY_NOT_DECIDED)
+    L = curve(loop)
+    if ill_posed(L.dF):
+        return Margins(Outcome.ILL_POSED)
+    poles = closed(L)
+    opposite = not ill_posed(-L.dF) and closed(L, -1.0).stable
+    if not poles.stable:
+        return _unstable(poles, opposite)
+    return _stable(L, poles, opposite)
+
+
+def _unstable(poles: Poles, opposite: bool) -> Margins:
+    named = tuple(complex(each) for each in poles.values[poles.unstable])
+    outcome = Outcome.DONE if named else Outcome.ON_THE_EDGE
+    edge = ", ".join(f"{each:.6g}" for each in poles.values[poles.undecided])
+    return Margins(outcome, "" if named else f"at {edge}", False, poles.values, named, opposite)
+
+
+def _stable(L: Curve, poles: Poles, opposite: bool) -> Margins:
+    opened = of_matrix(L.A, None).values
+    both = np.concatenate([opened, _in_v(L, poles)])
+    gains, phases = cross.gain_candidates(L), cross.phase_candidates(L)
+    nodes = cross.walk(both, np.concatenate([gains, phases]))
+    crossovers = _crossovers(L, nodes)
+    phased = _phase_crossings(L, nodes)
+    up, down = _gains(phased)
+    peaks = {kind: _peak(L, kind, nodes) for kind in ("S", "T", "disk")}
+    return Margins(
+        Outcome.DONE,
+        "",
+        True,
+        poles.values,
+        (),
+        opposite,
+        up,
+        down,
+        _phase(crossovers),
+        _delay(L, crossovers),
+        Found(1.0 / peaks["disk"].value, peaks["disk"].frequency, peaks["disk"].error / peaks["disk"].value ** 2),
+        peaks["S"],
+        peaks["T"],
+        crossovers,
+        phased,
+    )
+
+
+def _in_v(L: Curve, poles: Poles) -> Complex:
+    """Closed-loop poles in the realization's s."""
+    if L.step is None:
+        return poles.values
+    z = poles.values[np.abs(poles.values + 1.0) > 0.0]
+    return np.asarray(2.0 / L.step * (z - 1.0) / (z + 1.0))
+
+
+def _crossovers(L: Curve, nodes: Array) -> tuple[Crossing, ...]:
+    found, touches = cross.crossings(L, cross.size_of, nodes)
+    met = [cross.polished(L, v, cross.size_of, cross.size_slope) for v in found] + [cross.taken(L, v) for v in touches]
+    return tuple(_crossover(L, each) for each in sorted(met, key=lambda each: each.v))
+
+
+def _crossover(L: Curve, met: Met) -> Crossing:
+    margin = math.atan2(-met.at.imag, -met.at.real)
+    turn = abs((met.slope / met.at).imag)
+    error = met.error / abs(met.at) + turn * met.shift
+    return Crossing(L.told(met.v), met.at, margin, error, L.pace(met.v) * met.shift)
+
+
+def _phase_crossings(L: Curve, nodes: Array) -> tuple[Crossing, ...]:
+    found, touches = cross.crossings(L, cross.turn_of, nodes)
+    met = [cross.polished(L, v, cross.turn_of, cross.turn_slope) for v in found] + [cross.taken(L, v) for v in touches]
+    met = [each for each in met if each.at.real < 0.0 and abs(each.at.imag) <= NEGATIVE * abs(each.at) + each.error]
+    crossings = [_phase_crossing(L, each) for each in sorted(met, key=lambda each: each.v)]
+    ends = L.exact(np.array([0.0, np.inf]))
+    for place, frequency in enumerate((0.0, L.told(math.inf))):
+        at = complex(ends.at[place])
+        if at.real < -ends.error[place] and abs(at) < HUGE:
+            error = ends.error[place] / abs(at) ** 2
+            crossings.append(Crossing(frequency, at, -1.0 / at.real, float(error), 0.0))
+    return tuple(sorted(crossings, key=lambda each: each.frequency))
+
+
+def _phase_crossing(L: Curve, met: Met) -> Crossing:
+    size = abs(met.at)
+    error = (met.error + abs((met.slope / met.at).real) * size * met.shift) / size**2
+    return Crossing(L.told(met.v), met.at, 1.0 / size, error, L.pace(met.v) * met.shift)
+
+
+def _gains(crossings: Sequence[Crossing]) -> tuple[Found, Found]:
+    ups = [each for each in crossings if each.margin >= 1.0]
+    downs = [each for each in crossings if each.margin < 1.0]
+    up = min(ups, key=lambda each: each.margin, default=None)
+    down = max(downs, key=lambda each: each.margin, default=None)
+    return (
+        Found(math.inf) if up is None else Found(up.margin, up.frequency, up.error),
+        Found(0.0) if down is None else Found(down.margin, down.frequency, down.error),
+    )
+
+
+def _phase(crossings: Sequence[Crossing]) -> Found:
+    least = min(crossings, key=lambda each: abs(each.margin), default=None)
+    return Found(math.inf) if least is None else Found(abs(least.margin), least.frequency, least.error)
+
+
+def _delay(L: Curve, crossings: Sequence[Crossing]) -> Found:
+    if L.step is not None:
+        return NOT_FOUND
+    if abs(L.d) >= 1.0:
+        return Found(0.0, math.inf)  # at high enough frequency any dead time turns L through -1
+    delays = []
+    for each in crossings:
+        lag = each.margin % (2.0 * math.pi)
+        value = lag / each.frequency
+        delays.append(Found(value, each.frequency, (each.error + value * each.shift) / each.frequency))
+    return min(delays, key=lambda each: each.value, default=Found(math.inf))
+
+
+def _peak(L: Curve, kind: Kind, nodes: Array) -> Found:
+    found = peak(L, kind, nodes)
+    return Found(found.value, L.told(found.v), found.error)

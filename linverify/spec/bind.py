@@ -7,13 +7,15 @@ from __future__ import annotations
 
 import math
 import os
-from dataclasses import replace
+from collections.abc import Mapping
+from dataclasses import dataclass, replace
 from pathlib import Path
 from types import MappingProxyType
 from typing import Literal
 
 from linverify.core import units
 from linverify.core.case import (
+    NO_LOOPS,
     Band,
     Case,
     CheckAsk,
@@ -23,14 +25,21 @@ from linverify.core.case import (
     Requirement,
     Setting,
     SlopeAsk,
+    TrimAsk,
 )
 from linverify.core.errors import Place, Problem, SpecError
+from linverify.core.loop import Loop
+from linverify.core.mode import ModeAsk
 from linverify.core.plant import Plant
 
+from .actuators import bind_actuators, check_trimmed
+from .bound_loops import BoundLoops, LoopBinder
+from .closed import by_set, check_bands, check_closed, known_loops, moved_by_set
 from .envelopes import bind_envelope, nominal_sizes
 from .ground import Ground, whole_ratio
 from .layout import Cell, Point, Spec, always_checked, matches
 from .local_models import LocalModels, bind_delays, bind_wraps
+from .modes import bind_modes, place_of_modes
 from .motions import bind_band, bind_drives
 from .plants import Loaded, load_plant
 from .read import read
@@ -67,7 +76,7 @@ def bind(
         return (), (loaded,)
     ground = Ground(loaded.plant, complete, spec.plant.place)
     _check_clock(ground, spec)
-    cases = _Binder(spec, ground, loaded, LocalModels(ground, spec, root, delivered)).cases()
+    cases = _Binder(spec, ground, loaded, LocalModels(ground, spec, root, delivered), LoopBinder(ground, root)).cases()
     return cases, tuple(ground.problems)
 
 
@@ -83,14 +92,34 @@ def _check_clock(ground: Ground, spec: Spec) -> None:
         ground.report(place, wrong, "its step counts seconds, so time_unit='s' is expected")
 
 
+@dataclass(frozen=True, slots=True)
+class _Own:
+    """What one cell has for itself."""
+
+    parameters: Mapping[str, float]
+    trim: TrimAsk
+    closings: BoundLoops
+
+
+@dataclass(frozen=True, slots=True)
+class _Shared:
+    """What all cells of a point share."""
+
+    sets: tuple[DriveSet, ...]
+    bands: tuple[Band, ...]
+    modes: tuple[ModeAsk, ...]
+    closed: tuple[str, ...]
+
+
 BESIDE = 20  # points before and behind one that a model may have been meant for
 
 
 class _Binder:
     """What all cells of one spec share, bound once."""
 
-    def __init__(self, spec: Spec, ground: Ground, loaded: Loaded, local: LocalModels) -> None:
-        self.spec, self.ground, self.plant, self.local = spec, ground, loaded.plant, local
+    def __init__(self, spec: Spec, ground: Ground, loaded: Loaded, local: LocalModels, loops: LoopBinder) -> None:
+        self.spec, self.ground, self.plant = spec, ground, loaded.plant
+        self.local, self.loops = local, loops
         self.files = tuple(dict.fromkeys((*spec.files, *loaded.files)))
         self.envelope, self.rate_limits = bind_envelope(ground, spec.envelope)
         self.nominal, told = nominal_sizes(self.plant, self.envelope)
@@ -101,6 +130,7 @@ class _Binder:
         self.accuracy = bind_accuracy(ground, spec.accuracy, spec.accuracy_place or Place(spec.shown))
         self.accuracy_told = f"{units.shown(spec.accuracy)} {'a second' if self.plant.step is None else 'a step'}"
         self.limits_shown = limits_shown(ground, spec.envelope)
+        self.actuators = bind_actuators(ground, spec.actuators, self.envelope)
         self.family = max(1, sum(not cell.skipped for point in spec.points for cell in point.cells))
 
     def cases(self) -> tuple[Case, ...]:
@@ -112,15 +142,37 @@ class _Binder:
         )
 
     def _point(self, point: Point) -> tuple[Case, ...]:
-        sets = tuple(bind_drives(self.ground, ask, self.rate_limits, self.limits_shown) for ask in point.drives)
-        bound = [bind_band(self.ground, ask, sets) for ask in point.bands]
-        bands = tuple(band for band in bound if band is not None)
-        return tuple(self._case(point, cell, sets, bands) for cell in point.cells)
+        grounds = [self._equilibrium(point, cell) for cell in point.cells]
+        judged = [own for cell, own in zip(point.cells, grounds, strict=True) if not cell.skipped]
+        shared = self._shared(point, judged[0].closings.loops if judged else NO_LOOPS)
+        return tuple(self._case(point, cell, own, shared) for cell, own in zip(point.cells, grounds, strict=True))
 
-    def _case(self, point: Point, cell: Cell, sets: tuple[DriveSet, ...], bands: tuple[Band, ...]) -> Case:
+    def _equilibrium(self, point: Point, cell: Cell) -> _Own:
         parameters = bind_parameters(self.ground, point, cell)
         trim = bind_trim(self.ground, point, cell, self.envelope, self.accuracy, self.accuracy_told)
+        if not cell.skipped:
+            check_trimmed(self.ground, trim.hold, (*point.hold, *cell.swept), self.actuators)
+        return _Own(parameters, trim, self.loops.of(point.loops, cell, trim, parameters))
+
+    def _shared(self, point: Point, loops: Mapping[str, Loop]) -> _Shared:
+        """What all cells of a point share. loops: those of any cell; they differ in numbers only."""
+        ground, names = self.ground, tuple(loop.name for loop in point.loops)
+        closed = known_loops(ground, self.spec.local.closed, names, "local_models: with")
+        sets = tuple(bind_drives(ground, ask, self.rate_limits, self.limits_shown, loops) for ask in point.drives)
+        moved = {drives.name: moved_by_set(loops, drives, closed) for drives in sets}
+        bound = [bind_band(ground, ask, sets, moved) for ask in point.bands]
+        bands = tuple(
+            each for band in bound if band is not None for each in by_set(band, sets, loops, closed, ground.inputs)
+        )
+        if len(loops) == len(names):  # else some could not be bound, which is told
+            check_closed(ground, point.drives, sets, loops, closed)
+            check_bands(ground, sets, bands, loops)
+        return _Shared(sets, bands, bind_modes(ground, point.modes), closed)
+
+    def _case(self, point: Point, cell: Cell, own: _Own, shared: _Shared) -> Case:
+        parameters, trim, sets, bands = own.parameters, own.trim, shared.sets, shared.bands
         local, told_local = self.local.of(cell, sets, bands)
+        local = replace(local, closed=shared.closed)
         told = (*told_local, *_told_rates(self.spec, point), *told_middles(self.ground, trim, self.envelope))
         return Case(
             spec=self.spec.shown,
@@ -132,7 +184,7 @@ class _Binder:
             parameters=parameters,
             envelope=self.envelope,
             nominal=self.nominal,
-            checks=self._checks(cell, sets),
+            checks=self._checks(point, cell, sets),
             time=self.time,
             rate_limits=self.rate_limits,
             slopes=self.slopes,
@@ -142,20 +194,27 @@ class _Binder:
             local=local,
             delays=self.delays,
             wraps=self.wraps,
+            modes=shared.modes,
+            loops=own.closings.loops,
+            actuators=self.actuators,
             requirements=self._requirements(cell, self.spec.check_names(point)),
             settings=(*self.settings, *point.settings, *told, *_told_cell(self.plant, point, cell)),
-            files=(*self.files, *self.local.files_of(local)),
+            files=(*self.files, *self.local.files_of(local), *own.closings.files),
             skipped=f"skipped by `skip: {cell.skipped.text}`, {cell.skipped.place}" if cell.skipped else "",
             shown=signals_shown(self.ground, point, cell, self.limits_shown),
             shown_limits=self.limits_shown,
             family=self.family,
         )
 
-    def _checks(self, cell: Cell, sets: tuple[DriveSet, ...]) -> tuple[CheckAsk, ...]:
+    def _checks(self, point: Point, cell: Cell, sets: tuple[DriveSet, ...]) -> tuple[CheckAsk, ...]:
         source, agree = self.spec.local.source, self.local.agree.place
         kinds = always_checked(delivered=source is not None and self.local.delivered)
         always = tuple(CheckAsk(kind, agree if kind == "agrees" else cell.place) for kind in kinds)
-        return (*always, *(CheckAsk("follows", drives.place, drives.name) for drives in sets))
+        follows = tuple(CheckAsk("follows", drives.place, drives.name) for drives in sets)
+        place = place_of_modes(point.modes, point.modes_place)
+        modes = (CheckAsk("modes", place),) if place and point.modes else ()
+        margins = tuple(CheckAsk("margins", loop.place, loop=loop.name) for loop in point.loops)
+        return (*always, *follows, *modes, *margins)
 
     def _requirements(self, cell: Cell, checks: tuple[str, ...]) -> tuple[Requirement, ...]:
         answered = []

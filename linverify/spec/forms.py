@@ -2,13 +2,15 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 from linverify.core.errors import Place
 from linverify.core.signals import nearest
 
 from . import scalars
-from .layout import AmplitudeAsk, Entry, Expect, Limits, Quantity, Word
+from .layout import AmplitudeAsk, Bounds, Entry, Expect, Limits, Quantity, Word
+from .merge import shown
 from .reader import Reader
 from .scalars import quoted
 from .source import Block, Broken, Listing, Node, Scalar
@@ -71,6 +73,30 @@ def _apart(reader: Reader, low: Quantity, high: Quantity, called: str) -> bool:
         )
         return False
     return True
+
+
+def bounds(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Bounds | None:
+    """A limit on a figure: `{min: low, max: high}`, one of the two, or `[low, high]`."""
+    side = replace(row, word="*", kind=Kind.QUANTITY)
+    if isinstance(node, Listing):
+        pair = _span(reader, side, called, node)
+        if pair is None or not _apart(reader, *pair, called):
+            return None
+        return Bounds(*pair, shown(node), node.place)
+    if not isinstance(node, Block):
+        told = node.text if isinstance(node, Scalar) else "..."
+        reader.misfit(node, called, f"{{min: {told}}}, {{max: {told}}} or [low, high] is expected")
+        return None
+    if not node.entries:
+        reader.tell(key.place, f"nothing is written after `{called}`", "min, max or both are expected")
+        return None
+    sides = (replace(side, word="min", required=False), replace(side, word="max", required=False))
+    read = {each.word: quantity(reader, each, f"{called}: {each.word}", inner, value)
+            for each, inner, value in reader.words(node, sides, called)}  # fmt: skip
+    low, high = read.get("min"), read.get("max")
+    if low is not None and high is not None and not _apart(reader, low, high, called):
+        return None
+    return None if low is None and high is None else Bounds(low, high, shown(node), node.place)
 
 
 def amplitude(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> AmplitudeAsk | None:

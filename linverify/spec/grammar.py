@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 from enum import Enum
 
 FORMAT = 1
@@ -13,6 +13,8 @@ class Kind(Enum):
 
     FORMAT = "the format number"
     TEXT = "text"
+    NAME = "a name"
+    TRUTH = "true or false"
     PLANT = "FILE:OBJECT or package.module:OBJECT"
     QUANTITY = "a number with or without a unit"
     SIZE = "a size with or without a unit"
@@ -27,6 +29,8 @@ class Kind(Enum):
     FILES = "a file pattern or a list of them"
     LIMITS = "[low, high] or a group of min, max, range, rate"
     RANGE = "[low, high]"
+    BOUNDS = "{min: low, max: high}, one of the two, or [low, high]"
+    LOCATION = "a complex number, as in -0.8 + 2.1j"
     AMPLITUDE = "a size, [low, high] or {until: {signal: size}}"
     EXPECT = "V +- T"
     RATE = "a number with or without a unit, or free"
@@ -36,9 +40,16 @@ class Kind(Enum):
     SWEEP = "a group of name: values or {table: FILE}"
     DRIVES = "one set of drives or several by name"
     BANDS = "a group of signal: error band"
+    MODES = "a list of groups of words"
+    GROUPS = "a group of words or a list of them"
     BLOCK = "a group of words"
     NAMED = "a group of name: value"
     POINTS = "a group of name: operating point"
+    GAIN = "a number with or without a unit, or {table: FILE, over: NAME}"
+    COEFFICIENTS = "a list of numbers"
+    MATRIX = "a list of rows of numbers"
+    SETTLING = "a time or {time: , within: }"
+    RULES = "a name or a list of names"
     NONE = "nothing in this version"
 
 
@@ -58,6 +69,7 @@ class Row:
     sign: str = ""  # "+": above zero, "0+": zero or above
     most: int | None = None  # of a COUNT: a larger one is most likely a slip, and would take for ever
     available: bool = True
+    needs: str = ""  # the word without which its default says nothing
 
 
 def each(kind: Kind, of: tuple[Row, ...] = (), dimension: str = "", sign: str = "") -> tuple[Row, ...]:
@@ -68,6 +80,11 @@ def each(kind: Kind, of: tuple[Row, ...] = (), dimension: str = "", sign: str = 
 def later(word: str, meaning: str) -> Row:
     """A word of the language whose check this version does not have."""
     return Row(word, Kind.NONE, meaning, available=False)
+
+
+def not_yet(row: Row) -> Row:
+    """A word that can be read, and is refused as long as its check is not built."""
+    return replace(row, available=False)
 
 
 SIGNAL = "the signal's"

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from typing import Any, cast
+from typing import Any, Literal, cast
 
 from linverify.core.case import BandKind, Course
 from linverify.core.errors import Place
@@ -10,15 +10,21 @@ from linverify.core.signals import nearest
 
 from . import scalars
 from .kinds import Values, block
-from .layout import BandAsk, DriveAsk, Quantity
+from .layout import BandAsk, DriveAsk, Quantity, Word
 from .merge import is_for_set, is_one_set
-from .reader import Reader, check_name
+from .reader import Reader, check_name, misspelt
 from .source import Block, Node, Scalar
 from .words import BAND_WORDS, DRIVE_WORDS, default_of, row_of
 
 
-def drive_sets(reader: Reader, key: Scalar, node: Node, whole: bool) -> tuple[DriveAsk, ...]:
-    """The sets of drives under `key`; whole: false where `horizon` and others may still come from elsewhere."""
+def drive_sets(
+    reader: Reader, key: Scalar, node: Node, whole: bool, loops: tuple[str, ...] | None = None
+) -> tuple[DriveAsk, ...]:
+    """The sets of drives under `key`.
+
+    whole: false where `horizon` and others may still come from elsewhere; loops: names of the loops, None where they
+    are not known.
+    """
     if not isinstance(node, Block):
         reader.misfit(node, "drives", "one set of drives is expected, or several by name")
         return ()
@@ -28,11 +34,11 @@ def drive_sets(reader: Reader, key: Scalar, node: Node, whole: bool) -> tuple[Dr
     if _mixed(reader, node):
         return ()
     if is_one_set(node):
-        return _drive_set(reader, "", key, node, whole)
+        return _drive_set(reader, "", key, node, whole, loops)
     sets: list[DriveAsk] = []
     for name, value in reader.named(node, "drives", "a set of drives"):
         check_name(reader, name, "a set of drives")
-        sets += _drive_set(reader, name.text, name, value, whole)
+        sets += _drive_set(reader, name.text, name, value, whole, loops)
     return tuple(sets)
 
 
@@ -58,7 +64,9 @@ def set_names(node: Node | None) -> frozenset[str]:
     return frozenset(node.words) if isinstance(node, Block) and not is_one_set(node) else frozenset()
 
 
-def _drive_set(reader: Reader, name: str, key: Scalar, node: Node, whole: bool) -> tuple[DriveAsk, ...]:
+def _drive_set(
+    reader: Reader, name: str, key: Scalar, node: Node, whole: bool, loops: tuple[str, ...] | None
+) -> tuple[DriveAsk, ...]:
     called = f"drives: {name}" if name else "drives"
     values = block(reader, node, DRIVE_WORDS, called)
     if not isinstance(node, Block) or not whole:
@@ -67,6 +75,12 @@ def _drive_set(reader: Reader, name: str, key: Scalar, node: Node, whole: bool) 
     if node.get("amplitude") is None and node.get("offsets") is None:
         reader.tell(key.place, f"`{called}` moves nothing", "`amplitude` or `offsets` is expected")
     horizon, every = values.get("horizon"), values.get("every")
+    loop: Word | None = values.get("loop")
+    if "at" in values and node.get("loop") is None and not misspelt("loop", node, DRIVE_WORDS):
+        place = next(inner.place for inner, _ in node.entries if inner.text == "at")
+        reader.tell(place, f"`{called}`: `at` without `loop`", "it says where the drives enter a closed loop")
+    if loop is not None and loops is not None:
+        known_loop(reader, loop, loops, f"{called}: loop")
     if not complete or horizon is None or every is None:
         return ()
     if horizon.unit == every.unit and every.value > horizon.value:
@@ -88,8 +102,20 @@ def _drive_set(reader: Reader, name: str, key: Scalar, node: Node, whole: bool) 
             pinned=values.get("pinned", ()),
             discerns_gain=discerns.get("gain"),
             discerns_delay=discerns.get("delay"),
+            loop=loop,
+            at=cast(Literal["input", "set_point"], _or_default(values, "at")),
         ),
     )
+
+
+def known_loop(reader: Reader, name: Word, loops: tuple[str, ...], called: str) -> bool:
+    """True where a loop of this name is declared; else told."""
+    if name.text in loops:
+        return True
+    expected = f"one of {', '.join(loops)} is expected" if loops else "this spec declares no `loops`"
+    wrong = f"`{called}`: no loop is called {scalars.quoted(name.text)}"
+    reader.tell(name.place, wrong, expected, nearest(name.text, loops))
+    return False
 
 
 def _or_default(values: Values, word: str) -> Any:

@@ -3,15 +3,15 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable
+from collections.abc import Callable, Sequence
 from typing import Any
 
 from linverify.core.errors import Place
 
-from . import forms, values
+from . import forms, gains, values
 from .layout import AmplitudeAsk, Entry, Expect, Limits, Quantity
 from .reader import Reader
-from .source import Node, Scalar
+from .source import Listing, Node, Scalar
 from .words import Kind, Row
 
 Values = dict[str, Any]  # word -> what its reader made of it; a word that could not be read is left out
@@ -48,6 +48,16 @@ def _block(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Va
     return block(reader, node, row.of, called)
 
 
+def _groups(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> tuple[Entry[Values], ...] | None:
+    """One group of words, or a list of them; the entries have the places of the groups and no names."""
+    return groups(reader, row.of, called, node.items if isinstance(node, Listing) else (node,))
+
+
+def groups(reader: Reader, rows: tuple[Row, ...], called: str, items: Sequence[Node]) -> tuple[Entry[Values], ...]:
+    """Groups of words without names, each with its place."""
+    return tuple(Entry("", item.place, block(reader, item, rows, called)) for item in items)
+
+
 def _raw(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Node:
     """Left as a node: read where what belongs to it is known."""
     return node
@@ -70,6 +80,9 @@ _REFUSED: dict[Kind, Callable[[Place], Any]] = {
 READERS: dict[Kind, Callable[[Reader, Row, str, Scalar, Node], Any]] = {
     Kind.FORMAT: values.format_number,
     Kind.TEXT: values.text,
+    Kind.NAME: values.name,
+    Kind.TRUTH: values.truth,
+    Kind.LOCATION: values.location,
     Kind.PLANT: values.plant,
     Kind.QUANTITY: values.quantity,
     Kind.SIZE: values.size,
@@ -83,16 +96,24 @@ READERS: dict[Kind, Callable[[Reader, Row, str, Scalar, Node], Any]] = {
     Kind.FILES: values.files,
     Kind.SOURCE: values.source,
     Kind.RANGE: forms.span,
+    Kind.BOUNDS: forms.bounds,
     Kind.LIMITS: forms.limits,
     Kind.AMPLITUDE: forms.amplitude,
     Kind.EXPECT: forms.expect,
     Kind.RATE: forms.rate,
     Kind.RELATIVE: forms.relative,
     Kind.WIDER_OF: forms.wider_of,
+    Kind.GROUPS: _groups,
     Kind.BLOCK: _block,
     Kind.NAMED: named,
     Kind.POINTS: _raw,
     Kind.SWEEP: _raw,
     Kind.DRIVES: _raw,
     Kind.BANDS: _raw,
+    Kind.MODES: _raw,
+    Kind.GAIN: gains.gain,
+    Kind.COEFFICIENTS: gains.coefficients,
+    Kind.MATRIX: gains.matrix,
+    Kind.SETTLING: gains.settling,
+    Kind.RULES: gains.rules,
 }

@@ -17,57 +17,22 @@ from collections.abc import Mapping
 from dataclasses import dataclass, field
 from pathlib import Path
 from types import MappingProxyType
-from typing import Any, Generic, Literal, TypeVar
+from typing import Any, Literal
 
 from linverify.core.case import BandKind, Course, Setting
 from linverify.core.errors import Place
 
-T = TypeVar("T")
-
-
-@dataclass(frozen=True, slots=True)
-class Word:
-    """A piece of text (a name, a pattern) and where it stands."""
-
-    text: str
-    place: Place
-
-
-@dataclass(frozen=True, slots=True)
-class Quantity:
-    """A finite number with the unit as written.
-
-    unit is "" for a plain number (the plant's own unit), "%" for per cent, else the unit's text, not yet looked at by
-    anybody: it may be no unit at all. text is the whole value as written ("30 kn"); place is that of the value.
-    """
-
-    value: float
-    unit: str
-    text: str
-    place: Place
-
-    @property
-    def per_cent(self) -> bool:
-        """True for `V %`."""
-        return self.unit == "%"
-
-
-@dataclass(frozen=True, slots=True)
-class Entry(Generic[T]):
-    """`name: value` with the place of the name; the value brings its own place where it needs one."""
-
-    name: str
-    place: Place
-    value: T
-
-
-@dataclass(frozen=True, slots=True)
-class FileWord:
-    """Text that names a file or a glob, relative to `folder` (that of the file it is written in)."""
-
-    text: str
-    folder: Path
-    place: Place
+from .atoms import Bounds as Bounds
+from .atoms import Entry as Entry
+from .atoms import Expect as Expect
+from .atoms import FileWord as FileWord
+from .atoms import Limits as Limits
+from .atoms import Location as Location
+from .atoms import Quantity as Quantity
+from .atoms import Word as Word
+from .loop_layout import LoopAsk as LoopAsk
+from .mode_layout import ActuatorWords as ActuatorWords
+from .mode_layout import ModeLine as ModeLine
 
 
 @dataclass(frozen=True, slots=True)
@@ -81,26 +46,6 @@ class PlantRef:
     module: str
     object: str
     folder: Path
-    text: str
-    place: Place
-
-
-@dataclass(frozen=True, slots=True)
-class Limits:
-    """One line of the envelope; a missing side is None. rate: largest |change| per time, of an input or state."""
-
-    low: Quantity | None
-    high: Quantity | None
-    rate: Quantity | None
-    place: Place
-
-
-@dataclass(frozen=True, slots=True)
-class Expect:
-    """`V +- T`: tolerance is a difference in V's dimension, or per cent of V (tolerance.per_cent)."""
-
-    value: Quantity
-    tolerance: Quantity
     text: str
     place: Place
 
@@ -139,6 +84,8 @@ class DriveAsk:
     pinned: tuple[FileWord, ...]
     discerns_gain: float | None
     discerns_delay: Quantity | None
+    loop: Word | None = None  # names a loop of the point
+    at: Literal["input", "set_point"] = "input"
 
 
 @dataclass(frozen=True, slots=True)
@@ -198,6 +145,9 @@ class Point:
     bands: tuple[BandAsk, ...]
     cells: tuple[Cell, ...]
     settings: tuple[Setting, ...]  # the effective words of this point, defaults of the language included
+    modes: tuple[ModeLine, ...] = ()
+    modes_place: Place | None = None  # of the word `modes` where it is written
+    loops: tuple[LoopAsk, ...] = ()
 
 
 @dataclass(frozen=True, slots=True)
@@ -226,7 +176,7 @@ class LocalWords:
     """`local_models`. source: None for models that are derived here and now; text may hold `{point}`.
 
     point, entries: fractions, None where not written. places: of the words that are written, by their names.
-    gains: the words under `gains` with their values; None where it is not written.
+    gains: the words under `gains` with their values; None where it is not written. closed: the loops behind `with`.
     """
 
     source: FileWord | None = None
@@ -236,6 +186,7 @@ class LocalWords:
     entries: float | None = None
     response: ResponseWords | None = None
     gains: Mapping[str, Any] | None = None
+    closed: tuple[Word, ...] = ()
     places: Mapping[str, Place] = field(default_factory=lambda: MappingProxyType({}))
 
 
@@ -278,11 +229,14 @@ class Spec:
     local: LocalWords = field(default_factory=LocalWords)
     wraps: tuple[Word, ...] = ()
     delays: Mapping[str, tuple[Entry[Quantity], ...]] = field(default_factory=lambda: MappingProxyType({}))
+    actuators: tuple[Entry[ActuatorWords], ...] = ()
 
     def check_names(self, point: Point) -> tuple[str, ...]:
-        """Names of the checks of each cell of `point`, in order: trims, differentiable, agrees, follows.SET ..."""
+        """Names of the checks of each cell of `point`: trims, ..., follows.SET ..., modes, margins.LOOP ..."""
         sets = tuple("follows" + (f".{drives.name}" if drives.name else "") for drives in point.drives)
-        return (*always_checked(delivered=self.local.source is not None), *sets)
+        modes = ("modes",) if point.modes else ()
+        margins = tuple(f"margins.{loop.name}" for loop in point.loops)
+        return (*always_checked(delivered=self.local.source is not None), *sets, *modes, *margins)
 
 
 def always_checked(*, delivered: bool) -> tuple[str, ...]:

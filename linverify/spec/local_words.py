@@ -39,6 +39,7 @@ def local_words(reader: Reader, spec: Block, values: Values) -> LocalWords:
         entries=agreed.get("entries"),
         response=_response(reader, agree, agreed.get("response")),
         gains=MappingProxyType(agreed["gains"]) if "gains" in agreed else None,
+        closed=read.get("with", ()),
         places=MappingProxyType(places),
     )
 
@@ -58,6 +59,8 @@ def _together(reader: Reader, places: dict[str, Place], read: Values, derived: b
         reader.tell(places["keep"], "`keep` without `others`", expected)
     if "others" in read and "keep" not in places:
         reader.tell(places["others"], "`others` without `keep`", "it says what becomes of states that are not kept")
+    if read.get("with") == ():
+        reader.tell(places["with"], "`with`: the list is empty", "names of loops are expected")
     if "agree" in read and derived:
         expected = "a delivered model is expected behind `source`: a derived one agrees with itself"
         reader.tell(places["agree"], "`agree` without a delivered model", expected)

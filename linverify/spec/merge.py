@@ -22,7 +22,8 @@ def over(nearer: Node, farther: Node | None, problems: list[Problem], path: tupl
     """`nearer` with what only `farther` has added.
 
     path: the words above, needed because an envelope's forms are alike ([a, b] is a `range`), because the one signal
-    of `until` is replaced and not joined by another, and because named sets of drives cannot meet an unnamed one.
+    of `until` is replaced and not joined by another, because a controller of another form is replaced, and because
+    named sets of drives cannot meet an unnamed one.
     """
     if farther is None:
         return nearer
@@ -30,7 +31,9 @@ def over(nearer: Node, farther: Node | None, problems: list[Problem], path: tupl
         nearer, farther = _sides(nearer), _sides(farther)
     if not isinstance(nearer, Block) or not isinstance(farther, Block) or path[-1:] == ("until",):
         return nearer
-    if path[-1:] in (("drives",), ("error_bands",)) and not farther.empty:
+    if path[-1:] == ("controller",) and not any(word in farther.words for word in nearer.words):
+        return nearer  # of another form: the two cannot be mixed
+    if path[-1:] in (("drives",), ("error_bands",), ("loops",)) and not farther.empty:
         if nearer.empty:  # not the same as nothing: it looks as if it took away what it takes over
             expected = f"leave the word out to take over what is written at {farther.place}"
             problems.append(Problem(nearer.place, f"`{path[-1]}` is an empty group", expected))
@@ -92,8 +95,11 @@ def settings(node: Node | None, rows: tuple[Row, ...], above: str = "") -> Itera
     written = node.entries if isinstance(node, Block) else ()
     for key, value in written:
         yield from setting(f"{above}{key.text}", value, row_of(rows, key.text) or row_of(rows, "*"))
+    words = tuple(key.text for key, _ in written)
     for row in rows:
-        if row.available and row.word != "*" and row.word not in (key.text for key, _ in written):
+        if row.available and row.word != "*" and row.word not in words:
+            if row.needs and row.needs not in words:
+                continue
             if row.default:
                 yield Setting(f"{above}{row.word}", row.default, BY_LANGUAGE)
             elif row.kind is Kind.BLOCK:
@@ -103,7 +109,10 @@ def settings(node: Node | None, rows: tuple[Row, ...], above: str = "") -> Itera
 def setting(word: str, node: Node, row: Row | None) -> Iterator[Setting]:
     """The settings behind one word; row: that of the word, None where names and values are the user's own."""
     rows = row.of if row else ()
-    if not isinstance(node, Block):
+    if row and row.kind is Kind.MODES and isinstance(node, Listing):
+        for number, item in enumerate(node.items, start=1):
+            yield Setting(f"{word}.{number}", shown(item), str(item.place))
+    elif not isinstance(node, Block):
         yield Setting(printable(word), shown(node), str(node.place))
     elif row and row.kind is Kind.DRIVES and not is_one_set(node):
         for key, value in node.entries:

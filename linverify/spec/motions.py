@@ -5,10 +5,12 @@ from __future__ import annotations
 import glob
 import math
 from collections.abc import Mapping
+from dataclasses import dataclass
 from pathlib import Path
 from types import MappingProxyType
 
-from linverify.core.case import Amplitude, Band, DriveSet
+from linverify.core.case import NO_LOOPS, Amplitude, Band, DriveSet
+from linverify.core.loop import Loop
 from linverify.core.shown import Shown
 from linverify.core.signals import nearest
 
@@ -17,19 +19,26 @@ from .layout import AmplitudeAsk, BandAsk, DriveAsk, Entry, FileWord
 from .written import moves_shown, shown_size, time_shown
 
 NO_UNITS: Mapping[str, Shown] = MappingProxyType({})
+NOTHING_MOVED: Mapping[str, tuple[str, ...]] = MappingProxyType({})
 MOST_INTERVALS = 100_000  # a drive of more has most likely a wrong unit, and would not fit into memory
 
 
 def bind_drives(
-    ground: Ground, ask: DriveAsk, rate_limits: Mapping[str, float], limits: Mapping[str, Shown] = NO_UNITS
+    ground: Ground,
+    ask: DriveAsk,
+    rate_limits: Mapping[str, float],
+    limits: Mapping[str, Shown] = NO_UNITS,
+    loops: Mapping[str, Loop] = NO_LOOPS,
 ) -> DriveSet:
     """One set of drives.
 
-    rate_limits: by signal, from the envelope, for inputs without a `rate` in this set; limits: the envelope's units.
+    rate_limits: by signal, from the envelope, for inputs without a `rate` in this set; limits: the envelope's units;
+    loops: those of the point, by name.
     """
     word = f"drives: {ask.name}" if ask.name else "drives"
     every, intervals = _clock(ground, ask, word)
-    amplitude = _amplitudes(ground, ask, word)
+    driven = _Driven.of(ground, ask, loops)
+    amplitude = _amplitudes(ground, ask, driven, word)
     delay = None if ask.discerns_delay is None else ground.time(ask.discerns_delay, f"{word}: discerns: delay")
     return DriveSet(
         name=ask.name,
@@ -37,7 +46,7 @@ def bind_drives(
         intervals=intervals,
         amplitude=MappingProxyType(amplitude),
         course=ask.course,
-        rate=MappingProxyType(_rates(ground, ask, amplitude, rate_limits, word)),
+        rate=MappingProxyType(_rates(ground, ask, driven, amplitude, rate_limits, word)),
         offsets=MappingProxyType(_offsets(ground, ask, word)),
         shapes=ask.shapes,
         count=ask.count,
@@ -49,17 +58,41 @@ def bind_drives(
         shown=moves_shown(ground, ask, limits),
         shown_time=time_shown(ground, ask),
         shown_delay=None if ask.discerns_delay is None else shown_size(ask.discerns_delay, ground.plant.time_unit),
+        loop=ask.loop.text if ask.loop else "",
+        at=ask.at,
     )
 
 
-def bind_band(ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...]) -> Band | None:
-    """One error band, or None where its signal is a mistake. sets: the drives of the point."""
+@dataclass(frozen=True, slots=True)
+class _Driven:
+    """What a set of drives may move, and how messages call it."""
+
+    names: tuple[str, ...]
+    what: str
+
+    @classmethod
+    def of(cls, ground: Ground, ask: DriveAsk, loops: Mapping[str, Loop]) -> _Driven | None:
+        """Plant inputs, and at a set point what its loop measures; None where that loop is not known, which is told."""
+        if ask.loop is None or ask.at == "input":
+            return cls(ground.inputs, "an input")
+        loop = loops.get(ask.loop.text)
+        what = f"an input, or a signal that the loop {ask.loop.text!r} measures,"
+        return None if loop is None else cls((*loop.measures, *ground.inputs), what)
+
+
+def bind_band(
+    ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...], moved: Mapping[str, tuple[str, ...]] = NOTHING_MOVED
+) -> Band | None:
+    """One error band, or None where its signal is a mistake.
+
+    sets: the drives of the point; moved: by set, the inputs that loops move in it.
+    """
     comparable = tuple(dict.fromkeys((*ground.outputs, *ground.states)))
     if ask.signal in ground.inputs:
-        wrong = f"{ask.signal!r} is an input, and both models are driven with the same inputs"
-        ground.report(ask.signal_place, wrong, "an output or state is expected")
-        return None
-    if not ground.known(ask.signal, ask.signal_place, comparable, "an output or state"):
+        if not any(ask.signal in moved.get(each.name, ()) for each in sets if ask.drives in (None, each.name)):
+            _input_band(ground, ask, sets)
+            return None
+    elif not ground.known(ask.signal, ask.signal_place, comparable, "an output or state"):
         return None
     word = f"error_bands: {ask.signal}: {ask.kind}"
     limit = math.nan
@@ -75,6 +108,14 @@ def bind_band(ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...]) -> Band 
         place=ask.place,
         shown=None if ask.limit is None else shown_size(ask.limit, ground.plant.unit(ask.signal)),
     )
+
+
+def _input_band(ground: Ground, ask: BandAsk, sets: tuple[DriveSet, ...]) -> None:
+    """Tell of a band on an input that no loop moves."""
+    wrong = f"{ask.signal!r} is an input, and both models are driven with the same inputs"
+    loops = dict.fromkeys(each.loop for each in sets if each.loop and ask.drives in (None, each.name))
+    moving = f", or an input that the loop {' or '.join(map(repr, loops))} moves," if loops else ""
+    ground.report(ask.signal_place, wrong, f"an output or state{moving} is expected")
 
 
 def _clock(ground: Ground, ask: DriveAsk, word: str) -> tuple[float, int]:
@@ -97,10 +138,10 @@ def _clock(ground: Ground, ask: DriveAsk, word: str) -> tuple[float, int]:
     return every, intervals or 1
 
 
-def _amplitudes(ground: Ground, ask: DriveAsk, word: str) -> dict[str, Amplitude]:
+def _amplitudes(ground: Ground, ask: DriveAsk, driven: _Driven | None, word: str) -> dict[str, Amplitude]:
     amplitudes: dict[str, Amplitude] = {}
-    for entry in ask.amplitude:
-        if ground.known(entry.name, entry.place, ground.inputs, "an input"):
+    for entry in ask.amplitude if driven else ():
+        if driven and ground.known(entry.name, entry.place, driven.names, driven.what):
             amplitudes[entry.name] = _amplitude(ground, entry, f"{word}: amplitude: {entry.name}")
     return amplitudes
 
@@ -119,11 +160,16 @@ def _amplitude(ground: Ground, entry: Entry[AmplitudeAsk], word: str) -> Amplitu
 
 
 def _rates(
-    ground: Ground, ask: DriveAsk, amplitude: Mapping[str, Amplitude], limits: Mapping[str, float], word: str
+    ground: Ground,
+    ask: DriveAsk,
+    driven: _Driven | None,
+    amplitude: Mapping[str, Amplitude],
+    limits: Mapping[str, float],
+    word: str,
 ) -> dict[str, float]:
-    rates = {name: limits[name] for name in amplitude if name in limits}
-    for entry in ask.rate:
-        if not ground.known(entry.name, entry.place, ground.inputs, "an input"):
+    rates = {name: limits[name] for name in amplitude if name in limits and name in ground.inputs}
+    for entry in ask.rate if driven else ():
+        if driven is None or not ground.known(entry.name, entry.place, driven.names, driven.what):
             continue
         if entry.name not in amplitude:
             wrong = f"no amplitude moves {entry.name!r}, so there is nothing to limit"

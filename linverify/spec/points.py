@@ -11,8 +11,10 @@ from linverify.core.errors import Place
 
 from .groups import drive_sets, error_bands, set_names
 from .kinds import Values, block
-from .layout import BandAsk, Cell, DriveAsk, Entry, Point, Quantity, Word, always_checked
+from .layout import BandAsk, Cell, DriveAsk, Entry, LoopAsk, ModeLine, Point, Quantity, Word, always_checked
+from .loops import read_loops
 from .merge import over, setting
+from .mode_lines import mode_lines
 from .reader import Reader, check_name, misspelt
 from .scalars import quoted
 from .source import Block, Node, Scalar
@@ -20,17 +22,20 @@ from .sweeps import Sweep, cells, read_sweep
 from .words import DERIVE, POINT_WORDS, SHARED_POINT_WORDS, SPEC_WORDS, row_of
 
 # words of the whole spec that a point may override
-OVERRIDDEN = ("parameters", "drives", "error_bands")
+OVERRIDDEN = ("parameters", "drives", "error_bands", "modes", "loops")
+_PARTS = OVERRIDDEN[1:]
 _NOT_A_NAME = "family"
 
 
 @dataclass(frozen=True, slots=True)
 class _Group:
-    """Drives and bands of a point, with the nodes that they were read from."""
+    """Drives, bands, limits on modes and loops of a point, with the nodes that they were read from."""
 
-    nodes: tuple[Node | None, Node | None]
+    nodes: tuple[Node | None, ...]
     drives: tuple[DriveAsk, ...]
     bands: tuple[BandAsk, ...]
+    modes: tuple[ModeLine, ...]
+    loops: tuple[LoopAsk, ...]
 
 
 @dataclass(slots=True)
@@ -43,7 +48,7 @@ class PointReader:
     checks: list[str] = field(default_factory=list)  # every check of every cell, by its whole name
     unsure: bool = False  # some points could not be read, so `checks` is not all of them
     # by the identity of nodes, which are kept so that no other node can take their place in memory
-    _groups: dict[tuple[int, int], _Group] = field(default_factory=dict)
+    _groups: dict[tuple[int, ...], _Group] = field(default_factory=dict)
     _told: dict[int, tuple[Node, tuple[Setting, ...]]] = field(default_factory=dict)
 
     def points(self, node: Node) -> tuple[Point, ...]:
@@ -70,16 +75,20 @@ class PointReader:
         self._parts(merged, whole=True)
 
     def _parts(self, tree: Block, whole: bool) -> _Group:
-        drives, bands = tree.get("drives"), tree.get("error_bands")
-        known = (id(drives), id(bands))
+        nodes = tuple(tree.get(word) for word in _PARTS)
+        known = tuple(map(id, nodes))
         if whole and known in self._groups:
             return self._groups[known]
-        drives_key, bands_key = tree.key("drives"), tree.key("error_bands")
+        drives, bands, modes, loops = nodes
+        drives_key, bands_key, modes_key, loops_key = (tree.key(word) for word in _PARTS)
         sets = set_names(drives) if whole or drives else None
+        names = loop_names(loops) if whole else None
         read = _Group(
-            (drives, bands),
-            drive_sets(self.reader, drives_key, drives, whole) if drives and drives_key else (),
+            nodes,
+            drive_sets(self.reader, drives_key, drives, whole, names) if drives and drives_key else (),
             error_bands(self.reader, bands_key, bands, sets) if bands and bands_key else (),
+            mode_lines(self.reader, modes_key, modes) if modes and modes_key and _available("modes") else (),
+            read_loops(self.reader, loops_key, loops, whole) if loops and loops_key and _available("loops") else (),
         )
         if whole:
             self._groups[known] = read
@@ -135,6 +144,9 @@ class PointReader:
             bands=group.bands,
             cells=made,
             settings=tuple(self._settings(merged, sweep)),
+            modes=group.modes,
+            modes_place=_place(merged, "modes"),
+            loops=group.loops,
         )
 
     def _merged(self, node: Block) -> Block:
@@ -172,10 +184,14 @@ class PointReader:
         names = sorted(set_names(drives)) or ["follows"] if isinstance(drives, Block) else []
         follows = [name if name == "follows" else f"follows.{name}" for name in names]
         self.unsure = self.unsure or not made or not isinstance(drives, Block | None)
+        modes = ["modes"] if merged.get("modes") is not None and _available("modes") else []
+        loops = merged.get("loops")
+        margins = [f"margins.{name}" for name in loop_names(loops) or ()] if _available("loops") else []
+        self.unsure = self.unsure or not isinstance(loops, Block | None)
         local = self.spec.get("local_models")
         source = local.get("source") if isinstance(local, Block) else None
         always = always_checked(delivered=isinstance(source, Scalar) and source.text != DERIVE)
-        self.checks += [f"{cell.name}.{check}" for cell in made for check in (*always, *follows)]
+        self.checks += [f"{cell.name}.{check}" for cell in made for check in (*always, *follows, *modes, *margins)]
 
     def _unique(self, points: list[Point]) -> None:
         first: dict[str, Place] = {}
@@ -224,6 +240,18 @@ class _Rules:
                 self.reader.tell(
                     each.place, f"`{word}`: {quoted(each.text)} is {how} already", "an unknown is expected"
                 )
+
+
+def loop_names(node: Node | None) -> tuple[str, ...] | None:
+    """Names of the loops that are declared; None where they cannot be known."""
+    if node is None:
+        return ()
+    return node.words if isinstance(node, Block) else None
+
+
+def _available(word: str) -> bool:
+    row = row_of(SHARED_POINT_WORDS, word)
+    return row is not None and row.available
 
 
 def _place(tree: Block, word: str) -> Place | None:

@@ -10,11 +10,12 @@ from pathlib import Path
 from linverify.core.errors import Place, Problem
 from linverify.core.signals import nearest
 
+from .actuators import actuator_words
 from .kinds import Values, block
 from .layout import Point, RequirementAsk, Spec, Word, matches
 from .local_words import local_words, settings_told
 from .merge import over, settings
-from .points import PointReader
+from .points import OVERRIDDEN, PointReader
 from .reader import Reader, check_name, misspelt
 from .scalars import fraction, quoted
 from .source import DEFAULTS, Block, Node, parse
@@ -22,7 +23,7 @@ from .words import CHECKS, REQUIREMENT_WORDS, SPEC_WORDS, default_of, row_of
 
 _SHARED = tuple(row for row in SPEC_WORDS if row.shared)
 # words that concern points, reports or this file alone: no settings of the spec as a whole
-_NO_SETTINGS = ("linverify", "every_point", "operating_points", "drives", "error_bands", "parameters", "requirements")
+_NO_SETTINGS = ("linverify", "every_point", "operating_points", "requirements", *OVERRIDDEN)
 
 
 def read(path: Path, shown: str, root: Path) -> tuple[Spec | None, list[Problem]]:
@@ -142,6 +143,7 @@ def _spec(reader: Reader, merged: Block, path: Path, shown: str, files: list[Pat
         local=local,
         wraps=values.get("wraps", ()),
         delays=values.get("delays", {}),
+        actuators=actuator_words(reader, merged, values),
     )
 
 

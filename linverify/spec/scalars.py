@@ -14,12 +14,19 @@ _NUMBER = r"[-+]?(?:(?:0|[1-9][0-9]*)(?:\.[0-9]*)?|\.[0-9]+)(?:[eE][-+]?[0-9]+)?
 _ONLY_NUMBER = re.compile(_NUMBER)
 # a unit starts with a letter, a degree or per cent sign, or is 1/s and the like
 _WITH_UNIT = re.compile(rf"({_NUMBER})\s*((?:[^\W\d_]|[%°])[^:,]*|(?<=\s)1/[^:,]*)")
+_SIZE = _NUMBER.removeprefix("[-+]?")
+# a real and an imaginary part, the latter with i or j on either side; brackets may keep a unit apart
+_COMPLEX = re.compile(
+    rf"(?P<open>\()?\s*(?:(?P<real>{_NUMBER})\s*(?P<sign>\+-|[-+])|(?P<alone>\+-|[-+])?)\s*"
+    rf"(?:[ij]\s?(?P<behind>{_SIZE})|(?P<before>{_SIZE})?\s?[ij])\s*(?(open)\))(?:\s+(?P<unit>\S.*))?"
+)
 _CORE_NULL = re.compile(r"|~|null|Null|NULL")
 _CORE_TRUTH = re.compile(r"true|True|TRUE|false|False|FALSE")
 _CORE_NUMBER = re.compile(
     r"[-+]?[0-9]+|0o[0-7]+|0x[0-9a-fA-F]+|[-+]?(?:\.[0-9]+|[0-9]+(?:\.[0-9]*)?)(?:[eE][-+]?[0-9]+)?"
     r"|[-+]?\.(?:inf|Inf|INF)|\.(?:nan|NaN|NAN)"
 )
+_LIKE = "a complex number is expected, as in -0.8 + 2.1j"
 _LONGEST_SHOWN = 60
 _LONGEST_NUMBER = 60
 
@@ -102,6 +109,24 @@ def amount(text: str, plain: bool = True) -> Amount | Wrong:
     if isinstance(number, Wrong):
         return number
     return Amount(number, match.group(2))
+
+
+def location(text: str, plain: bool = True) -> tuple[complex, str] | Wrong:
+    """A complex number and its unit: `-0.8 + 2.1j`, `-0.8+2.1i`, `-0.8 +- 2.1j` (a pair), `j3`, `-4`, `-1 + 2j 1/s`."""
+    match = _COMPLEX.fullmatch(text.strip().replace("\u00b1", "+-").replace("+/-", "+-"))
+    if match is None:
+        read = amount(text, plain)
+        if isinstance(read, Amount):
+            return complex(read.value), read.unit
+        expected = _LIKE if "its unit" in read.expected or not read.expected else read.expected
+        return Wrong(read.wrong.replace("is no number", "is no complex number"), expected)
+    parts = [_finite(part) for part in (match["real"] or "0", match["behind"] or match["before"] or "1")]
+    wrong = next((part for part in parts if isinstance(part, Wrong)), None)
+    if wrong is not None:
+        return wrong
+    real, size = (part for part in parts if not isinstance(part, Wrong))
+    below = (match["sign"] or match["alone"]) == "-"
+    return complex(real, -size if below else size), match["unit"] or ""
 
 
 def number(text: str, plain: bool = True) -> float | Wrong:

@@ -17,9 +17,27 @@ _NUMBER_OR_TEXT: Schema = {"type": ["number", "string"]}
 _PAIR: Schema = {"type": "array", "items": _NUMBER_OR_TEXT, "minItems": 2, "maxItems": 2}
 _TEXTS: Schema = {"type": "array", "items": {"type": "string"}, "uniqueItems": True}
 
+_SCHEDULE: Schema = {
+    "type": "object",
+    "properties": {word: {"type": "string"} for word in ("table", "over", "column")},
+    "required": ["table", "over"],
+    "additionalProperties": False,
+}
+_GAIN: Schema = {"anyOf": [_NUMBER_OR_TEXT, _SCHEDULE]}
+_GAINS: Schema = {"type": "array", "items": _GAIN, "minItems": 1}
+_BAND: Schema = {
+    "type": "object",
+    "properties": {"time": _NUMBER_OR_TEXT, "within": _NUMBER_OR_TEXT},
+    "required": ["time"],
+    "additionalProperties": False,
+}
+
 _SIMPLE: dict[Kind, Schema] = {
     Kind.FORMAT: {"const": FORMAT},
     Kind.TEXT: {"type": ["string", "number", "boolean"]},
+    Kind.NAME: {"type": ["string", "number", "boolean"]},
+    Kind.TRUTH: {"type": "boolean"},
+    Kind.LOCATION: _NUMBER_OR_TEXT,
     Kind.PLANT: {"type": "string", "pattern": "^.+:.+$"},
     Kind.QUANTITY: _NUMBER_OR_TEXT,
     Kind.SIZE: _NUMBER_OR_TEXT,
@@ -35,6 +53,11 @@ _SIMPLE: dict[Kind, Schema] = {
     Kind.RATE: _NUMBER_OR_TEXT,
     Kind.RELATIVE: {"type": "string", "pattern": "%"},
     Kind.WIDER_OF: _PAIR,
+    Kind.GAIN: _GAIN,
+    Kind.COEFFICIENTS: _GAINS,
+    Kind.MATRIX: {"anyOf": [_GAIN, _GAINS, {"type": "array", "items": _GAINS, "minItems": 1}]},
+    Kind.SETTLING: {"anyOf": [_NUMBER_OR_TEXT, _BAND]},
+    Kind.RULES: {"anyOf": [{"type": "string"}, _TEXTS]},
 }
 
 
@@ -72,6 +95,13 @@ def _behind(row: Row) -> Schema:
     if row.kind in (Kind.CHOICE, Kind.CHOICES):
         choice: Schema = {"enum": list(row.choices)}
         return choice if row.kind is Kind.CHOICE else {"type": "array", "items": choice, "minItems": 1}
+    if row.kind is Kind.BOUNDS:
+        sides = {"type": "object", "properties": {"min": _NUMBER_OR_TEXT, "max": _NUMBER_OR_TEXT}}
+        return {"anyOf": [_PAIR, {**sides, "additionalProperties": False, "minProperties": 1}]}
+    if row.kind is Kind.MODES:
+        return {"type": "array", "items": _group(row.of), "minItems": 1}
+    if row.kind is Kind.GROUPS:
+        return {"anyOf": [_group(row.of), {"type": "array", "items": _group(row.of), "minItems": 1}]}
     if row.kind is Kind.LIMITS:
         return {"anyOf": [_PAIR, _group(row.of)]}
     if row.kind is Kind.AMPLITUDE:

@@ -9,7 +9,7 @@ from __future__ import annotations
 from linverify.core.signals import nearest
 
 from . import scalars
-from .layout import FileWord, PlantRef, Quantity, Word
+from .layout import FileWord, Location, PlantRef, Quantity, Word
 from .reader import Reader
 from .scalars import quoted
 from .source import Listing, Node, Scalar
@@ -95,6 +95,25 @@ def text(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Word
     """Text, as written."""
     scalar = reader.scalar(node, called, "text is expected")
     return None if scalar is None else Word(" ".join(scalar.text.split()), scalar.place)
+
+
+def name(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Word | None:
+    """One name; whether there is something of that name is seen later."""
+    scalar = reader.scalar(node, called, "a name is expected")
+    return None if scalar is None else Word(scalar.text.strip(), scalar.place)
+
+
+def truth(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> bool | None:
+    """true or false, and nothing else that YAML 1.1 takes for one."""
+    scalar = reader.scalar(node, called, "true or false is expected")
+    return None if scalar is None else reader.judged(scalars.truth(scalar.text, scalar.plain), scalar.place, called)
+
+
+def location(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Location | None:
+    """A place of the complex plane."""
+    scalar = reader.scalar(node, called, "a complex number is expected, as in -0.8 + 2.1j")
+    read = None if scalar is None else reader.judged(scalars.location(scalar.text, scalar.plain), scalar.place, called)
+    return None if scalar is None or read is None else Location(*read, scalar.text.strip(), scalar.place)
 
 
 def plant(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> PlantRef | None:

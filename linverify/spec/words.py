@@ -7,14 +7,17 @@ is not built yet stands here too (`available` is false), so that it is refused b
 from __future__ import annotations
 
 from collections.abc import Iterator
+from dataclasses import replace
 
 from .grammar import FORMAT as FORMAT
 from .grammar import SIGNAL as SIGNAL
 from .grammar import Kind as Kind
 from .grammar import Row as Row
 from .grammar import default_of as default_of
-from .grammar import each, later
+from .grammar import each, later, not_yet
 from .grammar import row_of as row_of
+from .loop_words import LOOPS
+from .mode_words import ACTUATOR_WORDS, MODE_WORDS
 
 DERIVE = "derive"  # behind `local_models: source`, for models that nobody delivered
 SHAPES = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
@@ -43,8 +46,9 @@ DRIVE_WORDS = (
     Row("shapes", Kind.CHOICES, "menu of the random drives", default="[" + ", ".join(SHAPES) + "]", choices=SHAPES),
     Row("count", Kind.COUNT, "how many random drives", default="300", sign="+", most=100_000),
     Row("search", Kind.COUNT, "how many examples hunt the worst case", default="150", sign="0+", most=10_000),
-    later("loop", "both models run with this loop closed"),
-    later("at", "drives add to the set point, or to what the loop moves"),
+    not_yet(Row("loop", Kind.NAME, "both models run with this loop closed")),
+    not_yet(Row("at", Kind.CHOICE, "drives add to the set point, or to what the loop moves", default="input",
+        choices=("input", "set_point"), needs="loop")),
     Row("discerns", Kind.BLOCK, "what these drives must be able to show", DISCERNS),
     Row("pinned", Kind.FILES, "drives that failed once and are replayed first"),
 )  # fmt: skip
@@ -71,8 +75,8 @@ SHARED_POINT_WORDS = (
         each(Kind.QUANTITY, dimension="the parameter's")),
     Row("drives", Kind.DRIVES, "what this point overrides of the drives", DRIVE_WORDS),
     Row("error_bands", Kind.BANDS, "what this point overrides of the error bands", BAND_WORDS),
-    later("modes", "what this point overrides of the modes"),
-    later("loops", "what this point overrides of the loops"),
+    not_yet(Row("modes", Kind.MODES, "limits on poles instead of those of the spec", MODE_WORDS)),
+    not_yet(replace(LOOPS, meaning="what this point overrides of the loops")),
 )  # fmt: skip
 
 AXIS_WORDS = (
@@ -118,7 +122,7 @@ LOCAL_MODEL_WORDS = (
     Row("source", Kind.SOURCE, "where local models come from", default=DERIVE),
     Row("keep", Kind.BLOCK, "states, inputs, outputs of a reduced model", KEEP_WORDS),
     Row("others", Kind.CHOICE, "what is left out is frozen or settled", choices=("freeze", "settle")),
-    later("with", "loops that are closed inside the model"),
+    not_yet(Row("with", Kind.NAMES, "loops that are closed inside the model")),
     Row("agree", Kind.BLOCK, "delivered against derived", AGREE_WORDS),
 )  # fmt: skip
 
@@ -162,9 +166,10 @@ SPEC_WORDS = (
     Row("drives", Kind.DRIVES, "the input sequences that both models are driven with", DRIVE_WORDS),
     Row("error_bands", Kind.BANDS, "how far plant and local model may differ", BAND_WORDS),
     later("frequency_bands", "response to small sines against the local model"),
-    later("modes", "limits on the local model's poles"),
-    later("actuators", "lags and limits in series with plant inputs"),
-    later("loops", "controllers closed around each local model"),
+    not_yet(Row("modes", Kind.MODES, "limits on the local model's poles, zeros and gains", MODE_WORDS)),
+    not_yet(Row("actuators", Kind.NAMED, "lags and limits in series with plant inputs",
+        each(Kind.BLOCK, ACTUATOR_WORDS))),
+    not_yet(LOOPS),
     later("variations", "parameters that are not known exactly"),
     later("reach", "how far the drives can be scaled"),
     later("handover", "between neighbouring operating points"),

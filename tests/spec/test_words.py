@@ -27,6 +27,10 @@ TOP = {
     "actuators": False, "loops": False, "variations": False, "reach": False, "handover": False, "coverage": False,
     "budget": False, "requirements": True, "accepted": False,
 }  # fmt: skip
+WITH_WORDS = (
+    Kind.BLOCK, Kind.NAMED, Kind.POINTS, Kind.LIMITS, Kind.DRIVES, Kind.BANDS, Kind.SWEEP, Kind.SWEPT, Kind.MODES,
+    Kind.GROUPS,
+)  # fmt: skip
 INNER_LATER = {"loop", "at", "with", "modes", "loops"}
 
 
@@ -49,7 +53,8 @@ def test_required_words() -> None:
     required = {row.word for row in rows_of(SPEC_WORDS) if row.required}
     of_agree = {"within", "between"}
     of_spec = {"linverify", "plant", "operating_points", "horizon", "every", "from", "to", "count", "checks"}
-    assert required == of_agree | of_spec
+    of_loops = {"controller", "measures", "moves"}
+    assert required == of_agree | of_spec | of_loops
     count = words.row_of(words.DRIVE_WORDS, "count")
     assert count is not None
     assert not count.required
@@ -59,11 +64,11 @@ def test_required_words() -> None:
 def test_rows_agree_with_themselves(row: Row) -> None:
     assert row.meaning or row.word == "*"
     assert bool(row.choices) == (row.kind in (Kind.CHOICE, Kind.CHOICES))
-    assert bool(row.of) == (
-        row.kind in (Kind.BLOCK, Kind.NAMED, Kind.POINTS, Kind.LIMITS, Kind.DRIVES, Kind.BANDS, Kind.SWEEP, Kind.SWEPT)
-    )
+    assert bool(row.of) == (row.kind in WITH_WORDS)
     assert len({inner.word for inner in row.of}) == len(row.of)
-    if row.default and row.kind not in (Kind.CHOICES, Kind.SOURCE):
+    if row.default and row.kind is Kind.TRUTH:
+        assert row.default in ("true", "false")
+    elif row.default and row.kind not in (Kind.CHOICES, Kind.SOURCE):
         assert row.default in row.choices or isinstance(amount(row.default), Amount)
     assert not (row.required and row.default)
 

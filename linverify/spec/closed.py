@@ -1,0 +1,100 @@
+"""What closed loops ask of drives and error bands: bands on what they move, instants that fit their sample times."""
+
+from __future__ import annotations
+
+from collections.abc import Iterable, Mapping, Sequence
+from dataclasses import replace
+
+from linverify.core import units
+from linverify.core.case import Band, DriveSet
+from linverify.core.loop import Loop
+from linverify.core.signals import nearest
+
+from .atoms import Word
+from .ground import Ground, listed, whole_ratio
+from .layout import DriveAsk
+from .scalars import quoted
+
+
+def inside(loops: Mapping[str, Loop], names: Iterable[str]) -> tuple[Loop, ...]:
+    """The named loops and all that are closed inside them, each once; names that are not there are passed over."""
+    found: dict[str, Loop] = {}
+    left = list(names)
+    while left:
+        name = left.pop(0)
+        if name in loops and name not in found:
+            found[name] = loops[name]
+            left += loops[name].within
+    return tuple(found.values())
+
+
+def moved(loops: Mapping[str, Loop], names: Iterable[str]) -> tuple[str, ...]:
+    """The plant inputs that the named loops move, with those inside them."""
+    return tuple(dict.fromkeys(each.name for loop in inside(loops, names) for each in loop.moves if not each.loop))
+
+
+def moved_by_set(loops: Mapping[str, Loop], drives: DriveSet, closed: Sequence[str]) -> tuple[str, ...]:
+    """The plant inputs that are moved by loops while `drives` run: by its own loop, and by those inside the model."""
+    return moved(loops, (*((drives.loop,) if drives.loop else ()), *closed))
+
+
+def check_closed(
+    ground: Ground, asks: Sequence[DriveAsk], sets: Sequence[DriveSet], loops: Mapping[str, Loop], closed: Sequence[str]
+) -> None:
+    """Note sets of drives whose loop is closed already, or whose instants do not fit a sampled loop."""
+    within = {loop.name for loop in inside(loops, closed)}
+    for ask, drives in zip(asks, sets, strict=True):
+        if ask.loop is not None and ask.loop.text in within:
+            wrong = f"the loop {quoted(ask.loop.text)} is closed inside the local model already"
+            ground.report(ask.loop.place, wrong, "leave `loop` out, or leave the loop out of `local_models: with`")
+        for loop in inside(loops, (*((drives.loop,) if drives.loop else ()), *closed)):
+            if loop.sample is not None and not _fit(drives.every, loop.sample):
+                told = units.told(loop.sample, ground.plant.time_unit)
+                wrong = f"{ask.every.text!r} does not fit the sample time of the loop {loop.name!r}, {told}"
+                ground.report(ask.every.place, wrong, "a multiple of it, or it divided by a whole number, is expected")
+
+
+def _fit(every: float, sample: float) -> bool:
+    """True where one is a whole number of times the other; also where one is no number, which was told."""
+    if not (every > 0.0 and sample > 0.0):
+        return True
+    return whole_ratio(every, sample) is not None or whole_ratio(sample, every) is not None
+
+
+def check_bands(ground: Ground, sets: Sequence[DriveSet], bands: Sequence[Band], loops: Mapping[str, Loop]) -> None:
+    """Note sets of drives with a loop that moves inputs which no error band is for.
+
+    In closed loop an error of the local model shows less in what is measured than in what the loop does about it.
+    """
+    for drives in sets:
+        names = moved(loops, [drives.loop]) if drives.loop else ()
+        banded = {band.signal for band in bands if band.drives in (None, drives.name)}
+        missing = [name for name in names if name not in banded]
+        if missing and ground.complete:
+            called = f"the drives {quoted(drives.name)}" if drives.name else "these drives"
+            wrong = f"no error band is for {listed(missing)}, which the loop {quoted(drives.loop)} moves in {called}"
+            expected = "closed loops hide errors in what they measure: a band on each input that they move is expected"
+            ground.report(drives.place, wrong, expected)
+
+
+def by_set(
+    band: Band, sets: Sequence[DriveSet], loops: Mapping[str, Loop], closed: Sequence[str], inputs: Sequence[str]
+) -> tuple[Band, ...]:
+    """`band`, or one band for each set in which a loop moves its input, where that is not so in all of them."""
+    if band.drives is not None or band.signal not in inputs:
+        return (band,)
+    moving = [drives for drives in sets if band.signal in moved_by_set(loops, drives, closed)]
+    return (band,) if len(moving) == len(sets) else tuple(replace(band, drives=drives.name) for drives in moving)
+
+
+def known_loops(ground: Ground, words: Sequence[Word], declared: Sequence[str], called: str) -> tuple[str, ...]:
+    """The names behind `words` that are names of loops; the others are noted."""
+    found = []
+    for word in words:
+        if word.text in declared:
+            found.append(word.text)
+            continue
+        expected = f"one of {listed(declared)} is expected" if declared else "this spec declares no `loops`"
+        wrong = f"`{called}`: no loop is called {quoted(word.text)}"
+        ground.report(word.place, wrong, expected, nearest(word.text, declared))
+    return tuple(found)

@@ -1,4 +1,6 @@
-"""The plant that a spec names, `FILE:OBJECT` or `package.module:OBJECT`. Only here does reading a spec run user code.
+"""Python objects that a spec names, `FILE:OBJECT` or `package.module:OBJECT`: its plant, and controllers.
+
+Only here does reading a spec run user code.
 
 A plant file is executed under a module name of its own, once a process and content: two specs that name two different
 `plant.py` do not meet, and several specs of one file share it. While it runs, its folder comes first on the import
@@ -14,7 +16,7 @@ import importlib
 import importlib.util
 import sys
 import traceback
-from collections.abc import Iterator, Mapping
+from collections.abc import Callable, Iterator, Mapping, Sequence
 from contextlib import contextmanager
 from dataclasses import dataclass
 from pathlib import Path
@@ -51,11 +53,64 @@ class _Module:
 _MODULES: dict[tuple[Path, str], _Module] = {}
 
 
+@dataclass(frozen=True, slots=True)
+class Found:
+    """A Python object that a spec names, with the files that it was made from."""
+
+    value: Any
+    files: tuple[Path, ...]
+
+
 def load_plant(ref: PlantRef, root: Path) -> Loaded | Problem:
     """Import what `ref` names; `root` comes last on the import path for `package.module:OBJECT`.
 
     A file that is missing or does not run, a missing object and an object that is no Plant are Problems at `ref.place`.
     """
+    module = _module(ref, root)
+    if isinstance(module, Problem):
+        return module
+    plants = [name for name, value in module.names.items() if isinstance(value, Plant)]
+    where = _where(ref)
+    expected = f"{where} holds {', '.join(plants)}" if plants else f"{where} holds no plant"
+    found = _object(ref, module, "a Plant is expected", expected, plants)
+    if isinstance(found, Problem):
+        return found
+    if isinstance(found.value, Plant):
+        return Loaded(found.value, found.files)
+    article = f"a {type(found.value).__name__}" if not isinstance(found.value, type) else "a class"
+    wrong = f"{ref.object!r} in {where} is {article}, no Plant"
+    return Problem(ref.place, wrong, expected, nearest(ref.object, plants))
+
+
+def load_object(ref: PlantRef, root: Path) -> Found | Problem:
+    """Import any object that `ref` names; what is missing or does not run is a Problem at `ref.place`."""
+    module = _module(ref, root)
+    if isinstance(module, Problem):
+        return module
+    names = [name for name in module.names if not name.startswith("_")]
+    return _object(ref, module, "a controller is expected", "the name of an object in it is expected", names)
+
+
+def called(function: Callable[..., Any], *arguments: Any) -> Any:
+    """What `function` returns, or a `Raised` with the line of its file."""
+    try:
+        return function(*arguments)
+    except _ANY as error:
+        code = getattr(function, "__code__", None)
+        return Raised(_told_at(error, Path(code.co_filename)) if code else f"raised {_told(error)}")
+
+
+class Raised(str):
+    """The text of an exception that user code raised."""
+
+    __slots__ = ()
+
+
+def _where(ref: PlantRef) -> str:
+    return ref.file or ref.module
+
+
+def _module(ref: PlantRef, root: Path) -> _Module | Problem:
     if ref.file:
         path = (ref.folder / ref.file).resolve()
         if not path.is_file():
@@ -65,28 +120,21 @@ def load_plant(ref: PlantRef, root: Path) -> Loaded | Problem:
         module = _run_file(path, ref.file)
     else:
         module = _import_module(ref.module, root)
-    if module.wrong:
-        return Problem(ref.place, module.wrong)
-    return _object(ref, module)
+    return Problem(ref.place, module.wrong) if module.wrong else module
 
 
-def _object(ref: PlantRef, module: _Module) -> Loaded | Problem:
-    where = ref.file or ref.module
-    plants = [name for name, value in module.names.items() if isinstance(value, Plant)]
-    expected = f"{where} holds {', '.join(plants)}" if plants else f"{where} holds no plant"
+def _object(ref: PlantRef, module: _Module, what: str, there: str, names: Sequence[str]) -> Found | Problem:
+    """what: is due; there: what the module holds, by `names` that a misspelt one is compared with."""
+    where = _where(ref)
     value: Any = None
     for depth, name in enumerate(ref.object.split(".")):
         try:
             value = module.names[name] if depth == 0 else getattr(value, name)
         except (KeyError, AttributeError):
-            return Problem(ref.place, f"{where} has no {ref.object!r}", expected, nearest(ref.object, plants))
+            return Problem(ref.place, f"{where} has no {ref.object!r}", there, nearest(ref.object, names))
         except _ANY as error:
-            return Problem(ref.place, f"{ref.object!r} in {where} raised {_told(error)}", "a Plant is expected")
-    if isinstance(value, Plant):
-        return Loaded(value, module.files)
-    article = f"a {type(value).__name__}" if not isinstance(value, type) else "a class"
-    wrong = f"{ref.object!r} in {where} is {article}, no Plant"
-    return Problem(ref.place, wrong, expected, nearest(ref.object, plants))
+            return Problem(ref.place, f"{ref.object!r} in {where} raised {_told(error)}", what)
+    return Found(value, module.files)
 
 
 def _run_file(path: Path, shown: str) -> _Module:

@@ -6,7 +6,6 @@ import csv
 import itertools
 import posixpath
 import re
-from collections.abc import Iterator
 from dataclasses import dataclass
 from pathlib import Path
 
@@ -14,7 +13,7 @@ from linverify.core import units
 from linverify.core.errors import Place
 from linverify.core.signals import nearest
 
-from . import scalars
+from .columns import cell_of, csv_lines, headings
 from .kinds import block
 from .layout import Cell, Entry, Quantity, Word, matches
 from .reader import Reader
@@ -26,7 +25,6 @@ from .words import AXIS_WORDS, Kind, Row
 MOST_CELLS = 100_000
 _NOT_IN_NAMES = re.compile(r"[^A-Za-z0-9_\-+.]")
 _PLAIN = Row("*", Kind.QUANTITY, "")
-_HEADING = re.compile(r"\s*([^\s\[\]]+)\s*(?:\[([^\[\]]*)\])?\s*")
 
 
 @dataclass(frozen=True, slots=True)
@@ -149,11 +147,11 @@ def _no_table(reader: Reader, word: Word, path: Path, error: Exception) -> None:
 
 def _rows(reader: Reader, content: str, shown: str) -> Sweep | None:
     told = len(reader.problems)
-    lines = list(_csv_lines(content))
+    lines = list(csv_lines(content))
     if len(lines) < 2:
         reader.tell(Place(shown), "the table has no rows", "a line of names and a line for each point are expected")
         return None
-    columns = _headings(reader, lines[0], shown)
+    columns = headings(reader, lines[0], shown)
     rows = []
     for number, fields in lines[1:]:
         place = Place(shown, number, 1)
@@ -163,53 +161,13 @@ def _rows(reader: Reader, content: str, shown: str) -> Sweep | None:
             )
             continue
         cells = [
-            _cell(reader, column, field, Place(shown, number, at))
+            cell_of(reader, column, field, Place(shown, number, at))
             for column, (field, at) in zip(columns, fields, strict=True)
         ]
         rows.append((tuple(cell for cell in cells if cell is not None), place))
     if len(reader.problems) > told:
         return None
     return Sweep(tuple(Word(name, place) for name, _, place in columns), tuple(rows))
-
-
-def _csv_lines(content: str) -> Iterator[tuple[int, list[tuple[str, int]]]]:
-    """Lines that hold something: their number, and each field with its column."""
-    for number, line in enumerate(content.splitlines(), 1):
-        if line.strip() and not line.startswith("#"):
-            fields, at = [], 1
-            for field in next(csv.reader([line])):
-                fields.append((field.strip(), at + len(field) - len(field.lstrip())))
-                at += len(field) + 1
-            yield number, fields
-
-
-def _headings(reader: Reader, line: tuple[int, list[tuple[str, int]]], shown: str) -> list[tuple[str, str, Place]]:
-    columns: list[tuple[str, str, Place]] = []
-    for field, at in line[1]:
-        place = Place(shown, line[0], at)
-        match = _HEADING.fullmatch(field)
-        if match is None:
-            reader.tell(
-                place, f"{quoted(field)} is no name of a column", "a name is expected, as in speed or speed [kn]"
-            )
-        elif match.group(1) in (name for name, _, _ in columns):
-            reader.tell(place, f"the column {quoted(match.group(1))} is there twice")
-        columns.append((match.group(1), (match.group(2) or "").strip(), place) if match else ("", "", place))
-    return columns
-
-
-def _cell(reader: Reader, column: tuple[str, str, Place], field: str, place: Place) -> Entry[Quantity] | None:
-    name, unit, heading = column
-    if not name:
-        return None
-    read = reader.judged(scalars.amount(field), place, name)
-    if read is None:
-        return None
-    if read.unit and unit:
-        reader.tell(place, f"`{name}`: {quoted(field)} has a unit, and so has the column", "one of them is enough")
-        return None
-    told = field if read.unit or not unit else f"{field} {unit}"
-    return Entry(name, heading, Quantity(read.value, read.unit or unit, told, place))
 
 
 def cells(reader: Reader, name: Scalar, sweep: Sweep | None, skip: tuple[Word, ...]) -> tuple[Cell, ...]:

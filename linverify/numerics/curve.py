@@ -100,6 +100,17 @@ class Curve:
             error += ROUNDING * self.delay * v * abs(at)
         return complex(at), complex(slope), float(error)
 
+    def plane(self, s: complex) -> tuple[complex, complex]:
+        """L and dL/ds anywhere in the plane of a continuous loop; infinite at a pole."""
+        X = s * np.eye(len(self.A)) - self.A
+        try:
+            right, left = np.linalg.solve(X, self.b), np.linalg.solve(X.T, self.c)
+        except np.linalg.LinAlgError:
+            return complex(math.inf), 0j
+        at, slope = self.c @ right + self.d, -(left @ right)
+        fade = np.exp(-s * self.delay)
+        return complex(at * fade), complex((slope - self.delay * at) * fade)
+
     def told(self, v: float) -> float:
         """A frequency of the realization as the loop's own, rad per time unit."""
         return v if self.step is None else 2.0 / self.step * math.atan(0.5 * v * self.step)

@@ -44,9 +44,13 @@ def size_of(kind: Kind, L: Complex) -> Array:
 
 
 def peak(curve: Curve, kind: Kind, nodes: Array) -> Peak:
-    """The largest value over all frequencies; needs a stable closed loop. nodes: a walk over open and closed poles."""
-    ends = np.array([0.0, np.inf]) if not curve.delay else np.array([0.0])
-    best = _of(curve, kind, ends)
+    """The largest value over all frequencies; needs a stable closed loop. nodes: a walk over open and closed poles.
+
+    With a dead time there is no pencil: the walk must be close enough to show every top, and reach far enough.
+    """
+    best = _of(curve, kind, np.array([0.0] if curve.delay else [0.0, np.inf]))
+    if curve.delay and (limit := _at_infinity(kind, abs(curve.d))) > best.value:
+        best = Peak(limit, np.inf, 0.0)
     for _ in range(ROUNDS):
         found = _of(curve, kind, _climbed(lambda v: size_of(kind, curve.quick(v)), nodes))
         if found.value > best.value:
@@ -61,6 +65,11 @@ def peak(curve: Curve, kind: Kind, nodes: Array) -> Peak:
             break
         nodes = more
     return Peak(best.value, best.v, best.error + ABOVE * best.value)
+
+
+def _at_infinity(kind: Kind, d: float) -> float:
+    """What is approached at infinite frequency, where the dead time turns d through every phase."""
+    return {"S": 1.0, "T": d, "disk": 0.5 * (1.0 + d)}[kind] / (1.0 - d)
 
 
 def _closed_pencil(curve: Curve, kind: Kind, level: float) -> Complex:

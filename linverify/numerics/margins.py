@@ -15,13 +15,16 @@ import numpy as np
 from ..core.model import Array
 from ..core.outcome import Outcome
 from . import crossings as cross
+from . import dead_time
 from .bilinear import at_nyquist, change
 from .crossings import Met
 from .curve import HUGE, Complex, Curve, curve
-from .level_sets import Kind, peak
+from .level_sets import Kind, Peak, peak
 from .loop_stability import Poles, closed, ill_posed, of_matrix
 from .transfer import Transfer
 
+KINDS: tuple[Kind, ...] = ("S", "T", "disk")
+ROUNDS = 6  # of walking further with a dead time
 NEGATIVE = 1e-7  # |Im L| of |L| where L counts as real; nearer than this a crossing is polished
 
 
@@ -88,19 +91,26 @@ def guarantee(alpha: float) -> tuple[float, float]:
 
 
 def margins(loop: Transfer) -> Margins:
-    """Margins of a loop with one channel, closed by u = -y. Raises ValueError for several channels or NaN."""
+    """Margins of a loop with one channel, closed by u = -y. Raises ValueError for several channels or NaN.
+
+    With a dead time `poles` are those of the infinitely many that a rational stand-in of the dead time leads to.
+    """
     if loop.step is not None and at_nyquist(change(loop)):
         return Margins(Outcome.UNVERIFIED, "a pole of the loop lies at half the sample rate")
-    if loop.delay:
-        return Margins(Outcome.DELAY_NOT_DECIDED)
     L = curve(loop)
     if ill_posed(L.dF):
         return Margins(Outcome.ILL_POSED)
+    if L.delay:
+        return _delayed(L)
     poles = closed(L)
     opposite = not ill_posed(-L.dF) and closed(L, -1.0).stable
     if not poles.stable:
         return _unstable(poles, opposite)
-    return _stable(L, poles, opposite)
+    opened = of_matrix(L.A, None).values
+    gains, phases = cross.gain_candidates(L), cross.phase_candidates(L)
+    nodes = cross.walk(np.concatenate([opened, _in_v(L, poles)]), np.concatenate([gains, phases]))
+    peaks = {kind: peak(L, kind, nodes) for kind in KINDS}
+    return _told(L, poles.values, opposite, _gain_crossings(L, nodes), _phase_crossings(L, nodes), peaks)
 
 
 def _unstable(poles: Poles, opposite: bool) -> Margins:
@@ -110,32 +120,72 @@ def _unstable(poles: Poles, opposite: bool) -> Margins:
     return Margins(outcome, "" if named else f"at {edge}", False, poles.values, named, opposite)
 
 
-def _stable(L: Curve, poles: Poles, opposite: bool) -> Margins:
-    opened = of_matrix(L.A, None).values
-    both = np.concatenate([opened, _in_v(L, poles)])
-    gains, phases = cross.gain_candidates(L), cross.phase_candidates(L)
-    nodes = cross.walk(both, np.concatenate([gains, phases]))
-    crossovers = _crossovers(L, nodes)
-    phased = _phase_crossings(L, nodes)
-    up, down = _gains(phased)
-    peaks = {kind: _peak(L, kind, nodes) for kind in ("S", "T", "disk")}
+def _delayed(L: Curve) -> Margins:
+    if abs(L.d) >= 1.0 - dead_time.NEUTRAL:
+        return Margins(Outcome.DELAY_NOT_DECIDED)
+    opened, free = of_matrix(L.A, None).values, closed(L)
+    nodes = cross.walk(np.concatenate([opened, free.values]), cross.gain_candidates(L))
+    met = _gain_crossings(L, nodes)
+    if len(free.undecided):
+        return Margins(Outcome.ON_THE_EDGE, "already without its dead time")
+    unstable, on_edge = dead_time.count(L, met, free)
+    poles = dead_time.roots(L)
+    against = closed(L, -1.0)
+    opposite = not len(against.undecided) and dead_time.count(L, met, against, -1.0) == (0, False)
+    if on_edge:
+        return Margins(Outcome.ON_THE_EDGE, "at a gain crossing whose phase is just used up", False, poles)
+    if unstable < 0:
+        return Margins(Outcome.UNVERIFIED, "roots could not be counted", False, poles)
+    if unstable:
+        return Margins(Outcome.DONE, "", False, poles, _right(poles, unstable), opposite)
+    return _followed(L, nodes, poles, opposite, met)
+
+
+def _right(poles: Complex, number: int) -> tuple[complex, ...]:
+    right = sorted((complex(each) for each in poles if each.real > 0.0), key=lambda each: (-each.real, -each.imag))
+    # where the stand-in led to fewer than there are, the rest is not known by value
+    return tuple(right[:number]) + (complex(math.nan, math.nan),) * (number - len(right))
+
+
+def _followed(L: Curve, nodes: Array, poles: Complex, opposite: bool, met: list[Met]) -> Margins:
+    """Margins of a stable loop with a dead time: walked as far as its gain can matter."""
+    last = max([each.v for each in met], default=0.0)
+    beside = np.abs(poles.imag[poles.imag > 0.0])
+    nodes = np.unique(np.concatenate([nodes, beside, beside * (1.0 + cross.BESIDE), beside * (1.0 - cross.BESIDE)]))
+    end, limit = last + 2.0 * math.pi / L.delay, dead_time.reach(L)
+    for _ in range(ROUNDS):
+        walked = dead_time.dense(nodes, L.delay, min(end, limit))
+        phased = _phase_crossings(L, walked)
+        peaks = {kind: peak(L, kind, walked) for kind in KINDS}
+        needed = max(last, _needed(L, phased, peaks))
+        if needed <= end:
+            return _told(L, poles, opposite, met, phased, peaks)
+        end = 1.01 * needed
+        if end > limit:
+            break
     return Margins(
-        Outcome.DONE,
-        "",
-        True,
-        poles.values,
-        (),
-        opposite,
-        up,
-        down,
-        _phase(crossovers),
-        _delay(L, crossovers),
-        Found(1.0 / peaks["disk"].value, peaks["disk"].frequency, peaks["disk"].error / peaks["disk"].value ** 2),
-        peaks["S"],
-        peaks["T"],
-        crossovers,
-        phased,
+        Outcome.UNVERIFIED, f"the gain falls too slowly beyond {L.told(last):.6g}", True, poles, (), opposite
     )
+
+
+def _needed(L: Curve, phased: Sequence[Crossing], peaks: dict[Kind, Peak]) -> float:
+    """The frequency beyond which |L| is too small to change a figure."""
+    sizes = [1.0 / each.margin for each in phased if each.margin >= 1.0]
+    S, T, disk = (peaks[kind].value for kind in KINDS)
+    levels = [max(sizes, default=0.0), 1.0 - 1.0 / S, T / (1.0 + T), (2.0 * disk - 1.0) / (2.0 * disk + 1.0)]
+    level = max(min(levels), abs(L.d)) * (1.0 + 1e-6)
+    return float(cross.gain_candidates(L, level).max(initial=0.0)) if level > 0.0 else math.inf
+
+
+def _told(
+    L: Curve, poles: Complex, opposite: bool, met: list[Met], phased: tuple[Crossing, ...], peaks: dict[Kind, Peak]
+) -> Margins:
+    crossovers = tuple(_crossover(L, each) for each in met)
+    up, down = _gains(phased)
+    S, T, disk = (Found(peaks[kind].value, L.told(peaks[kind].v), peaks[kind].error) for kind in KINDS)
+    alpha = Found(1.0 / disk.value, disk.frequency, disk.error / disk.value**2)
+    phase, delay = _phase(crossovers), _delay(L, crossovers)
+    return Margins(Outcome.DONE, "", True, poles, (), opposite, up, down, phase, delay, alpha, S, T, crossovers, phased)
 
 
 def _in_v(L: Curve, poles: Poles) -> Complex:
@@ -146,10 +196,10 @@ def _in_v(L: Curve, poles: Poles) -> Complex:
     return np.asarray(2.0 / L.step * (z - 1.0) / (z + 1.0))
 
 
-def _crossovers(L: Curve, nodes: Array) -> tuple[Crossing, ...]:
+def _gain_crossings(L: Curve, nodes: Array) -> list[Met]:
     found, touches = cross.crossings(L, cross.size_of, nodes)
-    met = [cross.polished(L, v, cross.size_of, cross.size_slope) for v in found] + [cross.taken(L, v) for v in touches]
-    return tuple(_crossover(L, each) for each in sorted(met, key=lambda each: each.v))
+    met = [cross.polished(L, v, cross.size_of, cross.size_slope) for v in found]
+    return sorted(met + [cross.taken(L, v) for v in touches], key=lambda each: each.v)
 
 
 def _crossover(L: Curve, met: Met) -> Crossing:
@@ -167,6 +217,8 @@ def _phase_crossings(L: Curve, nodes: Array) -> tuple[Crossing, ...]:
     ends = L.exact(np.array([0.0, np.inf]))
     for place, frequency in enumerate((0.0, L.told(math.inf))):
         at = complex(ends.at[place])
+        if L.delay and frequency > 0.0:
+            at = complex(-abs(at))  # at infinite frequency the dead time turns L through every phase
         if at.real < -ends.error[place] and abs(at) < HUGE:
             error = ends.error[place] / abs(at) ** 2
             crossings.append(Crossing(frequency, at, -1.0 / at.real, float(error), 0.0))
@@ -206,8 +258,3 @@ def _delay(L: Curve, crossings: Sequence[Crossing]) -> Found:
         value = lag / each.frequency
         delays.append(Found(value, each.frequency, (each.error + value * each.shift) / each.frequency))
     return min(delays, key=lambda each: each.value, default=Found(math.inf))
-
-
-def _peak(L: Curve, kind: Kind, nodes: Array) -> Found:
-    found = peak(L, kind, nodes)
-    return Found(found.value, L.told(found.v), found.error)

@@ -54,3 +54,18 @@ def test_guarantee_of_a_disk() -> None:
     gain, phase = guarantee(0.4)
     assert 20 * math.log10(gain) == pytest.approx(3.5, abs=0.03)
     assert math.degrees(phase) == pytest.approx(22.6, abs=0.05)
+
+
+@pytest.mark.parametrize("gain, delay", [(1.0, 1.0), (2.0, 0.7), (0.1, 15.0), (30.0, 0.052)])
+def test_integrator_with_dead_time(gain: float, delay: float) -> None:
+    # closed form: k exp(-s tau) / s is stable for k tau < pi / 2; crossover at k, phase left pi / 2 - k tau
+    found = margins(ratio([gain], [1, 0], delay))
+    used = gain * delay
+    assert found.stable
+    assert found.gain_up.value == pytest.approx(0.5 * math.pi / used, rel=1e-9)
+    assert found.phase.value == pytest.approx(0.5 * math.pi - used, rel=1e-9)
+    assert found.delay.value == pytest.approx(0.5 * math.pi / gain - delay, rel=1e-9)
+    more = margins(ratio([gain], [1, 0], delay + 1.001 * found.delay.value))
+    assert not more.stable
+    assert [abs(each.imag) for each in more.unstable] == pytest.approx([gain, gain], rel=2e-3)
+    assert margins(ratio([gain], [1, 0], delay + 0.999 * found.delay.value)).stable

@@ -87,10 +87,13 @@ def comparison(study: Study, name: str) -> Comparison:
     limits = declared(drives, point, model, case.envelope, case.rate_limits, case.delays)
     signals = tuple(dict.fromkeys(band.signal for band in bands))
     plant = study.bound
-    watched = {signal: room for signal, room in case.envelope.items() if signal not in plant.inputs}
+    watched = {name: room for name, room in case.envelope.items() if name in plant.states or name in plant.outputs}
     about = study.about()
     weights = _weights(study, model if about is None else about, limits, bands, signals)
-    rig = Rig(plant, point, model, signals, watched, weights, about=about, delays=case.delays, turns=_turns(case))
+    rig = Rig(
+        plant, point, model, signals, watched, weights, about=about, delays=case.delays, turns=_turns(case),
+        updates=study.updates,
+    )  # fmt: skip
     nodes = max(_nodes(one, drives.every) for one in (model, about) if one is not None)
     start = Fidelity(nodes, TOLERANCE)
     return Comparison(
@@ -137,7 +140,7 @@ def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Ba
     moved = dict(zip(names, _excursions(model, limits, inputs, states), strict=True))
     nominal = np.array([study.case.nominal.get(name, 1.0) for name in plant])
     excursion = np.array([moved.get(name, 0.0) for name in plant])
-    excursion = np.where(excursion > 0.0, np.minimum(excursion, nominal), nominal)
+    excursion = np.where(excursion > 0.0, np.minimum(excursion, nominal), np.where(np.isfinite(nominal), nominal, 1.0))
     effect = {name: _by_state(model, plant, row) for name, row in zip(names, states, strict=True)}
     found = excursion
     for band in bands:

@@ -2,16 +2,21 @@
 
 from __future__ import annotations
 
+from ..core.case import DriveSet
 from ..core.model import LocalModel
 from ..numerics.pieces import SNAP, whole_steps
+from .closed import ClosedStudy, nested
 from .study import Study
 
 
 def misfits(study: Study, name: str) -> tuple[str, ...]:
     """Why the verified model cannot be driven by the set called `name`, a line each; empty where it can."""
+    if reasons := _not_closed(study):
+        return reasons
     model, drives = study.model(), study.case.drive_set(name)
     has = {*model.states.names, *model.outputs.names}
-    found = [
+    found = [*_unbanded(study, drives)]
+    found += [
         f"the local model has no state or output {signal}, which an error band is for"
         for signal in dict.fromkeys(band.signal for band in study.case.bands_for(name))
         if signal not in has
@@ -31,6 +36,23 @@ def misfits(study: Study, name: str) -> tuple[str, ...]:
     return (*found, *_clocks(study, model, drives.every), *_straight_states(study, name, model))
 
 
+def _not_closed(study: Study) -> tuple[str, ...]:
+    return study.reasons if isinstance(study, ClosedStudy) else ()
+
+
+def _unbanded(study: Study, drives: DriveSet) -> list[str]:
+    """A loop hides errors of its output at low frequency, and shows them in what it moves: that needs bands too."""
+    if not isinstance(study, ClosedStudy) or not drives.loop:
+        return []
+    banded = {band.signal for band in study.case.bands_for(drives.name)}
+    inputs = [moved.name for loop in nested(study.case, [drives.loop]) for moved in loop.moves if not moved.loop]
+    return [
+        f"loop {drives.loop} hides errors in what it controls and shows them in {name}, which needs an error band too"
+        for name in dict.fromkeys(inputs)
+        if name not in banded
+    ]
+
+
 def told(study: Study, name: str) -> tuple[str, ...]:
     """What a reviewer must know about how the verified model is driven, a line each."""
     model, drives = study.model(), study.case.drive_set(name)
@@ -40,6 +62,8 @@ def told(study: Study, name: str) -> tuple[str, ...]:
     )
     if model.step is not None and study.case.plant.step is None and drives.course != model.course:
         found.append(f"the drives are {drives.course} between instants, the sampled model takes {model.course} inputs")
+    if isinstance(study, ClosedStudy):
+        found += study.told()
     if study.case.local.delivered is None:
         return tuple(found)
     if why := study.unmet("derived"):

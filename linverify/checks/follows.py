@@ -42,7 +42,7 @@ class _Findings:
 
 def check(study: Study, ask: CheckAsk) -> Verdict:
     """The verdict on one set of drives. Raises KeyError for a set that the case does not have, OSError from saving."""
-    found = _Findings()
+    found, study = _Findings(), study.closed(ask.drives)
     if reasons := fitting.misfits(study, ask.drives):
         found.open += reasons
         return _verdict(study, ask, found, [], {})

@@ -42,6 +42,7 @@ def replayed_study(study: Study, ask: CheckAsk, drive: Drive, name: str = "drive
 
 
 def _replayed(study: Study, ask: CheckAsk, drive: Drive, name: str) -> Verdict:
+    study = study.closed(ask.drives)
     if reasons := fitting.misfits(study, ask.drives):
         return blank(study.case, ask, Status.UNDECIDED, "; ".join(reasons))
     compared, plant = comparison(study, ask.drives), study.case.plant

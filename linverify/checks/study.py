@@ -17,6 +17,7 @@ from ..core.case import Case, Interval, Options
 from ..core.delivered import Keep
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
 from ..numerics.hold import straight
+from ..numerics.instants import Update
 from ..numerics.linearize import Linearization, linearize
 from ..numerics.placed import placed
 from ..numerics.reduce import Reduction, reduced, restricted
@@ -37,6 +38,7 @@ class Study:
         self.case = case
         self.options = options
         self.model_override = model_override
+        self._closings: dict[str, Study] = {}
 
     @cached_property
     def bound(self) -> BoundPlant:
@@ -113,6 +115,23 @@ class Study:
         if point is None:
             raise ValueError(f"{self.case.point} has no trim")
         return point
+
+    @property
+    def updates(self) -> tuple[Update, ...]:
+        """What sampled controllers do to the plant's states; none without a loop."""
+        return ()
+
+    def closed(self, name: str) -> Study:
+        """This study as the set of drives called `name` meets it: with loops closed and actuators in series.
+
+        Itself where there are none. Raises KeyError for a set that the case does not have.
+        """
+        from .closed import ClosedStudy, changes, for_drives
+
+        if name not in self._closings:
+            closing = for_drives(self.case, self.case.drive_set(name))
+            self._closings[name] = ClosedStudy(self, closing) if changes(self.case, closing) else self
+        return self._closings[name]
 
     def unmet(self, need: str) -> str:
         """Why `need` ("trim", "model", "derived" or "reference") cannot be met here; empty where it is met.

@@ -51,6 +51,8 @@ def called(
         # what is not finite is told by `accepted`; the plant's floating-point warnings would only repeat it
         with np.errstate(all="ignore"):
             return function(t, x, u, p)
+    except PlantError:  # of a plant inside this one, which has named its own call
+        raise
     except (Exception, SystemExit) as error:  # a plant that exits would end the run with a status of its own choice
         raise PlantError(f"{what} raised {_told_error(error)} when called with {told()}") from error
 

@@ -51,6 +51,19 @@ class OperatingPoint:
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class Jump:
+    """What a sampled controller does to a continuous model: at phase + k period (k = 0, 1, ...) x becomes A x + B u.
+
+    A (n, n), B (n, m); u are the inputs just after that instant; period and phase in time units, 0 <= phase < period.
+    """
+
+    A: Array
+    B: Array
+    period: float
+    phase: float = 0.0
+
+
+@dataclass(frozen=True, slots=True, eq=False)
 class LocalModel:
     """x' = A x + B u, y = C x + D u in deviations from an operating point.
 
@@ -58,7 +71,8 @@ class LocalModel:
     same shapes, by the names "A", "B", "C", "D"; step: time between the states of a discrete model, None when
     continuous; course: how a discrete model of a continuous plant takes its inputs between samples. states may be fewer
     than the plant's; anonymous: they mean nothing by themselves, and only outputs can be compared. ahead (n, m): of a
-    model sampled for straight inputs, what the inputs at an instant add to its states to give the plant's.
+    model sampled for straight inputs, what the inputs at an instant add to its states to give the plant's. jumps: of a
+    model in whose loop a sampled controller is closed; those of one instant act in their order.
     """
 
     A: Array
@@ -74,3 +88,4 @@ class LocalModel:
     anonymous: bool = False
     course: Literal["held", "straight"] = "held"
     ahead: Array | None = None
+    jumps: tuple[Jump, ...] = ()

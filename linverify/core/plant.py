@@ -11,7 +11,7 @@ import re
 from collections.abc import Callable, Mapping
 from dataclasses import dataclass, field
 from types import MappingProxyType
-from typing import Any
+from typing import Any, ClassVar
 
 from .errors import DefinitionError
 from .signals import Signals
@@ -48,6 +48,10 @@ class Plant:
     domain: Mapping[str, Bounds] = field(default_factory=dict)
     jacobian: PlantFunction | None = None
     step: float | None = None
+
+    # a loop closed around a plant makes outputs of what it moves, and inputs of the set points of what it measures:
+    # there one name may stand for an input and an output, whose trimmed values agree
+    names_repeat: ClassVar[bool] = False
 
     def __post_init__(self) -> None:
         if self.outputs is None:
@@ -148,7 +152,7 @@ def _check_names(plant: Plant) -> None:
     if plant.measurement is None and (foreign := [name for name in outputs if name not in plant.states]):
         raise DefinitionError(f"without a measurement every output must be a state; {foreign[0]!r} is none")
     for name in plant.inputs:
-        if name in plant.states or name in outputs:
+        if not plant.names_repeat and (name in plant.states or name in outputs):
             raise DefinitionError(f"{name!r} names an input and a state or output; all share one name space")
     for name in plant.parameters:
         if name in plant.states or name in plant.inputs or name in outputs:

@@ -9,8 +9,9 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..core.drive import Drive
-from ..core.model import Array
+from ..core.model import Array, LocalModel
 from .hold import responses
+from .instants import Instants
 from .pieces import SNAP, Pieces, cut
 from .rig import Fidelity, Rig
 
@@ -126,8 +127,9 @@ def linear(rig: Rig, drives: Courses) -> Array:
         return _filled(_stepped(rig, drives, steps), pieces.stride)
     out = np.empty((A.shape[0], drives.count, pieces.nodes + 1, drives.width))
     maps = [responses(A, B, length * np.arange(1, pieces.nodes + 1) / pieces.nodes) for length in pieces.lengths]
-    x = model_offsets(rig, drives)
+    x, begins = model_offsets(rig, drives), pieces.begins(drives.intervals)
     for k in range(drives.count):
+        x = _jumped(rig.model, float(begins[k]), x, drives.start[:, k])
         P, Q, R = maps[k % pieces.count]
         out[:, k, 0] = x
         after = P @ x + Q @ drives.start[:, k]
@@ -140,13 +142,22 @@ def linear(rig: Rig, drives: Courses) -> Array:
 
 def _stepped(rig: Rig, drives: Courses, steps: int) -> Array:
     A, B, x = rig.model.A, rig.model.B, model_offsets(rig, drives)
-    out = np.empty((A.shape[0], drives.count, steps + 1, drives.width))
+    out, begins = np.empty((A.shape[0], drives.count, steps + 1, drives.width)), drives.pieces.begins(drives.intervals)
     for k in range(drives.count):
+        x = _jumped(rig.model, float(begins[k]), x, drives.start[:, k])
         out[:, k, 0] = x
         for j in range(steps):
             x = A @ x + B @ input_at(drives, k, j / steps)
             out[:, k, j + 1] = x
     return out
+
+
+def _jumped(model: LocalModel, time: float, x: Array, u: Array) -> Array:
+    """States (n, N) after the jumps that are due at `time`; u (m, N): the inputs just after it."""
+    for jump in model.jumps:
+        if Instants(jump.period, jump.phase).due(time):
+            x = jump.A @ x + jump.B @ u
+    return x
 
 
 def _filled(states: Array, stride: int) -> Array:

@@ -18,7 +18,7 @@ from ..core.errors import PlantError
 from ..core.model import Array
 from ..core.outcome import Outcome
 from .pieces import cut
-from .readout import Limit, Readout, model_after, model_course, model_within
+from .readout import Limit, Readout, acts, model_after, model_course, model_within
 from .rig import Exit, Fidelity, Rig, Runs
 
 TIGHTER = 100.0
@@ -66,7 +66,8 @@ class _Second:
         interval = self._continuous if readout.rig.plant.step is None else self._discrete
         x = readout.rig.point.x + readout.offset()
         for k in range(readout.count):
-            after = interval(k, x)
+            updated = self._updated(k, x)
+            after = None if updated is None else interval(k, updated)
             if after is None:
                 return
             x = after
@@ -96,6 +97,20 @@ class _Second:
 
     def _method(self) -> Literal["DOP853", "Radau"]:
         return "Radau" if self.readout.rig.stiff(self.readout.drive.every) else "DOP853"
+
+    def _updated(self, k: int, x: Array) -> Array | None:
+        """States after what sampled controllers do where piece k begins; notes the failure of one that cannot."""
+        readout, rig = self.readout, self.readout.rig
+        time = readout.time(k, 0)
+        try:
+            for update in rig.updates:
+                if acts(time, update.instants.period, update.instants.phase):
+                    u = rig.point.u + readout.inputs(k, 0.0)
+                    x = update.jump(rig.point.time + readout.tick(time), x[:, np.newaxis], u[:, np.newaxis])[:, 0]
+        except PlantError as error:
+            self._fail(error, time)
+            return None
+        return x
 
     def _continuous(self, k: int, x: Array) -> Array | None:
         begin = self.readout.time(k, 0)

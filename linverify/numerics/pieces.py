@@ -2,7 +2,8 @@
 
 A dead time that is no multiple of the time between instants moves the changes of that input between them, and no
 integration step may cross one. A dead time of an output moves the last sample that still arrives; that one is made a
-node too. What counts in samples (a difference equation, or a sampled local model) is cut evenly into whole steps.
+node too. A sampled controller acts where a piece begins. What counts in samples (a difference equation, or a sampled
+local model) is cut evenly into whole steps.
 """
 
 from __future__ import annotations
@@ -12,7 +13,6 @@ from dataclasses import dataclass
 
 import numpy as np
 
-from ..core.delivered import Delays
 from ..core.model import Array
 from .rig import Fidelity, Rig
 
@@ -60,7 +60,7 @@ def cut(rig: Rig, every: float, fidelity: Fidelity) -> Pieces:
     ticks = [step for step in (rig.plant.step, rig.model.step) if step is not None]
     if ticks:
         return _even(rig, every, fidelity, ticks[0])
-    starts = _starts(rig.delays, every)
+    starts = _starts(rig, every)
     return Pieces(every, np.diff(np.append(starts, every)), fidelity.nodes)
 
 
@@ -75,6 +75,13 @@ def _even(rig: Rig, every: float, fidelity: Fidelity, tick: float) -> Pieces:
         if late is None:
             raise ValueError(f"the dead time {delay} of {name} does not fit {whose} that steps every {tick}")
         shared = math.gcd(shared, late)
+    for instants in rig.instants:
+        for time in (instants.period, instants.phase):
+            between = whole_steps(time, tick)
+            if between is None:
+                raise ValueError(f"samples at multiples of {time} do not fit {whose} that steps every {tick}")
+            shared = math.gcd(shared, between)
+        instants.phases(every)  # raises where it does not fit
     lengths = np.full(steps // shared, every * shared / steps)
     if rig.plant.step is not None:
         return Pieces(every, lengths, shared, 1, True)
@@ -88,10 +95,11 @@ def whole_steps(time: float, step: float) -> int | None:
     return steps if abs(steps * step - time) <= SNAP * max(time, step) else None
 
 
-def _starts(delays: Delays, every: float) -> Array:
+def _starts(rig: Rig, every: float) -> Array:
     """Where pieces begin within an interval, ascending from zero."""
-    phases = [0.0]
-    for shift in (*delays.inputs.values(), *(-late for late in delays.outputs.values())):
+    phases, delays = [0.0], rig.delays
+    sampled = [phase for instants in rig.instants for phase in instants.phases(every)]
+    for shift in (*delays.inputs.values(), *(-late for late in delays.outputs.values()), *sampled):
         phase = shift % every
         if all(min(abs(phase - other), every - abs(phase - other)) > SNAP * every for other in phases):
             phases.append(phase)

@@ -15,6 +15,7 @@ from ..core.model import Array
 from ..core.outcome import Outcome
 from .courses import Courses, input_at
 from .exits import Limits, limits_of
+from .instants import updated
 from .integrate import Batch, Demand, DormandPrince, Mask, Method, advance
 from .piece import Piece, domain_of
 from .rig import Fidelity, Rig
@@ -156,6 +157,22 @@ class _Way:
         piece.slope = None if drives.held else (drives.end[:, k] - drives.start[:, k]) / drives.pieces.length(k)
         self._outside(k)
         self._rest(~self.batch.active)
+        if self.rig.updates:
+            self._update()
+
+    def _update(self) -> None:
+        """Let sampled controllers act where a piece begins; what has stopped stays at rest."""
+        batch = self.batch
+        after, errors = updated(self.rig.updates, batch.begun, self.piece.t, batch.x, self.piece.u)
+        batch.x = np.where(batch.active & np.isfinite(after).all(axis=0), after, batch.x)
+        bad = np.asarray(batch.active & ~np.isfinite(after).all(axis=0))
+        for column in np.flatnonzero(bad):
+            error = errors.get(int(column))
+            raised = error is not None and error.__cause__ is not None
+            text = "a sampled controller's output overflows" if error is None else str(error)
+            self._note(int(column), batch.begun, Outcome.PLANT_RAISED if raised else Outcome.NOT_FINITE, text)
+        if bad.any():
+            batch.stop(bad, 0.0)
 
     def _outside(self, k: int) -> None:
         """Stop the drives whose inputs leave the plant's domain in piece k."""

@@ -15,6 +15,7 @@ from .rig import Rig
 
 Side = Literal["low", "high"]
 SLACK = 1e-9  # of a limit's size: what lies on the limit is inside
+JITTER = 1e-8  # of a sample time: rounding of instants
 UNSEEN = 1e-3  # of a state's acceptable error: what integration may be off
 
 
@@ -155,13 +156,28 @@ class Readout:
 
 
 def model_course(readout: Readout) -> list[Array]:
-    """The local model's states where each piece begins, and at the end of the last, (n,) each."""
+    """The local model's states where each piece has begun, and at the end of the last, (n,) each."""
     x = readout.model_offset()
-    starts = [x]
+    starts = []
     for k in range(readout.count):
-        x = model_within(readout, x, k, readout.nodes)
+        x = _model_jumped(readout, x, k)
         starts.append(x)
-    return starts
+        x = model_within(readout, x, k, readout.nodes)
+    return [*starts, x]
+
+
+def acts(time: float, period: float, phase: float) -> bool:
+    """Whether a sampled controller acts at `time`: at its phase and whole periods after it."""
+    passed = (time - phase) / period
+    return passed > -0.5 and abs(passed - np.floor(passed + 0.5)) < JITTER * max(1.0, abs(passed))
+
+
+def _model_jumped(readout: Readout, x: Array, k: int) -> Array:
+    u = readout.known(readout.inputs(k, 0.0))
+    for jump in readout.rig.model.jumps:
+        if acts(readout.time(k, 0), jump.period, jump.phase):
+            x = np.asarray(jump.A @ x + jump.B @ u)
+    return x
 
 
 def model_within(readout: Readout, x: Array, k: int, node: int) -> Array:

@@ -19,6 +19,7 @@ from ..core.case import Interval
 from ..core.delivered import Delays
 from ..core.model import Array, LocalModel, OperatingPoint
 from ..core.outcome import Outcome
+from .instants import Instants, Update
 from .reduce import rates
 
 STIFF = 12.0  # rho(A) x every from which an explicit pair takes more than four steps an interval for stability alone
@@ -33,7 +34,8 @@ class Rig:
     acceptable at all, in its unit. attempts: steps tried an interval, and evaluations: plant columns a drive, before a
     run ends with TOO_MANY_STEPS. about: the plant's own slopes, by which its integrator is chosen; None: the model's.
     delays: dead times of inputs and outputs, the same for plant and model; turns: a whole turn of each signal that is
-    compared modulo one, in its unit. The envelope holds for outputs before their dead time.
+    compared modulo one, in its unit. The envelope holds for outputs before their dead time. updates: what sampled
+    controllers do to the plant's states, in the order in which they act; the model's are its `jumps`.
     """
 
     plant: BoundPlant
@@ -47,6 +49,7 @@ class Rig:
     about: LocalModel | None = None
     delays: Delays = field(default_factory=Delays)
     turns: Mapping[str, float] = field(default_factory=lambda: MappingProxyType({}))
+    updates: tuple[Update, ...] = ()
 
     def __post_init__(self) -> None:
         if self.weights.shape != (self.plant.n,) or not np.all(self.weights > 0) or not np.isfinite(self.weights).all():
@@ -56,6 +59,12 @@ class Rig:
                 raise ValueError(f"the plant has no state or output {name!r} to compare")
             if name not in self.model.states and name not in self.model.outputs:
                 raise ValueError(f"the local model has no state or output {name!r} to compare")
+
+    @property
+    def instants(self) -> tuple[Instants, ...]:
+        """When states jump, on either side."""
+        jumps = (Instants(jump.period, jump.phase) for jump in self.model.jumps)
+        return tuple(dict.fromkeys((*(update.instants for update in self.updates), *jumps)))
 
     def stiffness(self, every: float) -> float:
         """Spectral radius of the plant's slopes times the time between instants."""

@@ -18,20 +18,11 @@ import numpy as np
 
 from ..core.delivered import Course, Delays
 from ..core.model import Array, LocalModel
-from .hold import responses
+from .interval_maps import interval_map, repeats
 
 CLIMBS = 20  # linearizations of a sum of squares; in trials it stood still after 3 to 8
 NO_DELAYS = Delays()
 WITHIN = 8  # places inside an interval at which a peak is looked for
-
-
-@dataclass(frozen=True, slots=True, eq=False)
-class _Map:
-    """x after a part of an interval = state x + before u_before + new u_new, for rows u (m,) of a drive."""
-
-    state: Array
-    before: Array
-    new: Array
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -144,7 +135,10 @@ def _weights(
     """
     pairs = [_row(model, signal) for signal in signals]
     read, feed = np.stack([pair[0] for pair in pairs]), np.stack([pair[1] for pair in pairs])
-    whole, part = _map(model, every, course, 1.0), _map(model, every, course, share)
+    cycle = repeats(model, every)
+    wholes = [interval_map(model, every, course, 1.0, number) for number in range(cycle)]
+    parts = [interval_map(model, every, course, share, number) for number in range(cycle)]
+    part = parts[(intervals - 1) % cycle]
     rows = np.zeros((len(signals), intervals, len(model.inputs)))
     offsets = np.zeros((len(signals), intervals, len(model.states)))
     reached = share if course == "straight" else 1.0
@@ -154,11 +148,17 @@ def _weights(
     back = read @ part.state
     offsets[:, 0] = back
     for k in range(intervals - 2, -1, -1):
+        whole = wholes[k % cycle]
         rows[:, k] += back @ whole.new
         if k > 0:
             rows[:, k - 1] += back @ whole.before
         back = back @ whole.state
         offsets[:, intervals - 1 - k] = back
+    if cycle > 1:  # a start is always at time zero: intervals are not alike when they are counted from the end
+        since = np.eye(len(model.states))
+        for k in range(intervals):
+            offsets[:, k] = read @ parts[k % cycle].state @ since
+            since = wholes[k % cycle].state @ since
     return rows, offsets
 
 
@@ -221,31 +221,3 @@ def _row(model: LocalModel, signal: str) -> tuple[Array, Array]:
     at = model.states.index(signal)
     feed = np.zeros(len(model.inputs)) if model.ahead is None else np.asarray(model.ahead[at])
     return np.eye(len(model.states))[at], feed
-
-
-def _map(model: LocalModel, every: float, course: Course, share: float) -> _Map:
-    if model.step is None:
-        return _continuous(model, every, course, share)
-    return _discrete(model, max(1, round(every / model.step)), course, share)
-
-
-def _continuous(model: LocalModel, every: float, course: Course, share: float) -> _Map:
-    P, Q, R = responses(model.A, model.B, np.array([every * share]))
-    rising = R[0] / every
-    if course == "held":
-        return _Map(P[0], np.zeros_like(Q[0]), Q[0])
-    return _Map(P[0], Q[0] - rising, rising)
-
-
-def _discrete(model: LocalModel, steps: int, course: Course, share: float) -> _Map:
-    """Steps of x[k+1] = A x[k] + B u[k]; a straight course is read at the beginning of each step."""
-    n, m = len(model.states), len(model.inputs)
-    state, before, new = np.eye(n), np.zeros((n, m)), np.zeros((n, m))
-    for step in range(max(1, round(share * steps)) if share > 0.0 else 0):
-        reached = 1.0 if course == "held" else step / steps
-        state, before, new = (
-            model.A @ state,
-            model.A @ before + model.B * (1.0 - reached),
-            model.A @ new + model.B * reached,
-        )
-    return _Map(state, before, new)

@@ -1,0 +1,166 @@
+"""A plant with controllers closed around it and actuators before it, as a plant.
+
+Its states are the plant's, then those of actuators and loops; its inputs the plant's (what a drive adds to the command)
+and set points; its outputs the plant's and the inputs that a loop moves, behind the actuator. A moved input is so an
+input and an output of one name, and a set point is called like the signal that is measured: both have the same trimmed
+value, and reports speak the names of the spec.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping
+from dataclasses import dataclass, field, replace
+from typing import ClassVar
+
+import numpy as np
+
+from ..core.bound import BoundPlant
+from ..core.errors import PlantError
+from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
+from ..core.plant import Plant
+from .closed_model import reading
+from .instants import Update
+from .wiring import Whole, Wiring
+
+
+class ClosedPlant(Plant):
+    """A plant that one name may stand twice in: as an input, and as the output or state that it moves or asks for."""
+
+    names_repeat: ClassVar[bool] = True
+
+
+@dataclass(slots=True, eq=False)
+class _Inside:
+    """The plant behind its border, as a wiring sees it; measured signals are deviations from the trimmed course.
+
+    Not frozen: `feed` is set once.
+    """
+
+    bound: BoundPlant
+    point: OperatingPoint
+    measured_names: tuple[str, ...]
+    model: LocalModel
+    n: int = field(init=False)
+    feed: Array = field(init=False)
+    sizes: Array = field(init=False)
+    outputs: bool = field(init=False)
+
+    def __post_init__(self) -> None:
+        bound, names = self.bound, self.measured_names
+        self.n = bound.n
+        self.outputs = any(name not in bound.states for name in names)
+        self.sizes = np.abs([self.point.value(name) for name in names]) if names else np.zeros(0)
+        self.feed = np.zeros((len(names), bound.m))
+        columns = [bound.inputs.index(name) for name in self.model.inputs.names]
+        for row, name in enumerate(names):
+            if name not in bound.states:
+                self.feed[row, columns] = reading(self.model, name)[1]
+
+    def rates(self, t: float, x: Array, u: Array) -> Array:
+        """Rates (n, N); raises PlantError, also where an input leaves the plant's domain."""
+        for name, (low, high) in self.bound.plant.domain.items():
+            if name not in self.bound.inputs:
+                continue
+            values = u[self.bound.inputs.index(name)]
+            if (low is not None and (values < low).any()) or (high is not None and (values > high).any()):
+                raise PlantError(f"{name} is moved out of the plant's domain")
+        return self.bound.rates(t, x, u)
+
+    def measured(self, t: float, x: Array, u: Array) -> Array:
+        """Deviations from the trimmed course, (q, N)."""
+        found = np.empty((len(self.measured_names), x.shape[1]))
+        course, bound = self._course(t), self.bound
+        y = bound.measure(t, x, u) if self.outputs else None
+        still = self._still(t, course) if self.outputs else None
+        for row, name in enumerate(self.measured_names):
+            if name in bound.states:
+                at = bound.states.index(name)
+                found[row] = x[at] - course[at]
+            elif y is not None and still is not None:
+                at = bound.outputs.index(name)
+                found[row] = y[at] - still[at]
+        return found
+
+    def _course(self, t: float) -> Array:
+        course: Array = self.point.x + self.point.drift * (t - self.point.time)
+        return course
+
+    def _still(self, t: float, course: Array) -> Array:
+        if not self.point.drift.any():
+            return self.point.y
+        return self.bound.measure(t, course, self.point.u)
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Closed:
+    """The plant with its loops closed, its trimmed point, and what sampled controllers do to its states."""
+
+    plant: Plant
+    point: OperatingPoint
+    updates: tuple[Update, ...]
+    nominal: Mapping[str, float]
+
+
+def closed_plant(bound: BoundPlant, point: OperatingPoint, wiring: Wiring, model: LocalModel) -> Closed:
+    """`bound` with `wiring` around it; model: its slopes, for what is algebraic.
+
+    Raises ValueError where the loop is ill-posed.
+    """
+    whole = Whole(wiring, _Inside(bound, point, wiring.measured, model))
+    inside, n = bound.plant, bound.n
+    spare = tuple(name for name in wiring.moved if name not in bound.outputs)
+    rows = [bound.inputs.index(name) for name in spare]
+
+    def dynamics(t: float, x: Array, u: Array, p: Mapping[str, float]) -> Array:
+        wide, w = _wide(x), _wide(u)
+        return whole.rates(t, wide, w).reshape(x.shape)
+
+    def measurement(t: float, x: Array, u: Array, p: Mapping[str, float]) -> Array:
+        wide, w = _wide(x), _wide(u)
+        inputs = whole.inputs(t, wide, w)
+        y = np.concatenate([bound.measure(t, wide[:n], inputs), inputs[rows]])
+        return y.reshape((len(y), *x.shape[1:]))
+
+    states = {**inside.states, **dict.fromkeys(wiring.added, "")}
+    inputs = {**inside.inputs, **dict(_set_points(wiring, inside))}
+    outputs = {**(inside.outputs or {}), **{name: inside.inputs[name] for name in spare}}
+    plant = ClosedPlant(
+        states=states,
+        inputs=inputs,
+        outputs=outputs,
+        parameters=inside.parameters,
+        dynamics=dynamics,
+        measurement=measurement,
+        time_unit=inside.time_unit,
+        domain={name: sides for name, sides in inside.domain.items() if name in inside.states},
+        step=inside.step,
+    )
+    return Closed(
+        plant,
+        _point(point, wiring, plant, rows),
+        tuple(Update(instants, jump) for instants, jump in whole.updates()),
+        {},
+    )
+
+
+def _wide(values: Array) -> Array:
+    return values[:, np.newaxis] if values.ndim == 1 else values
+
+
+def _set_points(wiring: Wiring, plant: Plant) -> list[tuple[str, str]]:
+    return [(signal, plant.unit(signal)) for _, signal in wiring.points]
+
+
+def _point(point: OperatingPoint, wiring: Wiring, plant: Plant, moved: list[int]) -> OperatingPoint:
+    """The same point with everything that is added at rest."""
+    rests = wiring.rests
+    return replace(
+        point,
+        x=frozen_array(np.concatenate([point.x, rests])),
+        u=frozen_array(np.concatenate([point.u, wiring.references])),
+        y=frozen_array(np.concatenate([point.y, point.u[moved]])),
+        drift=frozen_array(np.concatenate([point.drift, np.zeros(len(rests))])),
+        states=plant.state_signals,
+        inputs=plant.input_signals,
+        outputs=plant.output_signals,
+    )

@@ -1,0 +1,294 @@
+"""The loop transfer function of a declared loop at the point where it is broken, from a local model.
+
+What the loop sees is the local model with actuators' lags in front of its inputs and the loops inside it closed. A
+sampled loop sees all that at its instants (`held_loop`). Dead times stay exact: of a continuous loop as one factor
+exp(-s delay), which needs every path around the loop to have the same; of a sampled loop in states. What has no exact
+answer is refused with the reason, and never approximated.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Mapping, Sequence
+from dataclasses import dataclass
+
+import numpy as np
+
+from ..core.delivered import Delays
+from ..core.loop import Actuator, Loop
+from ..core.model import Array, LocalModel
+from .held_loop import Sampled, seen
+from .interconnect import Block, IllPosedError, Wire, connected
+from .transfer import Transfer
+from .wiring import ordered
+
+SAME = 1e-12  # relative: two dead times that near are one
+
+
+class RefusedError(ValueError):
+    """There is no exact loop transfer function; the text says why."""
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Setup:
+    """What loops are closed around.
+
+    model: the local model; loops: all that are declared, by name; actuators: by plant input; delays: dead times of the
+    plant; closed: loops that `model` has inside already, the names of their set points being those of the signals; also:
+    loops that are closed inside every other one; tick: step of a plant that is a difference equation.
+    """
+
+    model: LocalModel
+    loops: Mapping[str, Loop]
+    actuators: Mapping[str, Actuator]
+    delays: Delays
+    closed: tuple[str, ...] = ()
+    also: tuple[str, ...] = ()
+    tick: float | None = None
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Opened:
+    """A loop broken open: K G at the plant's input, G K at its output (m by m and k by k), closed by u = -y.
+
+    Of a sampled loop both count in samples. states_in, states_out: names of the states of each; inside: the loops that
+    are closed inside. plant, controller: G, with the dead time around the loop, and K.
+    """
+
+    plant_input: Transfer
+    plant_output: Transfer
+    states_in: tuple[str, ...]
+    states_out: tuple[str, ...]
+    inside: tuple[str, ...]
+    plant: Transfer
+    controller: Transfer
+
+
+def opened(setup: Setup, name: str, *, extra: float = 0.0) -> Opened:
+    """The loop `name` of `setup` broken open; extra: dead time in addition to what is declared.
+
+    Raises RefusedError with the reason where that cannot be done exactly, KeyError for a loop that is not declared.
+    """
+    loop = setup.loops[name]
+    inside = _inside(setup, name)
+    _check(setup, loop, inside)
+    try:
+        plant, delay = _seen(setup, loop, inside, extra)
+        forward, back = _around(loop, plant)
+    except IllPosedError as error:
+        raise RefusedError(str(error)) from None
+    step = loop.sample
+    names = _channels(loop)
+    return Opened(
+        Transfer(forward.A, forward.B, forward.C, forward.D, delay, step, names, names),
+        Transfer(back.A, back.B, back.C, back.D, delay, step, loop.measures, loop.measures),
+        forward.states, back.states, tuple(one.name for one in inside),
+        Transfer(plant.A, plant.B, plant.C, plant.D, delay, step, names, loop.measures),
+        _transfer(loop, names),
+    )  # fmt: skip
+
+
+def _transfer(loop: Loop, names: tuple[str, ...]) -> Transfer:
+    one = loop.controller
+    return Transfer(one.A, one.B, one.C, one.D, 0.0, loop.sample, loop.measures, names)
+
+
+def _channels(loop: Loop) -> tuple[str, ...]:
+    return tuple(str(moved) for moved in loop.moves)
+
+
+def _targets(setup: Setup, loop: Loop) -> tuple[str, ...]:
+    """What the loop moves, as inputs of the body: a set point in the local model is called like its signal."""
+    return tuple(moved.name if moved.loop in setup.closed else str(moved) for moved in loop.moves)
+
+
+def _inside(setup: Setup, name: str) -> tuple[Loop, ...]:
+    """The loops that are closed inside, outer before inner; without what the model has inside already."""
+    found: list[str] = []
+
+    def visit(at: str, way: tuple[str, ...]) -> None:
+        loop = setup.loops[at]
+        for other in (*loop.within, *(moved.loop for moved in loop.moves if moved.loop)):
+            if other in way:
+                raise RefusedError(f"loop {other} would be closed inside itself")
+            if other not in setup.closed and other not in found:
+                found.append(other)
+                visit(other, (*way, other))
+
+    visit(name, (name,))
+    for other in setup.also:
+        if other != name and other not in found:
+            found.append(other)
+            visit(other, (name, other))
+    try:
+        return ordered(setup.loops[other] for other in found)
+    except ValueError as error:
+        raise RefusedError(str(error)) from None
+
+
+def _check(setup: Setup, loop: Loop, inside: Sequence[Loop]) -> None:
+    for one in (loop, *inside):
+        _check_signals(setup, one)
+    if loop.sample is None:
+        if sampled := [one.name for one in inside if one.sample is not None]:
+            raise RefusedError(f"a continuous loop around the sampled loop {sampled[0]} has no transfer function")
+    if (step := setup.model.step) is not None:
+        if setup.model.course == "straight":
+            raise RefusedError(
+                "the local model is sampled for inputs in straight lines, and a loop does not move in such"
+            )
+        if continuous := [one.name for one in (loop, *inside) if one.sample is None]:
+            raise RefusedError(
+                f"loop {continuous[0]} is continuous, the local model a difference equation every {step:.6g}"
+            )
+        lagged = [
+            name for name, actuator in setup.actuators.items() if actuator.lag and _lag(name) not in _states(setup)
+        ]
+        if setup.tick is None and set(lagged) & set(setup.model.inputs.names):
+            raise RefusedError(
+                f"the local model is sampled for held inputs, and behind its lag {lagged[0]} is not held"
+            )
+    for one in inside:
+        if one.sample is None and (why := _late(setup, one)):
+            raise RefusedError(f"{why} lies inside loop {one.name}, which is closed")
+    for other in (setup.loops[closed] for closed in setup.closed):
+        if other.sample is None and (why := _late(setup, other)):
+            raise RefusedError(f"{why} lies inside loop {other.name}, which is closed in the local model")
+
+
+def _check_signals(setup: Setup, loop: Loop) -> None:
+    model = setup.model
+    for name in loop.measures:
+        if name not in model.outputs and (model.anonymous or name not in model.states):
+            raise RefusedError(f"loop {loop.name} measures {name}, which the local model does not have")
+    for moved in loop.moves:
+        if not moved.loop and moved.name not in model.inputs:
+            raise RefusedError(f"loop {loop.name} moves {moved}, which the local model does not have")
+        if moved.loop in setup.closed and moved.name not in model.inputs:
+            raise RefusedError(f"loop {loop.name} moves {moved}, and {moved.name} is no input of the local model")
+
+
+def _late(setup: Setup, loop: Loop) -> str:
+    """Words on a dead time within the loop; empty where there is none."""
+    if loop.delay:
+        return "the dead time of the loop"
+    for moved in loop.moves:
+        if not moved.loop and setup.delays.inputs.get(moved.name):
+            return f"the dead time of {moved.name}"
+    return next((f"the dead time of {name}" for name in loop.measures if setup.delays.outputs.get(name)), "")
+
+
+def _states(setup: Setup) -> tuple[str, ...]:
+    return setup.model.states.names
+
+
+def _lag(name: str) -> str:
+    return f"{name}.lag"
+
+
+def _seen(setup: Setup, loop: Loop, inside: Sequence[Loop], extra: float) -> tuple[Block, float]:
+    """What the loop sees from what it moves to what it measures, and the dead time around a continuous loop."""
+    continuous = [one for one in inside if one.sample is None]
+    body = _body(setup, (loop, *inside), continuous)
+    if loop.sample is None:
+        found = body.picked(_targets(setup, loop), loop.measures)
+        return found, _dead_time(setup, loop, found) + extra
+    sampled = [_sampled(setup, one) for one in inside if one.sample is not None]
+    try:
+        outer = _sampled(setup, loop, extra)
+        return seen(body, outer, sampled, setup.model.step), 0.0
+    except ValueError as error:
+        raise RefusedError(str(error)) from None
+
+
+def _body(setup: Setup, reading: Sequence[Loop], closed: Sequence[Loop]) -> Block:
+    """The local model behind its actuators with continuous loops closed: all inputs, and what loops measure."""
+    blocks = [_plant(setup, reading)]
+    wires = []
+    for name, actuator in setup.actuators.items():
+        if actuator.lag and name in setup.model.inputs and _lag(name) not in _states(setup):
+            blocks.append(_actuator(name, actuator.lag, setup.model.step))
+            wires.append(Wire(f"{name} behind its actuator", f"{name} at the plant"))
+    for loop in closed:
+        blocks.append(_controller(loop))
+        wires += [Wire(name, f"{loop.name}.set_point.{name}", -1.0) for name in loop.measures]
+        wires += [Wire(f"{loop.name}.{j + 1}", target) for j, target in enumerate(_targets(setup, loop))]
+    return connected(blocks, wires)
+
+
+def _plant(setup: Setup, reading: Sequence[Loop]) -> Block:
+    model = setup.model
+    names = tuple(dict.fromkeys(name for loop in reading for name in loop.measures))
+    C, D = np.zeros((len(names), len(model.states))), np.zeros((len(names), len(model.inputs)))
+    for row, name in enumerate(names):
+        if name in model.outputs:  # before the state of that name: it is what the model says of the signal
+            C[row], D[row] = model.C[model.outputs.index(name)], model.D[model.outputs.index(name)]
+        else:
+            C[row, model.states.index(name)] = 1.0
+    lagged = {name for name, one in setup.actuators.items() if one.lag and _lag(name) not in model.states}
+    inputs = tuple(f"{name} at the plant" if name in lagged else name for name in model.inputs.names)
+    states = tuple(f"state {k + 1}" for k in range(len(model.states))) if model.anonymous else model.states.names
+    return Block(model.A, model.B, C, D, states, inputs, names)
+
+
+def _actuator(name: str, lag: float, step: float | None) -> Block:
+    """1 / (lag s + 1); of a difference equation at its instants, exact for a command held between them."""
+    rate = np.array([[1.0 / lag]])
+    A, B = (-rate, rate) if step is None else (np.exp(-rate * step), -np.expm1(-rate * step))
+    return Block(A, B, np.eye(1), np.zeros((1, 1)), (_lag(name),), (name,), (f"{name} behind its actuator",))
+
+
+def _controller(loop: Loop) -> Block:
+    """Inputs: set points, from which measurements are taken off; outputs LOOP.1, LOOP.2, ..."""
+    one = loop.controller
+    states = tuple(f"{loop.name}.{k + 1}" for k in range(len(one.A)))
+    inputs = tuple(f"{loop.name}.set_point.{name}" for name in loop.measures)
+    return Block(one.A, one.B, one.C, one.D, states, inputs, tuple(f"{loop.name}.{j + 1}" for j in range(len(one.C))))
+
+
+def _sampled(setup: Setup, loop: Loop, extra: float = 0.0) -> Sampled:
+    late = tuple(
+        loop.delay + extra + (0.0 if moved.loop else setup.delays.inputs.get(moved.name, 0.0)) for moved in loop.moves
+    )
+    old = tuple(setup.delays.outputs.get(name, 0.0) for name in loop.measures)
+    return Sampled(loop.name, loop.sample or 0.0, _controller(loop), loop.measures, _targets(setup, loop), late, old)
+
+
+def _dead_time(setup: Setup, loop: Loop, plant: Block) -> float:
+    """Around the loop, the same on every path. Raises RefusedError where it is not."""
+    paths = _paths(plant)
+    gives = _paths(_controller(loop))  # (moved, measured)
+    found: dict[float, str] = {}
+    for i, measured in enumerate(loop.measures):
+        for k, moved in enumerate(loop.moves):
+            if paths[i, k] and gives[:, i].any() and gives[k].any():
+                late = 0.0 if moved.loop else setup.delays.inputs.get(moved.name, 0.0)
+                total = loop.delay + late + setup.delays.outputs.get(measured, 0.0)
+                found.setdefault(total, f"{total:.6g} from {moved} to {measured}")
+    if not found:
+        return 0.0
+    if max(found) - min(found) > SAME * max(found):
+        raise RefusedError("paths around the loop have different dead times: " + ", ".join(found.values()))
+    return max(found)
+
+
+def _paths(block: Block) -> Array:
+    """Which inputs reach which outputs at all, by entries that are not zero; (k, m) of truth values."""
+    A = block.A != 0
+    reached = block.B != 0
+    while True:
+        further = reached | ((A.astype(int) @ reached.astype(int)) > 0)
+        if (further == reached).all():
+            break
+        reached = further
+    found = (block.D != 0) | (((block.C != 0).astype(int) @ reached.astype(int)) > 0)
+    return np.asarray(found)
+
+
+def _around(loop: Loop, plant: Block) -> tuple[Block, Block]:
+    """K G and G K."""
+    controller = _controller(loop)
+    outputs, inputs = controller.outputs, controller.inputs
+    forth = [Wire(name, target) for name, target in zip(plant.outputs, inputs, strict=True)]
+    back = [Wire(name, target) for name, target in zip(outputs, plant.inputs, strict=True)]
+    blocks = [plant, controller]
+    return connected(blocks, forth).picked(plant.inputs, outputs), connected(blocks, back).picked(inputs, plant.outputs)

@@ -33,8 +33,8 @@ class Setup:
     """What loops are closed around.
 
     model: the local model; loops: all that are declared, by name; actuators: by plant input; delays: dead times of the
-    plant; closed: loops that `model` has inside already, the names of their set points being those of the signals; also:
-    loops that are closed inside every other one; tick: step of a plant that is a difference equation.
+    plant; closed: loops that `model` has inside already, the names of their set points being those of the signals;
+    also: loops that are closed inside every other one; tick: step of a plant that is a difference equation.
     """
 
     model: LocalModel
@@ -128,31 +128,28 @@ def _inside(setup: Setup, name: str) -> tuple[Loop, ...]:
 def _check(setup: Setup, loop: Loop, inside: Sequence[Loop]) -> None:
     for one in (loop, *inside):
         _check_signals(setup, one)
-    if loop.sample is None:
-        if sampled := [one.name for one in inside if one.sample is not None]:
-            raise RefusedError(f"a continuous loop around the sampled loop {sampled[0]} has no transfer function")
-    if (step := setup.model.step) is not None:
-        if setup.model.course == "straight":
-            raise RefusedError(
-                "the local model is sampled for inputs in straight lines, and a loop does not move in such"
-            )
-        if continuous := [one.name for one in (loop, *inside) if one.sample is None]:
-            raise RefusedError(
-                f"loop {continuous[0]} is continuous, the local model a difference equation every {step:.6g}"
-            )
-        lagged = [
-            name for name, actuator in setup.actuators.items() if actuator.lag and _lag(name) not in _states(setup)
-        ]
-        if setup.tick is None and set(lagged) & set(setup.model.inputs.names):
-            raise RefusedError(
-                f"the local model is sampled for held inputs, and behind its lag {lagged[0]} is not held"
-            )
+    if loop.sample is None and (sampled := [one.name for one in inside if one.sample is not None]):
+        raise RefusedError(f"a continuous loop around the sampled loop {sampled[0]} has no transfer function")
+    if setup.model.step is not None:
+        _check_steps(setup, (loop, *inside), setup.model.step)
     for one in inside:
         if one.sample is None and (why := _late(setup, one)):
             raise RefusedError(f"{why} lies inside loop {one.name}, which is closed")
     for other in (setup.loops[closed] for closed in setup.closed):
         if other.sample is None and (why := _late(setup, other)):
             raise RefusedError(f"{why} lies inside loop {other.name}, which is closed in the local model")
+
+
+def _check_steps(setup: Setup, loops: Sequence[Loop], step: float) -> None:
+    model = setup.model
+    if model.course == "straight":
+        raise RefusedError("the local model is sampled for inputs in straight lines, and a loop does not move in such")
+    if continuous := [one.name for one in loops if one.sample is None]:
+        whose = "the plant is" if setup.tick is not None else "the local model is"
+        raise RefusedError(f"loop {continuous[0]} is continuous, and {whose} a difference equation every {step:.6g}")
+    lagged = [name for name, actuator in setup.actuators.items() if actuator.lag and _lag(name) not in model.states]
+    if setup.tick is None and (slow := [name for name in lagged if name in model.inputs]):
+        raise RefusedError(f"the local model is sampled for held inputs, and behind its lag {slow[0]} is not held")
 
 
 def _check_signals(setup: Setup, loop: Loop) -> None:
@@ -175,10 +172,6 @@ def _late(setup: Setup, loop: Loop) -> str:
         if not moved.loop and setup.delays.inputs.get(moved.name):
             return f"the dead time of {moved.name}"
     return next((f"the dead time of {name}" for name in loop.measures if setup.delays.outputs.get(name)), "")
-
-
-def _states(setup: Setup) -> tuple[str, ...]:
-    return setup.model.states.names
 
 
 def _lag(name: str) -> str:
@@ -205,7 +198,7 @@ def _body(setup: Setup, reading: Sequence[Loop], closed: Sequence[Loop]) -> Bloc
     blocks = [_plant(setup, reading)]
     wires = []
     for name, actuator in setup.actuators.items():
-        if actuator.lag and name in setup.model.inputs and _lag(name) not in _states(setup):
+        if actuator.lag and name in setup.model.inputs and _lag(name) not in setup.model.states:
             blocks.append(_actuator(name, actuator.lag, setup.model.step))
             wires.append(Wire(f"{name} behind its actuator", f"{name} at the plant"))
     for loop in closed:

@@ -102,10 +102,9 @@ def _side_by_side(blocks: Sequence[Block]) -> Block:
         if twice := sorted({name for name in names if names.count(name) > 1}):
             raise ValueError(f"two blocks have a signal called {twice[0]}")
     n, m, k = len(states), len(inputs), len(outputs)
-    return Block(
-        _diagonal([block.A for block in blocks], n, n), _diagonal([block.B for block in blocks], n, m), _diagonal([block.C for block in blocks], k, n),
-        _diagonal([block.D for block in blocks], k, m), states, inputs, outputs,
-    )  # fmt: skip
+    shapes = {"A": (n, n), "B": (n, m), "C": (k, n), "D": (k, m)}
+    A, B, C, D = (_diagonal([getattr(block, name) for block in blocks], *shape) for name, shape in shapes.items())
+    return Block(A, B, C, D, states, inputs, outputs)
 
 
 def _diagonal(matrices: Sequence[Array], rows: int, columns: int) -> Array:

@@ -1,0 +1,494 @@
+"""Margins of a single loop by brute force, to hold the library against; nothing here is shared with it.
+
+Every quantity is scanned on a dense grid of frequencies that is refined about each pole and zero of L, 1 + L and
+1 - L; every local extremum and sign change is then refined, and what is quoted is evaluated in extended precision by
+direct solves of the given matrices. A loop is L(s) = (C (s I - A)^-1 B + D) exp(-s delay), or in z where `step` is
+given, and is closed by u = -y. Stability is read off refined eigenvalues, with a dead time off a count of turns.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Callable
+from dataclasses import dataclass, field
+from functools import cached_property
+
+import numpy as np
+import scipy.linalg
+
+PER_DECADE = 400  # of the plain logarithmic grid
+ABOUT_A_ROOT = 14  # points a decade of distance, on either side
+PHASE_STEP = 0.1  # rad of the dead time's phase between grid points
+APART = 1e-12  # relative: closer points make brackets of nothing
+MOST_POINTS = 1_500_000
+CHUNK = 20_000
+GOLDEN = (math.sqrt(5.0) - 1.0) / 2.0
+
+
+@dataclass(frozen=True)
+class Loop:
+    """A (n, n), B (n,), C (n,), D of one loop; dead time and sample time in its time unit."""
+
+    A: np.ndarray
+    B: np.ndarray
+    C: np.ndarray
+    D: float
+    delay: float = 0.0
+    step: float | None = None
+
+    @property
+    def n(self) -> int:
+        return int(self.A.shape[0])
+
+    @cached_property
+    def balanced(self) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """Rate matrix (A, or A - I of a sampled loop), B and C in states scaled by powers of two, which is exact."""
+        rate = self.A if self.step is None else self.A - np.eye(self.n)
+        if not self.n:
+            return rate, self.B, self.C
+        bordered = np.block([[rate, self.B[:, None]], [self.C[None, :], np.zeros((1, 1))]])
+        _, (scale, _) = scipy.linalg.matrix_balance(bordered, permute=False, separate=True)
+        scale = scale[:-1] / scale[-1]
+        return rate / scale[:, None] * scale[None, :], self.B / scale, self.C * scale
+
+    @cached_property
+    def triangular(self) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
+        """The balanced loop in complex Schur form."""
+        F, B, C = self.balanced
+        if not self.n:
+            return F + 0j, B + 0j, C + 0j
+        T, Z = scipy.linalg.schur(F, output="complex")
+        return T, Z.conj().T @ B, C @ Z
+
+    @property
+    def top(self) -> float:
+        """The highest frequency: half the sampling frequency, or infinity."""
+        return math.inf if self.step is None else math.pi / self.step
+
+    def variable(self, w: np.ndarray) -> np.ndarray:
+        """s of a frequency; of a sampled loop z - 1, without cancellation."""
+        if self.step is None:
+            return 1j * w
+        angle = w * w.dtype.type(self.step)
+        return -2.0 * np.sin(angle / 2.0) ** 2 + 1j * np.sin(angle)
+
+    def bare(self, w: np.ndarray) -> np.ndarray:
+        """L without its dead time, from the Schur form, in double precision."""
+        T, B, C = self.triangular
+        out = np.empty(w.shape, complex)
+        for first in range(0, w.size, CHUNK):
+            part = slice(first, first + CHUNK)
+            s = self.variable(w[part])
+            x = np.empty((self.n, s.size), complex)
+            for i in range(self.n - 1, -1, -1):
+                x[i] = (B[i] + T[i, i + 1 :] @ x[i + 1 :]) / (s - T[i, i])
+            out[part] = C @ x + self.D
+        return out
+
+    def response(self, w: np.ndarray) -> np.ndarray:
+        """L at frequencies (N,), in double precision."""
+        return self.bare(w) * np.exp(-1j * w * self.delay)
+
+    def exact(self, w: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+        """L and its derivative by frequency at (N,), by elimination in extended precision."""
+        w = np.asarray(w, np.longdouble)
+        s = self.variable(w)
+        L, slope = extended(self, s)
+        turn = 1j if self.step is None else 1j * np.longdouble(self.step) * (1.0 + s)
+        late = np.exp(-1j * w * np.longdouble(self.delay))
+        return L * late, (slope * turn - 1j * np.longdouble(self.delay) * L) * late
+
+
+def extended(loop: Loop, s: np.ndarray) -> tuple[np.ndarray, np.ndarray]:
+    """C (s - F)^-1 B + D and its derivative by s, for s (N,) in extended precision."""
+    F, B, C = (part.astype(np.clongdouble) for part in loop.balanced)
+    shifted = s[:, None, None] * np.eye(loop.n) - F
+    x = eliminated(shifted, np.broadcast_to(B, (s.size, loop.n)))
+    y = eliminated(shifted, x)
+    return (x * C).sum(axis=1) + np.longdouble(loop.D), -(y * C).sum(axis=1)
+
+
+def eliminated(matrix: np.ndarray, right: np.ndarray) -> np.ndarray:
+    """Solutions of N systems (N, n, n), (N, n) by Gaussian elimination with row pivoting, in the precision given."""
+    M = np.concatenate([matrix, right[:, :, None]], axis=2)
+    n, rows = M.shape[1], np.arange(M.shape[0])
+    for k in range(n):
+        pivot = k + np.argmax(np.abs(M[:, k:, k]), axis=1)
+        M[rows, pivot], M[:, k] = M[:, k].copy(), M[rows, pivot]
+        factor = M[:, k + 1 :, k] / M[:, k, k, None]
+        M[:, k + 1 :, k:] -= factor[:, :, None] * M[:, k, None, k:]
+    x = np.zeros((M.shape[0], n), M.dtype)
+    for k in range(n - 1, -1, -1):
+        x[:, k] = (M[:, k, n] - (M[:, k, k + 1 : n] * x[:, k + 1 :]).sum(axis=1)) / M[:, k, k]
+    return x
+
+
+# -- where to look ---------------------------------------------------------------------------------------------------
+
+
+def closed_roots(loop: Loop, sign: float = 1.0) -> np.ndarray:
+    """Roots of 1 + sign L without dead time, in s or z - 1; empty where the loop is not well posed."""
+    F, B, C = loop.balanced
+    through = 1.0 + sign * loop.D
+    return np.linalg.eigvals(F - sign * np.outer(B, C) / through) if through and loop.n else np.empty(0, complex)
+
+
+def zeros(loop: Loop) -> np.ndarray:
+    """Finite zeros of L without dead time, roughly."""
+    F, B, C = loop.balanced
+    size = float(np.abs(F).max(initial=1e-300))
+    pencil = np.block([[F / size, B[:, None]], [C[None, :], np.full((1, 1), loop.D)]])
+    with np.errstate(all="ignore"):
+        values = scipy.linalg.eigvals(pencil, np.diag([1.0] * loop.n + [0.0])) * size
+    return values[np.isfinite(values) & (np.abs(values) < 1e8 * max(size, 1e-300))]
+
+
+def landmarks(loop: Loop) -> np.ndarray:
+    """What the response turns about: complex rates, per time unit."""
+    found = [np.diag(loop.triangular[0]), zeros(loop), closed_roots(loop), closed_roots(loop, -1.0)]
+    roots = np.concatenate(found)
+    if loop.step is not None:
+        roots = roots[np.abs(1.0 + roots) > 1e-12]
+        roots = np.where(np.abs(roots) < 1e-4, roots - roots**2 / 2 + roots**3 / 3, np.log1p(roots)) / loop.step
+    biggest = np.abs(roots).max(initial=0.0)
+    return roots[np.abs(roots) > 1e-13 * biggest]
+
+
+def about(root: complex) -> np.ndarray:
+    """Frequencies about a root, ever closer to where it is nearest to the axis."""
+    size, centre = abs(root), abs(root.imag)
+    width = max(abs(root.real), 1e-13 * size)
+    count = int(ABOUT_A_ROOT * (math.log10(2.0 * size / width) + 3.0))
+    offsets = width * np.geomspace(1e-3, 2.0 * size / width, count)
+    return np.concatenate([centre + offsets, centre - offsets, [centre, size]])
+
+
+def grid(loop: Loop) -> np.ndarray:
+    """Frequencies to scan where the dead time does not matter: ascending, above zero."""
+    roots = landmarks(loop)
+    sizes = np.abs(roots) if roots.size else np.ones(1)
+    low, high = 1e-4 * sizes.min(), min(1e4 * sizes.max(), loop.top)
+    low = min(low, 1e-3 * high)
+    plain = np.geomspace(low, high, int(PER_DECADE * math.log10(high / low)) + 2)
+    parts = [plain, *(about(complex(root)) for root in roots)]
+    if loop.step is not None:
+        parts.append(loop.top * (1.0 - np.geomspace(1e-9, 0.5, 200)))
+        parts.append(np.linspace(0.0, loop.top, 2000))
+    w = np.unique(np.concatenate(parts))
+    w = w[(w > 0.0) & (w <= loop.top)]
+    w = w[np.diff(w, prepend=0.0) > APART * w]
+    with np.errstate(all="ignore"):  # a point may be a pole
+        return w[np.isfinite(loop.bare(w))]
+
+
+# -- roots and extrema of what is scanned ----------------------------------------------------------------------------
+
+Scalar = Callable[[np.ndarray], np.ndarray]  # of L, elementwise
+
+
+def loudness(L: np.ndarray) -> np.ndarray:
+    return np.log(np.abs(L))
+
+
+def offset(L: np.ndarray) -> np.ndarray:
+    """Zero where L is real, without regard to its size."""
+    return L.imag / np.abs(L)
+
+
+def sensitivity(L: np.ndarray) -> np.ndarray:
+    return 1.0 / np.abs(1.0 + L)
+
+
+def complementary(L: np.ndarray) -> np.ndarray:
+    return np.abs(L / (1.0 + L))
+
+
+def symmetric(L: np.ndarray) -> np.ndarray:
+    """|S - T| / 2: one over its peak is the disk margin."""
+    return np.abs((1.0 - L) / (1.0 + L)) / 2.0
+
+
+def peaks(loop: Loop, w: np.ndarray, value: np.ndarray, of: Scalar, most: int = 120) -> np.ndarray:
+    """Frequencies of the local maxima of of(L) between the grid's neighbours, by golden sections."""
+    inner = np.flatnonzero((value[1:-1] >= value[:-2]) & (value[1:-1] >= value[2:])) + 1
+    inner = inner[np.argsort(value[inner])[::-1][:most]]
+    low, high = w[inner - 1].copy(), w[inner + 1].copy()
+    for _ in range(60 if inner.size else 0):
+        left, right = high - GOLDEN * (high - low), low + GOLDEN * (high - low)
+        up = of(loop.response(left)) < of(loop.response(right))
+        low, high = np.where(up, left, low), np.where(up, high, right)
+    return (low + high) / 2.0
+
+
+def signs(value: np.ndarray) -> np.ndarray:
+    """1 or -1; a grid point that hits zero belongs to one side."""
+    return np.where(value < 0.0, -1, 1)
+
+
+def crossings(loop: Loop, w: np.ndarray, of: Scalar, *, negative: bool) -> np.ndarray:
+    """Frequencies where of(L) is zero, polished in extended precision; `negative`: only where L is left of zero."""
+    side = signs(of(loop.response(w)))
+    near = peaks(loop, w, -np.abs(of(loop.response(w))), lambda L: -np.abs(of(L)))
+    index = np.clip(np.searchsorted(w, near), 1, w.size - 1)
+    hidden = (signs(of(loop.response(near))) != side[index]) & (side[index - 1] == side[index])  # twice between two
+    w = np.unique(np.concatenate([w, near[hidden]]))
+    L = loop.response(w)
+    side = signs(of(L))
+    place = np.flatnonzero(side[:-1] != side[1:])
+    if negative:
+        place = place[(L.real[place] < 0) | (L.real[place + 1] < 0)]
+    low, high, before = w[place].copy(), w[place + 1].copy(), side[place]
+    for _ in range(50 if place.size else 0):
+        middle = (low + high) / 2.0
+        same = signs(of(loop.response(middle))) == before
+        low, high = np.where(same, middle, low), np.where(same, high, middle)
+    return polished(loop, (low + high) / 2.0, gain=of is loudness, negative=negative)
+
+
+def polished(loop: Loop, w: np.ndarray, *, gain: bool, negative: bool) -> np.ndarray:
+    """Newton's method in extended precision on log |L| or on the sine of its angle; sine jumps are left out."""
+    w = w.astype(np.longdouble)
+    if not w.size:
+        return w
+    for _ in range(4):
+        L, slope = loop.exact(w)
+        relative = slope / L
+        change = np.log(np.abs(L)) / relative.real if gain else (L.imag / L.real) / relative.imag
+        near = np.isfinite(change) & (np.abs(change) < 1e-6 * w)
+        w = np.where(near, w - change, w)
+    L = loop.exact(w)[0]
+    good = np.abs(np.abs(L) - 1.0) < 1e-9 if gain else np.abs(L.imag) < 1e-9 * np.abs(L)
+    if negative:
+        good &= L.real < 0
+    return w[good] if gain else w[good & turns(loop, w)]
+
+
+def turns(loop: Loop, w: np.ndarray) -> np.ndarray:
+    """Whether Im L changes its sign at w: near the ends of the axis it fades, and rounding errors cross for nothing."""
+    before, after = (loop.exact(w * np.longdouble(1.0 + shift))[0].imag for shift in (-1e-7, 1e-7))
+    return (before * after < 0) & (w < loop.top * (1.0 - 1e-6))
+
+
+# -- stability -------------------------------------------------------------------------------------------------------
+
+
+def refined_roots(loop: Loop) -> np.ndarray:
+    """Poles of the closed loop without dead time; those near the axis polished in extended precision."""
+    roots = closed_roots(loop).astype(np.clongdouble)
+    for _ in range(3):
+        L, slope = extended(loop, roots) if roots.size else (roots, roots)
+        with np.errstate(all="ignore"):
+            change = (1.0 + L) / slope
+        near = np.isfinite(change) & (np.abs(change) < 1e-6 * np.abs(roots))
+        roots = np.where(near, roots - change, roots)
+    return roots
+
+
+def growth(loop: Loop, roots: np.ndarray) -> np.ndarray:
+    """Real parts, or log |z| of z - 1."""
+    if loop.step is None:
+        return roots.real
+    return np.log1p(roots.real * 2.0 + np.abs(roots) ** 2) / 2.0
+
+
+def encirclements(loop: Loop, w: np.ndarray) -> int:
+    """Roots of 1 + L right of the axis: turns of (1 + L) prod (s - p) / (s + c)^n, which has no poles there.
+
+    Steps of phase above half a radian are halved until none is left. Needs |D| < 1 with a dead time.
+    """
+    poles = np.diag(loop.triangular[0])
+    corner = float(np.exp(np.log(np.abs(poles[poles != 0])).mean())) if np.any(poles != 0) else 1.0
+
+    def turned(w: np.ndarray) -> np.ndarray:
+        s = 1j * w
+        value = 1.0 + loop.response(w)
+        value /= np.abs(value)
+        for pole in poles:
+            value = value * (s - pole) / np.abs(s - pole) * np.exp(-1j * np.angle(s + corner))
+        return value
+
+    value = turned(w)
+    for _ in range(60):
+        wide = np.flatnonzero(np.abs(np.angle(value[1:] / value[:-1])) > 0.5)
+        wide = wide[w[wide + 1] - w[wide] > 1e-14 * w[wide + 1]]
+        if not wide.size:
+            break
+        middle = (w[wide] + w[wide + 1]) / 2.0
+        w, value = np.insert(w, wide + 1, middle), np.insert(value, wide + 1, turned(middle))
+    turn = float(np.angle(value[1:] / value[:-1]).sum())
+    return -round((turn - float(np.angle(value[-1])) + from_real(value[0])) / math.pi)
+
+
+def from_real(value: complex) -> float:
+    """The angle between a value and the nearer half of the real axis, where it is at frequency zero."""
+    angle = float(np.angle(value))
+    return angle - (0.0 if abs(angle) < math.pi / 2.0 else math.copysign(math.pi, angle))
+
+
+# -- the margins -----------------------------------------------------------------------------------------------------
+
+
+@dataclass(frozen=True)
+class Truth:
+    """What brute force finds. Ratios, radians, time units; infinite where there is none (gain_down: zero).
+
+    growth: of the fastest root, relative to its size, nan with a dead time; where: frequencies of the figures.
+    crossovers: |L| = 1; phase_crossings: L real and negative, at finite frequencies above zero.
+    """
+
+    stable: bool
+    unstable: int
+    growth: float
+    gain_up: float
+    gain_down: float
+    phase: float
+    delay: float
+    disk: float
+    sensitivity: float
+    complementary: float
+    crossovers: np.ndarray = field(repr=False)
+    phase_crossings: np.ndarray = field(repr=False)
+    where: dict[str, float] = field(repr=False)
+    points: int = 0
+
+
+def truth(loop: Loop) -> Truth:
+    """All of it, for a loop that is well posed (1 + D not zero; |D| < 1 with a dead time).
+
+    With a dead time the phase turns for ever, so the scan goes on until nothing beyond it can be worse than what it
+    found, by |L| alone; or until |L| does nothing but tend to |D|, which then counts itself.
+    """
+    w = grid(loop)
+    crossovers = crossings(loop, w, loudness, negative=False)
+    if not loop.delay:
+        return measured(loop, w, crossovers, last=True)
+    size = np.abs(loop.bare(w))
+    ahead = np.maximum(np.maximum.accumulate(size[::-1])[::-1], abs(loop.D))  # the largest |L| from here on
+    calm = 30.0 * np.abs(landmarks(loop)).max(initial=0.0)
+    start = max(2.0 * float(crossovers.max(initial=0.0)), 2.0 / loop.delay)
+    end = int(np.searchsorted(w, start))
+    while True:
+        end = min(end, w.size - 1)
+        last = bool(w[end] >= calm)
+        scanned = np.unique(np.concatenate([w[: end + 1], np.arange(0.0, w[end], PHASE_STEP / loop.delay)[1:]]))
+        if scanned.size > MOST_POINTS:
+            raise ValueError(f"{scanned.size} points are too many to scan")
+        result = measured(loop, scanned, crossovers, last=last)
+        if last or settled(result, float(ahead[end])):
+            return result
+        end = max(int(np.searchsorted(w, 3.0 * w[end])), end + 1)
+
+
+def settled(result: Truth, loudest: float) -> bool:
+    """Whether no frequency where |L| stays below `loudest` can hold anything worse."""
+    return (
+        loudest < 1.0
+        and result.gain_up <= 1.0 / loudest
+        and result.sensitivity >= 1.0 / (1.0 - loudest)
+        and result.complementary >= loudest / (1.0 - loudest)
+        and 1.0 / result.disk >= (1.0 + loudest) / (2.0 * (1.0 - loudest))
+    )
+
+
+def ends(loop: Loop) -> list[tuple[float, complex]]:
+    """L at frequency zero, where it is finite, and at the highest one without a dead time."""
+    found = []
+    poles = np.abs(np.diag(loop.triangular[0]))
+    if not loop.n or poles.min() > 1e-12 * poles.max():
+        found.append((0.0, complex(loop.exact(np.zeros(1))[0][0])))
+    if loop.step is not None:
+        found.append((loop.top, complex(loop.exact(np.array([loop.top]))[0][0].real)))
+    elif not loop.delay:
+        found.append((math.inf, complex(loop.D)))
+    return found
+
+
+def measured(loop: Loop, w: np.ndarray, crossovers: np.ndarray, *, last: bool) -> Truth:
+    """What the frequencies w hold; `last`: the limit at infinite frequency counts too."""
+    where: dict[str, float] = {}
+    through = crossings(loop, w, offset, negative=True)
+    real = [(float(x), abs(L)) for x, L in zip(through, loop.exact(through)[0], strict=True)]
+    real += [(x, abs(L)) for x, L in ends(loop) if L.real < 0.0 and abs(L.imag) < 1e-9 * abs(L)]
+    if last and loop.delay and loop.D:
+        real.append((math.inf, abs(loop.D)))
+    up = min(((1.0 / size, x) for x, size in real if size < 1.0), default=(math.inf, math.nan))
+    down = max(((1.0 / size, x) for x, size in real if size > 1.0), default=(0.0, math.nan))
+    where["gain_up"], where["gain_down"] = up[1], down[1]
+    turns = np.mod(np.angle(-loop.exact(crossovers)[0].astype(complex)), 2.0 * math.pi)
+    least = np.minimum(turns, 2.0 * math.pi - turns)
+    phase = float(least.min(initial=math.inf))
+    lags = turns / crossovers.astype(float)
+    where["phase"] = float(crossovers[np.argmin(least)]) if least.size else math.nan
+    where["delay"] = float(crossovers[np.argmin(lags)]) if lags.size else math.nan
+    tops = {}
+    for word, of in (("sensitivity", sensitivity), ("complementary", complementary), ("disk", symmetric)):
+        tops[word], where[word] = highest(loop, w, of, last=last)
+    unstable, fastest = stability(loop, w)
+    return Truth(
+        stable=unstable == 0,
+        unstable=unstable,
+        growth=fastest,
+        gain_up=float(up[0]),
+        gain_down=float(down[0]),
+        phase=phase,
+        delay=delay_margin(loop, lags),
+        disk=1.0 / tops["disk"] if tops["disk"] else math.inf,
+        sensitivity=tops["sensitivity"],
+        complementary=tops["complementary"],
+        crossovers=crossovers.astype(float),
+        phase_crossings=through.astype(float),
+        where=where,
+        points=int(w.size),
+    )
+
+
+def delay_margin(loop: Loop, lags: np.ndarray) -> float:
+    """Additional dead time that is just lost. Where |D| is 1 or more any is; a sampled loop's is no such quotient."""
+    if loop.step is not None:
+        return math.nan
+    return float(lags.min(initial=math.inf)) if abs(loop.D) < 1.0 else 0.0
+
+
+def highest(loop: Loop, w: np.ndarray, of: Scalar, *, last: bool) -> tuple[float, float]:
+    """The peak of of(L) and where it is, infinite frequency and the ends included."""
+    tops = peaks(loop, w, of(loop.response(w)), of)
+    found = [(float(of(np.array([L]))[0]), x) for x, L in ends(loop)]
+    if loop.delay and last:
+        found.append((float(of(np.array([-abs(loop.D) + 0j]))[0]), math.inf))
+    places = np.concatenate([tops, w[[0, -1]]])
+    values = of(loop.exact(places)[0]).astype(float)
+    value, place = max([*found, *zip(values.tolist(), places.tolist(), strict=True)])
+    near = places[(values > 0.999 * value) & (places < loop.top)]
+    return max([(value, place), *(topped(loop, float(x), of) for x in near)])
+
+
+STEEPER: dict[Scalar, Callable[[np.ndarray, np.ndarray], np.ndarray]] = {  # of L and dL/dw: sign of the slope
+    sensitivity: lambda L, slope: -(slope / (1.0 + L)).real,
+    complementary: lambda L, slope: (slope / L / (1.0 + L)).real,
+    symmetric: lambda L, slope: -(slope / (1.0 - L) / (1.0 + L)).real,
+}
+
+
+def topped(loop: Loop, w: float, of: Scalar) -> tuple[float, float]:
+    """A peak found in double precision, moved to where the slope in extended precision changes its sign."""
+    around = np.longdouble(w) * (1.0 + np.concatenate([-np.geomspace(1e-2, 1e-11, 28), np.geomspace(1e-11, 1e-2, 28)]))
+    around = around[around < loop.top]
+    for _ in range(6):
+        L, slope = loop.exact(around)
+        rising = STEEPER[of](L, slope) > 0.0
+        falls = np.flatnonzero(rising[:-1] & ~rising[1:])
+        if not falls.size:
+            break
+        best = falls[np.argmax(of(L)[falls])]
+        around = np.linspace(around[best], around[best + 1], 24)
+    values = of(loop.exact(around)[0])
+    return float(values.max()), float(around[values.argmax()])
+
+
+def stability(loop: Loop, w: np.ndarray) -> tuple[int, float]:
+    """Roots outside the stable region, and the growth of the fastest one relative to its size (nan with dead time)."""
+    if loop.delay:
+        return encirclements(loop, w), math.nan
+    roots = refined_roots(loop)
+    rates = growth(loop, roots) / np.abs(roots)
+    return int(np.count_nonzero(rates >= 0.0)), float(rates.max(initial=-math.inf))

@@ -1,0 +1,112 @@
+"""A transfer function in continuous time, balanced, for level sets over frequency.
+
+A sampled one is mapped bilinearly, w = (2 / step) (z - 1) / (z + 1), so that the unit circle becomes the imaginary axis
+and slow poles stay where they were; the mapping starts from A - I, since at fast sampling all poles crowd at z = 1 and
+their digits are in the difference. The Nyquist frequency becomes infinity. A common dead time changes no singular
+value: it is kept beside the matrices.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass
+
+import numpy as np
+from numpy.typing import NDArray
+
+from ..core.model import Array
+from .minimal import balanced, minimal
+from .transfer import Transfer
+
+Complex = NDArray[np.complex128]
+ON_AXIS = 64 * 2.0**-52  # of |A| times the condition of a pole: what rounding may move it by
+SMALLEST = 1e-11  # of the sizes of B and C: a pole with a smaller residue is not in the transfer function
+AT_NYQUIST = 1e-14  # of the size of A: a smaller singular value of A + I is a pole at z = -1
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Mapped:
+    """y = (C (w I - A)^-1 B + D) exp(-w delay) u, balanced and without parts that are neither moved nor seen.
+
+    step: of the sampled transfer function it was mapped from, None of a continuous one; nyquist: that one has a pole at
+    z = -1, and the matrices are those of its parts without it being possible to map it.
+    """
+
+    A: Array
+    B: Array
+    C: Array
+    D: Array
+    delay: float = 0.0
+    step: float | None = None
+    nyquist: bool = False
+
+    def respond(self, omega: Array) -> Complex:
+        """The response without dead time at mapped frequencies (F,), which may be infinite; (F, k, m)."""
+        found = np.broadcast_to(self.D, (len(omega), *self.D.shape)).astype(np.complex128)
+        finite = np.isfinite(omega)
+        if len(self.A) and finite.any():
+            shifted = 1j * omega[finite, np.newaxis, np.newaxis] * np.eye(len(self.A)) - self.A
+            found[finite] += self.C @ np.linalg.solve(shifted, np.broadcast_to(self.B, (len(shifted), *self.B.shape)))
+        return found
+
+    def told(self, omega: float) -> float:
+        """A mapped frequency as the transfer function's own, rad per time unit."""
+        return omega if self.step is None else 2.0 / self.step * math.atan(0.5 * omega * self.step)
+
+    def meant(self, omega: Array) -> Array:
+        """Frequencies of the transfer function as mapped ones."""
+        return omega if self.step is None else 2.0 / self.step * np.tan(0.5 * omega * self.step)
+
+    def poles(self) -> Complex:
+        """Eigenvalues of A, (n,)."""
+        return np.asarray(np.linalg.eigvals(self.A), dtype=np.complex128)
+
+    def axis_poles(self) -> Complex:
+        """Poles that lie on the imaginary axis to within rounding and are seen in the response."""
+        if len(self.A) == 0:
+            return np.zeros(0, dtype=np.complex128)
+        values, right = np.linalg.eig(self.A)
+        left = _left(values, self.A)
+        match = np.maximum(np.abs(np.sum(np.conj(left) * right, axis=0)), 2.0**-52)
+        on = np.abs(values.real) <= ON_AXIS * float(np.linalg.norm(self.A)) / match
+        moved = np.linalg.norm(np.conj(left.T) @ self.B, axis=1) / (float(np.linalg.norm(self.B)) or 1.0)
+        seen = np.linalg.norm(self.C @ right, axis=0) / (float(np.linalg.norm(self.C)) or 1.0)
+        return np.asarray(values[on & (moved * seen > SMALLEST * match)], dtype=np.complex128)
+
+
+def mapped(transfer: Transfer) -> Mapped:
+    """`transfer` on the imaginary axis."""
+    if transfer.step is None:
+        A, B, C = minimal(*balanced(transfer.A, transfer.B, transfer.C))
+        return Mapped(A, B, C, transfer.D, transfer.delay)
+    F, B, C = minimal(*balanced(_change(transfer), transfer.B, transfer.C))
+    return _bilinear(F, B, C, transfer.D, transfer.step)
+
+
+def _change(transfer: Transfer) -> Array:
+    return transfer.A - np.eye(len(transfer.A)) if transfer.change is None else transfer.change
+
+
+def _bilinear(F: Array, B: Array, C: Array, D: Array, step: float) -> Mapped:
+    up = 2.0 * np.eye(len(F)) + F
+    if len(F) and np.linalg.norm(up, -2) <= AT_NYQUIST * max(1.0, float(np.linalg.norm(up))):
+        return Mapped(F, B, C, D, 0.0, step, True)
+    inner = np.hstack([F, B])
+    if len(F):
+        inner = np.asarray(np.linalg.solve(up, inner), dtype=np.float64)
+    A, moved = inner[:, : len(F)], inner[:, len(F) :]
+    A, B, seen = balanced(2.0 / step * A, 2.0 / step * moved, 2.0 * C @ np.linalg.inv(up))
+    return Mapped(A, B, seen, D - C @ moved, 0.0, step)
+
+
+def _left(values: Complex, A: Array) -> Complex:
+    """Left eigenvectors of unit length, in the order of `values`."""
+    found, vectors = np.linalg.eig(A.T)
+    order = []
+    free = np.ones(len(found), dtype=bool)
+    for value in values:
+        distance = np.where(free, np.abs(np.conj(found) - value), np.inf)
+        place = int(np.argmin(distance))
+        free[place] = False
+        order.append(place)
+    return np.asarray(vectors[:, order], dtype=np.complex128)

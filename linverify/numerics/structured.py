@@ -1,0 +1,237 @@
+"""The supremum over all frequencies of the structured singular value, for diagonal complex perturbations.
+
+From above, certified for every frequency and not for those of a grid: with one constant scaling D the largest singular
+value of D M D^-1 stays below a level on whole stretches of frequency, whose ends are eigenvalues of the gain pencil at
+that level. Stretch by stretch, each with the scaling that is best somewhere inside, the axis is covered; where the best
+scaling does not reach below the level, the level rises. From below by perturbations that make the loop singular, raised
+over frequency and phase.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+from itertools import pairwise
+
+import numpy as np
+from scipy.linalg import matrix_balance
+
+from ..core.model import Array
+from ..core.outcome import Outcome
+from .mapped import Complex, Mapped
+from .peak_gain import climb, crossings, gains, looked_at, rounding
+from .scalings import from_above, from_below, turned
+
+WITHIN = 1e-6  # relative: how far the level stands above the highest bound of a single frequency
+COVERS = 150  # most stretches, each of which costs the eigenvalues of one pencil
+THIN = 1e-12  # of the frequency: a stretch thinner than this is judged by its ends
+POLISH, POINTS, SHRINK = 12, 9, 3.0
+INWARD = (1e-9, 1e-6, 1e-4, 1e-2, 0.1, 0.3)  # of a stretch: its ends move in by so much until they are below the level
+
+
+@dataclass(frozen=True, slots=True)
+class Bounded:
+    """A disk margin between bounds: surely at least low, surely at most high.
+
+    frequency: rad per time unit, of the perturbation at `high`; factors: by which the channels of the loop are to be
+    multiplied so that the closed loop has a pole on the axis at that frequency; empty where no perturbation was found.
+    outcome: BUDGET where the bounds are valid but might have been brought closer.
+    """
+
+    low: float
+    high: float
+    frequency: float
+    factors: tuple[complex, ...] = ()
+    outcome: Outcome = Outcome.DONE
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Found:
+    """Bounds of the supremum of the structured singular value; where the lower one is met, with the perturbation.
+
+    omega: mapped frequency; deltas (m,): diagonal of modulus 1 / low that makes 1 - M Delta singular there.
+    """
+
+    low: float
+    high: float
+    omega: float
+    deltas: Complex
+    done: bool
+
+
+@dataclass(slots=True)
+class _Cover:
+    """The state of the covering: mutable, since it is one loop's scratch sheet.
+
+    open: stretches of mapped frequency that are not yet shown to lie below `level`; scalings: those tried.
+    """
+
+    level: float
+    open: list[tuple[float, float]]
+    scalings: list[Array]
+
+
+def structured_peak(system: Mapped) -> Found:
+    """Bounds of the supremum over frequency of the structured singular value of a square stable `system`."""
+    system = _evened(system)
+    m = system.D.shape[0]
+    if m == 1:
+        return _single(system)
+    omega, above, D, below = _survey(system)
+    low, where, phases = _raised(system, omega, below, D)
+    cover = _Cover(max(low, float(above.max())) * (1.0 + WITHIN), [(0.0, math.inf)], [np.ones(m)])
+    done = _covered(system, cover)
+    high = cover.level if done else min(climb(_rescaled(system, D))[0] for D in cover.scalings) * (1.0 + WITHIN)
+    high = max(high, cover.level) * (1.0 + rounding(system, where))
+    return Found(low, high, where, _deltas(system, where, phases), done)
+
+
+def _single(system: Mapped) -> Found:
+    value, where, done = climb(system)
+    response = system.respond(np.array([where]))[0, 0, 0]
+    deltas = np.array([1.0 / response if response else 0.0])
+    return Found(value, value * (1.0 + WITHIN + rounding(system, where)), where, deltas, done)
+
+
+def _rescaled(system: Mapped, D: Array) -> Mapped:
+    return replace(system, B=system.B / D, C=D[:, np.newaxis] * system.C, D=D[:, np.newaxis] * system.D / D)
+
+
+def _evened(system: Mapped) -> Mapped:
+    """Channels scaled by powers of two to like sizes, which changes no structured singular value."""
+    sizes = np.abs(system.respond(looked_at(system, climb(system)[0] * 0.5))).max(axis=0)
+    _, (scale, _) = matrix_balance(sizes, permute=False, separate=True)
+    return _rescaled(system, 1.0 / np.asarray(scale, dtype=np.float64))
+
+
+def _survey(system: Mapped) -> tuple[Array, Array, Array, Array]:
+    """Frequencies where the bounds may be large, bounds from above with their scalings, bounds from below."""
+    value, where, _ = climb(system)
+    sizes = np.abs(system.poles())
+    omega = np.concatenate([[where], sizes, np.abs(system.poles().imag)])
+    for share in (0.9, 0.6, 0.3):
+        omega = np.concatenate([omega, looked_at(system, share * value)])
+    omega = np.unique(omega)
+    above, D = from_above(system.respond(omega))
+    top = np.argsort(-above, kind="stable")[:3]
+    fine = _followed(system, omega[top])
+    omega = np.concatenate([omega, fine])
+    M = system.respond(omega)
+    above, D = from_above(M)
+    return omega, above, D, from_below(M, D)[0]
+
+
+def _followed(system: Mapped, places: Array) -> Array:
+    """`places` moved to where the bound from above is largest nearby."""
+    places = places[np.isfinite(places)]
+    poles = system.poles()
+    if len(places) == 0 or len(poles) == 0:
+        return places
+    width = np.min(np.abs(1j * places[:, np.newaxis] - poles[np.newaxis, :]), axis=1)
+    steps = np.linspace(-1.0, 1.0, POINTS)
+    for _ in range(POLISH):
+        grid = np.abs(places[:, np.newaxis] + width[:, np.newaxis] * steps)
+        above = from_above(system.respond(grid.ravel()))[0].reshape(grid.shape)
+        top = np.argmax(above, axis=1)
+        places = grid[np.arange(len(places)), top]
+        width = np.where((top > 0) & (top < POINTS - 1), width / SHRINK, width)
+    return places
+
+
+def _raised(system: Mapped, omega: Array, below: Array, D: Array) -> tuple[float, float, Array]:
+    """The highest bound from below near the highest of `below`, its frequency, its phases (m,)."""
+    best = (-math.inf, 0.0, np.zeros(system.D.shape[0]))
+    poles = system.poles()
+    for place in np.argsort(-below, kind="stable")[:2]:
+        M = system.respond(omega[[place]])
+        value, phases = from_below(M, D[[place]])
+        where = float(omega[place])
+        if value[0] > best[0]:
+            best = (float(value[0]), where, phases[0])
+        if not math.isfinite(where) or len(poles) == 0:
+            continue
+        width = float(np.abs(1j * where - poles).min())
+        for _ in range(POLISH):
+            grid = np.abs(where + width * np.linspace(-1.0, 1.0, POINTS))
+            value, phases = turned(system.respond(grid), np.broadcast_to(phases[:1], (POINTS, phases.shape[1])))
+            top = int(np.argmax(value))
+            if value[top] > best[0]:
+                best = (float(value[top]), float(grid[top]), phases[top])
+            where, phases = float(grid[top]), phases[[top]]
+            width = width / SHRINK if 0 < top < POINTS - 1 else width
+    return best
+
+
+def _deltas(system: Mapped, omega: float, phases: Array) -> Complex:
+    Q = np.exp(1j * phases)
+    values = np.linalg.eigvals(system.respond(np.array([omega]))[0] * Q)
+    largest = values[int(np.argmax(np.abs(values)))]
+    return np.asarray(Q / largest if largest else 0.0 * Q, dtype=np.complex128)
+
+
+def _covered(system: Mapped, cover: _Cover) -> bool:
+    """Cover the axis stretch by stretch; False when the budget ends before it is covered."""
+    _cover_by(system, cover, cover.scalings[0])
+    for _ in range(COVERS):
+        if not cover.open:
+            return True
+        probes = _probes(cover.open[0], system)
+        above, D = from_above(system.respond(probes))
+        worst = int(np.argmax(above))
+        cover.level = max(cover.level, float(above[worst]) * (1.0 + WITHIN))
+        cover.scalings.append(D[worst])
+        _cover_by(system, cover, D[worst])
+        if probes[0] == probes[-1] or _thin(cover, probes):
+            cover.open.pop(0)
+    return not cover.open
+
+
+def _probes(stretch: tuple[float, float], system: Mapped) -> Array:
+    """Both ends and the middle of a stretch."""
+    low, high = stretch
+    if math.isinf(high):
+        return np.array([low, 2.0 * low if low > 0 else float(np.abs(system.A).max(initial=1.0)), math.inf])
+    return np.array([low, 0.5 * (low + high), high])
+
+
+def _thin(cover: _Cover, probes: Array) -> bool:
+    """True where the first open stretch has not shrunk and is too thin to be divided: its probes decided it."""
+    if not cover.open or cover.open[0] != (probes[0], probes[-1]):
+        return False
+    return bool(probes[-1] - probes[0] <= THIN * probes[-1])
+
+
+def _cover_by(system: Mapped, cover: _Cover, D: Array) -> None:
+    """Take from the open stretches what the scaling D shows to lie below the level."""
+    scaled = _rescaled(system, D)
+    ends = np.concatenate([[0.0], crossings(scaled, cover.level), [math.inf]])
+    ends = np.unique(ends)
+    for low, high in pairwise(ends):
+        shown = _below(scaled, cover.level, float(low), float(high))
+        if shown is not None:
+            cover.open = [piece for stretch in cover.open for piece in _without(stretch, shown)]
+
+
+def _below(scaled: Mapped, level: float, low: float, high: float) -> tuple[float, float] | None:
+    """The stretch between two crossings with its ends moved in until they are below the level; None if above it."""
+    beyond = 2.0 * low if low > 0 else 1.0
+    inner = np.array([beyond if math.isinf(high) else 0.5 * (low + high)])
+    if gains(scaled, inner)[0] >= level:
+        return None
+    ends = []
+    for end, toward in ((low, float(inner[0])), (high, float(inner[0]))):
+        if end == 0.0 or math.isinf(end):
+            tried = np.array([end, toward])
+        else:
+            tried = np.array([end + share * (toward - end) for share in INWARD] + [toward])
+        ends.append(float(tried[int(np.argmax(gains(scaled, tried) < level))]))
+    return ends[0], ends[1]
+
+
+def _without(stretch: tuple[float, float], shown: tuple[float, float]) -> list[tuple[float, float]]:
+    """What is left of an open stretch."""
+    low, high = stretch
+    if shown[1] <= low or shown[0] >= high:
+        return [stretch] if low < high or not shown[0] <= low <= shown[1] else []
+    left = [(low, shown[0])] if low < shown[0] else []
+    return left + ([(shown[1], high)] if shown[1] < high else [])

@@ -1,0 +1,174 @@
+"""Eigenvalues with discs in which they surely lie, for a matrix whose entries are known to within errors.
+
+z is an eigenvalue of some A + X with |X| <= E, entry by entry, only where the spectral radius of |(z I - A)^-1| E is
+one or more. So a circle on which it stays below one keeps its number of eigenvalues, whatever X is. The circle about
+each eigenvalue is made as small as that allows; where circles would meet, their eigenvalues are taken together. This
+holds for repeated and defective eigenvalues too. The spectral radius is evaluated at points of the circle with a
+reserve, so the discs are an estimate with a margin and no proof.
+"""
+
+from __future__ import annotations
+
+import math
+from dataclasses import dataclass, replace
+
+import numpy as np
+from scipy.linalg import eig, matrix_balance
+
+from ..core.model import Array
+from .clusters import Cluster, settled
+from .frequency import Complex
+from .structure import strong_blocks, zeros_for_sure
+
+STRUCTURAL = 1e-9  # of the largest scaled entry: an entry that is zero and known that well is a zero for good
+SPACING = 2.0**-52
+RESERVE = 0.8  # the spectral radius that the points of a circle must keep below
+POINTS = 32  # of a circle
+APART = 0.4  # of the distance to the nearest foreign eigenvalue: larger circles are joined
+ROOM = 1.25  # times the distance of its own eigenvalues: the least radius of a circle
+HALVINGS = 4  # steps that narrow a radius down to five per cent
+
+
+@dataclass(frozen=True, slots=True)
+class Root:
+    """One eigenvalue, or a conjugate pair told by its upper member.
+
+    value: as computed, or exactly zero; radius: of the disc about `value` that holds it, infinite where errors are
+    unbounded; center, spread: of the disc that holds all `together` eigenvalues which cannot be told apart; single: one
+    simple eigenvalue has the disc to itself; zero: it is zero whatever the entries are.
+    """
+
+    value: complex
+    radius: float
+    center: complex
+    spread: float
+    together: int = 1
+    zero: bool = False
+
+    @property
+    def single(self) -> bool:
+        """True where the disc holds one eigenvalue (and, off the real axis, its mirror image the conjugate)."""
+        return self.together == 1
+
+    @property
+    def real(self) -> bool:
+        """True where it is real for sure: alone in a disc about a point of the real axis."""
+        return self.zero or (self.single and self.value.imag == 0.0)
+
+
+def structural(A: Array, E: Array) -> Array:
+    """E with errors of entries that are zero for good set to zero; A, E (n, n) scaled by nominal sizes."""
+    size = float(np.abs(A).max(initial=0.0))
+    return np.where((A == 0.0) & (STRUCTURAL * size >= E), 0.0, E)
+
+
+def roots(A: Array, E: Array) -> tuple[Root, ...]:
+    """Eigenvalues of A (n, n) to within E (n, n) >= 0, upper members of pairs only.
+
+    Both scaled by nominal sizes, so that what is negligible does not depend on units. Raises ValueError for an A that
+    is not finite.
+    """
+    if not np.isfinite(A).all():
+        raise ValueError("the matrix has entries that are not finite")
+    known = structural(A, E)
+    pattern = np.asarray((A != 0.0) | (known > 0.0), dtype=np.bool_)
+    found: list[Root] = []
+    for block in strong_blocks(pattern):
+        place = np.ix_(block, block)
+        sure = zeros_for_sure(pattern[place])
+        found += _with_zeros(_block(A[place], known[place]), sure)
+    return tuple(found)
+
+
+def _with_zeros(found: list[Root], sure: int) -> list[Root]:
+    """The smallest ones put to zero, as many as vanish for sure."""
+    order = sorted(range(len(found)), key=lambda at: abs(found[at].value))
+    for at in order:
+        count = 1 if found[at].value.imag == 0.0 else 2
+        if count > sure:
+            break
+        sure -= count
+        zero = Root(0j, 0.0, 0j, 0.0, zero=True)
+        found[at] = zero
+        if count == 2:
+            found.append(zero)
+    return found
+
+
+def _block(A: Array, E: Array) -> list[Root]:
+    if len(A) == 1:
+        value = float(A[0, 0])
+        radius = float(E[0, 0]) + 2.0 * SPACING * abs(value)
+        return [Root(complex(value), radius, complex(value), radius)]
+    _, (scale, _) = matrix_balance(A, permute=False, separate=True)
+    A, E = A * scale / scale[:, np.newaxis], E * scale / scale[:, np.newaxis]
+    E = E + 2.0 * SPACING * float(np.linalg.norm(A))  # what the eigensolver's own rounding may act like
+    values, left, right = (np.asarray(part, dtype=np.complex128) for part in eig(A, left=True))
+    upper = np.flatnonzero(values.imag >= 0.0)
+    listed = [complex(values[at]) for at in upper]
+    if not np.isfinite(E).all():
+        return [Root(value, math.inf, value, math.inf, len(A)) for value in listed]
+    with np.errstate(divide="ignore"):
+        first_order = (np.abs(left) * (E @ np.abs(right))).sum(axis=0) / np.abs((left.conj() * right).sum(axis=0))
+    return _Circles(A, E, listed, [float(first_order[at]) for at in upper]).roots()
+
+
+class _Circles:
+    """The circles of one block. A, E balanced (n, n); values on or above the real axis; first_order: their errors."""
+
+    def __init__(self, A: Array, E: Array, values: list[complex], first_order: list[float]) -> None:
+        self.A, self.E, self.values, self.first_order = A, E, values, first_order
+        self.size = float(np.linalg.norm(A)) or 1.0
+
+    def roots(self) -> list[Root]:
+        """Every eigenvalue with its disc."""
+        return [root for cluster, radius in settled(self.values, self._radius) for root in self._told(cluster, radius)]
+
+    def _told(self, cluster: Cluster, radius: float) -> list[Root]:
+        if len(cluster.values) == 1:
+            return [Root(cluster.center, radius, cluster.center, radius)]
+        whole = Root(cluster.center, 0.0, cluster.center, radius, len(cluster.values))
+        members = [self.values[at] for at in cluster.members]
+        return [replace(whole, value=value, radius=abs(value - cluster.center) + radius) for value in members]
+
+    def _radius(self, cluster: Cluster) -> float | None:
+        """The smallest radius found; None where the circle would come too near to foreign eigenvalues."""
+        most, least = APART * cluster.gap, ROOM * cluster.inside
+        begin = max(self.first_order[at] for at in cluster.members)
+        radius = max(least, SPACING * self.size, begin if math.isfinite(begin) and begin < most else 0.0)
+        while radius <= most and not self._keeps(cluster.center, radius):
+            radius *= 2.0
+        if radius > most:
+            return None
+        low, high = max(least, radius / 2.0), radius
+        for _ in range(HALVINGS):
+            middle = math.sqrt(low * high)
+            low, high = (low, middle) if self._keeps(cluster.center, middle) else (middle, high)
+        return high
+
+    def _keeps(self, center: complex, radius: float) -> bool:
+        return largest(self.A, self.E, circle(center, radius, POINTS)) < RESERVE
+
+
+def circle(center: complex, radius: float, points: int) -> Complex:
+    """So many points of a circle, none of them on the real axis; (points,)."""
+    return np.asarray(center + radius * np.exp(2j * np.pi * (np.arange(points) + 0.5) / points))
+
+
+def largest(A: Array, E: Array, points: Complex) -> float:
+    """The largest spectral radius of |(z I - A)^-1| E over `points` (P,), from above; infinite at an eigenvalue."""
+    n = len(A)
+    try:
+        inverse = np.linalg.inv(points[:, np.newaxis, np.newaxis] * np.eye(n) - A)
+    except np.linalg.LinAlgError:
+        return math.inf
+    with np.errstate(over="ignore", invalid="ignore", divide="ignore"):
+        grown = np.abs(inverse) @ E
+        vector = np.ones((len(points), n, 1))
+        for _ in range(4):
+            vector = grown @ vector + 1e-300
+            vector = vector / vector.max(axis=1, keepdims=True)
+        # Collatz and Wielandt: of a matrix without negative entries this bounds the spectral radius
+        ratio = (grown @ vector) / np.maximum(vector, 1e-300)
+    found = float(ratio.max())
+    return found if math.isfinite(found) else math.inf

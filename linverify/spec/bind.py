@@ -34,11 +34,11 @@ from linverify.core.plant import Plant
 
 from .actuators import bind_actuators, check_trimmed
 from .bound_loops import BoundLoops, LoopBinder
-from .closed import by_set, check_bands, check_closed, known_loops, moved_by_set
+from .closed import around_loops, by_set, check_bands, check_closed, known_loops, moved_by_set
 from .envelopes import bind_envelope, nominal_sizes
 from .ground import Ground, whole_ratio
 from .layout import Cell, Point, Spec, always_checked, matches
-from .local_models import LocalModels, bind_delays, bind_wraps
+from .local_models import Asked, LocalModels, bind_delays, bind_wraps
 from .modes import bind_modes, place_of_modes
 from .motions import bind_band, bind_drives
 from .plants import Loaded, load_plant
@@ -142,12 +142,12 @@ class _Binder:
         )
 
     def _point(self, point: Point) -> tuple[Case, ...]:
-        grounds = [self._equilibrium(point, cell) for cell in point.cells]
-        judged = [own for cell, own in zip(point.cells, grounds, strict=True) if not cell.skipped]
+        owned = [self._own(point, cell) for cell in point.cells]
+        judged = [own for cell, own in zip(point.cells, owned, strict=True) if not cell.skipped]
         shared = self._shared(point, judged[0].closings.loops if judged else NO_LOOPS)
-        return tuple(self._case(point, cell, own, shared) for cell, own in zip(point.cells, grounds, strict=True))
+        return tuple(self._case(point, cell, own, shared) for cell, own in zip(point.cells, owned, strict=True))
 
-    def _equilibrium(self, point: Point, cell: Cell) -> _Own:
+    def _own(self, point: Point, cell: Cell) -> _Own:
         parameters = bind_parameters(self.ground, point, cell)
         trim = bind_trim(self.ground, point, cell, self.envelope, self.accuracy, self.accuracy_told)
         if not cell.skipped:
@@ -155,24 +155,24 @@ class _Binder:
         return _Own(parameters, trim, self.loops.of(point.loops, cell, trim, parameters))
 
     def _shared(self, point: Point, loops: Mapping[str, Loop]) -> _Shared:
-        """What all cells of a point share. loops: those of any cell; they differ in numbers only."""
+        """What all cells of a point share. loops: those of any cell that is judged; they differ in numbers only."""
         ground, names = self.ground, tuple(loop.name for loop in point.loops)
+        all_bound = len(loops) == len(names)  # else mistakes are told, or nothing of this point is judged
         closed = known_loops(ground, self.spec.local.closed, names, "local_models: with")
         sets = tuple(bind_drives(ground, ask, self.rate_limits, self.limits_shown, loops) for ask in point.drives)
-        moved = {drives.name: moved_by_set(loops, drives, closed) for drives in sets}
+        told = () if self.spec.local.source else closed  # a delivered model does not tell what loops inside it move
+        moved = {drives.name: moved_by_set(loops, drives, told) if all_bound else ground.inputs for drives in sets}
         bound = [bind_band(ground, ask, sets, moved) for ask in point.bands]
-        bands = tuple(
-            each for band in bound if band is not None for each in by_set(band, sets, loops, closed, ground.inputs)
-        )
-        if len(loops) == len(names):  # else some could not be bound, which is told
+        bands = tuple(each for band in bound if band is not None for each in by_set(band, sets, moved, ground.inputs))
+        if all_bound:
             check_closed(ground, point.drives, sets, loops, closed)
             check_bands(ground, sets, bands, loops)
         return _Shared(sets, bands, bind_modes(ground, point.modes), closed)
 
     def _case(self, point: Point, cell: Cell, own: _Own, shared: _Shared) -> Case:
         parameters, trim, sets, bands = own.parameters, own.trim, shared.sets, shared.bands
-        local, told_local = self.local.of(cell, sets, bands)
-        local = replace(local, closed=shared.closed)
+        around = around_loops(self.ground, own.closings.loops, shared.closed, self.actuators)
+        local, told_local = self.local.of(cell, Asked(sets, bands, shared.modes), around)
         told = (*told_local, *_told_rates(self.spec, point), *told_middles(self.ground, trim, self.envelope))
         return Case(
             spec=self.spec.shown,
@@ -199,7 +199,7 @@ class _Binder:
             actuators=self.actuators,
             requirements=self._requirements(cell, self.spec.check_names(point)),
             settings=(*self.settings, *point.settings, *told, *_told_cell(self.plant, point, cell)),
-            files=(*self.files, *self.local.files_of(local), *own.closings.files),
+            files=tuple(dict.fromkeys((*self.files, *self.local.files_of(local), *own.closings.files))),
             skipped=f"skipped by `skip: {cell.skipped.text}`, {cell.skipped.place}" if cell.skipped else "",
             shown=signals_shown(self.ground, point, cell, self.limits_shown),
             shown_limits=self.limits_shown,

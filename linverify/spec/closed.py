@@ -3,11 +3,12 @@
 from __future__ import annotations
 
 from collections.abc import Iterable, Mapping, Sequence
-from dataclasses import replace
+from dataclasses import dataclass, replace
+from types import MappingProxyType
 
 from linverify.core import units
 from linverify.core.case import Band, DriveSet
-from linverify.core.loop import Loop
+from linverify.core.loop import Actuator, Loop
 from linverify.core.signals import nearest
 
 from .atoms import Word
@@ -36,6 +37,35 @@ def moved(loops: Mapping[str, Loop], names: Iterable[str]) -> tuple[str, ...]:
 def moved_by_set(loops: Mapping[str, Loop], drives: DriveSet, closed: Sequence[str]) -> tuple[str, ...]:
     """The plant inputs that are moved by loops while `drives` run: by its own loop, and by those inside the model."""
     return moved(loops, (*((drives.loop,) if drives.loop else ()), *closed))
+
+
+@dataclass(frozen=True, slots=True)
+class Around:
+    """What loops that are closed inside a local model add to its states and inputs, with units.
+
+    closed: names of the loops; moved: plant inputs that they move.
+    """
+
+    closed: tuple[str, ...]
+    states: Mapping[str, str]
+    inputs: Mapping[str, str]
+    moved: tuple[str, ...]
+
+
+OPEN = Around((), MappingProxyType({}), MappingProxyType({}), ())
+
+
+def around_loops(
+    ground: Ground, loops: Mapping[str, Loop], closed: tuple[str, ...], actuators: Mapping[str, Actuator]
+) -> Around:
+    """The names of a local model in which the loops `closed` are closed: `level.1`, `level.set_point.top_level`."""
+    names = moved(loops, closed)
+    states = {f"{name}.lag": ground.unit(name) for name in names if name in actuators and actuators[name].lag > 0.0}
+    inputs: dict[str, str] = {}
+    for loop in inside(loops, closed):
+        states |= {f"{loop.name}.{number}": "" for number in range(1, len(loop.controller.A) + 1)}
+        inputs |= {f"{loop.name}.set_point.{name}": ground.unit(name) for name in loop.measures}
+    return Around(closed, MappingProxyType(states), MappingProxyType(inputs), names)
 
 
 def check_closed(
@@ -78,12 +108,15 @@ def check_bands(ground: Ground, sets: Sequence[DriveSet], bands: Sequence[Band],
 
 
 def by_set(
-    band: Band, sets: Sequence[DriveSet], loops: Mapping[str, Loop], closed: Sequence[str], inputs: Sequence[str]
+    band: Band, sets: Sequence[DriveSet], moved_in: Mapping[str, Sequence[str]], inputs: Sequence[str]
 ) -> tuple[Band, ...]:
-    """`band`, or one band for each set in which a loop moves its input, where that is not so in all of them."""
+    """`band`, or one band for each set in which a loop moves its input, where that is not so in all of them.
+
+    moved_in: by set, the inputs that loops move in it.
+    """
     if band.drives is not None or band.signal not in inputs:
         return (band,)
-    moving = [drives for drives in sets if band.signal in moved_by_set(loops, drives, closed)]
+    moving = [drives for drives in sets if band.signal in moved_in[drives.name]]
     return (band,) if len(moving) == len(sets) else tuple(replace(band, drives=drives.name) for drives in moving)
 
 

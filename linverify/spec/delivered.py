@@ -8,7 +8,7 @@ names is a mistake, not a model.
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Collection, Mapping, Sequence
 from dataclasses import dataclass
 from types import MappingProxyType
 
@@ -27,10 +27,15 @@ from .scalars import quoted
 _HOLDS: tuple[Course, ...] = ("held", "straight")
 
 
-def bind_delivered(ground: Ground, claim: Claim, keep: Keep | None) -> DeliveredModel | None:
-    """The model of `claim` in the plant's units, or None after telling what is wrong with it."""
+def bind_delivered(
+    ground: Ground, claim: Claim, keep: Keep | None, optional: Collection[str] = ()
+) -> DeliveredModel | None:
+    """The model of `claim` in the plant's units, or None after telling what is wrong with it.
+
+    optional: inputs that it need not have, since loops inside it move them.
+    """
     before = len(ground.problems)
-    model = _Binding(ground, claim, keep).model()
+    model = _Binding(ground, claim, keep, optional).model()
     return model if len(ground.problems) == before else None
 
 
@@ -51,6 +56,7 @@ class _Binding:
     ground: Ground
     claim: Claim
     keep: Keep | None
+    optional: Collection[str]
 
     def model(self) -> DeliveredModel | None:
         """Reads part by part, so that one mistake does not hide another one."""
@@ -149,7 +155,8 @@ class _Binding:
         for kind, kept in wanted.items():
             have: tuple[str, ...] | None = getattr(names, kind)
             if have is not None:  # anonymous states are judged by what outputs do
-                self._lacks(kind, [name for name in kept if name not in have])
+                needed = kept if keep is not None else tuple(name for name in kept if name not in self.optional)
+                self._lacks(kind, [name for name in needed if name not in have])
         for kind in ("states", "inputs") if keep is not None else ():
             self._leaves_out(kind, wanted[kind])
         return len(ground.problems) == before
@@ -260,7 +267,7 @@ class _Binding:
         for name, number in (*self._pairs(word, names), *self._by_name(word)):
             unit = units_of.get(name, "").strip()
             told = f"{units.shown(number.value)} {unit}".strip()
-            if unit and not units.convertible(unit, self.ground.plant.unit(name)):
+            if unit and not units.convertible(unit, self.ground.unit(name)):
                 continue  # the unit was told of
             values[name] = self.ground.signal(Quantity(number.value, unit, told, number.place), name, f"{word}: {name}")
         return MappingProxyType(values)

@@ -9,6 +9,7 @@ from __future__ import annotations
 import math
 from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, field
+from types import MappingProxyType
 
 from linverify.core import units
 from linverify.core.case import Interval
@@ -27,23 +28,26 @@ class Ground:
     """A plant and the mistakes found so far. Mutable: `problems` grows, nothing else changes.
 
     complete: False where parts of the spec could not be read; what is not there may then be among them. named: where
-    the spec names the plant, the place of mistakes of the plant itself.
+    the spec names the plant, the place of mistakes of the plant itself. more_states, more_inputs: what closed loops
+    add to those of the plant, with units.
     """
 
     plant: Plant
     complete: bool = True
     named: Place = field(default_factory=lambda: Place("<python>"))
     problems: list[Problem] = field(default_factory=list)
+    more_states: Mapping[str, str] = field(default_factory=lambda: MappingProxyType({}))
+    more_inputs: Mapping[str, str] = field(default_factory=lambda: MappingProxyType({}))
 
     @property
     def states(self) -> tuple[str, ...]:
         """Names of the states."""
-        return tuple(self.plant.states)
+        return (*self.plant.states, *self.more_states)
 
     @property
     def inputs(self) -> tuple[str, ...]:
         """Names of the inputs."""
-        return tuple(self.plant.inputs)
+        return (*self.plant.inputs, *self.more_inputs)
 
     @property
     def outputs(self) -> tuple[str, ...]:
@@ -54,6 +58,13 @@ class Ground:
     def signals(self) -> tuple[str, ...]:
         """Names of states, inputs and outputs, each once."""
         return tuple(dict.fromkeys((*self.states, *self.inputs, *self.outputs)))
+
+    def unit(self, name: str) -> str:
+        """Unit of a state, input, output or parameter; raises KeyError."""
+        for more in (self.more_states, self.more_inputs):
+            if name in more:
+                return more[name]
+        return self.plant.unit(name)
 
     def report(self, place: Place, wrong: str, expected: str = "", hint: str = "") -> None:
         """Note one mistake."""
@@ -104,15 +115,15 @@ class Ground:
 
     def signal(self, quantity: Quantity, name: str, word: str) -> float:
         """A point of the scale of signal or parameter `name`, which is known to exist."""
-        return self.amount(quantity, self.plant.unit(name), word)
+        return self.amount(quantity, self.unit(name), word)
 
     def deviation(self, quantity: Quantity, name: str, word: str) -> float:
         """A deviation of signal `name`, which is known to exist."""
-        return self.amount(quantity, self.plant.unit(name), word, difference=True)
+        return self.amount(quantity, self.unit(name), word, difference=True)
 
     def rate(self, quantity: Quantity, name: str, word: str) -> float:
         """A rate of signal `name` per time unit of the plant."""
-        unit = units.per_time(self.plant.unit(name), self.plant.time_unit)
+        unit = units.per_time(self.unit(name), self.plant.time_unit)
         return self.amount(quantity, unit, word, difference=True)
 
     def time(self, quantity: Quantity, word: str) -> float:

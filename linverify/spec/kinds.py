@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Sequence
+from collections.abc import Callable
 from typing import Any
 
 from linverify.core.errors import Place
@@ -50,12 +50,8 @@ def _block(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Va
 
 def _groups(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> tuple[Entry[Values], ...] | None:
     """One group of words, or a list of them; the entries have the places of the groups and no names."""
-    return groups(reader, row.of, called, node.items if isinstance(node, Listing) else (node,))
-
-
-def groups(reader: Reader, rows: tuple[Row, ...], called: str, items: Sequence[Node]) -> tuple[Entry[Values], ...]:
-    """Groups of words without names, each with its place."""
-    return tuple(Entry("", item.place, block(reader, item, rows, called)) for item in items)
+    items = node.items if isinstance(node, Listing) else (node,)
+    return tuple(Entry("", item.place, block(reader, item, row.of, called)) for item in items)
 
 
 def _raw(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Node:

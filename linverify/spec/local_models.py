@@ -4,7 +4,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Iterator, Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 from pathlib import Path
 from types import MappingProxyType
 
@@ -12,9 +12,11 @@ from linverify.core import units
 from linverify.core.case import Band, DriveSet, Setting
 from linverify.core.delivered import AgreeAsk, Delays, DeliveredModel, GainsAsk, Keep, LocalAsk, ResponseAsk
 from linverify.core.errors import Place
+from linverify.core.mode import ModeAsk
 from linverify.core.signals import nearest
 
 from .claims import Claim
+from .closed import OPEN, Around
 from .delivered import bind_delivered
 from .ground import Ground, listed, whole_ratio
 from .layout import Cell, FileWord, LocalWords, Quantity, ResponseWords, Spec, Word
@@ -47,23 +49,26 @@ class LocalModels:
         """The files that the model of `ask` was read from."""
         return () if ask.delivered is None else self._files[ask.delivered.file]
 
-    def of(self, cell: Cell, sets: Sequence[DriveSet], bands: Sequence[Band]) -> tuple[LocalAsk, tuple[Setting, ...]]:
-        """What is verified in `cell`, and the settings that tell where it comes from."""
+    def of(self, cell: Cell, asked: Asked, around: Around = OPEN) -> tuple[LocalAsk, tuple[Setting, ...]]:
+        """What is verified in `cell`, and the settings that tell where it comes from.
+
+        around: the loops that are closed inside it.
+        """
         source = self.spec.local.source
         if source is None or not self.delivered or cell.skipped:
             if self.keep is not None:
-                self._asked_for(
-                    self.keep.inputs, (*self.keep.states, *self.keep.outputs), self.keep.states, sets, bands, "`keep`"
-                )
-            return LocalAsk(None, self.keep, self.agree), ()
+                compared = (*self.keep.states, *self.keep.outputs)
+                self._asked_for(self.keep.inputs, compared, self.keep.states, asked, "`keep`")
+            return LocalAsk(None, self.keep, self.agree, around.closed), ()
         models = self._models(source, cell)
         claim = self._claim(models, source, cell)
         if claim is None:
-            return LocalAsk(None, self.keep, self.agree), ()
-        model = bind_delivered(self.ground, claim, self.keep)
+            return LocalAsk(None, self.keep, self.agree, around.closed), ()
+        ground = replace(self.ground, more_states=around.states, more_inputs=around.inputs)
+        model = bind_delivered(ground, claim, self.keep, (*around.inputs, *around.moved))
         if model is not None:
-            self._fits(model, sets, bands)
-        return LocalAsk(model, self.keep, self.agree), tuple(self._told(models, cell))
+            self._fits(model, asked)
+        return LocalAsk(model, self.keep, self.agree, around.closed), tuple(self._told(models, cell))
 
     def _models(self, source: FileWord, cell: Cell) -> Models:
         path, shown = place_of(source, cell.name, self.root)
@@ -99,14 +104,14 @@ class LocalModels:
         if unused and cell.name in models.claims:
             yield Setting("local_models.not used", listed(unused, _MOST_TOLD), models.shown)
 
-    def _fits(self, model: DeliveredModel, sets: Sequence[DriveSet], bands: Sequence[Band]) -> None:
+    def _fits(self, model: DeliveredModel, asked: Asked) -> None:
         """What drives and bands ask for, the model must have."""
         states = model.states or ()
-        self._asked_for(model.inputs, (*states, *model.outputs), states, sets, bands, model.file)
+        self._asked_for(model.inputs, (*states, *model.outputs), states, asked, model.file)
         step = model.step
         if step is None:
             return
-        for drives in sets:
+        for drives in asked.sets:
             if whole_ratio(drives.every, step) is None:
                 time_unit = self.ground.plant.time_unit
                 wrong = f"`every`: {units.told(drives.every, time_unit)} is no whole number of sample times"
@@ -118,16 +123,16 @@ class LocalModels:
         inputs: Sequence[str],
         compared: Sequence[str],
         states: Sequence[str],
-        sets: Sequence[DriveSet],
-        bands: Sequence[Band],
+        asked: Asked,
         where: str,
     ) -> None:
         plant = (*self.ground.states, *self.ground.outputs)
-        for band in bands:
+        self._modes(inputs, compared, states, asked.modes, where)
+        for band in asked.bands:
             if band.signal in plant and band.signal not in compared:
                 wrong = f"an error band for {quoted(band.signal)}, which the local model does not have"
                 self.ground.report(band.place, wrong, _has(where, compared))
-        for drives in sets:
+        for drives in asked.sets:
             for name, amplitude in drives.amplitude.items():
                 if name in self.ground.inputs and name not in inputs:
                     wrong = f"the drives move {quoted(name)}, which is no input of the local model"
@@ -140,6 +145,42 @@ class LocalModels:
                 if name in self.ground.states and name not in states:
                     wrong = f"an offset of {quoted(name)}, which is no named state of the local model"
                     self.ground.report(drives.place, wrong, _has(where, states))
+
+    def _modes(
+        self,
+        inputs: Sequence[str],
+        compared: Sequence[str],
+        states: Sequence[str],
+        modes: Sequence[ModeAsk],
+        where: str,
+    ) -> None:
+        """Names in limits on modes that the local model does not have; `at_zero` only counts what it names."""
+        for ask in modes:
+            named = (
+                (
+                    inputs,
+                    (*(name for name, _ in ask.controllable), *ask.inputs, *(each[0] for each in ask.static_gain)),
+                ),
+                (
+                    compared,
+                    (*(name for name, _ in ask.observable), *ask.outputs, *(each[1] for each in ask.static_gain)),
+                ),
+                (states, tuple(name for name, _ in ask.chosen.participates)),
+            )
+            for among, names in named:
+                for name in dict.fromkeys(names):
+                    if name not in among:
+                        wrong = f"`modes`: {quoted(name)} is nothing that the local model has"
+                        self.ground.report(ask.place, wrong, _has(where, among))
+
+
+@dataclass(frozen=True, slots=True)
+class Asked:
+    """What asks for signals of the local model at one point."""
+
+    sets: Sequence[DriveSet]
+    bands: Sequence[Band]
+    modes: Sequence[ModeAsk]
 
 
 def _has(where: str, names: Sequence[str]) -> str:

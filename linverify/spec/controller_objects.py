@@ -55,14 +55,16 @@ class ControllerObjects:
         told = f"`{wiring.called}: controller: object`"
         value = found.value
         if callable(value) and not _parts_of(value):
+            if any(math.isnan(each) for each in wiring.known.values()):
+                return None  # what was refused is told; the function could only stumble over it
             value = called(value, MappingProxyType(dict(wiring.known)))
             if isinstance(value, Raised):
                 self.ground.report(ref.place, f"{told}: {ref.text}: {printable(value)}")
                 return None
         parts = _parts_of(value)
         if not parts:
-            article = "a class" if isinstance(value, type) else f"a {type(value).__name__}"
-            self.ground.report(ref.place, f"{told}: {ref.object!r} gives {article}", _FORMS)
+            kind = "a class" if isinstance(value, type) else f"an object of type {type(value).__name__}"
+            self.ground.report(ref.place, f"{told}: {ref.object!r} gives {kind}", _FORMS)
             return None
         return _Object(self.ground, parts, wiring, ref.place, told).bind()
 

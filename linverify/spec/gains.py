@@ -41,7 +41,7 @@ def _schedule(reader: Reader, called: str, key: Scalar, node: Block) -> Schedule
     if not reader.require(node, SCHEDULE_WORDS, key.place if key.text else node.place, called):
         return None
     table, over = read.get("table"), read.get("over")
-    if table is None or over is None:
+    if table is None or over is None or len(read) < len(node.entries):
         return None
     file = FileWord(table.text, reader.folder(table.place), table.place)
     return Schedule(file, over, read.get("column"), node.place)

@@ -73,8 +73,8 @@ def _rule(ground: Ground, word: Word, called: str) -> tuple[Limit, ...]:
         wrong = f"`{called}`: " + (
             f"{quoted(word.text)} is a rule for modes" if rule else f"no rule {quoted(word.text)}"
         )
-        expected = f"one of {', '.join(names)} is expected"
-        ground.report(word.place, wrong, expected, "" if rule else nearest(word.text, names))
+        hint = "" if rule else nearest(word.text, names)
+        ground.report(word.place, wrong, "" if hint else f"one of {', '.join(names)} is expected", hint)
         return ()
     time_unit = ground.plant.time_unit
     seconds = units.convert(1.0, time_unit, "s") if units.convertible(time_unit, "s") else 1.0
@@ -134,9 +134,9 @@ def _peak(ground: Ground, ask: LimitAsk, quantity: Quantity, word: str) -> Limit
         return None
     lowest = 1.0 if ask.word == "sensitivity_peak" else 0.0
     if ratio < lowest or ratio <= 0.0:
-        least = "0 dB, a ratio of 1," if lowest else "a ratio above 0"
+        least = "0 dB, a ratio of 1, or more" if lowest else "a ratio above 0"
         wrong = f"`{word}`: {quoted(quantity.text)} is less than any loop can keep"
-        ground.report(quantity.place, wrong, f"{least} or more is expected")
+        ground.report(quantity.place, wrong, f"{least} is expected")
         return None
     return Limit(ask.word, high=ratio, place=ask.place, text=ask.text, shown=_in_ratio(quantity))
 

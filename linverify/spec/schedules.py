@@ -67,6 +67,8 @@ class Tables:
         names = (*ground.signals, *ground.plant.parameters)
         if not ground.known(over.text, over.place, names, "a signal or parameter"):
             return None
+        if over.text not in known and not ground.complete:
+            return None  # it may be among what could not be read
         if over.text not in known:
             wrong = f"`{word}: over`: {quoted(over.text)} is found by the trim, and not known beforehand"
             expected = f"a value that is held or swept, or a parameter, is expected: {listed(known)}"

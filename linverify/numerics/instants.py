@@ -6,8 +6,10 @@ at that instant, the local model's a matrix (`core.model.Jump`). Between instant
 
 from __future__ import annotations
 
+import math
 from collections.abc import Callable, Sequence
 from dataclasses import dataclass
+from fractions import Fraction
 
 import numpy as np
 
@@ -15,6 +17,7 @@ from ..core.errors import PlantError
 from ..core.model import Array
 
 SNAP = 1e-9  # of a period: nearer instants are one
+MOST = 1000  # samples of one loop until another acts at the same instant again
 ROUNDING = 1e-13  # of the time since the drive began
 
 
@@ -29,6 +32,11 @@ class Instants:
         """Whether `time` is one of them."""
         count = round((time - self.phase) / self.period)
         return count >= 0 and abs(self.phase + count * self.period - time) <= SNAP * self.period + ROUNDING * time
+
+    def until(self, end: float) -> list[float]:
+        """Those from zero up to `end`, which is left out."""
+        count = math.ceil((end - self.phase) / self.period - SNAP)
+        return [self.phase + index * self.period for index in range(count)]
 
     def phases(self, every: float) -> list[float]:
         """Where they fall within intervals of length `every`, ascending, each within [0, every).
@@ -54,6 +62,17 @@ def related(first: float, second: float) -> bool:
     """Whether one of two times is a whole multiple of the other."""
     long, short = max(first, second), min(first, second)
     return abs(round(long / short) * short - long) <= SNAP * long
+
+
+def common_multiple(periods: Sequence[float]) -> float:
+    """The shortest time that is a whole multiple of every period. Raises ValueError where there is no short one."""
+    found = periods[0]
+    for period in periods[1:]:
+        share = Fraction(found / period).limit_denominator(MOST)
+        if abs(float(share) * period - found) > SNAP * found:
+            raise ValueError(f"sample times of {found:.6g} and {period:.6g} have no short common multiple")
+        found *= share.denominator
+    return found
 
 
 def updated(

@@ -19,7 +19,14 @@ from ..core.model import Array
 from .allpass import all_pass
 from .instants import SNAP, Instants
 
-Event = tuple[Instants, Literal["read", "sample", "hold"], int]
+
+@dataclass(frozen=True, slots=True)
+class Event:
+    """Something that a sampled controller does at instants: read a late measurement, act, or put out a late output."""
+
+    instants: Instants
+    kind: Literal["read", "sample", "hold"]
+    channel: int = 0
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -111,9 +118,9 @@ class Controlled:
         period = self.loop.sample
         if period is None:
             return []
-        reads: list[Event] = [(Instants(period, late.phase), "read", at) for at, late in enumerate(self.heard)]
-        holds: list[Event] = [(Instants(period, late.phase), "hold", at) for at, late in enumerate(self.told)]
-        return [*reads, (Instants(period), "sample", 0), *holds]
+        reads = [Event(Instants(period, late.phase), "read", at) for at, late in enumerate(self.heard)]
+        holds = [Event(Instants(period, late.phase), "hold", at) for at, late in enumerate(self.told)]
+        return [*reads, Event(Instants(period), "sample"), *holds]
 
     def read(self, a: Array, y: Array, at: int, into: Array) -> None:
         """Put a measurement into its queue."""

@@ -18,8 +18,8 @@ from ..core.delivered import Delays
 from ..core.errors import PlantError
 from ..core.loop import Actuator, Loop
 from ..core.model import Array
-from .instants import Instants
-from .looped import Controlled, controlled
+from .instants import SNAP, Instants, common_multiple
+from .looped import Controlled, Event, controlled
 
 MOST = 40  # corrections of an algebraic loop before it counts as without solution
 EXACT, GOOD = 1e-13, 1e-9  # of the sizes that enter: where corrections end, and what must be reached
@@ -266,36 +266,44 @@ class Whole:
         return self.settle(t, inside, a, w)[1].inputs
 
     def updates(self) -> list[tuple[Instants, Jumps]]:
-        """Instants and jumps (t, x, w) -> x, in the order in which they act: readings, then outer before inner."""
-        readings: list[tuple[Instants, Jumps]] = []
-        samples: list[tuple[Instants, Jumps]] = []
-        for at, one in enumerate(self.wiring.controlled):
-            for instants, kind, channel in one.events():
-                (readings if kind == "read" else samples).append((instants, _Jump(self, at, kind, channel)))
-        return [*readings, *samples]
+        """What sampled controllers do: all that happens at one instant is one jump (t, x, w) -> x.
+
+        The pattern repeats after the common multiple of all sample times, which is the period of every jump.
+        """
+        events = [(event, at) for at, one in enumerate(self.wiring.controlled) for event in one.events()]
+        # values are put into queues before anything acts on them; then outer loops come before inner ones
+        events.sort(key=lambda pair: pair[0].kind != "read")
+        if not events:
+            return []
+        common = common_multiple([event.instants.period for event, _ in events])
+        times = sorted(time for event, _ in events for time in event.instants.until(common))
+        found: list[tuple[Instants, Jumps]] = []
+        for before, time in zip([-np.inf, *times], times, strict=False):
+            if time - before > SNAP * common:
+                due = tuple((event, at) for event, at in events if event.instants.due(time))
+                found.append((Instants(common, time), _Jump(self, due)))
+        return found
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class _Jump:
-    """One event of one sampled loop."""
+    """What happens at one instant: everything is measured just before, then each event acts, in order."""
 
     whole: Whole
-    at: int
-    kind: str
-    channel: int
+    due: tuple[tuple[Event, int], ...]
 
     def __call__(self, t: float, x: Array, w: Array) -> Array:
-        inside, a = self.whole.split(x)
-        one, after = self.whole.wiring.controlled[self.at], np.array(x)
-        added = after[self.whole.inner.n :]
-        if self.kind == "hold":
-            one.hold(a, self.channel, added)
-            return after
-        y, flow = self.whole.settle(t, inside, a, w)
-        if self.kind == "read":
-            one.read(a, y, self.channel, added)
-        else:
-            one.sample(a, flow.errors[self.at], added)
+        wiring, after = self.whole.wiring, np.array(x)
+        inside, a = self.whole.split(after)
+        y, _ = self.whole.settle(t, inside, a, w)
+        for event, at in self.due:
+            one, now = wiring.controlled[at], a.copy()
+            if event.kind == "hold":
+                one.hold(now, event.channel, a)
+            elif event.kind == "read":
+                one.read(now, y, event.channel, a)
+            else:
+                one.sample(now, wiring.flow(now, w, y).errors[at], a)
         return after
 
 

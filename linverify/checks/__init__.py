@@ -33,5 +33,6 @@ TABLE = {
         Row("differentiable", ("trim",)),
         Row("agrees", ("trim", "reference")),
         Row("follows", ("trim", "model")),
+        Row("margins", ("trim", "model")),
     )
 }

@@ -1,0 +1,159 @@
+"""The limits of a loop's `require` against what was measured: one figure for each, in the unit that the spec wrote."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator
+from dataclasses import dataclass, replace
+
+from ..core.case import Case
+from ..core.loop import Limit, Loop
+from ..core.shown import Shown
+from ..core.verdict import Figure, Sense, Status
+from ..numerics.loop_margins import LoopMargins, in_s
+from ..numerics.margins import Found
+
+PER_NEPER = 20.0 / math.log(10.0)
+
+
+@dataclass(frozen=True, slots=True)
+class Ask:
+    """One figure that a limit asks for.
+
+    sense: which side of `bound` is good; value: what was measured, in the plant's units; ratio: told in dB where the
+    limit is written so.
+    """
+
+    what: str
+    channel: str
+    value: Found
+    bound: float
+    sense: Sense
+    unit: str = ""
+    ratio: bool = False
+
+
+def figures(case: Case, loop: Loop, found: LoopMargins) -> tuple[list[Figure], list[str]]:
+    """A figure for every limit, channel by channel where that is how it is meant; words that no figure answers."""
+    made: list[Figure] = []
+    silent = []
+    for limit in loop.require:
+        some = [_figure(case, limit, ask) for ask in asked(case, limit, found)]
+        if not some and limit.word != "crossover":  # a loop without a crossover is told apart
+            silent.append(limit.word)
+        made += some
+    return made, silent
+
+
+def asked(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
+    """What one word asks for."""
+    several = len(found.channels) > 1
+    for channel in found.channels:
+        one, name = channel.margins, channel.name if several else ""
+        if limit.word == "gain_margin":
+            yield Ask("gain margin (upwards)", name, one.gain_up, limit.low, Sense.LOWER, ratio=True)
+            yield Ask("gain margin (downwards)", name, _inverse(one.gain_down), limit.low, Sense.LOWER, ratio=True)
+        elif limit.word == "phase_margin":
+            yield Ask("phase margin", name, one.phase, limit.low, Sense.LOWER, "rad")
+        elif limit.word == "delay_margin":
+            yield Ask("delay margin", name, one.delay, limit.low, Sense.LOWER, case.plant.time_unit)
+        elif limit.word == "crossover":
+            yield from _crossovers(
+                case, name, limit, [Found(e.frequency, e.frequency, e.shift) for e in one.crossovers]
+            )
+    if limit.word in ("disk_margin", "sensitivity_peak", "complementary_peak"):
+        yield _joint(limit, found)
+    elif limit.word == "damping":
+        yield Ask("closed-loop damping ratio", "", least_damping(found), limit.low, Sense.LOWER)
+
+
+def _joint(limit: Limit, found: LoopMargins) -> Ask:
+    """What is meant for all channels at once."""
+    if found.joint is None:
+        one = found.channels[0].margins
+        disk, sensitivity, complementary = one.disk, one.sensitivity, one.complementary
+    else:
+        bounded = found.joint.at_input if found.at_input else found.joint.at_output
+        disk = Found(bounded.low, bounded.frequency, 0.0)
+        sensitivity, complementary = found.joint.sensitivity, found.joint.complementary
+    if limit.word == "disk_margin":
+        return Ask("disk margin", "", disk, limit.low, Sense.LOWER)
+    peak = sensitivity if limit.word == "sensitivity_peak" else complementary
+    return Ask(limit.word.replace("_", " "), "", peak, limit.high, Sense.UPPER, ratio=True)
+
+
+def _crossovers(case: Case, name: str, limit: Limit, crossings: list[Found]) -> Iterator[Ask]:
+    unit = f"rad/{case.plant.time_unit}"
+    if not crossings:
+        return
+    if limit.low > 0.0:
+        yield Ask("lowest crossover", name, min(crossings, key=lambda e: e.value), limit.low, Sense.LOWER, unit)
+    if math.isfinite(limit.high):
+        yield Ask("highest crossover", name, max(crossings, key=lambda e: e.value), limit.high, Sense.UPPER, unit)
+
+
+def _inverse(factor: Found) -> Found:
+    if factor.value == 0.0:
+        return Found(math.inf, factor.frequency)
+    return Found(1.0 / factor.value, factor.frequency, factor.error / factor.value**2)
+
+
+def least_damping(found: LoopMargins) -> Found:
+    """The smallest damping ratio of the poles that the loop moves and that oscillate; one where none does."""
+    worst = Found(1.0)
+    if found.poles is None:
+        return Found(math.nan)
+    for value, error in zip(found.poles.values, found.poles.error, strict=True):
+        s = in_s(complex(value), found.loop.step)
+        if s.imag == 0.0 or math.isinf(abs(s)):
+            continue
+        damping, natural = -s.real / abs(s), abs(s)
+        if damping < worst.value:
+            # of a sampled loop the error is one of |z|, a distance of log(|z|) / step
+            worst = Found(damping, natural, float(error) / (natural * abs(value if found.loop.step else 1.0)
+                          * (found.loop.step or 1.0)))  # fmt: skip
+    return worst
+
+
+def _figure(case: Case, limit: Limit, ask: Ask) -> Figure:
+    shown = limit.shown or Shown(ask.unit)
+    worst, bound, error = _in_unit(shown, ask)
+    return Figure(
+        ask.what, ask.channel, worst, bound, shown.unit, ask.sense, error, origin=_origin(limit),
+        status=status_of(ask.value, ask.bound, ask.sense, limit.strict), at_frequency=ask.value.frequency,
+        frequency_unit="" if math.isnan(ask.value.frequency) else f"rad/{case.plant.time_unit}",
+    )  # fmt: skip
+
+
+def _in_unit(shown: Shown, ask: Ask) -> tuple[float, float, float]:
+    value, error = ask.value.value, ask.value.error
+    if not ask.ratio:
+        return shown.size(value), shown.size(ask.bound), shown.size(error)
+    if shown.unit == "dB":
+        error = PER_NEPER * error / value if value > 0.0 and math.isfinite(value) else 0.0
+        return shown.ratio(value), shown.ratio(ask.bound), error
+    return shown.ratio(value), shown.ratio(ask.bound), shown.size(error)
+
+
+def _origin(limit: Limit) -> str:
+    return ", ".join(part for part in (str(limit.place), limit.rule and f"rule {limit.rule}") if part)
+
+
+def status_of(found: Found, bound: float, sense: Sense, strict: bool = False) -> Status:
+    """Inside beyond the error, outside beyond the error, or neither."""
+    if math.isnan(found.value) or math.isnan(found.error):
+        return Status.UNDECIDED
+    if math.isinf(found.value):
+        inside = math.inf if (found.value > 0) == (sense is Sense.LOWER) else -math.inf
+    else:
+        inside = found.value - bound if sense is Sense.LOWER else bound - found.value
+    if inside < -found.error or (strict and inside <= 0.0 == found.error):
+        return Status.FAIL
+    if inside - found.error > 0.0 or (not strict and inside - found.error >= 0.0):
+        return Status.PASS
+    return Status.UNDECIDED
+
+
+def with_error(found: Found, more: float) -> Found:
+    """The same with an error that is larger by `more`."""
+    return replace(found, error=found.error + more)

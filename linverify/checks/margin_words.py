@@ -1,0 +1,83 @@
+"""Sentences on loops: what is unstable, what the loop does not move, which limit is broken."""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+
+from ..core.case import Case
+from ..core.loop import Loop
+from ..core.shown import number, with_unit
+from ..core.verdict import Figure, Sense, Status
+from ..numerics.loop_margins import LoopMargins, in_s
+from ..numerics.unmoved import Unmoved
+
+WRONG_WAY = "the loop is closed the wrong way round: unstable; with the opposite sign it would be stable"
+
+
+def undecided(one: LoopMargins) -> str:
+    """Why a loop has no margins that could be told."""
+    return f"{one.outcome.value}: {one.why}" if one.why else one.outcome.value
+
+
+def unstable(one: LoopMargins, time_unit: str) -> str:
+    """The closed loop is unstable: pole 0.31 +- 2.1j per s (time to double 2.24 s)."""
+    poles = "; ".join(_poles([in_s(value, one.loop.step) for value in one.unstable], time_unit))
+    return f"{WRONG_WAY} ({poles})" if one.opposite else f"the closed loop is unstable: {poles}"
+
+
+def unmoved(poles: Sequence[Unmoved], step: float | None) -> str:
+    """Poles that nobody stabilizes."""
+    told = []
+    for pole in poles:
+        value = in_s(pole.value, step)
+        states = " and ".join(name for name, share in pole.shares[:2] if share >= 0.1)
+        told.append(f"{complex_told(value)}{f' of {states}' if states else ''}")
+    told = list(dict.fromkeys(told))
+    which, they = ("pole", "it is") if len(told) == 1 else ("poles", "they are")
+    return f"the loop does not move the {which} {', '.join(told)}, and {they} not stable (`leaves` does not name it)"
+
+
+def complex_told(value: complex) -> str:
+    """0.31 +- 2.1j for a pair, 0.31 for a real pole."""
+    real = number(value.real, 4)
+    return real if value.imag == 0 else f"{real} +- {number(abs(value.imag), 4)}j"
+
+
+def _poles(values: Sequence[complex], time_unit: str) -> list[str]:
+    told = []
+    for value in values:
+        text = f"pole {complex_told(value)} per {time_unit}"
+        if value.real > 0:
+            text += f" (time to double {with_unit(number(math.log(2.0) / value.real, 4), time_unit)})"
+        told.append(text)
+    return list(dict.fromkeys(told))
+
+
+def without_crossover(case: Case, loop: Loop, one: LoopMargins) -> list[tuple[Status, str]]:
+    """Channels whose gain never crosses one though `crossover` asks where."""
+    if not any(limit.word == "crossover" for limit in loop.require):
+        return []
+    silent = [channel for channel in one.channels if channel.moves and not channel.margins.crossovers]
+    several = len(one.channels) > 1
+    return [
+        (Status.FAIL, f"{f'{each.name}: ' if several else ''}the gain of the loop never crosses one") for each in silent
+    ]
+
+
+def figure(figure: Figure) -> str:
+    """phase margin of fore_flap is 31 deg at 3.2 rad/s, at least 45 deg are asked for."""
+    subject = f"{figure.what} of {figure.signal}" if figure.signal else figure.what
+    if math.isnan(figure.worst):
+        return f"{subject} could not be found"
+    where = "" if math.isnan(figure.at_frequency) else f" at {_told(figure.at_frequency, figure.frequency_unit)}"
+    text = f"{subject} is {_told(figure.worst, figure.unit)}{where}"
+    if figure.status is Status.UNDECIDED:
+        text += f", known to {_told(figure.error, figure.unit, 2)}"
+    side = "at least" if figure.sense is Sense.LOWER else "at most"
+    return f"{text}; {side} {_told(figure.limit, figure.unit)} is asked for"
+
+
+def _told(value: float, unit: str, digits: int = 4) -> str:
+    text = "infinite" if math.isinf(value) else number(value, digits)
+    return with_unit(text, "" if math.isinf(value) else unit)

@@ -1,0 +1,112 @@
+"""margins.LOOP: the closed loop is stable, and every margin that its `require` asks for is kept, at every crossing.
+
+Stability comes first: an unstable loop has no margins and fails, with its poles named. Poles that the loop cannot move
+are told apart; one on or right of the axis fails as well, unless `leaves` names a state that dominates its mode. A loop
+that moves nothing would pass whatever was asked: it is undecided. What beside its figures is told, and in what form, is
+written in `margin_details`.
+"""
+
+from __future__ import annotations
+
+from collections.abc import Sequence
+from dataclasses import dataclass, field
+from typing import Any
+
+from ..core.case import CheckAsk
+from ..core.loop import Loop
+from ..core.verdict import Figure, Status, Verdict, merged
+from ..numerics.closing import RefusedError, Setup, opened
+from ..numerics.loop_margins import LoopMargins, measured
+from ..numerics.poles import AT_ZERO
+from ..numerics.unmoved import Unmoved
+from . import margin_details, margin_words
+from .margin_figures import figures
+from .study import Study
+
+DOMINATES = 0.5  # share of the states that `leaves` names in a mode from which on it is theirs
+
+
+@dataclass(slots=True)
+class _Found:
+    """What one loop came to. Mutable: each part adds its own."""
+
+    figures: list[Figure] = field(default_factory=list)
+    reasons: list[tuple[Status, str]] = field(default_factory=list)
+    notes: list[str] = field(default_factory=list)
+    details: dict[str, Any] = field(default_factory=dict)
+
+    @property
+    def status(self) -> Status:
+        """The worst of all; a loop without a single limit is judged on its stability."""
+        return merged([Status.PASS, *(figure.status for figure in self.figures), *(each for each, _ in self.reasons)])
+
+
+def check(study: Study, ask: CheckAsk) -> Verdict:
+    """The verdict on one loop at one operating point."""
+    case, loop, found = study.case, study.case.loops[ask.loop], _Found()
+    try:
+        _judge(study, loop, found)
+    except RefusedError as refusal:
+        found.reasons.append((Status.UNDECIDED, str(refusal)))
+    status = found.status
+    told = [text for its, text in found.reasons if its is status]
+    told += [margin_words.figure(figure) for figure in found.figures if figure.status is status]
+    return Verdict(
+        case.spec, case.point, ask.name, status, ask.place, "" if status is Status.PASS else "; ".join(told),
+        tuple(found.figures), tuple(found.notes), details=found.details,
+    )  # fmt: skip
+
+
+def setup(study: Study, name: str) -> Setup:
+    """What the loop is closed around. Raises RefusedError where there is no such model."""
+    case, local = study.case, study.case.local
+    if name in local.closed and local.delivered is not None:
+        # the delivered model has this loop inside: margins are those of the plant's own slopes
+        if unmet := study.unmet("derived"):
+            raise RefusedError(unmet)
+        return Setup(study.derived(), case.loops, case.actuators, case.delays, tick=case.plant.step)
+    inside = () if name in local.closed else local.closed
+    closed, also = (inside, ()) if local.delivered is not None else ((), inside)
+    return Setup(study.model(), case.loops, case.actuators, case.delays, closed, also, case.plant.step)
+
+
+def _judge(study: Study, loop: Loop, found: _Found) -> None:
+    case = study.case
+    broken = opened(setup(study, loop.name), loop.name)
+    one = measured(broken, loop.break_at == "plant_input")
+    excused = _unmoved(loop, one, found)
+    found.details["margins"] = margin_details.told(case, loop, broken, one, excused)
+    if one.trivial:
+        found.reasons.append((Status.UNDECIDED, "the loop moves nothing: any limit on its margins would be kept"))
+        return
+    if not one.outcome.done:
+        found.reasons.append((Status.UNDECIDED, margin_words.undecided(one)))
+        return
+    if not one.stable:
+        found.reasons.append((Status.FAIL, margin_words.unstable(one, case.plant.time_unit)))
+        return
+    for channel in one.channels:
+        if not channel.moves:
+            found.reasons.append((Status.UNDECIDED, f"{channel.name} has no effect on itself around the loop"))
+    made, silent = figures(case, loop, one)
+    found.figures += made
+    found.reasons += [(Status.UNDECIDED, f"{word.replace('_', ' ')} could not be found") for word in silent]
+    found.reasons += margin_words.without_crossover(case, loop, one)
+
+
+def _unmoved(loop: Loop, one: LoopMargins, found: _Found) -> Sequence[bool]:
+    """Judge the poles that the loop does not move; whether `leaves` covers each."""
+    covered = [sum(share for name, share in pole.shares if name in loop.leaves) >= DOMINATES for pole in one.unmoved]
+    loose = [pole for pole, its in zip(one.unmoved, covered, strict=True) if not its and not _stable(one, pole)]
+    if loose:
+        found.reasons.append((Status.FAIL, margin_words.unmoved(loose, one.loop.step)))
+    return covered
+
+
+def _stable(one: LoopMargins, pole: Unmoved) -> bool:
+    """Left of the axis by more than rounding."""
+    if one.loop.step is not None:
+        return abs(pole.value) < 1.0 - AT_ZERO
+    sizes = [abs(each.value) for each in one.unmoved]
+    sizes += [] if one.poles is None else [abs(complex(value)) for value in one.poles.values]
+    return pole.value.real < -max(AT_ZERO * abs(pole.value), 1e-12 * max(sizes))

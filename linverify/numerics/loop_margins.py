@@ -1,0 +1,177 @@
+"""Everything that is measured on one loop, broken open: stability, and the margins of its channels one by one and all
+at once. Poles that the loop cannot move are set apart first, so that none of them can pass for the loop's own.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Sequence
+from dataclasses import dataclass, replace
+
+import numpy as np
+
+from ..core.model import Array
+from ..core.outcome import Outcome
+from .closing import Opened
+from .interconnect import IllPosedError, solved
+from .loop_stability import Poles, of_matrix
+from .margins import Found, Margins, margins
+from .multiloop import Multiloop, both_sides, multiloop
+from .structured import Bounded
+from .transfer import Transfer
+from .unmoved import Unmoved, split
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Channel:
+    """One channel of the break with the others closed. moves: False where it has no effect on itself at all."""
+
+    name: str
+    loop: Transfer
+    margins: Margins
+    moves: bool = True
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class Joint:
+    """All channels at once: at the break, and disk margins at the plant's input, at its output and at both."""
+
+    sensitivity: Found
+    complementary: Found
+    at_input: Bounded
+    at_output: Bounded
+    at_both: Bounded
+
+
+@dataclass(frozen=True, slots=True, eq=False)
+class LoopMargins:
+    """What was measured.
+
+    why: the reason where margins could not be found; loop: the loop transfer function without what it does not move;
+    poles: of the closed loop, without dead time; unstable: those, in s per time unit (sampled: in z), that are surely
+    unstable; edge: those of which rounding leaves that open; opposite: closed with the opposite sign it would be
+    stable; trivial: the loop moves nothing. channels, joint: of a stable loop; joint: only of several channels.
+    """
+
+    loop: Transfer
+    unmoved: tuple[Unmoved, ...] = ()
+    outcome: Outcome = Outcome.DONE
+    why: str = ""
+    trivial: bool = False
+    stable: bool = False
+    poles: Poles | None = None
+    unstable: tuple[complex, ...] = ()
+    edge: tuple[complex, ...] = ()
+    opposite: bool = False
+    channels: tuple[Channel, ...] = ()
+    joint: Joint | None = None
+    at_input: bool = True
+
+
+def measured(opened: Opened, at_input: bool) -> LoopMargins:
+    """Measure a loop, broken at the plant's input or at its output."""
+    whole, states = (opened.plant_input, opened.states_in) if at_input else (opened.plant_output, opened.states_out)
+    parts = split(whole, states)
+    loop = parts.moved
+    if not len(loop.A) and not loop.D.any():
+        return LoopMargins(loop, parts.unmoved, trivial=True)
+    if len(loop.D) == 1:
+        return replace(_single(loop, parts.unmoved), at_input=at_input)
+    return replace(_several(opened, loop, parts.unmoved), at_input=at_input)
+
+
+def _single(loop: Transfer, unmoved: tuple[Unmoved, ...]) -> LoopMargins:
+    found = margins(loop)
+    channel = Channel(loop.inputs[0], loop, found)
+    return LoopMargins(
+        loop, unmoved, found.outcome, found.why, False, found.stable, closed_poles(loop), found.unstable, (),
+        found.opposite_stable, (channel,) if found.stable else (),
+    )  # fmt: skip
+
+
+def _several(opened: Opened, loop: Transfer, unmoved: tuple[Unmoved, ...]) -> LoopMargins:
+    if loop.delay:
+        why = "several channels with a dead time: each would lie inside the other ones, which are closed"
+        return LoopMargins(loop, unmoved, Outcome.DELAY_NOT_DECIDED, why)
+    poles = closed_poles(loop)
+    if poles is None:
+        return LoopMargins(loop, unmoved, Outcome.ILL_POSED)
+    if not poles.stable:
+        opposite = closed_poles(loop, -1.0)
+        unstable = tuple(complex(value) for value in poles.values[poles.unstable])
+        edge = tuple(complex(value) for value in poles.values[poles.undecided])
+        outcome = Outcome.DONE if unstable else Outcome.ON_THE_EDGE
+        return LoopMargins(
+            loop, unmoved, outcome, "", False, False, poles, unstable, edge, opposite is not None and opposite.stable
+        )
+    channels = tuple(_channel(loop, j) for j in range(len(loop.inputs)))
+    joint = _joint(opened, multiloop(loop))
+    outcome = next((one.margins.outcome for one in channels if not one.margins.outcome.done), Outcome.DONE)
+    return LoopMargins(loop, unmoved, outcome, "", False, True, poles, (), (), False, channels, joint)
+
+
+def _joint(opened: Opened, here: Multiloop) -> Joint:
+    there = [multiloop(_moved(loop, names)) for loop, names in _breaks(opened)]
+    return Joint(
+        Found(here.sensitivity.value, here.sensitivity.frequency, here.sensitivity.error),
+        Found(here.complementary.value, here.complementary.frequency, here.complementary.error),
+        there[0].disk, there[1].disk, both_sides(opened.plant, opened.controller),
+    )  # fmt: skip
+
+
+def _breaks(opened: Opened) -> Sequence[tuple[Transfer, Sequence[str]]]:
+    return ((opened.plant_input, opened.states_in), (opened.plant_output, opened.states_out))
+
+
+def _moved(loop: Transfer, names: Sequence[str]) -> Transfer:
+    return split(loop, names).moved
+
+
+def _channel(loop: Transfer, j: int) -> Channel:
+    try:
+        alone = split(one_channel(loop, j), [str(k) for k in range(len(loop.A))]).moved
+    except IllPosedError:
+        return Channel(loop.inputs[j], loop, Margins(Outcome.ILL_POSED))
+    if not len(alone.A) and not alone.D.any():
+        return Channel(loop.inputs[j], alone, Margins(Outcome.DONE, stable=True), False)
+    return Channel(loop.inputs[j], alone, margins(alone))
+
+
+def one_channel(loop: Transfer, j: int) -> Transfer:
+    """The loop transfer function of channel `j` with the other channels closed by u = -y. Raises IllPosedError."""
+    rest = [k for k in range(len(loop.inputs)) if k != j]
+    B, C, D = loop.B[:, rest], loop.C[rest], loop.D[np.ix_(rest, rest)]
+    inside = solved(D, np.hstack([C, loop.D[rest][:, [j]]]))  # what the closed channels give, for states and input
+    states, fed = inside[:, :-1], inside[:, -1:]
+    return Transfer(
+        loop.A - B @ states,
+        loop.B[:, [j]] - B @ fed,
+        loop.C[[j]] - loop.D[[j]][:, rest] @ states,
+        loop.D[[j]][:, [j]] - loop.D[[j]][:, rest] @ fed,
+        loop.delay, loop.step, (loop.inputs[j],), (loop.outputs[j],),
+    )  # fmt: skip
+
+
+def closed_poles(loop: Transfer, sign: float = 1.0) -> Poles | None:
+    """Poles of the loop closed by u = -sign y, without its dead time; None where it is ill-posed or has one."""
+    if loop.delay:
+        return None
+    try:
+        A = closed_matrix(loop, sign)
+    except IllPosedError:
+        return None
+    return of_matrix(A if loop.step is None else A - np.eye(len(A)), loop.step)
+
+
+def closed_matrix(loop: Transfer, sign: float = 1.0) -> Array:
+    """A of the loop closed by u = -sign y. Raises IllPosedError."""
+    return np.asarray(loop.A - sign * loop.B @ solved(sign * loop.D, loop.C))
+
+
+def in_s(value: complex, step: float | None) -> complex:
+    """A pole per time unit: log(z) / step of a sampled one; minus infinity for z = 0."""
+    if step is None:
+        return value
+    if value == 0:
+        return complex(-math.inf)
+    return complex(math.log(abs(value)) / step, math.atan2(value.imag, value.real) / step)

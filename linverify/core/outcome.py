@@ -24,6 +24,8 @@ class Outcome(Enum):
     INACCURATE = "the integration did not reach the accuracy that the error bands ask for"
     TOO_MANY_STEPS = "the integration needed more steps than the budget allows"
     DIVERGED = "the plant left every bound before the envelope could end the comparison"
+    DEAD_TIMES = "dead times of this kind have no exact method here"
+    AT_NYQUIST = "a sampled model has a pole at z = -1, where it alternates for ever"
     BUDGET = "the budget of plant evaluations was used up"
     ILL_POSED = "the loop has no solution: one plus its feedthrough is zero"
     ON_THE_EDGE = "a closed-loop pole lies on the boundary of stability to within rounding"

@@ -20,6 +20,7 @@ from .transfer import Transfer
 
 Complex = NDArray[np.complex128]
 ON_AXIS = 64 * 2.0**-52  # of |A| times the condition of a pole: what rounding may move it by
+TOGETHER, ROOTED = 1e-3, 1e-8  # of |pole| and of |A|: most that rounding is taken to move poles that coincide
 SMALLEST = 1e-11  # of the sizes of B and C: a pole with a smaller residue is not in the transfer function
 AT_NYQUIST = 1e-14  # of the size of A: a smaller singular value of A + I is a pole at z = -1
 
@@ -65,13 +66,27 @@ class Mapped:
         """Poles that lie on the imaginary axis to within rounding and are seen in the response."""
         if len(self.A) == 0:
             return np.zeros(0, dtype=np.complex128)
-        values, right = np.linalg.eig(self.A)
-        left = _left(values, self.A)
-        match = np.maximum(np.abs(np.sum(np.conj(left) * right, axis=0)), 2.0**-52)
-        on = np.abs(values.real) <= ON_AXIS * float(np.linalg.norm(self.A)) / match
+        values, right, left, match = eigen(self.A)
         moved = np.linalg.norm(np.conj(left.T) @ self.B, axis=1) / (float(np.linalg.norm(self.B)) or 1.0)
         seen = np.linalg.norm(self.C @ right, axis=0) / (float(np.linalg.norm(self.C)) or 1.0)
-        return np.asarray(values[on & (moved * seen > SMALLEST * match)], dtype=np.complex128)
+        on = near_axis(self.A, values, match) & (moved * seen > SMALLEST * match)
+        return np.asarray(values[on], dtype=np.complex128)
+
+
+def eigen(A: Array) -> tuple[Complex, Complex, Complex, Array]:
+    """Eigenvalues (n,), right and left eigenvectors of unit length as columns, and |left^H right| (n,) of each pair."""
+    values, right = np.linalg.eig(A)
+    left = _left(values, A)
+    match = np.maximum(np.abs(np.sum(np.conj(left) * right, axis=0)), 2.0**-52)
+    return values.astype(np.complex128), right.astype(np.complex128), left, match
+
+
+def near_axis(A: Array, values: Complex, match: Array) -> NDArray[np.bool_]:
+    """Which eigenvalues rounding may have moved across the imaginary axis; arguments from `eigen`."""
+    size = float(np.linalg.norm(A))
+    # of poles that coincide the condition grows without bound, and what rounding does to them does not
+    most = np.maximum(TOGETHER * np.abs(values), ROOTED * size)
+    return np.asarray(np.abs(values.real) <= np.minimum(ON_AXIS * size / match, most))
 
 
 def mapped(transfer: Transfer) -> Mapped:

@@ -9,11 +9,10 @@ perturbations (Seiler, Packard & Gahinet, IEEE Control Systems Magazine 40(5), 2
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
-from ..core.model import Array
 from ..core.outcome import Outcome
 from .mapped import mapped
 from .peak_gain import Peak, peak
@@ -60,10 +59,9 @@ def multiloop(loop: Transfer) -> Multiloop:
     unstable = unstable_poles(S)
     if unstable:
         return Multiloop(Outcome.DONE, False, unstable, _UNSTABLE, _UNSTABLE, _NO_DISK)
-    eye = np.eye(len(loop.D))
-    T = Transfer(S.A, S.B, -S.C, eye - S.D, step=S.step)
-    centred: Array = np.asarray(S.D - 0.5 * eye, dtype=np.float64)
-    difference = Transfer(S.A, S.B, S.C, centred, step=S.step)
+    eye = np.eye(len(loop.D), dtype=np.float64)
+    T = replace(S, C=-S.C, D=np.asarray(eye - S.D, dtype=np.float64))
+    difference = replace(S, D=np.asarray(S.D - 0.5 * eye, dtype=np.float64))
     return Multiloop(Outcome.DONE, True, (), peak(S), peak(T), disk(difference))
 
 
@@ -95,7 +93,7 @@ def sensitivity(loop: Transfer) -> Transfer | None:
     whole = np.eye(len(loop.D)) + loop.D
     if len(whole) and np.linalg.norm(whole, -2) <= ILL_POSED * np.linalg.norm(whole, 2):
         return None
-    E = np.linalg.inv(whole)
+    E = np.asarray(np.linalg.inv(whole), dtype=np.float64)
     return Transfer(loop.A - loop.B @ E @ loop.C, loop.B @ E, -E @ loop.C, E, step=loop.step)
 
 

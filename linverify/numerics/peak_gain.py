@@ -25,6 +25,7 @@ NEAR = 1e-3  # of the modulus: an eigenvalue this far from the axis is still loo
 ROUNDS, POINTS, SHRINK = 14, 9, 3.0  # polishing: each round looks at so many points, then at a third of the stretch
 LEVELS = 40  # most levels of a climb; three or four are usual
 SINGULAR = 1e-3  # level above the largest singular value of D, relative: nearer to it no Hamiltonian matrix is formed
+NOTHING = 1e-150  # a response of this size is none, and no level can be set below it
 MANY = 200_000  # complex numbers solved at once
 
 
@@ -68,6 +69,8 @@ def climb(system: Mapped) -> tuple[float, float, bool]:
     value, where = _best(omega, sizes)
     value, where = _better((value, where), _polished(system, poles, _tops(omega, sizes)))
     for _ in range(LEVELS):
+        if value < NOTHING:
+            return value, where, True
         level = value * (1.0 + RISE)
         looked = looked_at(system, level)
         found = _best(looked, gains(system, looked))

@@ -44,7 +44,7 @@ class Gap:
 class StabilityMargin:
     """b(P, C) = 1 / ||[P; 1] (1 + K P)^-1 [K 1]||, from 0 to 1.
 
-    value: 0 where the closed loop is unstable; frequency: rad per time unit, where the norm is met; error: of the value.
+    value: 0 where the closed loop is unstable; frequency: rad per time unit, where it is met; error: of the value.
     """
 
     value: float

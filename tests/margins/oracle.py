@@ -25,6 +25,10 @@ CHUNK = 20_000
 GOLDEN = (math.sqrt(5.0) - 1.0) / 2.0
 
 
+class TooFineError(ValueError):
+    """The dead time turns the phase too often for a scan."""
+
+
 @dataclass(frozen=True)
 class Loop:
     """A (n, n), B (n,), C (n,), D of one loop; dead time and sample time in its time unit."""
@@ -291,17 +295,20 @@ def growth(loop: Loop, roots: np.ndarray) -> np.ndarray:
     return np.log1p(roots.real * 2.0 + np.abs(roots) ** 2) / 2.0
 
 
-def encirclements(loop: Loop, w: np.ndarray) -> int:
+def encirclements(loop: Loop) -> int:
     """Roots of 1 + L right of the axis: turns of (1 + L) prod (s - p) / (s + c)^n, which has no poles there.
 
-    Steps of phase above half a radian are halved until none is left. Needs |D| < 1 with a dead time.
+    Steps of phase above half a radian are halved until none is left. With a dead time (|D| < 1 then) the turning L is
+    left out from where |L| stays below one: 1 + L cannot turn about zero there.
     """
     poles = np.diag(loop.triangular[0])
     corner = float(np.exp(np.log(np.abs(poles[poles != 0])).mean())) if np.any(poles != 0) else 1.0
+    w, last = turns_grid(loop)
 
     def turned(w: np.ndarray) -> np.ndarray:
-        s = 1j * w
-        value = 1.0 + loop.response(w)
+        s = loop.variable(w)
+        value = np.ones(w.shape, complex)
+        value[w <= last] += loop.response(w[w <= last])
         value /= np.abs(value)
         for pole in poles:
             value = value * (s - pole) / np.abs(s - pole) * np.exp(-1j * np.angle(s + corner))
@@ -317,6 +324,19 @@ def encirclements(loop: Loop, w: np.ndarray) -> int:
         w, value = np.insert(w, wide + 1, middle), np.insert(value, wide + 1, turned(middle))
     turn = float(np.angle(value[1:] / value[:-1]).sum())
     return -round((turn - float(np.angle(value[-1])) + from_real(value[0])) / math.pi)
+
+
+def turns_grid(loop: Loop) -> tuple[np.ndarray, float]:
+    """Frequencies dense enough to count turns, and up to which one L counts."""
+    w = grid(loop)
+    if not loop.delay:
+        return w, math.inf
+    ahead = np.maximum.accumulate(np.abs(loop.bare(w))[::-1])[::-1]
+    quiet = np.flatnonzero(ahead <= max(0.99, (1.0 + abs(loop.D)) / 2.0))
+    last = float(w[quiet[0]] if quiet.size else w[-1])
+    if last * loop.delay / PHASE_STEP > MOST_POINTS:
+        raise TooFineError(f"{last * loop.delay / PHASE_STEP:.0f} points are too many to scan")
+    return np.unique(np.concatenate([w, np.arange(0.0, last, PHASE_STEP / loop.delay)[1:]])), last
 
 
 def from_real(value: complex) -> float:
@@ -372,7 +392,7 @@ def truth(loop: Loop) -> Truth:
         last = bool(w[end] >= calm)
         scanned = np.unique(np.concatenate([w[: end + 1], np.arange(0.0, w[end], PHASE_STEP / loop.delay)[1:]]))
         if scanned.size > MOST_POINTS:
-            raise ValueError(f"{scanned.size} points are too many to scan")
+            raise TooFineError(f"{scanned.size} points are too many to scan")
         result = measured(loop, scanned, crossovers, last=last)
         if last or settled(result, float(ahead[end])):
             return result
@@ -423,7 +443,7 @@ def measured(loop: Loop, w: np.ndarray, crossovers: np.ndarray, *, last: bool) -
     tops = {}
     for word, of in (("sensitivity", sensitivity), ("complementary", complementary), ("disk", symmetric)):
         tops[word], where[word] = highest(loop, w, of, last=last)
-    unstable, fastest = stability(loop, w)
+    unstable, fastest = stability(loop)
     return Truth(
         stable=unstable == 0,
         unstable=unstable,
@@ -485,10 +505,10 @@ def topped(loop: Loop, w: float, of: Scalar) -> tuple[float, float]:
     return float(values.max()), float(around[values.argmax()])
 
 
-def stability(loop: Loop, w: np.ndarray) -> tuple[int, float]:
+def stability(loop: Loop) -> tuple[int, float]:
     """Roots outside the stable region, and the growth of the fastest one relative to its size (nan with dead time)."""
     if loop.delay:
-        return encirclements(loop, w), math.nan
+        return encirclements(loop), math.nan
     roots = refined_roots(loop)
     rates = growth(loop, roots) / np.abs(roots)
     return int(np.count_nonzero(rates >= 0.0)), float(rates.max(initial=-math.inf))

@@ -8,7 +8,7 @@ import numpy as np
 import pytest
 import scipy.signal
 from margins.loops import all_of, drawn
-from margins.oracle import Loop, encirclements, grid, truth
+from margins.oracle import Loop, encirclements, truth
 
 PI = np.array([12.7, 1.0]) * 1.136 / 12.7
 
@@ -96,7 +96,7 @@ def test_two_ways_to_stability_agree() -> None:
     some = [each.loop for each in all_of(range(120)) if each.loop.step is None and not each.loop.delay]
     bounded = [loop for loop in some if abs(loop.D) < 1.0]
     assert len(bounded) > 40
-    assert [truth(loop).unstable for loop in bounded] == [encirclements(loop, grid(loop)) for loop in bounded]
+    assert [truth(loop).unstable for loop in bounded] == [encirclements(loop) for loop in bounded]
 
 
 def test_the_draw_has_what_it_promises() -> None:

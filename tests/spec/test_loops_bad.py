@@ -8,8 +8,11 @@ from __future__ import annotations
 from pathlib import Path
 from typing import Any
 
+import numpy as np
 import pytest
-from loop_mistakes import CASES, PLANT, RIGHT
+from hypothesis import HealthCheck, given, settings
+from hypothesis import strategies as st
+from loop_mistakes import CASES, PLANT, RIGHT, js, npz, one
 
 from linverify import Plant
 from linverify.core.case import TrimAsk
@@ -61,3 +64,38 @@ def test_without_a_mistake_nothing_is_told(tmp_path: Path) -> None:
     told, found = bound(tmp_path, PLANT, RIGHT, {})
     assert told == []
     assert list(found.loops) == ["a"]
+
+
+@settings(max_examples=400, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@given(data=st.data())
+def test_whatever_is_written_a_mistake_is_told_or_loops_are_bound(tmp_path: Path, data: st.DataObject) -> None:
+    plant, loops, files = CASES[data.draw(st.sampled_from(sorted(CASES)))]
+    at = data.draw(st.integers(0, len(loops)))
+    cut = data.draw(st.integers(0, min(len(loops) - at, 30)))
+    pieces = st.sampled_from(
+        ["", "{", "}", "[", "]", ", ", ": ", "0", "-1", "1e400", "a", "null", "inner", " deg", "[[]]"]
+    )
+    written = loops[:at] + data.draw(pieces) + loops[at + cut :]
+    tree, problems = parse(f"loops:\n  {written}\n".encode(), "spec.yaml")
+    if not isinstance(tree, Block) or tree.words != ("loops",):
+        return
+    told, found = bound(tmp_path, plant, written, files)
+    assert told or problems or found.loops
+    for loop in found.loops.values():
+        assert all(np.isfinite(getattr(loop.controller, word)).all() for word in "ABCD")
+        assert loop.controller.D.shape == (len(loop.moves), len(loop.measures))
+
+
+@pytest.mark.parametrize("name", ["c.json", "c.npz"])
+@settings(max_examples=200, deadline=None, suppress_health_check=[HealthCheck.function_scoped_fixture])
+@given(data=st.data())
+def test_whatever_a_file_holds_a_mistake_is_told_or_a_controller_read(
+    tmp_path: Path, name: str, data: st.DataObject
+) -> None:
+    content = (js(dt=0.01) | npz())[name]
+    whole = content if isinstance(content, bytes) else content.encode()
+    at = data.draw(st.integers(0, len(whole)))
+    cut = data.draw(st.integers(0, min(len(whole) - at, 40)))
+    changed = whole[:at] + data.draw(st.binary(max_size=8)) + whole[at + cut :]
+    told, found = bound(tmp_path, PLANT, one(f"{{file: {name}}}"), {name: changed})
+    assert bool(told) != bool(found.loops)

@@ -173,7 +173,11 @@ class _Binder:
         parameters, trim, sets, bands = own.parameters, own.trim, shared.sets, shared.bands
         around = around_loops(self.ground, own.closings.loops, shared.closed, self.actuators)
         local, told_local = self.local.of(cell, Asked(sets, bands, shared.modes), around)
-        told = (*told_local, *_told_rates(self.spec, point), *told_middles(self.ground, trim, self.envelope))
+        told = (
+            *told_local,
+            *_told_rates(self.spec, point, self.ground.inputs),
+            *told_middles(self.ground, trim, self.envelope),
+        )
         return Case(
             spec=self.spec.shown,
             point=cell.name,
@@ -270,9 +274,10 @@ def _told_cell(plant: Plant, point: Point, cell: Cell) -> tuple[Setting, ...]:
     return (*swept, *(Setting(f"parameters.{name}", units.told(value, unit), "plant") for name, value, unit in own))
 
 
-def _told_rates(spec: Spec, point: Point) -> tuple[Setting, ...]:
+def _told_rates(spec: Spec, point: Point, inputs: tuple[str, ...]) -> tuple[Setting, ...]:
     """Rates of driven inputs that come from the envelope."""
-    limits = {line.name: line.value.rate for line in spec.envelope if line.value.rate is not None}
+    lines = [line for line in spec.envelope if line.name in inputs]
+    limits = {line.name: line.value.rate for line in lines if line.value.rate is not None}
     told = []
     for drives in point.drives:
         word = f"drives.{drives.name}.rate" if drives.name else "drives.rate"

@@ -60,7 +60,7 @@ def _together(reader: Reader, places: dict[str, Place], read: Values, derived: b
     if "others" in read and "keep" not in places:
         reader.tell(places["others"], "`others` without `keep`", "it says what becomes of states that are not kept")
     if read.get("with") == ():
-        reader.tell(places["with"], "`with`: the list is empty", "names of loops are expected")
+        reader.tell(places["with"], "`local_models: with`: the list is empty", "names of loops are expected")
     if "agree" in read and derived:
         expected = "a delivered model is expected behind `source`: a derived one agrees with itself"
         reader.tell(places["agree"], "`agree` without a delivered model", expected)

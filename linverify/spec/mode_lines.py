@@ -10,6 +10,7 @@ from linverify.core.rules import rules_of
 from linverify.core.signals import nearest
 
 from .atoms import Entry, Location, Word
+from .grammar import Kind
 from .kinds import Values, block
 from .mode_layout import GainWords, ModeLine
 from .mode_words import EXCEPT_WORDS, GAIN_LIMITS, MODE_LIMITS, MODE_WORDS, ZERO_LIMITS
@@ -29,6 +30,8 @@ _EXAMPLE = "a list of limits is expected, as in `- {between: [1 rad/s, 9 rad/s],
 
 def mode_lines(reader: Reader, key: Scalar, node: Node) -> tuple[ModeLine, ...]:
     """All lines under `key`, each with its place; one that could not be read leaves out what is wrong in it."""
+    if reader.is_missing(node, key, key.text, Kind.MODES.value):
+        return ()
     if not isinstance(node, Listing):
         reader.misfit(node, key.text, _EXAMPLE)
         return ()
@@ -114,7 +117,8 @@ def _gains(reader: Reader, entries: tuple[Entry[Values], ...]) -> tuple[GainWord
 
 def _rule(reader: Reader, rule: Word | None) -> Word | None:
     """The rule, where there is one of this name for modes."""
-    if rule is None or rule.text in (known := rules_of("modes")):
+    known = rules_of("modes")
+    if rule is None or rule.text in known:
         return rule
     if rule.text in rules_of("loops"):
         wrong = f"`rule`: {quoted(rule.text)} holds for loops, not for modes"
@@ -153,7 +157,7 @@ class _Line:
             told = "a limit such as `damping: {min: 0.3}`, or `stable: true`, is expected"
             self.reader.tell(self.node.place, wrong, told)
         elif chooses and asks and not any(word in _OF_CHOSEN for word in asks):
-            wrong = f"`{chooses[0]}` chooses modes, but {asks[0]} is about none"
+            wrong = f"`{chooses[0]}` chooses modes, but `{asks[0]}` is about none"
             self.reader.tell(self.places[chooses[0]], wrong, "a limit on these modes is expected, or a line of its own")
         elif empty and not chooses:
             wrong = "`may_be_empty` where no modes are chosen"

@@ -19,6 +19,7 @@ from .written import shown_size
 
 _TIMES = ("time_constant", "time_to_half", "time_to_double", "period")
 _SIGNAL = "an output or state"
+_DAMPING = "that of a mode lies between -1 and 1"
 
 
 def bind_modes(ground: Ground, lines: tuple[ModeLine, ...]) -> tuple[ModeAsk, ...]:
@@ -108,6 +109,11 @@ def _limit(ground: Ground, entry: Entry[Bounds], word: str) -> Limit | None:
     high = math.inf if bounds.high is None else _figure(ground, entry.name, bounds.high, word)
     if math.isnan(low) or math.isnan(high):
         return None
+    if entry.name == "damping" and (low > 1.0 or high < -1.0):
+        side = bounds.low if low > 1.0 else bounds.high
+        told = side.text if side else bounds.text
+        ground.report(side.place if side else bounds.place, f"`{word}`: no mode has a damping ratio {told}", _DAMPING)
+        return None
     if low >= high and bounds.low is not None and bounds.high is not None:
         wrong = f"`{word}`: {bounds.low.text} to {bounds.high.text} is an empty range"
         ground.report(bounds.high.place, wrong, "low below high is expected")
@@ -125,12 +131,7 @@ def _limit_of(ground: Ground, entry: Entry[Bounds], low: float, high: float) -> 
 def _figure(ground: Ground, name: str, quantity: Quantity, word: str) -> float:
     """One side of a limit in the plant's units, NaN where it is a mistake."""
     if name == "damping":
-        ratio = ground.amount(quantity, "1", word)
-        if abs(ratio) > 1.0:
-            wrong = f"`{word}`: {quantity.text!r} is no damping ratio of a mode"
-            ground.report(quantity.place, wrong, "from -1 to 1 is expected")
-            return math.nan
-        return ratio
+        return ground.amount(quantity, "1", word)
     if name == "natural_frequency":
         return ground.frequency(quantity, word)
     if name in _TIMES:

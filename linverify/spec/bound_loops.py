@@ -26,7 +26,7 @@ from .layout import Cell
 from .loop_layout import FileAsk, LoopAsk, ObjectAsk
 from .require import bind_require
 from .scalars import quoted
-from .schedules import Tables
+from .schedules import Known, Tables
 
 SET_POINT = ".set_point."
 
@@ -59,7 +59,7 @@ class LoopBinder:
 
         Mistakes go to the ground; a loop with one is left out.
         """
-        known = known_values(trim, parameters)
+        known = Known(cell.name, known_values(trim, parameters))
         names = _Names(self.ground, asks)
         names.check()
         found: dict[str, Loop] = {}
@@ -70,7 +70,7 @@ class LoopBinder:
         files = (*self._tables.files, *self._files.files, *self._objects.files)
         return BoundLoops(MappingProxyType(found), tuple(dict.fromkeys(files)) if asks else ())
 
-    def _loop(self, ask: LoopAsk, cell: Cell, known: Mapping[str, float], names: _Names) -> Loop | None:
+    def _loop(self, ask: LoopAsk, cell: Cell, known: Known, names: _Names) -> Loop | None:
         called = f"loops: {ask.name}"
         before = len(self.ground.problems)
         sample = self._sample(ask, called)

@@ -55,9 +55,9 @@ class ControllerObjects:
         told = f"`{wiring.called}: controller: object`"
         value = found.value
         if callable(value) and not _parts_of(value):
-            if any(math.isnan(each) for each in wiring.known.values()):
+            if any(math.isnan(each) for each in wiring.known.values.values()):
                 return None  # what was refused is told; the function could only stumble over it
-            value = called(value, MappingProxyType(dict(wiring.known)))
+            value = called(value, MappingProxyType(dict(wiring.known.values)))
             if isinstance(value, Raised):
                 self.ground.report(ref.place, f"{told}: {ref.text}: {printable(value)}")
                 return None

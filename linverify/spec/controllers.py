@@ -3,7 +3,7 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Callable, Mapping, Sequence
+from collections.abc import Callable, Sequence
 from dataclasses import dataclass, field
 
 import numpy as np
@@ -17,7 +17,7 @@ from linverify.core.realize import StateSpace
 from .atoms import Quantity
 from .ground import Ground
 from .loop_layout import Gain, Grid, Line, MatricesAsk, PidAsk, RationalAsk, Schedule
-from .schedules import Tables, gain_of, plain
+from .schedules import Known, Tables, gain_of, plain
 
 _SISO = "one signal measured and one moved are expected"
 
@@ -27,14 +27,14 @@ class Wiring:
     """What a controller stands between. called: the loop, as messages call it.
 
     measured, moved: names in order with the plant's units; sample: sample time in the plant's time unit, None for a
-    continuous controller; known: values of signals and parameters that are known before the trim, in the plant's units.
+    continuous controller; known: what is known before the trim.
     """
 
     called: str
     measured: tuple[tuple[str, str], ...]
     moved: tuple[tuple[str, str], ...]
     sample: float | None
-    known: Mapping[str, float]
+    known: Known
 
     @property
     def siso(self) -> bool:
@@ -78,7 +78,7 @@ class Written:
 
     def _tell(self, gain: Schedule, word: str, value: float, unit: str) -> None:
         over = gain.over.text
-        at = units.told(self.wiring.known[over], self.ground.plant.unit(over))
+        at = units.told(self.wiring.known.values[over], self.ground.plant.unit(over))
         self.told.append(f"{word.rpartition(': ')[2]} = {units.told(value, unit)} at {over} = {at}")
 
     def _gain_unit(self, row: int, column: int, above: Sequence[str] = (), below: Sequence[str] = ()) -> str:

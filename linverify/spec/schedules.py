@@ -23,6 +23,14 @@ from .scalars import quoted
 
 
 @dataclass(frozen=True, slots=True)
+class Known:
+    """What is known of an operating point before its trim: values of signals and parameters, in the plant's units."""
+
+    point: str
+    values: Mapping[str, float]
+
+
+@dataclass(frozen=True, slots=True)
 class Table:
     """Columns by name, in the order of the file; place: of each heading."""
 
@@ -39,15 +47,13 @@ class Tables:
     files: dict[Path, None] = field(default_factory=dict)
     _read: dict[Path, Table | None] = field(default_factory=dict)
 
-    def value(
-        self, schedule: Schedule, known: Mapping[str, float], word: str, unit: str | None
-    ) -> tuple[float, Quantity] | None:
+    def value(self, schedule: Schedule, known: Known, word: str, unit: str | None) -> tuple[float, Quantity] | None:
         """The scheduled number at the values of signals and parameters that are `known`, in `unit`.
 
         Returns it with a value of its column, which shows how it is written; None after telling what is wrong.
         unit: None where the number must have none.
         """
-        at = self._at(schedule, known, word)
+        at = self._at(schedule, known.values, word)
         table = self._table(schedule.table, word)
         if at is None or table is None:
             return None
@@ -59,7 +65,7 @@ class Tables:
         values = [self._number(each, f"{word}", unit) for each in column]
         if instants is None or any(math.isnan(each) for each in values):
             return None
-        found = self._between(schedule, table, instants, values, at)
+        found = self._between(schedule, table, instants, values, at, known.point)
         return None if found is None else (found, column[0])
 
     def _at(self, schedule: Schedule, known: Mapping[str, float], word: str) -> float | None:
@@ -149,14 +155,14 @@ class Tables:
         return plain(self.ground, quantity, word) if unit is None else gain_of(self.ground, quantity, unit, word)
 
     def _between(
-        self, schedule: Schedule, table: Table, instants: list[float], values: list[float], at: float
+        self, schedule: Schedule, table: Table, instants: list[float], values: list[float], at: float, point: str
     ) -> float | None:
         name = schedule.over.text
         low, high = instants[0], instants[-1]
         slack = WHOLE * max(abs(low), abs(high))
         if not low - slack <= at <= high + slack:
             unit = self.ground.plant.unit(name)
-            wrong = f"{quoted(name)} is {units.told(at, unit)} here, outside the table {table.shown}"
+            wrong = f"{quoted(name)} is {units.told(at, unit)} at {point}, outside the table {table.shown}"
             self.ground.report(
                 schedule.place, wrong, f"it goes from {units.told(low, unit)} to {units.told(high, unit)}"
             )

@@ -33,6 +33,7 @@ TABLE = {
         Row("differentiable", ("trim",)),
         Row("agrees", ("trim", "reference")),
         Row("follows", ("trim", "model")),
+        Row("modes", ("trim", "model")),
         Row("margins", ("trim", "model")),
     )
 }

@@ -29,6 +29,7 @@ from .traits import Known, Pole, decay_rate
 Origin = Literal["no", "maybe", "yes"]
 AT_ORIGIN = 1e-9  # of the model's fastest rate: what surely lies nearer to the origin than this counts as there
 EXCUSED = 1e-6  # the same, to the power of how many poles lie together: a chain of k is spread to the k-th root
+BALANCING = 20  # sweeps that find sizes of states that have none
 FARTHEST = 1e-2  # of the fastest rate: nothing farther away is at the origin, however little is known of it
 
 
@@ -128,14 +129,16 @@ def _least(basis: Complex, matrix: Array, reach: Complex) -> float:
 
 
 def modes(model: LocalModel, nominal: Mapping[str, float]) -> Modes:
-    """The modes of a local model, with errors from those of its entries. nominal: sizes of states by name (else 1).
+    """The modes of a local model, with errors from those of its entries. nominal: sizes of states by name.
+
+    A state without a finite size (a controller's) gets the one that balances its row against its column.
 
     Raises ValueError for a model with entries that are not finite.
     """
     names = model.states.names
     # powers of two, so that scaling rounds nothing
-    given = np.array([nominal.get(name, 1.0) for name in names], dtype=np.float64)
-    sizes = np.asarray(2.0 ** np.round(np.log2(given)), dtype=np.float64)
+    given = np.array([nominal.get(name, math.nan) for name in names], dtype=np.float64)
+    sizes = np.asarray(2.0 ** np.round(np.log2(_sizes(np.asarray(model.A), given))), dtype=np.float64)
     A = np.asarray(model.A, dtype=np.float64)
     errors = np.asarray(model.errors.get("A", np.zeros_like(A)), dtype=np.float64)
     if model.step is not None:
@@ -148,6 +151,24 @@ def modes(model: LocalModel, nominal: Mapping[str, float]) -> Modes:
     made = [_mode(root, one, model.step, speed, shared.count(one)) for root, one in zip(found, shared, strict=True)]
     per_time = speed if model.step is None else speed / model.step
     return Modes(tuple(sorted(made, key=_told_order)), per_time, sizes, names, model, A)
+
+
+def _sizes(A: Array, given: Array) -> Array:
+    """`given` (n,) with what is not finite replaced by sizes that balance rows against columns of A (n, n)."""
+    known = np.isfinite(given)
+    sizes = np.where(known, given, 1.0)
+    if known.all():
+        return sizes
+    size = np.abs(A)
+    size[np.diag_indices_from(size)] = 0.0
+    for _ in range(BALANCING):
+        for at in np.flatnonzero(~known):
+            row, column = float(size[at] @ sizes), float(size[:, at] @ (1.0 / sizes))
+            if row > 0.0 and column > 0.0:
+                sizes[at] = math.sqrt(row / column)
+            elif row > 0.0:  # it acts on nothing: as large as what acts on it makes it in one time unit
+                sizes[at] = row
+    return sizes
 
 
 def _order(root: Root) -> tuple[float, float, float]:

@@ -3,6 +3,7 @@
 from __future__ import annotations
 
 from collections.abc import Sequence
+from dataclasses import replace
 
 import numpy as np
 from numpy.typing import NDArray
@@ -10,6 +11,7 @@ from numpy.typing import NDArray
 from ..core.delivered import DeliveredModel
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
 from ..core.signals import Signals, nearest
+from .pair import EXACT, MATRICES, printed_to
 
 Places = NDArray[np.intp]
 
@@ -45,6 +47,18 @@ def placed(delivered: DeliveredModel, point: OperatingPoint) -> LocalModel:
         anonymous=delivered.states is None,
         course=delivered.course,
     )
+
+
+def printed_errors(delivered: DeliveredModel, point: OperatingPoint) -> dict[str, Array]:
+    """Half a unit in the last printed digit of every entry of `placed`, by matrix name; rounding where it is exact.
+
+    Raises ValueError as `placed` does.
+    """
+    digits = EXACT if delivered.rounding else delivered.digits
+    exact = {name: printed_to(np.asarray(getattr(delivered, name)), digits) for name in MATRICES}
+    A, B, C, D = (exact[name] + delivered.rounding.get(name, 0.0) for name in MATRICES)
+    model = placed(replace(delivered, A=A, B=B, C=C, D=D), point)
+    return {name: getattr(model, name) for name in MATRICES}
 
 
 def anonymous_states(count: int) -> Signals:

@@ -1,0 +1,180 @@
+"""modes: do poles, zeros and static gains of the local model keep the declared limits?
+
+Judged is the model that is verified: a delivered one by its own entries, whose printed digits count as their errors.
+Every pole comes with a disc in which it surely lies (`numerics/spectrum`), and a limit passes or fails only where the
+whole disc says so.
+
+A pole lies at the origin where the pattern of zeros of the model leaves it no other place, or where its disc holds the
+origin and is smaller than 1e-9 of the model's fastest rate. The poles of a chain of k integrators whose entries are
+known to eps are spread by eps^(1/k): `at_zero` excuses such a cluster where its discs hold the origin and the k-th
+power of their size is below 1e-6 of the fastest rate; without `at_zero` it is undecided where it lies.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Mapping
+from dataclasses import replace
+from typing import Any
+
+import numpy as np
+
+from ..core.case import Case, CheckAsk
+from ..core.mode import ModeAsk
+from ..core.model import LocalModel
+from ..core.rules import RULES
+from ..core.units import UnitError, convert
+from ..core.verdict import Figure, Status, Verdict
+from ..numerics.modal import Mode, Modes, modes
+from ..numerics.placed import printed_errors
+from ..numerics.traits import TRAITS
+from .closed import ClosedStudy, of_model
+from .findings import Findings
+from .mode_choice import Choice, choice, described, distance, label, line_name, nearest, told_choice, told_complex
+from .mode_limits import judge_limits, judge_measures
+from .mode_stability import judge_stable
+from .mode_zeros import judge_gains, judge_zeros
+from .study import Study
+
+
+def check(study: Study, ask: CheckAsk) -> Verdict:
+    """The verdict on all lines of `modes` at one operating point."""
+    into = Findings(details={"time_unit": study.case.plant.time_unit})
+    model, nominal, refused = _judged(study, into)
+    if model is None:
+        into.reasons.append((Status.UNDECIDED, refused))
+    else:
+        found = modes(model, nominal)
+        for line in study.case.modes:
+            _line(found, line, into)
+        into.details["modes"] = [_plain(study.case, found, mode) for mode in found.modes]
+        _told_rules(study.case, into)
+    del into.details["time_unit"]
+    return Verdict(
+        spec=study.case.spec,
+        point=study.case.point,
+        check=ask.name,
+        status=into.status,
+        place=ask.place,
+        reason=into.reason,
+        figures=tuple(into.figures),
+        notes=tuple(into.notes),
+        details=into.details,
+    )
+
+
+def _judged(study: Study, into: Findings) -> tuple[LocalModel | None, Mapping[str, float], str]:
+    """The model to judge with errors of its entries and nominal sizes, or why there is none."""
+    if not study.case.local.closed:
+        return _with_rounding(study, study.model()), study.case.nominal, ""
+    closed = ClosedStudy(study, of_model(study.case))
+    if reason := closed.unmet("model"):
+        return None, {}, reason
+    if closed.updates:
+        return None, {}, "a sampled loop is closed inside the local model: its poles are those of no one matrix"
+    into.notes += closed.told()
+    return closed.model(), closed.case.nominal, ""
+
+
+def _with_rounding(study: Study, model: LocalModel) -> LocalModel:
+    """A delivered model with half a unit in the last printed digit of its entries as their errors."""
+    delivered = study.case.local.delivered
+    if delivered is None or model.errors or study.model_override is not None:
+        return model
+    return replace(model, errors=printed_errors(delivered, study.point()))
+
+
+def _line(found: Modes, ask: ModeAsk, into: Findings) -> None:
+    """One line: which modes it is about, whether there are any, and what it asks of them."""
+    judge_zeros(found.model, ask, into)
+    judge_gains(found, ask, into)
+    if not (ask.limits or ask.stable or ask.controllable or ask.observable) and ask.chosen.everything:
+        return
+    chosen = choice(found, ask.chosen)
+    if chosen.refused:
+        into.reasons.append((Status.UNDECIDED, f"{line_name(ask)}{chosen.refused}"))
+        return
+    _there(found, ask, chosen, into)
+    judge_stable(found, ask, chosen.sure, chosen.maybe, into)
+    judge_limits(found, ask, chosen.sure, chosen.maybe, into)
+    judge_measures(found, ask, chosen.sure, chosen.maybe, into)
+    row = {"line": ask.name or str(ask.place), "modes": [label(mode) for mode in chosen.all]}
+    into.details.setdefault("mode_lines", []).append(row)
+
+
+def _there(found: Modes, ask: ModeAsk, chosen: Choice, into: Findings) -> None:
+    """Whether a line that chooses modes finds one."""
+    near = ask.chosen.near
+    if near is not None and (mode := nearest(found, near)) is not None:
+        _distance(found, ask, mode, near, into)
+    if chosen.sure or ask.may_be_empty or ask.chosen.everything:
+        if ask.chosen.everything and not found.modes:
+            into.reasons.append((Status.UNDECIDED, f"{line_name(ask)}the local model has no states, so no modes"))
+        return
+    told = told_choice(ask.chosen, into.details["time_unit"])
+    if chosen.maybe:
+        words = f"whether a mode lies {told} is within the errors of the local model's entries"
+        into.reasons.append((Status.UNDECIDED, f"{line_name(ask)}{words}"))
+        return
+    words = f"{line_name(ask)}there is no mode {told}"
+    if near is not None and (mode := nearest(found, near)) is not None:
+        words += f"; the nearest is {described(found, mode, into.details['time_unit'])}"
+    into.reasons.append((Status.FAIL, words))
+
+
+def _distance(found: Modes, ask: ModeAsk, mode: Mode, near: complex, into: Findings) -> None:
+    """How far the nearest mode is from where the line wants one."""
+    away, limit = distance(mode, near), ask.chosen.within
+    status = Status.PASS if away.high <= limit else Status.FAIL if away.low > limit else Status.UNDECIDED
+    if ask.may_be_empty:
+        return
+    into.figures.append(
+        Figure(
+            f"{line_name(ask)}distance from {told_complex(near)}", label(mode), 100.0 * away.value, 100.0 * limit, "%",
+            error=100.0 * away.error, origin=str(ask.place), status=status,
+        )
+    )  # fmt: skip
+
+
+def _told_rules(case: Case, into: Findings) -> None:
+    """Ready-made limits with where they come from, for the notes and the report."""
+    names = dict.fromkeys(limit.rule for ask in case.modes for limit in ask.limits if limit.rule)
+    rows = []
+    for name in names:
+        limit = next(limit for ask in case.modes for limit in ask.limits if limit.rule == name)
+        meaning = RULES[name].meaning if name in RULES else ""
+        rows.append({"rule": name, "meaning": meaning, "source": limit.source, "caution": limit.caution})
+        into.notes.append(f"{name}: {limit.source}; {limit.caution}")
+    if rows:
+        into.details["rules"] = rows
+
+
+def _plain(case: Case, found: Modes, mode: Mode) -> dict[str, Any]:
+    """A mode for the report; what it does not have is left out."""
+    unit = case.plant.time_unit
+    row: dict[str, Any] = {}
+    if math.isfinite(abs(mode.value)):
+        row |= {"real": mode.value.real, "imag": mode.value.imag, "error": mode.pole.radius}
+        row |= {word: TRAITS[word](mode.pole).value for word in ("natural_frequency", "damping")}
+        row["hertz"] = row["natural_frequency"] / (2.0 * math.pi * _seconds(unit))
+    if not math.isnan(mode.z.real):
+        row |= {"z_real": mode.z.real, "z_imag": mode.z.imag}
+    for word in ("time_constant", "time_to_half", "time_to_double", "period"):
+        value = TRAITS[word](mode.pole).value
+        if math.isfinite(value):
+            row[word] = value
+    if mode.origin != "no":
+        row["at_origin"] = mode.origin
+    if not mode.alone:
+        row["told_together"] = mode.shared.poles
+    if not found.model.anonymous:
+        order = np.argsort(-mode.shared.shares, kind="stable")
+        row["participation"] = {found.states[at]: float(mode.shared.shares[at]) for at in order}
+    return row
+
+
+def _seconds(unit: str) -> float:
+    try:
+        return convert(1.0, unit, "s")
+    except UnitError:
+        return math.nan

@@ -48,6 +48,7 @@ class Sense(StrEnum):
 
     UPPER = "at most"
     LOWER = "at least"
+    RANGE = "within"
     NONE = "told"  # no limit, or a yes/no property
 
 
@@ -58,7 +59,8 @@ class Figure:
     what: "peak error", "scaled residual"; signal: what it was measured on; error: estimate of our own error in
     `worst`; when: time of the worst, NaN where time has no meaning; drive: digest of the drive it was met on.
     origin: place of the limit in the spec or a word on where it comes from; at_frequency, frequency_unit: where it was
-    met, NaN where frequency has no meaning. Figures in dB are ratios told in decibels: shares are those of the ratios.
+    met, NaN where frequency has no meaning; low: the lower end of a range, whose upper end is `limit`. Figures in dB
+    are ratios told in decibels: shares are those of the ratios.
     """
 
     what: str
@@ -75,6 +77,7 @@ class Figure:
     status: Status = Status.PASS
     at_frequency: float = math.nan
     frequency_unit: str = ""
+    low: float = math.nan
 
     @property
     def used_share(self) -> float:
@@ -82,6 +85,9 @@ class Figure:
         if self.sense is Sense.NONE or math.isnan(self.limit) or math.isnan(self.worst):
             return math.nan
         worst, limit = (_ratio(self.worst), _ratio(self.limit)) if self.unit == "dB" else (self.worst, self.limit)
+        if self.sense is Sense.RANGE:
+            half = (limit - self.low) / 2.0
+            return abs(worst - (limit + self.low) / 2.0) / half if half > 0.0 else math.nan
         above, below = (worst, limit) if self.sense is Sense.UPPER else (limit, worst)
         if math.isinf(below):
             return 0.0

@@ -43,7 +43,7 @@ def percent(share: float) -> str:
 def headroom(figure: Figure) -> str:
     """The headroom in per cent; words where a limit is missed by so much that per cent mean nothing; else a dash."""
     if figure.used_share > FAR:
-        return f"over {FAR:g} times the limit" if figure.sense is Sense.UPPER else f"under 1/{FAR:g} of the limit"
+        return f"under 1/{FAR:g} of the limit" if figure.sense is Sense.LOWER else f"over {FAR:g} times the limit"
     return percent(figure.headroom)
 
 
@@ -57,9 +57,14 @@ def headroom_told(figure: Figure) -> str:
 
 def worst(figure: Figure) -> str:
     """The measured figure: four digits, or six where four would not tell it from its limit."""
-    short, limit = float(f"{figure.worst:.4g}"), figure.limit
-    close = short == float(f"{limit:.4g}") or (short > limit) != (figure.worst > limit)
-    return quantity(figure.worst, figure.unit, 6 if close and figure.worst != limit else 4)
+    close = any(_close(figure.worst, limit) for limit in (figure.limit, figure.low))
+    return quantity(figure.worst, figure.unit, 6 if close else 4)
+
+
+def _close(value: float, limit: float) -> bool:
+    """Whether four digits would not tell a value from a limit that it is not."""
+    short = float(f"{value:.4g}")
+    return value != limit and (short == float(f"{limit:.4g}") or (short > limit) != (value > limit))
 
 
 def subject(figure: Figure) -> str:
@@ -71,6 +76,8 @@ def limit(figure: Figure) -> str:
     """The limit with its sense: at most 0.04 m; a dash for a figure that is only told."""
     if figure.sense is Sense.NONE or math.isnan(figure.limit):
         return ABSENT
+    if figure.sense is Sense.RANGE:
+        return f"{figure.sense.value} {number(figure.low)} to {quantity(figure.limit, figure.unit)}"
     return f"{figure.sense.value} {quantity(figure.limit, figure.unit)}"
 
 

@@ -58,7 +58,12 @@ class Row:
     def raw(self) -> tuple[str, ...]:
         """Numbers without their units, for spreadsheets."""
         figure = self.figure
-        return (quantity.number(figure.worst), quantity.number(figure.limit), figure.unit) if figure else ("", "", "")
+        if figure is None:
+            return "", "", ""
+        limit = quantity.number(figure.limit)
+        if figure.sense is Sense.RANGE:
+            limit = f"{quantity.number(figure.low)} to {limit}"
+        return quantity.number(figure.worst), limit, figure.unit
 
 
 def human(text: str) -> tuple[tuple[str | int, ...], str]:
@@ -86,7 +91,7 @@ def limits(verdict: Verdict) -> tuple[Figure, ...]:
     for figure in verdict.figures:
         if figure.sense is Sense.NONE:
             continue
-        key = (figure.what, figure.origin or figure.signal, figure.limit, figure.unit, figure.sense)
+        key = (figure.what, figure.origin or figure.signal, figure.limit, figure.unit, figure.sense, f"{figure.low}")
         kept[key] = max(kept.get(key, figure), figure, key=badness)
     return tuple(kept.values())
 

@@ -29,6 +29,7 @@ _NUMBERS = ("worst", "limit", "error", "when")
 _KEYS = frozenset({"id", "spec", "point", "check", "status", "place", "reason", "figures", "notes", "requirements",
                    "evidence", "details"})  # fmt: skip
 _WHERE = frozenset({"at_frequency", "frequency_unit"})  # of figures that were met at a frequency, else left out
+_RANGE = frozenset({"low"})  # of figures with a range, else left out
 _DERIVED = frozenset({"headroom"})  # written for readers of the file; computed anew when read back
 
 
@@ -87,8 +88,10 @@ def _figure_data(figure: Figure) -> dict[str, Any]:
         error=rounded(float(figure.error)),
         when=rounded(float(figure.when)),
         at_frequency=rounded(float(figure.at_frequency)),
+        low=rounded(float(figure.low)),
     )
     left_out = _WHERE if math.isnan(written.at_frequency) else frozenset()
+    left_out |= _RANGE if math.isnan(written.low) else frozenset()
     data = {name: plain(value) for name, value in asdict(written).items() if name not in left_out}
     return data | {"sense": figure.sense.value, "status": figure.status.value, "headroom": plain(written.headroom)}
 
@@ -113,10 +116,13 @@ def to_data(verdict: Verdict) -> dict[str, Any]:
 
 def _figure(data: Mapping[str, Any]) -> Figure:
     where = _WHERE if _WHERE & set(data) else frozenset()
-    expect_keys(data, {*_TEXTS, *_NUMBERS, "sense", "status", *_DERIVED, *where}, "a figure")
+    low = _RANGE & set(data)
+    expect_keys(data, {*_TEXTS, *_NUMBERS, "sense", "status", *_DERIVED, *where, *low}, "a figure")
     texts = {name: _text(data, name) for name in _TEXTS}
     numbers = {name: _float(data, name) for name in _NUMBERS}
     figure = Figure(**texts, **numbers, sense=Sense(data["sense"]), status=Status(data["status"]))  # type: ignore[arg-type]
+    if low:
+        figure = replace(figure, low=_float(data, "low"))
     if not where:
         return figure
     return replace(figure, at_frequency=_float(data, "at_frequency"), frequency_unit=_text(data, "frequency_unit"))

@@ -147,3 +147,14 @@ def test_where_a_figure_was_met() -> None:
     assert quantity.met_at(replace(margin, when=2.0, time_unit="s")) == "t = 2 s, 3.242 rad/s"
     assert quantity.met_at(FIGURE) == ""
     assert quantity.worst_met(FIGURE) == "0.05 m"
+
+
+def test_a_range_is_told_with_both_ends_and_shared_from_its_middle() -> None:
+    damping = Figure("damping ratio", "pole -1 +- 2j", 0.5, 1.3, "", Sense.RANGE, low=0.3)
+    assert quantity.limit(damping) == "within 0.3 to 1.3"
+    assert damping.used_share == pytest.approx(0.3 / 0.5)
+    assert replace(damping, worst=1.3).headroom == pytest.approx(0.0)
+    assert replace(damping, worst=0.2).used_share == pytest.approx(1.2)
+    assert replace(damping, worst=math.inf).used_share == math.inf
+    assert quantity.worst(replace(damping, worst=0.2999996)) == "0.3"
+    assert quantity.worst(replace(damping, worst=0.29996)) == "0.29996"

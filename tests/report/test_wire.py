@@ -27,7 +27,7 @@ DETAILS = st.recursive(
 )
 FIGURES = st.builds(
     Figure, TEXTS, TEXTS, NUMBERS, NUMBERS, TEXTS, st.sampled_from(Sense), NUMBERS, NUMBERS, TEXTS, TEXTS, TEXTS,
-    st.sampled_from(Status), st.floats(allow_nan=False), TEXTS,
+    st.sampled_from(Status), st.floats(allow_nan=False), TEXTS, st.floats(),
 )  # fmt: skip
 VERDICTS = st.builds(
     Verdict,

@@ -112,7 +112,7 @@ def described(found: Modes, mode: Mode, time_unit: str) -> str:
             words.append(f"damping {number(damping(mode.pole).value, 4)}")
     told = ", ".join(words)
     if not found.model.anonymous:
-        shares = ", ".join(f"{name} {number(100.0 * share, 2)} %" for name, share in found.dominating(mode))
+        shares = ", ".join(f"{name} {100.0 * share:.0f} %" for name, share in found.dominating(mode))
         told = "; ".join(part for part in (told, f"mostly {shares}") if part)
     if not mode.alone:
         told += f"; {mode.shared.poles} poles there are told together"

@@ -41,36 +41,29 @@ def own_unit(word: str, time_unit: str) -> Shown:
     return Shown("" if word in ("damping", "measure") else time_unit)
 
 
-def status_of(known: Known, limit: Limit, side: Sense) -> Status:
+def status_of(known: Known, limit: Limit) -> Status:
     """pass: surely inside; fail: surely outside; else undecided."""
-    if side is Sense.LOWER:
-        keeps = known.low > limit.low if limit.strict else known.low >= limit.low
-        breaks = known.high <= limit.low if limit.strict else known.high < limit.low
-    else:
-        keeps = known.high < limit.high if limit.strict else known.high <= limit.high
-        breaks = known.low >= limit.high if limit.strict else known.low > limit.high
+    low, high = limit.low, limit.high
+    keeps, breaks = known.low >= low and known.high <= high, known.high < low or known.low > high
+    if limit.strict:  # an end that is not there is met by what is infinite
+        keeps = keeps and not (known.low == low > -math.inf or known.high == high < math.inf)
+        breaks = breaks or known.high == low or known.low == high < math.inf
     if keeps:
         return Status.PASS
     return Status.FAIL if breaks else Status.UNDECIDED
 
 
-def sides(limit: Limit) -> tuple[Sense, ...]:
-    """The sides on which a limit is one."""
-    low = (Sense.LOWER,) if math.isfinite(limit.low) else ()
-    return (*low, Sense.UPPER) if math.isfinite(limit.high) else low
-
-
-def figure(
-    what: str, signal: str, known: Known, limit: Limit, side: Sense, shown: Shown, *, sure: bool = True
-) -> Figure:
-    """One figure against one side of a limit. sure: False for a mode that may not be meant: it cannot fail."""
-    status = status_of(known, limit, side)
+def figure(what: str, signal: str, known: Known, limit: Limit, shown: Shown, *, sure: bool = True) -> Figure:
+    """One figure against a limit. sure: False for a mode that may not be meant: it cannot fail."""
+    status = status_of(known, limit)
     if status is Status.FAIL and not sure:
         status = Status.UNDECIDED
-    bound = limit.low if side is Sense.LOWER else limit.high
+    low, high = math.isfinite(limit.low), math.isfinite(limit.high)
+    sense = Sense.RANGE if low and high else Sense.LOWER if low else Sense.UPPER
     return Figure(
-        what, signal, shown.size(known.value), shown.size(bound), shown.unit, side, error=abs(shown.size(known.error)),
-        origin=f"{limit.rule}, {limit.place}" if limit.rule else str(limit.place), status=status,
+        what, signal, shown.size(known.value), shown.size(limit.high if high else limit.low), shown.unit, sense,
+        error=abs(shown.size(known.error)), origin=f"{limit.rule}, {limit.place}" if limit.rule else str(limit.place),
+        status=status, low=shown.size(limit.low) if low and high else math.nan,
     )  # fmt: skip
 
 
@@ -80,14 +73,12 @@ def judge_limits(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequen
     for limit in ask.limits:
         shown = limit.shown or own_unit(limit.word, time_unit)
         what = f"{line_name(ask)}{WORDED[limit.word]}"
-        for side in sides(limit):
-            if side is Sense.UPPER and limit.word == "damping" and limit.high >= 1.0:
-                _overdamped(found, limit, (sure, maybe), (what, shown), into)
-                continue
-            for mode, meant in _each(sure, maybe):
-                known = TRAITS[limit.word](mode.pole)
-                one = figure(what, label(mode), known, limit, side, shown, sure=meant)
-                _tell(found, mode, one, limit, meant, into)
+        if limit.word == "damping" and 1.0 <= limit.high < math.inf:
+            _overdamped(found, limit, (sure, maybe), (what, shown), into)
+            continue
+        for mode, meant in _each(sure, maybe):
+            one = figure(what, label(mode), TRAITS[limit.word](mode.pole), limit, shown, sure=meant)
+            _tell(found, mode, one, limit, meant, into)
 
 
 def _each(sure: Sequence[Mode], maybe: Sequence[Mode]) -> Iterable[tuple[Mode, bool]]:
@@ -103,11 +94,12 @@ def _tell(found: Modes, mode: Mode, one: Figure, limit: Limit, meant: bool, into
 
 def sentence(one: Figure, limit: Limit) -> str:
     """The figure against its limit: 0.02 s, at least 0.05 s is asked for, by the rule ..."""
-    value = f"{with_unit(number(one.worst, 4), one.unit)}" if math.isfinite(one.worst) else "infinite"
-    told = "more than" if one.sense is Sense.LOWER else "less than"
-    asked = told if limit.strict else one.sense.value
+    value = with_unit(number(one.worst, 4), one.unit) if math.isfinite(one.worst) else "infinite"
+    strict = {Sense.LOWER: "more than", Sense.UPPER: "less than"}
+    told = strict.get(one.sense, one.sense.value) if limit.strict else one.sense.value
+    low = f"{number(one.low, 4)} to " if one.sense is Sense.RANGE else ""
     rule = f" ({limit.rule})" if limit.rule else ""
-    return f"{value}, {asked} {with_unit(number(one.limit, 4), one.unit)} is asked for{rule}"
+    return f"{value}, {told} {low}{with_unit(number(one.limit, 4), one.unit)} is asked for{rule}"
 
 
 def _doubt(one: Figure, meant: bool) -> str:
@@ -122,23 +114,27 @@ def _doubt(one: Figure, meant: bool) -> str:
 def _overdamped(
     found: Modes, limit: Limit, modes: tuple[Sequence[Mode], Sequence[Mode]], told: tuple[str, Shown], into: Findings
 ) -> None:
-    """An upper limit on damping of one or more: pairs keep it anyway, two real poles are one factor."""
+    """Damping with an upper limit of one or more: two real poles are one factor, whose damping may be above one."""
     (sure, maybe), (what, shown) = modes, told
-    for mode, meant in _each(sure, maybe):
-        if not mode.pole.real and mode.poles == 2:
-            one = figure(what, label(mode), TRAITS["damping"](mode.pole), limit, Sense.UPPER, shown, sure=meant)
-            _tell(found, mode, one, limit, meant, into)
     real = [mode for mode, _ in _each(sure, maybe) if mode.poles == 1]
-    if not real:
+    for mode, meant in _each(sure, maybe):
+        if mode not in real:
+            one = figure(what, label(mode), TRAITS["damping"](mode.pole), limit, shown, sure=meant)
+            _tell(found, mode, one, limit, meant, into)
+    growing = [mode for mode in real if mode.stable is False]
+    for mode in growing:
+        one = figure(what, label(mode), TRAITS["damping"](mode.pole), limit, shown, sure=mode in sure)
+        _tell(found, mode, one, limit, mode in sure, into)
+    if not real or growing:
         return
     if len(real) != 2 or any(mode in maybe for mode in real):
         names = ", ".join(label(mode) for mode in real)
-        reason = "two real poles as one factor have a damping ratio above 1; chosen are "
-        into.reasons.append((Status.UNDECIDED, f"{what}: {reason}{names}: choose the two with near, between"
-                             f" or participates"))  # fmt: skip
+        words = (
+            "two real poles as one factor have a damping ratio above 1; choose two with near, between or participates"
+        )
+        into.reasons.append((Status.UNDECIDED, f"{what} of {names}: {words}"))
         return
-    known = pair_damping(real[0].pole, real[1].pole)
-    one = figure(what, " and ".join(label(mode) for mode in real), known, limit, Sense.UPPER, shown)
+    one = figure(what, " and ".join(map(label, real)), pair_damping(real[0].pole, real[1].pole), limit, shown)
     into.figures.append(one)
     if one.status is not Status.PASS:
         into.reasons.append((one.status, f"{what} of {one.signal} together is {sentence(one, limit)}"))
@@ -161,5 +157,5 @@ def judge_measures(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequ
                 except ValueError:
                     into.reasons.append((Status.UNDECIDED, f"{what}: the local model has no {name}"))
                     break
-                one = figure(what, label(mode), known, limit, Sense.LOWER, Shown(), sure=meant)
+                one = figure(what, label(mode), known, limit, Shown(), sure=meant)
                 _tell(found, mode, one, limit, meant, into)

@@ -8,7 +8,7 @@ from collections.abc import Sequence
 from ..core.loop import Limit
 from ..core.mode import ModeAsk
 from ..core.shown import Shown, number, with_unit
-from ..core.verdict import Figure, Sense, Status
+from ..core.verdict import Figure, Status
 from ..numerics.modal import Mode, Modes, excusable
 from ..numerics.traits import decay_rate, time_to_double
 from .findings import Findings
@@ -35,7 +35,7 @@ def judge_stable(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequen
 def _real_part(ask: ModeAsk, mode: Mode, status: Status, into: Findings) -> Figure:
     rate = decay_rate(mode.pole)
     return Figure(
-        f"{line_name(ask)}real part", label(mode), -rate.value + 0.0, 0.0, f"1/{into.details['time_unit']}",
+        f"{line_name(ask)}real part (below zero)", label(mode), -rate.value + 0.0, 0.0, f"1/{into.details['time_unit']}",
         error=rate.error, origin=str(ask.place), status=status,
     )  # fmt: skip
 
@@ -78,7 +78,7 @@ def _loose(found: Modes, ask: ModeAsk, mode: Mode, meant: bool, into: Findings) 
     if math.isfinite(ask.time_to_double) and not chained:
         limit = Limit("time_to_double", low=ask.time_to_double, place=ask.place)
         what = f"{line_name(ask)}time to double"
-        one = figure(what, label(mode), double, limit, Sense.LOWER, Shown(unit), sure=meant)
+        one = figure(what, label(mode), double, limit, Shown(unit), sure=meant)
         into.figures.append(one)
         if one.status is not Status.PASS:
             told = with_unit(number(double.value, 4), unit)
@@ -88,7 +88,9 @@ def _loose(found: Modes, ask: ModeAsk, mode: Mode, meant: bool, into: Findings) 
         return
     status = Status.FAIL if mode.stable is False and meant else Status.UNDECIDED
     into.figures.append(_real_part(ask, mode, status, into))
-    into.reasons.append((status, f"{line_name(ask)}{described(found, mode, unit)} {_words(mode, double.value, unit)}"))
+    reason = status, f"{line_name(ask)}{described(found, mode, unit)} {_words(mode, double.value, unit)}"
+    if reason not in into.reasons:  # poles that repeat are told once
+        into.reasons.append(reason)
 
 
 def _words(mode: Mode, double: float, unit: str) -> str:

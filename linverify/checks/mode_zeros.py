@@ -22,7 +22,7 @@ from ..numerics.traits import TRAITS, Known, decay_rate
 from ..numerics.zero_discs import Zero, Zeros, channels, zeros_of
 from .findings import Findings
 from .mode_choice import line_name, told_complex
-from .mode_limits import WORDED, figure, own_unit, sentence, sides
+from .mode_limits import WORDED, figure, own_unit, sentence
 
 REACHES = 1e-6  # measure of control and of sight from which a pole at the origin makes a static gain infinite
 
@@ -76,7 +76,7 @@ def _right_of_axis(found: Zeros, ask: ModeAsk, path: str, into: Findings) -> Non
         status = Status.PASS if zero.at_origin or rate.low >= 0.0 else Status.UNDECIDED
         if status is not Status.PASS and rate.high < 0.0:
             status = Status.FAIL
-        what = f"{line_name(ask)}real part of the zeros {path}"
+        what = f"{line_name(ask)}real part (not above zero) of the zeros {path}"
         into.figures.append(
             Figure(what, _label(zero), -rate.value + 0.0, 0.0, unit, error=rate.error, origin=str(ask.place),
                    status=status)
@@ -95,11 +95,10 @@ def _limited(found: Zeros, ask: ModeAsk, limit: Limit, path: str, into: Findings
     what = f"{line_name(ask)}{WORDED[limit.word]} of the zeros {path}"
     for zero in found.zeros:
         known = _real(zero) if limit.word == "real" else TRAITS[limit.word](zero.pole)
-        for side in sides(limit):
-            one = figure(what, _label(zero), known, limit, side, shown)
-            into.figures.append(one)
-            if one.status is not Status.PASS:
-                into.reasons.append((one.status, f"{what}: that of the {_label(zero)} is {sentence(one, limit)}"))
+        one = figure(what, _label(zero), known, limit, shown)
+        into.figures.append(one)
+        if one.status is not Status.PASS:
+            into.reasons.append((one.status, f"{what}: that of the {_label(zero)} is {sentence(one, limit)}"))
 
 
 def _real(zero: Zero) -> Known:
@@ -137,11 +136,10 @@ def judge_gains(found: Modes, ask: ModeAsk, into: Findings) -> None:
             into.reasons.append((Status.UNDECIDED, f"{what}: {words}"))
             continue
         known = Known(gain.value, gain.value - gain.error, gain.value + gain.error)
-        for side in sides(limit):
-            one = figure(what, "", known, limit, side, shown)
-            into.figures.append(one)
-            if one.status is not Status.PASS:
-                into.reasons.append((one.status, f"{what} is {sentence(one, limit)}"))
+        one = figure(what, "", known, limit, shown)
+        into.figures.append(one)
+        if one.status is not Status.PASS:
+            into.reasons.append((one.status, f"{what} is {sentence(one, limit)}"))
 
 
 def _gain(found: Modes, model: LocalModel) -> _Gain:

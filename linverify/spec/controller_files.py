@@ -40,7 +40,7 @@ class ControllerFiles:
         """What the file says for `point`, or None after telling what is wrong with it."""
         path, shown = place_of(file, point, self.root)
         if path not in self._read:
-            self._read[path] = read_models(file, path, shown, f"{called}: controller: file")
+            self._read[path] = read_models(file, path, shown, f"{called}: controller: file", "controllers")
             self.ground.problems += self._read[path].problems
             self.files |= dict.fromkeys(self._read[path].files)
         models = self._read[path]

@@ -45,6 +45,7 @@ class Kind(Enum):
     BLOCK = "a group of words"
     NAMED = "a group of name: value"
     POINTS = "a group of name: operating point"
+    FILE = "a file, {point} in its name standing for the operating point"
     GAIN = "a number with or without a unit, or {table: FILE, over: NAME}"
     COEFFICIENTS = "a list of numbers"
     MATRIX = "a list of rows of numbers"

@@ -107,6 +107,7 @@ READERS: dict[Kind, Callable[[Reader, Row, str, Scalar, Node], Any]] = {
     Kind.DRIVES: _raw,
     Kind.BANDS: _raw,
     Kind.MODES: _raw,
+    Kind.FILE: values.file,
     Kind.GAIN: gains.gain,
     Kind.COEFFICIENTS: gains.coefficients,
     Kind.MATRIX: gains.matrix,

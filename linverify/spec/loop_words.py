@@ -27,7 +27,7 @@ CONTROLLER_WORDS = (
     Row("C", Kind.MATRIX, "v = C x + D e; one row for each signal moved"),
     Row("D", Kind.MATRIX, "direct gains; left out: zero"),
     Row("gain", Kind.MATRIX, "static gains: a row for each signal moved, a column for each measured"),
-    Row("file", Kind.SOURCE, "a file with A, B, C, D, dt, inputs, outputs, units; {point}: the operating point"),
+    Row("file", Kind.FILE, "a file with A, B, C, D, dt, inputs, outputs, units"),
     Row("object", Kind.PLANT, "a Python object with A, B, C, D, or a function of the operating point's values"),
 )
 

@@ -50,8 +50,10 @@ def place_of(source: FileWord, point: str, root: Path) -> tuple[Path, str]:
     return path, Path(os.path.relpath(path.resolve(), root.resolve())).as_posix()
 
 
-def read_models(source: FileWord, path: Path, shown: str, word: str = "local_models: source") -> Models:
-    """Read what lies at `path`; word: what names it, as the spec calls it.
+def read_models(
+    source: FileWord, path: Path, shown: str, word: str = "local_models: source", what: str = "models"
+) -> Models:
+    """Read what lies at `path`; word: what names it, as the spec calls it; what: it should hold.
 
     A file that is missing or of another format is a mistake at the place of `source`.
     """
@@ -59,7 +61,7 @@ def read_models(source: FileWord, path: Path, shown: str, word: str = "local_mod
     suffix = Path(source.text).suffix.lower()  # of the text: a point's name may have a dot in it
     known = ", ".join(SUFFIXES)
     if suffix and suffix not in SUFFIXES and not path.is_dir():
-        wrong = f"`{word}`: {quoted(source.text)} is no file of models"
+        wrong = f"`{word}`: {quoted(source.text)} is no file of {what}"
         reader.tell(source.place, wrong, f"one of {known} is expected, or a folder", nearest(suffix, SUFFIXES))
     elif path.is_dir():
         return _read(reader, files_in(path), shown, path)

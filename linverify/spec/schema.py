@@ -53,6 +53,7 @@ _SIMPLE: dict[Kind, Schema] = {
     Kind.RATE: _NUMBER_OR_TEXT,
     Kind.RELATIVE: {"type": "string", "pattern": "%"},
     Kind.WIDER_OF: _PAIR,
+    Kind.FILE: {"type": "string"},
     Kind.GAIN: _GAIN,
     Kind.COEFFICIENTS: _GAINS,
     Kind.MATRIX: {"anyOf": [_GAIN, _GAINS, {"type": "array", "items": _GAINS, "minItems": 1}]},

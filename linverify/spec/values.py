@@ -140,6 +140,12 @@ def source(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> Fi
     return FileWord(scalar.text, reader.folder(scalar.place), scalar.place)
 
 
+def file(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> FileWord | None:
+    """The name of a file with the folder that it is relative to; whether it exists is seen when the spec is bound."""
+    scalar = reader.scalar(node, called, 'a file is expected, as in "controllers/{point}.json"')
+    return None if scalar is None else FileWord(scalar.text, reader.folder(scalar.place), scalar.place)
+
+
 def choice(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> str | None:
     """One of the row's choices."""
     expected = ", ".join(row.choices[:-1]) + " or " + row.choices[-1] if len(row.choices) > 1 else row.choices[0]

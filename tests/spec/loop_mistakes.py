@@ -223,6 +223,7 @@ CASES: dict[str, tuple[Plant, str, dict[str, Any]]] = {
     ),
     # files
     "file_missing": (PLANT, one('{file: "{point}.json"}'), {"kn20.json": ""}),
+    "file_form": (PLANT, one("{file: [c.json]}"), {}),
     "file_suffix": (PLANT, one("{file: c.txt}"), {"c.txt": ""}),
     "file_json": (PLANT, FILE, {"c.json": "{"}),
     "file_inputs": (PLANT, FILE, js(inputs=["pich"])),

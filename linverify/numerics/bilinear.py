@@ -46,6 +46,8 @@ def at_nyquist(F: Array) -> bool:
     """True where A = I + F has a pole at z = -1 to within rounding."""
     if not len(F):
         return False
+    # scaled first: in foreign units a small singular value says nothing
+    F = np.asarray(matrix_balance(F, permute=False)[0])
     up = 2.0 * np.eye(len(F)) + F
     return bool(np.linalg.svd(up, compute_uv=False)[-1] <= AT_NYQUIST * max(1.0, float(np.linalg.norm(up))))
 

@@ -59,6 +59,9 @@ class LoopBinder:
 
         Mistakes go to the ground; a loop with one is left out.
         """
+        sources = (self._tables.files, self._files.files, self._objects.files)
+        for files in sources:
+            files.clear()
         known = Known(cell.name, known_values(trim, parameters))
         names = _Names(self.ground, asks)
         names.check()
@@ -67,8 +70,8 @@ class LoopBinder:
             loop = self._loop(ask, cell, known, names)
             if loop is not None:
                 found[ask.name] = loop
-        files = (*self._tables.files, *self._files.files, *self._objects.files)
-        return BoundLoops(MappingProxyType(found), tuple(dict.fromkeys(files)) if asks else ())
+        used = dict.fromkeys(file for files in sources for file in files)
+        return BoundLoops(MappingProxyType(found), tuple(used))
 
     def _loop(self, ask: LoopAsk, cell: Cell, known: Known, names: _Names) -> Loop | None:
         called = f"loops: {ask.name}"

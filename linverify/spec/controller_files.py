@@ -29,7 +29,7 @@ from .scalars import quoted
 
 @dataclass(slots=True)
 class ControllerFiles:
-    """Reads each file once. Mutable: files that were read are kept."""
+    """Reads each file once. Mutable: claims are kept; `files` are those that were asked for since it was cleared."""
 
     ground: Ground
     root: Path
@@ -42,8 +42,8 @@ class ControllerFiles:
         if path not in self._read:
             self._read[path] = read_models(file, path, shown, f"{called}: controller: file", "controllers")
             self.ground.problems += self._read[path].problems
-            self.files |= dict.fromkeys(self._read[path].files)
         models = self._read[path]
+        self.files |= dict.fromkeys(models.files)
         if not models.claims or models.problems:
             return None
         claim = models.claims.get(point) if models.several else models.claims[""]

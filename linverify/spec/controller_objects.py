@@ -36,7 +36,7 @@ _GIVEN = math.inf  # a dt that nobody gave: that of the loop
 
 @dataclass(slots=True)
 class ControllerObjects:
-    """Imports each object once. Mutable: objects and the files that they came from are kept."""
+    """Imports each object once. Mutable: objects are kept; `files` are those asked for since it was cleared."""
 
     ground: Ground
     root: Path

@@ -40,21 +40,21 @@ def bind_require(ground: Ground, ask: RequireAsk | None, sample: float | None, c
 
 
 def stricter(first: Limit, second: Limit) -> Limit:
-    """Both limits on one figure: the stricter side of each, told with both texts."""
-    low = second if second.low > first.low else first
-    high = second if second.high < first.high else first
-    base = second if low is second or high is second else first
-    other = first if base is second else second
-    ruled = [each for each in (base, other) if each.rule]
-    return replace(
-        base,
-        low=low.low,
-        high=high.high,
-        text=f"{told(base)}, and {told(other)}",
-        rule=", ".join(dict.fromkeys(each.rule for each in ruled)),
-        source="; ".join(dict.fromkeys(each.source for each in ruled)),
-        caution="; ".join(dict.fromkeys(each.caution for each in ruled)),
-    )
+    """Both limits on one figure: the stricter side of each; where they are equal, the one with a source.
+
+    The text tells both. Rule, source and caution are those of the limit that holds, so that no figure is put down to a
+    standard that does not have it.
+    """
+    base, other = (first, second) if _holds(first, second) else (second, first)
+    text = f"{told(base)}, and {told(other)}" + (f" ({other.source})" if other.source else "")
+    return replace(base, low=max(first.low, second.low), high=min(first.high, second.high), text=text)
+
+
+def _holds(first: Limit, second: Limit) -> bool:
+    """True where `first` is the stricter of two limits, or the one with a rule of two equal ones."""
+    if (first.low, first.high) == (second.low, second.high):
+        return bool(first.rule) or not second.rule
+    return first.low >= second.low and first.high <= second.high
 
 
 def told(limit: Limit) -> str:

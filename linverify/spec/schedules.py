@@ -41,7 +41,7 @@ class Table:
 
 @dataclass(slots=True)
 class Tables:
-    """Reads each table once. Mutable: tables and the files that they came from are kept."""
+    """Reads each table once. Mutable: tables are kept; `files` are those that were asked for since it was cleared."""
 
     ground: Ground
     files: dict[Path, None] = field(default_factory=dict)
@@ -87,6 +87,8 @@ class Tables:
         path = file.folder / file.text
         if path not in self._read:
             self._read[path] = self._load(file, path, word)
+        if self._read[path] is not None:
+            self.files[path] = None
         return self._read[path]
 
     def _load(self, file: FileWord, path: Path, word: str) -> Table | None:
@@ -95,7 +97,6 @@ class Tables:
         except (OSError, ValueError) as error:
             self._no_table(file, path, word, error)
             return None
-        self.files[path] = None
         shown = posixpath.normpath((Path(file.place.file).parent / file.text).as_posix())
         reader = Reader({})
         try:

@@ -111,6 +111,8 @@ class Written:
             return made
         sample = units.told(self.wiring.sample, time)
         self.told.append(f"a difference equation by the trapezoidal rule at {sample}")
+        if ask.kd is not None and 2.0 * read["filter"] < self.wiring.sample:
+            self.told.append("its filter is shorter than half the sample time, and rings")
         return realize.trapezoidal(*made, self.wiring.sample)
 
     def _is_siso(self, called: str, place: Place) -> bool:

@@ -171,6 +171,13 @@ def test_a_sampled_pid_is_made_by_the_trapezoidal_rule_and_says_so(tmp_path: Pat
     assert found.text == "{pid: {kp: 1, ki: 2}}; a difference equation by the trapezoidal rule at 0.01 s"
 
 
+@pytest.mark.parametrize(("filter_time", "rings"), [("4 ms", True), ("6 ms", False)])
+def test_a_filter_that_is_too_fast_for_its_sample_time_rings(tmp_path: Path, filter_time: str, rings: bool) -> None:
+    found = controller(tmp_path, one(f"{{pid: {{kd: 1, filter: {filter_time}}}}}", more="sample: 10 ms"))
+    assert (found.A[0, 0] < 0.0) is rings
+    assert found.text.endswith("; its filter is shorter than half the sample time, and rings") is rings
+
+
 def test_around_a_difference_equation_the_step_is_that_of_the_plant(tmp_path: Path) -> None:
     assert controller(tmp_path, one("{gain: 1}"), plant=STEPPING).step == 0.02
     loop = loops_of(tmp_path, one("{gain: 1}", more="sample: 60 ms, delay: 40 ms"), plant=STEPPING)["a"]

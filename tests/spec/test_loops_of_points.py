@@ -8,11 +8,13 @@ from pathlib import Path
 
 import numpy as np
 import pytest
+import yaml
+from jsonschema import Draft7Validator
 from loop_mistakes import A_FILE
 
 from linverify.core.case import Case, CheckAsk, Setting
 from linverify.core.errors import Place, SpecError
-from linverify.spec import bind
+from linverify.spec import bind, schema
 
 PLANT = (Path(__file__).parent / "bad" / "plant.py").read_text(encoding="utf-8")
 HEAD = """\
@@ -164,3 +166,93 @@ def test_an_empty_group_of_loops_takes_nothing_away(load: Load) -> None:
     with pytest.raises(SpecError) as caught:
         load(f"  low: {{hold: {{level: 1 m}}, loops: {{}}}}\nloops: {{pump: {PUMP}}}\n")
     assert [str(problem.wrong) for problem in caught.value.problems] == ["`loops` is an empty group"]
+
+
+SAMPLE = """\
+loops:
+  damper: {controller: {gain: 0.1 s}, measures: [pitch_rate], moves: [aft_flap]}
+  ride:
+    controller: {pid: {kp: 0.8 rad/m, ki: 0.2 rad/m/s, kd: 0.5 rad*s/m, filter: 20 ms}}
+    measures: [ride_height]
+    moves: [fore_flap]
+    with: [damper]
+    sample: 10 ms
+    delay: 30 ms
+    leaves: [heading]
+    break: plant_input
+    require: {gain_margin: 6 dB, phase_margin: 45 deg, delay_margin: 80 ms, disk_margin: 0.4, sensitivity_peak: 6 dB,
+              crossover: [1 rad/s, 4 rad/s], damping: {min: 0.4}, overshoot: 25 %, settling: 4 s, rule: six_db_45_deg}
+    confirm: nonlinear
+  forms: {controller: {A: [[-1, 0], [0, -2]], B: [1, 1], C: [[1, {table: k.csv, over: speed}]], D: 0},
+          measures: [pitch_rate], moves: [damper.set_point.pitch_rate], with: [damper],
+          require: {settling: {time: 4 s, within: 5 %}, rule: [six_db_45_deg]}}
+  ratio: {controller: {num: [1, 2], den: [1, 2, {table: k.csv, over: speed, column: k}]}, measures: [pitch_rate],
+          moves: [aft_flap]}
+  filed: {controller: {file: "c/{point}.json"}, measures: [pitch_rate], moves: [aft_flap]}
+  made: {controller: {object: "ctl.py:dc"}, measures: [pitch_rate], moves: [aft_flap]}
+"""
+FERRY = """\
+from linverify import Plant
+
+ferry = Plant(
+    states={"speed": "m/s", "pitch_rate": "rad/s", "heading": "rad", "ride_height": "m"},
+    inputs={"fore_flap": "rad", "aft_flap": "rad"},
+    dynamics=lambda t, x, u, p: x,
+)
+"""
+FERRY_HEAD = """\
+linverify: 1
+plant: plant.py:ferry
+operating_points: {kn30: {hold: {speed: 30 kn, heading: 0, ride_height: 1 m}, find: [pitch_rate, fore_flap, aft_flap],
+                          rates: {heading: free}}}
+"""
+
+
+@pytest.fixture
+def sample(tmp_path: Path) -> Path:
+    """A spec with loops of every form."""
+    file = {**A_FILE, "inputs": ["pitch_rate"], "outputs": ["aft_flap"]}
+    files = {
+        "plant.py": FERRY,
+        "ride.yaml": FERRY_HEAD + SAMPLE,
+        "k.csv": "speed [kn],k\n20,1\n40,3\n",
+        "c/kn30.json": json.dumps(file),
+        "ctl.py": "def dc(at):\n    return 0, 0, 0, at['speed']\n",
+    }
+    for name, content in files.items():
+        (tmp_path / name).parent.mkdir(exist_ok=True)
+        (tmp_path / name).write_text(content, encoding="utf-8")
+    return tmp_path / "ride.yaml"
+
+
+def test_loops_of_every_form_in_one_spec(sample: Path) -> None:
+    (case,) = bind.load(sample, sample.parent)
+    assert list(case.loops) == ["damper", "ride", "forms", "ratio", "filed", "made"]
+    ride = case.loops["ride"]
+    assert (ride.within, ride.sample, ride.delay, ride.leaves, ride.confirm) == (
+        ("damper",),
+        0.01,
+        0.03,
+        ("heading",),
+        True,
+    )
+    assert case.loops["forms"].controller.C.tolist() == [[1.0, pytest.approx(2.0)]]
+    assert case.loops["made"].controller.D.tolist() == [[pytest.approx(30 * 1852 / 3600)]]
+    assert [limit.within for limit in case.loops["forms"].require if limit.word == "settling"] == [0.05]
+    assert {path.name for path in case.files} == {"ride.yaml", "plant.py", "k.csv", "kn30.json", "ctl.py"}
+
+
+def test_the_schema_takes_them_too_and_sees_mistakes(sample: Path) -> None:
+    validator = Draft7Validator(schema.schema())
+    good = yaml.safe_load(sample.read_text(encoding="utf-8"))
+    assert [error.message for error in validator.iter_errors(good)] == []
+    for loop, wrong in (
+        ("ride", {"controller": {"pid": {"kq": 1}}}),
+        ("ride", {"require": {"gain_margins": "6 dB"}}),
+        ("ride", {"require": {"settling": {"within": "5 %"}}}),
+        ("ratio", {"controller": {"num": [], "den": [1]}}),
+        ("forms", {"controller": {"gain": {"table": "k.csv"}}}),
+        ("forms", {"break": "plant"}),
+    ):
+        bad = {**good, "loops": {**good["loops"], loop: {**good["loops"][loop], **wrong}}}
+        assert list(validator.iter_errors(bad)), wrong

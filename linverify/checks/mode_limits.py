@@ -129,9 +129,7 @@ def _overdamped(
         return
     if len(real) != 2 or any(mode in maybe for mode in real):
         names = ", ".join(label(mode) for mode in real)
-        words = (
-            "two real poles as one factor have a damping ratio above 1; choose two with near, between or participates"
-        )
+        words = "two real poles as one factor have a damping ratio above 1; choose just two of them"
         into.reasons.append((Status.UNDECIDED, f"{what} of {names}: {words}"))
         return
     one = figure(what, " and ".join(map(label, real)), pair_damping(real[0].pole, real[1].pole), limit, shown)

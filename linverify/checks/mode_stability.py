@@ -33,9 +33,9 @@ def judge_stable(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequen
 
 
 def _real_part(ask: ModeAsk, mode: Mode, status: Status, into: Findings) -> Figure:
-    rate = decay_rate(mode.pole)
+    rate, unit = decay_rate(mode.pole), f"1/{into.details['time_unit']}"
     return Figure(
-        f"{line_name(ask)}real part (below zero)", label(mode), -rate.value + 0.0, 0.0, f"1/{into.details['time_unit']}",
+        f"{line_name(ask)}real part (below zero)", label(mode), -rate.value + 0.0, 0.0, unit,
         error=rate.error, origin=str(ask.place), status=status,
     )  # fmt: skip
 

@@ -156,6 +156,8 @@ def _plain(case: Case, found: Modes, mode: Mode) -> dict[str, Any]:
     if math.isfinite(abs(mode.value)):
         row |= {"real": mode.value.real, "imag": mode.value.imag, "error": mode.pole.radius}
         row |= {word: TRAITS[word](mode.pole).value for word in ("natural_frequency", "damping")}
+        if mode.value == 0.0 or mode.origin == "yes":
+            del row["damping"]  # the origin has none
         row["hertz"] = row["natural_frequency"] / (2.0 * math.pi * _seconds(unit))
     if not math.isnan(mode.z.real):
         row |= {"z_real": mode.z.real, "z_imag": mode.z.imag}
@@ -163,6 +165,8 @@ def _plain(case: Case, found: Modes, mode: Mode) -> dict[str, Any]:
         value = TRAITS[word](mode.pole).value
         if math.isfinite(value):
             row[word] = value
+    if "period" in row and "time_to_half" in row:
+        row["cycles_to_half"] = row["time_to_half"] / row["period"]
     if mode.origin != "no":
         row["at_origin"] = mode.origin
     if not mode.alone:

@@ -6,7 +6,7 @@ import math
 from collections.abc import Callable, Mapping, Sequence
 from typing import Any
 
-from . import agreement, quantity
+from . import agreement, margins, modal, quantity
 from .forms import cell, complex_told, is_matrix, is_number, is_quantity, listing, matrix, plain_blocks
 from .tables import escaped, grid
 
@@ -51,6 +51,7 @@ def blocks(details: Mapping[str, Any], signals: Signals, time_unit: str = "", *,
         made.append(visible(rest.pop("smallest_visible"), time_unit))
     units = {str(pair[0]): str(pair[1]) for pairs in signals.values() for pair in pairs}
     made += agreement.blocks(rest, units, time_unit)
+    made += modal.blocks(rest, time_unit) + margins.blocks(rest, time_unit)
     return made + plain_blocks(rest)
 
 

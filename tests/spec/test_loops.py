@@ -174,7 +174,7 @@ def test_a_sampled_pid_is_made_by_the_trapezoidal_rule_and_says_so(tmp_path: Pat
 @pytest.mark.parametrize(("filter_time", "rings"), [("4 ms", True), ("6 ms", False)])
 def test_a_filter_that_is_too_fast_for_its_sample_time_rings(tmp_path: Path, filter_time: str, rings: bool) -> None:
     found = controller(tmp_path, one(f"{{pid: {{kd: 1, filter: {filter_time}}}}}", more="sample: 10 ms"))
-    assert (found.A[0, 0] < 0.0) is rings
+    assert bool(found.A[0, 0] < 0.0) is rings
     assert found.text.endswith("; its filter is shorter than half the sample time, and rings") is rings
 
 

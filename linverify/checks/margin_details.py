@@ -18,7 +18,7 @@
         sensitivity_peak, complementary_peak      met figures at the break: the largest singular value
         disk                         {input, output, both}: met figures, all channels at once
     steps                            list of {channel, overshoot (%), settling, within (%), final}, of a set point
-    closed_loop_poles                list of poles that the loop moves
+    closed_loop_poles                list of poles that the loop moves; of a loop with dead time, those that were found
     unmoved_poles                    list of poles with {states: {name: share}, excused: true where `leaves` covers it}
     limits                           list of {word, text} and, of ready-made limits, {rule, source, caution}
 
@@ -63,8 +63,8 @@ def told(case: Case, loop: Loop, opened: Opened, found: LoopMargins, excused: Se
         made["delay"] = {"value": loop.delay, "unit": time}
     if step is not None:
         made["sample"] = {"value": step, "unit": time}
-    if found.poles is not None:
-        made["closed_loop_poles"] = [pole(complex(value), step) for value in found.poles.values]
+    values = found.poles.values if found.poles is not None else found.delayed
+    made["closed_loop_poles"] = [pole(complex(value), step) for value in values]
     made["unmoved_poles"] = [
         {**pole(one.value, step), "states": dict(one.shares), "excused": covered}
         for one, covered in zip(found.unmoved, excused, strict=True)
@@ -136,7 +136,7 @@ def _joint(joint: Joint) -> dict[str, Any]:
     return {
         "sensitivity_peak": _met(joint.sensitivity),
         "complementary_peak": _met(joint.complementary),
-        "disk": {side: _disk(disk) for side, disk in disks.items()},
+        "disk": {side: _disk(disk) for side, disk in disks.items() if disk is not None},
     }
 
 

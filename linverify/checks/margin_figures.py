@@ -3,15 +3,17 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Iterator
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass, replace
 
 from ..core.case import Case
 from ..core.loop import Limit, Loop
 from ..core.shown import Shown
 from ..core.verdict import Figure, Sense, Status
-from ..numerics.loop_margins import LoopMargins, in_s
+from ..numerics.loop_margins import LoopMargins
 from ..numerics.margins import Found
+from .margin_poles import dampings
+from .margin_spread import matched, widened
 
 PER_NEPER = 20.0 / math.log(10.0)
 
@@ -33,15 +35,24 @@ class Ask:
     ratio: bool = False
 
 
-def figures(case: Case, loop: Loop, found: LoopMargins) -> tuple[list[Figure], list[str]]:
-    """A figure for every limit, channel by channel where that is how it is meant; words that no figure answers."""
+def figures(
+    case: Case, loop: Loop, found: LoopMargins, others: Sequence[LoopMargins] = ()
+) -> tuple[list[Figure], list[str]]:
+    """A figure for every limit, channel by channel where that is how it is meant; words that no figure answers.
+
+    others: the same loop on models that are wrong by as much as this one may be.
+    """
     made: list[Figure] = []
     silent = []
     for limit in loop.require:
-        some = [_figure(case, limit, ask) for ask in asked(case, limit, found)]
-        if not some and limit.word != "crossover":  # a loop without a crossover is told apart
+        varied = [{(ask.what, ask.channel): ask.value for ask in asked(case, limit, other)} for other in others]
+        asks = [
+            replace(ask, value=widened(ask.value, matched((ask.what, ask.channel), varied)))
+            for ask in asked(case, limit, found)
+        ]
+        if not asks and limit.word != "crossover":  # a loop without a crossover is told apart
             silent.append(limit.word)
-        made += some
+        made += [_figure(case, limit, ask) for ask in asks]
     return made, silent
 
 
@@ -64,7 +75,7 @@ def asked(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
     if limit.word in ("disk_margin", "sensitivity_peak", "complementary_peak"):
         yield _joint(limit, found)
     elif limit.word == "damping":
-        yield Ask("closed-loop damping ratio", "", least_damping(found), limit.low, Sense.LOWER)
+        yield from _dampings(limit, found)
 
 
 def _joint(limit: Limit, found: LoopMargins) -> Ask:
@@ -73,8 +84,9 @@ def _joint(limit: Limit, found: LoopMargins) -> Ask:
         one = found.channels[0].margins
         disk, sensitivity, complementary = one.disk, one.sensitivity, one.complementary
     else:
-        bounded = found.joint.at_input if found.at_input else found.joint.at_output
-        disk = Found(bounded.low, bounded.frequency, 0.0)
+        bounds = found.joint.here
+        half = 0.5 * (bounds.high - bounds.low)
+        disk = Found(bounds.low + half, bounds.frequency, half)
         sensitivity, complementary = found.joint.sensitivity, found.joint.complementary
     if limit.word == "disk_margin":
         return Ask("disk margin", "", disk, limit.low, Sense.LOWER)
@@ -98,21 +110,12 @@ def _inverse(factor: Found) -> Found:
     return Found(1.0 / factor.value, factor.frequency, factor.error / factor.value**2)
 
 
-def least_damping(found: LoopMargins) -> Found:
-    """The smallest damping ratio of the poles that the loop moves and that oscillate; one where none does."""
-    worst = Found(1.0)
-    if found.poles is None:
-        return Found(math.nan)
-    for value, error in zip(found.poles.values, found.poles.error, strict=True):
-        s = in_s(complex(value), found.loop.step)
-        if s.imag == 0.0 or math.isinf(abs(s)):
-            continue
-        damping, natural = -s.real / abs(s), abs(s)
-        if damping < worst.value:
-            # of a sampled loop the error is one of |z|, a distance of log(|z|) / step
-            worst = Found(damping, natural, float(error) / (natural * abs(value if found.loop.step else 1.0)
-                          * (found.loop.step or 1.0)))  # fmt: skip
-    return worst
+def _dampings(limit: Limit, found: LoopMargins) -> Iterator[Ask]:
+    met = dampings(found) or [Found(1.0)]  # no pole oscillates: as good as critically damped
+    if math.isfinite(limit.low):
+        yield Ask("closed-loop damping ratio", "", min(met, key=lambda e: e.value), limit.low, Sense.LOWER)
+    if math.isfinite(limit.high):
+        yield Ask("largest damping ratio", "", max(met, key=lambda e: e.value), limit.high, Sense.UPPER)
 
 
 def _figure(case: Case, limit: Limit, ask: Ask) -> Figure:
@@ -152,8 +155,3 @@ def status_of(found: Found, bound: float, sense: Sense, strict: bool = False) ->
     if inside - found.error > 0.0 or (not strict and inside - found.error >= 0.0):
         return Status.PASS
     return Status.UNDECIDED
-
-
-def with_error(found: Found, more: float) -> Found:
-    """The same with an error that is larger by `more`."""
-    return replace(found, error=found.error + more)

@@ -2,6 +2,7 @@
 
 from __future__ import annotations
 
+import cmath
 import math
 from collections.abc import Sequence
 
@@ -10,6 +11,7 @@ from ..core.loop import Loop
 from ..core.shown import number, with_unit
 from ..core.verdict import Figure, Sense, Status
 from ..numerics.loop_margins import LoopMargins, in_s
+from ..numerics.margins import guarantee
 from ..numerics.unmoved import Unmoved
 
 WRONG_WAY = "the loop is closed the wrong way round: unstable; with the opposite sign it would be stable"
@@ -22,7 +24,11 @@ def undecided(one: LoopMargins) -> str:
 
 def unstable(one: LoopMargins, time_unit: str) -> str:
     """The closed loop is unstable: pole 0.31 +- 2.1j per s (time to double 2.24 s)."""
-    poles = "; ".join(_poles([in_s(value, one.loop.step) for value in one.unstable], time_unit))
+    known = [value for value in one.unstable if not cmath.isnan(value)]
+    told = _poles([in_s(value, one.loop.step) for value in known], time_unit)
+    if len(known) < len(one.unstable):
+        told.append(f"{len(one.unstable) - len(known)} more that were counted and not found")
+    poles = "; ".join(told)
     return f"{WRONG_WAY} ({poles})" if one.opposite else f"the closed loop is unstable: {poles}"
 
 
@@ -63,6 +69,32 @@ def without_crossover(case: Case, loop: Loop, one: LoopMargins) -> list[tuple[St
     return [
         (Status.FAIL, f"{f'{each.name}: ' if several else ''}the gain of the loop never crosses one") for each in silent
     ]
+
+
+def notes(loop: Loop, one: LoopMargins) -> list[str]:
+    """What a disk margin promises, and where ready-made limits come from."""
+    told = []
+    if any(limit.word == "disk_margin" for limit in loop.require):
+        alpha = one.channels[0].margins.disk.value
+        if one.joint is not None:
+            alpha = one.joint.here.low
+        told.append(promise(alpha, len(one.channels)))
+    for limit in loop.require:
+        if limit.rule:
+            parts = (f"{limit.word.replace('_', ' ')} by the rule {limit.rule}", limit.source, limit.caution)
+            told.append("; ".join(part for part in parts if part))
+    return list(dict.fromkeys(told))
+
+
+def promise(alpha: float, channels: int) -> str:
+    """What a disk margin guarantees, in words."""
+    up, phase = guarantee(alpha)
+    gains = f"factors {number(1.0 / up, 4)} to {number(up, 4)} (+-{number(20.0 * math.log10(up), 4)} dB)"
+    if math.isinf(up):
+        gains = "any factor above zero"
+    every = ", in every channel at once" if channels > 1 else ""
+    told = f"the disk margin {number(alpha, 4)} guarantees stability for gains off by {gains} alone"
+    return f"{told}, or phases by {number(math.degrees(phase), 4)} deg alone{every}"
 
 
 def figure(figure: Figure) -> str:

@@ -20,7 +20,10 @@ from ..numerics.loop_margins import LoopMargins, measured
 from ..numerics.poles import AT_ZERO
 from ..numerics.unmoved import Unmoved
 from . import margin_details, margin_words
+from .margin_delays import with_delays
 from .margin_figures import figures
+from .margin_poles import counted
+from .margin_spread import varied
 from .study import Study
 
 DOMINATES = 0.5  # share of the states that `leaves` names in a mode from which on it is theirs
@@ -71,9 +74,11 @@ def setup(study: Study, name: str) -> Setup:
 
 
 def _judge(study: Study, loop: Loop, found: _Found) -> None:
-    case = study.case
-    broken = opened(setup(study, loop.name), loop.name)
-    one = measured(broken, loop.break_at == "plant_input")
+    case, at_input = study.case, loop.break_at == "plant_input"
+    around = setup(study, loop.name)
+    broken = opened(around, loop.name)
+    one, told = with_delays(around, loop, measured(broken, at_input), case.plant.time_unit)
+    found.notes += told
     excused = _unmoved(loop, one, found)
     found.details["margins"] = margin_details.told(case, loop, broken, one, excused)
     if one.trivial:
@@ -88,10 +93,16 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
     for channel in one.channels:
         if not channel.moves:
             found.reasons.append((Status.UNDECIDED, f"{channel.name} has no effect on itself around the loop"))
-    made, silent = figures(case, loop, one)
+    others = varied(around, loop.name, one)
+    if others is None or not all(other.stable and other.outcome.done for other in others):
+        found.reasons.append((Status.UNDECIDED, "the errors of the local model leave open whether the loop is stable"))
+        return
+    made, silent = figures(case, loop, one, others)
     found.figures += made
     found.reasons += [(Status.UNDECIDED, f"{word.replace('_', ' ')} could not be found") for word in silent]
     found.reasons += margin_words.without_crossover(case, loop, one)
+    reasons, notes = counted(loop, one, case.plant.time_unit)
+    found.reasons, found.notes = found.reasons + reasons, found.notes + notes + margin_words.notes(loop, one)
 
 
 def _unmoved(loop: Loop, one: LoopMargins, found: _Found) -> Sequence[bool]:

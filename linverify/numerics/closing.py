@@ -9,7 +9,7 @@ answer is refused with the reason, and never approximated.
 from __future__ import annotations
 
 from collections.abc import Mapping, Sequence
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -63,8 +63,23 @@ class Opened:
     controller: Transfer
 
 
-def opened(setup: Setup, name: str, *, extra: float = 0.0) -> Opened:
-    """The loop `name` of `setup` broken open; extra: dead time in addition to what is declared.
+@dataclass(frozen=True, slots=True, eq=False)
+class Held:
+    """One sampled channel around a continuous plant: the plant behind its hold, the controller, all dead time around.
+
+    states: names of the plant's.
+    """
+
+    plant: Transfer
+    controller: Transfer
+    delay: float
+    states: tuple[str, ...]
+
+
+def opened(setup: Setup, name: str, *, late: Sequence[float] = (), old: Sequence[float] = ()) -> Opened:
+    """The loop `name` of `setup` broken open.
+
+    late, old: of a sampled loop, dead times in addition to what is declared, of what it moves and of what it measures.
 
     Raises RefusedError with the reason where that cannot be done exactly, KeyError for a loop that is not declared.
     """
@@ -72,7 +87,7 @@ def opened(setup: Setup, name: str, *, extra: float = 0.0) -> Opened:
     inside = _inside(setup, name)
     _check(setup, loop, inside)
     try:
-        plant, delay = _seen(setup, loop, inside, extra)
+        plant, delay = _seen(setup, loop, inside, late, old)
         forward, back = _around(loop, plant)
     except IllPosedError as error:
         raise RefusedError(str(error)) from None
@@ -178,16 +193,18 @@ def _lag(name: str) -> str:
     return f"{name}.lag"
 
 
-def _seen(setup: Setup, loop: Loop, inside: Sequence[Loop], extra: float) -> tuple[Block, float]:
+def _seen(
+    setup: Setup, loop: Loop, inside: Sequence[Loop], late: Sequence[float], old: Sequence[float]
+) -> tuple[Block, float]:
     """What the loop sees from what it moves to what it measures, and the dead time around a continuous loop."""
     continuous = [one for one in inside if one.sample is None]
     body = _body(setup, (loop, *inside), continuous)
     if loop.sample is None:
         found = body.picked(_targets(setup, loop), loop.measures)
-        return found, _dead_time(setup, loop, found) + extra
+        return found, _dead_time(setup, loop, found)
     sampled = [_sampled(setup, one) for one in inside if one.sample is not None]
     try:
-        outer = _sampled(setup, loop, extra)
+        outer = _later(_sampled(setup, loop), late, old)
         return seen(body, outer, sampled, setup.model.step), 0.0
     except ValueError as error:
         raise RefusedError(str(error)) from None
@@ -238,10 +255,37 @@ def _controller(loop: Loop) -> Block:
     return Block(one.A, one.B, one.C, one.D, states, inputs, tuple(f"{loop.name}.{j + 1}" for j in range(len(one.C))))
 
 
-def _sampled(setup: Setup, loop: Loop, extra: float = 0.0) -> Sampled:
-    late = tuple(
-        loop.delay + extra + (0.0 if moved.loop else setup.delays.inputs.get(moved.name, 0.0)) for moved in loop.moves
+def held_alone(setup: Setup, name: str) -> Held | None:
+    """The loop as a continuous plant behind one hold; None where it is anything else. Raises as `opened` does."""
+    loop = setup.loops[name]
+    inside = _inside(setup, name)
+    _check(setup, loop, inside)
+    one = len(loop.moves) == len(loop.measures) == 1 and all(other.sample is None for other in inside)
+    if not one or loop.sample is None or setup.model.step is not None:
+        return None
+    try:
+        plant = _body(setup, (loop, *inside), inside).picked(_targets(setup, loop), loop.measures)
+    except IllPosedError as error:
+        raise RefusedError(str(error)) from None
+    around = _sampled(setup, loop)
+    names = _channels(loop)
+    return Held(
+        Transfer(plant.A, plant.B, plant.C, plant.D, 0.0, None, names, loop.measures), _transfer(loop, names),
+        around.late[0] + around.old[0], plant.states,
+    )  # fmt: skip
+
+
+def _later(loop: Sampled, late: Sequence[float], old: Sequence[float]) -> Sampled:
+    """With additional dead times."""
+    return replace(
+        loop,
+        late=tuple(a + b for a, b in zip(loop.late, late, strict=True)) if late else loop.late,
+        old=tuple(a + b for a, b in zip(loop.old, old, strict=True)) if old else loop.old,
     )
+
+
+def _sampled(setup: Setup, loop: Loop) -> Sampled:
+    late = tuple(loop.delay + (0.0 if moved.loop else setup.delays.inputs.get(moved.name, 0.0)) for moved in loop.moves)
     old = tuple(setup.delays.outputs.get(name, 0.0) for name in loop.measures)
     return Sampled(loop.name, loop.sample or 0.0, _controller(loop), loop.measures, _targets(setup, loop), late, old)
 

@@ -5,7 +5,6 @@ at once. Poles that the loop cannot move are set apart first, so that none of th
 from __future__ import annotations
 
 import math
-from collections.abc import Sequence
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -16,7 +15,8 @@ from .closing import Opened
 from .interconnect import IllPosedError, solved
 from .loop_stability import Poles, of_matrix
 from .margins import Found, Margins, margins
-from .multiloop import Multiloop, both_sides, multiloop
+from .multiloop import both_sides, multiloop
+from .peak_gain import Peak
 from .structured import Bounded
 from .transfer import Transfer
 from .unmoved import Unmoved, split
@@ -34,23 +34,25 @@ class Channel:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Joint:
-    """All channels at once: at the break, and disk margins at the plant's input, at its output and at both."""
+    """All channels at once, at the break (`here`: its disk margin); disk margins at the plant's two ends and at both."""
 
     sensitivity: Found
     complementary: Found
-    at_input: Bounded
-    at_output: Bounded
-    at_both: Bounded
+    here: Bounded
+    at_input: Bounded | None = None
+    at_output: Bounded | None = None
+    at_both: Bounded | None = None
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class LoopMargins:
     """What was measured.
 
-    why: the reason where margins could not be found; loop: the loop transfer function without what it does not move;
-    poles: of the closed loop, without dead time; unstable: those, in s per time unit (sampled: in z), that are surely
-    unstable; edge: those of which rounding leaves that open; opposite: closed with the opposite sign it would be
-    stable; trivial: the loop moves nothing. channels, joint: of a stable loop; joint: only of several channels.
+    outcome, why: the reason where margins could not be found; loop: the loop transfer function without what it does not
+    move; trivial: the loop moves nothing. poles: of the closed loop, where it has no dead time; delayed: those that
+    were found where it has. unstable: those, in s per time unit (sampled: in z), that are surely unstable; edge: those of
+    which rounding leaves that open; opposite: closed with the opposite sign it would be stable. channels, joint: of a
+    stable loop; joint: only of several channels; at_input: where it is broken.
     """
 
     loop: Transfer
@@ -66,10 +68,11 @@ class LoopMargins:
     channels: tuple[Channel, ...] = ()
     joint: Joint | None = None
     at_input: bool = True
+    delayed: tuple[complex, ...] = ()
 
 
-def measured(opened: Opened, at_input: bool) -> LoopMargins:
-    """Measure a loop, broken at the plant's input or at its output."""
+def measured(opened: Opened, at_input: bool, *, brief: bool = False) -> LoopMargins:
+    """Measure a loop, broken at the plant's input or at its output; brief: without disk margins elsewhere."""
     whole, states = (opened.plant_input, opened.states_in) if at_input else (opened.plant_output, opened.states_out)
     parts = split(whole, states)
     loop = parts.moved
@@ -77,19 +80,20 @@ def measured(opened: Opened, at_input: bool) -> LoopMargins:
         return LoopMargins(loop, parts.unmoved, trivial=True)
     if len(loop.D) == 1:
         return replace(_single(loop, parts.unmoved), at_input=at_input)
-    return replace(_several(opened, loop, parts.unmoved), at_input=at_input)
+    return replace(_several(opened, loop, parts.unmoved, at_input, brief), at_input=at_input)
 
 
 def _single(loop: Transfer, unmoved: tuple[Unmoved, ...]) -> LoopMargins:
     found = margins(loop)
     channel = Channel(loop.inputs[0], loop, found)
+    delayed = tuple(complex(value) for value in found.poles) if loop.delay else ()
     return LoopMargins(
         loop, unmoved, found.outcome, found.why, False, found.stable, closed_poles(loop), found.unstable, (),
-        found.opposite_stable, (channel,) if found.stable else (),
+        found.opposite_stable, (channel,) if found.stable else (), delayed=delayed,
     )  # fmt: skip
 
 
-def _several(opened: Opened, loop: Transfer, unmoved: tuple[Unmoved, ...]) -> LoopMargins:
+def _several(opened: Opened, loop: Transfer, unmoved: tuple[Unmoved, ...], at_input: bool, brief: bool) -> LoopMargins:
     if loop.delay:
         why = "several channels with a dead time: each would lie inside the other ones, which are closed"
         return LoopMargins(loop, unmoved, Outcome.DELAY_NOT_DECIDED, why)
@@ -104,27 +108,29 @@ def _several(opened: Opened, loop: Transfer, unmoved: tuple[Unmoved, ...]) -> Lo
         return LoopMargins(
             loop, unmoved, outcome, "", False, False, poles, unstable, edge, opposite is not None and opposite.stable
         )
+    here = multiloop(loop)
+    if not here.outcome.done or not here.stable:
+        outcome = Outcome.ON_THE_EDGE if here.outcome.done else here.outcome
+        return LoopMargins(loop, unmoved, outcome, "", False, False, poles)
     channels = tuple(_channel(loop, j) for j in range(len(loop.inputs)))
-    joint = _joint(opened, multiloop(loop))
-    outcome = next((one.margins.outcome for one in channels if not one.margins.outcome.done), Outcome.DONE)
-    return LoopMargins(loop, unmoved, outcome, "", False, True, poles, (), (), False, channels, joint)
+    joint = Joint(_peak(here.sensitivity), _peak(here.complementary), here.disk)
+    if not brief:
+        joint = _everywhere(opened, joint, at_input)
+    outcomes = [(one.margins.outcome, one.margins.why) for one in channels if not one.margins.outcome.done]
+    outcome, why = outcomes[0] if outcomes else (Outcome.DONE, "")
+    return LoopMargins(loop, unmoved, outcome, why, False, True, poles, (), (), False, channels, joint)
 
 
-def _joint(opened: Opened, here: Multiloop) -> Joint:
-    there = [multiloop(_moved(loop, names)) for loop, names in _breaks(opened)]
-    return Joint(
-        Found(here.sensitivity.value, here.sensitivity.frequency, here.sensitivity.error),
-        Found(here.complementary.value, here.complementary.frequency, here.complementary.error),
-        there[0].disk, there[1].disk, both_sides(opened.plant, opened.controller),
-    )  # fmt: skip
+def _everywhere(opened: Opened, joint: Joint, at_input: bool) -> Joint:
+    """With the disk margins at the other break and at both."""
+    whole, states = (opened.plant_output, opened.states_out) if at_input else (opened.plant_input, opened.states_in)
+    other = multiloop(split(whole, states).moved).disk
+    at_in, at_out = (joint.here, other) if at_input else (other, joint.here)
+    return replace(joint, at_input=at_in, at_output=at_out, at_both=both_sides(opened.plant, opened.controller))
 
 
-def _breaks(opened: Opened) -> Sequence[tuple[Transfer, Sequence[str]]]:
-    return ((opened.plant_input, opened.states_in), (opened.plant_output, opened.states_out))
-
-
-def _moved(loop: Transfer, names: Sequence[str]) -> Transfer:
-    return split(loop, names).moved
+def _peak(peak: Peak) -> Found:
+    return Found(peak.value, peak.frequency, peak.error if peak.outcome.done else math.nan)
 
 
 def _channel(loop: Transfer, j: int) -> Channel:

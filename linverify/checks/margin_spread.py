@@ -1,0 +1,89 @@
+"""What the errors of the local model's own entries do to the figures of a loop.
+
+Entries are moved by their errors, all at once and with signs drawn once for ever; the largest change of a figure, times
+a factor for not having tried all signs, is added to its error. Entries that are zero stay so: that they are zero says
+which states the loop does not move.
+"""
+
+from __future__ import annotations
+
+import math
+from collections.abc import Iterator, Mapping, Sequence
+from dataclasses import replace
+
+import numpy as np
+
+from ..core.model import LocalModel, frozen_array
+from ..numerics.closing import RefusedError, Setup, opened
+from ..numerics.loop_margins import LoopMargins, measured
+from ..numerics.margins import Found, Margins
+
+TRIED = 2
+GROWTH = 4.0  # of the largest change among those tried
+ENDLESS = 1e6  # a figure that is infinite without errors, and beyond this with them, is told as infinite
+
+
+def varied(setup: Setup, name: str, one: LoopMargins) -> list[LoopMargins] | None:
+    """The loop of `one` on models that are wrong by as much as entries may be; None where one of them has no loop."""
+    made = []
+    try:
+        for model in _models(setup.model):
+            made.append(measured(opened(replace(setup, model=model), name), one.at_input, brief=True))
+    except RefusedError:
+        return None
+    return made if one.loop.step is None else [_carried(one, other) for other in made]
+
+
+def _models(model: LocalModel) -> Iterator[LocalModel]:
+    if not any(errors.any() for errors in model.errors.values()):
+        return
+    generator = np.random.default_rng(20_026)
+    for _ in range(TRIED):
+        blocks = {}
+        for name, errors in model.errors.items():
+            block = getattr(model, name)
+            change = generator.choice([-1.0, 1.0], size=block.shape) * np.where(np.isfinite(errors), errors, 0.0)
+            blocks[name] = frozen_array(np.where(block != 0.0, block + change, 0.0))
+        yield replace(model, **blocks)
+
+
+def _carried(one: LoopMargins, other: LoopMargins) -> LoopMargins:
+    """`other` with the delay margins of a sampled loop, to first order in what phase and crossover changed by."""
+    if len(one.channels) != len(other.channels):
+        return other
+    return replace(
+        other,
+        channels=tuple(
+            replace(it, margins=replace(it.margins, delay=_delay(known.margins, it.margins)))
+            for known, it in zip(one.channels, other.channels, strict=True)
+        ),
+    )
+
+
+def _delay(one: Margins, other: Margins) -> Found:
+    known, frequency = one.delay, one.phase.frequency
+    if not math.isfinite(known.value) or not frequency > 0.0 or not math.isfinite(one.phase.value):
+        return known
+    change = (other.phase.value - one.phase.value) / frequency
+    change -= known.value * (other.phase.frequency - frequency) / frequency
+    return replace(known, value=known.value + change)
+
+
+def widened(found: Found, others: Sequence[Found]) -> Found:
+    """`found` with what the others differ from it added to its error."""
+    if not others or math.isnan(found.value):
+        return found
+    values = [other.value for other in others]
+    if any(math.isnan(value) for value in values):
+        return replace(found, error=math.nan)
+    if math.isinf(found.value):
+        least = min(values)
+        # infinite here and finite there: what it surely is lies below the smallest
+        return found if least > ENDLESS else Found(least, found.frequency, (1.0 - 1.0 / GROWTH) * least)
+    change = max(abs(value - found.value) for value in values)
+    return replace(found, error=found.error + GROWTH * change)
+
+
+def matched(key: tuple[str, str], others: Sequence[Mapping[tuple[str, str], Found]]) -> list[Found]:
+    """The same figure of other models; NaN where one does not have it."""
+    return [other.get(key, Found(math.nan)) for other in others]

@@ -34,7 +34,7 @@ class Channel:
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Joint:
-    """All channels at once, at the break (`here`: its disk margin); disk margins at the plant's two ends and at both."""
+    """All channels at once, at the break (here: its disk margin); disk margins at the plant's two ends and at both."""
 
     sensitivity: Found
     complementary: Found
@@ -50,9 +50,9 @@ class LoopMargins:
 
     outcome, why: the reason where margins could not be found; loop: the loop transfer function without what it does not
     move; trivial: the loop moves nothing. poles: of the closed loop, where it has no dead time; delayed: those that
-    were found where it has. unstable: those, in s per time unit (sampled: in z), that are surely unstable; edge: those of
-    which rounding leaves that open; opposite: closed with the opposite sign it would be stable. channels, joint: of a
-    stable loop; joint: only of several channels; at_input: where it is broken.
+    were found where it has. unstable: those, in s per time unit (sampled: in z), that are surely unstable; edge: those
+    of which rounding leaves that open; opposite: closed with the opposite sign it would be stable. channels, joint: of
+    a stable loop; joint: only of several channels; at_input: where it is broken.
     """
 
     loop: Transfer

@@ -58,8 +58,8 @@ def test_delay_added() -> None:
 
 def test_damping_removed() -> None:
     """s^2 + kd s + kp."""
-    kp, kd, two = 4.0, 2.4, {"measures": ("y1", "y2")}
-    limit = least("damping", 0.4)
+    kp, kd, limit = 4.0, 2.4, least("damping", 0.4)
+    two: dict[str, Any] = {"measures": ("y1", "y2")}
     assert judged(DOUBLE, loop(gain([[kp, kd]]), limit, **two)).status is Status.PASS
     found = broken(judged(DOUBLE, loop(gain([[kp, 0.1 * kd]]), limit, **two)), DAMPING)
     assert found == pytest.approx(0.1 * kd / (2.0 * math.sqrt(kp)), rel=1e-6)

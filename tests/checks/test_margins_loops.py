@@ -4,13 +4,14 @@ from __future__ import annotations
 
 import math
 from collections.abc import Callable
+from typing import Any
 
 import numpy as np
 import pytest
 from looping import DEG, companion, figure, gain, judged, least, linear_plant, loop, most, pid
 
 from linverify.core.delivered import Delays
-from linverify.core.loop import Actuator, Limit, Moved
+from linverify.core.loop import Actuator, Limit, Loop, Moved
 from linverify.core.verdict import Status
 
 INTEGRATOR = linear_plant([[0.0]], [[1.0]], [[1.0]])
@@ -40,7 +41,7 @@ def test_dead_times_around_the_loop_add_up() -> None:
     assert figure(verdict, DELAY).worst == pytest.approx(math.pi / (2.0 * k) - d, rel=1e-6)
 
 
-def cascade(k1: float, k2: float, **changes: object) -> tuple[object, object]:
+def cascade(k1: float, k2: float, **changes: Any) -> tuple[Loop, Loop]:
     outer = loop(pid(k1), *ALL, moves=(Moved("y2", "inner"),))
     inner = loop(pid(k2), name="inner", measures=("y2",), **changes)
     return outer, inner
@@ -201,7 +202,7 @@ def test_the_delay_margin_of_a_difference_equation_counts_whole_steps() -> None:
 
 A10 = 10.0
 ROTATING = linear_plant([[0.0, A10], [-A10, 0.0]], np.eye(2), [[1.0, A10], [-A10, 1.0]])
-PAIR = {"measures": ("y1", "y2"), "moves": (Moved("u1"), Moved("u2"))}
+PAIR: dict[str, Any] = {"measures": ("y1", "y2"), "moves": (Moved("u1"), Moved("u2"))}
 
 
 @pytest.mark.parametrize("broken", ["plant_input", "plant_output"])
@@ -310,7 +311,7 @@ def test_damping_is_that_of_the_poles_the_loop_moves() -> None:
     """s^2 + kd s + kp: damping kd / (2 sqrt(kp))."""
     kp, kd = 4.0, 1.2
     true = kd / (2.0 * math.sqrt(kp))
-    two = {"measures": ("y1", "y2")}
+    two: dict[str, Any] = {"measures": ("y1", "y2")}
     assert judged(DOUBLE, loop(gain([[kp, kd]]), least("damping", 0.99 * true), **two)).status is Status.PASS
     broken = judged(DOUBLE, loop(gain([[kp, kd]]), least("damping", 1.01 * true), **two))
     assert broken.status is Status.FAIL

@@ -84,7 +84,7 @@ def _between(one: Mapped, other: Mapped) -> Gap:
     distance = _distance(first, left)
     value, where, done = climb(distance)
     touched = _touching(first, left, where)
-    error = RISE * value + abs(touched - value) + rounding(distance, where) * max(value, 1e-3)
+    error = RISE * value + abs(touched - value) + rounding(distance, where)
     right, unsure = _winding(first, second)
     if touched >= 1.0 - ONE:
         return Gap(1.0, one.told(where), right == len(second.A), ONE)

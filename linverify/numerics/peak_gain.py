@@ -55,7 +55,7 @@ def peak(transfer: Transfer) -> Peak:
     if len(on_axis):
         return Peak(math.inf, system.told(float(np.abs(on_axis.imag).min())), 0.0)
     value, omega, done = climb(system)
-    error = RISE * value + rounding(system, omega) * value
+    error = RISE * value + rounding(system, omega)
     return Peak(value, system.told(omega), error, Outcome.DONE if done else Outcome.INACCURATE)
 
 
@@ -147,12 +147,15 @@ def looked_at(system: Mapped, level: float) -> Array:
 
 
 def rounding(system: Mapped, omega: float) -> float:
-    """Relative error of a response at a mapped frequency from the rounding of A, to first order."""
+    """Error of the largest singular value at a mapped frequency from rounding of all entries of A, to first order."""
     n = len(system.A)
+    size = 2.0**-50 * float(np.linalg.norm(system.D))
     if n == 0 or not math.isfinite(omega):
-        return 2.0**-50
+        return size
     shifted = 1j * omega * np.eye(n) - system.A
-    return 2.0**-52 * n * max(1.0, float(np.linalg.norm(system.A) / np.linalg.svd(shifted, compute_uv=False)[-1]))
+    moved = np.abs(np.linalg.solve(shifted, system.B.astype(np.complex128)))
+    seen = np.abs(np.linalg.solve(shifted.T, system.C.T.astype(np.complex128))).T
+    return size + 2.0**-52 * n * float(np.linalg.norm(seen @ (np.abs(system.A) + abs(omega) * np.eye(n)) @ moved))
 
 
 def _starts(poles: Complex) -> Array:

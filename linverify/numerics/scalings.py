@@ -18,6 +18,7 @@ MARGINS = (1.0, 0.3, 0.1, 0.03, 0.01, 3e-3, 1e-3, 3e-4, 1e-4, 3e-5, 1e-5, 3e-6, 
 NEWTON = 3  # steps for each of them
 STEP = 2.0  # largest change of log D in a step
 RANGE = 9.0  # largest |log D|: scalings beyond gain nothing but rounding errors
+EVEN = 1e-6  # unevenness of the vectors of s_1 that counts as none
 SWEEPS = 6  # of the first guess
 TURNS = 30  # of the phases
 STARTS = 4  # besides the one from singular vectors
@@ -30,19 +31,38 @@ def from_above(M: Complex) -> tuple[Array, Array]:
     if m == 1:
         return best, np.ones((F, m))
     y = _level(M)
-    level = _sizes(scaled(M, np.exp(y)))
-    at = np.where((level < best)[:, np.newaxis], y, at)
-    best = np.minimum(level, best)
+    value, uneven = _top(scaled(M, np.exp(y)))
+    at = np.where((value < best)[:, np.newaxis], y, at)
+    best = np.minimum(value, best)
+    going = np.arange(F)
     for margin in MARGINS:
-        value, y = best, at
-        g = np.maximum(value**2 * (1.0 + margin), 1e-300)
-        for _ in range(NEWTON):
-            y = _inside(M, y, _newton(scaled(M, np.exp(y)), g), g)
-            now = _sizes(scaled(M, np.exp(y)))
-            better = now < best
-            best = np.where(better, now, best)
-            at = np.where(better[:, np.newaxis], y, at)
+        going = going[uneven[going] > EVEN]
+        if len(going) == 0:
+            break
+        best[going], at[going], uneven[going] = _lowered(M[going], best[going], at[going], uneven[going], margin)
     return best, np.exp(at - at[:, :1])
+
+
+def _lowered(M: Complex, best: Array, at: Array, uneven: Array, margin: float) -> tuple[Array, Array, Array]:
+    """Bounds, log D and unevenness after Newton steps of the barrier at `margin` above the bounds."""
+    y = at
+    g = np.maximum(best**2 * (1.0 + margin), 1e-300)
+    for _ in range(NEWTON):
+        y = _inside(M, y, _newton(scaled(M, np.exp(y)), g), g)
+        now, uneven_now = _top(scaled(M, np.exp(y)))
+        better = now < best
+        best, uneven = np.where(better, now, best), np.where(better, uneven_now, uneven)
+        at = np.where(better[:, np.newaxis], y, at)
+    return best, at, uneven
+
+
+def _top(N: Complex) -> tuple[Array, Array]:
+    """Largest singular value (F,), and how much its two vectors differ in the sizes of their entries.
+
+    Where they do not, the slope of log s_1 over log D is zero, and the bound is the structured singular value.
+    """
+    left, values, right = np.linalg.svd(N)
+    return values[:, 0], np.abs(np.abs(left[:, :, 0]) ** 2 - np.abs(right[:, 0, :]) ** 2).max(axis=1)
 
 
 def from_below(M: Complex, D: Array) -> tuple[Array, Array]:

@@ -24,7 +24,8 @@ from .scalings import from_above, from_below, turned
 
 WITHIN = 1e-6  # relative: how far the level stands above the highest bound of a single frequency
 COVERS = 150  # most stretches, each of which costs the eigenvalues of one pencil
-THIN = 1e-12  # of the frequency: a stretch thinner than this is judged by its ends
+THIN = 1e-5  # of the distance to the nearest pole: a stretch thinner than this is judged by three points, to about
+# the square of this share
 POLISH, POINTS, SHRINK = 12, 9, 3.0
 INWARD = (1e-9, 1e-6, 1e-4, 1e-2, 0.1, 0.3)  # of a stretch: its ends move in by so much until they are below the level
 
@@ -63,12 +64,14 @@ class Found:
 class _Cover:
     """The state of the covering: mutable, since it is one loop's scratch sheet.
 
-    open: stretches of mapped frequency that are not yet shown to lie below `level`; scalings: those tried.
+    open: stretches of mapped frequency that are not yet shown to lie below `level`; scalings: those tried; tops: mapped
+    frequencies at which the level had to rise.
     """
 
     level: float
     open: list[tuple[float, float]]
     scalings: list[Array]
+    tops: list[float]
 
 
 def structured_peak(system: Mapped) -> Found:
@@ -77,12 +80,13 @@ def structured_peak(system: Mapped) -> Found:
     m = system.D.shape[0]
     if m == 1:
         return _single(system)
-    omega, above, D, below = _survey(system)
-    low, where, phases = _raised(system, omega, below, D)
-    cover = _Cover(max(low, float(above.max())) * (1.0 + WITHIN), [(0.0, math.inf)], [np.ones(m)])
+    omega, above, below = _survey(system)
+    best = _raised(system, omega[np.argsort(-below, kind="stable")[:2]])
+    cover = _Cover(max(best[0], float(above.max())) * (1.0 + WITHIN), [(0.0, math.inf)], [np.ones(m)], [])
     done = _covered(system, cover)
+    low, where, phases = max(best, _raised(system, np.array(cover.tops)), key=lambda one: one[0])
     high = cover.level if done else min(climb(_rescaled(system, D))[0] for D in cover.scalings) * (1.0 + WITHIN)
-    high = max(high, cover.level) * (1.0 + rounding(system, where))
+    high = max(high, cover.level) + rounding(system, where)
     return Found(low, high, where, _deltas(system, where, phases), done)
 
 
@@ -90,7 +94,7 @@ def _single(system: Mapped) -> Found:
     value, where, done = climb(system)
     response = system.respond(np.array([where]))[0, 0, 0]
     deltas = np.array([1.0 / response if response else 0.0])
-    return Found(value, value * (1.0 + WITHIN + rounding(system, where)), where, deltas, done)
+    return Found(value, value * (1.0 + WITHIN) + rounding(system, where), where, deltas, done)
 
 
 def _rescaled(system: Mapped, D: Array) -> Mapped:
@@ -104,8 +108,8 @@ def _evened(system: Mapped) -> Mapped:
     return _rescaled(system, 1.0 / np.asarray(scale, dtype=np.float64))
 
 
-def _survey(system: Mapped) -> tuple[Array, Array, Array, Array]:
-    """Frequencies where the bounds may be large, bounds from above with their scalings, bounds from below."""
+def _survey(system: Mapped) -> tuple[Array, Array, Array]:
+    """Mapped frequencies where the bounds may be large, the bounds from above, the bounds from below."""
     value, where, _ = climb(system)
     sizes = np.abs(system.poles())
     omega = np.concatenate([[where], sizes, np.abs(system.poles().imag)])
@@ -118,7 +122,7 @@ def _survey(system: Mapped) -> tuple[Array, Array, Array, Array]:
     omega = np.concatenate([omega, fine])
     M = system.respond(omega)
     above, D = from_above(M)
-    return omega, above, D, from_below(M, D)[0]
+    return omega, above, from_below(M, D)[0]
 
 
 def _followed(system: Mapped, places: Array) -> Array:
@@ -138,27 +142,34 @@ def _followed(system: Mapped, places: Array) -> Array:
     return places
 
 
-def _raised(system: Mapped, omega: Array, below: Array, D: Array) -> tuple[float, float, Array]:
-    """The highest bound from below near the highest of `below`, its frequency, its phases (m,)."""
-    best = (-math.inf, 0.0, np.zeros(system.D.shape[0]))
+_Raised = tuple[float, float, Array]
+
+
+def _raised(system: Mapped, places: Array) -> _Raised:
+    """The highest bound from below near `places`, its mapped frequency, its phases (m,)."""
+    best: _Raised = (-math.inf, 0.0, np.zeros(system.D.shape[0]))
     poles = system.poles()
-    for place in np.argsort(-below, kind="stable")[:2]:
-        M = system.respond(omega[[place]])
-        value, phases = from_below(M, D[[place]])
-        where = float(omega[place])
-        if value[0] > best[0]:
-            best = (float(value[0]), where, phases[0])
-        if not math.isfinite(where) or len(poles) == 0:
-            continue
-        width = float(np.abs(1j * where - poles).min())
-        for _ in range(POLISH):
-            grid = np.abs(where + width * np.linspace(-1.0, 1.0, POINTS))
-            value, phases = turned(system.respond(grid), np.broadcast_to(phases[:1], (POINTS, phases.shape[1])))
-            top = int(np.argmax(value))
-            if value[top] > best[0]:
-                best = (float(value[top]), float(grid[top]), phases[top])
-            where, phases = float(grid[top]), phases[[top]]
-            width = width / SHRINK if 0 < top < POINTS - 1 else width
+    for place in places:
+        M = system.respond(np.array([place]))
+        value, phases = from_below(M, from_above(M)[1])
+        found = (float(value[0]), float(place), phases[0])
+        best = max(best, found, _climbed(system, poles, found), key=lambda one: one[0])
+    return best
+
+
+def _climbed(system: Mapped, poles: Complex, start: _Raised) -> _Raised:
+    """`start` followed over frequency."""
+    best, (_, where, phases) = start, start
+    if not math.isfinite(where) or len(poles) == 0:
+        return best
+    width = float(np.abs(1j * where - poles).min())
+    for _ in range(POLISH):
+        grid = np.abs(where + width * np.linspace(-1.0, 1.0, POINTS))
+        value, turns = turned(system.respond(grid), np.broadcast_to(phases, (POINTS, len(phases))))
+        top = int(np.argmax(value))
+        where, phases = float(grid[top]), turns[top]
+        best = max(best, (float(value[top]), where, phases), key=lambda one: one[0])
+        width = width / SHRINK if 0 < top < POINTS - 1 else width
     return best
 
 
@@ -171,34 +182,50 @@ def _deltas(system: Mapped, omega: float, phases: Array) -> Complex:
 
 def _covered(system: Mapped, cover: _Cover) -> bool:
     """Cover the axis stretch by stretch; False when the budget ends before it is covered."""
+    poles = system.poles()
     _cover_by(system, cover, cover.scalings[0])
     for _ in range(COVERS):
         if not cover.open:
             return True
-        probes = _probes(cover.open[0], system)
+        stretch = cover.open.pop(0)
+        probes = _probes(stretch, poles)
         above, D = from_above(system.respond(probes))
         worst = int(np.argmax(above))
-        cover.level = max(cover.level, float(above[worst]) * (1.0 + WITHIN))
+        if above[worst] * (1.0 + WITHIN) > cover.level:
+            _rise(system, cover, float(probes[worst]), float(above[worst]))
+        if _thin(probes, poles) and gains(_rescaled(system, D[1]), probes).max() < cover.level:
+            continue
+        cover.open.insert(0, stretch)
         cover.scalings.append(D[worst])
         _cover_by(system, cover, D[worst])
-        if probes[0] == probes[-1] or _thin(cover, probes):
-            cover.open.pop(0)
+        if cover.open and cover.open[0] == stretch:
+            # its worst end was decisive and is not yet behind: the halves have other ends
+            cover.open[:1] = [(stretch[0], float(probes[1])), (float(probes[1]), stretch[1])]
     return not cover.open
 
 
-def _probes(stretch: tuple[float, float], system: Mapped) -> Array:
-    """Both ends and the middle of a stretch."""
+def _rise(system: Mapped, cover: _Cover, omega: float, above: float) -> None:
+    """Lift the level over the bound from above near a frequency."""
+    top = _followed(system, np.array([omega]))
+    if len(top):
+        higher = float(from_above(system.respond(top))[0][0])
+        omega, above = (float(top[0]), higher) if higher > above else (omega, above)
+    cover.level = above * (1.0 + WITHIN)
+    cover.tops.append(omega)
+
+
+def _probes(stretch: tuple[float, float], poles: Complex) -> Array:
+    """Both ends of a stretch and a point between them."""
     low, high = stretch
     if math.isinf(high):
-        return np.array([low, 2.0 * low if low > 0 else float(np.abs(system.A).max(initial=1.0)), math.inf])
+        return np.array([low, 2.0 * low if low > 0 else float(np.abs(poles).max(initial=1.0)), math.inf])
     return np.array([low, 0.5 * (low + high), high])
 
 
-def _thin(cover: _Cover, probes: Array) -> bool:
-    """True where the first open stretch has not shrunk and is too thin to be divided: its probes decided it."""
-    if not cover.open or cover.open[0] != (probes[0], probes[-1]):
-        return False
-    return bool(probes[-1] - probes[0] <= THIN * probes[-1])
+def _thin(probes: Array, poles: Complex) -> bool:
+    """True for a stretch so thin, against the distance to the nearest pole, that its ends and middle decide."""
+    nearest = float(np.abs(1j * probes[1] - poles).min(initial=math.inf))
+    return bool(probes[2] - probes[0] <= max(THIN * nearest, 4.0 * np.spacing(probes[2])))
 
 
 def _cover_by(system: Mapped, cover: _Cover, D: Array) -> None:

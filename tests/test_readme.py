@@ -26,6 +26,7 @@ def language_table() -> str:
     for word, behind, default, meaning in reference():
         if not word.startswith("every_point."):
             behind = behind.replace("nothing in this version", "not available in this version")
+            meaning = meaning.replace("|", "\\|")  # of |G|, which would end a cell
             lines.append(f"| `{word}` | {behind} | {default} | {meaning} |")
     return "\n".join(lines) + "\n"
 

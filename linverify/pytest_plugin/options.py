@@ -9,7 +9,7 @@ from typing import Literal, cast
 
 import pytest
 
-KINDS = ("trims", "differentiable", "agrees", "follows", "margins")
+KINDS = ("trims", "differentiable", "agrees", "follows", "modes", "margins")
 MARKERS = (
     "linverify: a check of an operating point, collected from a spec",
     *(f"linverify_{kind}: a check of the kind `{kind}`" for kind in KINDS),

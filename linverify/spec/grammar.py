@@ -88,6 +88,12 @@ def not_yet(row: Row) -> Row:
     return replace(row, available=False)
 
 
+def without(rows: tuple[Row, ...], *words: str) -> tuple[Row, ...]:
+    """`rows` in which `words`, however deep, are refused as long as their checks are not built."""
+    inner = (replace(row, of=without(row.of, *words)) for row in rows)
+    return tuple(not_yet(row) if row.word in words else row for row in inner)
+
+
 SIGNAL = "the signal's"
 
 

@@ -8,7 +8,7 @@ _TIME = "time"
 
 MODE_LIMITS = (
     Row("damping", Kind.BOUNDS, "damping ratio"),
-    Row("natural_frequency", Kind.BOUNDS, "|pole|, in rad/s or Hz", dimension="frequency", sign="+"),
+    Row("natural_frequency", Kind.BOUNDS, "how far the pole is from the origin, in rad/s or Hz", dimension="frequency", sign="+"),
     Row("decay_rate", Kind.BOUNDS, "-Re, that is damping times natural frequency", dimension="1/time"),
     Row("time_constant", Kind.BOUNDS, "1 over the decay rate", dimension=_TIME, sign="+"),
     Row("time_to_half", Kind.BOUNDS, "time in which a stable mode halves", dimension=_TIME, sign="+"),
@@ -25,7 +25,7 @@ EXCEPT_WORDS = (
 ZERO_LIMITS = (
     Row("real", Kind.BOUNDS, "real part", dimension="1/time"),
     Row("damping", Kind.BOUNDS, "damping ratio"),
-    Row("natural_frequency", Kind.BOUNDS, "|zero|, in rad/s or Hz", dimension="frequency", sign="+"),
+    Row("natural_frequency", Kind.BOUNDS, "how far the zero is from the origin, in rad/s or Hz", dimension="frequency", sign="+"),
 )
 
 GAIN_LIMITS = (

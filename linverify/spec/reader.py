@@ -175,7 +175,8 @@ def _homes(word: str) -> str:
         for row in rows:
             if row.word == word and home:
                 found[home] = None
-            walk(row.of, home if row.word == "*" else f"`{row.word}`")
+            if row.available:
+                walk(row.of, home if row.word == "*" else f"`{row.word}`")
 
     walk(SPEC_WORDS, "no other word")
     return " or ".join(found)

@@ -14,11 +14,12 @@ from .grammar import SIGNAL as SIGNAL
 from .grammar import Kind as Kind
 from .grammar import Row as Row
 from .grammar import default_of as default_of
-from .grammar import each, later, not_yet
+from .grammar import each, later, not_yet, without
 from .grammar import row_of as row_of
-from .loop_words import LOOPS
+from .loop_words import LOOPS as ALL_LOOPS
 from .mode_words import ACTUATOR_WORDS, MODE_WORDS
 
+(LOOPS,) = without((ALL_LOOPS,), "overshoot", "settling", "confirm")
 DERIVE = "derive"  # behind `local_models: source`, for models that nobody delivered
 SHAPES = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
 
@@ -75,8 +76,8 @@ SHARED_POINT_WORDS = (
         each(Kind.QUANTITY, dimension="the parameter's")),
     Row("drives", Kind.DRIVES, "what this point overrides of the drives", DRIVE_WORDS),
     Row("error_bands", Kind.BANDS, "what this point overrides of the error bands", BAND_WORDS),
-    not_yet(Row("modes", Kind.MODES, "limits on poles instead of those of the spec", MODE_WORDS)),
-    not_yet(replace(LOOPS, meaning="what this point overrides of the loops")),
+    Row("modes", Kind.MODES, "limits on poles instead of those of the spec", MODE_WORDS),
+    replace(LOOPS, meaning="what this point overrides of the loops"),
 )  # fmt: skip
 
 AXIS_WORDS = (
@@ -166,10 +167,10 @@ SPEC_WORDS = (
     Row("drives", Kind.DRIVES, "the input sequences that both models are driven with", DRIVE_WORDS),
     Row("error_bands", Kind.BANDS, "how far plant and local model may differ", BAND_WORDS),
     later("frequency_bands", "response to small sines against the local model"),
-    not_yet(Row("modes", Kind.MODES, "limits on the local model's poles, zeros and gains", MODE_WORDS)),
+    Row("modes", Kind.MODES, "limits on the local model's poles, zeros and gains", MODE_WORDS),
     not_yet(Row("actuators", Kind.NAMED, "lags and limits in series with plant inputs",
         each(Kind.BLOCK, ACTUATOR_WORDS))),
-    not_yet(LOOPS),
+    LOOPS,
     later("variations", "parameters that are not known exactly"),
     later("reach", "how far the drives can be scaled"),
     later("handover", "between neighbouring operating points"),
@@ -186,8 +187,8 @@ CHECKS = {
     "agrees": True,
     "follows": True,
     "responds": False,
-    "modes": False,
-    "margins": False,
+    "modes": True,
+    "margins": True,
     "reach": False,
     "handover": False,
     "coverage": False,

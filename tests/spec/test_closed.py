@@ -83,7 +83,7 @@ def test_drives_at_the_set_point_name_what_is_measured(load: Load) -> None:
 
 def test_the_envelopes_rate_is_none_of_a_set_point(load: Load) -> None:
     (case,) = load("envelope: {level: {rate: 1 m/min}, inflow: {rate: 2 l/s/min}}\n"
-                   "drives: {horizon: 30 min, every: 1 min, amplitude: {level: 1, inflow: 1}, loop: level, at: set_point}\n"
+                   "drives: {horizon: 9 h, every: 1 h, amplitude: {level: 1, inflow: 1}, loop: level, at: set_point}\n"
                    "error_bands: {inflow: {peak: 1}}\n")  # fmt: skip
     assert dict(case.drives[0].rate) == {"inflow": pytest.approx(7.2)}
     assert "drives.rate.level" not in [setting.word for setting in case.settings]

@@ -35,8 +35,8 @@ SLACK = 1e-6  # of the band: settling is told for bands this much narrower and w
 
 @dataclass(frozen=True, slots=True)
 class StepFigures:
-    """final: value that a unit step approaches; overshoot: fraction of it by which it is passed; peak_time: when, NaN for
-    never; settling: time units after which the response stays within the band. NaN where the final value is zero.
+    """final: value that a unit step approaches; overshoot: fraction of it by which it is passed; peak_time: when, NaN
+    for never; settling: time units after which the response stays within the band. NaN where the final value is zero.
 
     The error of `settling` covers that a swing may only just leave the band.
     """

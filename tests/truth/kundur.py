@@ -8,6 +8,8 @@ from __future__ import annotations
 
 import cmath
 import math
+from dataclasses import dataclass
+from functools import cache
 
 import numpy as np
 
@@ -37,8 +39,22 @@ classical = Plant(
 )
 
 
-def with_field() -> np.ndarray:
-    """A (3, 3) of speed, angle and field flux in manual excitation, by the formulas of section 12.3."""
+@dataclass(frozen=True)
+class Field:
+    """The machine with its field circuit, linear about the operating point, by the formulas of section 12.3.
+
+    A (3, 3) of speed, angle and field flux; drive (3,) of the field voltage; seen (3,) of the terminal voltage (its
+    entries are K5 and K6); constants: K1 to K6.
+    """
+
+    A: np.ndarray
+    drive: np.ndarray
+    seen: np.ndarray
+    constants: tuple[float, ...]
+
+
+@cache
+def field_circuit() -> Field:
     Ld, Lq, Ll, Ra, T, A, B, psi_1 = 1.81, 1.76, 0.16, 0.003, 8.0, 0.031, 6.93, 0.8
     Lad, Laq = Ld - Ll, Lq - Ll
     Lfd = Lad * (TRANSIENT - Ll) / (Lad - TRANSIENT + Ll)
@@ -50,7 +66,7 @@ def with_field() -> np.ndarray:
     delta = inner - cmath.phase(BUS)
     frame = cmath.exp(-1j * inner)
     iq, id_ = (CURRENT * frame).real, -(CURRENT * frame).imag
-    eq = (TERMINAL * frame).real
+    eq, ed = (TERMINAL * frame).real, -(TERMINAL * frame).imag
     i_fd = (eq + Ra * iq + (total * Lad + Ll) * id_) / (total * Lad)
     psi_ad, psi_aq = total * Lad * (i_fd - id_), -total * Laq * iq
     Lads, Laqs = small * Lad, small * Laq
@@ -65,4 +81,41 @@ def with_field() -> np.ndarray:
     K2 = n2 * (psi_ad + Laqs * id_) - m2 * (psi_aq + L_ads * iq) + L_ads / Lfd * iq
     a32 = -W0 * Rfd / Lfd * m1 * L_ads
     a33 = -W0 * Rfd / Lfd * (1 - L_ads / Lfd + m2 * L_ads)
-    return np.array([[0.0, -K1 / (2 * H), -K2 / (2 * H)], [W0, 0.0, 0.0], [0.0, a32, a33]])
+    b32 = W0 * Rfd / Lad
+    K5 = ed * (-Ra * m1 + (Ll + Laqs) * n1) + eq * (-Ra * n1 - (Ll + L_ads) * m1)
+    K6 = ed * (-Ra * m2 + (Ll + Laqs) * n2) + eq * (-Ra * n2 - Ll * m2 + L_ads * (1 / Lfd - m2))
+    K5, K6 = K5 / TERMINAL, K6 / TERMINAL
+    matrix = np.array([[0.0, -K1 / (2 * H), -K2 / (2 * H)], [W0, 0.0, 0.0], [0.0, a32, a33]])
+    constants = (K1, K2, -b32 / a33, -a32 / b32, K5, K6)
+    return Field(matrix, np.array([0.0, 0.0, b32]), np.array([0.0, K5, K6]), constants)
+
+
+def with_field() -> np.ndarray:
+    """A (3, 3) of speed, angle and field flux in manual excitation."""
+    return field_circuit().A
+
+
+# section 12.3 to 12.5, all from memory: K1 to K6, and eigenvalues in manual excitation, with the voltage regulator
+# (gain 200 behind a transducer of 0.02 s) and with the stabilizer too (9.5, washout 1.4 s, lead 0.154 s over 0.033 s)
+CONSTANTS = (0.7643, 0.8649, 0.3230, 1.4187, -0.1463, 0.4168)
+MANUAL = (-0.109 + 6.41j, -0.204)
+REGULATED = (0.504 + 7.23j, -20.202, -31.230)
+STABILIZED = (-1.005 + 6.607j, -39.097, -0.739, -19.797 + 12.822j)
+
+
+TRANSDUCER = 0.02  # s
+
+
+def _machine(t, x, u, p):
+    field = field_circuit()
+    rates = field.A @ x[:3] + np.multiply.outer(field.drive, u[0])
+    voltage = np.tensordot(field.seen, x[:3], 1)
+    return np.concatenate([rates, [(voltage - x[3]) / TRANSDUCER]])
+
+
+machine = Plant(
+    states={"slip": "pu", "angle": "rad", "flux": "pu", "measured_voltage": "pu"},
+    inputs={"field_voltage": "pu"},
+    dynamics=_machine,
+    nominal={"slip": 0.01, "angle": 0.2, "flux": 0.1, "measured_voltage": 0.1, "field_voltage": 1.0},
+)

@@ -21,6 +21,7 @@ RANGE = 9.0  # largest |log D|: scalings beyond gain nothing but rounding errors
 EVEN = 1e-6  # unevenness of the vectors of s_1 that counts as none
 SWEEPS = 6  # of the first guess
 TURNS = 30  # of the phases
+TURNED = 1e-7  # rad: turns that are smaller change nothing, since the radius is flat at its maximum
 STARTS = 4  # besides the one from singular vectors
 
 
@@ -101,17 +102,21 @@ def _level(M: Complex) -> Array:
 
 def turned(M: Complex, phases: Array) -> tuple[Array, Array]:
     """The spectral radius of M Q (F,) and the phases (F, m) of Q, raised from those given."""
-    best, at = np.full(len(M), -1.0), phases
-    turn, pace = np.zeros(phases.shape), np.ones(len(M))
+    F = len(M)
+    best, at = np.full(F, -1.0), np.array(phases)
+    turn, pace = np.zeros(at.shape), np.ones(F)
+    going = np.arange(F)
     for _ in range(TURNS):
-        value, wanted = _eigen(M, phases)
-        better = value > best
-        best = np.where(better, value, best)
-        at = np.where(better[:, np.newaxis], phases, at)
-        turn = np.where(better[:, np.newaxis], wanted, turn)
+        tried = at[going] + pace[going, np.newaxis] * turn[going]
+        value, wanted = _eigen(M[going], tried)
+        better = value > best[going]
+        ahead = going[better]
+        best[ahead], at[ahead], turn[ahead] = value[better], tried[better], wanted[better]
         # a turn that lost is taken back and tried shorter
-        pace = np.where(better, np.minimum(1.0, 2.0 * pace), 0.3 * pace)
-        phases = at + pace[:, np.newaxis] * turn
+        pace[going] = np.where(better, np.minimum(1.0, 2.0 * pace[going]), 0.3 * pace[going])
+        going = going[pace[going] * np.abs(turn[going]).max(axis=1) > TURNED]
+        if len(going) == 0:
+            break
     return best, at
 
 

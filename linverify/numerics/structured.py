@@ -26,7 +26,7 @@ WITHIN = 1e-6  # relative: how far the level stands above the highest bound of a
 COVERS = 150  # most stretches, each of which costs the eigenvalues of one pencil
 THIN = 1e-5  # of the distance to the nearest pole: a stretch thinner than this is judged by three points, to about
 # the square of this share
-POLISH, POINTS, SHRINK = 12, 9, 3.0
+FOLLOW, POLISH, POINTS, SHRINK = 8, 12, 9, 3.0  # rounds from above and from below, as in `peak_gain`
 INWARD = (1e-9, 1e-6, 1e-4, 1e-2, 0.1, 0.3)  # of a stretch: its ends move in by so much until they are below the level
 
 
@@ -80,8 +80,8 @@ def structured_peak(system: Mapped) -> Found:
     m = system.D.shape[0]
     if m == 1:
         return _single(system)
-    omega, above, below = _survey(system)
-    best = _raised(system, omega[np.argsort(-below, kind="stable")[:2]])
+    omega, above = _survey(system)
+    best = _raised(system, omega[np.argsort(-above, kind="stable")[:2]])
     cover = _Cover(max(best[0], float(above.max())) * (1.0 + WITHIN), [(0.0, math.inf)], [np.ones(m)], [])
     done = _covered(system, cover)
     low, where, phases = max(best, _raised(system, np.array(cover.tops)), key=lambda one: one[0])
@@ -108,21 +108,18 @@ def _evened(system: Mapped) -> Mapped:
     return _rescaled(system, 1.0 / np.asarray(scale, dtype=np.float64))
 
 
-def _survey(system: Mapped) -> tuple[Array, Array, Array]:
-    """Mapped frequencies where the bounds may be large, the bounds from above, the bounds from below."""
+def _survey(system: Mapped) -> tuple[Array, Array]:
+    """Mapped frequencies where the bounds may be large, and the bounds from above."""
     value, where, _ = climb(system)
     sizes = np.abs(system.poles())
     omega = np.concatenate([[where], sizes, np.abs(system.poles().imag)])
     for share in (0.9, 0.6, 0.3):
         omega = np.concatenate([omega, looked_at(system, share * value)])
     omega = np.unique(omega)
-    above, D = from_above(system.respond(omega))
-    top = np.argsort(-above, kind="stable")[:3]
-    fine = _followed(system, omega[top])
-    omega = np.concatenate([omega, fine])
-    M = system.respond(omega)
-    above, D = from_above(M)
-    return omega, above, from_below(M, D)[0]
+    above, _ = from_above(system.respond(omega))
+    fine = _followed(system, omega[np.argsort(-above, kind="stable")[:3]])
+    finer, _ = from_above(system.respond(fine))
+    return np.concatenate([omega, fine]), np.concatenate([above, finer])
 
 
 def _followed(system: Mapped, places: Array) -> Array:
@@ -133,7 +130,7 @@ def _followed(system: Mapped, places: Array) -> Array:
         return places
     width = np.min(np.abs(1j * places[:, np.newaxis] - poles[np.newaxis, :]), axis=1)
     steps = np.linspace(-1.0, 1.0, POINTS)
-    for _ in range(POLISH):
+    for _ in range(FOLLOW):
         grid = np.abs(places[:, np.newaxis] + width[:, np.newaxis] * steps)
         above = from_above(system.respond(grid.ravel()))[0].reshape(grid.shape)
         top = np.argmax(above, axis=1)

@@ -37,7 +37,7 @@ from typing import Any
 from ..core.case import Case
 from ..core.loop import Loop
 from ..numerics.closing import Opened
-from ..numerics.loop_margins import Channel, Joint, LoopMargins, in_s
+from ..numerics.loop_margins import Channel, Joint, LoopMargins, Stepped, in_s
 from ..numerics.margins import Crossing, Found, guarantee
 from ..numerics.structured import Bounded
 
@@ -71,6 +71,8 @@ def told(case: Case, loop: Loop, opened: Opened, found: LoopMargins, excused: Se
     ]
     if found.stable:
         made["channels"] = [_channel(one, time) for one in found.channels]
+    if found.steps:
+        made["steps"] = [_step(step, time) for step in found.steps]
     if found.joint is not None:
         made["all_channels"] = _joint(found.joint)
     return made
@@ -129,6 +131,16 @@ def guaranteed(alpha: float) -> dict[str, float]:
         return {}
     up, phase = guarantee(alpha)
     return {"gain_down": 0.0 if math.isinf(up) else 1.0 / up, "gain_up": up, "phase": phase * DEGREES}
+
+
+def _step(step: Stepped, time: str) -> dict[str, Any]:
+    return {
+        "channel": step.channel,
+        "overshoot": _met(step.overshoot, "%", 100.0),
+        "settling": _met(step.settling, time),
+        "within": {"value": 100.0 * step.within, "unit": "%"},
+        "final": step.final,
+    }
 
 
 def _joint(joint: Joint) -> dict[str, Any]:

@@ -8,7 +8,7 @@ from dataclasses import dataclass, replace
 
 from ..core.case import Case
 from ..core.loop import Limit, Loop
-from ..core.shown import Shown
+from ..core.shown import Shown, number
 from ..core.verdict import Figure, Sense, Status
 from ..numerics.loop_margins import LoopMargins
 from ..numerics.margins import Found
@@ -74,6 +74,8 @@ def asked(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
             )
     if limit.word in ("disk_margin", "sensitivity_peak", "complementary_peak"):
         yield _joint(limit, found)
+    elif limit.word in ("overshoot", "settling"):
+        yield from _steps(case, limit, found)
     elif limit.word == "damping":
         yield from _dampings(limit, found)
 
@@ -108,6 +110,17 @@ def _inverse(factor: Found) -> Found:
     if factor.value == 0.0:
         return Found(math.inf, factor.frequency)
     return Found(1.0 / factor.value, factor.frequency, factor.error / factor.value**2)
+
+
+def _steps(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
+    several = len(found.steps) > 1
+    for step in found.steps:
+        channel = step.channel if several else ""
+        if limit.word == "overshoot":
+            yield Ask("overshoot", channel, step.overshoot, limit.high, Sense.UPPER)
+        else:
+            what = f"settling to {number(100.0 * step.within)} %"
+            yield Ask(what, channel, step.settling, limit.high, Sense.UPPER, case.plant.time_unit)
 
 
 def _dampings(limit: Limit, found: LoopMargins) -> Iterator[Ask]:

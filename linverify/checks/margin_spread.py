@@ -14,13 +14,26 @@ from dataclasses import replace
 import numpy as np
 
 from ..core.model import LocalModel, frozen_array
-from ..numerics.closing import RefusedError, Setup, opened
+from ..numerics.closing import Opened, RefusedError, Setup, opened
 from ..numerics.loop_margins import LoopMargins, measured
 from ..numerics.margins import Found, Margins
+from ..numerics.set_point import stepped
 
 TRIED = 2
 GROWTH = 4.0  # of the largest change among those tried
+WITHIN = 0.02  # of the final value: band of settling where none is asked for
 ENDLESS = 1e6  # a figure that is infinite without errors, and beyond this with them, is told as infinite
+
+
+def whole(setup: Setup, name: str, at_input: bool, *, brief: bool = False) -> tuple[Opened, LoopMargins]:
+    """The loop broken open, and all that its `require` asks for. Raises RefusedError."""
+    loop = setup.loops[name]
+    broken = opened(setup, name)
+    one = measured(broken, at_input, brief=brief)
+    if not one.stable or not any(limit.word in ("overshoot", "settling") for limit in loop.require):
+        return broken, one
+    within = next((limit.within for limit in loop.require if limit.word == "settling"), WITHIN)
+    return broken, replace(one, steps=stepped(setup, name, broken, within))
 
 
 def varied(setup: Setup, name: str, one: LoopMargins) -> list[LoopMargins] | None:
@@ -28,7 +41,7 @@ def varied(setup: Setup, name: str, one: LoopMargins) -> list[LoopMargins] | Non
     made = []
     try:
         for model in _models(setup.model):
-            made.append(measured(opened(replace(setup, model=model), name), one.at_input, brief=True))
+            made.append(whole(replace(setup, model=model), name, one.at_input, brief=True)[1])
     except RefusedError:
         return None
     return made if one.loop.step is None else [_carried(one, other) for other in made]

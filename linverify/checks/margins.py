@@ -15,15 +15,15 @@ from typing import Any
 from ..core.case import CheckAsk
 from ..core.loop import Loop
 from ..core.verdict import Figure, Status, Verdict, merged
-from ..numerics.closing import RefusedError, Setup, opened
-from ..numerics.loop_margins import LoopMargins, measured
+from ..numerics.closing import RefusedError, Setup
+from ..numerics.loop_margins import LoopMargins
 from ..numerics.poles import AT_ZERO
 from ..numerics.unmoved import Unmoved
 from . import margin_details, margin_words
 from .margin_delays import with_delays
 from .margin_figures import figures
 from .margin_poles import counted
-from .margin_spread import varied
+from .margin_spread import varied, whole
 from .study import Study
 
 DOMINATES = 0.5  # share of the states that `leaves` names in a mode from which on it is theirs
@@ -76,8 +76,8 @@ def setup(study: Study, name: str) -> Setup:
 def _judge(study: Study, loop: Loop, found: _Found) -> None:
     case, at_input = study.case, loop.break_at == "plant_input"
     around = setup(study, loop.name)
-    broken = opened(around, loop.name)
-    one, told = with_delays(around, loop, measured(broken, at_input), case.plant.time_unit)
+    broken, one = whole(around, loop.name, at_input)
+    one, told = with_delays(around, loop, one, case.plant.time_unit)
     found.notes += told
     excused = _unmoved(loop, one, found)
     found.details["margins"] = margin_details.told(case, loop, broken, one, excused)

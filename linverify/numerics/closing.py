@@ -194,8 +194,9 @@ def _lag(name: str) -> str:
 
 
 def _seen(
-    setup: Setup, loop: Loop, inside: Sequence[Loop], late: Sequence[float], old: Sequence[float]
-) -> tuple[Block, float]:
+    setup: Setup, loop: Loop, inside: Sequence[Loop], late: Sequence[float] = (), old: Sequence[float] = (),
+    looks: Sequence[float] = (),
+) -> tuple[Block, float]:  # fmt: skip
     """What the loop sees from what it moves to what it measures, and the dead time around a continuous loop."""
     continuous = [one for one in inside if one.sample is None]
     body = _body(setup, (loop, *inside), continuous)
@@ -205,7 +206,7 @@ def _seen(
     sampled = [_sampled(setup, one) for one in inside if one.sample is not None]
     try:
         outer = _later(_sampled(setup, loop), late, old)
-        return seen(body, outer, sampled, setup.model.step), 0.0
+        return seen(body, outer, sampled, setup.model.step, looks), 0.0
     except ValueError as error:
         raise RefusedError(str(error)) from None
 
@@ -253,6 +254,25 @@ def _controller(loop: Loop) -> Block:
     states = tuple(f"{loop.name}.{k + 1}" for k in range(len(one.A)))
     inputs = tuple(f"{loop.name}.set_point.{name}" for name in loop.measures)
     return Block(one.A, one.B, one.C, one.D, states, inputs, tuple(f"{loop.name}.{j + 1}" for j in range(len(one.C))))
+
+
+def followed(setup: Setup, name: str, looks: Sequence[float] = ()) -> Block:
+    """From the set points of the loop to what it measures, closed: of a sampled loop by its samples and at `looks`.
+
+    Inputs are called `LOOP.set_point.NAME`; looks: times within a sample, see `held_loop.seen`. Of a continuous loop
+    all dead time around it is left out. Raises as `opened` does.
+    """
+    loop = setup.loops[name]
+    inside = _inside(setup, name)
+    _check(setup, loop, inside)
+    try:
+        plant, _ = _seen(setup, loop, inside, looks=looks)
+        controller = _controller(loop)
+        wires = [Wire(source, target) for source, target in zip(controller.outputs, plant.inputs, strict=True)]
+        wires += [Wire(source, f"{name}.set_point.{source}", -1.0) for source in loop.measures]
+        return connected([plant, controller], wires).picked(controller.inputs, plant.outputs)
+    except IllPosedError as error:
+        raise RefusedError(str(error)) from None
 
 
 def held_alone(setup: Setup, name: str) -> Held | None:

@@ -45,13 +45,18 @@ def whole(ratio: float) -> int | None:
     return nearest if abs(ratio - nearest) <= SNAP * max(1.0, abs(ratio)) else None
 
 
-def seen(plant: Block, outer: Sampled, inside: Sequence[Sampled], tick: float | None) -> Block:
+def seen(
+    plant: Block, outer: Sampled, inside: Sequence[Sampled], tick: float | None, looks: Sequence[float] = ()
+) -> Block:
     """From what `outer` puts out to what it reads, every `outer.step`; the controller of `outer` is left out.
+
+    looks: times within a sample at which the signals that `outer` reads are outputs too, as they are without dead time;
+    they follow the readings, time by time, and are called `NAME at K`, K being the place of the time in `looks`.
 
     plant: continuous, or a difference equation of step `tick`; inside: sampled loops that are closed, outer before
     inner; their sample times divide that of `outer`, and `tick` divides all. Raises ValueError where they do not.
     """
-    period = _Period(plant, outer, inside, tick)
+    period = _Period(plant, outer, inside, tick, tuple(looks))
     lasting = len(plant.states) + sum(len(loop.controller.states) for loop in inside)
     return _pruned(period.run(), lasting)
 
@@ -78,6 +83,7 @@ class _Period:
     outer: Sampled
     inside: Sequence[Sampled]
     tick: float | None
+    looks: tuple[float, ...]
     names: list[str] = field(default_factory=list)
     controllers: dict[str, slice] = field(default_factory=dict)
     outputs: dict[tuple[str, int], _Line] = field(default_factory=dict)
@@ -127,9 +133,11 @@ class _Period:
     def run(self) -> Block:
         """The whole period."""
         read: list[Array] = []
+        looked: dict[int, list[Array]] = {}
         times = self._times()
         for time, following in zip(times, [*times[1:], self.outer.step], strict=True):
             measured = self._measured()
+            looked |= {k: [measured[name] for name in self.outer.reads] for k in self._looks_at(time)}
             self._arrive(time)
             for loop in self.loops:
                 if whole(time / loop.step) is None or (loop is self.outer and time > 0.0):
@@ -142,14 +150,18 @@ class _Period:
                     self._act(loop, values)
             self._latch(time, measured)
             self._flow(following - time)
-        return self._block(read)
+        return self._block(read + [row for k in range(len(self.looks)) for row in looked[k]])
+
+    def _looks_at(self, time: float) -> list[int]:
+        return [k for k, look in enumerate(self.looks) if abs(look - time) <= SNAP * self.outer.step]
 
     def _block(self, read: list[Array]) -> Block:
         n = len(self.names)
         rows = np.array(read).reshape(len(read), self.now.shape[1])
         return Block(
             self.now[:, :n], self.now[:, n:], rows[:, :n], rows[:, n:],
-            tuple(self.names), self.outer.moves, self.outer.reads,
+            tuple(self.names), self.outer.moves,
+            (*self.outer.reads, *(f"{name} at {k}" for k in range(len(self.looks)) for name in self.outer.reads)),
         )  # fmt: skip
 
     def _times(self) -> list[float]:
@@ -160,6 +172,7 @@ class _Period:
         spans += [(line.step, -line.delay) for line in self.readings.values()]
         if self.tick is not None:
             spans.append((self.tick, 0.0))
+        found += self.looks
         for step, shift in spans:
             first = shift % step
             found += [first + k * step for k in range(round(period / step) + 1)]

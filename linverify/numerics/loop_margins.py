@@ -44,6 +44,21 @@ class Joint:
     at_both: Bounded | None = None
 
 
+@dataclass(frozen=True, slots=True)
+class Stepped:
+    """What a step of a set point does to the signal that it is for.
+
+    channel: the signal; final: where it goes for a unit step; overshoot: a fraction of that; settling: time units until
+    it stays within `within`, a fraction of that.
+    """
+
+    channel: str
+    within: float
+    final: float
+    overshoot: Found
+    settling: Found
+
+
 @dataclass(frozen=True, slots=True, eq=False)
 class LoopMargins:
     """What was measured.
@@ -52,7 +67,7 @@ class LoopMargins:
     move; trivial: the loop moves nothing. poles: of the closed loop, where it has no dead time; delayed: those that
     were found where it has. unstable: those, in s per time unit (sampled: in z), that are surely unstable; edge: those
     of which rounding leaves that open; opposite: closed with the opposite sign it would be stable. channels, joint: of
-    a stable loop; joint: only of several channels; at_input: where it is broken.
+    a stable loop; joint: only of several channels; at_input: where it is broken; steps: of set points, where asked for.
     """
 
     loop: Transfer
@@ -69,6 +84,7 @@ class LoopMargins:
     joint: Joint | None = None
     at_input: bool = True
     delayed: tuple[complex, ...] = ()
+    steps: tuple[Stepped, ...] = ()
 
 
 def measured(opened: Opened, at_input: bool, *, brief: bool = False) -> LoopMargins:

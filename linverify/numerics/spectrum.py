@@ -58,7 +58,7 @@ class Root:
 
 def structural(A: Array, E: Array) -> Array:
     """E with errors of entries that are zero for good set to zero; A, E (n, n) scaled by nominal sizes."""
-    size = float(np.abs(A).max(initial=0.0))
+    size = float(np.abs(A).max(initial=0.0)) or 1.0  # nothing but zeros: per time unit
     return np.where((A == 0.0) & (STRUCTURAL * size >= E), 0.0, E)
 
 
@@ -135,11 +135,14 @@ class _Circles:
         """The smallest radius found; None where the circle would come too near to foreign eigenvalues."""
         most, least = APART * cluster.gap, ROOM * cluster.inside
         begin = max(self.first_order[at] for at in cluster.members)
-        radius = max(least, SPACING * self.size, begin if math.isfinite(begin) and begin < most else 0.0)
+        shortest = max(least, SPACING * self.size)
+        radius = max(shortest, begin if math.isfinite(begin) and begin < most else 0.0)
         while radius <= most and not self._keeps(cluster.center, radius):
             radius *= 2.0
         if radius > most:
             return None
+        while radius / 2.0 >= shortest and self._keeps(cluster.center, radius / 2.0):
+            radius /= 2.0  # of poles that nearly coincide the first-order error says nothing
         low, high = max(least, radius / 2.0), radius
         for _ in range(HALVINGS):
             middle = math.sqrt(low * high)

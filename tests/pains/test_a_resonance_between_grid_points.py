@@ -9,6 +9,7 @@ import pytest
 from margins.bench import transfer
 from margins.oracle import Loop, truth
 
+from linverify.core.verdict import Status
 from linverify.numerics.margins import margins
 
 DAMPING, AT, CIRCLE, TILT = 1e-5, 7.3, 1.00005, math.radians(1.18)
@@ -42,3 +43,26 @@ def test_what_a_thousand_points_do_not_show(record_property: pytest.RecordProper
     record_property("python-control", f"on a grid: phase margin {phase} deg, disk margin {disk}")
     assert phase == pytest.approx(90.0, abs=0.1)
     assert disk == pytest.approx(2.0, abs=1e-3)
+
+
+def test_a_gate_on_the_disk_margin_fails(judged) -> None:
+    plant = f"""
+    plant = Plant(
+        states={{"level": "", "x": "", "v": ""}},
+        inputs={{"u": ""}},
+        outputs={{"y": ""}},
+        dynamics=lambda t, x, u, p: np.stack([u[0], x[2], u[0] - {AT}**2 * x[1] - 2 * {DAMPING} * {AT} * x[2]]),
+        measurement=lambda t, x, u, p: np.stack([
+            np.tensordot(np.array({resonant().C.tolist()}), x, 1)
+        ]),
+    )
+    """
+    spec = """
+    operating_points: {rest: {hold: {level: 0}}}
+    loops:
+      light: {controller: {gain: [[1]]}, measures: [y], moves: [u], require: {disk_margin: 0.4, phase_margin: 45 deg}}
+    """
+    found = judged(plant, spec)["rest.margins.light"]
+    assert found.status is Status.FAIL
+    assert "disk margin is 0.006244" in found.reason
+    assert "phase margin is 2.675 deg at 7.3 rad/s" in found.reason

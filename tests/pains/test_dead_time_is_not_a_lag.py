@@ -9,6 +9,7 @@ import pytest
 from margins.bench import transfer
 from margins.oracle import Loop, truth
 
+from linverify.core.verdict import Status
 from linverify.numerics.margins import margins
 
 
@@ -54,3 +55,23 @@ def test_python_control_refuses_several_channels() -> None:
 
     with pytest.raises(NotImplementedError, match="SISO"):
         control.stability_margins(control.ss(-np.eye(2), np.eye(2), np.eye(2), np.zeros((2, 2))))
+
+
+def test_a_gate_takes_the_dead_time_exactly(judged) -> None:
+    """Order one would pass the phase margin of 30 deg, and take the gain of 4 for stable."""
+    plant = """
+    plant = Plant(states={"x": ""}, inputs={"u": ""}, dynamics=lambda t, x, u, p: np.stack([u[0] - x[0]]))
+    """
+    spec = """
+    operating_points: {rest: {hold: {u: 0}}}
+    loops:
+      three: {controller: {gain: [[3]]}, measures: [x], moves: [u], delay: 0.5 s, require: {phase_margin: 30 deg}}
+      less: {controller: {gain: [[3]]}, measures: [x], moves: [u], delay: 0.5 s, require: {phase_margin: 28 deg}}
+      four: {controller: {gain: [[4]]}, measures: [x], moves: [u], delay: 0.5 s}
+    """
+    found = judged(plant, spec)
+    assert found["rest.margins.three"].status is Status.FAIL
+    assert "28.44 deg" in found["rest.margins.three"].reason
+    assert found["rest.margins.less"].status is Status.PASS
+    assert found["rest.margins.four"].status is Status.FAIL
+    assert "unstable" in found["rest.margins.four"].reason

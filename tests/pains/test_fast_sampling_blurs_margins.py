@@ -12,6 +12,7 @@ from margins.bench import transfer
 from margins.oracle import Loop, truth
 from scipy.linalg import expm
 
+from linverify.core.verdict import Status
 from linverify.numerics.margins import margins
 
 NUM, DEN = [2.0], [1.0, 3.0, 2.0, 0.0]  # 2 / (s (s + 1) (s + 2)): gain margin 3, phase margin 32.613 deg
@@ -50,3 +51,32 @@ def test_margins_of_a_fast_sampled_loop(step: float, record_property: pytest.Rec
     if step == 1e-5:  # as documented; exactly 3.0 to 1e-5 here
         assert gain == pytest.approx(2.895, abs=0.02)
         assert angle == pytest.approx(30.79, abs=0.2)
+
+
+PLANT = """
+plant = Plant(
+    states={"x": "", "v": "", "a": ""},
+    inputs={"u": ""},
+    dynamics=lambda t, x, u, p: np.stack([x[1], x[2], 2.0 * u[0] - 2.0 * x[1] - 3.0 * x[2]]),
+)
+"""
+SPEC = """
+operating_points: {rest: {hold: {x: 0}}}
+loops:
+  fast:
+    controller: {gain: [[1]]}
+    measures: [x]
+    moves: [u]
+    sample: 10 us
+    require: {gain_margin: 2.9999, phase_margin: 32.6 deg}
+"""
+
+
+def test_a_gate_on_these_margins_passes_at_10_us(judged) -> None:
+    """Both would be missed by the margins that polynomials in z give."""
+    found = judged(PLANT, SPEC)["rest.margins.fast"]
+    assert found.status is Status.PASS, found.reason
+    (told,) = found.details["margins"]["channels"]
+    exact = truth(sampled(1e-5))
+    assert told["gain_up"]["value"] == pytest.approx(exact.gain_up, rel=1e-6)
+    assert told["phase"]["value"] == pytest.approx(math.degrees(exact.phase), rel=1e-6)

@@ -9,6 +9,7 @@ import pytest
 from margins.bench import transfer
 from margins.oracle import Loop, truth
 
+from linverify.core.verdict import Status
 from linverify.numerics.margins import margins
 
 
@@ -52,3 +53,23 @@ def test_a_loop_that_is_only_conditionally_stable_is_bounded_both_ways() -> None
     assert found.stable
     assert found.gain_down.value == pytest.approx(0.5 / 2.5, rel=1e-9)
     assert found.gain_up.value == math.inf
+
+
+def test_a_gate_fails_on_stability_first(judged) -> None:
+    plant = """
+    plant = Plant(states={"x": ""}, inputs={"u": ""}, dynamics=lambda t, x, u, p: np.stack([x[0] + u[0]]))
+    """
+    spec = """
+    operating_points: {rest: {hold: {u: 0}}}
+    loops:
+      weak: {controller: {gain: [[0.5]]}, measures: [x], moves: [u], require: {gain_margin: 6 dB}}
+      strong: {controller: {gain: [[4]]}, measures: [x], moves: [u], require: {gain_margin: 6 dB}}
+      low: {controller: {gain: [[1.5]]}, measures: [x], moves: [u], require: {gain_margin: 6 dB}}
+    """
+    found = judged(plant, spec)
+    assert found["rest.margins.weak"].status is Status.FAIL
+    assert "pole 0.5 per s" in found["rest.margins.weak"].reason
+    assert "channels" not in found["rest.margins.weak"].details["margins"]
+    assert found["rest.margins.strong"].status is Status.PASS
+    assert found["rest.margins.low"].status is Status.FAIL  # downwards only 1.5: 3.5 dB
+    assert "3.522 dB" in found["rest.margins.low"].reason

@@ -9,6 +9,7 @@ from margins.oracle import Loop, truth
 
 from linverify.core.model import LocalModel, OperatingPoint
 from linverify.core.signals import Signals
+from linverify.core.verdict import Status
 from linverify.numerics.margins import margins
 from linverify.numerics.zeros import transmission_zeros
 
@@ -58,3 +59,23 @@ def test_far_above_the_poles_the_response_still_falls() -> None:
     assert exact == pytest.approx(3.0 * np.prod(POLES) / 1e36, rel=1e-6)
     polynomial = control.ss2tf(control.ss(loop.A, loop.B[:, None], loop.C[None, :], 0.0))
     assert abs(polynomial(1j * w[0])) > 1e3 * exact
+
+
+def test_a_gate_on_minimum_phase_passes(judged) -> None:
+    loop = turned(2, 3.0)
+    plant = f"""
+    A, B, C = np.array({loop.A.tolist()}), np.array({loop.B.tolist()}), np.array({loop.C.tolist()})
+    plant = Plant(
+        states={{f"x{{i}}": "" for i in range(6)}},
+        inputs={{"u": ""}},
+        outputs={{"y": ""}},
+        dynamics=lambda t, x, u, p: A @ x + np.multiply.outer(B, u[0]),
+        measurement=lambda t, x, u, p: np.stack([np.tensordot(C, x, 1)]),
+    )
+    """
+    spec = """
+    operating_points: {rest: {hold: {u: 0}}}
+    modes: [{minimum_phase: true, outputs: [y]}]
+    """
+    found = judged(plant, spec)["rest.modes"]
+    assert found.status is Status.PASS, found.reason

@@ -23,7 +23,7 @@ class Ask:
     """One figure that a limit asks for.
 
     sense: which side of `bound` is good; value: what was measured, in the plant's units; ratio: told in dB where the
-    limit is written so.
+    limit is written so; low: the lower end of a range.
     """
 
     what: str
@@ -33,6 +33,7 @@ class Ask:
     sense: Sense
     unit: str = ""
     ratio: bool = False
+    low: float = math.nan
 
 
 def figures(
@@ -97,13 +98,18 @@ def _joint(limit: Limit, found: LoopMargins) -> Ask:
 
 
 def _crossovers(case: Case, name: str, limit: Limit, crossings: list[Found]) -> Iterator[Ask]:
+    """Every crossover must lie in the range; the one that is furthest from its middle is told."""
     unit = f"rad/{case.plant.time_unit}"
     if not crossings:
         return
-    if limit.low > 0.0:
+    if not math.isfinite(limit.high):
         yield Ask("lowest crossover", name, min(crossings, key=lambda e: e.value), limit.low, Sense.LOWER, unit)
-    if math.isfinite(limit.high):
+    elif not limit.low > 0.0:
         yield Ask("highest crossover", name, max(crossings, key=lambda e: e.value), limit.high, Sense.UPPER, unit)
+    else:
+        middle = 0.5 * (limit.low + limit.high)
+        worst = max(crossings, key=lambda each: abs(each.value - middle))
+        yield Ask("crossover", name, worst, limit.high, Sense.RANGE, unit, low=limit.low)
 
 
 def _inverse(factor: Found) -> Found:
@@ -136,8 +142,9 @@ def _figure(case: Case, limit: Limit, ask: Ask) -> Figure:
     worst, bound, error = _in_unit(shown, ask)
     return Figure(
         ask.what, ask.channel, worst, bound, shown.unit, ask.sense, error, origin=_origin(limit),
-        status=status_of(ask.value, ask.bound, ask.sense, limit.strict), at_frequency=ask.value.frequency,
+        status=status_of(ask.value, ask.bound, ask.sense, limit.strict, ask.low), at_frequency=ask.value.frequency,
         frequency_unit="" if math.isnan(ask.value.frequency) else f"rad/{case.plant.time_unit}",
+        low=shown.size(ask.low),
     )  # fmt: skip
 
 
@@ -155,12 +162,14 @@ def _origin(limit: Limit) -> str:
     return ", ".join(part for part in (str(limit.place), limit.rule and f"rule {limit.rule}") if part)
 
 
-def status_of(found: Found, bound: float, sense: Sense, strict: bool = False) -> Status:
+def status_of(found: Found, bound: float, sense: Sense, strict: bool = False, low: float = math.nan) -> Status:
     """Inside beyond the error, outside beyond the error, or neither."""
     if math.isnan(found.value) or math.isnan(found.error):
         return Status.UNDECIDED
     if math.isinf(found.value):
         inside = math.inf if (found.value > 0) == (sense is Sense.LOWER) else -math.inf
+    elif sense is Sense.RANGE:
+        inside = min(found.value - low, bound - found.value)
     else:
         inside = found.value - bound if sense is Sense.LOWER else bound - found.value
     if inside < -found.error or (strict and inside <= 0.0 == found.error):

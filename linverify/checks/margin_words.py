@@ -14,6 +14,7 @@ from ..numerics.loop_margins import LoopMargins, in_s
 from ..numerics.margins import guarantee
 from ..numerics.unmoved import Unmoved
 
+LEAVE = "where that is meant, name the state under `leaves`"
 WRONG_WAY = "the loop is closed the wrong way round: unstable; with the opposite sign it would be stable"
 
 
@@ -41,7 +42,7 @@ def unmoved(poles: Sequence[Unmoved], step: float | None) -> str:
         told.append(f"{complex_told(value)}{f' of {states}' if states else ''}")
     told = list(dict.fromkeys(told))
     which, they = ("pole", "it is") if len(told) == 1 else ("poles", "they are")
-    return f"the loop does not move the {which} {', '.join(told)}, and {they} not stable (`leaves` does not name it)"
+    return f"the loop does not move the {which} {', '.join(told)}, and {they} not stable; {LEAVE}"
 
 
 def complex_told(value: complex) -> str:
@@ -79,11 +80,14 @@ def notes(loop: Loop, one: LoopMargins) -> list[str]:
         if one.joint is not None:
             alpha = one.joint.here.low
         told.append(promise(alpha, len(one.channels)))
+    ruled: dict[tuple[str, str, str], list[str]] = {}
     for limit in loop.require:
         if limit.rule:
-            parts = (f"{limit.word.replace('_', ' ')} by the rule {limit.rule}", limit.source, limit.caution)
-            told.append("; ".join(part for part in parts if part))
-    return list(dict.fromkeys(told))
+            ruled.setdefault((limit.rule, limit.source, limit.caution), []).append(limit.word.replace("_", " "))
+    for (rule, source, caution), words in ruled.items():
+        parts = (f"{' and '.join(words)} by the rule {rule}", source, caution)
+        told.append("; ".join(part for part in parts if part))
+    return told
 
 
 def promise(alpha: float, channels: int) -> str:
@@ -105,9 +109,11 @@ def figure(figure: Figure) -> str:
     where = "" if math.isnan(figure.at_frequency) else f" at {_told(figure.at_frequency, figure.frequency_unit)}"
     text = f"{subject} is {_told(figure.worst, figure.unit)}{where}"
     if figure.status is Status.UNDECIDED:
-        text += f", known to {_told(figure.error, figure.unit, 2)}"
-    side = "at least" if figure.sense is Sense.LOWER else "at most"
-    return f"{text}; {side} {_told(figure.limit, figure.unit)} is asked for"
+        known = f"known to {_told(figure.error, figure.unit, 2)}"
+        text += ", to an unknown error" if math.isnan(figure.error) else f", {known}"
+    if figure.sense is Sense.RANGE:
+        return f"{text}; {number(figure.low, 4)} to {_told(figure.limit, figure.unit)} is asked for"
+    return f"{text}; {figure.sense.value} {_told(figure.limit, figure.unit)} is asked for"
 
 
 def _told(value: float, unit: str, digits: int = 4) -> str:

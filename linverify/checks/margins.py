@@ -101,6 +101,8 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
     found.figures += made
     found.reasons += [(Status.UNDECIDED, f"{word.replace('_', ' ')} could not be found") for word in silent]
     found.reasons += margin_words.without_crossover(case, loop, one)
+    if loop.confirm:
+        found.reasons.append((Status.UNDECIDED, "margins are not yet confirmed on the nonlinear plant"))
     reasons, notes = counted(loop, one, case.plant.time_unit)
     found.reasons, found.notes = found.reasons + reasons, found.notes + notes + margin_words.notes(loop, one)
 

@@ -24,7 +24,7 @@ class Outcome(Enum):
     INACCURATE = "the integration did not reach the accuracy that the error bands ask for"
     TOO_MANY_STEPS = "the integration needed more steps than the budget allows"
     DIVERGED = "the plant left every bound before the envelope could end the comparison"
-    DEAD_TIMES = "dead times of this kind have no exact method here"
+    DEAD_TIMES = "two models with different dead times, or a loop with one, have no exact distance here"
     AT_NYQUIST = "a sampled model has a pole at z = -1, where it alternates for ever"
     BUDGET = "the budget of plant evaluations was used up"
     ILL_POSED = "the loop has no solution: one plus its feedthrough is zero"

@@ -19,8 +19,8 @@ from ..core.model import Array
 from ..core.outcome import Outcome
 from .coprime import left_graph, right_graph
 from .mapped import Complex, Mapped, eigen, mapped, near_axis
-from .multiloop import ILL_POSED, unstable_poles
 from .peak_gain import RISE, climb, peak, rounding
+from .sensitivities import ILL_POSED, unstable_poles
 from .transfer import Transfer
 
 ONE = 1e-9  # a distance this near to 1 is 1: the graphs touch, whatever the winding count says
@@ -80,7 +80,7 @@ def _between(one: Mapped, other: Mapped) -> Gap:
     graphs = [right_graph(one), right_graph(other), left_graph(other)]
     first, second, left = graphs
     if first is None or second is None or left is None:
-        return _undecided(Outcome.INACCURATE)
+        return _undecided(Outcome.UNVERIFIED)
     distance = _distance(first, left)
     value, where, done = climb(distance)
     touched = _touching(first, left, where)
@@ -89,11 +89,11 @@ def _between(one: Mapped, other: Mapped) -> Gap:
     if touched >= 1.0 - ONE:
         return Gap(1.0, one.told(where), right == len(second.A), ONE)
     if unsure:
-        return replace(_undecided(Outcome.INACCURATE), value=touched, error=1.0 - touched)
+        return replace(_undecided(Outcome.UNVERIFIED), value=touched, error=1.0 - touched)
     if right != len(second.A):
         return Gap(1.0, math.nan, False, 0.0)
     accurate = done and abs(touched - value) <= NORMAL
-    return Gap(min(1.0, touched), one.told(where), True, error, Outcome.DONE if accurate else Outcome.INACCURATE)
+    return Gap(min(1.0, touched), one.told(where), True, error, Outcome.DONE if accurate else Outcome.UNVERIFIED)
 
 
 def _distance(first: Mapped, left: Mapped) -> Mapped:

@@ -9,17 +9,19 @@ perturbations (Seiler, Packard & Gahinet, IEEE Control Systems Magazine 40(5), 2
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 
 import numpy as np
 
 from ..core.outcome import Outcome
+from .delayed_loop import StandIn, beyond, exact_peaks, stand_in
 from .mapped import mapped
 from .peak_gain import Peak, peak
+from .sensitivities import sensitivities
 from .structured import Bounded, structured_peak
 from .transfer import Transfer
 
-ILL_POSED = 1e-12  # of the norm: the smallest singular value of 1 + D below which the loop has no solution
+FED = 0.3  # feedthrough of a controller, once scaled, beside a plant without: the loop of both needs less than one
 
 
 @dataclass(frozen=True, slots=True)
@@ -47,77 +49,90 @@ _NO_DISK = Bounded(0.0, 0.0, math.nan)
 def multiloop(loop: Transfer) -> Multiloop:
     """Stability and margins at the break of a square `loop`, all channels at once. Raises ValueError where not square.
 
-    Poles that the loop neither moves nor sees do not count. Singular 1 + D is an outcome.
+    Poles that the loop neither moves nor sees do not count. A dead time is common to all channels and needs |D| < 1;
+    unstable poles are then those of its rational stand-in, as many as there are with it. Singular 1 + D is an outcome.
     """
     if loop.D.shape[0] != loop.D.shape[1]:
         raise ValueError(f"a loop has as many outputs as inputs, got D of shape {loop.D.shape}")
     if not all(np.isfinite(each).all() for each in (loop.A, loop.B, loop.C, loop.D)):
         return _none(Outcome.NOT_FINITE)
-    S = sensitivity(loop)
-    if S is None:
+    return _delayed(loop) if loop.delay else _rational(loop)
+
+
+def _rational(loop: Transfer) -> Multiloop:
+    known = sensitivities(loop)
+    if known is None:
         return _none(Outcome.ILL_POSED)
-    unstable = unstable_poles(S)
-    if unstable:
-        return Multiloop(Outcome.DONE, False, unstable, _UNSTABLE, _UNSTABLE, _NO_DISK)
-    eye = np.eye(len(loop.D), dtype=np.float64)
-    T = replace(S, C=-S.C, D=np.asarray(eye - S.D, dtype=np.float64))
-    difference = replace(S, D=np.asarray(S.D - 0.5 * eye, dtype=np.float64))
-    return Multiloop(Outcome.DONE, True, (), peak(S), peak(T), disk(difference))
+    if known.unstable:
+        return Multiloop(Outcome.DONE, False, known.unstable, _UNSTABLE, _UNSTABLE, _NO_DISK)
+    return Multiloop(Outcome.DONE, True, (), peak(known.S), peak(known.T), disk(known.difference))
+
+
+def _delayed(loop: Transfer) -> Multiloop:
+    found = stand_in(loop)
+    if isinstance(found, Outcome):
+        return _none(found)
+    if found.known.unstable:
+        return Multiloop(Outcome.DONE, False, found.known.unstable, _UNSTABLE, _UNSTABLE, _NO_DISK)
+    return Multiloop(Outcome.DONE, True, (), *exact_peaks(found), _delayed_disk(found))
+
+
+def _delayed_disk(found: StandIn) -> Bounded:
+    near = disk(found.known.difference)
+    # with any scaling |S'| and |T'| are at most 1 / low + 1/2, and S differs by |S'| |T'| times the stand-in's error
+    size = 1.0 / near.low + 0.5
+    share = found.off * size
+    if share >= 0.5:
+        return Bounded(0.0, math.inf, near.frequency, done=False)
+    shift = size * share / (1.0 - share)
+    low = 1.0 / max(1.0 / near.low + shift, beyond(found))
+    if near.frequency > found.omega:  # what was found there is of the stand-in only
+        return Bounded(low, 2.0, math.inf, done=near.done)
+    below = 1.0 / near.high - shift
+    return Bounded(low, 1.0 / below if below > 0 else math.inf, near.frequency, near.factors, near.done)
 
 
 def both_sides(plant: Transfer, controller: Transfer) -> Bounded:
     """The disk margin with the loop broken at the plant's inputs and at its outputs at once, all channels independent.
 
     controller: from set point minus measurement to the plant's inputs. Raises ValueError where the two do not fit.
-    Factors at `high`: of the plant's inputs, then of its outputs.
+    Factors at `high`: of the plant's inputs, then of its outputs. Zero for an unstable loop.
     """
     return multiloop(around(plant, controller)).disk
 
 
 def around(plant: Transfer, controller: Transfer) -> Transfer:
-    """The loop of both, broken at the plant's inputs and outputs: from (u, y) into plant and controller to -(u, y)."""
+    """The loop of both, broken at the plant's inputs and outputs: from (u, y) into plant and controller to -(u, y).
+
+    y is scaled so that neither half has more feedthrough than need be, which changes neither stability nor disk margin.
+    """
     (k, m), (r, q) = plant.D.shape, controller.D.shape
     if (r, q) != (m, k) or plant.step != controller.step:
         raise ValueError(f"plant of shape {plant.D.shape} and controller of shape {controller.D.shape} do not fit")
     n, p = len(plant.A), len(controller.A)
+    share = _share(float(np.linalg.norm(plant.D)), float(np.linalg.norm(controller.D)))
     A = np.block([[plant.A, np.zeros((n, p))], [np.zeros((p, n)), controller.A]])
-    B = np.block([[plant.B, np.zeros((n, k))], [np.zeros((p, m)), controller.B]])
-    C = np.block([[np.zeros((m, n)), controller.C], [-plant.C, np.zeros((k, p))]])
-    D = np.block([[np.zeros((m, m)), controller.D], [-plant.D, np.zeros((k, k))]])
+    B = np.block([[plant.B, np.zeros((n, k))], [np.zeros((p, m)), share * controller.B]])
+    C = np.block([[np.zeros((m, n)), controller.C], [-plant.C / share, np.zeros((k, p))]])
+    D = np.block([[np.zeros((m, m)), share * controller.D], [-plant.D / share, np.zeros((k, k))]])
     # a dead time of the whole loop may be shared out between its two halves
     return Transfer(A, B, C, D, 0.5 * (plant.delay + controller.delay), plant.step)
 
 
-def sensitivity(loop: Transfer) -> Transfer | None:
-    """S = (1 + L)^-1 of a loop without dead time; None where 1 + D is singular."""
-    whole = np.eye(len(loop.D)) + loop.D
-    if len(whole) and np.linalg.norm(whole, -2) <= ILL_POSED * np.linalg.norm(whole, 2):
-        return None
-    E = np.asarray(np.linalg.inv(whole), dtype=np.float64)
-    return Transfer(loop.A - loop.B @ E @ loop.C, loop.B @ E, -E @ loop.C, E, step=loop.step)
-
-
-def unstable_poles(transfer: Transfer) -> tuple[complex, ...]:
-    """Poles of `transfer` on or right of the imaginary axis, on or outside of the unit circle, to within rounding."""
-    system = mapped(transfer)
-    values = system.poles()
-    step = transfer.step
-    if system.nyquist:
-        return (complex(-1.0),)
-    bad = values[values.real >= -1e-12 * np.abs(values)]
-    if step is not None:
-        bad = (1.0 + 0.5 * step * bad) / (1.0 - 0.5 * step * bad)
-    return tuple(complex(value) for value in sorted(bad, key=lambda value: (-value.real, -value.imag)))
+def _share(plant: float, controller: float) -> float:
+    if controller == 0.0:
+        return plant / FED if plant > FED else 1.0
+    return math.sqrt(plant / controller) if plant else min(1.0, FED / controller)
 
 
 def disk(difference: Transfer) -> Bounded:
-    """The disk margin of all channels at once from (S - T) / 2 of a stable loop."""
+    """The disk margin of all channels at once from (S - T) / 2 of a stable loop without dead time."""
     system = mapped(difference)
     found = structured_peak(system)
     low = 1.0 / found.high if found.high > 0 else math.inf
     high = 1.0 / found.low if found.low > 0 else math.inf
     factors = tuple(_factor(complex(delta)) for delta in found.deltas)
-    return Bounded(low, high, system.told(found.omega), factors, Outcome.DONE if found.done else Outcome.BUDGET)
+    return Bounded(low, high, system.told(found.omega), factors, found.done)
 
 
 def _factor(delta: complex) -> complex:

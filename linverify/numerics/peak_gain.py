@@ -56,7 +56,7 @@ def peak(transfer: Transfer) -> Peak:
         return Peak(math.inf, system.told(float(np.abs(on_axis.imag).min())), 0.0)
     value, omega, done = climb(system)
     error = RISE * value + rounding(system, omega)
-    return Peak(value, system.told(omega), error, Outcome.DONE if done else Outcome.INACCURATE)
+    return Peak(value, system.told(omega), error, Outcome.DONE if done else Outcome.UNVERIFIED)
 
 
 def climb(system: Mapped) -> tuple[float, float, bool]:

@@ -17,7 +17,6 @@ import numpy as np
 from scipy.linalg import matrix_balance
 
 from ..core.model import Array
-from ..core.outcome import Outcome
 from .mapped import Complex, Mapped
 from .peak_gain import climb, crossings, gains, looked_at, rounding
 from .scalings import from_above, from_below, turned
@@ -36,14 +35,14 @@ class Bounded:
 
     frequency: rad per time unit, of the perturbation at `high`; factors: by which the channels of the loop are to be
     multiplied so that the closed loop has a pole on the axis at that frequency; empty where no perturbation was found.
-    outcome: BUDGET where the bounds are valid but might have been brought closer.
+    done: False where the bounds hold but might have been brought closer.
     """
 
     low: float
     high: float
     frequency: float
     factors: tuple[complex, ...] = ()
-    outcome: Outcome = Outcome.DONE
+    done: bool = True
 
 
 @dataclass(frozen=True, slots=True, eq=False)

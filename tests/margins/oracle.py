@@ -411,11 +411,13 @@ def settled(result: Truth, loudest: float) -> bool:
 
 
 def ends(loop: Loop) -> list[tuple[float, complex]]:
-    """L at frequency zero, where it is finite, and at the highest one without a dead time."""
+    """L at frequency zero (infinite at a pole there) and, without a dead time, at the highest one."""
     found = []
     poles = np.abs(np.diag(loop.triangular[0]))
     if not loop.n or poles.min() > 1e-12 * poles.max():
         found.append((0.0, complex(loop.exact(np.zeros(1))[0][0])))
+    else:
+        found.append((0.0, complex(math.inf)))
     if loop.step is not None:
         found.append((loop.top, complex(loop.exact(np.array([loop.top]))[0][0].real)))
     elif not loop.delay:
@@ -428,7 +430,7 @@ def measured(loop: Loop, w: np.ndarray, crossovers: np.ndarray, *, last: bool) -
     where: dict[str, float] = {}
     through = crossings(loop, w, offset, negative=True)
     real = [(float(x), abs(L)) for x, L in zip(through, loop.exact(through)[0], strict=True)]
-    real += [(x, abs(L)) for x, L in ends(loop) if L.real < 0.0 and abs(L.imag) < 1e-9 * abs(L)]
+    real += [(x, abs(L)) for x, L in ends(loop) if np.isfinite(L) and L.real < 0.0 and abs(L.imag) < 1e-9 * abs(L)]
     if last and loop.delay and loop.D:
         real.append((math.inf, abs(loop.D)))
     up = min(((1.0 / size, x) for x, size in real if size < 1.0), default=(math.inf, math.nan))
@@ -472,7 +474,7 @@ def delay_margin(loop: Loop, lags: np.ndarray) -> float:
 def highest(loop: Loop, w: np.ndarray, of: Scalar, *, last: bool) -> tuple[float, float]:
     """The peak of of(L) and where it is, infinite frequency and the ends included."""
     tops = peaks(loop, w, of(loop.response(w)), of)
-    found = [(float(of(np.array([L]))[0]), x) for x, L in ends(loop)]
+    found = [(float(of(np.array([L if np.isfinite(L) else 1e300 + 0j]))[0]), x) for x, L in ends(loop)]
     if loop.delay and last:
         found.append((float(of(np.array([-abs(loop.D) + 0j]))[0]), math.inf))
     places = np.concatenate([tops, w[[0, -1]]])

@@ -8,13 +8,14 @@ _TIME = "time"
 
 MODE_LIMITS = (
     Row("damping", Kind.BOUNDS, "damping ratio"),
-    Row("natural_frequency", Kind.BOUNDS, "how far the pole is from the origin, in rad/s or Hz", dimension="frequency", sign="+"),
+    Row("natural_frequency", Kind.BOUNDS, "distance of the pole from the origin, in rad/s or Hz",
+        dimension="frequency", sign="+"),
     Row("decay_rate", Kind.BOUNDS, "-Re, that is damping times natural frequency", dimension="1/time"),
     Row("time_constant", Kind.BOUNDS, "1 over the decay rate", dimension=_TIME, sign="+"),
     Row("time_to_half", Kind.BOUNDS, "time in which a stable mode halves", dimension=_TIME, sign="+"),
     Row("time_to_double", Kind.BOUNDS, "time in which an unstable mode doubles", dimension=_TIME, sign="+"),
     Row("period", Kind.BOUNDS, "of the oscillation", dimension=_TIME, sign="+"),
-)
+)  # fmt: skip
 
 EXCEPT_WORDS = (
     Row("at_zero", Kind.NAMES, "states with a pole at the origin: as many poles are excused as are named"),
@@ -25,8 +26,9 @@ EXCEPT_WORDS = (
 ZERO_LIMITS = (
     Row("real", Kind.BOUNDS, "real part", dimension="1/time"),
     Row("damping", Kind.BOUNDS, "damping ratio"),
-    Row("natural_frequency", Kind.BOUNDS, "how far the zero is from the origin, in rad/s or Hz", dimension="frequency", sign="+"),
-)
+    Row("natural_frequency", Kind.BOUNDS, "distance of the zero from the origin, in rad/s or Hz",
+        dimension="frequency", sign="+"),
+)  # fmt: skip
 
 GAIN_LIMITS = (
     Row("from", Kind.NAME, "the input", required=True),

@@ -6,7 +6,7 @@ nothing of loops. Ids, seeds and file names stay those of the case that the loop
 
 from __future__ import annotations
 
-from collections.abc import Iterable, Sequence
+from collections.abc import Iterable, Mapping, Sequence
 from dataclasses import dataclass, replace
 from functools import cached_property
 
@@ -159,7 +159,7 @@ class ClosedStudy(Study):
         """Why these loops cannot be closed in time around this plant and its local model, a line each."""
         if self.bare.unmet("model"):
             return ()
-        found = [*_clocks(self.bare, self.closing), *_names(self.bare, self.closing), *self._ranges()]
+        found = [*_clocks(self.bare, self.closing, self._actuators), *_names(self.bare, self.closing), *self._ranges()]
         if not found:
             try:
                 _ = self._closed
@@ -277,7 +277,7 @@ def _largest_delay(case: Case, loop: Loop) -> float:
     return max(loop.delay + max(moves, default=0.0), max(reads, default=0.0))
 
 
-def _clocks(study: Study, closing: Closing) -> list[str]:
+def _clocks(study: Study, closing: Closing, actuators: Mapping[str, Actuator]) -> list[str]:
     """Sample times that do not go together."""
     plant, model, found = study.case.plant, study.model(), []
     unit, tick = plant.time_unit, plant.step if plant.step is not None else model.step
@@ -299,7 +299,7 @@ def _clocks(study: Study, closing: Closing) -> list[str]:
     if plant.step is None and model.step is not None:
         if closing.loops and model.course == "straight":
             found.append("a local model sampled for straight inputs cannot take what a controller holds")
-        lags = [name for name in (*study.case.actuators,) if study.case.actuators[name].lag > 0.0]
+        lags = [name for name, actuator in actuators.items() if actuator.lag > 0.0]
         if lags:
             found.append(f"a sampled local model takes held inputs, which the lag of {lags[0]} does not give")
     return found

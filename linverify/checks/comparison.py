@@ -123,9 +123,21 @@ def _nodes(model: LocalModel, every: float) -> int:
     """
     if model.step is not None:
         return NODES[0]
-    poles = np.linalg.eigvals(model.A)
+    poles = _own_poles(model)
     fastest = float(np.max(np.abs(poles.imag), where=np.abs(poles.imag) > np.abs(poles.real), initial=0.0))
     return next((nodes for nodes in NODES if fastest * every / nodes <= PHASE), NODES[-1])
+
+
+def _own_poles(model: LocalModel) -> Array:
+    """The model's poles without those of chains that stand for dead times: their ringing is no motion of anything."""
+    chains = [".delay." in name for name in model.states.names]
+    if not any(chains):
+        return np.linalg.eigvals(model.A)
+    poles, right = np.linalg.eig(model.A)
+    left = np.linalg.pinv(right)
+    shares = np.abs(right * left.T)
+    own = shares[np.logical_not(chains)].sum(axis=0) >= 0.5 * shares.sum(axis=0)
+    return np.asarray(poles[own])
 
 
 def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Band], signals: tuple[str, ...]) -> Array:

@@ -7,14 +7,17 @@ z^2 / (5 + ...))) cut after N terms is a ladder of coils and capacitors whose eq
 
 from __future__ import annotations
 
+from functools import cache
+
 import numpy as np
 
-from ..core.model import Array
+from ..core.model import Array, frozen_array
 
-ORDER = 8
+ORDER = 6
 GOOD = 0.01  # of the response, up to the frequency that a report states
 
 
+@cache
 def all_pass(delay: float, order: int = ORDER) -> tuple[Array, Array, Array, float]:
     """A (N, N), b (N,), c (N,), d with c (s I - A)^-1 b + d close to exp(-s delay), and of size 1 on the whole axis.
 
@@ -40,7 +43,7 @@ def all_pass(delay: float, order: int = ORDER) -> tuple[Array, Array, Array, flo
         scale = (2 * row + 1) * 2.0 / delay
         A[row] *= scale
         b[row] *= scale
-    return A, b, i - v, float(i_u - v_u)
+    return frozen_array(A), frozen_array(b), frozen_array(i - v), float(i_u - v_u)
 
 
 def good_up_to(delay: float, order: int = ORDER) -> float:

@@ -30,6 +30,7 @@ class _Linear:
     C: Array = field(init=False)
     feed: Array = field(init=False)
     sizes: Array = field(init=False)
+    direct: bool = field(init=False)
 
     def __post_init__(self) -> None:
         rows = [reading(self.model, name) for name in self.names]
@@ -37,6 +38,7 @@ class _Linear:
         self.n, self.sizes = n, np.zeros(len(rows))
         self.C = np.array([row for row, _ in rows]).reshape(-1, n)
         self.feed = np.array([row for _, row in rows]).reshape(-1, m)
+        self.direct = bool(self.feed.any())
 
     def rates(self, t: float, x: Array, u: Array) -> Array:
         """A x + B u."""

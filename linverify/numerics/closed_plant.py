@@ -43,12 +43,12 @@ class _Inside:
     n: int = field(init=False)
     feed: Array = field(init=False)
     sizes: Array = field(init=False)
-    outputs: bool = field(init=False)
+    direct: bool = field(init=False)
 
     def __post_init__(self) -> None:
         bound, names = self.bound, self.measured_names
         self.n = bound.n
-        self.outputs = any(name not in bound.states for name in names)
+        self.direct = any(name not in bound.states for name in names)
         self.sizes = np.abs([self.point.value(name) for name in names]) if names else np.zeros(0)
         self.feed = np.zeros((len(names), bound.m))
         columns = [bound.inputs.index(name) for name in self.model.inputs.names]
@@ -70,8 +70,8 @@ class _Inside:
         """Deviations from the trimmed course, (q, N)."""
         found = np.empty((len(self.measured_names), x.shape[1]))
         course, bound = self._course(t), self.bound
-        y = bound.measure(t, x, u) if self.outputs else None
-        still = self._still(t, course) if self.outputs else None
+        y = bound.measure(t, x, u) if self.direct else None
+        still = self._still(t, course) if self.direct else None
         for row, name in enumerate(self.measured_names):
             if name in bound.states:
                 at = bound.states.index(name)

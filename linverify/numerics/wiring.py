@@ -32,12 +32,14 @@ class Inner(Protocol):
     """What is inside: x (n, N), u (m, N) absolute for a plant, deviations for a local model.
 
     measured: deviations of the wiring's `measured` signals from the trimmed course, (q, N); feed (q, m): how much of u
-    they hold at once, near trim; sizes (q,): magnitudes that their rounding goes with.
+    they hold at once, near trim; sizes (q,): magnitudes that their rounding goes with; direct: whether they may hold
+    inputs at once at all.
     """
 
     n: int
     feed: Array
     sizes: Array
+    direct: bool
 
     def rates(self, t: float, x: Array, u: Array) -> Array:
         """Rates, or next states, (n, N)."""
@@ -232,11 +234,12 @@ class Whole:
         Where the inputs depend on the measurements at once, and these on the inputs, both are solved for by Newton's
         method with the slopes at trim, put right as it goes (Broyden 1965). Raises PlantError where that finds nothing.
         """
-        q = len(self.wiring.measured)
-        flow = self.wiring.flow(a, w, np.zeros((q, x.shape[1])))
-        if not self.gain.any():
-            y = self.inner.measured(t, x, flow.inputs)
-            return y, self.wiring.flow(a, w, y)
+        u = w[: len(self.gain)]
+        y = self.inner.measured(t, x, u)
+        flow = self.wiring.flow(a, w, y)
+        # mostly the measurements do not hold the inputs at once: they are the same with the inputs that they lead to
+        if not self.inner.direct or np.array_equal(self.inner.measured(t, x, flow.inputs), y):
+            return y, flow
         u, inverse, before = flow.inputs, np.tile(self.solver, (x.shape[1], 1, 1)), None
         for _ in range(MOST):
             y = self.inner.measured(t, x, u)

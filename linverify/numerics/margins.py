@@ -25,6 +25,7 @@ from .transfer import Transfer
 
 KINDS: tuple[Kind, ...] = ("S", "T", "disk")
 ROUNDS = 6  # of walking further with a dead time
+NOTHING = 1e-12  # |L| that is smaller, and no larger than its own error, has no phase
 NEGATIVE = 1e-7  # |Im L| of |L| where L counts as real; nearer than this a crossing is polished
 
 
@@ -213,6 +214,7 @@ def _phase_crossings(L: Curve, nodes: Array) -> tuple[Crossing, ...]:
     found, touches = cross.crossings(L, cross.turn_of, nodes)
     met = [cross.polished(L, v, cross.turn_of, cross.turn_slope) for v in found] + [cross.taken(L, v) for v in touches]
     met = [each for each in met if each.at.real < 0.0 and abs(each.at.imag) <= NEGATIVE * abs(each.at) + each.error]
+    met = [each for each in met if abs(each.at) >= NOTHING or abs(each.at) > 4.0 * each.error]
     crossings = [_phase_crossing(L, each) for each in sorted(met, key=lambda each: each.v)]
     ends = L.exact(np.array([0.0, np.inf]))
     for place, frequency in enumerate((0.0, L.told(math.inf))):

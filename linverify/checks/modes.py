@@ -13,25 +13,22 @@ power of their size is below 1e-6 of the fastest rate; without `at_zero` it is u
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping
-from dataclasses import replace
 from typing import Any
 
 import numpy as np
 
 from ..core.case import Case, CheckAsk
 from ..core.mode import ModeAsk
-from ..core.model import LocalModel
 from ..core.rules import RULES
+from ..core.shown import number, with_unit
 from ..core.units import UnitError, convert
 from ..core.verdict import Figure, Status, Verdict
 from ..numerics.modal import Mode, Modes, modes
-from ..numerics.placed import printed_errors
 from ..numerics.traits import TRAITS
-from .closed import ClosedStudy, of_model
 from .findings import Findings
 from .mode_choice import Choice, choice, described, distance, label, line_name, nearest, told_choice, told_complex
 from .mode_limits import judge_limits, judge_measures
+from .mode_model import judged_model
 from .mode_stability import judge_stable
 from .mode_zeros import judge_gains, judge_zeros
 from .study import Study
@@ -40,13 +37,14 @@ from .study import Study
 def check(study: Study, ask: CheckAsk) -> Verdict:
     """The verdict on all lines of `modes` at one operating point."""
     into = Findings(details={"time_unit": study.case.plant.time_unit})
-    model, nominal, refused = _judged(study, into)
-    if model is None:
-        into.reasons.append((Status.UNDECIDED, refused))
+    judged = judged_model(study)
+    into.notes += judged.notes
+    if judged.model is None:
+        into.reasons.append((Status.UNDECIDED, judged.refused))
     else:
-        found = modes(model, nominal)
+        found = modes(judged.model, judged.nominal)
         for line in study.case.modes:
-            _line(found, line, into)
+            _line(found, line, judged.fastest, into)
         into.details["modes"] = [_plain(study.case, found, mode) for mode in found.modes]
         _told_rules(study.case, into)
     del into.details["time_unit"]
@@ -63,29 +61,11 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     )
 
 
-def _judged(study: Study, into: Findings) -> tuple[LocalModel | None, Mapping[str, float], str]:
-    """The model to judge with errors of its entries and nominal sizes, or why there is none."""
-    if not study.case.local.closed:
-        return _with_rounding(study, study.model()), study.case.nominal, ""
-    closed = ClosedStudy(study, of_model(study.case))
-    if reason := closed.unmet("model"):
-        return None, {}, reason
-    if closed.updates:
-        return None, {}, "a sampled loop is closed inside the local model: its poles are those of no one matrix"
-    into.notes += closed.told()
-    return closed.model(), closed.case.nominal, ""
+def _line(found: Modes, ask: ModeAsk, fastest: float, into: Findings) -> None:
+    """One line: which modes it is about, whether there are any, and what it asks of them.
 
-
-def _with_rounding(study: Study, model: LocalModel) -> LocalModel:
-    """A delivered model with half a unit in the last printed digit of its entries as their errors."""
-    delivered = study.case.local.delivered
-    if delivered is None or model.errors or study.model_override is not None:
-        return model
-    return replace(model, errors=printed_errors(delivered, study.point()))
-
-
-def _line(found: Modes, ask: ModeAsk, into: Findings) -> None:
-    """One line: which modes it is about, whether there are any, and what it asks of them."""
+    fastest: natural frequency up to which modes are exact.
+    """
     judge_zeros(found.model, ask, into)
     judge_gains(found, ask, into)
     if not (ask.limits or ask.stable or ask.controllable or ask.observable) and ask.chosen.everything:
@@ -94,12 +74,26 @@ def _line(found: Modes, ask: ModeAsk, into: Findings) -> None:
     if chosen.refused:
         into.reasons.append((Status.UNDECIDED, f"{line_name(ask)}{chosen.refused}"))
         return
+    chosen = _exact(ask, chosen, fastest, into)
     _there(found, ask, chosen, into)
     judge_stable(found, ask, chosen.sure, chosen.maybe, into)
     judge_limits(found, ask, chosen.sure, chosen.maybe, into)
     judge_measures(found, ask, chosen.sure, chosen.maybe, into)
     row = {"line": ask.name or str(ask.place), "modes": [label(mode) for mode in chosen.all]}
     into.details.setdefault("mode_lines", []).append(row)
+
+
+def _exact(ask: ModeAsk, chosen: Choice, fastest: float, into: Findings) -> Choice:
+    """The modes below `fastest`; where a line is about faster ones too, what is not judged is told."""
+    if math.isinf(fastest):
+        return chosen
+    kept = [[mode for mode in modes if abs(mode.value) <= fastest] for modes in (chosen.sure, chosen.maybe)]
+    if any(abs(mode.value) > fastest for mode in chosen.all):
+        limit = with_unit(number(fastest, 3), f"rad/{into.details['time_unit']}")
+        words = f"modes beyond {limit} are those of the chain of states that stands for the dead time of a closed loop"
+        words += ": choose slower ones with between; stability of that loop itself is for its margins"
+        into.reasons.append((Status.UNDECIDED, f"{line_name(ask)}{words}"))
+    return Choice(tuple(kept[0]), tuple(kept[1]))
 
 
 def _there(found: Modes, ask: ModeAsk, chosen: Choice, into: Findings) -> None:

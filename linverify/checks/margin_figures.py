@@ -51,7 +51,8 @@ def figures(
             replace(ask, value=widened(ask.value, matched((ask.what, ask.channel), varied)))
             for ask in asked(case, limit, found)
         ]
-        if not asks and limit.word != "crossover":  # a loop without a crossover is told apart
+        # a loop without a crossover is told apart, but only one with channels that could have crossed
+        if not asks and not (limit.word == "crossover" and found.channels):
             silent.append(limit.word)
         made += [_figure(case, limit, ask) for ask in asks]
     return made, silent
@@ -130,6 +131,8 @@ def _steps(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
 
 
 def _dampings(limit: Limit, found: LoopMargins) -> Iterator[Ask]:
+    if found.poles is None and not found.delayed:
+        return
     met = dampings(found) or [Found(1.0)]  # no pole oscillates: as good as critically damped
     if math.isfinite(limit.low):
         yield Ask("closed-loop damping ratio", "", min(met, key=lambda e: e.value), limit.low, Sense.LOWER)

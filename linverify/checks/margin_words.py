@@ -76,10 +76,8 @@ def notes(loop: Loop, one: LoopMargins) -> list[str]:
     """What a disk margin promises, and where ready-made limits come from."""
     told = []
     if any(limit.word == "disk_margin" for limit in loop.require):
-        alpha = one.channels[0].margins.disk.value
-        if one.joint is not None:
-            alpha = one.joint.here.low
-        told.append(promise(alpha, len(one.channels)))
+        alpha = one.channels[0].margins.disk.value if one.joint is None else one.joint.here.low
+        told.append(promise(alpha, len(one.loop.inputs)))
     ruled: dict[tuple[str, str, str], list[str]] = {}
     for limit in loop.require:
         if limit.rule:

@@ -99,7 +99,8 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
         return
     made, silent = figures(case, loop, one, others)
     found.figures += made
-    found.reasons += [(Status.UNDECIDED, f"{word.replace('_', ' ')} could not be found") for word in silent]
+    why = f": {one.alone}" if one.alone else ""
+    found.reasons += [(Status.UNDECIDED, f"{word.replace('_', ' ')} could not be found{why}") for word in silent]
     found.reasons += margin_words.without_crossover(case, loop, one)
     if loop.confirm:
         found.reasons.append((Status.UNDECIDED, "margins are not yet confirmed on the nonlinear plant"))

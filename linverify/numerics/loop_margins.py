@@ -21,6 +21,8 @@ from .structured import Bounded
 from .transfer import Transfer
 from .unmoved import Unmoved, split
 
+ALONE = "for one channel alone, the dead time of the others would lie inside a closed loop"
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Channel:
@@ -67,7 +69,8 @@ class LoopMargins:
     move; trivial: the loop moves nothing. poles: of the closed loop, where it has no dead time; delayed: those that
     were found where it has. unstable: those, in s per time unit (sampled: in z), that are surely unstable; edge: those
     of which rounding leaves that open; opposite: closed with the opposite sign it would be stable. channels, joint: of
-    a stable loop; joint: only of several channels; at_input: where it is broken; steps: of set points, where asked for.
+    a stable loop; joint: only of several channels; at_input: where it is broken; steps: of set points, where asked for;
+    alone: why there are no margins of single channels, empty where there are.
     """
 
     loop: Transfer
@@ -85,6 +88,7 @@ class LoopMargins:
     at_input: bool = True
     delayed: tuple[complex, ...] = ()
     steps: tuple[Stepped, ...] = ()
+    alone: str = ""
 
 
 def measured(opened: Opened, at_input: bool, *, brief: bool = False) -> LoopMargins:
@@ -111,8 +115,7 @@ def _single(loop: Transfer, unmoved: tuple[Unmoved, ...]) -> LoopMargins:
 
 def _several(opened: Opened, loop: Transfer, unmoved: tuple[Unmoved, ...], at_input: bool, brief: bool) -> LoopMargins:
     if loop.delay:
-        why = "several channels with a dead time: each would lie inside the other ones, which are closed"
-        return LoopMargins(loop, unmoved, Outcome.DELAY_NOT_DECIDED, why)
+        return _several_late(opened, loop, unmoved, at_input, brief)
     poles = closed_poles(loop)
     if poles is None:
         return LoopMargins(loop, unmoved, Outcome.ILL_POSED)
@@ -135,6 +138,18 @@ def _several(opened: Opened, loop: Transfer, unmoved: tuple[Unmoved, ...], at_in
     outcomes = [(one.margins.outcome, one.margins.why) for one in channels if not one.margins.outcome.done]
     outcome, why = outcomes[0] if outcomes else (Outcome.DONE, "")
     return LoopMargins(loop, unmoved, outcome, why, False, True, poles, (), (), False, channels, joint)
+
+
+def _several_late(
+    opened: Opened, loop: Transfer, unmoved: tuple[Unmoved, ...], at_input: bool, brief: bool
+) -> LoopMargins:
+    """With a dead time that all channels share: what holds for all at once is known, of one alone nothing is."""
+    here = multiloop(loop)
+    if not here.outcome.done or not here.stable:
+        return LoopMargins(loop, unmoved, here.outcome, unstable=here.unstable)
+    joint = Joint(_peak(here.sensitivity), _peak(here.complementary), here.disk)
+    joint = joint if brief else _everywhere(opened, joint, at_input)
+    return LoopMargins(loop, unmoved, stable=True, joint=joint, alone=ALONE)
 
 
 def _everywhere(opened: Opened, joint: Joint, at_input: bool) -> Joint:

@@ -136,9 +136,8 @@ def modes(model: LocalModel, nominal: Mapping[str, float]) -> Modes:
     Raises ValueError for a model with entries that are not finite.
     """
     names = model.states.names
-    # powers of two, so that scaling rounds nothing
     given = np.array([nominal.get(name, math.nan) for name in names], dtype=np.float64)
-    sizes = np.asarray(2.0 ** np.round(np.log2(_sizes(np.asarray(model.A), given))), dtype=np.float64)
+    sizes = _sizes(np.asarray(model.A), given)
     A = np.asarray(model.A, dtype=np.float64)
     errors = np.asarray(model.errors.get("A", np.zeros_like(A)), dtype=np.float64)
     if model.step is not None:

@@ -119,8 +119,8 @@ def test_metres_and_millimetres_give_the_same_measure() -> None:
     mm = 1e3
     milli = modes(replace(model, A=A, B=B * mm, C=C / mm), {name: size * mm for name, size in names.items()})
     one, two = metres.modes[0], milli.modes[0]
-    assert milli.controllability(two, "u0").value == pytest.approx(metres.controllability(one, "u0").value, rel=1e-3)
-    assert milli.observability(two, "y0").value == pytest.approx(metres.observability(one, "y0").value, rel=1e-3)
+    assert milli.controllability(two, "u0").value == pytest.approx(metres.controllability(one, "u0").value, rel=1e-9)
+    assert milli.observability(two, "y0").value == pytest.approx(metres.observability(one, "y0").value, rel=1e-9)
 
 
 def test_controllability_is_a_cosine() -> None:

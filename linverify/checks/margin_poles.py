@@ -51,11 +51,8 @@ def reach(found: LoopMargins) -> float:
 
 def counted(loop: Loop, found: LoopMargins, time_unit: str) -> tuple[list[tuple[Status, str]], list[str]]:
     """Of a loop with dead time: a reason to be undecided where a pole may be missed, and a note on what was judged."""
-    if (
-        not found.loop.delay
-        or not found.delayed
-        or not (asked := [limit for limit in loop.require if limit.word == "damping"])
-    ):
+    asked = [limit for limit in loop.require if limit.word == "damping"]
+    if not found.loop.delay or not found.delayed or not asked:
         return [], []
     limit, end = asked[0].low, reach(found)
     told = f"closed-loop poles were judged up to {with_unit(number(end, 4), f'rad/{time_unit}')}"

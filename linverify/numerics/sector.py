@@ -15,9 +15,11 @@ from ..core.model import Array
 from .transfer import Transfer
 
 Complex = NDArray[np.complex128]
-TURN = 0.3  # rad between two points of the border
+TURN, GROWTH = 0.3, 0.5  # rad, and relative change, between two points of the border
 POINTS, ROUNDS = 200, 24
+MOST = 200_000  # points of the border
 LOW = 1e-6  # of the frequency: where the region begins
+BESIDE = (-0.3, -0.1, -0.03, -0.01, 0.0, 0.01, 0.03, 0.1, 0.3)  # of a pole's frequency: points about it
 
 
 def weakly_damped(loop: Transfer, damping: float, frequency: float) -> int | None:
@@ -26,31 +28,49 @@ def weakly_damped(loop: Transfer, damping: float, frequency: float) -> int | Non
     loop: continuous, one channel; frequency: rad per time unit. None where the border runs too near to a root or pole.
     """
     lean = math.asin(min(damping, 1.0))
-    border = _border(lean, frequency)
     poles = np.linalg.eigvals(loop.A)
+    border = _border(lean, _sizes(loop, frequency, np.abs(poles)))
+    if border is None:
+        return None
     inside = (np.abs(poles) < frequency) & (np.abs(poles) > LOW * frequency) & (poles.imag > 0)
     inside &= (poles.real < 0) & (-poles.real < np.abs(poles) * math.sin(lean))
     turns = _turns(loop, border)
     return None if turns is None else turns + int(inside.sum())
 
 
-def _border(lean: float, frequency: float) -> Complex:
+def _sizes(loop: Transfer, frequency: float, poles: Array) -> Array | None:
+    """Frequencies along the axis that follow every pole and the phase of the dead time; None where that is too many."""
+    count = math.ceil(frequency * loop.delay / TURN) + 1
+    if count > MOST:
+        return None
+    parts = [np.geomspace(LOW * frequency, frequency, POINTS), np.linspace(0.0, frequency, count)]
+    parts += [pole * (1.0 + np.array(BESIDE)) for pole in poles]
+    sizes = np.unique(np.concatenate(parts))
+    return np.asarray(sizes[(sizes >= LOW * frequency) & (sizes <= frequency)])
+
+
+def _border(lean: float, sizes: Array | None) -> Complex | None:
     """Anticlockwise: up the axis, along the arc, back down the slanting line, along the small arc."""
-    up = 1j * np.geomspace(LOW * frequency, frequency, POINTS)
-    arc = frequency * np.exp(1j * np.linspace(0.5 * math.pi, 0.5 * math.pi + lean, POINTS))
-    back = np.exp(1j * (0.5 * math.pi + lean)) * np.geomspace(frequency, LOW * frequency, POINTS)
-    small = LOW * frequency * np.exp(1j * np.linspace(0.5 * math.pi + lean, 0.5 * math.pi, POINTS))
-    return np.concatenate([up, arc[1:], back[1:], small[1:]])
+    if sizes is None:
+        return None
+    turn = np.exp(1j * np.linspace(0.5 * math.pi, 0.5 * math.pi + lean, POINTS))
+    back = turn[-1] * sizes[::-1]
+    return np.concatenate([1j * sizes, sizes[-1] * turn[1:], back[1:], sizes[0] * turn[-2::-1]])
 
 
 def _turns(loop: Transfer, border: Complex) -> int | None:
     """How often 1 + L goes round zero."""
     values = _closed(loop, border)
     for _ in range(ROUNDS):
-        steps = np.angle(values[1:] / values[:-1])
-        wide = np.flatnonzero(np.abs(steps) > TURN)
+        ratios = values[1:] / values[:-1]
+        steps = np.angle(ratios)
+        wide = np.flatnonzero(
+            (np.abs(steps) > TURN) | (np.abs(ratios) > 1.0 + GROWTH) | (np.abs(ratios) < 1.0 - GROWTH)
+        )
         if not len(wide):
             return round(float(steps.sum()) / (2.0 * math.pi))
+        if len(border) + len(wide) > MOST:
+            return None
         middle = 0.5 * (border[wide] + border[wide + 1])
         border = np.insert(border, wide + 1, middle)
         values = np.insert(values, wide + 1, _closed(loop, middle))

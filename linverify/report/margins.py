@@ -10,7 +10,7 @@ from collections.abc import Mapping, Sequence
 from typing import Any
 
 from ..core.shown import decibels
-from . import modal, quantity
+from . import modal, quantity, text
 from .forms import cell, complex_told, is_number, is_quantity, plain_blocks
 from .tables import escaped, grid
 
@@ -42,7 +42,7 @@ def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
     left.pop("frequency_unit", None)
     made = [_loop(left)]
     if channels := _rows(left, "channels"):
-        made += ["Margins, one channel at a time:", _channels(channels, unit), escaped(SIGN)]
+        made += ["Margins, one channel at a time:", _channels(channels, unit), escaped(SIGN), text.CAUTION]
         made += ["Disk margins and what they guarantee:", _disks(channels, left.get("all_channels"), unit)]
         made += _crossings(channels, unit)
     made += _all_channels(left.pop("all_channels", None), unit)

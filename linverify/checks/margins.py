@@ -20,6 +20,7 @@ from ..numerics.loop_margins import LoopMargins
 from ..numerics.poles import AT_ZERO
 from ..numerics.unmoved import Unmoved
 from . import margin_details, margin_words
+from .closed import nested
 from .margin_delays import with_delays
 from .margin_figures import figures
 from .margin_poles import counted
@@ -68,7 +69,8 @@ def setup(study: Study, name: str) -> Setup:
         if unmet := study.unmet("derived"):
             raise RefusedError(unmet)
         return Setup(study.derived(), case.loops, case.actuators, case.delays, tick=case.plant.step)
-    inside = () if name in local.closed else local.closed
+    # with the loops inside these too: all of them are in a delivered model
+    inside = () if name in local.closed else tuple(one.name for one in nested(case, local.closed))
     closed, also = (inside, ()) if local.delivered is not None else ((), inside)
     return Setup(study.model(), case.loops, case.actuators, case.delays, closed, also, case.plant.step)
 

@@ -162,8 +162,7 @@ def _check_steps(setup: Setup, loops: Sequence[Loop], step: float) -> None:
     if continuous := [one.name for one in loops if one.sample is None]:
         whose = "the plant is" if setup.tick is not None else "the local model is"
         raise RefusedError(f"loop {continuous[0]} is continuous, and {whose} a difference equation every {step:.6g}")
-    lagged = [name for name, actuator in setup.actuators.items() if actuator.lag and _lag(name) not in model.states]
-    if setup.tick is None and (slow := [name for name in lagged if name in model.inputs]):
+    if setup.tick is None and (slow := _lagged(setup)):
         raise RefusedError(f"the local model is sampled for held inputs, and behind its lag {slow[0]} is not held")
 
 
@@ -189,8 +188,11 @@ def _late(setup: Setup, loop: Loop) -> str:
     return next((f"the dead time of {name}" for name in loop.measures if setup.delays.outputs.get(name)), "")
 
 
-def _lag(name: str) -> str:
-    return f"{name}.lag"
+def _lagged(setup: Setup) -> list[str]:
+    """Inputs of the local model with an actuator in front that lags; those of loops inside the model have it inside."""
+    inside = {moved.name for name in setup.closed for moved in setup.loops[name].moves if not moved.loop}
+    names = [name for name, one in setup.actuators.items() if one.lag > 0.0 and name in setup.model.inputs]
+    return [name for name in names if name not in inside]
 
 
 def _seen(
@@ -215,10 +217,9 @@ def _body(setup: Setup, reading: Sequence[Loop], closed: Sequence[Loop]) -> Bloc
     """The local model behind its actuators with continuous loops closed: all inputs, and what loops measure."""
     blocks = [_plant(setup, reading)]
     wires = []
-    for name, actuator in setup.actuators.items():
-        if actuator.lag and name in setup.model.inputs and _lag(name) not in setup.model.states:
-            blocks.append(_actuator(name, actuator.lag, setup.model.step))
-            wires.append(Wire(f"{name} behind its actuator", f"{name} at the plant"))
+    for name in _lagged(setup):
+        blocks.append(_actuator(name, setup.actuators[name].lag, setup.model.step))
+        wires.append(Wire(f"{name} behind its actuator", f"{name} at the plant"))
     for loop in closed:
         blocks.append(_controller(loop))
         wires += [Wire(name, f"{loop.name}.set_point.{name}", -1.0) for name in loop.measures]
@@ -235,7 +236,7 @@ def _plant(setup: Setup, reading: Sequence[Loop]) -> Block:
             C[row], D[row] = model.C[model.outputs.index(name)], model.D[model.outputs.index(name)]
         else:
             C[row, model.states.index(name)] = 1.0
-    lagged = {name for name, one in setup.actuators.items() if one.lag and _lag(name) not in model.states}
+    lagged = _lagged(setup)
     inputs = tuple(f"{name} at the plant" if name in lagged else name for name in model.inputs.names)
     states = tuple(f"state {k + 1}" for k in range(len(model.states))) if model.anonymous else model.states.names
     return Block(model.A, model.B, C, D, states, inputs, names)
@@ -245,7 +246,7 @@ def _actuator(name: str, lag: float, step: float | None) -> Block:
     """1 / (lag s + 1); of a difference equation at its instants, exact for a command held between them."""
     rate = np.array([[1.0 / lag]])
     A, B = (-rate, rate) if step is None else (np.exp(-rate * step), -np.expm1(-rate * step))
-    return Block(A, B, np.eye(1), np.zeros((1, 1)), (_lag(name),), (name,), (f"{name} behind its actuator",))
+    return Block(A, B, np.eye(1), np.zeros((1, 1)), (f"{name}.lag",), (name,), (f"{name} behind its actuator",))
 
 
 def _controller(loop: Loop) -> Block:

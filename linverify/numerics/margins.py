@@ -19,13 +19,14 @@ from . import dead_time
 from .bilinear import at_nyquist, change
 from .crossings import Met
 from .curve import HUGE, Complex, Curve, curve
+from .encirclements import surely_stable
 from .level_sets import Kind, Peak, peak
 from .loop_stability import Poles, closed, ill_posed, of_matrix
 from .transfer import Transfer
 
 KINDS: tuple[Kind, ...] = ("S", "T", "disk")
 ROUNDS = 6  # of walking further with a dead time
-NOTHING = 1e-12  # |L| that is smaller, and no larger than its own error, has no phase
+NOTHING = 1e-12  # |L| that is smaller, and not known to a quarter of itself, has no phase
 NEGATIVE = 1e-7  # |Im L| of |L| where L counts as real; nearer than this a crossing is polished
 
 
@@ -105,7 +106,7 @@ def margins(loop: Transfer) -> Margins:
         return _delayed(L)
     poles = closed(L)
     opposite = not ill_posed(-L.dF) and closed(L, -1.0).stable
-    if not poles.stable:
+    if len(poles.unstable) or (len(poles.undecided) and not surely_stable(L)):
         return _unstable(poles, opposite)
     opened = of_matrix(L.A, None).values
     gains, phases = cross.gain_candidates(L), cross.phase_candidates(L)
@@ -214,8 +215,8 @@ def _phase_crossings(L: Curve, nodes: Array) -> tuple[Crossing, ...]:
     found, touches = cross.crossings(L, cross.turn_of, nodes)
     met = [cross.polished(L, v, cross.turn_of, cross.turn_slope) for v in found] + [cross.taken(L, v) for v in touches]
     met = [each for each in met if each.at.real < 0.0 and abs(each.at.imag) <= NEGATIVE * abs(each.at) + each.error]
-    met = [each for each in met if abs(each.at) >= NOTHING or abs(each.at) > 4.0 * each.error]
     crossings = [_phase_crossing(L, each) for each in sorted(met, key=lambda each: each.v)]
+    crossings = [each for each in crossings if abs(each.at) >= NOTHING or each.error < 0.25 * each.margin]
     ends = L.exact(np.array([0.0, np.inf]))
     for place, frequency in enumerate((0.0, L.told(math.inf))):
         at = complex(ends.at[place])

@@ -8,7 +8,12 @@ import numpy as np
 import pytest
 from open_loops import product, ratio, scaled, static
 
+from linverify.core.model import Array
 from linverify.core.outcome import Outcome
+from linverify.numerics.crossings import gain_candidates, walk
+from linverify.numerics.curve import curve
+from linverify.numerics.encirclements import right_of_axis
+from linverify.numerics.loop_stability import closed, of_matrix
 from linverify.numerics.margins import guarantee, margins
 from linverify.numerics.transfer import Transfer
 
@@ -76,6 +81,41 @@ def test_poles_on_the_axis_are_not_called_stable_or_unstable() -> None:
     assert found.outcome is Outcome.ON_THE_EDGE
     assert not found.stable
     assert found.unstable == ()
+
+
+def test_count_from_the_response_alone() -> None:
+    loops = {
+        0: ratio([3], product([1, 1], [1, 1], [1, 1])),
+        1: ratio([0.5], [1, -1]),
+        2: ratio([9], product([1, 1], [1, 1], [1, 1])),
+    }
+    for number, loop in loops.items():
+        L = curve(loop)
+        nodes = walk(of_matrix(L.A, None).values, gain_candidates(L))
+        assert right_of_axis(L, nodes) == number
+    # a pole of the loop on the axis; a response through -1
+    for loop in (ratio([1], [1, 0]), ratio([8], product([1, 1], [1, 1], [1, 1]))):
+        L = curve(loop)
+        nodes = np.append(walk(of_matrix(L.A, None).values, gain_candidates(L)), math.sqrt(3))
+        assert right_of_axis(L, np.sort(nodes)) is None
+
+
+def placed(poles: Array, wanted: float) -> Transfer:
+    """Distinct real poles under the state feedback that puts all closed-loop poles at one place."""
+    n = len(poles)
+    gains = [(each - wanted) ** n / math.prod(each - other for other in poles if other != each) for each in poles]
+    return Transfer(np.diag(poles), np.ones((n, 1)), np.array([gains]), np.zeros((1, 1)))
+
+
+@pytest.mark.parametrize("poles", [np.linspace(0.1, 1.0, 7), np.linspace(-0.1, 0.9, 8), np.linspace(0.0, 0.7, 8)])
+def test_stable_although_its_eigenvalues_cannot_tell(poles: Array) -> None:
+    # all closed-loop poles at -1, where rounding spreads them so far that no eigenvalue bound decides
+    loop = placed(poles, -1.0)
+    assert len(closed(curve(loop)).undecided) > 0
+    assert margins(loop).stable
+    # and at +0.01, or on the axis, where nothing may be called stable
+    for wanted in (0.01, 0.0):
+        assert not margins(placed(poles - 0.03, wanted)).stable
 
 
 def test_ill_posed() -> None:

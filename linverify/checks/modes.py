@@ -33,6 +33,8 @@ from .mode_stability import judge_stable
 from .mode_zeros import judge_gains, judge_zeros
 from .study import Study
 
+TOLD = 6  # findings told in the reason
+
 
 def check(study: Study, ask: CheckAsk) -> Verdict:
     """The verdict on all lines of `modes` at one operating point."""
@@ -54,11 +56,19 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
         check=ask.name,
         status=into.status,
         place=ask.place,
-        reason=into.reason,
+        reason=_reason(into),
         figures=tuple(into.figures),
         notes=tuple(into.notes),
         details=into.details,
     )
+
+
+def _reason(into: Findings) -> str:
+    """The sentences behind the status, at most `TOLD`; every figure stands in the table."""
+    told = [text for status, text in into.reasons if status is into.status]
+    if into.status is Status.PASS or len(told) <= TOLD:
+        return into.reason
+    return "; ".join([*told[:TOLD], f"and {len(told) - TOLD} more"])
 
 
 def _line(found: Modes, ask: ModeAsk, fastest: float, into: Findings) -> None:

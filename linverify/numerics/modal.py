@@ -144,7 +144,7 @@ def modes(model: LocalModel, nominal: Mapping[str, float]) -> Modes:
         A = A - np.eye(len(A))
         errors = np.where((A == 0.0) & (errors <= 4.0 * SPACING), 0.0, errors)  # one, written as one
     A, errors = A * sizes / sizes[:, np.newaxis], errors * sizes / sizes[:, np.newaxis]
-    found = sorted(roots(A, errors), key=_order)
+    found = sorted(roots(A, errors) if model.step is None else roots(A, errors, _inwards), key=_order)
     speed = _speed(A, found)
     shared = projectors(A, structural(A, errors), found)
     made = [_mode(root, one, model.step, speed, shared.count(one)) for root, one in zip(found, shared, strict=True)]
@@ -196,7 +196,8 @@ def _mode(root: Root, shared: Shared, step: float | None, speed: float, members:
     origin = _origin(root, speed)
     if step is None:
         nan = complex(math.nan, math.nan)
-        return Mode(Pole(root.value, root.radius, root.real), nan, poles, shared, members == 1, origin)
+        pole = Pole(root.value, root.radius, root.real, along=root.along)
+        return Mode(pole, nan, poles, shared, members == 1, origin)
     return Mode(_in_s(root, step), 1.0 + root.value, poles, shared, members == 1, origin)
 
 
@@ -209,7 +210,16 @@ def _in_s(root: Root, step: float) -> Pole:
         most = size + root.radius
         return Pole(complex(-math.inf, 0.0), math.inf, beyond=(-_log(most) / step, math.pi / step))
     value = complex(np.log1p(root.value)) / step
-    return Pole(value, -math.log1p(-root.radius / size) / step, root.real and z.real > 0.0)
+    share = root.radius / size
+    # log(1 + d) = d + rest, and |rest| <= |d|^2 / (2 (1 - |d|))
+    along = (root.along / size + 0.5 * share**2 / (1.0 - share)) / step
+    return Pole(value, -math.log1p(-share) / step, root.real and z.real > 0.0, along=along)
+
+
+def _inwards(value: complex) -> complex:
+    """The direction in which z = 1 + value moves towards or away from z = 0: that of the real part of log z."""
+    z = 1.0 + value
+    return z.conjugate() / abs(z) if z else 1.0 + 0.0j
 
 
 def _log(value: float) -> float:

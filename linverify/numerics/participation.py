@@ -21,6 +21,7 @@ from .frequency import Complex
 from .spectrum import RESERVE, SPACING, Root, circle, largest
 
 TELLING = 1e-3  # error of a share of participation, from rounding alone, beyond which modes are taken together
+GOOD = 1e-4  # the same, with errors of entries: no other contour is tried then
 CROWDED = 0.6  # of the distance to the nearest foreign eigenvalue: within it the contour has room
 CONTOUR = 64  # points of the contour
 
@@ -76,8 +77,14 @@ class _Projectors:
             return Shared(n, np.full(n, 1.0 / n), 0.0, np.eye(n, dtype=complex), np.eye(n, dtype=complex), 0.0)
         if cluster.inside > CROWDED * cluster.gap or self._torn(cluster):
             return None
-        tried = [self._contour(cluster, share) for share in (0.25, 0.5, 0.75)]
-        return min((one for one in tried if one is not None), key=lambda one: one.share_error, default=None)
+        best: Shared | None = None
+        for share in (0.5, 0.25, 0.75):
+            found = self._contour(cluster, share)
+            if found is not None and (best is None or found.share_error < best.share_error):
+                best = found
+            if best is not None and best.share_error <= GOOD:
+                break
+        return best
 
     def _torn(self, cluster: Cluster) -> bool:
         """True where a disc that cannot be told apart has members inside and outside."""

@@ -5,11 +5,16 @@ one or more. So a circle on which it stays below one keeps its number of eigenva
 each eigenvalue is made as small as that allows; where circles would meet, their eigenvalues are taken together. This
 holds for repeated and defective eigenvalues too. The spectral radius is evaluated at points of the circle with a
 reserve, so the discs are an estimate with a margin and no proof.
+
+An error of a stiffness moves a lightly damped pole along the axis and hardly across it. So for a simple eigenvalue its
+shift in one direction is bounded too: to first order from its eigenvectors, the rest by Cauchy's estimate, since the
+eigenvalue is an analytic function of the errors as long as K times as large ones leave it alone in a larger disc.
 """
 
 from __future__ import annotations
 
 import math
+from collections.abc import Callable
 from dataclasses import dataclass, replace
 
 import numpy as np
@@ -27,6 +32,9 @@ POINTS = 32  # of a circle
 APART = 0.4  # of the distance to the nearest foreign eigenvalue: larger circles are joined
 ROOM = 1.25  # times the distance of its own eigenvalues: the least radius of a circle
 HALVINGS = 4  # steps that narrow a radius down to five per cent
+LARGER = (300.0, 100.0, 30.0, 10.0, 3.0)  # times the errors, under which a simple eigenvalue may still be alone
+
+Turn = Callable[[complex], complex]
 
 
 @dataclass(frozen=True, slots=True)
@@ -35,7 +43,8 @@ class Root:
 
     value: as computed, or exactly zero; radius: of the disc about `value` that holds it, infinite where errors are
     unbounded; center, spread: of the disc that holds all `together` eigenvalues which cannot be told apart; single: one
-    simple eigenvalue has the disc to itself; zero: it is zero whatever the entries are.
+    simple eigenvalue has the disc to itself; zero: it is zero whatever the entries are; along: how far it may be off in
+    the one direction that was asked for, at most `radius`.
     """
 
     value: complex
@@ -44,6 +53,7 @@ class Root:
     spread: float
     together: int = 1
     zero: bool = False
+    along: float = math.inf
 
     @property
     def single(self) -> bool:
@@ -62,11 +72,16 @@ def structural(A: Array, E: Array) -> Array:
     return np.where((A == 0.0) & (STRUCTURAL * size >= E), 0.0, E)
 
 
-def roots(A: Array, E: Array) -> tuple[Root, ...]:
+def _outwards(value: complex) -> complex:
+    return 1.0 + 0.0j
+
+
+def roots(A: Array, E: Array, turn: Turn = _outwards) -> tuple[Root, ...]:
     """Eigenvalues of A (n, n) to within E (n, n) >= 0, upper members of pairs only.
 
-    Both scaled by nominal sizes, so that what is negligible does not depend on units. Raises ValueError for an A that
-    is not finite.
+    Both scaled by nominal sizes, so that what is negligible does not depend on units. turn: the direction of `along` at
+    an eigenvalue, |Re(turn x shift)| is bounded; by default that of the real part. Raises ValueError for an A that is
+    not finite.
     """
     if not np.isfinite(A).all():
         raise ValueError("the matrix has entries that are not finite")
@@ -76,7 +91,7 @@ def roots(A: Array, E: Array) -> tuple[Root, ...]:
     for block in strong_blocks(pattern):
         place = np.ix_(block, block)
         sure = zeros_for_sure(pattern[place])
-        found += _with_zeros(_block(A[place], known[place]), sure)
+        found += _with_zeros(_block(A[place], known[place], turn), sure)
     return tuple(found)
 
 
@@ -88,18 +103,18 @@ def _with_zeros(found: list[Root], sure: int) -> list[Root]:
         if count > sure:
             break
         sure -= count
-        zero = Root(0j, 0.0, 0j, 0.0, zero=True)
+        zero = Root(0j, 0.0, 0j, 0.0, zero=True, along=0.0)
         found[at] = zero
         if count == 2:
             found.append(zero)
     return found
 
 
-def _block(A: Array, E: Array) -> list[Root]:
+def _block(A: Array, E: Array, turn: Turn) -> list[Root]:
     if len(A) == 1:
         value = float(A[0, 0])
         radius = float(E[0, 0]) + 2.0 * SPACING * abs(value)
-        return [Root(complex(value), radius, complex(value), radius)]
+        return [Root(complex(value), radius, complex(value), radius, along=radius)]
     _, (scale, _) = matrix_balance(A, permute=False, separate=True)
     A, E = A * scale / scale[:, np.newaxis], E * scale / scale[:, np.newaxis]
     E = E + 2.0 * SPACING * float(np.linalg.norm(A))  # what the eigensolver's own rounding may act like
@@ -108,16 +123,18 @@ def _block(A: Array, E: Array) -> list[Root]:
     listed = [complex(values[at]) for at in upper]
     if not np.isfinite(E).all():
         return [Root(value, math.inf, value, math.inf, len(A)) for value in listed]
-    with np.errstate(divide="ignore"):
-        first_order = (np.abs(left) * (E @ np.abs(right))).sum(axis=0) / np.abs((left.conj() * right).sum(axis=0))
-    return _Circles(A, E, listed, [float(first_order[at]) for at in upper]).roots()
+    with np.errstate(divide="ignore", invalid="ignore"):
+        # shift of each eigenvalue by each entry of A, (n, n)
+        slopes = [np.outer(left[:, at].conj(), right[:, at]) / (left[:, at].conj() @ right[:, at]) for at in upper]
+    return _Circles(A, E, listed, slopes, turn).roots()
 
 
 class _Circles:
-    """The circles of one block. A, E balanced (n, n); values on or above the real axis; first_order: their errors."""
+    """The circles of one block. A, E balanced (n, n); values on or above the real axis; slopes: by entries of A."""
 
-    def __init__(self, A: Array, E: Array, values: list[complex], first_order: list[float]) -> None:
-        self.A, self.E, self.values, self.first_order = A, E, values, first_order
+    def __init__(self, A: Array, E: Array, values: list[complex], slopes: list[Complex], turn: Turn) -> None:
+        self.A, self.E, self.values, self.slopes, self.turn = A, E, values, slopes, turn
+        self.first_order = [float((np.abs(slope) * E).sum()) for slope in slopes]
         self.size = float(np.linalg.norm(A)) or 1.0
 
     def roots(self) -> list[Root]:
@@ -126,10 +143,12 @@ class _Circles:
 
     def _told(self, cluster: Cluster, radius: float) -> list[Root]:
         if len(cluster.values) == 1:
-            return [Root(cluster.center, radius, cluster.center, radius)]
+            along = min(radius, self._along(cluster, radius))
+            return [Root(cluster.center, radius, cluster.center, radius, along=along)]
         whole = Root(cluster.center, 0.0, cluster.center, radius, len(cluster.values))
         members = [self.values[at] for at in cluster.members]
-        return [replace(whole, value=value, radius=abs(value - cluster.center) + radius) for value in members]
+        away = [abs(value - cluster.center) + radius for value in members]
+        return [replace(whole, value=value, radius=far, along=far) for value, far in zip(members, away, strict=True)]
 
     def _radius(self, cluster: Cluster) -> float | None:
         """The smallest radius found; None where the circle would come too near to foreign eigenvalues."""
@@ -149,8 +168,17 @@ class _Circles:
             low, high = (low, middle) if self._keeps(cluster.center, middle) else (middle, high)
         return high
 
-    def _keeps(self, center: complex, radius: float) -> bool:
-        return largest(self.A, self.E, circle(center, radius, POINTS)) < RESERVE
+    def _along(self, cluster: Cluster, radius: float) -> float:
+        """How far a simple eigenvalue may be off in one direction; infinite where nothing better is known."""
+        slope = self.slopes[cluster.members[0]]
+        first = float((np.abs((self.turn(cluster.center) * slope).real) * self.E).sum())
+        for times in LARGER:
+            if times * radius <= APART * cluster.gap and self._keeps(cluster.center, times * radius, times):
+                return first + radius / (times - 1.0)
+        return math.inf
+
+    def _keeps(self, center: complex, radius: float, times: float = 1.0) -> bool:
+        return largest(self.A, times * self.E, circle(center, radius, POINTS)) < RESERVE
 
 
 def circle(center: complex, radius: float, points: int) -> Complex:

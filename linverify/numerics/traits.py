@@ -36,21 +36,24 @@ class Known:
 class Pole:
     """A pole in s, per time unit, in a disc. real: it is real for sure; then its imaginary part has no error.
 
-    beyond: least decay rate and largest |Im| of a discrete pole so near to z = 0 that nothing else is known of it.
+    along: bound of the error of the real part alone. beyond: least decay rate and largest |Im| of a discrete pole so
+    near to z = 0 that nothing else is known of it.
     """
 
     value: complex
     radius: float
     real: bool = False
     beyond: tuple[float, float] | None = None
+    along: float = math.inf
 
 
 def decay_rate(pole: Pole) -> Known:
     """-Re, which is damping ratio times natural frequency."""
     if pole.beyond:
         return Known(math.inf, pole.beyond[0], math.inf)
-    rate, radius = -pole.value.real, _widened(pole)
-    return Known(rate, rate - radius, rate + radius)
+    rate = -pole.value.real
+    error = min(pole.radius, pole.along) + ROUNDING * abs(pole.value)
+    return Known(rate, rate - error, rate + error)
 
 
 def natural_frequency(pole: Pole) -> Known:
@@ -64,8 +67,8 @@ def natural_frequency(pole: Pole) -> Known:
 def damping(pole: Pole) -> Known:
     """-Re / |pole|, from -1 to 1: 1 and -1 for real poles; anything where the pole may lie at the origin."""
     if pole.beyond:
-        rate, turn = pole.beyond
-        return Known(1.0, 1.0 if math.isinf(rate) else rate / math.hypot(rate, turn), 1.0)
+        least, turn = pole.beyond
+        return Known(1.0, 1.0 if math.isinf(least) else least / math.hypot(least, turn), 1.0)
     size, radius = abs(pole.value), _widened(pole)
     if not radius < size:
         return Known(0.0 if size == 0.0 else -pole.value.real / size, -1.0, 1.0)
@@ -74,7 +77,10 @@ def damping(pole: Pole) -> Known:
         return Known(value, value, value)
     angle, spread = math.acos(value), math.asin(radius / size)
     low, high = math.cos(min(angle + spread, math.pi)), math.cos(max(angle - spread, 0.0))
-    return Known(value, min(low, value), max(high, value))
+    rate = decay_rate(pole)
+    ratios = [end / length for end in (rate.low, rate.high) for length in (size - radius, size + radius)]
+    # by the angle and by real part over length: whichever is known better
+    return Known(value, min(max(low, min(ratios)), value), max(min(high, max(ratios)), value))
 
 
 def time_constant(pole: Pole) -> Known:

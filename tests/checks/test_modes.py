@@ -6,6 +6,8 @@ import math
 
 import numpy as np
 import pytest
+from hypothesis import given, settings
+from hypothesis import strategies as st
 from modal_cases import PLACE, blocks, delivered, figure, judged, least, line, most, pair, plant, verdict
 
 from linverify.core.loop import Limit
@@ -404,3 +406,48 @@ def test_minutes_are_told_as_minutes() -> None:
     found = judged(plant(OSCILLATOR, time_unit="min"), line(least("natural_frequency", 3.0)))
     assert "2 rad/min, at least 3 rad/min is asked for" in found.reason
     assert found.details["modes"][0]["hertz"] == pytest.approx(2.0 / (2.0 * math.pi * 60.0))
+
+
+def test_light_damping_is_decided_although_the_stiffness_is_printed_to_few_digits() -> None:
+    printed, rounding = [[0.0, 1.0], [-1.0e4, -0.4]], {"A": np.array([[0.0, 0.0], [5.0, 0.0005]])}
+    words = {"rounding": rounding}
+    assert delivered(printed, line(least("damping", 0.00195)), **words).status is Status.PASS
+    assert delivered(printed, line(least("damping", 0.00205)), **words).status is Status.FAIL
+    assert delivered(printed, line(least("damping", 0.0020001)), **words).status is Status.UNDECIDED
+
+
+def test_many_findings_are_told_in_part_and_counted() -> None:
+    found = verdict(np.diag(-np.arange(1.0, 11.0)), line(most("natural_frequency", 0.5)))
+    assert found.status is Status.FAIL
+    assert found.reason.endswith("; and 4 more")
+    assert sum(figure.status is Status.FAIL for figure in found.figures) == 10
+
+
+BY_HAND = ("damping", "natural_frequency", "decay_rate", "period")
+
+
+def by_hand(word: str, pole: complex) -> float:
+    if word == "period":
+        return 2.0 * math.pi / abs(pole.imag) if pole.imag else math.inf
+    return {"damping": -pole.real / abs(pole), "natural_frequency": abs(pole), "decay_rate": -pole.real}[word]
+
+
+@settings(deadline=None, derandomize=True, max_examples=60)
+@given(
+    st.integers(2, 5), st.integers(0, 10**6), st.sampled_from(["damping", "natural_frequency", "decay_rate", "period"])
+)
+def test_no_model_within_the_printed_digits_contradicts_a_verdict(n: int, seed: int, word: str) -> None:
+    """Brute force over roundings: a pass holds for all of them, a fail for none."""
+    generator = np.random.default_rng(seed)
+    A = generator.normal(size=(n, n)) - 0.5 * np.eye(n)
+    A = np.vectorize(lambda entry: float(f"{entry:.2e}"))(A)
+    rounding = 0.5 * 10.0 ** (np.floor(np.log10(np.abs(A))) - 2)
+    values = [by_hand(word, value) for value in np.linalg.eigvals(A)]
+    limit = float(generator.choice(values)) * float(generator.choice([0.98, 0.999, 1.001, 1.02]))
+    if not math.isfinite(limit) or limit == 0.0:
+        return
+    status = delivered(A, line(least(word, limit)), rounding={"A": rounding}).status
+    for _ in range(20):
+        true = np.linalg.eigvals(A + rounding * generator.choice([-1.0, 1.0], (n, n)))
+        keeps = min(by_hand(word, value) for value in true) >= limit * (1 - 1e-12 * np.sign(limit))
+        assert status is Status.UNDECIDED or bool(keeps) == (status is Status.PASS)

@@ -121,3 +121,32 @@ def test_blocks_are_states_that_act_on_each_other() -> None:
     starts, ends = np.array([False, False, False, True]), np.array([False, False, True, False])
     assert list(np.flatnonzero(leads(pattern, starts, ends))) == [0, 1, 2, 3]
     assert not leads(pattern, ends, starts).any()
+
+
+@settings(deadline=None, derandomize=True, max_examples=120)
+@given(st.integers(2, 6), st.integers(0, 10**6), st.booleans())
+def test_no_eigenvalue_moves_farther_than_told_in_the_direction_asked_for(n: int, seed: int, turned: bool) -> None:
+    generator = np.random.default_rng(seed)
+    A, E = random_matrix(generator, n)
+    E = np.where(A == 0.0, 0.0, E)
+
+    def turn(value: complex) -> complex:
+        return 1.0 if not turned or value == 0 else value.conjugate() / abs(value)
+
+    for root in roots(A, E, turn):
+        assert root.along <= root.radius
+        if not root.single or root.zero:
+            continue
+        for _ in range(6):
+            values = np.linalg.eigvals(A + E * generator.choice([-1.0, 1.0], (n, n)))
+            nearest = complex(values[np.argmin(abs(values - root.value))])
+            moved = abs((turn(root.value) * (nearest - root.value)).real)
+            assert moved <= root.along * (1 + 1e-9) + 1e-9 * abs(root.value)
+
+
+def test_a_stiffness_hardly_changes_the_damping_of_a_light_pole() -> None:
+    A = np.array([[0.0, 1.0], [-1e4, -0.4]])  # 100 rad/s, damping 0.002
+    E = np.array([[0.0, 0.0], [5.0, 0.0]])
+    (root,) = roots(A, E)
+    assert root.radius > 0.025
+    assert root.along < 1e-3

@@ -14,8 +14,9 @@ import numpy as np
 from ..core.model import Array
 from .mapped import Complex
 
-MARGINS = (1.0, 0.3, 0.1, 0.03, 0.01, 3e-3, 1e-3, 3e-4, 1e-4, 3e-5, 1e-5, 3e-6, 1e-6, 3e-7)  # of g over s^2, falling
-NEWTON = 3  # steps for each of them
+FIRST, FALL, LAST = 1.0, 0.3, 3e-7  # of g over the largest s^2, relative
+ROUNDS = 60  # of Newton steps and smaller g; about twelve are usual
+NEWTON = 3  # steps a round
 STEP = 2.0  # largest change of log D in a step
 RANGE = 9.0  # largest |log D|: scalings beyond gain nothing but rounding errors
 EVEN = 1e-6  # unevenness of the vectors of s_1 that counts as none
@@ -35,16 +36,20 @@ def from_above(M: Complex) -> tuple[Array, Array]:
     value, uneven = _top(scaled(M, np.exp(y)))
     at = np.where((value < best)[:, np.newaxis], y, at)
     best = np.minimum(value, best)
-    going = np.arange(F)
-    for margin in MARGINS:
-        going = going[uneven[going] > EVEN]
+    margin = np.full(F, FIRST)
+    for _ in range(ROUNDS):
+        going = np.flatnonzero((uneven > EVEN) & (margin > LAST))
         if len(going) == 0:
             break
-        best[going], at[going], uneven[going] = _lowered(M[going], best[going], at[going], uneven[going], margin)
+        before = best[going]
+        best[going], at[going], uneven[going] = _lowered(M[going], before, at[going], uneven[going], margin[going])
+        # steps are as short as the margin is small: it falls only where there is little left to gain
+        slow = best[going] > before * (1.0 - 0.2 * margin[going])
+        margin[going] = np.where(slow, FALL * margin[going], margin[going])
     return best, np.exp(at - at[:, :1])
 
 
-def _lowered(M: Complex, best: Array, at: Array, uneven: Array, margin: float) -> tuple[Array, Array, Array]:
+def _lowered(M: Complex, best: Array, at: Array, uneven: Array, margin: Array) -> tuple[Array, Array, Array]:
     """Bounds, log D and unevenness after Newton steps of the barrier at `margin` above the bounds."""
     y = at
     g = np.maximum(best**2 * (1.0 + margin), 1e-300)

@@ -12,8 +12,9 @@ from .tables import escaped, grid
 
 _READING = (
     "Headroom is 1 minus the used share of a limit; a dash stands where a share has no meaning. undecided: the check "
-    "could not be tested, and fails the build. Every quoted figure was computed again on a finer grid; the difference "
-    "is evidence of its accuracy, not proof.",
+    "could not be tested, and fails the build. Every figure of a run in time was computed again on a finer grid; the "
+    "difference is evidence of its accuracy, not proof. Errors of poles and margins follow from those of the local "
+    "model's entries.",
     "Bounds from random drives are one-sided Clopper-Pearson bounds. They concern the declared sampler, not operation, "
     "and are void if the model was tuned on the drives of this seed. Searched, pinned and regular drives never enter "
     "them.",

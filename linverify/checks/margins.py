@@ -3,7 +3,7 @@
 Stability comes first: an unstable loop has no margins and fails, with its poles named. Poles that the loop cannot move
 are told apart; one on or right of the axis fails as well, unless `leaves` names a state that dominates its mode. A loop
 that moves nothing would pass whatever was asked: it is undecided. What beside its figures is told, and in what form, is
-written in `margin_details`.
+written in `margin_details`. With `confirm` the margins are tried on the plant itself as well (`confirm_margin`).
 """
 
 from __future__ import annotations
@@ -14,7 +14,7 @@ from typing import Any
 
 from ..core.case import CheckAsk
 from ..core.loop import Loop
-from ..core.verdict import Figure, Status, Verdict, merged
+from ..core.verdict import Evidence, Figure, Status, Verdict, merged
 from ..numerics.closing import RefusedError, Setup
 from ..numerics.loop_margins import LoopMargins
 from ..numerics.poles import AT_ZERO
@@ -37,6 +37,7 @@ class _Found:
     figures: list[Figure] = field(default_factory=list)
     reasons: list[tuple[Status, str]] = field(default_factory=list)
     notes: list[str] = field(default_factory=list)
+    evidence: list[Evidence] = field(default_factory=list)
     details: dict[str, Any] = field(default_factory=dict)
 
     @property
@@ -53,26 +54,29 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     except RefusedError as refusal:
         found.reasons.append((Status.UNDECIDED, str(refusal)))
     status = found.status
-    told = [text for its, text in found.reasons if its is status]
-    told += [margin_words.figure(figure) for figure in found.figures if figure.status is status]
+    told = [text for its, text in found.reasons if its is status and status is not Status.PASS]
     return Verdict(
-        case.spec, case.point, ask.name, status, ask.place, "" if status is Status.PASS else "; ".join(told),
-        tuple(found.figures), tuple(found.notes), details=found.details,
+        case.spec, case.point, ask.name, status, ask.place, "; ".join(told),
+        tuple(found.figures), tuple(found.notes), evidence=tuple(found.evidence), details=found.details,
     )  # fmt: skip
 
 
 def setup(study: Study, name: str) -> Setup:
     """What the loop is closed around. Raises RefusedError where there is no such model."""
     case, local = study.case, study.case.local
-    if name in local.closed and local.delivered is not None:
-        # the delivered model has this loop inside: margins are those of the plant's own slopes
-        if unmet := study.unmet("derived"):
-            raise RefusedError(unmet)
-        return Setup(study.derived(), case.loops, case.actuators, case.delays, tick=case.plant.step)
-    # with the loops inside these too: all of them are in a delivered model
-    inside = () if name in local.closed else tuple(one.name for one in nested(case, local.closed))
-    closed, also = (inside, ()) if local.delivered is not None else ((), inside)
-    return Setup(study.model(), case.loops, case.actuators, case.delays, closed, also, case.plant.step)
+    try:
+        inside = tuple(one.name for one in nested(case, local.closed))
+    except ValueError as error:
+        raise RefusedError(str(error)) from None
+    if name not in inside:
+        closed, also = (inside, ()) if local.delivered is not None else ((), inside)
+        return Setup(study.model(), case.loops, case.actuators, case.delays, closed, also, case.plant.step)
+    if local.delivered is None:
+        return Setup(study.model(), case.loops, case.actuators, case.delays, tick=case.plant.step)
+    # the delivered model has this loop inside: margins are those of the plant's own slopes
+    if unmet := study.unmet("derived"):
+        raise RefusedError(unmet)
+    return Setup(study.derived(), case.loops, case.actuators, case.delays, tick=case.plant.step)
 
 
 def _judge(study: Study, loop: Loop, found: _Found) -> None:
@@ -101,13 +105,25 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
         return
     made, silent = figures(case, loop, one, others)
     found.figures += made
+    found.reasons += [(each.status, margin_words.figure(each)) for each in made if each.status is not Status.PASS]
     why = f": {one.alone}" if one.alone else ""
     found.reasons += [(Status.UNDECIDED, f"{word.replace('_', ' ')} could not be found{why}") for word in silent]
     found.reasons += margin_words.without_crossover(case, loop, one)
     if loop.confirm:
-        found.reasons.append((Status.UNDECIDED, "margins are not yet confirmed on the nonlinear plant"))
+        _confirm(study, loop, one, found)
     reasons, notes = counted(loop, one, case.plant.time_unit)
     found.reasons, found.notes = found.reasons + reasons, found.notes + notes + margin_words.notes(loop, one)
+
+
+def _confirm(study: Study, loop: Loop, one: LoopMargins, found: _Found) -> None:
+    from .confirm_margin import confirm  # it brings the simulation along
+
+    tried = confirm(study, loop, one)
+    found.figures += tried.figures
+    found.reasons += tried.reasons
+    found.notes += tried.notes
+    found.evidence += tried.evidence
+    found.details["confirmed"] = [dict(each) for each in tried.details]
 
 
 def _unmoved(loop: Loop, one: LoopMargins, found: _Found) -> Sequence[bool]:

@@ -17,10 +17,12 @@ from .loop_stability import Poles, of_matrix
 from .margins import Found, Margins, margins
 from .multiloop import both_sides, multiloop
 from .peak_gain import Peak
+from .spectrum import roots
 from .structured import Bounded
 from .transfer import Transfer
 from .unmoved import Unmoved, split
 
+CLEAR = 1e-9  # relative: poles that are known less well are looked at together with their neighbours
 ALONE = "for one channel alone, the dead time of the others would lie inside a closed loop"
 
 
@@ -197,7 +199,23 @@ def closed_poles(loop: Transfer, sign: float = 1.0) -> Poles | None:
         A = closed_matrix(loop, sign)
     except IllPosedError:
         return None
-    return of_matrix(A if loop.step is None else A - np.eye(len(A)), loop.step)
+    F = A if loop.step is None else A - np.eye(len(A))
+    known = of_matrix(F, loop.step)
+    if (known.error <= CLEAR * np.abs(known.values)).all():
+        return known
+    return _in_discs(F, loop.step)
+
+
+def _in_discs(F: Array, step: float | None) -> Poles:
+    """The same where poles lie on each other or nearly so: a bound by the slope says nothing, discs do."""
+    found = [(each.value, each.radius) for each in roots(F, np.zeros_like(F))]
+    found += [(value.conjugate(), radius) for value, radius in found if value.imag > 0.0]
+    values, error = np.array([value for value, _ in found]), np.array([radius for _, radius in found])
+    if step is None:
+        return Poles(values, -values.real, error)
+    # 1 - |1 + F|, from F itself: near z = 1 the difference would have lost the digits
+    size = np.abs(1.0 + values)
+    return Poles(1.0 + values, -(2.0 * values.real + np.abs(values) ** 2) / (1.0 + size), error)
 
 
 def closed_matrix(loop: Transfer, sign: float = 1.0) -> Array:

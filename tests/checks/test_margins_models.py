@@ -115,6 +115,13 @@ def test_loops_in_the_model_are_inside_every_other_loop_and_not_inside_themselve
     assert own.details["margins"]["inside"] == []
 
 
+def test_a_loop_inside_a_closed_one_is_judged_on_the_bare_model_too() -> None:
+    outer, inner = cascade()
+    own = judged(DOUBLE, replace(inner, leaves=("x1",)), outer, local=LocalAsk(closed=("ride",)))
+    assert own.status is Status.PASS, own.reason
+    assert figure(own, PHASE).worst == pytest.approx(math.pi / 2.0, rel=1e-6)
+
+
 def test_a_delivered_model_with_a_loop_inside_is_the_plant_of_the_others() -> None:
     """The rate loop k2 in the file: x2' = -k2 x2 + u, with the lag of the actuator of u inside too."""
     inner = loop(pid(3.0), *ALL, name="inner", measures=("y2",))

@@ -71,9 +71,7 @@ def asked(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
         elif limit.word == "delay_margin":
             yield Ask("delay margin", name, one.delay, limit.low, Sense.LOWER, case.plant.time_unit)
         elif limit.word == "crossover":
-            yield from _crossovers(
-                case, name, limit, [Found(e.frequency, e.frequency, e.shift) for e in one.crossovers]
-            )
+            yield from _crossovers(case, name, limit, [Found(e.frequency, math.nan, e.shift) for e in one.crossovers])
     if limit.word in ("disk_margin", "sensitivity_peak", "complementary_peak"):
         yield _joint(limit, found)
     elif limit.word in ("overshoot", "settling"):

@@ -24,13 +24,13 @@ def undecided(one: LoopMargins) -> str:
 
 
 def unstable(one: LoopMargins, time_unit: str) -> str:
-    """The closed loop is unstable: pole 0.31 +- 2.1j per s (time to double 2.24 s)."""
+    """The closed loop is unstable: pole 0.31 +- 2.1j per s, time to double 2.24 s."""
     known = [value for value in one.unstable if not cmath.isnan(value)]
     told = _poles([in_s(value, one.loop.step) for value in known], time_unit)
     if len(known) < len(one.unstable):
         told.append(f"{len(one.unstable) - len(known)} more that were counted and not found")
     poles = "; ".join(told)
-    return f"{WRONG_WAY} ({poles})" if one.opposite else f"the closed loop is unstable: {poles}"
+    return f"{WRONG_WAY}; {poles}" if one.opposite else f"the closed loop is unstable: {poles}"
 
 
 def unmoved(poles: Sequence[Unmoved], step: float | None) -> str:
@@ -56,7 +56,7 @@ def _poles(values: Sequence[complex], time_unit: str) -> list[str]:
     for value in values:
         text = f"pole {complex_told(value)} per {time_unit}"
         if value.real > 0:
-            text += f" (time to double {with_unit(number(math.log(2.0) / value.real, 4), time_unit)})"
+            text += f", time to double {with_unit(number(math.log(2.0) / value.real, 4), time_unit)}"
         told.append(text)
     return list(dict.fromkeys(told))
 

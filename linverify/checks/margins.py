@@ -85,11 +85,12 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
     broken, one = whole(around, loop.name, at_input)
     one, told = with_delays(around, loop, one, case.plant.time_unit)
     found.notes += told
-    excused = _unmoved(loop, one, found)
+    excused = _covered(loop, one)
     found.details["margins"] = margin_details.told(case, loop, broken, one, excused)
     if one.trivial:
         found.reasons.append((Status.UNDECIDED, "the loop moves nothing: any limit on its margins would be kept"))
         return
+    _unmoved(one, excused, found)
     if not one.outcome.done:
         found.reasons.append((Status.UNDECIDED, margin_words.undecided(one)))
         return
@@ -126,13 +127,16 @@ def _confirm(study: Study, loop: Loop, one: LoopMargins, found: _Found) -> None:
     found.details["confirmed"] = [dict(each) for each in tried.details]
 
 
-def _unmoved(loop: Loop, one: LoopMargins, found: _Found) -> Sequence[bool]:
-    """Judge the poles that the loop does not move; whether `leaves` covers each."""
-    covered = [sum(share for name, share in pole.shares if name in loop.leaves) >= DOMINATES for pole in one.unmoved]
-    loose = [pole for pole, its in zip(one.unmoved, covered, strict=True) if not its and not _stable(one, pole)]
+def _covered(loop: Loop, one: LoopMargins) -> list[bool]:
+    """Whether `leaves` covers each of the poles that the loop does not move."""
+    return [sum(share for name, share in pole.shares if name in loop.leaves) >= DOMINATES for pole in one.unmoved]
+
+
+def _unmoved(one: LoopMargins, excused: Sequence[bool], found: _Found) -> None:
+    """Judge the poles that the loop does not move."""
+    loose = [pole for pole, its in zip(one.unmoved, excused, strict=True) if not its and not _stable(one, pole)]
     if loose:
         found.reasons.append((Status.FAIL, margin_words.unmoved(loose, one.loop.step)))
-    return covered
 
 
 def _stable(one: LoopMargins, pole: Unmoved) -> bool:

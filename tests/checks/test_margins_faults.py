@@ -72,7 +72,7 @@ def test_sign_flipped() -> None:
         verdict = judged(plant, loop(pid(-1.0), least("gain_margin", 1.5)))
         assert verdict.status is Status.FAIL
         if plant is INTEGRATOR:
-            assert "pole 1 per s (time to double 0.6931 s)" in verdict.reason
+            assert "pole 1 per s, time to double 0.6931 s" in verdict.reason
         assert "with the opposite sign it would be stable" in verdict.reason
 
 

@@ -95,9 +95,17 @@ def pytest_collect_file(file_path: Path, parent: pytest.Collector) -> SpecFile |
     from .nodes import SpecFile
 
     found = parent.config.stash[LEDGER].found
-    if str(file_path) not in found:
+    if str(file_path) not in found and not _only_beside(parent.config, file_path):
         found.append(str(file_path))
     return SpecFile.from_parent(parent, path=file_path)
+
+
+def _only_beside(config: pytest.Config, file_path: Path) -> bool:
+    """True for a spec that nobody asked for: pytest looks at it because a file of its folder was named."""
+    asked = [config.invocation_params.dir / name.partition("::")[0] for name in config.args]
+    if any(path == file_path or path in file_path.parents for path in asked):
+        return False
+    return any(path.is_file() and path.parent == file_path.parent for path in asked)
 
 
 @pytest.hookimpl(optionalhook=True)

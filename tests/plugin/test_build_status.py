@@ -31,6 +31,16 @@ def test_stopping_at_the_first_failure_leaves_rows_that_were_not_run(project: Pr
     assert reasons == {"the run ended before this check began: stopping after 1 failures"}
 
 
+@pytest.mark.parametrize("workers", [(), ("-n", "2")])
+def test_one_spec_by_its_name_is_a_full_report_of_it(project: Project, workers: tuple[str, ...]) -> None:
+    project.write("specs/basin.yaml", SPEC)
+    project.write("specs/beside.yaml", SPEC)
+    result = project.run("specs/basin.yaml", *workers)
+    assert result.ret == 0
+    assert project.reports == FULL
+    assert {name.split("::")[0].rpartition("/")[2] for name in project.statuses()} == {"basin.yaml"}
+
+
 def test_ctrl_c_leaves_rows_that_were_not_run(project: Project) -> None:
     project.write("specs/basin.yaml", SPEC)
     project.write(

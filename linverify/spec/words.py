@@ -14,12 +14,12 @@ from .grammar import SIGNAL as SIGNAL
 from .grammar import Kind as Kind
 from .grammar import Row as Row
 from .grammar import default_of as default_of
-from .grammar import each, later, not_yet, without
+from .grammar import each, later, without
 from .grammar import row_of as row_of
 from .loop_words import LOOPS as ALL_LOOPS
 from .mode_words import ACTUATOR_WORDS, MODE_WORDS
 
-(LOOPS,) = without((ALL_LOOPS,), "overshoot", "settling", "confirm")
+(LOOPS,) = without((ALL_LOOPS,), "confirm")
 DERIVE = "derive"  # behind `local_models: source`, for models that nobody delivered
 SHAPES = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
 
@@ -47,9 +47,9 @@ DRIVE_WORDS = (
     Row("shapes", Kind.CHOICES, "menu of the random drives", default="[" + ", ".join(SHAPES) + "]", choices=SHAPES),
     Row("count", Kind.COUNT, "how many random drives", default="300", sign="+", most=100_000),
     Row("search", Kind.COUNT, "how many examples hunt the worst case", default="150", sign="0+", most=10_000),
-    not_yet(Row("loop", Kind.NAME, "both models run with this loop closed")),
-    not_yet(Row("at", Kind.CHOICE, "drives add to the set point, or to what the loop moves", default="input",
-        choices=("input", "set_point"), needs="loop")),
+    Row("loop", Kind.NAME, "both models run with this loop closed"),
+    Row("at", Kind.CHOICE, "drives add to what the loop moves, or to its set point", default="input",
+        choices=("input", "set_point"), needs="loop"),
     Row("discerns", Kind.BLOCK, "what these drives must be able to show", DISCERNS),
     Row("pinned", Kind.FILES, "drives that failed once and are replayed first"),
 )  # fmt: skip
@@ -123,7 +123,7 @@ LOCAL_MODEL_WORDS = (
     Row("source", Kind.SOURCE, "where local models come from", default=DERIVE),
     Row("keep", Kind.BLOCK, "states, inputs, outputs of a reduced model", KEEP_WORDS),
     Row("others", Kind.CHOICE, "what is left out is frozen or settled", choices=("freeze", "settle")),
-    not_yet(Row("with", Kind.NAMES, "loops that are closed inside the model")),
+    Row("with", Kind.NAMES, "loops that are closed inside a derived model"),
     Row("agree", Kind.BLOCK, "delivered against derived", AGREE_WORDS),
 )  # fmt: skip
 
@@ -168,8 +168,7 @@ SPEC_WORDS = (
     Row("error_bands", Kind.BANDS, "how far plant and local model may differ", BAND_WORDS),
     later("frequency_bands", "response to small sines against the local model"),
     Row("modes", Kind.MODES, "limits on the local model's poles, zeros and gains", MODE_WORDS),
-    not_yet(Row("actuators", Kind.NAMED, "lags and limits in series with plant inputs",
-        each(Kind.BLOCK, ACTUATOR_WORDS))),
+    Row("actuators", Kind.NAMED, "lags and limits in series with plant inputs", each(Kind.BLOCK, ACTUATOR_WORDS)),
     LOOPS,
     later("variations", "parameters that are not known exactly"),
     later("reach", "how far the drives can be scaled"),

@@ -11,7 +11,7 @@ import pytest
 
 from linverify.core.case import Amplitude, Case, CheckAsk
 from linverify.core.errors import Place, SpecError
-from linverify.spec import bind
+from linverify.spec import bind, local_words
 
 PLANT = (Path(__file__).parent / "bad" / "plant.py").read_text(encoding="utf-8")
 HEAD = """\
@@ -173,9 +173,16 @@ def model(**changes: Any) -> dict[str, Any]:
     return made | changes
 
 
+@pytest.fixture
+def read_closed(monkeypatch: pytest.MonkeyPatch) -> None:
+    """Models with loops inside are read as they will be."""
+    monkeypatch.setattr(local_words, "CLOSED_DELIVERIES", True)
+
+
 CLOSED = "local_models: {source: m.json, with: [level]}\n"
 
 
+@pytest.mark.usefixtures("read_closed")
 def test_a_delivered_model_names_set_points_and_controller_states(load: Load) -> None:
     (case,) = load(CLOSED, model(inputs=["heat", "level.set_point.level", "pump"]))
     delivered = case.local.delivered
@@ -185,12 +192,14 @@ def test_a_delivered_model_names_set_points_and_controller_states(load: Load) ->
     assert case.local.closed == ("level",)
 
 
+@pytest.mark.usefixtures("read_closed")
 def test_inputs_that_loops_inside_move_may_be_left_out(load: Load) -> None:
     (case,) = load(CLOSED, model())
     assert case.local.delivered is not None
     assert wrongs(load, CLOSED, model=model(inputs=["heat"])) == ["`inputs` lacks pump"]
 
 
+@pytest.mark.usefixtures("read_closed")
 def test_units_of_set_points_are_those_of_their_signals(load: Load) -> None:
     (case,) = load(
         CLOSED, model(inputs=["heat", "pump", "level.set_point.level"], units={"level.set_point.level": "cm"})
@@ -199,6 +208,7 @@ def test_units_of_set_points_are_those_of_their_signals(load: Load) -> None:
     assert case.local.delivered.B[0, 2] == pytest.approx(100.0)
 
 
+@pytest.mark.usefixtures("read_closed")
 def test_a_lag_of_what_is_moved_is_a_state(load: Load) -> None:
     lag = "actuators: {inflow: {lag: 3 s}}\n"
     states = ["level", "temperature", "angle", "inflow.lag", "level.1"]
@@ -208,6 +218,7 @@ def test_a_lag_of_what_is_moved_is_a_state(load: Load) -> None:
     assert wrongs(load, CLOSED + lag, model=model()) == ["`states` lacks inflow.lag"]
 
 
+@pytest.mark.usefixtures("read_closed")
 def test_names_that_no_closed_loop_has(load: Load) -> None:
     told = wrongs(load, CLOSED, model=model(inputs=["heat", "pump", "level.set_point.levl"]))
     assert told == ["the plant has no 'level.set_point.levl'"]
@@ -215,6 +226,7 @@ def test_names_that_no_closed_loop_has(load: Load) -> None:
     assert open_model == ["the plant has no 'level.1'"]
 
 
+@pytest.mark.usefixtures("read_closed")
 def test_bands_on_what_loops_in_a_delivered_model_move(load: Load) -> None:
     text = CLOSED + "drives: {horizon: 30 min, every: 1 min, amplitude: {heat: 1}}\nerror_bands: {inflow: {peak: 1}}\n"
     assert wrongs(load, text, model=model()) == [

@@ -24,14 +24,14 @@ TOP = {
     "linverify": True, "title": True, "plant": True, "parameters": True, "time": True, "wraps": True, "delays": True,
     "envelope": True, "exits": True, "trims": True, "every_point": True, "operating_points": True, "local_models": True,
     "differentiable": True, "drives": True, "error_bands": True, "frequency_bands": False, "modes": True,
-    "actuators": False, "loops": True, "variations": False, "reach": False, "handover": False, "coverage": False,
+    "actuators": True, "loops": True, "variations": False, "reach": False, "handover": False, "coverage": False,
     "budget": False, "requirements": True, "accepted": False,
 }  # fmt: skip
 WITH_WORDS = (
     Kind.BLOCK, Kind.NAMED, Kind.POINTS, Kind.LIMITS, Kind.DRIVES, Kind.BANDS, Kind.SWEEP, Kind.SWEPT, Kind.MODES,
     Kind.GROUPS,
 )  # fmt: skip
-INNER_LATER = {"loop", "at", "with", "overshoot", "settling", "confirm"}
+INNER_LATER = {"confirm"}
 
 
 def rows_of(rows: tuple[Row, ...]) -> Iterator[Row]:

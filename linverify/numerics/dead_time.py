@@ -15,7 +15,7 @@ from collections.abc import Sequence
 import numpy as np
 
 from ..core.model import Array
-from .crossings import Met
+from .crossings import Met, crossings, turn_of
 from .curve import Complex, Curve
 from .loop_stability import Poles, closed
 
@@ -24,7 +24,10 @@ MOST = 200_000  # points of a walk
 PER_SECTION = 1.5  # rad of phase that one section of the stand-in may lag
 SECTIONS = 30
 NEWTON = 40
+AT_POLE = 1e-5  # of their size: a root this near a pole of the loop
+FEW = 100  # unstable roots that are sought one by one
 NEUTRAL = 1e-9  # |D| nearer to one than this: roots come from infinity
+POLISHED = 1e-10  # of a root's size: the last step of Newton's method, where rounding allows no less
 SAME = 1e-6  # of their size: two roots are one
 
 
@@ -51,27 +54,51 @@ def _passed(curve: Curve, met: Met, sign: float) -> tuple[int, bool]:
     return max(0, round((turned + left % (2.0 * math.pi) - free) / (2.0 * math.pi))), abs(left) <= slack
 
 
-def roots(curve: Curve) -> Complex:
-    """Closed-loop roots, polished on the exact equation, to which those of a rational stand-in lead; by size."""
+def roots(curve: Curve, further: Complex) -> Complex:
+    """Closed-loop roots, polished on the exact equation, to which those of a rational stand-in lead, and `further`."""
     found: list[complex] = []
-    for seed in _seeds(curve):
-        root = _newton(curve, complex(seed))
+    for seed in np.concatenate([_seeds(curve), further]):
+        root = _newton(curve, complex(seed), 2.0) or _newton(curve, complex(seed), 0.0)
         if root is not None and all(abs(root - other) > SAME * abs(root) for other in found):
             found += [root] if root.imag == 0.0 else [root, root.conjugate()]
     return np.array(sorted(found, key=lambda each: (abs(each), -each.imag)), dtype=np.complex128)
 
 
-def _newton(curve: Curve, s: complex) -> complex | None:
+def near_axis(curve: Curve, opened: Complex, met: Sequence[Met], nodes: Array) -> Complex:
+    """Where unstable roots are to be expected: at poles of the loop, and beside the axis where L is real below -1."""
+    right = opened[(opened.real > 0.0) & (opened.imag >= 0.0)]
+    last = max((each.v for each in met), default=0.0)
+    right = right * (1.0 + 0.1 * AT_POLE)
+    if last == 0.0:
+        return right
+    walked = dense(nodes, curve.delay, min(last, 0.02 * reach(curve)))
+    v = crossings(curve, turn_of, walked)[0]
+    L = curve.quick(v)
+    v, L = v[(L.real < -1.0) & (np.abs(L) < 1e12)], L[(L.real < -1.0) & (np.abs(L) < 1e12)]
+    # the real part at which the dead time has brought |L| down to one
+    beside = 1j * v + np.log(np.abs(L)) / curve.delay
+    return np.concatenate([right, 1j * v, beside][: 3 if len(v) <= FEW else 1])
+
+
+def _newton(curve: Curve, s: complex, large: float) -> complex | None:
+    """A root beside s, on 1 + L, or on 1 + 1 / L where |L| is `large`, as beside poles of the loop; None for none."""
+    step = complex(math.inf)
     with np.errstate(all="ignore"):
         for _ in range(NEWTON):
             L, slope = curve.plane(s)
+            if math.isinf(abs(L)) and abs(step) <= AT_POLE * abs(s):
+                return s  # a root within rounding of a pole of the loop
             if not (np.isfinite(L) and np.isfinite(slope) and slope != 0.0):
                 return None
-            step = (1.0 + L) / slope
+            step = (1.0 + L) / slope if abs(L) < large else -(1.0 + L) * L / slope
             s -= step
+            if not np.isfinite(s):
+                return None
             if abs(step) <= 1e-13 * abs(s):
-                return complex(s.real, 0.0) if abs(s.imag) <= 1e-12 * abs(s) else complex(s.real, abs(s.imag))
-    return None
+                break
+    if not abs(step) <= POLISHED * abs(s):
+        return None
+    return complex(s.real, 0.0) if abs(s.imag) <= POLISHED * abs(s) else complex(s.real, abs(s.imag))
 
 
 def _seeds(curve: Curve) -> Complex:

@@ -131,7 +131,8 @@ def _delayed(L: Curve) -> Margins:
     if len(free.undecided):
         return Margins(Outcome.ON_THE_EDGE, "already without its dead time")
     unstable, on_edge = dead_time.count(L, met, free)
-    poles = dead_time.roots(L)
+    further = dead_time.near_axis(L, opened, met, nodes) if unstable > 0 else np.zeros(0, complex)
+    poles = dead_time.roots(L, further)
     against = closed(L, -1.0)
     opposite = not len(against.undecided) and dead_time.count(L, met, against, -1.0) == (0, False)
     if on_edge:
@@ -139,14 +140,15 @@ def _delayed(L: Curve) -> Margins:
     if unstable < 0:
         return Margins(Outcome.UNVERIFIED, "roots could not be counted", False, poles)
     if unstable:
-        return Margins(Outcome.DONE, "", False, poles, _right(poles, unstable), opposite)
+        right = _right(poles, unstable)
+        why = "" if len(right) == unstable else f"{unstable} roots lie right of the axis, not all of which were found"
+        return Margins(Outcome.DONE, why, False, poles, right, opposite)
     return _followed(L, nodes, poles, opposite, met)
 
 
 def _right(poles: Complex, number: int) -> tuple[complex, ...]:
     right = sorted((complex(each) for each in poles if each.real > 0.0), key=lambda each: (-each.real, -each.imag))
-    # where the stand-in led to fewer than there are, the rest is not known by value
-    return tuple(right[:number]) + (complex(math.nan, math.nan),) * (number - len(right))
+    return tuple(right[:number]) or (complex(math.nan, math.nan),)
 
 
 def _followed(L: Curve, nodes: Array, poles: Complex, opposite: bool, met: list[Met]) -> Margins:

@@ -104,3 +104,20 @@ def test_wrong_sign_with_dead_time() -> None:
     assert not found.stable
     assert found.opposite_stable
     assert not margins(ratio([-1], [1, 0], 2.0)).opposite_stable
+
+
+def test_unstable_root_within_rounding_of_a_pole_of_the_loop_is_found() -> None:
+    # a pole at 10 that a dead time of 5 leaves alone: exp(-50) of the loop's gain is left there
+    found = margins(ratio([1], product([1, -10], [1, 1]), 5.0))
+    assert not found.stable
+    assert found.unstable == (pytest.approx(10.0),)
+
+
+@pytest.mark.parametrize("delay", [3.0, 30.0, 100.0])
+def test_as_many_roots_are_found_as_are_counted(delay: float) -> None:
+    found = margins(ratio([5], product([1, 1], [1, 0.1, 1]), delay))
+    assert len(found.unstable) >= 2
+    assert found.why == ""
+    assert sum(s.real > 0 for s in found.poles) == len(found.unstable)
+    for s in found.unstable:
+        assert abs((s + 1) * (s * s + 0.1 * s + 1) + 5 * cmath.exp(-s * delay)) < 1e-9

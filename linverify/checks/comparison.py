@@ -6,6 +6,7 @@ from collections.abc import Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..core.case import Band, Case, DriveSet
 from ..core.drive import Drive
@@ -128,16 +129,16 @@ def _nodes(model: LocalModel, every: float) -> int:
     return next((nodes for nodes in NODES if fastest * every / nodes <= PHASE), NODES[-1])
 
 
-def _own_poles(model: LocalModel) -> Array:
+def _own_poles(model: LocalModel) -> NDArray[np.complexfloating]:
     """The model's poles without those of chains that stand for dead times: their ringing is no motion of anything."""
     chains = [".delay." in name for name in model.states.names]
     if not any(chains):
-        return np.linalg.eigvals(model.A)
+        return np.asarray(np.linalg.eigvals(model.A), dtype=np.complex128)
     poles, right = np.linalg.eig(model.A)
     left = np.linalg.pinv(right)
     shares = np.abs(right * left.T)
     own = shares[np.logical_not(chains)].sum(axis=0) >= 0.5 * shares.sum(axis=0)
-    return np.asarray(poles[own])
+    return np.asarray(poles[own], dtype=np.complex128)
 
 
 def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Band], signals: tuple[str, ...]) -> Array:

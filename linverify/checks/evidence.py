@@ -53,13 +53,7 @@ def saved(
             "text": text,
             "fidelity": {"nodes": fidelity.nodes, "tolerance": fidelity.tolerance},
             "figures": [_figure(figure) for figure in figures],
-            "signals": list(runs.signals),
-            "units": {name: comparison.units[name] for name in runs.signals},
-            "time_unit": comparison.case.plant.time_unit,
-            "times": _rows(runs.times),
-            "plant": {name: _rows(runs.plant[at, :, :, 0]) for at, name in enumerate(runs.signals)},
-            "model": {name: _rows(runs.model[at, :, :, 0]) for at, name in enumerate(runs.signals)},
-            "ended": float(runs.ended[0]),
+            **plain_runs(runs, comparison.units, comparison.case.plant.time_unit),
         }
         if late := {name: late for name, late in zip(runs.signals, runs.late, strict=False) if late}:
             about["dead_times"] = late  # samples are shown when the plant makes them; these arrive so much later
@@ -68,6 +62,19 @@ def saved(
         except OSError as error:  # a full disk takes nothing from the verdict
             text += f" (not saved: {error.strerror or error})"
     return Evidence(role, key, text)
+
+
+def plain_runs(runs: Runs, units: Mapping[str, str], time_unit: str) -> dict[str, Any]:
+    """The trajectories of one drive as plain values; units: by signal."""
+    return {
+        "signals": list(runs.signals),
+        "units": {name: units[name] for name in runs.signals},
+        "time_unit": time_unit,
+        "times": _rows(runs.times),
+        "plant": {name: _rows(runs.plant[at, :, :, 0]) for at, name in enumerate(runs.signals)},
+        "model": {name: _rows(runs.model[at, :, :, 0]) for at, name in enumerate(runs.signals)},
+        "ended": float(runs.ended[0]),
+    }
 
 
 def fidelity_of(about: Mapping[str, Any], otherwise: Fidelity) -> Fidelity:

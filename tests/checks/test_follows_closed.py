@@ -7,7 +7,7 @@ from typing import Any
 
 import numpy as np
 import pytest
-from cart import BANDS, CART, case, controller, derived, drives, loop, pd, sampled_pd, set_point, verdict
+from cart import BANDS, case, controller, derived, drives, loop, pd, sampled_pd, set_point, verdict
 
 from linverify.core.case import Amplitude, Band, Interval, TrimAsk
 from linverify.core.delivered import Delays, LocalAsk

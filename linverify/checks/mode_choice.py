@@ -114,8 +114,8 @@ def described(found: Modes, mode: Mode, time_unit: str) -> str:
     if not found.model.anonymous:
         shares = ", ".join(f"{name} {100.0 * share:.0f} %" for name, share in found.dominating(mode))
         told = "; ".join(part for part in (told, f"mostly {shares}") if part)
-    if not mode.alone:
-        told += f"; {mode.shared.poles} poles there are told together"
+    if mode.together > mode.poles:
+        told += f"; {mode.together} poles there are told together"
     return f"the {label(mode)} ({told})"
 
 

@@ -67,8 +67,10 @@ def figure(what: str, signal: str, known: Known, limit: Limit, shown: Shown, *, 
     )  # fmt: skip
 
 
-def judge_limits(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequence[Mode], into: Findings) -> None:
-    """All limits of a line on the modes that it chooses."""
+def judge_limits(
+    found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequence[Mode], excused: Sequence[Mode], into: Findings
+) -> None:
+    """All limits of a line on the modes that it chooses. excused: those that its `at_zero` lets lie at the origin."""
     time_unit = into.details["time_unit"]
     for limit in ask.limits:
         shown = limit.shown or own_unit(limit.word, time_unit)
@@ -77,6 +79,8 @@ def judge_limits(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequen
             _overdamped(found, limit, (sure, maybe), (what, shown), into)
             continue
         for mode, meant in _each(sure, maybe):
+            if limit.word == "damping" and mode in excused:
+                continue  # the origin has no damping ratio
             one = figure(what, label(mode), TRAITS[limit.word](mode.pole), limit, shown, sure=meant)
             _tell(found, mode, one, limit, meant, into)
 

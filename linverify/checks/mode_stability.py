@@ -16,10 +16,12 @@ from .mode_choice import described, label, line_name
 from .mode_limits import figure
 
 
-def judge_stable(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequence[Mode], into: Findings) -> None:
-    """Every chosen mode must decay but for those that are excused."""
+def judge_stable(
+    found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequence[Mode], into: Findings
+) -> Sequence[Mode]:
+    """Every chosen mode must decay but for those that are excused; returns those that `at_zero` excuses."""
     if not ask.stable:
-        return
+        return ()
     chosen = [mode for mode in found.modes if mode in sure or mode in maybe]
     excused = _at_zero(found, ask, chosen, into)
     rest = [mode for mode in chosen if mode not in excused]
@@ -30,6 +32,7 @@ def judge_stable(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequen
     if steady:
         slowest = max(steady, key=lambda mode: -decay_rate(mode.pole).low)
         into.figures.append(_real_part(ask, slowest, Status.PASS, into))
+    return excused
 
 
 def _real_part(ask: ModeAsk, mode: Mode, status: Status, into: Findings) -> Figure:
@@ -41,10 +44,10 @@ def _real_part(ask: ModeAsk, mode: Mode, status: Status, into: Findings) -> Figu
 
 
 def _at_zero(found: Modes, ask: ModeAsk, chosen: Sequence[Mode], into: Findings) -> list[Mode]:
-    """The modes that `at_zero` excuses: as many poles as it names states, surely vanishing ones first."""
+    """The modes that `at_zero` excuses: as many poles as it names states, surely vanishing ones of its states first."""
     left = len(ask.at_zero)
     there = [mode for mode in chosen if excusable(mode, found.speed)]
-    there.sort(key=lambda mode: (mode.origin != "yes", abs(mode.value)))
+    there.sort(key=lambda mode: (mode.origin != "yes", -_share(found, ask, mode), abs(mode.value)))
     excused = []
     for mode in there:
         if mode.poles <= left:
@@ -55,17 +58,23 @@ def _at_zero(found: Modes, ask: ModeAsk, chosen: Sequence[Mode], into: Findings)
     return excused
 
 
+def _share(found: Modes, ask: ModeAsk, mode: Mode) -> float:
+    """Share of the named states in a mode, zero where states are anonymous."""
+    if found.model.anonymous:
+        return 0.0
+    return round(sum(found.participation(mode, name).value for name in ask.at_zero if name in found.states), 6)
+
+
 def _note(found: Modes, ask: ModeAsk, mode: Mode, into: Findings) -> None:
     """How well the pole is known to lie at the origin, and which state it belongs to where that is another one."""
     words = f"at_zero excuses {described(found, mode, into.details['time_unit'])}"
     if mode.origin == "maybe":
         away = with_unit(number(abs(mode.value) + mode.pole.radius, 2), f"1/{into.details['time_unit']}")
-        words += f": {mode.shared.poles} poles lie at the origin to within {away}, as far as the entries are known"
+        lie = "pole lies" if mode.cluster == 1 else "poles lie"
+        words += f": {mode.cluster} {lie} at the origin to within {away}, as far as the entries are known"
     named = [name for name in ask.at_zero if name in found.states]
-    if not found.model.anonymous and named:
-        share = sum(found.participation(mode, name).value for name in named)
-        if share < 0.1:
-            words += f"; {', '.join(named)} {'has' if len(named) == 1 else 'have'} hardly a part in it"
+    if named and not found.model.anonymous and _share(found, ask, mode) < 0.1:
+        words += f"; {', '.join(named)} {'has' if len(named) == 1 else 'have'} hardly a part in it"
     if words not in into.notes:
         into.notes.append(words)
 
@@ -73,7 +82,7 @@ def _note(found: Modes, ask: ModeAsk, mode: Mode, into: Findings) -> None:
 def _loose(found: Modes, ask: ModeAsk, mode: Mode, meant: bool, into: Findings) -> None:
     """A mode that is not surely stable, and that `at_zero` does not excuse."""
     double = time_to_double(mode.pole)
-    chained = mode.origin != "no" and mode.shared.poles > 1  # a chain at the origin grows like a power of time
+    chained = mode.origin != "no" and mode.together > 1  # a chain at the origin grows like a power of time
     unit = into.details["time_unit"]
     if math.isfinite(ask.time_to_double) and not chained:
         limit = Limit("time_to_double", low=ask.time_to_double, place=ask.place)

@@ -16,7 +16,6 @@ from ..core.signals import Signals
 from ..core.verdict import Figure, Status
 from ..numerics.frequency import respond_within
 from ..numerics.modal import Modes
-from ..numerics.spectrum import structural
 from ..numerics.structure import leads
 from ..numerics.traits import TRAITS, Known, decay_rate
 from ..numerics.zero_discs import Zero, Zeros, channels, zeros_of
@@ -149,7 +148,7 @@ def _gain(found: Modes, model: LocalModel) -> _Gain:
     value, doubt = complex(gain[0, 0, 0]), float(error[0, 0, 0])
     if math.isfinite(abs(value)) and math.isfinite(doubt):
         return _Gain(value.real, doubt)
-    whole = Modes(found.modes, found.speed, found.sizes, found.states, model, found.matrix)
+    whole = replace(found, model=model)
     reached = [
         mode
         for mode in found.modes
@@ -163,11 +162,8 @@ def _gain(found: Modes, model: LocalModel) -> _Gain:
 
 def _between(found: Modes, model: LocalModel) -> Any:
     """Places of the states on a path from the input to the output, by the pattern of zeros alone."""
-    scale = found.sizes / found.sizes[:, np.newaxis]
-    errors = model.errors.get("A", np.zeros_like(model.A))
-    acts = (found.matrix != 0.0) | (structural(found.matrix, errors * scale) > 0.0)
     starts, ends = (model.B[:, 0] != 0.0), (model.C[0] != 0.0)
-    return np.flatnonzero(leads(acts, starts, ends))
+    return np.flatnonzero(leads(found.acts, starts, ends))
 
 
 def _cut(model: LocalModel, places: Any) -> LocalModel:

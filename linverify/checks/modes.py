@@ -86,8 +86,8 @@ def _line(found: Modes, ask: ModeAsk, fastest: float, into: Findings) -> None:
         return
     chosen = _exact(ask, chosen, fastest, into)
     _there(found, ask, chosen, into)
-    judge_stable(found, ask, chosen.sure, chosen.maybe, into)
-    judge_limits(found, ask, chosen.sure, chosen.maybe, into)
+    excused = judge_stable(found, ask, chosen.sure, chosen.maybe, into)
+    judge_limits(found, ask, chosen.sure, chosen.maybe, excused, into)
     judge_measures(found, ask, chosen.sure, chosen.maybe, into)
     row = {"line": ask.name or str(ask.place), "modes": [label(mode) for mode in chosen.all]}
     into.details.setdefault("mode_lines", []).append(row)
@@ -173,11 +173,11 @@ def _plain(case: Case, found: Modes, mode: Mode) -> dict[str, Any]:
         row["cycles_to_half"] = row["time_to_half"] / row["period"]
     if mode.origin != "no":
         row["at_origin"] = mode.origin
-    if not mode.alone:
-        row["told_together"] = mode.shared.poles
+    if mode.together > mode.poles:
+        row["told_together"] = mode.together
     if not found.model.anonymous:
-        order = np.argsort(-mode.shared.shares, kind="stable")
-        row["participation"] = {found.states[at]: float(mode.shared.shares[at]) for at in order}
+        order = np.argsort(-mode.shares, kind="stable")
+        row["participation"] = {found.states[at]: float(mode.shares[at]) for at in order}
     return row
 
 

@@ -24,6 +24,7 @@ from ..core.model import Array, LocalModel
 from .frequency import Complex
 from .participation import Shared, projectors
 from .spectrum import SPACING, Root, roots, structural
+from .structure import Pattern
 from .traits import Known, Pole, decay_rate
 
 Origin = Literal["no", "maybe", "yes"]
@@ -37,8 +38,10 @@ FARTHEST = 1e-2  # of the fastest rate: nothing farther away is at the origin, h
 class Mode:
     """One real pole, or one conjugate pair.
 
-    pole: in s, per time unit; z: of a difference equation, else NaN; poles: 1, or 2 for a pair; shared: participation;
-    alone: no other mode shares it; origin: whether it lies at the origin; reason: how that is known.
+    pole: in s, per time unit; z: of a difference equation, else NaN; poles: 1, or 2 for a pair; shared: what it has in
+    common with other modes, unless it is alone; together: poles that share it and act on common states; cluster: poles
+    in its disc of error; origin: whether it lies at the origin; shares (n,): participation of every state, sum one,
+    among the states that have anything to do with the mode; share_error: of each.
     """
 
     pole: Pole
@@ -46,7 +49,11 @@ class Mode:
     poles: int
     shared: Shared
     alone: bool
+    together: int
+    cluster: int
     origin: Origin
+    shares: Array
+    share_error: float
 
     @property
     def value(self) -> complex:
@@ -66,7 +73,8 @@ class Mode:
 class Modes:
     """All modes of a model, slowest first.
 
-    speed: the model's fastest rate, per time unit; sizes (n,): nominal sizes of the states; states: their names.
+    speed: the model's fastest rate, per time unit; sizes (n,): nominal sizes of the states; states: their names;
+    matrix (n, n): A, less I of a difference equation, scaled by the sizes; acts (n, n): whether a column acts on a row.
     """
 
     modes: tuple[Mode, ...]
@@ -74,17 +82,18 @@ class Modes:
     sizes: Array
     states: tuple[str, ...]
     model: LocalModel
-    matrix: Array  # A (less I of a difference equation), scaled by the sizes
+    matrix: Array
+    acts: Pattern
 
     def participation(self, mode: Mode, state: str) -> Known:
         """Share of a state in a mode, 0 to 1. Raises ValueError for a state that the model lacks."""
-        share, error = float(mode.shared.shares[self.states.index(state)]), mode.shared.share_error
+        share, error = float(mode.shares[self.states.index(state)]), mode.share_error
         return Known(share, max(share - error, 0.0), min(share + error, 1.0))
 
     def dominating(self, mode: Mode, count: int = 3) -> tuple[tuple[str, float], ...]:
         """The states with the largest shares, largest first; shares that tell nothing are left out."""
-        order = sorted(range(len(self.states)), key=lambda at: (-round(float(mode.shared.shares[at]), 9), at))
-        found = [(self.states[at], float(mode.shared.shares[at])) for at in order[:count]]
+        order = sorted(range(len(self.states)), key=lambda at: (-round(float(mode.shares[at]), 9), at))
+        found = [(self.states[at], float(mode.shares[at])) for at in order[:count]]
         return tuple(one for one in found if one[1] >= 0.1) or tuple(found[:1])
 
     def controllability(self, mode: Mode, name: str) -> Known:
@@ -144,12 +153,24 @@ def modes(model: LocalModel, nominal: Mapping[str, float]) -> Modes:
         A = A - np.eye(len(A))
         errors = np.where((A == 0.0) & (errors <= 4.0 * SPACING), 0.0, errors)  # one, written as one
     A, errors = A * sizes / sizes[:, np.newaxis], errors * sizes / sizes[:, np.newaxis]
+    errors = structural(A, errors, _driven(model, sizes, nominal))
     found = sorted(roots(A, errors) if model.step is None else roots(A, errors, _inwards), key=_order)
     speed = _speed(A, found)
-    shared = projectors(A, structural(A, errors), found)
-    made = [_mode(root, one, model.step, speed, shared.count(one)) for root, one in zip(found, shared, strict=True)]
+    shared = projectors(A, errors, found)
+    whose = [(id(one), root.part) for root, one in zip(found, shared, strict=True)]
+    made = []
+    for root, one, own in zip(found, shared, whose, strict=True):
+        together = sum(_poles(other) for other, its in zip(found, whose, strict=True) if its == own)
+        made.append(_mode(root, one, model.step, speed, (shared.count(one) == 1, together)))
     per_time = speed if model.step is None else speed / model.step
-    return Modes(tuple(sorted(made, key=_told_order)), per_time, sizes, names, model, A)
+    return Modes(tuple(sorted(made, key=_told_order)), per_time, sizes, names, model, A, (A != 0.0) | (errors > 0.0))
+
+
+def _driven(model: LocalModel, sizes: Array, nominal: Mapping[str, float]) -> Array:
+    """The largest term of inputs in each row (n,), scaled."""
+    moves = np.array([nominal.get(name, 1.0) for name in model.inputs.names], dtype=np.float64)
+    terms = np.abs(np.asarray(model.B)) * np.where(np.isfinite(moves), moves, 1.0) / sizes[:, np.newaxis]
+    return np.asarray(terms.max(axis=1, initial=0.0), dtype=np.float64)
 
 
 def _sizes(A: Array, given: Array) -> Array:
@@ -191,14 +212,23 @@ def _speed(A: Array, found: Sequence[Root]) -> float:
     return max([float(np.abs(balanced).max()), *(abs(root.value) for root in found)])
 
 
-def _mode(root: Root, shared: Shared, step: float | None, speed: float, members: int) -> Mode:
-    poles = 1 if root.value.imag == 0.0 else 2
-    origin = _origin(root, speed)
+def _poles(root: Root) -> int:
+    return 1 if root.value.imag == 0.0 else 2
+
+
+def _mode(root: Root, shared: Shared, step: float | None, speed: float, company: tuple[bool, int]) -> Mode:
+    place = list(root.part)
+    weights = np.zeros_like(shared.shares)
+    weights[place] = shared.shares[place]
+    whole = float(weights.sum())
     if step is None:
-        nan = complex(math.nan, math.nan)
-        pole = Pole(root.value, root.radius, root.real, along=root.along)
-        return Mode(pole, nan, poles, shared, members == 1, origin)
-    return Mode(_in_s(root, step), 1.0 + root.value, poles, shared, members == 1, origin)
+        z, pole = complex(math.nan, math.nan), Pole(root.value, root.radius, root.real, along=root.along)
+    else:
+        z, pole = 1.0 + root.value, _in_s(root, step)
+    return Mode(
+        pole, z, _poles(root), shared, *company, root.together, _origin(root, speed),
+        weights / whole, shared.share_error / whole,
+    )  # fmt: skip
 
 
 def _in_s(root: Root, step: float) -> Pole:
@@ -245,4 +275,4 @@ def excusable(mode: Mode, speed: float) -> bool:
     if mode.origin == "no" or speed == 0.0:
         return False
     away = (abs(mode.value) + mode.pole.radius) / speed
-    return away <= FARTHEST and away**mode.shared.poles <= EXCUSED
+    return away <= FARTHEST and away**mode.cluster <= EXCUSED

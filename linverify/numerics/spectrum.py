@@ -23,9 +23,9 @@ from scipy.linalg import eig, matrix_balance
 from ..core.model import Array
 from .clusters import Cluster, settled
 from .frequency import Complex
-from .structure import strong_blocks, zeros_for_sure
+from .structure import parts, strong_blocks, zeros_for_sure
 
-STRUCTURAL = 1e-9  # of the largest scaled entry: an entry that is zero and known that well is a zero for good
+STRUCTURAL = 1e-9  # of the largest scaled term of its row: a zero that is known this well is zero for good
 SPACING = 2.0**-52
 RESERVE = 0.8  # the spectral radius that the points of a circle must keep below
 POINTS = 32  # of a circle
@@ -44,7 +44,8 @@ class Root:
     value: as computed, or exactly zero; radius: of the disc about `value` that holds it, infinite where errors are
     unbounded; center, spread: of the disc that holds all `together` eigenvalues which cannot be told apart; single: one
     simple eigenvalue has the disc to itself; zero: it is zero whatever the entries are; along: how far it may be off in
-    the one direction that was asked for, at most `radius`.
+    the one direction that was asked for, at most `radius`; part: places of the states that it can belong to, since the
+    others have nothing to do with them.
     """
 
     value: complex
@@ -54,6 +55,7 @@ class Root:
     together: int = 1
     zero: bool = False
     along: float = math.inf
+    part: tuple[int, ...] = ()
 
     @property
     def single(self) -> bool:
@@ -66,10 +68,17 @@ class Root:
         return self.zero or (self.single and self.value.imag == 0.0)
 
 
-def structural(A: Array, E: Array) -> Array:
-    """E with errors of entries that are zero for good set to zero; A, E (n, n) scaled by nominal sizes."""
-    size = float(np.abs(A).max(initial=0.0)) or 1.0  # nothing but zeros: per time unit
-    return np.where((A == 0.0) & (STRUCTURAL * size >= E), 0.0, E)
+def structural(A: Array, E: Array, others: Array | None = None) -> Array:
+    """E with errors of entries that are zero for good set to zero; A, E (n, n) scaled by nominal sizes.
+
+    What is small is told row by row, since the rates of states may be of very different size. others (n,): the largest
+    other term of each row, what inputs do.
+    """
+    size = np.abs(A)
+    whole = float(size.max(initial=0.0)) or 1.0  # nothing but zeros: per time unit
+    rows = np.maximum(size.max(axis=1, initial=0.0), STRUCTURAL * whole)
+    rows = rows if others is None else np.maximum(rows, others)
+    return np.where((A == 0.0) & (STRUCTURAL * rows[:, np.newaxis] >= E), 0.0, E)
 
 
 def _outwards(value: complex) -> complex:
@@ -77,21 +86,21 @@ def _outwards(value: complex) -> complex:
 
 
 def roots(A: Array, E: Array, turn: Turn = _outwards) -> tuple[Root, ...]:
-    """Eigenvalues of A (n, n) to within E (n, n) >= 0, upper members of pairs only.
+    """Eigenvalues of A (n, n) to within E (n, n) >= 0, upper members of pairs only; E as `structural` leaves it.
 
-    Both scaled by nominal sizes, so that what is negligible does not depend on units. turn: the direction of `along` at
-    an eigenvalue, |Re(turn x shift)| is bounded; by default that of the real part. Raises ValueError for an A that is
-    not finite.
+    turn: the direction of `along` at an eigenvalue, |Re(turn x shift)| is bounded; by default that of the real part.
+    Raises ValueError for an A that is not finite.
     """
     if not np.isfinite(A).all():
         raise ValueError("the matrix has entries that are not finite")
-    known = structural(A, E)
-    pattern = np.asarray((A != 0.0) | (known > 0.0), dtype=np.bool_)
+    known, pattern = E, np.asarray((A != 0.0) | (E > 0.0), dtype=np.bool_)
     found: list[Root] = []
-    for block in strong_blocks(pattern):
-        place = np.ix_(block, block)
-        sure = zeros_for_sure(pattern[place])
-        found += _with_zeros(_block(A[place], known[place], turn), sure)
+    for part in parts(pattern):
+        states = tuple(int(at) for at in part)
+        for block in strong_blocks(pattern[np.ix_(part, part)]):
+            place = np.ix_(part[block], part[block])
+            own = _with_zeros(_block(A[place], known[place], turn), zeros_for_sure(pattern[place]))
+            found += [replace(root, part=states) for root in own]
     return tuple(found)
 
 

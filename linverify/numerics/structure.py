@@ -29,6 +29,15 @@ def strong_blocks(pattern: Pattern) -> tuple[Places, ...]:
     return tuple(sorted(groups, key=lambda group: int(group[0])))
 
 
+def parts(pattern: Pattern) -> tuple[Places, ...]:
+    """Groups of indices that have nothing to do with each other in either direction, by their first index."""
+    if not len(pattern):
+        return ()
+    count, labels = connected_components(csr_matrix(pattern.astype(np.int8)), directed=False)
+    groups = [np.flatnonzero(labels == label) for label in range(count)]
+    return tuple(sorted(groups, key=lambda group: int(group[0])))
+
+
 def zeros_for_sure(pattern: Pattern) -> int:
     """How many eigenvalues are zero for every matrix with this pattern.
 

@@ -451,3 +451,25 @@ def test_no_model_within_the_printed_digits_contradicts_a_verdict(n: int, seed: 
         true = np.linalg.eigvals(A + rounding * generator.choice([-1.0, 1.0], (n, n)))
         keeps = min(by_hand(word, value) for value in true) >= limit * (1 - 1e-12 * np.sign(limit))
         assert status is Status.UNDECIDED or bool(keeps) == (status is Status.PASS)
+
+
+def test_the_pole_that_nobody_named_is_the_one_that_fails() -> None:
+    both = blocks(0.0, 0.0, OSCILLATOR)
+    for named, other in (("x0", "x1"), ("x1", "x0")):
+        found = verdict(both, line(stable=True, at_zero=(named,)))
+        assert found.status is Status.FAIL
+        assert f"mostly {other} 100 %" in found.reason
+
+
+def test_an_excused_integrator_needs_no_damping_ratio() -> None:
+    integrator = blocks(0.0, OSCILLATOR)
+    good = verdict(integrator, line(least("damping", 0.05), stable=True, at_zero=("x0",)))
+    assert good.status is Status.PASS, good.reason
+    assert verdict(integrator, line(least("damping", 0.05))).status is Status.UNDECIDED
+    assert verdict(integrator, line(least("damping", 0.11), stable=True, at_zero=("x0",))).status is Status.FAIL
+
+
+def test_two_integrators_side_by_side_are_slow_growth_and_a_chain_is_not() -> None:
+    beside = line(stable=True, time_to_double=20.0)
+    assert verdict(blocks(0.0, 0.0, -1.0), beside).status is Status.PASS
+    assert verdict(blocks(np.eye(2, k=1), -1.0), beside).status is Status.FAIL

@@ -70,7 +70,7 @@ def test_phugoid_and_short_period_belong_to_the_states_that_everybody_knows() ->
     assert {name for name, _ in found.dominating(phugoid, 2)} == {"x0", "x3"}
     assert {name for name, _ in found.dominating(short, 2)} == {"x1", "x2"}
     for mode in found.modes:
-        assert mode.shared.shares.sum() == pytest.approx(1.0, rel=1e-12)
+        assert mode.shares.sum() == pytest.approx(1.0, rel=1e-12)
 
 
 def test_participation_is_the_product_of_left_and_right_eigenvectors() -> None:
@@ -80,7 +80,7 @@ def test_participation_is_the_product_of_left_and_right_eigenvectors() -> None:
     for mode in of(A).modes:
         place = int(np.argmin(abs(values - mode.value)))
         weights = np.abs(right[:, place] * left[place])
-        np.testing.assert_allclose(mode.shared.shares, weights / weights.sum(), rtol=1e-9, atol=1e-12)
+        np.testing.assert_allclose(mode.shares, weights / weights.sum(), rtol=1e-9, atol=1e-12)
         assert mode.alone
 
 
@@ -102,7 +102,7 @@ def test_units_of_states_change_no_measure(powers: list[int], seed: int) -> None
     after = modes(other, nominal)
     for one, two in zip(before.modes, after.modes, strict=True):
         assert two.value == pytest.approx(one.value, rel=1e-9)
-        np.testing.assert_allclose(two.shared.shares, one.shared.shares, rtol=1e-7, atol=1e-9)
+        np.testing.assert_allclose(two.shares, one.shares, rtol=1e-7, atol=1e-9)
         for name in model.inputs.names:
             pair = [found.controllability(mode, name).value for found, mode in ((before, one), (after, two))]
             assert pair[1] == pytest.approx(pair[0], rel=1e-7)
@@ -161,11 +161,20 @@ def test_near_defective_poles_share_one_answer(gap: float, turned: bool) -> None
     found = of(np.linalg.solve(T, A @ T))
     first, second, other = found.modes
     for mode in (first, second):
-        np.testing.assert_allclose(mode.shared.shares, [0.5, 0.5, 0.0], atol=1e-3 if turned else 1e-6)
-        assert mode.shared.share_error < 1e-2
-    np.testing.assert_allclose(other.shared.shares, [0.0, 0.0, 1.0], atol=1e-12)
+        np.testing.assert_allclose(mode.shares, [0.5, 0.5, 0.0], atol=1e-3 if turned else 1e-6)
+        assert mode.share_error < 1e-2
+    np.testing.assert_allclose(other.shares, [0.0, 0.0, 1.0], atol=1e-12)
     assert other.alone
     assert first.alone is (gap > (1e-11 if turned else 0.0))
+
+
+def test_what_has_nothing_to_do_with_each_other_is_told_apart_even_at_one_pole() -> None:
+    """Two integrators of two each: each has its own states, though four poles lie at the origin."""
+    pairs = of(np.kron(np.eye(2), [[0.0, 1.0], [0.0, 0.0]]))
+    assert {mode.shared.poles for mode in pairs.modes} == {4}
+    for mode in pairs.modes:
+        assert sorted(np.round(mode.shares, 12)) == [0.0, 0.0, 0.5, 0.5]
+        assert mode.shares.sum() == pytest.approx(1.0)
 
 
 def test_a_chain_of_three_is_one_group_at_the_origin() -> None:

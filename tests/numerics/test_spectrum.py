@@ -9,7 +9,7 @@ import pytest
 from hypothesis import given, settings
 from hypothesis import strategies as st
 
-from linverify.numerics.spectrum import Root, roots
+from linverify.numerics.spectrum import Root, roots, structural
 from linverify.numerics.structure import leads, strong_blocks, zeros_for_sure
 
 
@@ -63,9 +63,12 @@ def test_a_chain_of_integrators_in_natural_coordinates_is_zero_for_sure() -> Non
 
 
 def test_errors_of_exact_zeros_below_notice_do_not_blur_a_chain() -> None:
-    blurred = found(np.eye(4, k=1), np.full((4, 4), 1e-12))
+    A, others = np.eye(4, k=1), np.ones(4)
+    blurred = roots(A, structural(A, np.full((4, 4), 1e-12), others))
     assert all(root.zero for root in blurred)
-    assert not any(root.zero for root in found(np.eye(4, k=1), np.full((4, 4), 1e-6)))
+    assert not any(root.zero for root in roots(A, structural(A, np.full((4, 4), 1e-6), others)))
+    # nothing is small beside a row that is nothing but zeros
+    assert structural(A, np.full((4, 4), 1e-12))[3].all()
 
 
 def test_a_chain_in_other_coordinates_is_one_disc_as_large_as_rounding_makes_it() -> None:

@@ -33,11 +33,12 @@ _SIDES = {"input": "at the input", "output": "at the output", "both": "at both"}
 
 
 def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
-    """Blocks of what `margins` tells; its word is taken out of `rest`."""
+    """Blocks of what `margins` tells; its words are taken out of `rest`."""
     found = rest.get("margins")
     if not isinstance(found, Mapping):
         return []
     rest.pop("margins")
+    tried = _rows(rest, "confirmed")
     left, unit = dict(found), str(found.get("frequency_unit", ""))
     left.pop("frequency_unit", None)
     made = [_loop(left)]
@@ -53,6 +54,8 @@ def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
         made += [f"Closed-loop poles, per {time_unit or 'time unit'}:", modal.table(upper, time_unit)]
     if poles := _rows(left, "unmoved_poles"):
         made += [f"Poles that this loop does not move, per {time_unit or 'time unit'}:", _unmoved(poles)]
+    if tried:
+        made += ["Margins tried on the nonlinear plant, after a small kick:", _tried(tried)]
     made += _limits(_rows(left, "limits"))
     return made + plain_blocks(left)
 
@@ -209,6 +212,23 @@ def _unmoved(rows: Rows) -> str:
         stands = "left to others" if row.get("excused") is True else quantity.ABSENT
         told.append((complex_told(row.get("real"), row.get("imag")), states or quantity.ABSENT, stands))
     return grid(("pole", "mostly", "note"), told)
+
+
+def _tried(rows: Rows) -> str:
+    must = {"rest": "come to rest", "grow": "grow"}
+    told = [
+        (
+            cell(row.get("change", "")),
+            cell(row.get("signal", "")),
+            must.get(str(row.get("must")), cell(row.get("must"))),
+            cell(row.get("became", "")),
+            quantity.quantity(_float(row.get("growth")), str(row.get("unit", "")), 4),
+            cell(row.get("status", "")),
+        )
+        for row in rows
+    ]
+    headers = ("change", "in", "a small motion must", "the plant", "growth", "verdict")
+    return grid(headers, told, right=("growth",))
 
 
 def _limits(rows: Rows) -> list[str]:

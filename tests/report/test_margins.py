@@ -153,3 +153,15 @@ def test_whatever_is_missing_or_odd_is_survived() -> None:
     for word in channel:
         for value in (None, "odd", math.inf, {"value": math.nan, "unit": ""}, {"value": "x"}, [3]):
             assert told({**LOOP, "channels": [{**channel, word: value}]})
+
+
+def test_what_was_tried_on_the_plant_is_told() -> None:
+    tried = [
+        {"change": "gain times 1.9 (0.9 of the margin upwards)", "signal": "fore_flap", "must": "rest",
+         "status": "pass", "became": "comes to rest", "growth": -0.12, "unit": "1/s", "periods": 24},
+        {"change": "gain times 2.1", "signal": "fore_flap", "must": "grow", "status": "undecided",
+         "became": "cannot be followed", "growth": None, "unit": "1/s", "periods": 0},
+    ]  # fmt: skip
+    text = "\n\n".join(blocks({"margins": LOOP, "confirmed": tried}, {}, "s")).split("tried on the nonlinear")[1]
+    assert cells(text, "gain times 1.9")[1:] == ["fore_flap", "come to rest", "comes to rest", "-0.12 1/s", "pass"]
+    assert cells(text, "gain times 2.1")[4] == "-"

@@ -25,6 +25,7 @@ STEP = 0.2  # of the distance to the nearest pole: the walk's steps
 WIDE = 1e3  # the walk goes on beyond the outermost poles and candidates by this factor
 DIPS, POINTS = 14, 9  # rounds and points a round of the search for the bottom of a dip
 HALVINGS = 60
+FLAT = 1e-13  # of a measure: what is left to polishing on exact values
 POLISH = 4
 TOUCH = 1e-9  # a dip that comes this near to a crossing counts as one
 
@@ -183,7 +184,7 @@ def _solved(ask: Callable[[Array], Array], low: Array, high: Array) -> Array:
         # halving the value that stays keeps the secant from creeping
         f_high, f_low = np.where(is_low, 0.5 * f_high, f), np.where(is_low, f, 0.5 * f_low)
         low, high = np.where(is_low, middle, low), np.where(is_low, high, middle)
-        if (high - low <= 4e-16 * high).all() or (np.abs(f) < 1e-15).all():
+        if ((high - low <= 4e-16 * high) | (np.abs(f) < FLAT)).all():
             break
     return np.asarray(middle)
 

@@ -57,13 +57,13 @@ class Curve:
 
     def quick(self, v: Array) -> Complex:
         """L at finite frequencies (F,), to about rounding of |A|. Very large at a pole."""
-        x = np.empty((len(self.T), len(v)), dtype=np.complex128)
-        s = 1j * v
-        for i in range(len(self.T) - 1, -1, -1):
-            gap = s - self.T[i, i]
-            # exactly at a pole: as near to it as numbers come
-            gap = np.where(gap == 0.0, 1e-16 * np.maximum(np.abs(s), 1e-250), gap)
-            x[i] = (self.bT[i] + self.T[i, i + 1 :] @ x[i + 1 :]) / gap
+        n = len(self.T)
+        x = np.empty((n, len(v)), dtype=np.complex128)
+        gaps = 1j * v - np.diagonal(self.T)[:, np.newaxis]
+        if not gaps.all():  # exactly at a pole: as near to it as numbers come
+            gaps = np.where(gaps == 0.0, 1e-16 * np.maximum(v, 1e-250), gaps)
+        for i in range(n - 1, -1, -1):
+            x[i] = (self.bT[i] + self.T[i, i + 1 :] @ x[i + 1 :]) / gaps[i]
         found = self.cT @ x + self.d
         return np.asarray(found * np.exp(-1j * self.delay * v) if self.delay else found)
 

@@ -217,7 +217,7 @@ def peaks(loop: Loop, w: np.ndarray, value: np.ndarray, of: Scalar, most: int = 
     inner = np.flatnonzero((value[1:-1] >= value[:-2]) & (value[1:-1] >= value[2:])) + 1
     inner = inner[np.argsort(value[inner])[::-1][:most]]
     low, high = w[inner - 1].copy(), w[inner + 1].copy()
-    for _ in range(60 if inner.size else 0):
+    for _ in range(40 if inner.size else 0):
         left, right = high - GOLDEN * (high - low), low + GOLDEN * (high - low)
         up = of(loop.response(left)) < of(loop.response(right))
         low, high = np.where(up, left, low), np.where(up, high, right)
@@ -480,8 +480,8 @@ def highest(loop: Loop, w: np.ndarray, of: Scalar, *, last: bool) -> tuple[float
     places = np.concatenate([tops, w[[0, -1]]])
     values = of(loop.exact(places)[0]).astype(float)
     value, place = max([*found, *zip(values.tolist(), places.tolist(), strict=True)])
-    near = places[(values > 0.999 * value) & (places < loop.top)]
-    return max([(value, place), *(topped(loop, float(x), of) for x in near)])
+    near = [i for i in np.argsort(values)[::-1][:3] if values[i] > 0.999 * value and places[i] < loop.top]
+    return max([(value, place), *(topped(loop, float(places[i]), of) for i in near)])
 
 
 STEEPER: dict[Scalar, Callable[[np.ndarray, np.ndarray], np.ndarray]] = {  # of L and dL/dw: sign of the slope

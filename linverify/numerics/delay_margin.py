@@ -123,8 +123,9 @@ def sampled_delay_margin(plant: Transfer, controller: Transfer, delay: float = 0
     plant: continuous, from the held input to the measured signal, no dead time of its own; controller: in z with its
     `step`, from set point minus measurement to the command; delay: the declared one, in time units. One channel. The
     measurement at an instant sees the input that was held before it (of importance only where the plant has
-    feedthrough). Infinite where |L| stays below one at every fraction of a sample; where no loss was met in the time in
-    which every crossing turns once, the value is that time, with NaN for its frequency: the margin is at least so much.
+    feedthrough; there stability may be lost at a whole sample at once, at no one frequency: NaN). Infinite where |L|
+    stays below one at every fraction of a sample. Where the search had to end without a loss, the margin is at least
+    the value, and the error is infinite.
     Raises ValueError where the parts are not of these kinds.
     """
     held = _held(plant, controller)
@@ -137,13 +138,13 @@ def sampled_delay_margin(plant: Transfer, controller: Transfer, delay: float = 0
 
 
 def _searched(held: _Held, low: Array, high: Array, start: float, end: float) -> Found:
-    delay, until = start, 0.0
+    delay, until, small = start, 0.0, _small_elsewhere(held, low)
     for _ in range(MOST_STEPS):
         if delay >= end:
             break
         if delay >= until:
             until = max(2.0 * delay, delay + held.step, 1.0 / float(high.max()))
-            net = _net(held, low, high, until)
+            net = _net(held, low, high, until, small)
         samples = _samples(held, delay)
         edge = (samples + 1) * held.step
         distance = _distance(held, net, delay, samples)
@@ -160,9 +161,20 @@ def _searched(held: _Held, low: Array, high: Array, start: float, end: float) ->
                 return Found(max(delay - start, 0.0), w, 2.0 * ahead)
         step = net.safe(distance, within, held.d == 0.0) * held.step
         delay = _instant(held, min(delay + max(step, 1e-2 * CLOSE / w), edge if held.d else until))
-        if held.d and delay >= edge and (samples >= MOST_SAMPLES or not held.stable(edge, samples + 1)):
-            return Found(edge - start)
-    return Found(delay - start)
+        if held.d and delay >= edge and not _bears_jump(held, net, edge, samples):
+            if samples >= MOST_SAMPLES:
+                return Found(edge - start, math.nan, math.inf)
+            if not held.stable(edge, samples + 1):
+                return Found(edge - start)
+    return Found(delay - start, math.nan, math.inf)
+
+
+def _bears_jump(held: _Held, net: _Net, edge: float, samples: int) -> bool:
+    """True where the jump of L with the next sample of delay is surely too small to reach -1 (theorem of Rouche)."""
+    if not net.small_elsewhere:
+        return False
+    jumps = [np.abs(seen[1] * held.d * (1.0 - np.exp(-1j * w * held.step))) for w, seen in net.ends]
+    return bool((np.maximum(*jumps) < SAFE * _distance(held, net, edge, samples)).all())
 
 
 def _instant(held: _Held, delay: float) -> float:
@@ -221,6 +233,12 @@ class _Net:
     speeds: Array
     sums: Array
     step: float
+    small_elsewhere: bool
+
+    @property
+    def ends(self) -> tuple[tuple[Array, tuple[Complex, Complex]], tuple[Array, tuple[Complex, Complex]]]:
+        """Both ends of the intervals and what the loop is made of there."""
+        return (self.low, self.seen_low), (self.high, self.seen_high)
 
     def nearest(self, distance: Array, within: float) -> tuple[int, float]:
         """The interval that could reach -1 first, and the delay it needs at the speeds about this fraction."""
@@ -251,7 +269,18 @@ class _Net:
         return np.asarray(np.maximum(self.speeds[:, place - 1], self.speeds[:, place]) + 1e-300)
 
 
-def _net(held: _Held, low: Array, high: Array, delay: float) -> _Net:
+def _small_elsewhere(held: _Held, low: Array) -> bool:
+    """Outside the intervals that begin at `low`, jumps of L are smaller than |L| is away from one."""
+    nodes = _nodes(held)
+    inside = np.isin(nodes, low)
+    beside = ~(inside | np.roll(inside, 1))
+    seen = held.seen(nodes)
+    jump = np.abs(seen[1] * held.d * (1.0 - np.exp(-1j * nodes * held.step)))
+    away = np.abs(np.abs(held.loop(nodes, seen, held.step, 0)[0]) - 1.0)
+    return bool((jump < SAFE * away)[beside].all())
+
+
+def _net(held: _Held, low: Array, high: Array, delay: float, small: bool) -> _Net:
     """Intervals split so that a delay turns little within each."""
     parts = np.maximum(1, np.ceil((high - low) * delay / TURN)).astype(np.intp)
     which = np.repeat(np.arange(len(low)), parts)
@@ -269,7 +298,7 @@ def _net(held: _Held, low: Array, high: Array, delay: float) -> _Net:
     )
     cells = np.maximum(speeds[:, 1:], speeds[:, :-1]) * np.diff(shares) * held.step
     sums = np.concatenate([np.zeros((len(low), 1)), np.cumsum(cells, axis=1)], axis=1) + 1e-300
-    return _Net(low, high, ends[0][1], ends[1][1], shares, speeds, sums, held.step)
+    return _Net(low, high, ends[0][1], ends[1][1], shares, speeds, sums, held.step, small)
 
 
 def _shares(held: _Held) -> Array:

@@ -147,3 +147,30 @@ def _stable(plant: Transfer, controller: Transfer, delay: float) -> bool:
 def test_wrong_parts_are_refused() -> None:
     with pytest.raises(ValueError, match="a continuous plant"):
         sampled_delay_margin(INTEGRATOR, static(1.0))
+
+
+def test_feedthrough_of_the_plant_loses_stability_at_an_instant() -> None:
+    # y sees the held command itself, later by one sample as soon as the delay reaches a whole one
+    plant = Transfer(np.array([[-1.0]]), np.array([[1.0]]), np.array([[1.0]]), np.array([[0.75]]))
+    found = sampled_delay_margin(plant, static(0.6, step=0.1))
+    assert math.isnan(found.frequency) or found.error < 1e-8
+    for delay in np.linspace(0.0, min(found.value, 3.0) * (1 - 1e-9), 60):
+        assert _stable_with_feedthrough(0.75, 0.6, float(delay))
+
+
+def _stable_with_feedthrough(d: float, gain: float, delay: float) -> bool:
+    """x' = -x + u, y = x + d u, u = -gain y read before each instant; commands under way as states."""
+    step = 0.1
+    whole = math.floor(delay / step * (1 + 1e-12))
+    rest = max(0.0, delay - whole * step)
+    size = whole + 2  # x, the command that acts, those under way
+
+    def onward(state: np.ndarray) -> np.ndarray:
+        x, way = state[0], state[1:]
+        queue = np.append(way, -gain * (x + d * way[0]))
+        for time, u in ((rest, queue[0]), (step - rest, queue[1])):
+            x = x * math.exp(-time) + (1 - math.exp(-time)) * u
+        return np.concatenate([[x], queue[1:]])
+
+    matrix = np.column_stack([onward(column) for column in np.eye(size)])
+    return bool(np.abs(np.linalg.eigvals(matrix)).max() < 1.0)

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from dataclasses import dataclass, replace
+from dataclasses import dataclass
 from enum import Enum
 
 FORMAT = 1
@@ -81,17 +81,6 @@ def each(kind: Kind, of: tuple[Row, ...] = (), dimension: str = "", sign: str = 
 def later(word: str, meaning: str) -> Row:
     """A word of the language whose check this version does not have."""
     return Row(word, Kind.NONE, meaning, available=False)
-
-
-def not_yet(row: Row) -> Row:
-    """A word that can be read, and is refused as long as its check is not built."""
-    return replace(row, available=False)
-
-
-def without(rows: tuple[Row, ...], *words: str) -> tuple[Row, ...]:
-    """`rows` in which `words`, however deep, are refused as long as their checks are not built."""
-    inner = (replace(row, of=without(row.of, *words)) for row in rows)
-    return tuple(not_yet(row) if row.word in words else row for row in inner)
 
 
 SIGNAL = "the signal's"

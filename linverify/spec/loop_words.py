@@ -55,9 +55,8 @@ LOOP_WORDS = (
     Row("controller", Kind.BLOCK, "takes set point minus measurement: u = K (set point - y)", CONTROLLER_WORDS,
         required=True),
     Row("measures", Kind.NAMES, "outputs or states, in the order of the controller's inputs", required=True),
-    Row("moves", Kind.NAMES, "plant inputs, or LOOP.set_point.NAME of a loop in `with`, in the order of its outputs; what several loops "
-        "give to one input adds up",
-        required=True),
+    Row("moves", Kind.NAMES, "plant inputs, or LOOP.set_point.NAME of a loop in `with`, in the order of its outputs; "
+        "what several loops give to one input adds up", required=True),
     Row("with", Kind.NAMES, "loops that are closed inside this one"),
     Row("sample", Kind.QUANTITY, "sample time of a controller with a hold; left out: continuous", dimension="time",
         sign="+"),

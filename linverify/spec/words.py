@@ -14,12 +14,11 @@ from .grammar import SIGNAL as SIGNAL
 from .grammar import Kind as Kind
 from .grammar import Row as Row
 from .grammar import default_of as default_of
-from .grammar import each, later, without
+from .grammar import each, later
 from .grammar import row_of as row_of
-from .loop_words import LOOPS as ALL_LOOPS
+from .loop_words import LOOPS
 from .mode_words import ACTUATOR_WORDS, MODE_WORDS
 
-(LOOPS,) = without((ALL_LOOPS,), "confirm")
 DERIVE = "derive"  # behind `local_models: source`, for models that nobody delivered
 SHAPES = ("step", "pulse", "doublet", "ramp", "sine", "sweep", "multisine", "walk")
 

@@ -56,7 +56,6 @@ def limits(case: Case) -> Iterator[Limit]:
         yield from loop.require
 
 
-@pytest.mark.usefixtures("whole_language")
 @pytest.mark.parametrize("name", FULL)
 @pytest.mark.parametrize("count", [1, 3])
 @given(data=st.data())

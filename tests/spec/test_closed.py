@@ -28,7 +28,6 @@ loops:
 """
 SET = "{horizon: 30 min, every: 1 min, amplitude: {inflow: 1}"
 
-pytestmark = pytest.mark.usefixtures("whole_language")
 Load = Callable[..., tuple[Case, ...]]
 
 

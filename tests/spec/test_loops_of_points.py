@@ -26,7 +26,6 @@ operating_points:
 LOW = "  low: {hold: {level: 1 m}}\n"
 PUMP = "{controller: {pid: {kp: 120 1/min, ki: 3}}, measures: [angle], moves: [pump]}"
 
-pytestmark = pytest.mark.usefixtures("whole_language")
 Load = Callable[..., tuple[Case, ...]]
 
 

@@ -25,7 +25,6 @@ operating_points:
   low: {hold: {level: 1 m, temperature: 60 degC, angle: 0 rad}}
 """
 
-pytestmark = pytest.mark.usefixtures("whole_language")
 Load = Callable[[str], tuple[Case, ...]]
 
 

@@ -1,6 +1,6 @@
 """Margins of a loop of 12 states: the library and python-control on its default grid in one run, with both errors.
 
-    pytest tests/benchmarks/test_margins.py --benchmark-only
+    pytest tests/benchmarks/test_margins_speed.py --benchmark-only
 
 The ratio of the two times is what counts; `extra_info` of each holds its relative errors against brute force.
 """

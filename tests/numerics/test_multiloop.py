@@ -12,6 +12,7 @@ from scipy.signal import cont2discrete
 
 from linverify.core.outcome import Outcome
 from linverify.numerics.multiloop import around, both_sides, multiloop
+from linverify.numerics.scalings import from_above
 from linverify.numerics.transfer import Transfer
 
 
@@ -92,7 +93,7 @@ def test_one_channel_is_its_own_disk_margin() -> None:
 
 @pytest.mark.parametrize("m", [2, 3, 4])
 def test_bounds_meet_and_the_perturbation_destabilizes(m: int) -> None:
-    for loop in stable_loops(m, m, 5, lightest=1e-5, feed=0.1):
+    for loop in stable_loops(m, m, 3, lightest=1e-5, feed=0.1):
         found = multiloop(loop)
         disk = found.disk
         assert found.stable
@@ -113,7 +114,7 @@ def test_bounds_meet_and_the_perturbation_destabilizes(m: int) -> None:
 @pytest.mark.parametrize("m", [2, 3])
 def test_no_sampled_perturbation_is_smaller(m: int) -> None:
     rng = np.random.default_rng(m)
-    for loop in stable_loops(10 + m, m, 4):
+    for loop in stable_loops(10 + m, m, 3):
         disk = multiloop(loop).disk
         poles = closed(loop)
         omega = scan(poles, number=400)[::3]
@@ -128,7 +129,7 @@ def test_no_sampled_perturbation_is_smaller(m: int) -> None:
 
 def test_never_more_than_each_channel_alone() -> None:
     for m in (2, 3):
-        for loop in stable_loops(20 + m, m, 4, lightest=1e-4):
+        for loop in stable_loops(20 + m, m, 2, lightest=1e-4):
             poles = closed(loop)
             alone = [
                 highest(lambda w, i=i, L=loop: np.abs(difference(L, w)[:, i, i]), scan(poles), poles) for i in range(m)
@@ -138,12 +139,32 @@ def test_never_more_than_each_channel_alone() -> None:
 
 def test_peaks_against_a_scan_of_the_open_loop() -> None:
     eye = np.eye(3)
-    for loop in stable_loops(5, 3, 8, lightest=1e-5, feed=0.1):
+    for loop in stable_loops(5, 3, 2, lightest=1e-5, feed=0.1):
         found, poles = multiloop(loop), closed(loop)
         S = highest(lambda w, L=loop: sigma(np.linalg.inv(eye + respond(L, w))), scan(poles), poles)
         T = highest(lambda w, L=loop: sigma(eye - np.linalg.inv(eye + respond(L, w))), scan(poles), poles)
         assert found.sensitivity.value == pytest.approx(S, rel=1e-5)
         assert found.complementary.value == pytest.approx(T, rel=1e-5)
+
+
+@pytest.mark.slow
+@pytest.mark.parametrize("seed", range(50))
+def test_nothing_on_a_scan_is_above_the_bounds(seed: int) -> None:
+    """Loops of two to four channels, of orders up to twelve, with light damping and feedthrough, half of them large."""
+    rng = np.random.default_rng(1000 + seed)
+    m = int(rng.integers(2, 5))
+    for loop in stable_loops(
+        seed, m, 2, lightest=10 ** rng.uniform(-5.0, -1.0), feed=float(rng.choice([0.0, 0.1, 1.0]))
+    ):
+        found, poles, eye = multiloop(loop), closed(loop), np.eye(m)
+        S = np.linalg.inv(eye + respond(loop, scan(poles, number=600)))
+        for peak, values in ((found.sensitivity, S), (found.complementary, eye - S)):
+            assert sigma(values).max() <= peak.value + peak.error
+        assert from_above(S - 0.5 * eye)[0].max() * found.disk.low <= 1.0 + 1e-9
+        assert found.disk.high <= found.disk.low * (1.0 + (1e-5 if m < 4 else 0.05))
+        factors = np.array(found.disk.factors)
+        if np.isfinite(factors).all() and math.isfinite(found.disk.frequency):
+            assert closed(loop, factors).real.max() >= -1e-6 * max(found.disk.frequency, 1e-3 * np.abs(poles).max())
 
 
 def test_units_of_the_channels_do_not_matter() -> None:

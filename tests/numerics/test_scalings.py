@@ -27,7 +27,7 @@ def test_bounds_meet_for_up_to_three_channels(m: int) -> None:
 
 @pytest.mark.parametrize("m", [4, 6])
 def test_bounds_are_near_for_more(m: int) -> None:
-    M = matrices(m, 100, m)
+    M = matrices(m, 40, m)
     above, D = from_above(M)
     below, _ = from_below(M, D)
     assert (below <= above * (1.0 + 1e-12)).all()

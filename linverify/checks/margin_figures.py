@@ -61,7 +61,7 @@ def figures(
 def asked(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
     """What one word asks for."""
     several = len(found.channels) > 1
-    for channel in found.channels:
+    for channel in (each for each in found.channels if each.moves):
         one, name = channel.margins, channel.name if several else ""
         if limit.word == "gain_margin":
             yield Ask("gain margin (upwards)", name, one.gain_up, limit.low, Sense.LOWER, ratio=True)
@@ -119,7 +119,7 @@ def _inverse(factor: Found) -> Found:
 
 def _steps(case: Case, limit: Limit, found: LoopMargins) -> Iterator[Ask]:
     several = len(found.steps) > 1
-    for step in found.steps:
+    for step in (each for each in found.steps if each.final != 0.0):
         channel = step.channel if several else ""
         if limit.word == "overshoot":
             yield Ask("overshoot", channel, step.overshoot, limit.high, Sense.UPPER)

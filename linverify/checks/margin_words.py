@@ -78,6 +78,8 @@ def notes(loop: Loop, one: LoopMargins) -> list[str]:
     if any(limit.word == "disk_margin" for limit in loop.require):
         alpha = one.channels[0].margins.disk.value if one.joint is None else one.joint.here.low
         told.append(promise(alpha, len(one.loop.inputs)))
+    if gone := [step.channel for step in one.steps if step.final == 0.0]:
+        told.append(f"{' and '.join(gone)} goes back to zero after a step of its set point: no step of it is judged")
     ruled: dict[tuple[str, str, str], list[str]] = {}
     for limit in loop.require:
         if limit.rule:

@@ -168,6 +168,9 @@ def _check_steps(setup: Setup, loops: Sequence[Loop], step: float) -> None:
 
 def _check_signals(setup: Setup, loop: Loop) -> None:
     model = setup.model
+    for word, names in (("measures", loop.measures), ("moves", _channels(loop))):
+        if twice := [name for name in names if names.count(name) > 1]:
+            raise RefusedError(f"loop {loop.name} {word} {twice[0]} twice")
     for name in loop.measures:
         if name not in model.outputs and (model.anonymous or name not in model.states):
             raise RefusedError(f"loop {loop.name} measures {name}, which the local model does not have")

@@ -79,6 +79,28 @@ def test_what_a_plant_does_between_samples_counts(late: float) -> None:
     assert late_by.worst == pytest.approx(settles, abs=late_by.error + h / 200)
 
 
+@pytest.mark.parametrize("h", [1e-3, 1e-4])
+def test_fast_sampling_is_as_no_sampling(h: float) -> None:
+    """w^2 / (s (s + 2 z w)) again, the hold being short: half a sample of dead time is all that it adds."""
+    w, damping = 3.0, 0.5
+    plant = linear_plant(*companion([w**2], [1.0, 2.0 * damping * w, 0.0]))
+    sampled, late = judged(plant, loop(gain(1.0, h), *WANTED)), judged(plant, loop(pid(1.0), *WANTED, delay=h / 2.0))
+    for what in (OVER, SETTLES):
+        found, near = figure(sampled, what), figure(late, what)
+        assert found.worst == pytest.approx(near.worst, abs=found.error + near.error + h)
+        assert found.error < 0.03
+
+
+def test_a_signal_that_goes_back_after_a_step_is_not_judged() -> None:
+    """A rate: its set point can not be kept, the position's can."""
+    both = linear_plant([[0.0, 1.0], [0.0, 0.0]], [[0.0], [1.0]], np.eye(2))
+    for controller in (gain([[1.0, 1.5]]), gain([[1.0, 1.5]], 0.1)):
+        verdict = judged(both, loop(controller, *WANTED, measures=("y1", "y2")))
+        assert verdict.status is Status.PASS, verdict.reason
+        assert figure(verdict, OVER, "y1").worst < 0.1
+        assert any("y2 goes back to zero" in note for note in verdict.notes)
+
+
 def test_a_continuous_loop_with_a_dead_time_is_stepped_with_its_dead_time() -> None:
     """x' = k (1 - x(t - d)): for d < t < 2 d a line, then parabolas; followed by plain small steps."""
     k, d, dt = 1.0, 0.6, 2e-5

@@ -72,7 +72,7 @@ def stand_in(loop: Transfer) -> StandIn | Outcome:
         if math.isinf(found.turn):
             continue
         best = found
-        if found.known.unstable or found.rest <= _wanted(found):
+        if found.known.unstable or found.known.edge or found.rest <= _wanted(found):
             break
     return best
 

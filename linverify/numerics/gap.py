@@ -148,8 +148,9 @@ def stability_margin(plant: Transfer, controller: Transfer, input_sizes: Array, 
     whole = _four_blocks(P, K)
     if whole is None:
         return StabilityMargin(math.nan, math.nan, math.inf, Outcome.ILL_POSED)
-    if unstable_poles(whole):
-        return StabilityMargin(0.0, math.nan, 0.0)
+    unstable, edge = unstable_poles(whole)
+    if unstable or edge:
+        return StabilityMargin(0.0, math.nan, 0.0, Outcome.DONE if unstable else Outcome.ON_THE_EDGE)
     found = peak(whole)
     return StabilityMargin(1.0 / found.value, found.frequency, found.error / found.value**2, found.outcome)
 

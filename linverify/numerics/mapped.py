@@ -64,13 +64,17 @@ class Mapped:
 
     def axis_poles(self) -> Complex:
         """Poles that lie on the imaginary axis to within rounding and are seen in the response."""
+        values, on = self.edge()
+        return np.asarray(values[on], dtype=np.complex128)
+
+    def edge(self) -> tuple[Complex, NDArray[np.bool_]]:
+        """All poles, and which of them may lie on the imaginary axis and are seen in the response."""
         if len(self.A) == 0:
-            return np.zeros(0, dtype=np.complex128)
+            return np.zeros(0, dtype=np.complex128), np.zeros(0, dtype=np.bool_)
         values, right, left, match = eigen(self.A)
         moved = np.linalg.norm(np.conj(left.T) @ self.B, axis=1) / (float(np.linalg.norm(self.B)) or 1.0)
         seen = np.linalg.norm(self.C @ right, axis=0) / (float(np.linalg.norm(self.C)) or 1.0)
-        on = near_axis(self.A, values, match) & (moved * seen > SMALLEST * match)
-        return np.asarray(values[on], dtype=np.complex128)
+        return values, np.asarray(near_axis(self.A, values, match) & (moved * seen > SMALLEST * match))
 
 
 def eigen(A: Array) -> tuple[Complex, Complex, Complex, Array]:

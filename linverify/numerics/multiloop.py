@@ -9,7 +9,7 @@ perturbations (Seiler, Packard & Gahinet, IEEE Control Systems Magazine 40(5), 2
 from __future__ import annotations
 
 import math
-from dataclasses import dataclass
+from dataclasses import dataclass, replace
 
 import numpy as np
 
@@ -17,7 +17,7 @@ from ..core.outcome import Outcome
 from .delayed_loop import StandIn, beyond, exact_peaks, stand_in
 from .mapped import mapped
 from .peak_gain import Peak, peak
-from .sensitivities import sensitivities
+from .sensitivities import Sensitivities, sensitivities
 from .structured import Bounded, structured_peak
 from .transfer import Transfer
 
@@ -29,7 +29,7 @@ class Multiloop:
     """Margins of all channels of a loop at once.
 
     stable: no pole of the closed loop on or right of the axis (of a sampled loop: on or outside of the unit circle);
-    unstable: those that are. Of an unstable loop the peaks are infinite and the disk margin is zero.
+    unstable: those surely right of it (outside); the outcome says where others may lie on it to within rounding. Of an unstable loop the peaks are infinite and the disk margin is zero.
     sensitivity, complementary: largest singular value of S and T over frequency; disk: the disk margin of all channels
     with independent perturbations.
     """
@@ -63,8 +63,8 @@ def _rational(loop: Transfer) -> Multiloop:
     known = sensitivities(loop)
     if known is None:
         return _none(Outcome.ILL_POSED)
-    if known.unstable:
-        return Multiloop(Outcome.DONE, False, known.unstable, _UNSTABLE, _UNSTABLE, _NO_DISK)
+    if known.unstable or known.edge:
+        return _unstable(known)
     return Multiloop(Outcome.DONE, True, (), peak(known.S), peak(known.T), disk(known.difference))
 
 
@@ -72,8 +72,8 @@ def _delayed(loop: Transfer) -> Multiloop:
     found = stand_in(loop)
     if isinstance(found, Outcome):
         return _none(found)
-    if found.known.unstable:
-        return Multiloop(Outcome.DONE, False, found.known.unstable, _UNSTABLE, _UNSTABLE, _NO_DISK)
+    if found.known.unstable or found.known.edge:
+        return _unstable(found.known)
     return Multiloop(Outcome.DONE, True, (), *exact_peaks(found), _delayed_disk(found))
 
 
@@ -139,6 +139,11 @@ def _factor(delta: complex) -> complex:
     """(1 + delta / 2) / (1 - delta / 2), infinite at delta = 2."""
     below = 1.0 - 0.5 * delta
     return (1.0 + 0.5 * delta) / below if abs(below) > 1e-12 else complex(math.inf)
+
+
+def _unstable(known: Sensitivities) -> Multiloop:
+    outcome = Outcome.DONE if known.unstable else Outcome.ON_THE_EDGE
+    return replace(_none(outcome), unstable=known.unstable)
 
 
 def _none(outcome: Outcome) -> Multiloop:

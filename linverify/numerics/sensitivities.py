@@ -10,17 +10,17 @@ from .mapped import mapped
 from .transfer import Transfer
 
 ILL_POSED = 1e-12  # of the norm: the smallest singular value of 1 + D below which the loop has no solution
-ON_AXIS = 1e-12  # of |pole|: nearer to the axis it counts as unstable
 
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Sensitivities:
-    """S = (1 + L)^-1, T = L S, difference = (S - T) / 2, and the poles that they have on or right of the axis."""
+    """S = (1 + L)^-1, T = L S, difference = (S - T) / 2; their poles right of the axis, and whether some may be on it."""
 
     S: Transfer
     T: Transfer
     difference: Transfer
     unstable: tuple[complex, ...]
+    edge: bool
 
 
 def sensitivities(loop: Transfer) -> Sensitivities | None:
@@ -31,7 +31,7 @@ def sensitivities(loop: Transfer) -> Sensitivities | None:
     eye = np.eye(len(loop.D), dtype=np.float64)
     T = replace(S, C=-S.C, D=np.asarray(eye - S.D, dtype=np.float64))
     difference = replace(S, D=np.asarray(S.D - 0.5 * eye, dtype=np.float64))
-    return Sensitivities(S, T, difference, unstable_poles(S))
+    return Sensitivities(S, T, difference, *unstable_poles(S))
 
 
 def sensitivity(loop: Transfer) -> Transfer | None:
@@ -45,16 +45,18 @@ def sensitivity(loop: Transfer) -> Transfer | None:
     return Transfer(loop.A - back, loop.B @ E, -E @ loop.C, E, step=loop.step, change=change)
 
 
-def unstable_poles(transfer: Transfer) -> tuple[complex, ...]:
-    """Poles on or right of the imaginary axis, on or outside of the unit circle, by falling real part.
+def unstable_poles(transfer: Transfer) -> tuple[tuple[complex, ...], bool]:
+    """Poles right of the imaginary axis (outside of the unit circle), by falling real part in the mapped plane.
 
-    Poles that are not moved by the inputs or not seen at the outputs do not count.
+    Besides, whether others lie on it to within rounding. Poles that are not moved by the inputs or not seen at the
+    outputs do not count.
     """
     system = mapped(transfer)
     if system.nyquist:
-        return (complex(-1.0),)
-    values = system.poles()
-    bad = values[values.real >= -ON_AXIS * np.abs(values)]
+        return (), True
+    values, on = system.edge()
+    right = values[(values.real > 0.0) & ~on]
+    right = right[np.lexsort((-right.imag, -right.real))]
     if transfer.step is not None:
-        bad = (1.0 + 0.5 * transfer.step * bad) / (1.0 - 0.5 * transfer.step * bad)
-    return tuple(complex(value) for value in sorted(bad, key=lambda value: (-value.real, -value.imag)))
+        right = (1.0 + 0.5 * transfer.step * right) / (1.0 - 0.5 * transfer.step * right)
+    return tuple(complex(value) for value in right), bool(on.any())

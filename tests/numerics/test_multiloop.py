@@ -231,6 +231,16 @@ def test_ill_posed_and_not_finite_are_outcomes() -> None:
     assert multiloop(replace(loop, D=np.full((2, 2), math.inf))).outcome is Outcome.NOT_FINITE
 
 
+def test_pole_on_the_axis_is_on_the_edge() -> None:
+    oscillator = Transfer(
+        np.array([[0.0, 1.0], [-1.0, 0.0]]), np.array([[0.0], [1.0]]), np.eye(2)[[0]], np.zeros((1, 1))
+    )
+    found = multiloop(oscillator)
+    assert (found.outcome, found.stable, found.disk.low) == (Outcome.ON_THE_EDGE, False, 0.0)
+    sampled = Transfer(np.array([[0.5]]), np.ones((1, 1)), np.array([[1.5]]), np.zeros((1, 1)), step=0.1)
+    assert multiloop(sampled).outcome is Outcome.ON_THE_EDGE  # closed at z = -1
+
+
 def test_what_does_not_fit_is_refused() -> None:
     loop = rotating(3.0)
     with pytest.raises(ValueError, match="as many outputs as inputs"):

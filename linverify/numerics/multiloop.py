@@ -29,7 +29,8 @@ class Multiloop:
     """Margins of all channels of a loop at once.
 
     stable: no pole of the closed loop on or right of the axis (of a sampled loop: on or outside of the unit circle);
-    unstable: those surely right of it (outside); the outcome says where others may lie on it to within rounding. Of an unstable loop the peaks are infinite and the disk margin is zero.
+    unstable: those surely right of it (outside); the outcome says where others may lie on it to within rounding.
+    Of an unstable loop the peaks are infinite and the disk margin is zero.
     sensitivity, complementary: largest singular value of S and T over frequency; disk: the disk margin of all channels
     with independent perturbations.
     """

@@ -14,7 +14,7 @@ ILL_POSED = 1e-12  # of the norm: the smallest singular value of 1 + D below whi
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Sensitivities:
-    """S = (1 + L)^-1, T = L S, difference = (S - T) / 2; their poles right of the axis, and whether some may be on it."""
+    """S = (1 + L)^-1, T = L S, difference = (S - T) / 2; poles right of the axis; whether some may be on it."""
 
     S: Transfer
     T: Transfer

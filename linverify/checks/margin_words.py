@@ -29,6 +29,8 @@ def unstable(one: LoopMargins, time_unit: str) -> str:
     told = _poles([in_s(value, one.loop.step) for value in known], time_unit)
     if len(known) < len(one.unstable):
         told.append(f"{len(one.unstable) - len(known)} more that were counted and not found")
+    if one.why:
+        told.append(one.why)
     poles = "; ".join(told)
     return f"{WRONG_WAY}; {poles}" if one.opposite else f"the closed loop is unstable: {poles}"
 

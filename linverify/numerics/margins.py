@@ -8,7 +8,7 @@ from __future__ import annotations
 
 import math
 from collections.abc import Sequence
-from dataclasses import dataclass, field
+from dataclasses import dataclass, field, replace
 
 import numpy as np
 
@@ -128,7 +128,7 @@ def _delayed(L: Curve) -> Margins:
     opened, free = of_matrix(L.A, None).values, closed(L)
     nodes = cross.walk(np.concatenate([opened, free.values]), cross.gain_candidates(L))
     met = _gain_crossings(L, nodes)
-    if len(free.undecided):
+    if len(free.undecided) and (len(free.unstable) or not surely_stable(replace(L, delay=0.0))):
         return Margins(Outcome.ON_THE_EDGE, "already without its dead time")
     unstable, on_edge = dead_time.count(L, met, free)
     further = dead_time.near_axis(L, opened, met, nodes) if unstable > 0 else np.zeros(0, complex)

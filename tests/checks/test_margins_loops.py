@@ -343,6 +343,10 @@ def test_poles_on_each_other_leave_stability_and_damping_decided() -> None:
     assert judged(one, loop(pid(1.0), *limits)).status is Status.PASS
     two = judged(linear_plant(A, B, C), loop(gain(np.eye(2)), *limits, **PAIR))
     assert two.status is Status.PASS, two.reason
+    late = judged(one, loop(pid(1.0), least("phase_margin", 1.0), delay=0.05))
+    at = math.sqrt(math.sqrt(5.0) - 2.0)
+    assert late.status is Status.PASS, late.reason
+    assert figure(late, PHASE).worst == pytest.approx(math.pi / 2.0 - math.atan(at / 2.0) - 0.05 * at, rel=1e-6)
     h = 0.5
     dead = judged(INTEGRATOR, loop(gain(1.0 / h, h), least("damping", 0.99), least("gain_margin", 1.9)))
     assert dead.status is Status.PASS, dead.reason

@@ -12,7 +12,8 @@ import numpy as np
 
 from linverify.numerics.margins import margins
 from linverify.numerics.transfer import Transfer
-from tests.margins.oracle import Loop, Truth, truth
+from tests.margins.oracle import Truth, truth
+from tests.margins.response import Loop
 
 FIGURES = ("gain_up", "phase", "delay", "sensitivity", "disk")
 DAMPINGS = {"damped": 0.4, "light": 1e-3}

@@ -24,7 +24,8 @@ from linverify.numerics.margins import Crossing, Found, Margins, margins
 from linverify.numerics.transfer import Transfer
 
 from .loops import Drawn, drawn
-from .oracle import Loop, Truth, truth
+from .oracle import Truth, truth
+from .response import Loop
 
 CLOSE = 1e-6  # of the figure
 FIGURES = ("gain_up", "gain_down", "phase", "delay", "disk", "sensitivity", "complementary")

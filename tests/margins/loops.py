@@ -13,7 +13,8 @@ from dataclasses import dataclass, replace
 import numpy as np
 import scipy.linalg
 
-from .oracle import Loop, closed_roots, crossings, delay_margin, grid, growth, landmarks, loudness
+from .oracle import crossings, delay_margin, growth, loudness
+from .response import Loop, closed_roots, grid, landmarks
 
 LONGEST = 500.0  # dead time times the fastest rate: more would take too many points to scan
 GAINS = np.geomspace(1e-3, 1e3, 13)

@@ -25,7 +25,7 @@ from linverify.core.case import Options
 from linverify.core.verdict import Status, Verdict
 from linverify.spec.bind import load
 
-from .oracle import about
+from .response import about
 from .wired import SHAPES, Wired, _with, closed, drawn, transfer
 
 CLOSE = 1e-6
@@ -141,6 +141,45 @@ def channels(wired: Wired) -> list[Response]:
     return [one(0), one(1)]
 
 
+def joint(wired: Wired, w: np.ndarray) -> dict[str, float]:
+    """Of two channels at once: the largest singular values, and the disk margins at the plant's input and output.
+
+    Two complex numbers on the diagonal: the smallest perturbation that reaches -1 is one over the least largest
+    singular value of diag(d, 1) M diag(1/d, 1) over d, exactly.
+    """
+    inputs, outputs = transfer(_with(wired, at_output=False)), transfer(_with(wired, at_output=True))
+    here = outputs if wired.at_output else inputs
+    eye = np.eye(2)
+
+    def largest(M: np.ndarray) -> np.ndarray:
+        return np.linalg.svd(M, compute_uv=False)[:, 0]
+
+    def structured(L: np.ndarray) -> np.ndarray:
+        S = np.linalg.inv(eye + L)
+        M = S - eye / 2.0  # (S - T) / 2
+        low, high = np.full(len(L), -12.0), np.full(len(L), 12.0)
+
+        def scaled(power: np.ndarray) -> np.ndarray:
+            moved = M.copy()
+            moved[:, 0, 1] *= np.exp(power)
+            moved[:, 1, 0] *= np.exp(-power)
+            return largest(moved)
+
+        for _ in range(48):
+            left, right = high - 0.618033988749895 * (high - low), low + 0.618033988749895 * (high - low)
+            down = scaled(left) > scaled(right)
+            low, high = np.where(down, left, low), np.where(down, high, right)
+        return scaled((low + high) / 2.0)
+
+    coarse = w[:: max(w.size // 1000, 1)]
+    return {
+        "sensitivity_peak": peak(w, lambda w: largest(np.linalg.inv(eye + here(w)))),
+        "complementary_peak": peak(w, lambda w: largest(eye - np.linalg.inv(eye + here(w)))),
+        "input": 1.0 / peak(coarse, lambda w: structured(inputs(w))),
+        "output": 1.0 / peak(coarse, lambda w: structured(outputs(w))),
+    }
+
+
 # -- judging ---------------------------------------------------------------------------------------------------------
 
 
@@ -185,7 +224,24 @@ def judged(seed: int) -> Result:
         exact = scanned(wired, L, w)
         figures += len(exact.figures)
         wrong += compared(told, exact)
+    if wired.shape == "square":
+        exact = joint(wired, w)
+        figures += len(exact)
+        wrong += at_once(found.details["margins"]["all_channels"], exact)
     return Result(wired, found.status, tuple(wrong), figures, tie)
+
+
+def at_once(told: dict[str, Any], exact: dict[str, float]) -> list[str]:
+    """As `compared`, of what is meant for all channels at once; disk margins come with what may be more."""
+    wrong = []
+    for name, value in exact.items():
+        given = (told if name.endswith("peak") else told["disk"])[name]
+        if not abs(given["value"] - value) <= 3.0 * CLOSE * value + given["error"]:
+            wrong.append(f"all channels: {name} {given['value']:.12g}, by algebra {value:.12g}")
+    disks = {side: told["disk"][side]["value"] for side in ("input", "output", "both")}
+    if disks["both"] > min(disks["input"], disks["output"]) * (1.0 + CLOSE):
+        wrong.append(f"all channels: disk margins {disks}")
+    return wrong
 
 
 def compared(told: dict[str, Any], exact: Scanned) -> list[str]:

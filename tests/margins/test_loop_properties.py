@@ -14,7 +14,8 @@ from hypothesis import assume, given, reject, settings
 from hypothesis import strategies as st
 from margins.bench import FIGURES, transfer
 from margins.loops import drawn
-from margins.oracle import Loop, TooFineError, encirclements, growth, refined_roots
+from margins.oracle import TooFineError, encirclements, growth, refined_roots
+from margins.response import Loop
 
 from linverify.core.outcome import Outcome
 from linverify.numerics.margins import Margins, guarantee, margins

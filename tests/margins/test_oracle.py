@@ -8,7 +8,8 @@ import numpy as np
 import pytest
 import scipy.signal
 from margins.loops import all_of, drawn
-from margins.oracle import Loop, encirclements, truth
+from margins.oracle import encirclements, truth
+from margins.response import Loop
 
 PI = np.array([12.7, 1.0]) * 1.136 / 12.7
 

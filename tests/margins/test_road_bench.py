@@ -8,7 +8,7 @@ from __future__ import annotations
 import pytest
 from margins.road_bench import Result, report, run
 
-SHORT, LONG = range(18), range(300)
+SHORT, LONG = range(12), range(300)
 
 
 def agreed(results: list[Result]) -> None:
@@ -17,10 +17,10 @@ def agreed(results: list[Result]) -> None:
     assert not [line for result in results if not result.near_tie for line in result.wrong], told
 
 
-def test_three_loops_of_every_shape() -> None:
+def test_two_loops_of_every_shape() -> None:
     results = run(SHORT)
     agreed(results)
-    assert sum(result.figures for result in results) > 60
+    assert sum(result.figures for result in results) > 50
 
 
 @pytest.mark.slow

@@ -7,7 +7,8 @@ import math
 import numpy as np
 import pytest
 from margins.bench import transfer
-from margins.oracle import Loop, truth
+from margins.oracle import truth
+from margins.response import Loop
 
 from linverify.core.verdict import Status
 from linverify.numerics.margins import margins

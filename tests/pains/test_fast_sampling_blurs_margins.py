@@ -9,7 +9,8 @@ import numpy as np
 import pytest
 import scipy.signal
 from margins.bench import transfer
-from margins.oracle import Loop, truth
+from margins.oracle import truth
+from margins.response import Loop
 from scipy.linalg import expm
 
 from linverify.core.verdict import Status

@@ -5,7 +5,8 @@ from __future__ import annotations
 import numpy as np
 import pytest
 from margins.bench import transfer
-from margins.oracle import Loop, truth
+from margins.oracle import truth
+from margins.response import Loop
 
 from linverify.core.model import LocalModel, OperatingPoint
 from linverify.core.signals import Signals

@@ -115,5 +115,34 @@ def test_the_plant_change_is_stopped_as_shown(pytester: pytest.Pytester) -> None
     assert_shown(result.stdout.str(), blocks("text")[4])
 
 
+@pytest.fixture
+def looped(rinse: pytest.Pytester) -> pytest.Pytester:
+    """The tank with the loop around it."""
+    (text,) = [block for block in blocks("yaml") if "Level loop of the rinse tank" in block]
+    (rinse.path / "rinse" / "loop.yaml").write_text(text, encoding="utf-8")
+    return rinse
+
+
+def test_the_loop_passes_as_shown(looped: pytest.Pytester) -> None:
+    result = looped.runpytest_subprocess("--linverify", "rinse/loop.yaml")
+    assert result.ret == 0
+    assert_shown(result.stdout.str(), blocks("text")[5])
+
+
+def test_a_later_measurement_fails_as_shown(looped: pytest.Pytester) -> None:
+    change(looped, "loop.yaml", "delay: 10 s", "delay: 60 s")
+    result = looped.runpytest_subprocess("--linverify", "rinse/loop.yaml", "-k", "margins")
+    assert result.ret == 1
+    assert_shown(result.stdout.str(), blocks("text")[6])
+
+
+def test_a_turned_sign_fails_as_shown(looped: pytest.Pytester) -> None:
+    change(looped, "loop.yaml", "kp: -2", "kp: 2")
+    change(looped, "loop.yaml", "ki: -0.4", "ki: 0.4")
+    result = looped.runpytest_subprocess("--linverify", "rinse/loop.yaml", "-k", "margins")
+    assert result.ret == 1
+    assert_shown(result.stdout.str(), blocks("text")[7])
+
+
 if __name__ == "__main__":
     README.write_text(with_table(README.read_text(encoding="utf-8")), encoding="utf-8")

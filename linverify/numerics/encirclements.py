@@ -13,7 +13,7 @@ import numpy as np
 from ..core.model import Array
 from .crossings import gain_candidates, walk
 from .curve import Curve
-from .loop_stability import of_matrix
+from .loop_stability import of_matrix, settled
 
 NEAR = 1e-7  # |1 + L| of 1 + |L|: nearer to -1 nothing is said
 TURN = 0.7  # rad from one point to the next; larger ones are looked into
@@ -37,7 +37,7 @@ def surely_stable(curve: Curve) -> bool:
         # L(s - shift), whose imaginary axis is that line
         shift = share * float(scales.min()) * np.eye(len(curve.A))
         moved = replace(curve, A=curve.A + shift, T=curve.T + shift)
-        poles = of_matrix(moved.A, None)
+        poles = settled(moved.A, None)
         if not len(poles.undecided) and right_of_axis(moved, walk(poles.values, candidates)) == 0:
             return True
     return False
@@ -47,7 +47,7 @@ def right_of_axis(curve: Curve, nodes: Array) -> int | None:
     """Number of closed-loop poles right of the axis, None where that cannot be told: poles of the loop on the axis, or
     a response that comes too near to -1. nodes: a walk over the loop's poles, ascending. For loops without dead time.
     """
-    opened = of_matrix(curve.A, None)
+    opened = settled(curve.A, None)
     if len(opened.undecided):
         return None
     points = np.concatenate([[0.0], nodes])

@@ -13,11 +13,10 @@ from ..core.model import Array
 from ..core.outcome import Outcome
 from .closing import Opened
 from .interconnect import IllPosedError, solved
-from .loop_stability import Poles, of_matrix
+from .loop_stability import Poles, in_discs, of_matrix
 from .margins import Found, Margins, margins
 from .multiloop import both_sides, multiloop
 from .peak_gain import Peak
-from .spectrum import roots
 from .structured import Bounded
 from .transfer import Transfer
 from .unmoved import Unmoved, split
@@ -203,19 +202,7 @@ def closed_poles(loop: Transfer, sign: float = 1.0) -> Poles | None:
     known = of_matrix(F, loop.step)
     if (known.error <= CLEAR * np.abs(known.values)).all():
         return known
-    return _in_discs(F, loop.step)
-
-
-def _in_discs(F: Array, step: float | None) -> Poles:
-    """The same where poles lie on each other or nearly so: a bound by the slope says nothing, discs do."""
-    found = [(each.value, each.radius) for each in roots(F, np.zeros_like(F))]
-    found += [(value.conjugate(), radius) for value, radius in found if value.imag > 0.0]
-    values, error = np.array([value for value, _ in found]), np.array([radius for _, radius in found])
-    if step is None:
-        return Poles(values, -values.real, error)
-    # 1 - |1 + F|, from F itself: near z = 1 the difference would have lost the digits
-    size = np.abs(1.0 + values)
-    return Poles(1.0 + values, -(2.0 * values.real + np.abs(values) ** 2) / (1.0 + size), error)
+    return in_discs(F, loop.step)
 
 
 def closed_matrix(loop: Transfer, sign: float = 1.0) -> Array:

@@ -12,8 +12,8 @@ from linverify.core.model import Array
 from linverify.core.outcome import Outcome
 from linverify.numerics.crossings import gain_candidates, walk
 from linverify.numerics.curve import curve
-from linverify.numerics.encirclements import right_of_axis
-from linverify.numerics.loop_stability import closed, of_matrix
+from linverify.numerics.encirclements import right_of_axis, surely_stable
+from linverify.numerics.loop_stability import of_matrix
 from linverify.numerics.margins import guarantee, margins
 from linverify.numerics.transfer import Transfer
 
@@ -111,7 +111,8 @@ def placed(poles: Array, wanted: float) -> Transfer:
 def test_stable_although_its_eigenvalues_cannot_tell(poles: Array) -> None:
     # all closed-loop poles at -1, where rounding spreads them so far that no eigenvalue bound decides
     loop = placed(poles, -1.0)
-    assert len(closed(curve(loop)).undecided) > 0
+    assert len(of_matrix(loop.A - loop.B @ loop.C, None).undecided) > 0
+    assert surely_stable(curve(loop))
     assert margins(loop).stable
     # and at +0.01, or on the axis, where nothing may be called stable
     for wanted in (0.01, 0.0):
@@ -219,3 +220,19 @@ def test_several_channels_are_refused() -> None:
         margins(Transfer(-np.eye(2), np.eye(2), np.eye(2), np.zeros((2, 2))))
     with pytest.raises(ValueError, match="not finite"):
         margins(Transfer(np.array([[math.nan]]), np.ones((1, 1)), np.ones((1, 1)), np.zeros((1, 1))))
+
+
+def test_critical_damping_behind_two_integrators() -> None:
+    # (2 s + 1) / s^2 closes to s^2 / (s + 1)^2: both poles at -1, phase 180 deg - atan 2 w where w^2 = 2 + sqrt(5)
+    found = margins(ratio([2, 1], [1, 0, 0]))
+    assert found.outcome is Outcome.DONE
+    assert found.stable
+    assert found.phase.value == pytest.approx(math.atan(2 * math.sqrt(2 + math.sqrt(5))), rel=1e-12)
+    assert found.sensitivity.value == pytest.approx(1.0, rel=1e-7)
+
+
+def test_poles_that_repeat_on_the_axis_are_not_stable() -> None:
+    # 2 (s^2 + 1/2) / (s^4 + ...): closes to (s^2 + 1)^2
+    found = margins(ratio([1, 0, 0.5], [1, 0, 1, 0, 0.5]))
+    assert not found.stable
+    assert found.outcome is Outcome.ON_THE_EDGE

@@ -13,7 +13,7 @@ from dataclasses import replace
 
 import numpy as np
 
-from ..core.model import LocalModel, frozen_array
+from ..core.model import Array, LocalModel, frozen_array
 from ..numerics.closing import Opened, RefusedError, Setup, opened
 from ..numerics.loop_margins import LoopMargins, measured
 from ..numerics.margins import Found, Margins
@@ -52,12 +52,15 @@ def _models(model: LocalModel) -> Iterator[LocalModel]:
         return
     generator = np.random.default_rng(20_026)
     for _ in range(TRIED):
-        blocks = {}
-        for name, errors in model.errors.items():
-            block = getattr(model, name)
-            change = generator.choice([-1.0, 1.0], size=block.shape) * np.where(np.isfinite(errors), errors, 0.0)
-            blocks[name] = frozen_array(np.where(block != 0.0, block + change, 0.0))
-        yield replace(model, **blocks)
+        A, B, C, D = (_moved(model, name, generator) for name in "ABCD")
+        yield replace(model, A=A, B=B, C=C, D=D)
+
+
+def _moved(model: LocalModel, name: str, generator: np.random.Generator) -> Array:
+    block: Array = getattr(model, name)
+    errors = model.errors.get(name, np.zeros_like(block))
+    change = generator.choice([-1.0, 1.0], size=block.shape) * np.where(np.isfinite(errors), errors, 0.0)
+    return frozen_array(np.where(block != 0.0, block + change, 0.0))
 
 
 def _carried(one: LoopMargins, other: LoopMargins) -> LoopMargins:

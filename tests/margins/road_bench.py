@@ -26,7 +26,8 @@ from linverify.core.verdict import Status, Verdict
 from linverify.spec.bind import load
 
 from .response import about
-from .wired import SHAPES, Wired, _with, closed, drawn, transfer
+from .steps import Step, stepped
+from .wired import SHAPES, Wired, changed, closed, drawn, transfer
 
 CLOSE = 1e-6
 Response = Callable[[np.ndarray], np.ndarray]
@@ -147,7 +148,7 @@ def joint(wired: Wired, w: np.ndarray) -> dict[str, float]:
     Two complex numbers on the diagonal: the smallest perturbation that reaches -1 is one over the least largest
     singular value of diag(d, 1) M diag(1/d, 1) over d, exactly.
     """
-    inputs, outputs = transfer(_with(wired, at_output=False)), transfer(_with(wired, at_output=True))
+    inputs, outputs = transfer(changed(wired, at_output=False)), transfer(changed(wired, at_output=True))
     here = outputs if wired.at_output else inputs
     eye = np.eye(2)
 
@@ -192,7 +193,7 @@ def late(wired: Wired) -> Wired:
     share = 0.1 + 0.08 * (wired.seed % 10)
     if wired.shape == "square" or not 1e-6 < bears < 1e3:
         return wired
-    return _with(wired, delay=float(share * bears), tags=(*wired.tags, "dead time"))
+    return changed(wired, delay=float(share * bears), tags=(*wired.tags, "dead time"))
 
 
 def verdict(wired: Wired) -> Verdict:
@@ -209,6 +210,8 @@ def verdict(wired: Wired) -> Verdict:
 def judged(seed: int) -> Result:
     """The gate and brute force on one case."""
     wired = late(drawn(seed))
+    if wired.stable and not wired.delay and seed % 4 > 1:
+        wired = changed(wired, steps=True, tags=(*wired.tags, "steps"))
     found = verdict(wired)
     growth = closed(wired).max()
     tie = abs(growth) < 1e-9
@@ -224,11 +227,28 @@ def judged(seed: int) -> Result:
         exact = scanned(wired, L, w)
         figures += len(exact.figures)
         wrong += compared(told, exact)
+    if wired.steps and (steps := stepped(wired)) is not None:
+        figures += 3 * len(steps)
+        for told, step in zip(found.details["margins"]["steps"], steps, strict=True):
+            wrong += as_seen(told, step, wired.sample or 0.0)
     if wired.shape == "square":
         exact = joint(wired, w)
         figures += len(exact)
         wrong += at_once(found.details["margins"]["all_channels"], exact)
     return Result(wired, found.status, tuple(wrong), figures, tie)
+
+
+def as_seen(told: dict[str, Any], step: Step, sample: float) -> list[str]:
+    """Step figures against what was seen at many times: straight lines between them are good for 1e-3."""
+    given = {name: told[name]["value"] for name in ("overshoot", "settling")} | {"final": told["final"]}
+    off = {
+        "final": abs(given["final"] - step.final) > CLOSE * abs(step.final),
+        "overshoot": abs(given["overshoot"] - 100.0 * step.overshoot)
+        > 0.05 + (0.02 if sample else 2e-3) * given["overshoot"],
+        "settling": not step.tie
+        and abs(given["settling"] - step.settling) > 2e-3 * step.settling + 0.2 * sample + 1e-6,
+    }
+    return [f"{told['channel']}: {name} {given[name]:.8g}, as seen {step}" for name, bad in off.items() if bad]
 
 
 def at_once(told: dict[str, Any], exact: dict[str, float]) -> list[str]:

@@ -65,6 +65,7 @@ class Wired:
     sample: float | None = None
     at_output: bool = False
     stable: bool = True
+    steps: bool = False
     tags: tuple[str, ...] = field(default=())
 
     @property
@@ -98,6 +99,8 @@ class Wired:
             lines.append(f"    sample: {self.sample!r} s")
         if self.at_output:
             lines.append("    break: plant_output")
+        if self.steps:
+            lines.append("    require: {settling: 1e9 s}")
         return "\n".join(lines) + "\n"
 
     def flow(self) -> tuple[np.ndarray, np.ndarray, np.ndarray]:
@@ -169,9 +172,9 @@ def _sampled(wired: Wired) -> Callable[[np.ndarray], np.ndarray]:
     h = float(wired.sample or 1.0)
     whole = int(wired.delay / h + 1e-12)
     rest = max(wired.delay - whole * h, 0.0)
-    Ad = _held(A, B, h)[0]
-    carried, now = _held(A, B, h - rest)
-    late = carried @ _held(A, B, rest)[1]
+    Ad = held(A, B, h)[0]
+    carried, now = held(A, B, h - rest)
+    late = carried @ held(A, B, rest)[1]
 
     def L(w: np.ndarray) -> np.ndarray:
         z = np.exp(1j * w * h)
@@ -182,7 +185,8 @@ def _sampled(wired: Wired) -> Callable[[np.ndarray], np.ndarray]:
     return L
 
 
-def _held(A: np.ndarray, B: np.ndarray, time: float) -> tuple[np.ndarray, np.ndarray]:
+def held(A: np.ndarray, B: np.ndarray, time: float) -> tuple[np.ndarray, np.ndarray]:
+    """exp(A time) and what inputs that are held for that time add."""
     n, m = B.shape
     both = expm(np.block([[A, B], [np.zeros((m, n + m))]]) * time)
     return both[:n, :n], both[:n, n:]
@@ -193,7 +197,7 @@ def closed(wired: Wired) -> np.ndarray:
     A, B, C = wired.flow()
     K = wired.outer
     if wired.sample:
-        A, B = _held(A, B, wired.sample)
+        A, B = held(A, B, wired.sample)
     whole = np.block([[A - B @ K.D @ C, B @ K.C], [-K.B @ C, K.A]])
     values = np.linalg.eigvals(whole)
     return np.log(np.maximum(np.abs(values), 1e-300)) if wired.sample else values.real
@@ -220,15 +224,15 @@ def drawn(seed: int) -> Wired:
     width = 2 if shape == "square" else 1
     wired = Wired(seed, shape, A, B, C, lags, inner, _controller(rng, width, sample), sample=sample)
     if shape == "square" and rng.random() < 0.5:
-        wired = _with(wired, at_output=True)
+        wired = changed(wired, at_output=True)
         tags.append("at output")
     wired = _fitting(wired, rng)
     stable = bool(closed(wired).max() < 0.0)
     if sample and rng.random() < 0.5:
         tags.append("dead time")
-        wired = _with(wired, delay=float(rng.uniform(0.1, 2.5)) * sample)
+        wired = changed(wired, delay=float(rng.uniform(0.1, 2.5)) * sample)
         stable = _late_is_stable(wired)
-    return _with(wired, stable=stable, tags=tuple(tags))
+    return changed(wired, stable=stable, tags=tuple(tags))
 
 
 def _late_is_stable(wired: Wired) -> bool:
@@ -237,13 +241,13 @@ def _late_is_stable(wired: Wired) -> bool:
     h, K = float(wired.sample or 1.0), wired.outer
     whole = int(wired.delay / h + 1e-12)
     rest = max(wired.delay - whole * h, 0.0)
-    carried, now = _held(A, B, h - rest)
-    late = carried @ _held(A, B, rest)[1]
+    carried, now = held(A, B, h - rest)
+    late = carried @ held(A, B, rest)[1]
     n, k, past = len(A), len(K.A), whole + 1
     M = np.zeros((n + k + past, n + k + past))
     unit = np.eye(n + k + past)
     command = np.concatenate([-(K.D @ C)[0], K.C[0] if k else np.zeros(0), np.zeros(past)])
-    M[:n, :n] = _held(A, B, h)[0]
+    M[:n, :n] = held(A, B, h)[0]
     M[:n] += np.outer(now[:, 0], command if whole == 0 else unit[n + k + whole - 1])
     M[:n] += np.outer(late[:, 0], unit[n + k + whole])
     M[n : n + k, :n], M[n : n + k, n : n + k] = -K.B @ C, K.A
@@ -252,7 +256,7 @@ def _late_is_stable(wired: Wired) -> bool:
     return bool(np.abs(np.linalg.eigvals(M)).max() < 1.0)
 
 
-def _with(wired: Wired, **changes: object) -> Wired:
+def changed(wired: Wired, **changes: object) -> Wired:
     return Wired(**{**{name: getattr(wired, name) for name in Wired.__dataclass_fields__}, **changes})  # type: ignore[arg-type]
 
 
@@ -317,7 +321,7 @@ def _matrix(rng: np.random.Generator) -> Controller:
 
 def _fitting(wired: Wired, rng: np.random.Generator) -> Wired:
     gains = [float(sign * 10.0**power) for power in rng.permutation(np.linspace(-1.5, 1.5, 13)) for sign in (1.0, -1.0)]
-    made = [_with(wired, outer=_written(wired.outer.times(gain), gain)) for gain in gains]
+    made = [changed(wired, outer=_written(wired.outer.times(gain), gain)) for gain in gains]
     if rng.random() < 0.25:
         return made[0]
     return next((each for each in made if closed(each).max() < 0.0), made[0])

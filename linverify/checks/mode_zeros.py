@@ -26,14 +26,21 @@ from .mode_limits import WORDED, figure, own_unit, sentence
 REACHES = 1e-6  # measure of control and of sight from which a pole at the origin makes a static gain infinite
 
 
-def judge_zeros(model: LocalModel, ask: ModeAsk, into: Findings) -> None:
-    """`minimum_phase` and limits on the zeros of a line."""
+def judge_zeros(modes: Modes, ask: ModeAsk, into: Findings) -> None:
+    """`minimum_phase` and limits on the zeros of a line.
+
+    States that do not lie between its inputs and its outputs have no part in what one does to the other: their modes
+    are no zeros.
+    """
     if not ask.minimum_phase and not ask.zeros:
         return
+    model = modes.model
     inputs, outputs = ask.inputs or model.inputs.names, ask.outputs or model.outputs.names
     path = f"from {', '.join(inputs)} to {', '.join(outputs)}"
     try:
-        found = zeros_of(channels(model, inputs, outputs))
+        whole = channels(model, inputs, outputs)
+        between = _between(modes, whole)
+        found = zeros_of(replace(_cut(whole, between), errors=_cut_errors(whole, between)))
     except ValueError:
         known = {*model.inputs.names, *model.outputs.names, *model.states.names}
         lacks = [name for name in (*inputs, *outputs) if name not in known]
@@ -161,8 +168,8 @@ def _gain(found: Modes, model: LocalModel) -> _Gain:
 
 
 def _between(found: Modes, model: LocalModel) -> Any:
-    """Places of the states on a path from the input to the output, by the pattern of zeros alone."""
-    starts, ends = (model.B[:, 0] != 0.0), (model.C[0] != 0.0)
+    """Places of the states on a path from an input to an output, by the pattern of zeros alone."""
+    starts, ends = (model.B != 0.0).any(axis=1), (model.C != 0.0).any(axis=0)
     return np.flatnonzero(leads(found.acts, starts, ends))
 
 

@@ -76,7 +76,7 @@ def _line(found: Modes, ask: ModeAsk, fastest: float, into: Findings) -> None:
 
     fastest: natural frequency up to which modes are exact.
     """
-    judge_zeros(found.model, ask, into)
+    judge_zeros(found, ask, into)
     judge_gains(found, ask, into)
     if not (ask.limits or ask.stable or ask.controllable or ask.observable) and ask.chosen.everything:
         return

@@ -322,6 +322,21 @@ def test_minimum_phase(zero: float, expected: Status) -> None:
         assert "the zero 0.5 from u0 to y0 lies right of the axis" in found.reason
 
 
+@pytest.mark.parametrize(
+    "A",
+    [
+        [[-1.0, 0.0], [0.0, 0.5]],  # a mode beside the channel
+        [[-1.0, 0.0], [1.0, 0.5]],  # one that is moved and not seen
+        [[-1.0, 1.0], [0.0, 0.5]],  # one that is seen and not moved
+    ],
+)
+def test_modes_beside_a_channel_are_no_zeros_of_it(A: list[list[float]]) -> None:
+    only = line(minimum_phase=True, inputs=("u0",), outputs=("y0",))
+    found = verdict(A, only, B=np.eye(2), C=np.eye(2))
+    assert found.status is Status.PASS, found.reason
+    assert found.details["zeros"][0]["zeros"] == []
+
+
 def test_a_washout_is_minimum_phase() -> None:
     A, B, C = numerator(0.0)
     assert verdict(A, line(minimum_phase=True), B=B, C=C).status is Status.PASS

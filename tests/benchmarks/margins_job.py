@@ -82,6 +82,15 @@ def theirs(name: str) -> Answer:
     return Answer(float(gain), lag, lag / float(crossover), 1.0 / float(nearest), disk)
 
 
+def polynomials(name: str) -> Answer:
+    """python-control by the roots of polynomials, its way for this loop: neither stability nor a disk margin."""
+    import control
+
+    gain, phase, nearest, _, crossover, _ = control.stability_margins(system(name))
+    lag = math.radians(phase)
+    return Answer(float(gain), lag, lag / float(crossover), 1.0 / float(nearest), math.nan)
+
+
 def errors(name: str, answer: Answer) -> dict[str, float]:
     """Relative, by figure."""
     known = exact(name)

@@ -72,8 +72,8 @@ def frequencies(wired: Wired) -> np.ndarray:
     parts = [np.geomspace(low, top, 8000), *(about(complex(root)) for root in roots)]
     if wired.sample:
         parts.append(np.linspace(low, top, 4000))
-    elif wired.delay:
-        parts.append(np.arange(low, 200.0 / wired.delay, 0.05 / wired.delay))
+    elif late := wired.delay + sum(wired.outside):
+        parts.append(np.arange(low, 200.0 / late, 0.05 / late))
     w = np.unique(np.concatenate(parts))
     w = w[(w > 0.0) & (w <= top)]
     return w[np.diff(w, prepend=0.0) > 1e-10 * w]
@@ -184,7 +184,7 @@ def joint(wired: Wired, w: np.ndarray) -> dict[str, float]:
 # -- judging ---------------------------------------------------------------------------------------------------------
 
 
-def late(wired: Wired) -> Wired:
+def delayed(wired: Wired) -> Wired:
     """Every other continuous loop with a dead time of part of what it bears."""
     if wired.sample or not wired.stable or wired.seed % 4 > 1:
         return wired
@@ -193,7 +193,11 @@ def late(wired: Wired) -> Wired:
     share = 0.1 + 0.08 * (wired.seed % 10)
     if wired.shape == "square" or not 1e-6 < bears < 1e3:
         return wired
-    return changed(wired, delay=float(share * bears), tags=(*wired.tags, "dead time"))
+    whole = float(share * bears)
+    if wired.shape == "single" and wired.seed % 8 < 4:  # part of it outside the loop's own words
+        parts = (0.3 * whole, 0.5 * whole)
+        return changed(wired, delay=0.2 * whole, outside=parts, tags=(*wired.tags, "dead time of the plant"))
+    return changed(wired, delay=whole, tags=(*wired.tags, "dead time"))
 
 
 def verdict(wired: Wired) -> Verdict:
@@ -209,7 +213,7 @@ def verdict(wired: Wired) -> Verdict:
 
 def judged(seed: int) -> Result:
     """The gate and brute force on one case."""
-    wired = late(drawn(seed))
+    wired = delayed(drawn(seed))
     if wired.stable and not wired.delay and seed % 4 > 1:
         wired = changed(wired, steps=True, tags=(*wired.tags, "steps"))
     found = verdict(wired)

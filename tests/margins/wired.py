@@ -51,7 +51,8 @@ class Controller:
 
 @dataclass(frozen=True)
 class Wired:
-    """A spec in parts. asked: the loop whose margins are meant; lags: of the inputs; delay, sample: of that loop."""
+    """A spec in parts. lags: of the inputs; inner, outer: controllers; delay, sample: of the outer loop; outside: dead
+    times of the plant's input and output; steps: whether figures of a step are asked for."""
 
     seed: int
     shape: str
@@ -62,6 +63,7 @@ class Wired:
     inner: Controller | None
     outer: Controller
     delay: float = 0.0
+    outside: tuple[float, float] = (0.0, 0.0)
     sample: float | None = None
     at_output: bool = False
     stable: bool = True
@@ -82,6 +84,10 @@ class Wired:
         named = {f"u{i}": lag for i, lag in enumerate(self.lags) if lag}
         if named:
             lines.append(f"actuators: {{{', '.join(f'{name}: {{lag: {lag!r} s}}' for name, lag in named.items())}}}")
+        if any(self.outside):
+            read = "y1" if "cascade" in self.shape else "y0"
+            late = f"inputs: {{u0: {self.outside[0]!r} s}}, outputs: {{{read}: {self.outside[1]!r} s}}"
+            lines.append(f"delays: {{{late}}}")
         lines.append("loops:")
         if self.inner is not None:
             lines += _loop("inner", self.inner.text, "[y0]", "[u0]")
@@ -152,7 +158,7 @@ def _continuous(wired: Wired) -> Callable[[np.ndarray], np.ndarray]:
         s = 1j * w
         P = wired.C @ np.linalg.solve(s[:, None, None] * np.eye(len(wired.A)) - wired.A, wired.B[None] + 0j)
         P = P / np.stack([1.0 + lag * s for lag in wired.lags], axis=-1)[:, None, :]
-        K = wired.outer.at(s) * np.exp(-s * wired.delay)[:, None, None]
+        K = wired.outer.at(s) * np.exp(-s * (wired.delay + sum(wired.outside)))[:, None, None]
         if wired.inner is not None:
             k = wired.inner.at(s)[:, 0, 0]
             closed = k / (1.0 + k * P[:, 0, 0])  # from the inner set point to the command of u0

@@ -46,6 +46,14 @@ def test_what_a_thousand_points_do_not_show(record_property: pytest.RecordProper
     assert disk == pytest.approx(2.0, abs=1e-3)
 
 
+def test_python_control_on_a_grid_by_its_own_word_raises() -> None:
+    """0.10.2, method "frd" of a transfer function: the grid that it makes does not hold what it then asks for."""
+    import control
+
+    with pytest.raises(ValueError, match="not all frequencies"):
+        control.stability_margins(control.tf([1.0], [1.0, 1.0, 0.0]), method="frd")
+
+
 def test_a_gate_on_the_disk_margin_fails(judged) -> None:
     plant = f"""
     plant = Plant(

@@ -75,6 +75,26 @@ def test_an_unstable_plant_has_a_lower_gain_margin_too() -> None:
     assert "opposite sign" in backwards.reason
 
 
+@pytest.mark.parametrize(
+    ("loop", "status", "source"),
+    [
+        ("common", Status.FAIL, "common practice"),
+        ("flying_slow_modes", Status.PASS, "MIL-F-9490D"),  # 4.5 dB and 30 deg
+        ("flying_rigid_modes", Status.FAIL, "MIL-F-9490D"),  # 6 dB and 45 deg
+    ],
+)
+def test_ready_made_limits_name_their_source(loop: str, status: Status, source: str) -> None:
+    """The table of MIL-F-9490D is from memory, and 6 dB with 45 deg common practice: the verdict has to say so."""
+    found = judged("loops_cube", loop)
+    assert found.status is status
+    assert any(source in note for note in found.notes), found.notes
+    if "flying" in loop:
+        assert any("from memory" in note and "check against" in note for note in found.notes)
+    if status is Status.FAIL:
+        assert "phase margin is 41.69 deg" in found.reason
+        assert "gain margin" not in found.reason
+
+
 def test_every_crossing_of_a_loop_with_three() -> None:
     """Printed: 97.5941, -157.7844, 134.7359 deg at 0.0850, 0.9373, 1.0919 rad/s (the last misprinted in the third digit
     behind the point: derived 134.73257)."""

@@ -16,6 +16,7 @@ from typing import Any, Literal
 
 import numpy as np
 
+from ..core.case import Interval
 from ..core.drive import Drive
 from ..core.loop import Loop
 from ..core.model import Array, LocalModel
@@ -23,10 +24,10 @@ from ..core.shown import number
 from ..core.verdict import Evidence, Figure, Sense, Status, merged
 from ..drives import pinned
 from ..numerics.independent import run_independent
-from ..numerics.kicked import Kicked, Trial
+from ..numerics.kicked import Kicked, Trial, swing
 from ..numerics.loop_margins import LoopMargins
 from ..numerics.pace import clock, pace
-from ..numerics.rig import Fidelity, Rig
+from ..numerics.rig import Exit, Fidelity, Rig
 from ..numerics.simulate import run_alone
 from .closed import ClosedStudy, Closing, nested
 from .evidence import FOLDER, plain_runs
@@ -35,11 +36,13 @@ from .study import Study
 SHORT, BEYOND = 0.9, 1.1  # of a margin
 KICK = 1e-3  # of nominal sizes
 TENFOLD = math.log(10.0)
-LONG = 4.0  # times as long a motion that grows is followed, to see what becomes of it
-WINDOWS, FEWEST = 200, 8  # of one period each
+LONG = 3.0  # times as long a motion that grows is followed, to see what becomes of it
+SECOND = Fidelity(4, 1e-2)  # it is run a hundred times as accurately as this asks for
+WINDOWS, FEWEST = 400, 5  # of half a period each
+FAR = 30.0  # nominal sizes of a state from trim, where a trial ends at the latest
 GROUPS = 8  # parts of a window
 WEIGHT = 0.5  # of the kick: error of a state that is acceptable; a thousandth of it is allowed in one step
-COARSER = 30.0  # where what became of a growing motion is only told
+LARGER, COARSER = 30.0, 300.0  # kick and weights where what becomes of a growing motion is only told
 GUARD = 0.1  # of the predicted growth: nearer to none says nothing
 Way = Literal["rest", "grow"]
 
@@ -149,7 +152,7 @@ def _try(study: Study, loop: Loop, change: _Change, found: _Found) -> None:
         return
     trial, predicted = _trial(closed, model, mode)
     if predicted < 2.0 * GUARD:
-        text = f"{subject} the motion changes too slowly to be told within {WINDOWS} periods"
+        text = f"{subject} the motion changes too slowly to be told within {WINDOWS // 2} periods"
         found.reasons.append((Status.UNDECIDED, text))
         return
     status, first, error = _judged(trial, change.way, predicted)
@@ -180,13 +183,15 @@ def _mode(model: LocalModel, change: _Change) -> complex | None:
 
 def _trial(closed: ClosedStudy, model: LocalModel, mode: complex) -> tuple[Trial, float]:
     """The kick along `mode`, and by how much its logarithm changes in the local model."""
-    window, rate = (2.0 * math.pi / abs(mode.imag), abs(mode.real)) if mode.imag else (0.0, abs(mode.real))
+    rate = abs(mode.real)
     wanted = TENFOLD / rate
-    window = min(window, wanted / FEWEST) if window else wanted / FEWEST
+    # half a period holds a peak of every signal
+    window = min(math.pi / abs(mode.imag), wanted) if mode.imag else wanted / FEWEST
     every, group = _grid(window, clock(model))
     count = min(WINDOWS, max(FEWEST, math.ceil(wanted / (every * group)) + 1))
     kick, weights = _kick(closed, model, mode)
-    drive = Drive(every, (), np.zeros((count * group, 0)), "held", kick, "a kick along the mode")
+    still = np.zeros((count * group, 1))  # a drive that is read back needs an input
+    drive = Drive(every, closed.moved[:1], still, "held", kick, "a kick along the mode")
     rig = _rig(closed, model, weights)
     plant = closed.bare.case.plant
     rows = tuple(row for row, name in enumerate(rig.signals) if name in plant.states or name in (plant.outputs or {}))
@@ -204,7 +209,9 @@ def _grid(window: float, clock: float | None) -> tuple[float, int]:
 
 def _kick(closed: ClosedStudy, model: LocalModel, mode: complex) -> tuple[dict[str, float], Array]:
     """Offsets of states along the mode, KICK of a nominal size where they are largest, and weights for all states."""
-    guide = closed.about() or model
+    about = closed.about()
+    whole = not model.anonymous and all(name in model.states for name in closed.bare.case.plant.states)
+    guide = model if whole or about is None else about
     poles, vectors = pace(guide)
     column = vectors[:, int(np.argmin(np.abs(np.where(np.isfinite(poles), poles, 1e300) - mode)))]
     names, plant = guide.states.names, closed.point().states.names
@@ -216,11 +223,17 @@ def _kick(closed: ClosedStudy, model: LocalModel, mode: complex) -> tuple[dict[s
     column = column * (KICK / scaled[largest]) * np.exp(-1j * np.angle(column[largest]))
     reach = dict(zip(names, np.abs(column), strict=True))
     rest = float(np.abs(column).max()) * 1e-3
+    together: dict[str, float] = {}  # states of one chain or controller: what is small among them matters as little
+    for name, size in reach.items():
+        group = name.rpartition(".")[0]
+        together[group] = max(together.get(group, 0.0), float(size))
     weights = []
     for name in plant:
         own = closed.case.nominal.get(name, math.inf)
-        least = KICK * own if math.isfinite(own) else rest
-        weights.append(WEIGHT * max(reach.get(name, 0.0), 0.1 * least))
+        size = (
+            max(reach.get(name, 0.0), 0.1 * KICK * own) if math.isfinite(own) else together.get(name.rpartition(".")[0])
+        )
+        weights.append(WEIGHT * (size or rest))
     kick = {name: float(value) for name, value in zip(names, column.real, strict=True) if name in plant and value.real}
     return kick, np.array(weights)
 
@@ -232,8 +245,13 @@ def _rig(closed: ClosedStudy, model: LocalModel, weights: Array) -> Rig:
     has = {*model.states.names, *model.outputs.names}
     signals = tuple(name for name in dict.fromkeys(wanted) if name in has)
     watched = {name: room for name, room in case.envelope.items() if name in bound.states or name in bound.outputs}
+    point = closed.point()
+    for name in closed.bare.case.plant.states:  # where nothing else ends it, a motion that grows ends here
+        room = FAR * case.nominal.get(name, 1.0)
+        far = Interval(point.value(name) - room, point.value(name) + room)
+        watched[name] = watched.get(name, Interval()).meet(far)
     return Rig(
-        bound, closed.point(), model, signals, watched, weights, about=closed.about(), delays=case.delays,
+        bound, point, model, signals, watched, weights, about=closed.about(), delays=case.delays,
         updates=closed.updates,
     )  # fmt: skip
 
@@ -245,7 +263,7 @@ def _judged(trial: Trial, way: Way, predicted: float) -> tuple[Status, Kicked, f
     if not math.isfinite(error):
         error = 0.0 if _gone(fine) and _gone(coarse) else math.inf
     word = _word(fine, way, predicted, error)
-    if word is Status.FAIL and _word(trial.run(run_independent, Fidelity()), way, predicted, error) is not Status.FAIL:
+    if word is Status.FAIL and _word(trial.run(run_independent, SECOND), way, predicted, error) is not Status.FAIL:
         word = Status.UNDECIDED
     return word, fine, error
 
@@ -281,9 +299,10 @@ def _tell(
     unit, length = study.case.plant.time_unit, seen.window * max(1, len(seen.sizes) - 1)
     shown = seen
     if status is Status.PASS and change.way == "grow" and not _gone(seen):
-        longer = np.zeros((round(LONG * trial.drive.intervals / trial.group) * trial.group, 0))
-        rig = replace(trial.rig, weights=COARSER * trial.rig.weights)
-        shown = replace(trial, rig=rig, drive=replace(trial.drive, values=longer)).run(run_alone, Fidelity())
+        longer = np.zeros((round(LONG * trial.drive.intervals / trial.group) * trial.group, 1))
+        rig, drive = replace(trial.rig, weights=COARSER * trial.rig.weights), replace(trial.drive, values=longer)
+        trial = replace(trial, rig=rig, drive=drive.scaled(LARGER))
+        shown = trial.run(run_alone, Fidelity())
     what = _became(closed, shown, unit)
     subject = f"with {change.what}" + (f" of {change.signal}" if change.signal else "")
     found.figures.append(
@@ -296,7 +315,7 @@ def _tell(
     found.details.append({
         "change": change.what, "signal": change.signal, "must": change.way, "status": str(status), "became": what,
         "growth": float(f"{seen.growth / length:.6g}") if math.isfinite(seen.growth) else None,
-        "unit": f"1/{unit}", "periods": len(seen.sizes),
+        "unit": f"1/{unit}", "windows": len(seen.sizes), "window": float(f"{seen.window:.6g}"), "unit_of_time": unit,
     })  # fmt: skip
     if status is Status.PASS:
         if change.way == "grow" and shown.sustained:
@@ -313,20 +332,26 @@ def _became(closed: ClosedStudy, seen: Kicked, unit: str) -> str:
     """What became of the kick, in words."""
     limits = _limited(closed, seen)
     if seen.left is not None:
-        text = f"leaves the envelope through {seen.left.signal} at {number(seen.left.time, 4)} {unit}"
+        text = _left(closed, seen.left, unit)
     elif not seen.outcome.done:
         text = f"cannot be followed: {seen.outcome.value}" + (f": {seen.text}" if seen.text else "")
     elif seen.sustained:
         signal = closed.closing.loops[0].measures[0]
-        swing = ""
+        text = "goes on in a limit cycle"
         if signal in seen.runs.signals:
-            last = seen.runs.plant[seen.runs.signals.index(signal), -GROUPS:, :, 0]
-            size = closed.bare.case.shown_as(signal).told_size(float(np.nanmax(np.abs(last))))
-            swing = f" of {signal} by {size}"
-        text = f"goes on in a limit cycle{swing} every {number(seen.window, 4)} {unit}"
+            size, period = swing(seen, seen.runs.signals.index(signal))
+            text += f" of {signal} by {closed.bare.case.shown_as(signal).told_size(size)}"
+            text += f" every {number(period, 3)} {unit}" if math.isfinite(period) else ""
     else:
         text = "comes to rest" if seen.growth < 0.0 else "grows"
     return text + (f", with {' and '.join(limits)} at the limit of its actuator" if limits else "")
+
+
+def _left(closed: ClosedStudy, left: Exit, unit: str) -> str:
+    when, room = f"at {number(left.time, 4)} {unit}", closed.case.envelope.get(left.signal, Interval())
+    if left.limit in (room.low, room.high):
+        return f"leaves the envelope through {left.signal} {when}"
+    return f"grows beyond {number(FAR, 3)} nominal sizes of {left.signal} {when}"
 
 
 def _limited(closed: ClosedStudy, seen: Kicked) -> list[str]:

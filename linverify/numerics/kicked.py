@@ -1,8 +1,8 @@
 """A closed loop left to itself after a small kick: does it come to rest, grow, or go on in between?
 
-The size of the motion is the largest deviation over a window of one period of the mode in question, each signal against
-its nominal size. The kick lies along that mode, so that in a linear system the logarithm of the size is a straight
-line.
+The size of the motion is the largest deviation over a window of half a period of the mode in question, each signal
+against its nominal size. The kick lies along that mode, so that in a linear system the logarithm of the size is a
+straight line.
 """
 
 from __future__ import annotations
@@ -40,7 +40,7 @@ class Kicked:
     def sustained(self) -> bool:
         """Whether the last third of the windows has one size: a limit cycle, or a motion on the edge."""
         tail = self.sizes[-max(3, len(self.sizes) // 3) :]
-        if self.left is not None or not self.outcome.done or len(self.sizes) < 6 or not tail.min() > 0.0:
+        if self.left is not None or not self.outcome.done or len(self.sizes) < 5 or not tail.min() > 0.0:
             return False
         return float(tail.max() / tail.min()) <= 1.0 + STEADY
 
@@ -72,6 +72,19 @@ class Trial:
             sizes, self.drive.every * self.group, _growth(sizes, self.linear), runs.exits[0], runs.outcomes[0],
             runs.errors[0], runs,
         )  # fmt: skip
+
+
+def swing(found: Kicked, row: int) -> tuple[float, float]:
+    """Size and period of a sustained motion of one signal, over the last third of the run; NaN where it never turns."""
+    values, times = found.runs.plant[row, :, :, 0].ravel(), found.runs.times.ravel()
+    tail = slice(2 * len(values) // 3, None)
+    values, times = values[tail], times[tail]
+    middle = 0.5 * (float(values.max()) + float(values.min()))
+    size = 0.5 * (float(values.max()) - float(values.min()))
+    ups = np.flatnonzero((values[:-1] < middle) & (values[1:] >= middle))
+    if len(ups) < 2:
+        return size, math.nan
+    return size, float(times[ups[-1]] - times[ups[0]]) / (len(ups) - 1)
 
 
 def _growth(sizes: Array, linear: float) -> float:

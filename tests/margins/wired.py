@@ -233,12 +233,33 @@ def drawn(seed: int) -> Wired:
         wired = changed(wired, at_output=True)
         tags.append("at output")
     wired = _fitting(wired, rng)
+    if seed % 7 in (2, 5):
+        tags.append("hidden mode")
+        wired = hiding(wired, np.random.default_rng([577, seed]))
     stable = bool(closed(wired).max() < 0.0)
     if sample and rng.random() < 0.5:
         tags.append("dead time")
         wired = changed(wired, delay=float(rng.uniform(0.1, 2.5)) * sample)
         stable = _late_is_stable(wired)
     return changed(wired, stable=stable, tags=tuple(tags))
+
+
+def hiding(wired: Wired, rng: np.random.Generator) -> Wired:
+    """With a mode that no input moves or no output shows, mixed with the others; one in three is unstable."""
+    rate = 10.0 ** rng.uniform(-0.5, 0.5)
+    growing = rng.random() < 1.0 / 3.0
+    if rng.random() < 0.5:
+        mode = np.array([[rate if growing else -rate]])
+    else:
+        damping = -0.1 if growing else 0.1
+        mode = rate * np.array([[-damping, 1.0], [-1.0, -damping]])
+    n, k = len(wired.A), len(mode)
+    seen = rng.random() < 0.5
+    turn = np.linalg.qr(rng.normal(size=(n + k, n + k)))[0]
+    A = turn @ block_diag(wired.A, mode) @ turn.T
+    B = turn @ np.vstack([wired.B, np.zeros((k, 2)) if seen else rng.normal(size=(k, 2))])
+    C = np.hstack([wired.C, rng.normal(size=(2, k)) if seen else np.zeros((2, k))]) @ turn.T
+    return changed(wired, A=A, B=B, C=C)
 
 
 def _late_is_stable(wired: Wired) -> bool:

@@ -1,4 +1,4 @@
-"""A controller's zero on an unstable pole, a plant's zero on an integrator: the response looks well, the loop is not."""
+"""A controller's zero on an unstable pole, a plant's on an integrator: the response looks well, the loop is not."""
 
 from __future__ import annotations
 

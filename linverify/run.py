@@ -184,9 +184,11 @@ def check_paths(
 def replay(file: Path, item: str | None, options: Options) -> Verdict:
     """Run one saved drive again, on the check that it was saved for or on `item`: its figures against the bands.
 
+    Of `margins`, which keep what became of a kick, the whole check is judged again.
+
     The same figures as the run quoted, to the last digit. Raises DriveFileError, SelectionError and SpecError.
     """
-    drive, case, ask = _saved(file, item)
+    drive, case, ask = _saved(file, item, ("follows", "margins"))
     return replayed(case, ask, options, drive, file.name)
 
 
@@ -206,13 +208,13 @@ def pin(file: Path, item: str | None) -> list[str]:
     return [*lines, f"to have it replayed first, write into {where} of {case.spec}:", f'  pinned: "{PINNED}/*.json"']
 
 
-def _saved(file: Path, item: str | None) -> tuple[Drive, Case, CheckAsk]:
+def _saved(file: Path, item: str | None, kinds: tuple[str, ...] = ("follows",)) -> tuple[Drive, Case, CheckAsk]:
     drive, own = opened(file)
     name = item or own
     if not name:
         raise SelectionError(f"{file} does not say which check it belongs to; name it: SPEC::POINT::CHECK")
     case, ask = select(name, file)
-    if ask.kind != "follows":
+    if ask.kind not in kinds:
         raise SelectionError(f"{name} drives nothing; a drive belongs to a check `follows`")
     return drive, case, ask
 

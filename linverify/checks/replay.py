@@ -18,7 +18,7 @@ from .comparison import comparison
 from .confirm import Word, confirmed
 from .evidence import key_of, text_of
 from .figures import break_told, figure_of
-from .judge import blank
+from .judge import blank, judge_study
 from .study import Study, study_of
 
 
@@ -28,8 +28,10 @@ def replayed(case: Case, ask: CheckAsk, options: Options, drive: Drive, name: st
 
 
 def replayed_study(study: Study, ask: CheckAsk, drive: Drive, name: str = "drive") -> Verdict:
-    """As `replayed`, on a study that the caller has made."""
+    """As `replayed`, on a study that the caller has made; of another check than `follows` all of it, once more."""
     case = study.case
+    if ask.kind != "follows":  # a trajectory that another check kept belongs to all of it: there is no drive to judge
+        return judge_study(study, ask)
     if case.skipped:
         return blank(case, ask, Status.SKIPPED, case.skipped)
     try:

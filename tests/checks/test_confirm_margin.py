@@ -8,12 +8,14 @@ from typing import Any
 
 import numpy as np
 import pytest
-from cart import CART, case, controller, derived, loop, pd, sampled_pd
+from cart import CART, PLACE, case, controller, derived, loop, pd, sampled_pd
 
 from linverify.checks.confirm_margin import Confirmation, confirm
+from linverify.checks.judge import judge_study
 from linverify.checks.margins import setup
+from linverify.checks.replay import replayed_study
 from linverify.checks.study import Study
-from linverify.core.case import Case, Options, TrimAsk
+from linverify.core.case import Case, CheckAsk, Options, TrimAsk
 from linverify.core.loop import Actuator, Loop, Moved
 from linverify.core.model import LocalModel
 from linverify.core.verdict import Status
@@ -136,3 +138,16 @@ def test_at_the_plants_output_the_measured_channel_is_scaled() -> None:
     found = tried(case(hold, actuators={"f": LAG}, envelope={}))
     assert found.status is Status.PASS
     assert {each["signal"] for each in found.details} == {"q", "v"}
+
+
+def test_a_kept_trajectory_is_replayed_as_the_whole_check(tmp_path: Path) -> None:
+    hold = replace(loop(sampled_pd(12.0, 5.0, 0.05)), confirm=True)
+    ask = CheckAsk("margins", PLACE, loop="hold")
+    one = case(hold, envelope={}, checks=(ask,), actuators={"f": Actuator(low=-4.0, high=4.0)})
+    study = Study(one, Options(reports=tmp_path))
+    found = judge_study(study, ask)
+    assert found.status is Status.PASS
+    assert found.evidence
+    drive, _ = pinned.read(tmp_path / "evidence" / f"{found.evidence[0].drive}.json")
+    again = replayed_study(Study(one, Options(reports=tmp_path)), ask, drive)
+    assert (again.status, again.figures, again.evidence) == (found.status, found.figures, found.evidence)

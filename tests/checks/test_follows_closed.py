@@ -3,17 +3,22 @@
 from __future__ import annotations
 
 from dataclasses import replace
+from pathlib import Path
 from typing import Any
 
 import numpy as np
 import pytest
 from cart import BANDS, case, controller, derived, drives, loop, pd, sampled_pd, set_point, verdict
 
-from linverify.core.case import Amplitude, Band, Interval, TrimAsk
+from linverify.checks.replay import replayed_study
+from linverify.checks.study import Study
+from linverify.core.case import Amplitude, Band, Interval, Options, TrimAsk
 from linverify.core.delivered import Delays, LocalAsk
-from linverify.core.loop import Actuator, Loop, Moved
+from linverify.core.drive import Drive
+from linverify.core.loop import Actuator, Controller, Loop, Moved
 from linverify.core.plant import Plant
 from linverify.core.verdict import Status, Verdict
+from linverify.drives import pinned
 
 LAG = {"f": Actuator(lag=0.05)}
 LATE = Delays(outputs={"y": 0.05})
@@ -216,3 +221,36 @@ def test_an_ill_posed_algebraic_loop_is_undecided() -> None:
     found = verdict(direct(-2.0))
     assert found.status is Status.UNDECIDED
     assert "algebraic and ill-posed" in found.reason
+
+
+@pytest.mark.parametrize("control", [pd(20.0, 4.0), sampled_pd(12.0, 5.0, 0.05)], ids=["continuous", "sampled"])
+def test_a_failing_drive_is_replayed_with_the_same_figures(control: Controller, tmp_path: Path) -> None:
+    one = case(loop(control), driven=set_point(), parameters={"b": 400.0})
+    found = verdict(one, options=Options(reports=tmp_path))
+    again = verdict(one, options=Options(reports=tmp_path))
+    assert found == again
+    assert found.status is Status.FAIL
+    worst = found.evidence[0]
+    drive, about = pinned.read(tmp_path / "evidence" / f"{worst.drive}.json")
+    assert about["item"] == "specs/cart.yaml::rest::follows"
+    assert drive.inputs == ("y",)
+    assert set(about["plant"]) == {"y", "f"}
+    replay = replayed_study(Study(one, Options(seed=7)), one.checks[0], drive)
+    assert replay.status is Status.FAIL
+    quoted = {(each.what, each.signal): each for each in found.figures if each.drive == worst.drive}
+    assert quoted
+    for figure in replay.figures:
+        if (figure.what, figure.signal) in quoted:
+            assert figure == quoted[figure.what, figure.signal]
+
+
+def test_a_pinned_drive_is_run_first_in_closed_loop(tmp_path: Path) -> None:
+    driven = set_point()
+    pin = Drive(0.1, ("y",), np.full((driven.intervals, 1), 0.1))
+    path = pinned.write(tmp_path, pin, {})
+    found = verdict(case(loop(), driven=replace(driven, pinned=(path,))))
+    assert found.status is Status.PASS
+    assert found.details["drives"]["pinned"] == 1
+    foreign = pinned.write(tmp_path, Drive(0.1, ("f",), np.full((driven.intervals, 1), 0.1)), {})
+    misfit = verdict(case(loop(), driven=replace(driven, pinned=(foreign,))))
+    assert misfit.status is Status.UNDECIDED

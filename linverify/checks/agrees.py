@@ -6,6 +6,7 @@ words ask for them. Where the two differ in another way than that, poles, zeros 
 
 from __future__ import annotations
 
+from dataclasses import replace
 from typing import Any
 
 from ..core.case import CheckAsk
@@ -25,7 +26,10 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
         raise ValueError(f"no model was delivered for {study.case.point}")
     findings = Findings()
     _point(study, delivered, findings)
-    pair = paired(delivered, study.reference(), study.case.nominal)
+    inside = study.inside
+    pair = paired(delivered, study.reference(), study.case.nominal if inside is None else inside.nominal)
+    if inside is not None:
+        pair = replace(pair, unitless=inside.unitless)
     _model(study, pair, findings)
     _cause(study, pair, findings)
     return Verdict(
@@ -43,7 +47,7 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
 
 def _point(study: Study, delivered: DeliveredModel, findings: Findings) -> None:
     agree = study.case.local.agree
-    found = claims.claims(study.case, delivered, study.trim())
+    found = claims.claims(study.case, delivered, study.trim(), study.inside)
     if not found:
         findings.notes.append("the delivered model claims no operating point")
         return

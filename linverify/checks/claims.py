@@ -10,6 +10,7 @@ from ..core.delivered import DeliveredModel
 from ..core.units import told
 from ..core.verdict import Figure, Status
 from ..numerics.trim import TrimResult
+from .inside import Inside
 
 TOLD = 3  # claims that a message names; all of them are in the details
 
@@ -36,16 +37,25 @@ class Claim:
         return f"{self.claimed:.{digits}g}" == f"{self.ours:.{digits}g}"
 
 
-def claims(case: Case, delivered: DeliveredModel, result: TrimResult) -> tuple[Claim, ...]:
-    """Every claimed value, in the plant's order, each signal once."""
+def claims(
+    case: Case, delivered: DeliveredModel, result: TrimResult, inside: Inside | None = None
+) -> tuple[Claim, ...]:
+    """Every claimed value, in the plant's order, each signal once.
+
+    inside: what loops inside the delivered model add. What a controller's states are at trim is passed over: what it
+    does is counted from there.
+    """
+    point = result.point if inside is None else inside.point
+    nominal = case.nominal if inside is None else inside.nominal
+    passed = frozenset[str]() if inside is None else inside.unitless
     found = {}
     for name, value in _claimed(delivered):
-        if result.point is None or name in found:
+        if point is None or name in found or name in passed:
             continue
-        size = case.nominal.get(name, 1.0)
-        ours = result.point.value(name)
-        error = result.errors.get(name, 0.0) / size
-        found[name] = Claim(name, case.plant.unit(name), value, ours, abs(value - ours) / size, error)
+        size = nominal.get(name, 1.0)
+        ours = point.value(name)
+        error = result.errors.get(name if inside is None else inside.measured(name), 0.0) / size
+        found[name] = Claim(name, point.unit(name), value, ours, abs(value - ours) / size, error)
     return tuple(found.values())
 
 

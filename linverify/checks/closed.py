@@ -16,12 +16,14 @@ from ..core.bound import BoundPlant
 from ..core.case import Case, DriveSet
 from ..core.loop import Actuator, Loop
 from ..core.model import LocalModel, OperatingPoint
+from ..core.signals import Signals
 from ..core.units import told
 from ..numerics.allpass import ORDER, good_up_to
 from ..numerics.closed_model import closed_model
 from ..numerics.closed_plant import Closed, closed_plant
 from ..numerics.instants import Update, related
 from ..numerics.pieces import whole_steps
+from ..numerics.reduce import restricted
 from ..numerics.trim import TrimResult
 from ..numerics.wiring import Wiring, measured_by, ordered
 from .study import Study
@@ -142,7 +144,9 @@ class ClosedStudy(Study):
 
     def reference(self) -> LocalModel:
         """What an exact delivery would be, with all loops closed."""
-        return self._around(self.bare.reference(), ())
+        if not self.closing.given:
+            return self.model()
+        return self._around(self.bare.reference(), self.closing.given)
 
     def about(self) -> LocalModel | None:
         """The derived slopes with all loops closed, even where the plant has corners at the point."""
@@ -152,6 +156,8 @@ class ClosedStudy(Study):
     def unmet(self, need: str) -> str:
         """As of the bare study, and where the loop cannot be closed at all."""
         reasons = self.reasons
+        if need == "reference" and not self.closing.given:
+            need = "model"  # loops are closed around what was derived, and an exact delivery is that
         return self.bare.unmet(need) or (reasons[0] if reasons else "")
 
     @cached_property
@@ -224,10 +230,12 @@ class ClosedStudy(Study):
         """The wiring of the plant (limits), or of a local model that has the loops `without` inside already."""
         case, point = self.bare.case, self.bare.point()
         loops = tuple(loop for loop in self.closing.loops if loop.name not in without)
-        points = tuple((self.closing.at, name) for name in self.closing.points)
+        asked = self.closing.points if self.closing.at not in without else ()
+        points = tuple((self.closing.at, name) for name in asked)
         trims = np.array([point.value(name) if limits else 0.0 for name in inputs])
         references = np.array([point.value(name) if limits else 0.0 for _, name in points])
         moves = {moved.name for loop in loops for moved in loop.moves if not moved.loop} | set(self.closing.driven)
+        moves -= self._moved_by(without)  # behind an actuator that is inside already
         actuators = {name: one for name, one in self._actuators.items() if name in moves}
         step = case.plant.step if limits else self._step
         return Wiring(
@@ -243,15 +251,37 @@ class ClosedStudy(Study):
         bare = self.bare
         about = bare.about()
         wiring = self._wiring(bare.case.plant.input_signals.names, True, ())
-        return closed_plant(bare.bound, bare.point(), wiring, bare.model() if about is None else about)
+        if about is None and not self.closing.given:
+            about = bare.model()
+        return closed_plant(bare.bound, bare.point(), wiring, about)
 
     def _around(self, model: LocalModel, without: Sequence[str]) -> LocalModel:
         """`model` with the loops but those `without` closed; the same model comes back as the same object."""
         if id(model) not in self._models:
-            wiring = self._wiring(model.inputs.names, False, without)
-            wiring = replace(wiring, step=model.step)
-            self._models[id(model)] = (model, closed_model(model, wiring, self._closed.point))
+            inner = self._named_as_driven(model, without)
+            wiring = self._wiring(inner.inputs.names, False, without)
+            whole = closed_model(inner, replace(wiring, step=model.step), self._closed.point)
+            self._models[id(model)] = (model, self._driven_only(whole) if without else whole)
         return self._models[id(model)][1]
+
+    def _named_as_driven(self, model: LocalModel, without: Sequence[str]) -> LocalModel:
+        """Set points of a loop inside the model, where drives move them, under the names that drives call them by."""
+        if self.closing.at not in without:
+            return model
+        called = {f"{self.closing.at}.set_point.{name}": name for name in self.closing.points}
+        names = tuple(called.get(name, name) for name in model.inputs.names)
+        return replace(model, inputs=Signals(names, model.inputs.units))
+
+    def _driven_only(self, model: LocalModel) -> LocalModel:
+        """The inputs that the closed plant has: set points of loops inside the model rest unless drives move them."""
+        known = self._closed.plant.inputs
+        kept = [name for name in model.inputs.names if name in known]
+        return model if len(kept) == len(model.inputs) else restricted(model, kept, model.outputs.names)
+
+    def _moved_by(self, names: Sequence[str]) -> set[str]:
+        """Plant inputs that the loops called `names` move."""
+        loops = [loop for loop in self.closing.loops if loop.name in names]
+        return {moved.name for loop in loops for moved in loop.moves if not moved.loop}
 
     def _nominal(self) -> dict[str, float]:
         """Nobody says how far a controller's state moves: the local model does, where it is asked."""
@@ -280,9 +310,16 @@ def _largest_delay(case: Case, loop: Loop) -> float:
 def _clocks(study: Study, closing: Closing, actuators: Mapping[str, Actuator]) -> list[str]:
     """Sample times that do not go together."""
     plant, model, found = study.case.plant, study.model(), []
-    unit, tick = plant.time_unit, plant.step if plant.step is not None else model.step
+    unit, clock = plant.time_unit, plant.step if plant.step is not None else model.step
     whose = "the plant" if plant.step is not None else "the local model"
     for loop in closing.loops:
+        inside = loop.name in closing.given and plant.step is None
+        if inside and loop.sample is not None and model.step is not None and not related(loop.sample, model.step):
+            found.append(
+                f"loop {loop.name} inside it samples every {loop.sample:.6g} {unit}, the local model steps every "
+                f"{model.step:.6g} {unit}: neither is a multiple of the other"
+            )
+        tick = None if inside else clock
         if loop.sample is None:
             if tick is not None:
                 found.append(
@@ -297,9 +334,11 @@ def _clocks(study: Study, closing: Closing, actuators: Mapping[str, Actuator]) -
                 f"{sample}, the drives change every {closing.every:.6g} {unit}: neither is a multiple of the other"
             )
     if plant.step is None and model.step is not None:
-        if closing.loops and model.course == "straight":
+        around = [loop for loop in closing.loops if loop.name not in closing.given]
+        if around and model.course == "straight":
             found.append("a local model sampled for straight inputs cannot take what a controller holds")
-        lags = [name for name, actuator in actuators.items() if actuator.lag > 0.0]
+        within = {moved.name for loop in closing.loops if loop.name in closing.given for moved in loop.moves}
+        lags = [name for name, one in actuators.items() if one.lag > 0.0 and name not in within]
         if lags:
             found.append(f"a sampled local model takes held inputs, which the lag of {lags[0]} does not give")
     return found
@@ -322,6 +361,6 @@ def _names(study: Study, closing: Closing) -> list[str]:
         for moved in loop.moves:
             if not moved.loop and moved.name not in model.inputs:
                 found.append(f"the local model has no input {moved.name}, which loop {loop.name} moves")
-            if moved.loop in closing.given:
-                found.append(f"loop {loop.name} moves a set point inside the delivered model, which has no such input")
+            if moved.loop in closing.given and str(moved) not in model.inputs:
+                found.append(f"the delivered model has no input {moved}, which loop {loop.name} moves")
     return found

@@ -100,11 +100,12 @@ def _entry(pair: Pair, shares: dict[str, tuple[Array, Array]], name: str, i: int
     known = float(model.errors[name][i, j])
     per = [time_unit] if name in "AB" and model.step is None else []
     gap = abs(theirs - ours)
+    known_unit = not {rows.names[i], columns.names[j]} & pair.unitless
     return Entry(
         name,
         rows.names[i],
         columns.names[j],
-        composed([rows.units[i]], [columns.units[j], *per]),
+        composed([rows.units[i]], [columns.units[j], *per]) if known_unit else "1",
         theirs,
         ours,
         known,

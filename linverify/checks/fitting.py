@@ -44,6 +44,8 @@ def _unbanded(study: Study, drives: DriveSet) -> list[str]:
     """A loop hides errors of its output at low frequency, and shows them in what it moves: that needs bands too."""
     if not isinstance(study, ClosedStudy) or not drives.loop:
         return []
+    if drives.loop in study.closing.given:
+        return []  # what a delivered model has inside it need not tell
     banded = {band.signal for band in study.case.bands_for(drives.name)}
     inputs = [moved.name for loop in nested(study.case, [drives.loop]) for moved in loop.moves if not moved.loop]
     return [

@@ -32,8 +32,11 @@ def judged_model(study: Study) -> Judged:
     """The model to judge. Expects a study that has one: ask `unmet("model")` first."""
     case = study.case
     bare = _with_rounding(study, study.model())
-    if not case.local.closed:
+    inside = study.inside
+    if inside is None:
         return Judged(bare, case.nominal)
+    if case.local.delivered is not None and study.model_override is None:
+        return Judged(bare, inside.nominal)
     closed = ClosedStudy(study, of_model(case))
     if reason := closed.unmet("model"):
         return Judged(None, {}, refused=reason)
@@ -56,4 +59,5 @@ def _with_rounding(study: Study, model: LocalModel) -> LocalModel:
     delivered = study.case.local.delivered
     if delivered is None or model.errors or study.model_override is not None:
         return model
-    return replace(model, errors=printed_errors(delivered, study.point()))
+    inside = study.inside
+    return replace(model, errors=printed_errors(delivered, study.point() if inside is None else inside.point))

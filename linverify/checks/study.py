@@ -9,6 +9,7 @@ from __future__ import annotations
 from collections import OrderedDict
 from dataclasses import replace
 from functools import cached_property
+from typing import TYPE_CHECKING
 
 import numpy as np
 
@@ -23,6 +24,9 @@ from ..numerics.placed import placed
 from ..numerics.reduce import Reduction, reduced, restricted
 from ..numerics.sampled import sampled
 from ..numerics.trim import TrimResult, trim
+
+if TYPE_CHECKING:
+    from .inside import Inside
 
 PROBES = 7  # points at which a plant is tried for batches and determinism
 SPANS = (0.37139, 1.93473, 13.7371, 211.393)  # time units after the trim at which dependence on t is looked for
@@ -83,7 +87,9 @@ class Study:
             return self.model_override
         if self.case.local.delivered is not None:
             return self._delivered
-        return self.reference()
+        if self._reduced.model is None:
+            raise ValueError(f"{self.case.point} has no local model: {self._reduced.refusal}")
+        return self._reduced.model
 
     def derived(self) -> LocalModel:
         """The full derived local model. Raises ValueError where there is none: ask `unmet("derived")` first."""
@@ -95,8 +101,9 @@ class Study:
     def reference(self) -> LocalModel:
         """What an exact delivery would be: the derived model on the same states, inputs and outputs, in plant order.
 
-        Reduced where the spec keeps less, sampled where a sampled model was delivered; all states where those of the
-        delivered model are anonymous. Raises ValueError where there is none: ask `unmet("reference")` first.
+        Reduced where the spec keeps less, with the loops closed inside that belong there, sampled where a sampled model
+        was delivered; all states where those of the delivered model are anonymous. Raises ValueError where there is
+        none: ask `unmet("reference")` first.
         """
         if self._reference.model is None:
             raise ValueError(f"{self.case.point} has no reference: {self._reference.refusal}")
@@ -148,22 +155,35 @@ class Study:
                 return ""
             if self.case.local.delivered is not None:
                 return self._unfit
-            need = "reference"
+            return self.unmet("derived") or self._reduced.refusal
         if need in ("derived", "reference"):
             linear = self.linearization()
             if not linear.outcome.done or linear.model is None:
                 return f"no derived local model: {linear.outcome.value}"
         return self._reference.refusal if need == "reference" else ""
 
+    @property
+    def inside(self) -> Inside | None:
+        """What loops closed inside the local model add to it; None without such loops. Expects a trim.
+
+        Raises ValueError where loops are closed in a ring.
+        """
+        from .inside import inside
+
+        return inside(self.case, self.point()) if self.case.local.closed else None
+
     @cached_property
     def _delivered(self) -> LocalModel:
-        delivered = self.case.local.delivered
+        delivered, inside = self.case.local.delivered, self.inside
         if delivered is None:
             raise ValueError(f"{self.case.point} has no delivered model")
-        model = placed(delivered, self.point())
-        about = self.about()
+        model = placed(delivered, self.point() if inside is None else inside.point)
         if model.step is None or model.anonymous or self.case.plant.step is not None or model.course == "held":
             return model
+        if inside is not None:
+            reference = None if self.unmet("reference") else self.reference()
+            return model if reference is None else replace(model, ahead=reference.ahead)
+        about = self.about()
         return model if about is None else replace(model, ahead=_ahead(about, model, self.case.local.keep))
 
     @cached_property
@@ -176,9 +196,16 @@ class Study:
         return ""
 
     @cached_property
+    def _reduced(self) -> Reduction:
+        """The derived model, with what the spec keeps; loops are open."""
+        keep = self.case.local.keep
+        return reduced(self.derived(), keep) if keep is not None else Reduction(self.derived())
+
+    @cached_property
     def _reference(self) -> Reduction:
-        keep, delivered = self.case.local.keep, self.case.local.delivered
-        found = reduced(self.derived(), keep) if keep is not None else Reduction(self.derived())
+        found, delivered = self._reduced, self.case.local.delivered
+        if self.case.local.closed:
+            return self._closed_reference
         if delivered is None or found.model is None:
             return found
         model = restricted(found.model, delivered.inputs, delivered.outputs)
@@ -187,6 +214,18 @@ class Study:
             if delivered.course == "straight":
                 model = replace(model, ahead=_ahead(continuous, model, None))
         return Reduction(model)
+
+    @property
+    def _closed_reference(self) -> Reduction:
+        from .inside import exact
+
+        try:
+            inside = self.inside
+        except ValueError as error:
+            return Reduction(None, str(error))
+        if inside is None:
+            return self._reduced
+        return exact(inside, self.derived(), self.case.local.delivered)
 
     @cached_property
     def _trim(self) -> TrimResult:

@@ -49,6 +49,13 @@ class OperatingPoint:
                 return float(values[signals.index(name)])
         raise KeyError(name)
 
+    def unit(self, name: str) -> str:
+        """Unit of a state, input or output; raises KeyError for a foreign name."""
+        for signals in (self.states, self.inputs, self.outputs):
+            if name in signals:
+                return signals.unit(name)
+        raise KeyError(name)
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Jump:

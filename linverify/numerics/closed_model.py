@@ -49,11 +49,12 @@ class _Linear:
         return np.asarray(self.C @ x + self.feed @ u)
 
 
-def closed_model(model: LocalModel, wiring: Wiring, at: OperatingPoint) -> LocalModel:
+def closed_model(model: LocalModel, wiring: Wiring, at: OperatingPoint, *, whole_names: bool = False) -> LocalModel:
     """`model` with `wiring` around it, in deviations from `at`; wiring: with zero trims and without limits.
 
-    Its inputs are the model's and the set points, its outputs the model's and the inputs that loops move. Raises
-    ValueError where a loop measures or moves what the model does not have, and where it is ill-posed.
+    Its inputs are the model's and the set points, its outputs the model's and the inputs that loops move. whole_names:
+    set points are called `LOOP.set_point.SIGNAL`, else like their signals. Raises ValueError where a loop measures or
+    moves what the model does not have, and where it is ill-posed.
     """
     whole = Whole(wiring, _Linear(model, wiring.measured))
     n, m = len(model.states) + len(wiring.added), len(model.inputs) + len(wiring.points)
@@ -74,10 +75,11 @@ def closed_model(model: LocalModel, wiring: Wiring, at: OperatingPoint) -> Local
         after = _matrices(lambda x, w, jump=jump: jump(0.0, x, w), n, m)
         jumps.append(Jump(*after, instants.period, instants.phase))
     units = dict(zip(at.inputs.names, at.inputs.units, strict=True))
+    points = tuple(f"{loop}.set_point.{signal}" if whole_names else signal for loop, signal in wiring.points)
     return LocalModel(
         A, B, C, D,
-        _joined(model.states, wiring.added, {}),
-        _joined(model.inputs, tuple(signal for _, signal in wiring.points), units),
+        _joined(model.states, wiring.added, dict(zip(at.states.names, at.states.units, strict=True))),
+        _joined(model.inputs, points, units),
         _joined(model.outputs, moved, units),
         at, model.step, anonymous=model.anonymous, course=model.course, ahead=None, jumps=tuple(jumps),
     )  # fmt: skip

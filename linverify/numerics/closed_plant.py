@@ -39,7 +39,7 @@ class _Inside:
     bound: BoundPlant
     point: OperatingPoint
     measured_names: tuple[str, ...]
-    model: LocalModel
+    model: LocalModel | None
     n: int = field(init=False)
     feed: Array = field(init=False)
     sizes: Array = field(init=False)
@@ -51,6 +51,8 @@ class _Inside:
         self.direct = any(name not in bound.states for name in names)
         self.sizes = np.abs([self.point.value(name) for name in names]) if names else np.zeros(0)
         self.feed = np.zeros((len(names), bound.m))
+        if self.model is None:
+            return
         columns = [bound.inputs.index(name) for name in self.model.inputs.names]
         for row, name in enumerate(names):
             if name not in bound.states:
@@ -101,8 +103,8 @@ class Closed:
     nominal: Mapping[str, float]
 
 
-def closed_plant(bound: BoundPlant, point: OperatingPoint, wiring: Wiring, model: LocalModel) -> Closed:
-    """`bound` with `wiring` around it; model: its slopes, for what is algebraic.
+def closed_plant(bound: BoundPlant, point: OperatingPoint, wiring: Wiring, model: LocalModel | None) -> Closed:
+    """`bound` with `wiring` around it; model: its slopes, for what is algebraic, None where nobody knows them.
 
     Raises ValueError where the loop is ill-posed.
     """

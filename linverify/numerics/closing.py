@@ -111,11 +111,6 @@ def _channels(loop: Loop) -> tuple[str, ...]:
     return tuple(str(moved) for moved in loop.moves)
 
 
-def _targets(setup: Setup, loop: Loop) -> tuple[str, ...]:
-    """What the loop moves, as inputs of the body: a set point in the local model is called like its signal."""
-    return tuple(moved.name if moved.loop in setup.closed else str(moved) for moved in loop.moves)
-
-
 def _inside(setup: Setup, name: str) -> tuple[Loop, ...]:
     """The loops that are closed inside, outer before inner; without what the model has inside already."""
     found: list[str] = []
@@ -177,8 +172,8 @@ def _check_signals(setup: Setup, loop: Loop) -> None:
     for moved in loop.moves:
         if not moved.loop and moved.name not in model.inputs:
             raise RefusedError(f"loop {loop.name} moves {moved}, which the local model does not have")
-        if moved.loop in setup.closed and moved.name not in model.inputs:
-            raise RefusedError(f"loop {loop.name} moves {moved}, and {moved.name} is no input of the local model")
+        if moved.loop in setup.closed and str(moved) not in model.inputs:
+            raise RefusedError(f"loop {loop.name} moves {moved}, which is no input of the local model")
 
 
 def _late(setup: Setup, loop: Loop) -> str:
@@ -206,7 +201,7 @@ def _seen(
     continuous = [one for one in inside if one.sample is None]
     body = _body(setup, (loop, *inside), continuous)
     if loop.sample is None:
-        found = body.picked(_targets(setup, loop), loop.measures)
+        found = body.picked(_channels(loop), loop.measures)
         return found, _dead_time(setup, loop, found)
     sampled = [_sampled(setup, one) for one in inside if one.sample is not None]
     try:
@@ -226,7 +221,7 @@ def _body(setup: Setup, reading: Sequence[Loop], closed: Sequence[Loop]) -> Bloc
     for loop in closed:
         blocks.append(_controller(loop))
         wires += [Wire(name, f"{loop.name}.set_point.{name}", -1.0) for name in loop.measures]
-        wires += [Wire(f"{loop.name}.{j + 1}", target) for j, target in enumerate(_targets(setup, loop))]
+        wires += [Wire(f"{loop.name}.{j + 1}", target) for j, target in enumerate(_channels(loop))]
     return connected(blocks, wires)
 
 
@@ -288,7 +283,7 @@ def held_alone(setup: Setup, name: str) -> Held | None:
     if not one or loop.sample is None or setup.model.step is not None:
         return None
     try:
-        plant = _body(setup, (loop, *inside), inside).picked(_targets(setup, loop), loop.measures)
+        plant = _body(setup, (loop, *inside), inside).picked(_channels(loop), loop.measures)
     except IllPosedError as error:
         raise RefusedError(str(error)) from None
     around = _sampled(setup, loop)
@@ -311,7 +306,7 @@ def _later(loop: Sampled, late: Sequence[float], old: Sequence[float]) -> Sample
 def _sampled(setup: Setup, loop: Loop) -> Sampled:
     late = tuple(loop.delay + (0.0 if moved.loop else setup.delays.inputs.get(moved.name, 0.0)) for moved in loop.moves)
     old = tuple(setup.delays.outputs.get(name, 0.0) for name in loop.measures)
-    return Sampled(loop.name, loop.sample or 0.0, _controller(loop), loop.measures, _targets(setup, loop), late, old)
+    return Sampled(loop.name, loop.sample or 0.0, _controller(loop), loop.measures, _channels(loop), late, old)
 
 
 def _dead_time(setup: Setup, loop: Loop, plant: Block) -> float:

@@ -27,7 +27,7 @@ class Pair:
     """Both models on the inputs and outputs that they share, in the plant's order; states too unless anonymous.
 
     rounding: half a unit in the last printed digit of every delivered entry, by matrix name; sizes: nominal sizes of
-    the states (of the reference), inputs and outputs.
+    the states (of the reference), inputs and outputs; unitless: states whose unit nobody wrote.
     """
 
     delivered: LocalModel
@@ -36,6 +36,7 @@ class Pair:
     states: Array
     inputs: Array
     outputs: Array
+    unitless: frozenset[str] = frozenset()
 
     @property
     def anonymous(self) -> bool:
@@ -93,8 +94,8 @@ def paired(delivered: DeliveredModel, reference: LocalModel, nominal: Mapping[st
         course=delivered.course,
     )
     rounding = {name: _rounding(delivered, name, place) for name, place in places.items()}
-    sizes = [_sizes(signals, nominal) for signals in (ours.states, ours.inputs, ours.outputs)]
-    return Pair(theirs, ours, rounding, *sizes)
+    x, u, y = (_sizes(signals, nominal) for signals in (ours.states, ours.inputs, ours.outputs))
+    return Pair(theirs, ours, rounding, x, u, y)
 
 
 def _rounding(delivered: DeliveredModel, name: str, place: tuple[NDArray[np.intp], ...]) -> Array:

@@ -127,10 +127,10 @@ class Wiring:
             error = points[one.loop.name] - one.seen(a, y)
             raw, late = one.answer(a, error)
             for channel, moved in enumerate(one.loop.moves):
-                if moved.loop:
+                if moved.loop in points:
                     points[moved.loop][self._row(moved.loop, moved.name)] += late[channel]
-                else:
-                    wanted[self.inputs.index(moved.name)] += late[channel]
+                else:  # a set point of a loop that the inside has closed already is an input of the inside
+                    wanted[self.inputs.index(str(moved))] += late[channel]
             errors.append(error)
             given.append(raw)
         commands = self._ranged(wanted)

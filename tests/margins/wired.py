@@ -52,7 +52,8 @@ class Controller:
 @dataclass(frozen=True)
 class Wired:
     """A spec in parts. lags: of the inputs; inner, outer: controllers; delay, sample: of the outer loop; outside: dead
-    times of the plant's input and output; steps: whether figures of a step are asked for."""
+    times of the plant's input and output; in_model: the inner loop belongs to the local
+    model; steps: whether figures of a step are asked for."""
 
     seed: int
     shape: str
@@ -66,6 +67,7 @@ class Wired:
     outside: tuple[float, float] = (0.0, 0.0)
     sample: float | None = None
     at_output: bool = False
+    in_model: bool = False
     stable: bool = True
     steps: bool = False
     tags: tuple[str, ...] = field(default=())
@@ -88,6 +90,8 @@ class Wired:
             read = "y1" if "cascade" in self.shape else "y0"
             late = f"inputs: {{u0: {self.outside[0]!r} s}}, outputs: {{{read}: {self.outside[1]!r} s}}"
             lines.append(f"delays: {{{late}}}")
+        if self.in_model:
+            lines.append("local_models: {source: derive, with: [inner]}")
         lines.append("loops:")
         if self.inner is not None:
             lines += _loop("inner", self.inner.text, "[y0]", "[u0]")
@@ -97,7 +101,7 @@ class Wired:
             "sampled cascade": ("[y1]", "[inner.set_point.y0]"),
         }[self.shape]  # fmt: skip
         lines += _loop("asked", self.outer.text, measures, moves)
-        if self.inner is not None:
+        if self.inner is not None and not self.in_model:
             lines.append("    with: [inner]")
         if self.delay:
             lines.append(f"    delay: {self.delay!r} s")
@@ -232,6 +236,9 @@ def drawn(seed: int) -> Wired:
     if shape == "square" and rng.random() < 0.5:
         wired = changed(wired, at_output=True)
         tags.append("at output")
+    if shape == "beside" and seed % 12 > 5:
+        wired = changed(wired, in_model=True)
+        tags.append("inner loop in the model")
     wired = _fitting(wired, rng)
     if seed % 7 in (2, 5):
         tags.append("hidden mode")

@@ -8,7 +8,8 @@ import numpy as np
 
 from ..core.model import Array, Jump, LocalModel, OperatingPoint, frozen_array
 from ..core.signals import Signals
-from .wiring import Whole, Wiring
+from .whole import Whole
+from .wiring import Wiring
 
 
 def reading(model: LocalModel, name: str) -> tuple[Array, Array]:

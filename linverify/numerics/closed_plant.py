@@ -18,9 +18,11 @@ from ..core.bound import BoundPlant
 from ..core.errors import PlantError
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
 from ..core.plant import Plant
+from ..core.signals import Signals
 from .closed_model import reading
 from .instants import Update
-from .wiring import Whole, Wiring
+from .whole import Whole
+from .wiring import Wiring
 
 
 class ClosedPlant(Plant):
@@ -44,43 +46,45 @@ class _Inside:
     feed: Array = field(init=False)
     sizes: Array = field(init=False)
     direct: bool = field(init=False)
+    states: tuple[list[int], list[int]] = field(init=False)  # rows of the measured, and of the plant's states
+    outputs: tuple[list[int], list[int]] = field(init=False)
+    domain: list[tuple[str, int, float, float]] = field(init=False)
 
     def __post_init__(self) -> None:
         bound, names = self.bound, self.measured_names
         self.n = bound.n
-        self.direct = any(name not in bound.states for name in names)
+        self.states, self.outputs = _places(names, bound.states), _places(names, bound.outputs, bound.states)
+        self.direct = bool(self.outputs[0])
         self.sizes = np.abs([self.point.value(name) for name in names]) if names else np.zeros(0)
         self.feed = np.zeros((len(names), bound.m))
-        if self.model is None:
-            return
-        columns = [bound.inputs.index(name) for name in self.model.inputs.names]
-        for row, name in enumerate(names):
-            if name not in bound.states:
-                self.feed[row, columns] = reading(self.model, name)[1]
+        if self.model is not None:
+            columns = [bound.inputs.index(name) for name in self.model.inputs.names]
+            for row in self.outputs[0]:
+                self.feed[row, columns] = reading(self.model, names[row])[1]
+        self.domain = [
+            (name, bound.inputs.index(name), -np.inf if low is None else low, np.inf if high is None else high)
+            for name, (low, high) in bound.plant.domain.items()
+            if name in bound.inputs
+        ]
 
     def rates(self, t: float, x: Array, u: Array) -> Array:
         """Rates (n, N); raises PlantError, also where an input leaves the plant's domain."""
-        for name, (low, high) in self.bound.plant.domain.items():
-            if name not in self.bound.inputs:
-                continue
-            values = u[self.bound.inputs.index(name)]
-            if (low is not None and (values < low).any()) or (high is not None and (values > high).any()):
+        for name, row, low, high in self.domain:
+            if (u[row] < low).any() or (u[row] > high).any():
                 raise PlantError(f"{name} is moved out of the plant's domain")
-        return self.bound.rates(t, x, u)
+        return self.bound.rates_within(t, x, u)
 
     def measured(self, t: float, x: Array, u: Array) -> Array:
         """Deviations from the trimmed course, (q, N)."""
         found = np.empty((len(self.measured_names), x.shape[1]))
-        course, bound = self._course(t), self.bound
-        y = bound.measure(t, x, u) if self.direct else None
-        still = self._still(t, course) if self.direct else None
-        for row, name in enumerate(self.measured_names):
-            if name in bound.states:
-                at = bound.states.index(name)
-                found[row] = x[at] - course[at]
-            elif y is not None and still is not None:
-                at = bound.outputs.index(name)
-                found[row] = y[at] - still[at]
+        course = self._course(t)
+        if self.states[0]:
+            rows, places = self.states
+            found[rows] = x[places] - course[places, np.newaxis]
+        if self.outputs[0]:
+            rows, places = self.outputs
+            still = self._still(t, course)[places]
+            found[rows] = self.bound.measure_within(t, x, u)[places] - still[:, np.newaxis]
         return found
 
     def _course(self, t: float) -> Array:
@@ -120,7 +124,7 @@ def closed_plant(bound: BoundPlant, point: OperatingPoint, wiring: Wiring, model
     def measurement(t: float, x: Array, u: Array, p: Mapping[str, float]) -> Array:
         wide, w = _wide(x), _wide(u)
         inputs = whole.inputs(t, wide, w)
-        y = np.concatenate([bound.measure(t, wide[:n], inputs), inputs[rows]])
+        y = np.concatenate([bound.measure_within(t, wide[:n], inputs), inputs[rows]])
         return y.reshape((len(y), *x.shape[1:]))
 
     states = {**inside.states, **dict.fromkeys(wiring.added, "")}
@@ -143,6 +147,12 @@ def closed_plant(bound: BoundPlant, point: OperatingPoint, wiring: Wiring, model
         tuple(Update(instants, jump) for instants, jump in whole.updates()),
         {},
     )
+
+
+def _places(names: tuple[str, ...], signals: Signals, others: Signals | None = None) -> tuple[list[int], list[int]]:
+    """Where `names` that are among `signals`, and not among `others`, stand in both."""
+    rows = [at for at, name in enumerate(names) if name in signals and (others is None or name not in others)]
+    return rows, [signals.index(names[at]) for at in rows]
 
 
 def _wide(values: Array) -> Array:

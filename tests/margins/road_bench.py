@@ -27,7 +27,7 @@ from linverify.spec.bind import load
 
 from .response import about
 from .steps import Step, stepped
-from .wired import SHAPES, Wired, changed, closed, drawn, transfer
+from .wired import SHAPES, Wired, changed, closed, drawn, late_is_stable, transfer
 
 CLOSE = 1e-6
 Response = Callable[[np.ndarray], np.ndarray]
@@ -231,6 +231,9 @@ def judged(seed: int) -> Result:
         exact = scanned(wired, L, w)
         figures += len(exact.figures)
         wrong += compared(told, exact)
+    if wired.sample:
+        figures += 1
+        wrong += outlasted(wired, found.details["margins"]["channels"][0])
     if wired.steps and (steps := stepped(wired)) is not None:
         figures += 3 * len(steps)
         for told, step in zip(found.details["margins"]["steps"], steps, strict=True):
@@ -240,6 +243,20 @@ def judged(seed: int) -> Result:
         figures += len(exact)
         wrong += at_once(found.details["margins"]["all_channels"], exact)
     return Result(wired, found.status, tuple(wrong), figures, tie)
+
+
+def outlasted(wired: Wired, told: dict[str, Any]) -> list[str]:
+    """The delay margin of a sampled loop: stable at all dead times before, and not behind, by eigenvalues."""
+    if "delay" not in told:
+        return ["no delay margin is told"]
+    margin, met = told["delay"]["value"], "frequency" in told["delay"]
+    sample = float(wired.sample or 1.0)
+    for each in min(margin, 20.0 * sample) * np.linspace(0.0, 1.0 - 1e-5, 40):
+        if not late_is_stable(changed(wired, delay=wired.delay + float(each))):
+            return [f"delay margin {margin}, but unstable at {each}"]
+    if met and margin < 20.0 * sample and late_is_stable(changed(wired, delay=wired.delay + margin * (1.0 + 1e-4))):
+        return [f"delay margin {margin}, but stable beyond"]
+    return []
 
 
 def as_seen(told: dict[str, Any], step: Step, sample: float) -> list[str]:

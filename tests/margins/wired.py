@@ -247,7 +247,7 @@ def drawn(seed: int) -> Wired:
     if sample and rng.random() < 0.5:
         tags.append("dead time")
         wired = changed(wired, delay=float(rng.uniform(0.1, 2.5)) * sample)
-        stable = _late_is_stable(wired)
+        stable = late_is_stable(wired)
     return changed(wired, stable=stable, tags=tuple(tags))
 
 
@@ -269,7 +269,7 @@ def hiding(wired: Wired, rng: np.random.Generator) -> Wired:
     return changed(wired, A=A, B=B, C=C)
 
 
-def _late_is_stable(wired: Wired) -> bool:
+def late_is_stable(wired: Wired) -> bool:
     """The sampled loop with its dead time, from instant to instant, with the commands under way as states."""
     A, B, C = wired.flow()
     h, K = float(wired.sample or 1.0), wired.outer

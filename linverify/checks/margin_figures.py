@@ -13,7 +13,7 @@ from ..core.verdict import Figure, Sense, Status
 from ..numerics.loop_margins import LoopMargins
 from ..numerics.margins import Found
 from .margin_poles import dampings
-from .margin_spread import matched, widened
+from .margin_spread import ENDLESS, matched, widened
 
 PER_NEPER = 20.0 / math.log(10.0)
 
@@ -112,8 +112,8 @@ def _crossovers(case: Case, name: str, limit: Limit, crossings: list[Found]) -> 
 
 
 def _inverse(factor: Found) -> Found:
-    if factor.value == 0.0:
-        return Found(math.inf, factor.frequency)
+    if factor.value + factor.error < 1.0 / ENDLESS:
+        return Found(math.inf)
     return Found(1.0 / factor.value, factor.frequency, factor.error / factor.value**2)
 
 

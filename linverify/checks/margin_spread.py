@@ -1,8 +1,8 @@
 """What the errors of the local model's own entries do to the figures of a loop.
 
-Entries are moved by their errors, all at once and with signs drawn once for ever; the largest change of a figure, times
-a factor for not having tried all signs, is added to its error. Entries that are zero stay so: that they are zero says
-which states the loop does not move.
+Entries are moved by a few times their errors, since not all signs can be tried: all at once, with signs drawn once for
+ever, and the opposite way, which a loop that loses its stability one way would pass. The largest change of a figure is
+added to its error. Entries that are zero stay so: that they are zero says which states the loop does not move.
 """
 
 from __future__ import annotations
@@ -19,10 +19,12 @@ from ..numerics.loop_margins import LoopMargins, measured
 from ..numerics.margins import Found, Margins
 from ..numerics.set_point import stepped
 
-TRIED = 2
-GROWTH = 4.0  # of the largest change among those tried
+GROWTH = 4.0  # times the errors: by so much entries are moved, in place of the worst signs
+EXACT = 1e-8  # of the largest entry: errors below are those of differences, and one draw of signs tells their size
+DRAWS = 4  # of signs, where errors are larger, as those of printed entries are
 WITHIN = 0.02  # of the final value: band of settling where none is asked for
-ENDLESS = 1e6  # a figure that is infinite without errors, and beyond this with them, is told as infinite
+ENDLESS = 1e6  # a figure that is infinite without errors, and beyond this with them, is told as infinite; a gain margin
+# beyond this always is: how near to zero a gain may fall says how exact an integrator is, and nothing else
 
 
 def whole(setup: Setup, name: str, at_input: bool, *, brief: bool = False) -> tuple[Opened, LoopMargins]:
@@ -51,15 +53,25 @@ def _models(model: LocalModel) -> Iterator[LocalModel]:
     if not any(errors.any() for errors in model.errors.values()):
         return
     generator = np.random.default_rng(20_026)
-    for _ in range(TRIED):
-        A, B, C, D = (_moved(model, name, generator) for name in "ABCD")
-        yield replace(model, A=A, B=B, C=C, D=D)
+    for _ in range(1 if _exact(model) else DRAWS):
+        signs = {name: generator.choice([-1.0, 1.0], size=getattr(model, name).shape) for name in "ABCD"}
+        for way in (1.0, -1.0):
+            A, B, C, D = (_moved(model, name, way * signs[name]) for name in "ABCD")
+            yield replace(model, A=A, B=B, C=C, D=D)
 
 
-def _moved(model: LocalModel, name: str, generator: np.random.Generator) -> Array:
+def _exact(model: LocalModel) -> bool:
+    """Whether entries are known so well that hardly anything depends on their errors."""
+    return all(
+        float(errors.max(initial=0.0)) <= EXACT * float(np.abs(getattr(model, name)).max(initial=0.0))
+        for name, errors in model.errors.items()
+    )
+
+
+def _moved(model: LocalModel, name: str, signs: Array) -> Array:
     block: Array = getattr(model, name)
     errors = model.errors.get(name, np.zeros_like(block))
-    change = generator.choice([-1.0, 1.0], size=block.shape) * np.where(np.isfinite(errors), errors, 0.0)
+    change = GROWTH * signs * np.where(np.isfinite(errors), errors, 0.0)
     return frozen_array(np.where(block != 0.0, block + change, 0.0))
 
 
@@ -97,7 +109,7 @@ def widened(found: Found, others: Sequence[Found]) -> Found:
         # infinite here and finite there: what it surely is lies below the smallest
         return found if least > ENDLESS else Found(least, found.frequency, (1.0 - 1.0 / GROWTH) * least)
     change = max(abs(value - found.value) for value in values)
-    return replace(found, error=found.error + GROWTH * change)
+    return replace(found, error=found.error + change)
 
 
 def matched(key: tuple[str, str], others: Sequence[Mapping[tuple[str, str], Found]]) -> list[Found]:

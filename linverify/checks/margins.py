@@ -25,8 +25,10 @@ from .margin_delays import with_delays
 from .margin_figures import figures
 from .margin_poles import counted
 from .margin_spread import varied, whole
+from .mode_model import _with_rounding
 from .study import Study
 
+OPEN = "the errors of the local model's entries leave open whether"
 DOMINATES = 0.5  # share of the states that `leaves` names in a mode from which on it is theirs
 
 
@@ -70,7 +72,8 @@ def setup(study: Study, name: str) -> Setup:
         raise RefusedError(str(error)) from None
     if name not in inside:
         closed, also = (inside, ()) if local.delivered is not None else ((), inside)
-        return Setup(study.model(), case.loops, case.actuators, case.delays, closed, also, case.plant.step)
+        model = _with_rounding(study, study.model())
+        return Setup(model, case.loops, case.actuators, case.delays, closed, also, case.plant.step)
     if local.delivered is None:
         return Setup(study.model(), case.loops, case.actuators, case.delays, tick=case.plant.step)
     # the delivered model has this loop inside: margins are those of the plant's own slopes
@@ -102,8 +105,10 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
             found.reasons.append((Status.UNDECIDED, f"{channel.name} has no effect on itself around the loop"))
     others = varied(around, loop.name, one)
     if others is None or not all(other.stable and other.outcome.done for other in others):
-        found.reasons.append((Status.UNDECIDED, "the errors of the local model leave open whether the loop is stable"))
+        found.reasons.append((Status.UNDECIDED, f"{OPEN} the loop is stable"))
         return
+    if not _loose(one, excused) and any(_loose(other, _covered(loop, other)) for other in others):
+        found.reasons.append((Status.UNDECIDED, f"{OPEN} a pole that the loop does not move is stable"))
     made, silent = figures(case, loop, one, others)
     found.figures += made
     found.reasons += [(each.status, margin_words.figure(each)) for each in made if each.status is not Status.PASS]
@@ -134,9 +139,13 @@ def _covered(loop: Loop, one: LoopMargins) -> list[bool]:
 
 def _unmoved(one: LoopMargins, excused: Sequence[bool], found: _Found) -> None:
     """Judge the poles that the loop does not move."""
-    loose = [pole for pole, its in zip(one.unmoved, excused, strict=True) if not its and not _stable(one, pole)]
-    if loose:
+    if loose := _loose(one, excused):
         found.reasons.append((Status.FAIL, margin_words.unmoved(loose, one.loop.step)))
+
+
+def _loose(one: LoopMargins, excused: Sequence[bool]) -> list[Unmoved]:
+    """Poles that nobody stabilizes."""
+    return [pole for pole, its in zip(one.unmoved, excused, strict=True) if not its and not _stable(one, pole)]
 
 
 def _stable(one: LoopMargins, pole: Unmoved) -> bool:

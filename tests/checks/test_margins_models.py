@@ -174,3 +174,41 @@ def test_loops_that_close_each_other_are_undecided(broken: str) -> None:
     verdict = judged(INTEGRATOR, one, other)
     assert verdict.status is Status.UNDECIDED
     assert "closed inside itself" in verdict.reason
+
+
+# poles at -18 and -0.0005, printed to four digits; as far as these go, the slow one may lie right of the axis
+PRINTED = [[-9.001, 9.0], [9.0, -9.0]]
+
+
+@pytest.mark.parametrize("digits", [17, 4])
+def test_printed_digits_leave_open_whether_a_loop_is_stable(digits: int) -> None:
+    expected = Status.PASS if digits == 17 else Status.UNDECIDED
+    local = delivered(PRINTED, [[1e-4], [0.0]], [[1.0, 0.0]], digits=digits)
+    weak = judged(linear_plant(PRINTED, [[1e-4], [0.0]], [[1.0, 0.0]]), loop(gain([[1.0]])), local=local)
+    assert weak.status is expected, weak.reason
+    # and whether a mode is that the loop does not move
+    A, B, C = np.block([[np.zeros((1, 3))], [np.zeros((2, 1)), np.array(PRINTED)]]), [[1.0], [0.0], [0.0]], np.eye(1, 3)
+    beside = judged(linear_plant(A, B, C), loop(gain([[1.0]])), local=delivered(A, B, C, digits=digits))
+    assert beside.status is expected, beside.reason
+    if expected is Status.UNDECIDED:
+        assert "leave open whether a pole that the loop does not move is stable" in beside.reason
+
+
+def test_printed_digits_widen_the_error_of_a_margin() -> None:
+    # 2 / (s + 1) of unit gain: phase pi - atan(sqrt(3)) at sqrt(3), known no better than 2 printed as 2.000
+    local = delivered([[-1.0]], [[2.0]], [[1.0]], digits=4)
+    plant = linear_plant([[-1.0]], [[2.0]], [[1.0]])
+    true = math.pi - math.atan(math.sqrt(3.0))
+    found = figure(judged(plant, loop(pid(1.0), least("phase_margin", 0.5)), local=local), PHASE)
+    assert found.worst == pytest.approx(true, rel=1e-9)
+    assert found.error > 1e-4
+    assert judged(plant, loop(pid(1.0), least("phase_margin", true)), local=local).status is Status.UNDECIDED
+
+
+def test_a_lag_that_the_controller_cancels_leaves_the_integrator_exact() -> None:
+    # 1 / (s (s + 1/2)) behind (s + 1/2) / (0.1 s + 1): 10 / (s (s + 10)) may fall to any gain above zero
+    lead = replace(gain([[10.0]]), A=np.array([[-10.0]]), B=np.array([[1.0]]), C=np.array([[-95.0]]))
+    plant = linear_plant([[0.0, 1.0], [0.0, -0.5]], [[0.0], [1.0]], [[1.0, 0.0]])
+    verdict = judged(plant, loop(lead, least("gain_margin", 2.0)))
+    assert verdict.status is Status.PASS, verdict.reason
+    assert math.isinf(figure(verdict, "gain margin (downwards)").worst)

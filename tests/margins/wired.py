@@ -252,9 +252,8 @@ def drawn(seed: int) -> Wired:
 
 
 def hiding(wired: Wired, rng: np.random.Generator) -> Wired:
-    """With a mode that no input moves or no output shows, mixed with the others; one in three is unstable."""
-    rate = 10.0 ** rng.uniform(-0.5, 0.5)
-    growing = rng.random() < 1.0 / 3.0
+    """With a mode that no input moves or no output shows, or but weakly, mixed with the others; some are unstable."""
+    rate, growing = 10.0 ** rng.uniform(-0.5, 0.5), rng.random() < 1.0 / 3.0
     if rng.random() < 0.5:
         mode = np.array([[rate if growing else -rate]])
     else:
@@ -262,11 +261,13 @@ def hiding(wired: Wired, rng: np.random.Generator) -> Wired:
         mode = rate * np.array([[-damping, 1.0], [-1.0, -damping]])
     n, k = len(wired.A), len(mode)
     seen = rng.random() < 0.5
+    weak = 0.0 if growing or rng.random() < 0.5 else 10.0 ** rng.uniform(-14.0, -8.0)
     turn = np.linalg.qr(rng.normal(size=(n + k, n + k)))[0]
-    A = turn @ block_diag(wired.A, mode) @ turn.T
-    B = turn @ np.vstack([wired.B, np.zeros((k, 2)) if seen else rng.normal(size=(k, 2))])
-    C = np.hstack([wired.C, rng.normal(size=(2, k)) if seen else np.zeros((2, k))]) @ turn.T
-    return changed(wired, A=A, B=B, C=C)
+    A = block_diag(wired.A, mode)
+    A[n:, :n], A[:n, n:] = (weak * rng.normal(size=(k, n)), 0.0) if seen else (0.0, weak * rng.normal(size=(n, k)))
+    B = np.vstack([wired.B, (weak if seen else 1.0) * rng.normal(size=(k, 2))])
+    C = np.hstack([wired.C, (1.0 if seen else weak) * rng.normal(size=(2, k))])
+    return changed(wired, A=turn @ A @ turn.T, B=turn @ B, C=C @ turn.T)
 
 
 def late_is_stable(wired: Wired) -> bool:

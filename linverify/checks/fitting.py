@@ -91,7 +91,20 @@ def _clocks(study: Study, model: LocalModel, every: float) -> list[str]:
     for name, late in (*delays.inputs.items(), *delays.outputs.items()):
         if whole_steps(late, model.step) is None:
             found.append(f"the dead time of {name}, {late:.6g} {unit}, is no whole multiple of")
-    return [f"{one} the local model's step of {model.step:.6g} {unit}" for one in found]
+    found = [f"{one} the local model's step of {model.step:.6g} {unit}" for one in found]
+    return [*found, *_between(study, model)]
+
+
+def _between(study: Study, model: LocalModel) -> list[str]:
+    """Sampled loops that act where a sampled model says nothing."""
+    instants = [(update.instants.period, update.instants.phase) for update in study.updates]
+    instants += [(jump.period, jump.phase) for jump in model.jumps]
+    unit = study.case.plant.time_unit
+    odd = [time for times in instants for time in times if whole_steps(time, model.step or 0.0) is None]
+    if not odd:
+        return []
+    acting = f"sampled loops act at multiples of {min(odd):.6g} {unit}"
+    return [f"{acting}, between the instants of the local model, which steps every {model.step:.6g} {unit}"]
 
 
 def _straight_states(study: Study, name: str, model: LocalModel) -> list[str]:

@@ -1,4 +1,5 @@
-"""What is tried when a delivered model is wrong: the spec's other points, every parameter, every held value."""
+"""What is tried when a delivered model is wrong: other points of the spec, every parameter, every held value, and other
+ways to close the loops that it has inside."""
 
 from __future__ import annotations
 
@@ -7,10 +8,11 @@ from dataclasses import replace
 
 from ..core.case import Case, Options
 from ..core.errors import PlantError
-from ..core.model import LocalModel, OperatingPoint
+from ..core.model import LocalModel, OperatingPoint, frozen_array
 from ..numerics.cause import Cause, guess
 from ..numerics.knobs import Knob
 from ..numerics.pair import Pair
+from .closed import nested
 from .study import Study
 
 MOST = 40  # other points that are derived for one guess; in the order of the spec
@@ -25,6 +27,8 @@ def guessed(study: Study, pair: Pair) -> Cause | None:
     def derive(knob: Knob, value: float) -> LocalModel | None:
         if knob.kind == "parameter":
             return _reference(replace(began, parameters={**case.parameters, knob.name: value}), study.options)
+        if knob.kind == "gain":
+            return _reference(_scaled(began, knob.name, value), study.options)
         held = replace(began.trim, hold={**case.trim.hold, knob.name: value})
         return _reference(replace(began, trim=held), study.options)
 
@@ -33,6 +37,7 @@ def guessed(study: Study, pair: Pair) -> Cause | None:
         plant.time_unit,
         continuous=_continuous(study),
         others={one.point: _of(case, one.point, study.options) for one in case.relatives[:MOST]},
+        loops=_loops(began, study),
         knobs=_knobs(case),
         derive=derive,
     )
@@ -47,7 +52,28 @@ def _knobs(case: Case) -> list[Knob]:
         Knob(name, "hold", value, plant.unit(name), SHARE * case.nominal.get(name, 1.0))
         for name, value in case.trim.hold.items()
     ]
-    return [*stale, *held]
+    gains = [Knob(loop.name, "gain", 1.0, "", 1.0) for loop in nested(case, case.local.closed)]
+    return [*stale, *held, *gains]
+
+
+def _loops(case: Case, study: Study) -> dict[str, Callable[[], LocalModel | None]]:
+    """The reference with one loop open, and with one loop closed with the wrong sign."""
+    found: dict[str, Callable[[], LocalModel | None]] = {}
+    for loop in nested(case, case.local.closed):
+        ways = ((f"loop {loop.name} is open in it", 0.0), (f"loop {loop.name} is closed with the wrong sign", -1.0))
+        for text, factor in ways:
+            found[text] = lambda name=loop.name, factor=factor: _reference(  # type: ignore[misc]
+                _scaled(case, name, factor), study.options
+            )
+    return found
+
+
+def _scaled(case: Case, name: str, factor: float) -> Case:
+    """The case with what one loop gives times `factor`."""
+    loop = case.loops[name]
+    one = loop.controller
+    given = replace(one, C=frozen_array(factor * one.C), D=frozen_array(factor * one.D))
+    return replace(case, loops={**case.loops, name: replace(loop, controller=given)})
 
 
 def _begun(case: Case, point: OperatingPoint) -> Case:
@@ -59,7 +85,8 @@ def _begun(case: Case, point: OperatingPoint) -> Case:
 
 def _of(case: Case, name: str, options: Options) -> Callable[[], LocalModel | None]:
     (other,) = (one for one in case.relatives if one.point == name)
-    return lambda: _reference(replace(case, trim=other.trim, parameters=other.parameters), options)
+    loops = case.loops if other.loops is None else other.loops
+    return lambda: _reference(replace(case, trim=other.trim, parameters=other.parameters, loops=loops), options)
 
 
 def _continuous(study: Study) -> LocalModel | None:

@@ -17,7 +17,7 @@ from ..core.delivered import Course, DeliveredModel, Keep
 from ..core.loop import Actuator, Loop
 from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
 from ..core.signals import Signals
-from ..numerics.at_samples import HELD, QUEUED, at_samples, repeats
+from ..numerics.at_samples import HELD, QUEUED, at_samples, remembering, repeats
 from ..numerics.closed_model import closed_model, reading
 from ..numerics.controller_sizes import controller_sizes
 from ..numerics.hold import straight
@@ -165,7 +165,7 @@ def exact(one: Inside, derived: LocalModel, delivered: DeliveredModel | None) ->
     except ValueError as error:
         return Reduction(None, str(error))
     errors = {name: frozen_array(each + ROUNDING * np.abs(getattr(whole, name))) for name, each in errors.items()}
-    whole = replace(whole, errors=errors)
+    whole = _about_own_states(remembering(replace(whole, errors=errors)))
     return Reduction(whole) if delivered is None else _like(whole, delivered)
 
 
@@ -233,7 +233,7 @@ def _with_measured(model: LocalModel, names: tuple[str, ...]) -> LocalModel:
 
 
 def _cut(model: LocalModel, names: tuple[list[str], list[str]]) -> LocalModel:
-    """`model` with these inputs and outputs, in this order; its point without what it does not remember."""
+    """`model` with these inputs and outputs, in this order."""
     inputs, outputs = names
     columns = [model.inputs.index(name) for name in inputs]
     rows = [model.outputs.index(name) for name in outputs]
@@ -249,23 +249,20 @@ def _cut(model: LocalModel, names: tuple[list[str], list[str]]) -> LocalModel:
         outputs=Signals(tuple(outputs), tuple(model.outputs.units[at] for at in rows)),
         errors=blocks(**model.errors) if model.errors else {},
         ahead=None if model.ahead is None else frozen_array(model.ahead[:, columns]),
-        at=_remembered(model.at, model.states),
     )
 
 
-def _remembered(at: OperatingPoint, states: Signals) -> OperatingPoint:
-    """The point without holds and queues that are no states of the model."""
+def _about_own_states(model: LocalModel) -> LocalModel:
+    """About a point without the holds and queues that are no states of the model."""
+    at = model.at
     kept = [
         row
         for row, name in enumerate(at.states.names)
-        if name in states or not any(word in name for word in (HELD, QUEUED))
+        if name in model.states or not any(word in name for word in (HELD, QUEUED))
     ]
-    return replace(
-        at,
-        x=frozen_array(at.x[kept]),
-        drift=frozen_array(at.drift[kept]),
-        states=Signals(tuple(at.states.names[row] for row in kept), tuple(at.states.units[row] for row in kept)),
-    )
+    states = Signals(tuple(at.states.names[row] for row in kept), tuple(at.states.units[row] for row in kept))
+    own = replace(at, x=frozen_array(at.x[kept]), drift=frozen_array(at.drift[kept]), states=states)
+    return replace(model, at=own)
 
 
 def _more(signals: Signals, names: list[str] | tuple[str, ...], units: list[str]) -> Signals:

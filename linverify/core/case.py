@@ -203,6 +203,7 @@ class Relative:
     point: str
     trim: TrimAsk
     parameters: Mapping[str, float]
+    loops: Mapping[str, Loop] | None = None  # None: those of the point that it is beside
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -50,18 +50,29 @@ def at_samples(model: LocalModel, step: float) -> LocalModel:
     once = _flow(model, period - time) @ once
     whole = np.linalg.matrix_power(once, count)
     outputs = np.hstack([model.C, model.D]) @ first
-    kept = _remembered(model, whole[:n, :n], outputs[:, :n])
     return replace(
         model,
-        A=frozen_array(whole[np.ix_(kept, kept)]),
-        B=frozen_array(whole[kept, n:]),
-        C=frozen_array(outputs[:, kept]),
+        A=frozen_array(whole[:n, :n]),
+        B=frozen_array(whole[:n, n:]),
+        C=frozen_array(outputs[:, :n]),
         D=frozen_array(outputs[:, n:]),
-        states=Signals(
-            tuple(model.states.names[row] for row in kept), tuple(model.states.units[row] for row in kept)
-        ),
         step=step, errors={}, course="held", ahead=None, jumps=(),
     )  # fmt: skip
+
+
+def remembering(model: LocalModel) -> LocalModel:
+    """The same difference equation without the holds and queues that nothing reads any more."""
+    kept = _remembered(model, model.A, model.C)
+    square, rows, columns = np.ix_(kept, kept), (kept, slice(None)), (slice(None), kept)
+    picked = {"A": square, "B": rows, "C": columns, "D": (slice(None), slice(None))}
+    blocks = {name: frozen_array(getattr(model, name)[place]) for name, place in picked.items()}
+    names, units = model.states.names, model.states.units
+    return replace(
+        model,
+        **blocks,  # type: ignore[arg-type]
+        states=Signals(tuple(names[row] for row in kept), tuple(units[row] for row in kept)),
+        errors={name: frozen_array(values[picked[name]]) for name, values in model.errors.items()},
+    )
 
 
 def _leaps(model: LocalModel, period: float) -> list[tuple[float, Array]]:

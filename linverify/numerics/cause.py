@@ -42,13 +42,15 @@ def guess(
     *,
     continuous: LocalModel | None = None,
     others: Mapping[str, Callable[[], LocalModel | None]] | None = None,
+    loops: Mapping[str, Callable[[], LocalModel | None]] | None = None,
     knobs: Sequence[Knob] = (),
     derive: Derive | None = None,
 ) -> Cause | None:
     """What explains the delivered model; None where nothing does, or more than one thing.
 
     continuous: the reference before it was sampled, where it was; others: models of other operating points by name, on
-    the signals and at the sample time of the reference; derive: the reference with another value of a knob.
+    the signals and at the sample time of the reference; loops: likewise, the reference with a loop inside it closed in
+    another way, by the words for that; derive: the reference with another value of a knob.
     """
     wanted = target(pair)
     if wanted.explained(pair.reference):
@@ -56,7 +58,9 @@ def guess(
     if pair.time_clash:
         return None
     tried = list(_all_slips(pair, wanted, continuous, time_unit))
-    found = _distinct([slip for slip in tried if wanted.explained(slip.model)]) + _others(wanted, others or {})
+    found = _looped(wanted, loops or {})
+    found = found or _distinct([slip for slip in tried if wanted.explained(slip.model)])
+    found += _others(wanted, others or {})
     if found:
         return found[0] if len(found) == 1 else None
     if derive is not None:
@@ -106,6 +110,12 @@ def _others(wanted: Target, others: Mapping[str, Callable[[], LocalModel | None]
     return found
 
 
+def _looped(wanted: Target, loops: Mapping[str, Callable[[], LocalModel | None]]) -> list[Cause]:
+    """A loop that is closed in another way is a thing of its own: in numbers it may look like a slip of signs."""
+    models = ((text, derive()) for text, derive in loops.items())
+    return [Cause("loop", text) for text, model in models if model is not None and wanted.explained(model)]
+
+
 def _turned(wanted: Target, knobs: Sequence[Knob], derive: Derive, reference: LocalModel) -> list[Cause]:
     found = []
     for knob in knobs:
@@ -119,6 +129,8 @@ def _told(knob: Knob, value: float) -> Cause:
     then, now = told(value, knob.unit), told(knob.value, knob.unit)
     if knob.kind == "parameter":
         return Cause("parameter", f"a stale parameter: {knob.name} = {then} explains all of it; the plant has {now}")
+    if knob.kind == "gain":
+        return Cause("loop", f"another controller: what loop {knob.name} gives, times {then}, explains all of it")
     return Cause("trim", f"another trim: {knob.name} held at {then} explains all of it; here it is held at {now}")
 
 

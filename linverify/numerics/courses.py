@@ -137,6 +137,8 @@ def linear(rig: Rig, drives: Courses) -> Array:
             after += R @ ((drives.end[:, k] - drives.start[:, k]) / pieces.length(k))
         out[:, k, 1:] = after.transpose(1, 0, 2)
         x = np.ascontiguousarray(after[-1])
+    if pieces.sampled:
+        out[:, -1, -1] = _jumped(rig.model, float(begins[-1]), x, drives.end[:, -1])
     return out
 
 
@@ -149,6 +151,8 @@ def _stepped(rig: Rig, drives: Courses, steps: int) -> Array:
         for j in range(steps):
             x = A @ x + B @ input_at(drives, k, j / steps)
             out[:, k, j + 1] = x
+    # only right-hand values mean anything in samples, the last one too
+    out[:, -1, -1] = _jumped(rig.model, float(begins[-1]), x, drives.end[:, -1])
     return out
 
 

@@ -18,7 +18,7 @@ from ..core.errors import PlantError
 from ..core.model import Array
 from ..core.outcome import Outcome
 from .pieces import cut
-from .readout import Limit, Readout, acts, model_after, model_course, model_within
+from .readout import Limit, Readout, acts, model_after, model_course, model_last, model_within
 from .rig import Exit, Fidelity, Rig, Runs
 
 TIGHTER = 100.0
@@ -71,6 +71,8 @@ class _Second:
             if after is None:
                 return
             x = after
+        if readout.pieces.sampled and readout.rig.updates:
+            self._last(x)
 
     def told(self) -> Runs:
         """Everything as `Runs` of one drive."""
@@ -83,6 +85,9 @@ class _Second:
         for k, j in np.ndindex(K, S + 1):
             x = model_within(readout, self.starts[k], k, j)
             model[:, k, j, 0] = readout.model(x, readout.inputs(k, j / S))[:q]
+        if readout.pieces.sampled:  # only right-hand values mean anything, the last one too
+            last = model_last(readout, self.starts[K])
+            model[:, K - 1, S, 0] = readout.model(last, readout.inputs(K - 1, 1.0))[:q]
         if rig.plant.step is not None:  # read at instants only: a jump has no left side
             plant[:, :-1, -1], model[:, :-1, -1] = plant[:, 1:, 0], model[:, 1:, 0]
         ended = float(times[-1, -1]) if np.isnan(self.ended) else self.ended
@@ -98,14 +103,26 @@ class _Second:
     def _method(self) -> Literal["DOP853", "Radau"]:
         return "Radau" if self.readout.rig.stiff(self.readout.drive.every) else "DOP853"
 
-    def _updated(self, k: int, x: Array) -> Array | None:
-        """States after what sampled controllers do where piece k begins; notes the failure of one that cannot."""
+    def _last(self, x: Array) -> None:
+        """Put what comes after the controllers act in the place of the last sample."""
+        readout = self.readout
+        k, time = readout.count - 1, readout.time(readout.count - 1, readout.nodes)
+        after = self._updated(k, x, 1.0)
+        if after is not None:
+            self.plant.pop()
+            self._keep(time, after, k, readout.nodes)
+
+    def _updated(self, k: int, x: Array, share: float = 0.0) -> Array | None:
+        """States after what sampled controllers do where piece k begins, or ends; notes the failure of one that cannot.
+
+        share: of the piece, 0 or 1.
+        """
         readout, rig = self.readout, self.readout.rig
-        time = readout.time(k, 0)
+        time = readout.time(k, readout.nodes if share else 0)
         try:
             for update in rig.updates:
                 if acts(time, update.instants.period, update.instants.phase):
-                    u = rig.point.u + readout.inputs(k, 0.0)
+                    u = rig.point.u + readout.inputs(k, share)
                     x = update.jump(rig.point.time + readout.tick(time), x[:, np.newaxis], u[:, np.newaxis])[:, 0]
         except PlantError as error:
             self._fail(error, time)

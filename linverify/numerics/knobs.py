@@ -25,7 +25,10 @@ SHRINK = 0.3  # a value that would change its sign is only made smaller
 
 @dataclass(frozen=True, slots=True)
 class Knob:
-    """A number that may be stale. kind: "parameter" or "hold"; size: what a change of it is measured by."""
+    """A number that may be stale.
+
+    kind: "parameter", "hold", or "gain" of what a loop gives; size: what a change of it is measured by.
+    """
 
     name: str
     kind: str

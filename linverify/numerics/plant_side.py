@@ -121,6 +121,8 @@ class _Way:
             if self.piece.used > self.rig.evaluations * self.drives.width:
                 self._fail(self.batch.active, self.times[k, -1], SPENT.format(self.rig.evaluations))
                 break
+        if self.drives.pieces.sampled and self.rig.updates and self.batch.active.any():
+            self._last()
         if discrete:
             # outputs are read at instants, with that instant's input: a jump has no left side
             self.result.deviations[:, :-1, -1] = self.result.deviations[:, 1:, 0]
@@ -173,6 +175,25 @@ class _Way:
             self._note(int(column), batch.begun, Outcome.PLANT_RAISED if raised else Outcome.NOT_FINITE, text)
         if bad.any():
             batch.stop(bad, 0.0)
+
+    def _last(self) -> None:
+        """Where only right-hand values mean anything, the last one too is what comes after the controllers act."""
+        k = self.drives.count - 1
+        running = self.batch.active.copy()
+        self.batch.begun = float(self.times[k, -1])
+        self.piece.t = self.rig.point.time + self._ticks(self.batch.begun)
+        self.piece.u = self.rig.point.u[:, np.newaxis] + self.drives.end[:, k]
+        self._update()
+        values = self._values(k, self.times.shape[1] - 1, self.batch.x)
+        found = values - self.result.reference[:, k, -1, np.newaxis]
+        self.result.deviations[:, k, -1] = np.where(running, found, self.result.deviations[:, k, -1])
+
+    def _values(self, k: int, j: int, x: Array) -> Array:
+        """The watched signals at node j of piece k, absolute, (w, N)."""
+        states, outputs = self.rig.plant.states, self.rig.plant.outputs
+        y = self._measured(k, j, x)
+        rows = [x[states.index(name)] if name in states else y[outputs.index(name)] for name in self.names]
+        return np.array(rows).reshape(len(rows), -1)
 
     def _outside(self, k: int) -> None:
         """Stop the drives whose inputs leave the plant's domain in piece k."""

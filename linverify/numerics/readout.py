@@ -172,10 +172,15 @@ def acts(time: float, period: float, phase: float) -> bool:
     return passed > -0.5 and abs(passed - np.floor(passed + 0.5)) < JITTER * max(1.0, abs(passed))
 
 
-def _model_jumped(readout: Readout, x: Array, k: int) -> Array:
-    u = readout.known(readout.inputs(k, 0.0))
+def model_last(readout: Readout, x: Array) -> Array:
+    """The local model's states x at the end of the drive after what sampled controllers do there."""
+    return _model_jumped(readout, x, readout.count - 1, 1.0)
+
+
+def _model_jumped(readout: Readout, x: Array, k: int, share: float = 0.0) -> Array:
+    u, time = readout.known(readout.inputs(k, share)), readout.time(k, readout.nodes if share else 0)
     for jump in readout.rig.model.jumps:
-        if acts(readout.time(k, 0), jump.period, jump.phase):
+        if acts(time, jump.period, jump.phase):
             x = np.asarray(jump.A @ x + jump.B @ u)
     return x
 

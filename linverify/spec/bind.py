@@ -34,7 +34,7 @@ from linverify.core.plant import Plant
 
 from .actuators import bind_actuators, check_trimmed
 from .bound_loops import BoundLoops, LoopBinder
-from .closed import around_loops, by_set, check_bands, check_closed, known_loops, moved_by_set
+from .closed import around_loops, by_set, check_bands, check_closed, inside, known_loops, moved_by_set
 from .envelopes import bind_envelope, nominal_sizes
 from .ground import Ground, whole_ratio
 from .layout import Cell, Point, Spec, always_checked, matches
@@ -160,19 +160,20 @@ class _Binder:
         all_bound = len(loops) == len(names)  # else mistakes are told, or nothing of this point is judged
         closed = known_loops(ground, self.spec.local.closed, names, "local_models: with")
         sets = tuple(bind_drives(ground, ask, self.rate_limits, self.limits_shown, loops) for ask in point.drives)
-        told = () if self.spec.local.source else closed  # a delivered model does not tell what loops inside it move
-        moved = {drives.name: moved_by_set(loops, drives, told) if all_bound else ground.inputs for drives in sets}
+        moved = {drives.name: moved_by_set(loops, drives, closed) if all_bound else ground.inputs for drives in sets}
         bound = [bind_band(ground, ask, sets, moved) for ask in point.bands]
         bands = tuple(each for band in bound if band is not None for each in by_set(band, sets, moved, ground.inputs))
         if all_bound:
             check_closed(ground, point.drives, sets, loops, closed)
-            check_bands(ground, sets, bands, loops)
+            check_bands(ground, sets, bands, loops, closed if self.spec.local.source else ())
         return _Shared(sets, bands, bind_modes(ground, point.modes), closed)
 
     def _case(self, point: Point, cell: Cell, own: _Own, shared: _Shared) -> Case:
         parameters, trim, sets, bands = own.parameters, own.trim, shared.sets, shared.bands
-        around = around_loops(self.ground, own.closings.loops, shared.closed, self.actuators)
-        local, told_local = self.local.of(cell, Asked(sets, bands, shared.modes), around)
+        around = around_loops(self.ground, own.closings.loops, shared.closed, self.actuators, self.delays)
+        within = tuple(loop.name for loop in inside(own.closings.loops, shared.closed))
+        asked = Asked(sets, bands, shared.modes, tuple(around.moved), within)
+        local, told_local = self.local.of(cell, asked, around)
         told = (
             *told_local,
             *_told_rates(self.spec, point, self.ground.inputs),
@@ -256,7 +257,7 @@ class _Binder:
 def _relatives(cases: tuple[Case, ...], index: int) -> tuple[Relative, ...]:
     """The points beside one, in the order of the spec: for one of them its model may have been handed over."""
     beside = (*cases[max(index - BESIDE, 0) : index], *cases[index + 1 : index + 1 + BESIDE])
-    return tuple(Relative(case.point, case.trim, case.parameters) for case in beside if not case.skipped)
+    return tuple(Relative(case.point, case.trim, case.parameters, case.loops) for case in beside if not case.skipped)
 
 
 def _told_cell(plant: Plant, point: Point, cell: Cell) -> tuple[Setting, ...]:

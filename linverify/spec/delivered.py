@@ -32,7 +32,7 @@ def bind_delivered(
 ) -> DeliveredModel | None:
     """The model of `claim` in the plant's units, or None after telling what is wrong with it.
 
-    optional: inputs that it need not have, since loops inside it move them.
+    optional: inputs and states that it need not have, where loops are closed inside it.
     """
     before = len(ground.problems)
     model = _Binding(ground, claim, keep, optional).model()
@@ -155,8 +155,7 @@ class _Binding:
         for kind, kept in wanted.items():
             have: tuple[str, ...] | None = getattr(names, kind)
             if have is not None:  # anonymous states are judged by what outputs do
-                needed = kept if keep is not None else tuple(name for name in kept if name not in self.optional)
-                self._lacks(kind, [name for name in needed if name not in have])
+                self._lacks(kind, [name for name in kept if name not in have and name not in self.optional])
         for kind in ("states", "inputs") if keep is not None else ():
             self._leaves_out(kind, wanted[kind])
         return len(ground.problems) == before

@@ -28,8 +28,8 @@ class Ground:
     """A plant and the mistakes found so far. Mutable: `problems` grows, nothing else changes.
 
     complete: False where parts of the spec could not be read; what is not there may then be among them. named: where
-    the spec names the plant, the place of mistakes of the plant itself. more_states, more_inputs: what closed loops
-    add to those of the plant, with units.
+    the spec names the plant, the place of mistakes of the plant itself. more_states, more_inputs, more_outputs: what
+    closed loops add to those of the plant, with units.
     """
 
     plant: Plant
@@ -38,6 +38,7 @@ class Ground:
     problems: list[Problem] = field(default_factory=list)
     more_states: Mapping[str, str] = field(default_factory=lambda: MappingProxyType({}))
     more_inputs: Mapping[str, str] = field(default_factory=lambda: MappingProxyType({}))
+    more_outputs: Mapping[str, str] = field(default_factory=lambda: MappingProxyType({}))
 
     @property
     def states(self) -> tuple[str, ...]:
@@ -52,7 +53,7 @@ class Ground:
     @property
     def outputs(self) -> tuple[str, ...]:
         """Names of the outputs, those that are states among them."""
-        return tuple(self.plant.outputs or {})
+        return tuple(dict.fromkeys((*(self.plant.outputs or {}), *self.more_outputs)))
 
     @property
     def signals(self) -> tuple[str, ...]:
@@ -61,7 +62,7 @@ class Ground:
 
     def unit(self, name: str) -> str:
         """Unit of a state, input, output or parameter; raises KeyError."""
-        for more in (self.more_states, self.more_inputs):
+        for more in (self.more_states, self.more_inputs, self.more_outputs):
             if name in more:
                 return more[name]
         return self.plant.unit(name)

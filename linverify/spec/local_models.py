@@ -58,14 +58,20 @@ class LocalModels:
         if source is None or not self.delivered or cell.skipped:
             if self.keep is not None:
                 compared = (*self.keep.states, *self.keep.outputs)
-                self._asked_for(self.keep.inputs, compared, self.keep.states, asked, "`keep`")
+                own = replace(asked, moved=(), inside=())  # loops add to what is kept
+                self._asked_for(self.keep.inputs, compared, self.keep.states, own, "`keep`")
             return LocalAsk(None, self.keep, self.agree, around.closed), ()
         models = self._models(source, cell)
         claim = self._claim(models, source, cell)
         if claim is None:
             return LocalAsk(None, self.keep, self.agree, around.closed), ()
-        ground = replace(self.ground, more_states=around.states, more_inputs=around.inputs)
-        model = bind_delivered(ground, claim, self.keep, (*around.inputs, *around.moved))
+        ground = replace(
+            self.ground,
+            more_states={**around.states, **around.waiting},
+            more_inputs=around.inputs,
+            more_outputs=around.moved,
+        )
+        model = bind_delivered(ground, claim, around.kept(self.keep), around.optional)
         if model is not None:
             self._fits(model, asked)
         return LocalAsk(model, self.keep, self.agree, around.closed), tuple(self._told(models, cell))
@@ -126,7 +132,7 @@ class LocalModels:
         asked: Asked,
         where: str,
     ) -> None:
-        plant = (*self.ground.states, *self.ground.outputs)
+        plant = (*self.ground.states, *self.ground.outputs, *asked.moved)
         self._modes(inputs, compared, states, asked.modes, where)
         for band in asked.bands:
             if band.signal in plant and band.signal not in compared:
@@ -134,6 +140,10 @@ class LocalModels:
                 self.ground.report(band.place, wrong, _has(where, compared))
         for drives in asked.sets:
             for name, amplitude in drives.amplitude.items():
+                point = f"{drives.loop}.set_point.{name}"
+                if drives.loop in asked.inside and name not in self.ground.inputs and point not in inputs:
+                    wrong = f"the drives move the set point of {quoted(name)}, which is no input of the local model"
+                    self.ground.report(drives.place, wrong, _has(where, inputs))
                 if name in self.ground.inputs and name not in inputs:
                     wrong = f"the drives move {quoted(name)}, which is no input of the local model"
                     self.ground.report(drives.place, wrong, _has(where, inputs))
@@ -176,11 +186,16 @@ class LocalModels:
 
 @dataclass(frozen=True, slots=True)
 class Asked:
-    """What asks for signals of the local model at one point."""
+    """What asks for signals of the local model at one point.
+
+    moved: plant inputs that loops inside the model move, so that bands can be for them; inside: names of these loops.
+    """
 
     sets: Sequence[DriveSet]
     bands: Sequence[Band]
     modes: Sequence[ModeAsk]
+    moved: Sequence[str] = ()
+    inside: Sequence[str] = ()
 
 
 def _has(where: str, names: Sequence[str]) -> str:

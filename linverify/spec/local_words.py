@@ -16,7 +16,6 @@ from .scalars import fraction
 from .source import Block, Node
 from .words import AGREE_WORDS, DERIVE, RESPONSE_WORDS, default_of
 
-CLOSED_DELIVERIES = False  # models that were delivered with loops inside can be read, and nothing compares them yet
 _FLOOR = "local_models.agree.response.floor"
 
 
@@ -60,9 +59,6 @@ def _together(reader: Reader, places: dict[str, Place], read: Values, derived: b
         reader.tell(places["keep"], "`keep` without `others`", expected)
     if "others" in read and "keep" not in places:
         reader.tell(places["others"], "`others` without `keep`", "it says what becomes of states that are not kept")
-    if "with" in read and not derived and not CLOSED_DELIVERIES:
-        wrong = "`local_models: with` beside a delivered model is not available in this version"
-        reader.tell(places["with"], wrong, "deliver the plant's own model, without loops, or leave `source` out")
     if read.get("with") == ():
         reader.tell(places["with"], "`local_models: with`: the list is empty", "names of loops are expected")
     if "agree" in read and derived:

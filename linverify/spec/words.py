@@ -122,7 +122,7 @@ LOCAL_MODEL_WORDS = (
     Row("source", Kind.SOURCE, "where local models come from", default=DERIVE),
     Row("keep", Kind.BLOCK, "states, inputs, outputs of a reduced model", KEEP_WORDS),
     Row("others", Kind.CHOICE, "what is left out is frozen or settled", choices=("freeze", "settle")),
-    Row("with", Kind.NAMES, "loops that are closed inside a derived model"),
+    Row("with", Kind.NAMES, "loops that are closed inside the local model, derived or delivered"),
     Row("agree", Kind.BLOCK, "delivered against derived", AGREE_WORDS),
 )  # fmt: skip
 

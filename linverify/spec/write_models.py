@@ -11,11 +11,13 @@ from dataclasses import dataclass
 from pathlib import Path
 from types import MappingProxyType
 
+import numpy as np
+
 from linverify.core.delivered import DeliveredModel
 from linverify.core.errors import LinverifyError, Place
 from linverify.core.model import Array, LocalModel
 
-from .claims import COLUMNS_OF, MATRICES, NAMES, POINTS, ROWS_OF
+from .claims import COLUMNS_OF, EXACT, MATRICES, NAMES, POINTS, ROWS_OF, half_units, shown_digits
 from .models import POINT, SUFFIXES
 
 
@@ -154,19 +156,35 @@ def _words(sheet: Sheet, *, alone: bool = True) -> dict[str, object]:
     for word in POINTS:
         values = dict(getattr(model, word))
         words |= {word: values} if values else {}
-    return words | {name: getattr(model, name).tolist() for name in MATRICES}
+    return words | {name: getattr(model, name) for name in MATRICES}
 
 
 def _json_group(words: Mapping[str, object], indent: str) -> str:
     """A word a line, a row of a matrix a line, so that a change shows as the line that changed."""
     lines = []
     for word, value in words.items():
-        if word in MATRICES and isinstance(value, list) and value:
-            rows = f",\n{indent}    ".join(json.dumps(row, allow_nan=False) for row in value)
-            lines.append(f"{indent}  {json.dumps(word)}: [\n{indent}    {rows}]")
+        if isinstance(value, np.ndarray):
+            rows = f",\n{indent}    ".join(f"[{', '.join(row)}]" for row in _exact(value))
+            lines.append(f"{indent}  {json.dumps(word)}: " + (f"[\n{indent}    {rows}]" if len(value) else "[]"))
         else:
             lines.append(f"{indent}  {json.dumps(word)}: {json.dumps(value, allow_nan=False)}")
     return "{\n" + ",\n".join(lines) + f"\n{indent}}}"
+
+
+def _exact(values: Array) -> list[list[str]]:
+    """The numbers of a matrix in their shortest form, one of them in full where they would be taken for rounded ones.
+
+    Raises ValueError for a number that is not finite.
+    """
+    if not np.isfinite(values).all():
+        raise ValueError("a model holds a number that is not finite")
+    flat = [float(value) for value in values.ravel()]
+    texts = [repr(value) for value in flat]
+    if texts and half_units(values, texts) is not None:
+        longest = max(range(len(texts)), key=lambda at: shown_digits(texts[at]))
+        texts[longest] = f"{flat[longest]:.{EXACT - 1}e}"
+    width = values.shape[1]
+    return [texts[row * width : (row + 1) * width] for row in range(len(values))]
 
 
 def _states(model: DeliveredModel) -> tuple[str, ...]:
@@ -174,10 +192,10 @@ def _states(model: DeliveredModel) -> tuple[str, ...]:
     return tuple(f"#{index + 1}" for index in range(len(model.A))) if model.states is None else model.states
 
 
-def _table(sheet: Sheet, word: str) -> tuple[tuple[str, ...], tuple[str, ...], Array]:
+def _table(sheet: Sheet, word: str) -> tuple[tuple[str, ...], tuple[str, ...], list[list[str]]]:
     model = sheet.model
     names = {"states": _states(model), "inputs": model.inputs, "outputs": model.outputs}
-    return names[ROWS_OF[word]], names[COLUMNS_OF[word]], getattr(model, word)
+    return names[ROWS_OF[word]], names[COLUMNS_OF[word]], _exact(getattr(model, word))
 
 
 def _folder(sheet: Sheet) -> dict[str, str]:
@@ -186,7 +204,7 @@ def _folder(sheet: Sheet) -> dict[str, str]:
         rows, columns, values = _table(sheet, word)
         lines = [
             [word, *columns],
-            *([row, *map(repr, map(float, line))] for row, line in zip(rows, values, strict=True)),
+            *([row, *line] for row, line in zip(rows, values, strict=True)),
         ]
         texts[f"{word}.csv"] = _csv(lines)
     model = sheet.model
@@ -219,7 +237,7 @@ def _long(group: Mapping[str, Sheet], *, alone: bool) -> str:
         for word in MATRICES:
             rows, columns, values = _table(sheet, word)
             for i, row in enumerate(rows):
-                lines += [[op, word, row, column, repr(float(values[i, j]))] for j, column in enumerate(columns)]
+                lines += [[op, word, row, column, values[i][j]] for j, column in enumerate(columns)]
     return _csv(lines)
 
 

@@ -11,7 +11,7 @@ import pytest
 
 from linverify.core.case import Amplitude, Case, CheckAsk
 from linverify.core.errors import Place, SpecError
-from linverify.spec import bind, local_words
+from linverify.spec import bind
 
 PLANT = (Path(__file__).parent / "bad" / "plant.py").read_text(encoding="utf-8")
 HEAD = """\
@@ -172,16 +172,9 @@ def model(**changes: Any) -> dict[str, Any]:
     return made | changes
 
 
-@pytest.fixture
-def read_closed(monkeypatch: pytest.MonkeyPatch) -> None:
-    """Models with loops inside are read as they will be."""
-    monkeypatch.setattr(local_words, "CLOSED_DELIVERIES", True)
-
-
 CLOSED = "local_models: {source: m.json, with: [level]}\n"
 
 
-@pytest.mark.usefixtures("read_closed")
 def test_a_delivered_model_names_set_points_and_controller_states(load: Load) -> None:
     (case,) = load(CLOSED, model(inputs=["heat", "level.set_point.level", "pump"]))
     delivered = case.local.delivered
@@ -191,14 +184,12 @@ def test_a_delivered_model_names_set_points_and_controller_states(load: Load) ->
     assert case.local.closed == ("level",)
 
 
-@pytest.mark.usefixtures("read_closed")
 def test_inputs_that_loops_inside_move_may_be_left_out(load: Load) -> None:
     (case,) = load(CLOSED, model())
     assert case.local.delivered is not None
     assert wrongs(load, CLOSED, model=model(inputs=["heat"])) == ["`inputs` lacks pump"]
 
 
-@pytest.mark.usefixtures("read_closed")
 def test_units_of_set_points_are_those_of_their_signals(load: Load) -> None:
     (case,) = load(
         CLOSED, model(inputs=["heat", "pump", "level.set_point.level"], units={"level.set_point.level": "cm"})
@@ -207,7 +198,6 @@ def test_units_of_set_points_are_those_of_their_signals(load: Load) -> None:
     assert case.local.delivered.B[0, 2] == pytest.approx(100.0)
 
 
-@pytest.mark.usefixtures("read_closed")
 def test_a_lag_of_what_is_moved_is_a_state(load: Load) -> None:
     lag = "actuators: {inflow: {lag: 3 s}}\n"
     states = ["level", "temperature", "angle", "inflow.lag", "level.1"]
@@ -217,7 +207,6 @@ def test_a_lag_of_what_is_moved_is_a_state(load: Load) -> None:
     assert wrongs(load, CLOSED + lag, model=model()) == ["`states` lacks inflow.lag"]
 
 
-@pytest.mark.usefixtures("read_closed")
 def test_names_that_no_closed_loop_has(load: Load) -> None:
     told = wrongs(load, CLOSED, model=model(inputs=["heat", "pump", "level.set_point.levl"]))
     assert told == ["the plant has no 'level.set_point.levl'"]
@@ -225,9 +214,49 @@ def test_names_that_no_closed_loop_has(load: Load) -> None:
     assert open_model == ["the plant has no 'level.1'"]
 
 
-@pytest.mark.usefixtures("read_closed")
 def test_bands_on_what_loops_in_a_delivered_model_move(load: Load) -> None:
+    """They can be judged where the model has what is moved as an output."""
     text = CLOSED + "drives: {horizon: 30 min, every: 1 min, amplitude: {heat: 1}}\nerror_bands: {inflow: {peak: 1}}\n"
-    assert wrongs(load, text, model=model()) == [
-        "'inflow' is an input, and both models are driven with the same inputs"
-    ]
+    assert wrongs(load, text, model=model()) == ["an error band for 'inflow', which the local model does not have"]
+    (case,) = load(text, model(outputs=["level", "inflow"], C=[[1, 0, 0, 0], [-3, 0, 0, 1]]))
+    assert [band.signal for band in case.bands] == ["inflow"]
+    other = text.replace("inflow: {peak", "pump: {peak")
+    assert wrongs(load, other, model=model()) == ["'pump' is an input, and both models are driven with the same inputs"]
+
+
+def test_drives_at_the_set_point_of_a_loop_inside(load: Load) -> None:
+    drives = "drives: {horizon: 30 min, every: 1 min, amplitude: {level: 1 cm}, loop: level, at: set_point}\n"
+    text = CLOSED + drives + "error_bands: {level: {peak: 1 cm}}\n"
+    (case,) = load(text, model(inputs=["heat", "level.set_point.level", "pump"]))
+    assert (case.drives[0].loop, case.drives[0].at) == ("level", "set_point")
+    told = wrongs(load, text, model=model())
+    assert told == ["the drives move the set point of 'level', which is no input of the local model"]
+    derived = wrongs(load, text.replace("source: m.json, ", ""))  # there a band on what is moved can always be had
+    assert derived == ["no error band is for inflow, which the loop 'level' moves in these drives"]
+
+
+def test_what_is_kept_is_of_the_plant_and_loops_keep_their_own(load: Load) -> None:
+    kept = "{states: [level], inputs: [heat], outputs: [level]}"
+    keep = f"local_models: {{source: m.json, with: [level], keep: {kept}, others: settle}}\n"
+    made = model(states=["level.1", "level"], inputs=["heat", "level.set_point.level"], A=[[-1.0] * 2] * 2,
+                 B=[[1.0, 1.0]] * 2, C=[[0, 1]])  # fmt: skip
+    (case,) = load(keep, made)
+    assert case.local.keep is not None
+    assert case.local.keep.states == ("level",)
+    assert case.local.delivered is not None
+    assert case.local.delivered.states == ("level.1", "level")
+    told = wrongs(load, keep, model=made | {"states": ["temperature", "level"]})
+    assert told == ["`states` lacks level.1", "'temperature' is not kept"]
+
+
+def test_holds_of_sampled_loops_may_be_states(load: Load) -> None:
+    loops = LOOPS.replace("moves: [inflow]}", "moves: [inflow], sample: 6 s}")
+    states = ["level", "temperature", "angle", "level.1", "level.held.1"]
+    one = model(dt=0.1)
+    (case,) = load(CLOSED, one, loops=loops)
+    wide = one | {"states": states, "A": [[-1.0] * 5] * 5, "B": [[1.0, 1.0]] * 5, "C": [[1, 0, 0, 0, 0]]}
+    (other,) = load(CLOSED, wide, loops=loops)
+    assert case.local.delivered is not None
+    assert other.local.delivered is not None
+    assert other.local.delivered.states == tuple(states)
+    assert wrongs(load, CLOSED, model=wide) == ["the plant has no 'level.held.1'"]

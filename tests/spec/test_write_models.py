@@ -114,6 +114,7 @@ def read_back(plant: Plant, folder: Path, to: str, point: str, keep: Keep | None
     model = bind_delivered(ground, claim, keep)
     assert ground.problems == []
     assert model is not None
+    assert not model.rounding  # what we write ourselves is no rounded number
     return model
 
 

@@ -15,7 +15,7 @@ import numpy as np
 from ..core.bound import BoundPlant
 from ..core.case import Case, DriveSet
 from ..core.loop import Actuator, Loop
-from ..core.model import LocalModel, OperatingPoint
+from ..core.model import LocalModel, OperatingPoint, frozen_array
 from ..core.signals import Signals
 from ..core.units import told
 from ..numerics.allpass import ORDER, good_up_to
@@ -260,7 +260,10 @@ class ClosedStudy(Study):
         if id(model) not in self._models:
             inner = self._named_as_driven(model, without)
             wiring = self._wiring(inner.inputs.names, False, without)
-            whole = closed_model(inner, replace(wiring, step=model.step), self._closed.point)
+            if wiring.loops or wiring.actuators:
+                whole = closed_model(inner, replace(wiring, step=model.step), self._closed.point)
+            else:
+                whole = replace(inner, at=self._closed.point)
             self._models[id(model)] = (model, self._driven_only(whole) if without else whole)
         return self._models[id(model)][1]
 
@@ -276,7 +279,12 @@ class ClosedStudy(Study):
         """The inputs that the closed plant has: set points of loops inside the model rest unless drives move them."""
         known = self._closed.plant.inputs
         kept = [name for name in model.inputs.names if name in known]
-        return model if len(kept) == len(model.inputs) else restricted(model, kept, model.outputs.names)
+        if len(kept) == len(model.inputs):
+            return model
+        columns = [model.inputs.index(name) for name in kept]
+        jumps = tuple(replace(jump, B=frozen_array(jump.B[:, columns])) for jump in model.jumps)
+        ahead = None if model.ahead is None else frozen_array(model.ahead[:, columns])
+        return replace(restricted(model, kept, model.outputs.names), jumps=jumps, ahead=ahead)
 
     def _moved_by(self, names: Sequence[str]) -> set[str]:
         """Plant inputs that the loops called `names` move."""

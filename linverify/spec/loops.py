@@ -2,10 +2,12 @@
 
 from __future__ import annotations
 
+from collections.abc import Sequence
 from typing import cast
 
 from linverify.core.errors import Place
 from linverify.core.loop import BreakPoint
+from linverify.core.signals import nearest
 
 from .atoms import Word
 from .kinds import Values, block
@@ -23,6 +25,7 @@ from .loop_layout import (
 from .loop_words import CONTROLLER_WORDS, LOOP_WORDS, PID_WORDS
 from .merge import shown
 from .reader import Reader, check_name, misspelt
+from .scalars import quoted
 from .source import Block, Node, Scalar
 from .words import default_of
 
@@ -30,10 +33,13 @@ FORMS = (("pid",), ("num", "den"), ("A", "B", "C", "D"), ("gain",), ("file",), (
 _ONE_FORM = "one of pid, num with den, A with B, C and D, gain, file or object is expected"
 
 
-def read_loops(reader: Reader, key: Scalar, node: Node, whole: bool) -> tuple[LoopAsk, ...]:
+def read_loops(
+    reader: Reader, key: Scalar, node: Node, whole: bool, declared: Sequence[str] = ()
+) -> tuple[LoopAsk, ...]:
     """The loops under `key`; whole: False where `controller` and others may still come from elsewhere.
 
-    Whatever can be judged without the plant is judged: words, forms, lists, names of loops.
+    declared: names of the loops of the whole spec, of which one may be meant by a point. Whatever can be judged without
+    the plant is judged: words, forms, lists, names of loops.
     """
     if not isinstance(node, Block):
         reader.misfit(node, "loops", "a group of `name: {controller: ..., measures: [...], moves: [...]}` is expected")
@@ -43,9 +49,25 @@ def read_loops(reader: Reader, key: Scalar, node: Node, whole: bool) -> tuple[Lo
     asks = []
     for name, value in reader.named(node, "loops", "a loop"):
         check_name(reader, name, "a loop")
+        if whole and _another(reader, name, value, declared):
+            continue
         ask = _loop(reader, name, value, whole)
         asks += [ask] if ask else []
     return tuple(asks)
+
+
+def _another(reader: Reader, name: Scalar, node: Node, declared: Sequence[str]) -> bool:
+    """True, and told, where a loop that lacks words was probably meant to be one of the whole spec."""
+    hint = "" if name.text in declared else nearest(name.text, declared)
+    if not hint or not isinstance(node, Block):
+        return False
+    missing = [row.word for row in LOOP_WORDS if row.required and row.word not in node.words]
+    if not missing:
+        return False
+    block(reader, node, LOOP_WORDS, f"loops: {name.text}")
+    wrong = f"no loop of the spec is called {quoted(name.text)}, and a new one needs {', '.join(missing)}"
+    reader.tell(name.place, wrong, f"one of {', '.join(declared)} is expected", hint)
+    return True
 
 
 def _loop(reader: Reader, name: Scalar, node: Node, whole: bool) -> LoopAsk | None:

@@ -88,12 +88,15 @@ class PointReader:
             drive_sets(self.reader, drives_key, drives, whole, names) if drives and drives_key else (),
             error_bands(self.reader, bands_key, bands, sets) if bands and bands_key else (),
             mode_lines(self.reader, modes_key, modes) if modes and modes_key and _available("modes") else (),
-            read_loops(self.reader, loops_key, loops, whole) if loops and loops_key and _available("loops") else (),
+            self._loops(loops_key, loops, whole) if loops and loops_key and _available("loops") else (),
         )
         if whole:
             self._groups[known] = read
             self._together(drives_key, bands_key, read)
         return read
+
+    def _loops(self, key: Scalar, node: Node, whole: bool) -> tuple[LoopAsk, ...]:
+        return read_loops(self.reader, key, node, whole, loop_names(self.spec.get("loops")) or ())
 
     def _together(self, drives: Scalar | None, bands: Scalar | None, read: _Group) -> None:
         if drives and not bands and not misspelt("error_bands", self.spec, SPEC_WORDS):

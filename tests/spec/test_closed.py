@@ -260,3 +260,15 @@ def test_holds_of_sampled_loops_may_be_states(load: Load) -> None:
     assert other.local.delivered is not None
     assert other.local.delivered.states == tuple(states)
     assert wrongs(load, CLOSED, model=wide) == ["the plant has no 'level.held.1'"]
+
+
+def test_a_misspelt_loop_of_a_point_is_told_with_the_right_name(load: Load) -> None:
+    head = HEAD + "  high: {hold: {level: 2 m, temperature: 60 degC, angle: 0 rad}, loops: {%s}}\n"
+    with pytest.raises(SpecError) as caught:
+        load("", head=head % "levl: {controller: {pid: {kp: 9}}, dely: 2 s}")
+    told = [(problem.wrong, problem.hint) for problem in caught.value.problems]
+    assert ("no loop of the spec is called 'levl', and a new one needs measures, moves", "level") in told
+    assert any(hint == "delay" for _, hint in told)
+    assert len(told) == 2
+    _, high = load("", head=head % "levels: {controller: {gain: 2}, measures: [level], moves: [pump]}")
+    assert list(high.loops) == ["levels", "level", "warm", "outer"]

@@ -13,6 +13,7 @@ from scipy.linalg import matrix_balance
 from ..core.model import Array
 
 WITHIN = 1e-13  # of the norm of [A B]: what a step adds to the space reached is rounding
+INDEPENDENT = 0.5  # of a unit vector: what is left of it beside the space reached, else it lies in that space
 
 
 def balanced(A: Array, B: Array, C: Array) -> tuple[Array, Array, Array]:
@@ -56,7 +57,12 @@ def reached(A: Array, B: Array) -> Array:
         for _ in range(2):  # the second time removes what rounding of the first has left
             added = added - basis @ (basis.T @ added)
         left, values, _ = np.linalg.svd(added, full_matrices=False)
+        # rounding along the basis is large beside an addition that is small: what was added is cleared of it once more
         fresh = left[:, values > least]
+        fresh = fresh - basis @ (basis.T @ fresh)
+        left, values, _ = np.linalg.svd(fresh, full_matrices=False)
+        fresh = left[:, values > INDEPENDENT]
+        fresh = fresh - basis @ (basis.T @ fresh)
         basis = np.hstack([basis, fresh])
         added, least = A @ fresh, WITHIN * size
     return basis

@@ -7,6 +7,7 @@ from typing import Any
 import numpy as np
 import pytest
 
+from linverify.numerics.minimal import reached
 from linverify.numerics.transfer import Transfer
 from linverify.numerics.unmoved import split
 
@@ -97,3 +98,17 @@ def test_slow_and_fast_together() -> None:
     cascade = np.diag(poles) + np.diag(-poles[1:], -1)
     loop = Transfer(cascade, np.eye(5, 1), np.eye(1, 5, 4), np.zeros((1, 1)))
     assert not split(loop, NAMES[:5]).unmoved
+
+
+@pytest.mark.parametrize("seed", range(40))
+def test_weak_coupling_spoils_no_basis(seed: int) -> None:
+    """What a step adds may be tiny beside the rounding along what is there already."""
+    rng = np.random.default_rng(seed)
+    n = int(rng.integers(2, 7))
+    A, B = rng.normal(size=(n, n)), np.zeros((n, 2))
+    A[n // 2 :, : n // 2] *= 10.0 ** rng.uniform(-13.0, -9.0)
+    B[: n // 2] = rng.normal(size=(n // 2, 2))
+    turn = np.linalg.qr(rng.normal(size=(n, n)))[0]
+    basis = reached(turn @ A @ turn.T, turn @ B)
+    assert basis.shape[1] <= n
+    assert np.abs(basis.T @ basis - np.eye(basis.shape[1])).max() < 1e-13

@@ -29,7 +29,8 @@ def key_of(comparison: Comparison, drive: Drive) -> str:
 def text_of(comparison: Comparison, drive: Drive) -> str:
     """The drive in one readable line."""
     case, drives = comparison.case, comparison.drives
-    return worded(drive, case.shown_moves(drives), case.shown_time(drives))
+    points = case.loops[drives.loop].measures if drives.loop and drives.at == "set_point" else ()
+    return worded(drive, case.shown_moves(drives), case.shown_time(drives), points)
 
 
 def saved(

@@ -2,7 +2,7 @@
 
 from __future__ import annotations
 
-from collections.abc import Mapping
+from collections.abc import Collection, Mapping
 from dataclasses import dataclass
 
 import numpy as np
@@ -26,16 +26,18 @@ class _Move:
     value: float
 
 
-def worded(drive: Drive, shown: Mapping[str, Shown], time: Shown) -> str:
+def worded(drive: Drive, shown: Mapping[str, Shown], time: Shown, set_points: Collection[str] = ()) -> str:
     """For example "fore_flap steps to +1.5 deg at 0.4 s, back at 1.2 s; pitch starts 0.5 deg high".
 
-    shown: the units that inputs and states are told in; time: that of instants. Values are deviations from trim.
+    shown: the units that inputs and states are told in; time: that of instants; set_points: inputs that are set points
+    of the signals of that name, told so. Values are deviations from trim.
     """
     parts = []
     for column, name in enumerate(drive.inputs):
         course = drive.values[:, column]
         if np.any(course):
-            parts.append(f"{name} {_course(course, drive, shown.get(name, PLAIN), time)}")
+            called = f"set point of {name}" if name in set_points else name
+            parts.append(f"{called} {_course(course, drive, shown.get(name, PLAIN), time)}")
     for name, value in drive.offsets.items():
         if value != 0.0:
             side = "high" if value > 0.0 else "low"

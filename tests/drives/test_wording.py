@@ -47,3 +47,9 @@ def test_the_units_are_those_that_were_written() -> None:
     drive = Drive(30.0, ("flap",), values, offsets={"pitch": 0.3 * np.pi / 180.0})
     told = worded(drive, shown, Shown("min", 1.0 / 60.0))
     assert told == "flap steps to +0.4 deg at 0 min; pitch starts 0.3 deg high"
+
+
+def test_a_set_point_is_told_as_one() -> None:
+    drive = Drive(0.5, ("pos", "flap"), np.array([[-0.1, 2.0], [-0.1, 0.0]]))
+    told = worded(drive, {"pos": Shown("m"), "flap": Shown("deg")}, Shown("s"), ("pos", "speed"))
+    assert told == "set point of pos steps to -0.1 m at 0 s; flap steps to +2 deg at 0 s, back at 0.5 s"

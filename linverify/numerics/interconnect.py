@@ -8,11 +8,13 @@ connection are all continuous, or all difference equations of one step.
 
 from __future__ import annotations
 
-from collections.abc import Mapping, Sequence
+from collections.abc import Iterator, Mapping, Sequence
 from dataclasses import dataclass
 
 import numpy as np
+from numpy.typing import NDArray
 from scipy.linalg import matrix_balance
+from scipy.sparse.csgraph import connected_components
 
 from ..core.model import Array
 
@@ -85,13 +87,22 @@ def solved(matrix: Array, right: Array) -> Array:
     """(1 + matrix)^-1 right, matrix (m, m): the equations of a cycle of direct feedthrough. Raises IllPosedError."""
     if not matrix.any():
         return right
-    # balanced first, since a condition number means nothing where rows have different units
+    for cycle in _cycles(matrix):
+        # balanced first, since a condition number means nothing where rows have different units
+        balanced, _ = matrix_balance(matrix[np.ix_(cycle, cycle)], permute=False, separate=True)
+        values = np.linalg.svd(np.eye(len(cycle)) + balanced, compute_uv=False)
+        if values[-1] <= SINGULAR * values[0]:
+            raise IllPosedError("direct feedthrough around the loop leaves its equations without a solution")
     balanced, (scale, _) = matrix_balance(matrix, permute=False, separate=True)
     equations = np.eye(len(matrix)) + balanced
-    values = np.linalg.svd(equations, compute_uv=False)
-    if values[-1] <= SINGULAR * values[0]:
-        raise IllPosedError("direct feedthrough around the loop leaves its equations without a solution")
     return np.asarray(np.linalg.solve(equations, right / scale[:, np.newaxis]) * scale[:, np.newaxis])
+
+
+def _cycles(matrix: Array) -> Iterator[NDArray[np.intp]]:
+    """Places of equations that wait for each other: only those can be without a solution, however large a gain is."""
+    count, group = connected_components(matrix != 0.0, directed=True, connection="strong")
+    for number in range(count):
+        yield np.flatnonzero(group == number)
 
 
 def _side_by_side(blocks: Sequence[Block]) -> Block:

@@ -69,3 +69,14 @@ def test_equations_of_feedthrough() -> None:
     assert solved(np.array([[1.0]]), np.array([[3.0]])) == pytest.approx(1.5)
     with pytest.raises(IllPosedError):
         solved(np.array([[-1.0]]), np.array([[3.0]]))
+
+
+@pytest.mark.parametrize("gain", [1e6, 1e9, 1e15])
+def test_no_gain_is_too_large_where_nothing_feeds_through_in_a_circle(gain: float) -> None:
+    plant = Block(np.zeros((1, 1)), np.array([[1.0 / gain]]), np.eye(1), np.zeros((1, 1)), ("x",), ("u",), ("y",))
+    wires = [Wire("y", "e", -1.0), Wire("v", "u")]
+    closed = connected([plant, gain_block("k", np.array([[gain]]), ("e",), ("v",))], wires)
+    assert closed.A[0, 0] == pytest.approx(-1.0, rel=1e-12)
+    assert solved(np.array([[0.0, gain], [0.0, 0.0]]), np.eye(2)) == pytest.approx(
+        np.array([[1.0, -gain], [0.0, 1.0]]), rel=1e-12
+    )

@@ -29,6 +29,7 @@ from .mode_model import _with_rounding
 from .study import Study
 
 OPEN = "the errors of the local model's entries leave open whether"
+HARDLY = 0.4  # the same in a model whose entries are off by their errors
 DOMINATES = 0.5  # share of the states that `leaves` names in a mode from which on it is theirs
 
 
@@ -107,7 +108,7 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
     if others is None or not all(other.stable and other.outcome.done for other in others):
         found.reasons.append((Status.UNDECIDED, f"{OPEN} the loop is stable"))
         return
-    if not _loose(one, excused) and any(_loose(other, _covered(loop, other)) for other in others):
+    if not _loose(one, excused) and any(_loose(other, _covered(loop, other, HARDLY)) for other in others):
         found.reasons.append((Status.UNDECIDED, f"{OPEN} a pole that the loop does not move is stable"))
     made, silent = figures(case, loop, one, others)
     found.figures += made
@@ -132,9 +133,10 @@ def _confirm(study: Study, loop: Loop, one: LoopMargins, found: _Found) -> None:
     found.details["confirmed"] = [dict(each) for each in tried.details]
 
 
-def _covered(loop: Loop, one: LoopMargins) -> list[bool]:
+def _covered(loop: Loop, one: LoopMargins, least: float = DOMINATES) -> list[bool]:
     """Whether `leaves` covers each of the poles that the loop does not move."""
-    return [sum(share for name, share in pole.shares if name in loop.leaves) >= DOMINATES for pole in one.unmoved]
+    shares = [sum(share for name, share in pole.shares if name in loop.leaves) for pole in one.unmoved]
+    return [round(share, 9) >= least for share in shares]
 
 
 def _unmoved(one: LoopMargins, excused: Sequence[bool], found: _Found) -> None:

@@ -212,3 +212,11 @@ def test_a_lag_that_the_controller_cancels_leaves_the_integrator_exact() -> None
     verdict = judged(plant, loop(lead, least("gain_margin", 2.0)))
     assert verdict.status is Status.PASS, verdict.reason
     assert math.isinf(figure(verdict, "gain margin (downwards)").worst)
+
+
+def test_one_state_of_an_oscillation_covers_it() -> None:
+    # an unstable oscillation beside the loop, in which two states take part alike
+    A, B, C = [[-1.0, 0.0, 0.0], [0.0, 0.1, 1.0], [0.0, -1.0, 0.1]], [[1.0], [0.0], [0.0]], np.eye(1, 3)
+    plant = linear_plant(A, B, C)
+    assert judged(plant, loop(gain([[1.5]]), leaves=("x2",))).status is Status.PASS
+    assert judged(plant, loop(gain([[1.5]]), leaves=("x1",))).status is Status.FAIL

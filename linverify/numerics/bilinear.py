@@ -16,7 +16,7 @@ from scipy.linalg import expm, matrix_balance
 from ..core.model import Array
 from .transfer import Transfer
 
-AT_NYQUIST = 1e-13  # smallest singular value of A + I, of its norm: nearer, there is a pole at z = -1
+AT_NYQUIST = 1e-13  # change of the entries of A + I, of themselves, that may make it singular: a pole at z = -1
 
 
 def change(loop: Transfer) -> Array:
@@ -46,10 +46,14 @@ def at_nyquist(F: Array) -> bool:
     """True where A = I + F has a pole at z = -1 to within rounding."""
     if not len(F):
         return False
-    # scaled first: in foreign units a small singular value says nothing
-    F = np.asarray(matrix_balance(F, permute=False)[0])
     up = 2.0 * np.eye(len(F)) + F
-    return bool(np.linalg.svd(up, compute_uv=False)[-1] <= AT_NYQUIST * max(1.0, float(np.linalg.norm(up))))
+    try:
+        grown = np.abs(np.linalg.inv(up)) @ np.abs(up)
+    except np.linalg.LinAlgError:
+        return True
+    # the least condition number that any scaling of rows and columns gives (Bauer 1963): units of states say nothing,
+    # not even where nothing comes back from one state to another and balancing has nothing to go by
+    return not (np.isfinite(grown).all() and float(np.abs(np.linalg.eigvals(grown)).max()) < 1.0 / AT_NYQUIST)
 
 
 def mapped(F: Array, b: Array, c: Array, d: float, step: float) -> tuple[Array, Array, Array, float]:

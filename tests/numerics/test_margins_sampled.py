@@ -64,8 +64,20 @@ def test_units_of_states_do_not_matter() -> None:
         assert getattr(other, name).value == pytest.approx(getattr(one, name).value, rel=1e-8)
 
 
-def test_pole_at_half_the_sample_rate_is_not_guessed_at() -> None:
-    assert margins(ratio([0.1], product([1, 1], [1, -0.5]), step=1.0)).outcome is Outcome.UNVERIFIED
+@pytest.mark.parametrize("size", [1e-9, 1.0, 1e9])
+def test_pole_at_half_the_sample_rate_is_not_guessed_at(size: float) -> None:
+    loop = scaled(ratio([0.1], product([1, 1], [1, -0.5]), step=1.0), np.array([1.0, size]))
+    assert margins(loop).outcome is Outcome.UNVERIFIED
+
+
+@pytest.mark.parametrize("size", [1e-9, 1e9])
+def test_two_integrators_in_units_far_apart_have_no_pole_at_half_the_sample_rate(size: float) -> None:
+    # nothing comes back from one integrator to the other, so balancing A alone leaves 1e9 beside 1 as it stands
+    loop = held(ratio([1, 1], [1, 0, 0]), 0.05)
+    one, other = margins(loop), margins(scaled(loop, np.array([1.0, size])))
+    assert one.outcome is other.outcome is Outcome.DONE
+    for name in ("gain_up", "phase", "disk", "sensitivity", "complementary"):
+        assert getattr(other, name).value == pytest.approx(getattr(one, name).value, rel=1e-9)
 
 
 def test_held_change_keeps_small_differences() -> None:

@@ -9,9 +9,11 @@ import pytest
 from basin_project import PLANT, SPEC
 
 from linverify import run
+from linverify.checks.judge import judge
 from linverify.checks.study import study_of
 from linverify.cli import main
-from linverify.core.case import Options
+from linverify.core.case import CheckAsk, Options
+from linverify.core.verdict import Status
 
 TARGETS = ("models/{point}.json", "models/{point}.csv", "models/{point}.npz", "models/{point}.mat", "models/{point}",
            "all.json", "all.csv", "all.npz", "all.mat")  # fmt: skip
@@ -69,3 +71,34 @@ def test_a_point_without_a_trim_stops_the_writing(project: Path, capsys: pytest.
     assert told.err.startswith("basin.yaml::dry: no operating point to work from: ")
     assert told.err.endswith("\nnothing was written\n")
     assert not (project / "all.json").exists()
+
+
+LOOP = """\
+loops:
+  hold:
+    controller: {pid: {kp: 3 1/s, ki: 1 s^-2}}
+    measures: [level]
+    moves: [inflow]
+"""
+INSIDE = 'local_models: {with: [hold], source: "TO", agree: {entries: 0.1 %}}\n'
+SAMPLED = LOOP.replace("moves: [inflow]", "moves: [inflow]\n    sample: 100 ms")
+
+
+@pytest.mark.parametrize("loop", [LOOP, SAMPLED], ids=["continuous", "sampled"])
+@pytest.mark.parametrize("to", TARGETS)
+def test_a_model_with_its_loop_inside_is_delivered_again(project: Path, to: str, loop: str) -> None:
+    """Its file names what the loop adds, and the gate finds nothing to say about it."""
+    (project / "basin.yaml").write_text(SPEC + loop + INSIDE.replace("TO", to))
+    assert main(["derive", "basin.yaml", "--to", to]) == 0
+    for case in run.points(Path("basin.yaml")):
+        study, read = study_of(case, Options()), case.local.delivered
+        assert read is not None
+        model = study.reference()
+        for word in "ABCD":
+            np.testing.assert_array_equal(getattr(read, word), getattr(model, word))
+        assert read.states == ("level", "hold.1")
+        assert read.inputs == ("inflow", "hold.set_point.level")
+        assert read.outputs == ("level", "inflow")
+        assert dict(read.u0)["hold.set_point.level"] == case.trim.hold["level"]
+        assert read.step == (0.1 if loop is SAMPLED else None)
+        assert judge(case, CheckAsk("agrees", case.place), Options()).status is Status.PASS

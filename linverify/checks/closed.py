@@ -97,7 +97,9 @@ class ClosedStudy(Study):
         super().__init__(bare.case, bare.options)
         self._models: dict[int, tuple[LocalModel, LocalModel]] = {}
         if not self.unmet("model"):
-            self.case = replace(bare.case, plant=self._closed.plant, nominal=self._nominal())
+            # a rate in the envelope is one of an input, and no limit of the set point of a signal
+            rates = {name: rate for name, rate in bare.case.rate_limits.items() if name in bare.case.plant.inputs}
+            self.case = replace(bare.case, plant=self._closed.plant, nominal=self._nominal(), rate_limits=rates)
 
     @property
     def updates(self) -> tuple[Update, ...]:

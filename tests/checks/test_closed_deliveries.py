@@ -12,6 +12,7 @@ from cart import CART, PLACE, case, controller, drives, loop, pd, sampled_pd
 from delivering import delivered
 from scipy.linalg import expm
 
+from linverify.checks.comparison import comparison
 from linverify.checks.judge import judge_study
 from linverify.checks.study import Study
 from linverify.core.case import Amplitude, Band, Case, CheckAsk, DriveSet, Interval, Options, TrimAsk
@@ -352,3 +353,10 @@ def test_a_plant_without_slopes_is_driven_with_its_delivered_closed_model() -> N
     assert judged(there, "follows").status is Status.PASS
     tight = (Band("y", "peak", 1e-4), Band("f", "peak", 10.0))
     assert judged(replace(there, bands=tight), "follows").status is Status.FAIL
+
+
+def test_the_envelopes_rate_of_a_signal_is_no_limit_of_its_set_point() -> None:
+    one = case(driven=drives(at="set_point", amplitude={"y": Amplitude(-0.1, 0.1), "f": Amplitude(-1.0, 1.0)}))
+    study = Study(replace(one, rate_limits={"y": 0.1, "f": 3.0}), Options()).closed("")
+    limits = comparison(study, "").limits
+    assert dict(zip(limits.inputs, limits.change, strict=True)) == {"f": pytest.approx(0.3), "y": np.inf}

@@ -6,6 +6,7 @@ corrected back onto the equations after each small step, comes a fair way along.
 
 from __future__ import annotations
 
+import math
 from dataclasses import dataclass
 
 import numpy as np
@@ -18,6 +19,9 @@ from .roots import Root, open_directions
 FIRST_STEP, LONGEST_STEP, SHORTEST_STEP = 5e-3, 5e-2, 1e-4  # nominal sizes
 FAR = 0.25  # nominal sizes of arc that make a family
 LEAST_PLATEAU = 1e-3  # nominal sizes over which equal values are no accident of round-off
+# shares of the way from one root to another, no two of them at a rational distance: where equilibria repeat, as with
+# angles, even ones would all be equilibria as well
+BETWEEN = np.sort(np.arange(1, 16) * (0.5 * (math.sqrt(5.0) - 1.0)) % 1.0)
 TAKES_PART = 1e-3  # share of the direction from which on an unknown is named
 
 
@@ -54,7 +58,7 @@ def joined_by(system: Equations, one: Root, other: Root, accuracy: float) -> Fam
     size = float(np.abs(gap[:v]).max(initial=0.0))
     if size < LEAST_PLATEAU:
         return None  # two ends of one root of higher order
-    between = system.residual(one.z[:, np.newaxis] + gap[:, np.newaxis] * np.linspace(0.0, 1.0, 17)[1:-1])
+    between = system.residual(one.z[:, np.newaxis] + gap[:, np.newaxis] * BETWEEN)
     if not np.all(largest(between) <= accuracy):
         return None
     names = [name for name, moves in zip(system.unknowns, np.abs(gap[:v]), strict=True) if moves >= TAKES_PART * size]

@@ -72,6 +72,14 @@ def test_all_equilibria_of_a_product_are_found():
     np.testing.assert_allclose(values(result), nearest, rtol=1e-12)
 
 
+@pytest.mark.parametrize("limit", [35.0, 55.0, 105.0])
+def test_equilibria_that_repeat_are_no_family(limit):
+    # sixteen turns apart, seventeen even samples between two of them are equilibria all
+    result = trimmed(plant_of(lambda t, x, u, p: np.sin(x), "x"), "x", limits={"x": (-limit, limit)}, start={"x": 0.1})
+    assert result.outcome is Outcome.DONE
+    np.testing.assert_allclose(values(result), [0.0], atol=1e-12)
+
+
 @pytest.mark.parametrize("gap", [1e-2, 1e-3, 3e-4])
 def test_equilibria_close_to_each_other_are_two(gap):
     plant = plant_of(lambda t, x, u, p: (x - 1.0) * (x - 1.0 - gap), "x")

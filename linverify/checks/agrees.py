@@ -12,6 +12,7 @@ from typing import Any
 from ..core.case import CheckAsk
 from ..core.delivered import DeliveredModel
 from ..core.verdict import Status, Verdict
+from ..numerics.coordinates import aligned
 from ..numerics.pair import Pair, paired
 from . import banded, claims, entries, moved, static
 from .findings import Findings
@@ -29,7 +30,7 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
     inside = study.inside
     pair = paired(delivered, study.reference(), study.case.nominal if inside is None else inside.nominal)
     if inside is not None:
-        pair = replace(pair, unitless=inside.unitless)
+        pair = _in_our_coordinates(replace(pair, unitless=inside.unitless), findings)
     _model(study, pair, findings)
     _cause(study, pair, findings)
     return Verdict(
@@ -43,6 +44,17 @@ def check(study: Study, ask: CheckAsk) -> Verdict:
         notes=tuple(findings.notes),
         details={"file": delivered.file, **findings.details},
     )
+
+
+def _in_our_coordinates(pair: Pair, findings: Findings) -> Pair:
+    """States of controllers mean nothing by themselves: the same controller in other states is the same."""
+    if pair.anonymous or pair.time_clash or not entries.differ(pair):
+        return pair
+    other = aligned(pair, pair.unitless)
+    if other is None:
+        return pair
+    findings.notes.append("states of controllers were brought from the coordinates of the file to those of the spec")
+    return other
 
 
 def _point(study: Study, delivered: DeliveredModel, findings: Findings) -> None:

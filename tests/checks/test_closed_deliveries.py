@@ -360,3 +360,23 @@ def test_the_envelopes_rate_of_a_signal_is_no_limit_of_its_set_point() -> None:
     study = Study(replace(one, rate_limits={"y": 0.1, "f": 3.0}), Options()).closed("")
     limits = comparison(study, "").limits
     assert dict(zip(limits.inputs, limits.change, strict=True)) == {"f": pytest.approx(0.3), "y": np.inf}
+
+
+@pytest.mark.parametrize("fault", ["", "D", "hidden"])
+def test_a_controller_in_other_coordinates_is_the_same_controller(fault: str) -> None:
+    """Its states are mixed and scaled; an error of 2 % besides is an error, wherever it sits."""
+    control = controller([[-20.0, 0.0], [0.0, 0.0]], [[1.0], [1.0]], [[-1600.0, 12.0]], [[100.0]])
+    model = exact(closed(loop(control)))
+    turn = np.eye(4)
+    turn[2:, 2:] = [[0.0, 12.0], [-30.0, 4.0]]
+    back = np.linalg.inv(turn)
+    A, B, C = turn @ model.A @ back, turn @ model.B, model.C @ back
+    if fault == "D":
+        A = turn @ np.where(np.arange(16).reshape(4, 4) == 4, 1.02 * model.A, model.A) @ back
+    elif fault == "hidden":
+        C[1, 2:] *= 1.02
+    found = judged(closed(loop(control), given=delivered(replace(model, A=A, B=B, C=C))))
+    assert found.status is (Status.FAIL if fault else Status.PASS), found.reason
+    assert any("were brought from the coordinates of the file" in note for note in found.notes) is not bool(fault)
+    four = replace(delivered(replace(model, A=A, B=B, C=C), digits=4))
+    assert judged(closed(loop(control), given=four)).status is (Status.FAIL if fault else Status.PASS)

@@ -27,6 +27,7 @@ from .transfer import Transfer
 KINDS: tuple[Kind, ...] = ("S", "T", "disk")
 ROUNDS = 6  # of walking further with a dead time
 NOTHING = 1e-12  # |L| that is smaller, and not known to a quarter of itself, has no phase
+MOST = 1e4  # gain factor that a disk margin below 2 promises at most: it is known to 1e-8
 NEGATIVE = 1e-7  # |Im L| of |L| where L counts as real; nearer than this a crossing is polished
 
 
@@ -88,8 +89,12 @@ class Margins:
 
 
 def guarantee(alpha: float) -> tuple[float, float]:
-    """What a disk margin of skew 0 promises: gain factor up (down: its inverse), and phase in rad, both at once."""
-    return (math.inf if alpha >= 2.0 else (2.0 + alpha) / (2.0 - alpha)), 2.0 * math.atan(0.5 * alpha)
+    """What a disk margin of skew 0 promises: gain factor up (down: its inverse), and phase in rad, both at once.
+
+    Of a margin just below 2, as every loop has that behaves like an integrator, no more is promised than is known.
+    """
+    up = math.inf if alpha >= 2.0 else min((2.0 + alpha) / (2.0 - alpha), MOST)
+    return up, 2.0 * math.atan(0.5 * alpha)
 
 
 def margins(loop: Transfer) -> Margins:

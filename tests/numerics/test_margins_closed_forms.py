@@ -236,3 +236,10 @@ def test_poles_that_repeat_on_the_axis_are_not_stable() -> None:
     found = margins(ratio([1, 0, 0.5], [1, 0, 1, 0, 0.5]))
     assert not found.stable
     assert found.outcome is Outcome.ON_THE_EDGE
+
+
+@pytest.mark.parametrize("alpha", [2.0 - 1e-15, 2.0 - 1e-8, 1.9999])
+def test_a_disk_margin_just_below_two_promises_no_absurd_gain(alpha: float) -> None:
+    up, phase = guarantee(alpha)
+    assert up == 1e4
+    assert phase == pytest.approx(0.5 * math.pi, abs=1e-4)

@@ -182,8 +182,10 @@ class ClosedStudy(Study):
         unit = case.plant.time_unit
         for name, actuator in self._actuators.items():
             if case.actuators[name].lag != actuator.lag:
+                within = name in self._moved_by(self.closing.given)
+                where = "the plant alone" if within else "both models"
                 found.append(
-                    f"the rate limit of {name} acts behind a lag of {actuator.lag:.3g} {unit} in both models, "
+                    f"the rate limit of {name} acts behind a lag of {actuator.lag:.3g} {unit} in {where}, "
                     f"since its actuator has none"
                 )
         for loop in self.closing.loops:

@@ -15,6 +15,7 @@ from ..numerics.margins import guarantee
 from ..numerics.unmoved import Unmoved
 
 LEAVE = "where that is meant, name the state under `leaves`"
+ROUNDING = 1e-12  # of the largest pole
 WRONG_WAY = "the loop is closed the wrong way round: unstable; with the opposite sign it would be stable"
 
 
@@ -35,11 +36,12 @@ def unstable(one: LoopMargins, time_unit: str) -> str:
     return f"{WRONG_WAY}; {poles}" if one.opposite else f"the closed loop is unstable: {poles}"
 
 
-def unmoved(poles: Sequence[Unmoved], step: float | None) -> str:
-    """Poles that nobody stabilizes."""
+def unmoved(poles: Sequence[Unmoved], step: float | None, size: float = 0.0) -> str:
+    """Poles that nobody stabilizes. size: of the largest pole around, beside which rounding is told as zero."""
     told = []
     for pole in poles:
         value = in_s(pole.value, step)
+        value = 0j if abs(value) <= ROUNDING * size else value
         states = " and ".join(name for name, share in pole.shares[:2] if share >= 0.1)
         told.append(f"{complex_told(value)}{f' of {states}' if states else ''}")
     told = list(dict.fromkeys(told))

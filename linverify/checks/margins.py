@@ -25,6 +25,7 @@ from .margin_delays import with_delays
 from .margin_figures import figures
 from .margin_poles import counted
 from .margin_spread import varied, whole
+from .margin_words import ROUNDING
 from .mode_model import _with_rounding
 from .study import Study
 
@@ -142,7 +143,7 @@ def _covered(loop: Loop, one: LoopMargins, least: float = DOMINATES) -> list[boo
 def _unmoved(one: LoopMargins, excused: Sequence[bool], found: _Found) -> None:
     """Judge the poles that the loop does not move."""
     if loose := _loose(one, excused):
-        found.reasons.append((Status.FAIL, margin_words.unmoved(loose, one.loop.step)))
+        found.reasons.append((Status.FAIL, margin_words.unmoved(loose, one.loop.step, _fastest(one))))
 
 
 def _loose(one: LoopMargins, excused: Sequence[bool]) -> list[Unmoved]:
@@ -154,6 +155,13 @@ def _stable(one: LoopMargins, pole: Unmoved) -> bool:
     """Left of the axis by more than rounding."""
     if one.loop.step is not None:
         return abs(pole.value) < 1.0 - AT_ZERO
+    return pole.value.real < -max(AT_ZERO * abs(pole.value), ROUNDING * _fastest(one))
+
+
+def _fastest(one: LoopMargins) -> float:
+    """Size of the largest pole around, moved or not; of a sampled loop the rate of the samples."""
+    if one.loop.step is not None:
+        return 1.0 / one.loop.step
     sizes = [abs(each.value) for each in one.unmoved]
     sizes += [] if one.poles is None else [abs(complex(value)) for value in one.poles.values]
-    return pole.value.real < -max(AT_ZERO * abs(pole.value), 1e-12 * max(sizes))
+    return max(sizes, default=0.0)

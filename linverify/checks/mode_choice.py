@@ -10,6 +10,8 @@ from ..core.shown import number, with_unit
 from ..numerics.modal import Mode, Modes
 from ..numerics.traits import Known, damping, natural_frequency
 
+NOTHING = 1e-2  # of the error of a pole that may lie at the origin: nearer to it, the pole is told as zero
+
 
 @dataclass(frozen=True, slots=True, eq=False)
 class Choice:
@@ -91,7 +93,13 @@ def label(mode: Mode) -> str:
     """What figures call a mode: pole -0.3719 +- 0.8875j."""
     if not math.isfinite(abs(mode.value)):
         return "pole at z = 0" if mode.z == 0 else f"pole at z = {told_complex(mode.z)}"
-    return f"pole {told_complex(mode.value, pair=mode.poles == 2)}"
+    return f"pole {told_complex(told_pole(mode), pair=mode.poles == 2)}"
+
+
+def told_pole(mode: Mode) -> complex:
+    """The pole as it is told: zero where it is zero to within its error and not one digit of it means anything."""
+    nothing = abs(mode.value) <= NOTHING * mode.pole.radius
+    return 0j if mode.origin == "yes" or (mode.origin == "maybe" and nothing) else mode.value
 
 
 def told_complex(value: complex, *, pair: bool = False) -> str:
@@ -107,7 +115,8 @@ def described(found: Modes, mode: Mode, time_unit: str) -> str:
     """A mode in words: the pole -0.37 +- 0.89j (0.962 rad/s, damping 0.387; mostly w 50 %, q 50 %)."""
     words = []
     if math.isfinite(abs(mode.value)):
-        words.append(with_unit(number(natural_frequency(mode.pole).value, 4), f"rad/{time_unit}"))
+        natural = natural_frequency(mode.pole).value if told_pole(mode) else 0.0
+        words.append(with_unit(number(natural, 4), f"rad/{time_unit}"))
         if mode.poles == 2:
             words.append(f"damping {number(damping(mode.pole).value, 4)}")
     told = ", ".join(words)

@@ -26,7 +26,18 @@ from ..core.verdict import Figure, Status, Verdict
 from ..numerics.modal import Mode, Modes, modes
 from ..numerics.traits import TRAITS
 from .findings import Findings
-from .mode_choice import Choice, choice, described, distance, label, line_name, nearest, told_choice, told_complex
+from .mode_choice import (
+    Choice,
+    choice,
+    described,
+    distance,
+    label,
+    line_name,
+    nearest,
+    told_choice,
+    told_complex,
+    told_pole,
+)
 from .mode_limits import judge_limits, judge_measures
 from .mode_model import judged_model
 from .mode_stability import judge_stable
@@ -158,16 +169,16 @@ def _plain(case: Case, found: Modes, mode: Mode) -> dict[str, Any]:
     unit = case.plant.time_unit
     row: dict[str, Any] = {}
     if math.isfinite(abs(mode.value)):
-        row |= {"real": mode.value.real, "imag": mode.value.imag, "error": mode.pole.radius}
-        row |= {word: TRAITS[word](mode.pole).value for word in ("natural_frequency", "damping")}
-        if mode.value == 0.0 or mode.origin == "yes":
-            del row["damping"]  # the origin has none
+        value = told_pole(mode)
+        row |= {"real": value.real, "imag": value.imag, "error": mode.pole.radius, "natural_frequency": 0.0}
+        if value:  # the origin has neither
+            row |= {word: TRAITS[word](mode.pole).value for word in ("natural_frequency", "damping")}
         row["hertz"] = row["natural_frequency"] / (2.0 * math.pi * _seconds(unit))
     if not math.isnan(mode.z.real):
         row |= {"z_real": mode.z.real, "z_imag": mode.z.imag}
     for word in ("time_constant", "time_to_half", "time_to_double", "period"):
         value = TRAITS[word](mode.pole).value
-        if math.isfinite(value):
+        if math.isfinite(value) and told_pole(mode):
             row[word] = value
     if "period" in row and "time_to_half" in row:
         row["cycles_to_half"] = row["time_to_half"] / row["period"]

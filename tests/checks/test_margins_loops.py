@@ -262,6 +262,11 @@ def test_a_pole_that_the_loop_does_not_move_fails_unless_it_is_left() -> None:
     assert judged(HEADING, loop(pid(1.0), *ALL, leaves=("x1",))).status is Status.FAIL
 
 
+def test_a_pole_of_the_size_of_rounding_is_told_as_zero() -> None:
+    plant = linear_plant([[-1.0, 0.0], [1.0, 7.85e-17]], [[1.0], [0.0]], [[1.0, 0.0]])
+    assert "does not move the pole 0 of x2" in judged(plant, loop(pid(1.0), *ALL)).reason
+
+
 def test_an_unstable_pole_that_no_input_reaches_fails() -> None:
     plant = linear_plant([[-1.0, 0.0], [0.0, 0.5]], [[1.0], [0.0]], [[1.0, 1.0]])
     verdict = judged(plant, loop(pid(1.0), *ALL))

@@ -177,6 +177,20 @@ def test_a_pole_at_the_origin_is_not_stable_unless_excepted() -> None:
     assert any("x2 has hardly a part in it" in note for note in elsewhere.notes)
 
 
+@pytest.mark.parametrize("leak", [0.1, 0.3, 0.7])
+def test_a_pole_that_is_zero_to_within_its_error_is_told_as_zero(leak: float) -> None:
+    # three vessels that exchange what they hold: the sum stays, and what is computed of its pole is rounding
+    vessels = leak * np.array([[-1.0, 0.3, 0.7], [0.6, -0.8, 0.2], [0.4, 0.5, -0.9]])
+    bad = verdict(vessels, line(stable=True))
+    assert "the pole 0 (0 rad/s; mostly x0 33 %, x1 33 %, x2 33 %) lies at the origin" in bad.reason
+    assert bad.figures[0].signal == "pole 0"
+    told = bad.details["modes"][0]
+    assert (told["real"], told["imag"], told["natural_frequency"]) == (0.0, 0.0, 0.0)
+    assert not {"damping", "time_constant", "time_to_half", "time_to_double"} & set(told)
+    assert 0.0 < told["error"] < 1e-10
+    assert "the pole 1e-6" in verdict(blocks(1e-6, OSCILLATOR), line(stable=True)).reason
+
+
 CHAIN = blocks(np.eye(3, k=1), -2.0)
 
 

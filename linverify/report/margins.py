@@ -142,12 +142,14 @@ def _guaranteed(disk: Mapping[str, Any]) -> tuple[str, str]:
     down, up, phase = (_float(promised.get(word)) for word in ("gain_down", "gain_up", "phase"))
     if math.isnan(down + up + phase):
         return quantity.ABSENT, quantity.ABSENT
+    if math.isinf(up):
+        return "any factor above 0", f"+-{quantity.quantity(phase, 'deg', 4)}"
     factors = f"factor {quantity.number(down, 4)} to {quantity.number(up, 4)}"
     return f"{_decibels(down)} to {_decibels(up)} dB ({factors})", f"+-{quantity.quantity(phase, 'deg', 4)}"
 
 
 def _decibels(ratio: float) -> str:
-    told = quantity.number(decibels(ratio) if math.isfinite(ratio) else math.inf, 3)
+    told = quantity.number(decibels(ratio), 3)
     return told if told.startswith("-") else f"+{told}"
 
 

@@ -22,9 +22,9 @@ def number(value: float, digits: int = 6) -> str:
 
 
 def quantity(value: float, unit: str = "", digits: int = 6) -> str:
-    """`value` and its unit; a dash for NaN. Units "" and "1" are not written."""
+    """`value` and its unit; a dash for NaN. Units "" and "1" are not written, nor one of what is infinite."""
     text = number(value, digits)
-    return text if text == ABSENT else with_unit(text, unit)
+    return with_unit(text, unit) if math.isfinite(value) else text
 
 
 def exactly(value: float, unit: str = "") -> str:

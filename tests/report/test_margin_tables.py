@@ -105,6 +105,12 @@ def test_disk_margins_stand_with_what_they_guarantee() -> None:
     assert cells(text, "all, at both")[1] == "0.2 at 2 rad/s"
 
 
+def test_a_disk_margin_of_two_allows_any_factor() -> None:
+    disk = {**met(2.0, "", 0.0, 2.0), "guaranteed": {"gain_down": 0.0, "gain_up": math.inf, "phase": 90.0}}
+    text = told({**LOOP, "channels": [{**LOOP["channels"][0], "disk": disk}]}).split("Disk margins")[1]
+    assert cells(text, "fore_flap")[2:] == ["any factor above 0", "+-90 deg"]
+
+
 def test_every_crossing_is_listed() -> None:
     text = told(LOOP).split("Crossings:")[1]
     assert "gain is one" in text

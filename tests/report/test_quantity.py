@@ -39,7 +39,7 @@ def test_numbers(value: float, text: str) -> None:
         (2.5, "1", "2.5"),
         (2.5, "", "2.5"),
         (math.nan, "m", "-"),
-        (math.inf, "m", "infinite m"),
+        (math.inf, "m", "infinite"),
         (12.0, "%", "12 %"),
     ],
 )
@@ -71,7 +71,7 @@ def test_shares(share: float, text: str) -> None:
         (0.0400012345, 0.04, "0.0400012 m"),  # four digits would read as the limit
         (0.03999951, 0.04, "0.0399995 m"),
         (0.04, 0.04, "0.04 m"),
-        (math.inf, 0.04, "infinite m"),
+        (math.inf, 0.04, "infinite"),
         (math.nan, 0.04, "-"),
         (1.23456, math.nan, "1.235 m"),
     ],
@@ -85,7 +85,7 @@ def test_the_worst_is_told_from_its_limit(worst: float, limit: float, text: str)
     [
         ({}, "at most 0.04 m"),
         ({"sense": Sense.LOWER, "limit": 2.0, "unit": ""}, "at least 2"),
-        ({"limit": math.inf}, "at most infinite m"),
+        ({"limit": math.inf}, "at most infinite"),
         ({"limit": math.nan}, "-"),
         ({"sense": Sense.NONE}, "-"),
     ],

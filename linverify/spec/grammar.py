@@ -68,7 +68,7 @@ class Row:
     shared: bool = True  # may stand in defaults.yaml
     choices: tuple[str, ...] = ()
     sign: str = ""  # "+": above zero, "0+": zero or above
-    most: int | None = None  # of a COUNT: a larger one is most likely a slip, and would take for ever
+    most: int | None = None  # of a COUNT: more is most likely a slip, and takes for ever; of a FRACTION that may pass 1
     available: bool = True
     needs: str = ""  # the word without which its default says nothing
 

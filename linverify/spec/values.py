@@ -54,7 +54,7 @@ def number(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> fl
 
 
 def fraction(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> float | None:
-    """Per cent or a fraction, not more than the whole."""
+    """Per cent or a fraction, not more than the whole unless the row allows for it."""
     expected = "per cent or a fraction is expected, as in '5 %' or 0.05"
     scalar = reader.scalar(node, called, expected)
     if scalar is None:
@@ -62,7 +62,12 @@ def fraction(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> 
     read = reader.judged(scalars.fraction(scalar.text, scalar.plain), scalar.place, called)
     if read is None or not reader.sign(read, row, scalar.text, scalar.place, called):
         return None
-    if read > 1:
+    if read > 1.0 and row.most is not None:
+        # 25 is most likely 25 %: whoever means more than the whole says so in per cent
+        if scalar.text.rstrip().endswith("%") and read <= row.most:
+            return read
+        expected = f"at most {100 * row.most} % is expected, in per cent where it is more than 100 %"
+    if read > 1.0:
         reader.tell(scalar.place, f"`{called}`: {quoted(scalar.text)} is more than the whole", expected)
         return None
     return read

@@ -432,6 +432,7 @@ def test_limits_in_the_units_of_the_plant(tmp_path: Path) -> None:
         ("phase_margin: 0.5 rad", "0.5 rad"),
         ("delay_margin: 80 ms", "80 ms"),
         ("overshoot: 25 %", "25 %"),
+        ("overshoot: 250 %", "250 %"),
         ("overshoot: 0.25", "0.25"),
         ("sensitivity_peak: 6 dB", "6 dB"),
         ("crossover: [3 Hz, 60 rad/s]", "3 Hz"),

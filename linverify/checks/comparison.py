@@ -21,6 +21,7 @@ from .study import Study
 TOLERANCE = 1e-3  # of the state errors that bands allow; the halved grid shows whether that is enough
 PHASE = 0.2  # radians of the fastest oscillation between samples: peaks in between are missed by 0.5 % of its size
 NODES = (4, 8, 16, 32, 64)
+CHAIN = ".delay."  # in the names of states that stand for dead times
 BATCH = 256  # drives simulated at once; the trajectories of a batch are let go before the next
 
 
@@ -131,7 +132,7 @@ def _nodes(model: LocalModel, every: float) -> int:
 
 def _own_poles(model: LocalModel) -> NDArray[np.complexfloating]:
     """The model's poles without those of chains that stand for dead times: their ringing is no motion of anything."""
-    chains = [".delay." in name for name in model.states.names]
+    chains = [CHAIN in name for name in model.states.names]
     if not any(chains):
         return np.asarray(np.linalg.eigvals(model.A), dtype=np.complex128)
     poles, right = np.linalg.eig(model.A)
@@ -145,7 +146,8 @@ def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Ba
     """Absolute error of each state that no band would notice: what moves a compared signal by its limit at most.
 
     An error in a state reaches a signal later, through the dynamics: the largest effect over the horizon counts. The
-    size of the state's own motion under these drives bounds the weight from above.
+    size of the state's own motion under these drives bounds the weight from above; of a chain that stands for a dead
+    time the size of what goes in, since the ringing of its last states is no motion of anything.
     """
     plant = study.bound.states.names
     names = tuple(dict.fromkeys(name for name in (*plant, *signals) if name in model.states or name in model.outputs))
@@ -154,6 +156,8 @@ def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Ba
     nominal = np.array([study.case.nominal.get(name, 1.0) for name in plant])
     excursion = np.array([moved.get(name, 0.0) for name in plant])
     excursion = np.where(excursion > 0.0, np.minimum(excursion, nominal), np.where(np.isfinite(nominal), nominal, 1.0))
+    for chain in _chains(plant):
+        excursion[chain] = excursion[chain].max()
     effect = {name: _by_state(model, plant, row) for name, row in zip(names, states, strict=True)}
     found = excursion
     for band in bands:
@@ -164,6 +168,15 @@ def _weights(study: Study, model: LocalModel, limits: Limits, bands: Sequence[Ba
     # a growing mode would ask for weights without end; the halved grid judges what they gave
     weights: Array = np.maximum(found, 1e-6 * excursion)
     return weights
+
+
+def _chains(plant: Sequence[str]) -> list[list[int]]:
+    """Rows of the states of each loop's dead times."""
+    found: dict[str, list[int]] = {}
+    for row, name in enumerate(plant):
+        if CHAIN in name:
+            found.setdefault(name.partition(CHAIN)[0], []).append(row)
+    return list(found.values())
 
 
 def _by_state(model: LocalModel, plant: Sequence[str], row: Array) -> Array:

@@ -49,10 +49,11 @@ class _Inside:
     states: tuple[list[int], list[int]] = field(init=False)  # rows of the measured, and of the plant's states
     outputs: tuple[list[int], list[int]] = field(init=False)
     domain: list[tuple[str, int, float, float]] = field(init=False)
+    drifts: bool = field(init=False)
 
     def __post_init__(self) -> None:
         bound, names = self.bound, self.measured_names
-        self.n = bound.n
+        self.n, self.drifts = bound.n, bool(self.point.drift.any())
         self.states, self.outputs = _places(names, bound.states), _places(names, bound.outputs, bound.states)
         self.direct = bool(self.outputs[0])
         self.sizes = np.abs([self.point.value(name) for name in names]) if names else np.zeros(0)
@@ -76,23 +77,27 @@ class _Inside:
 
     def measured(self, t: float, x: Array, u: Array) -> Array:
         """Deviations from the trimmed course, (q, N)."""
-        found = np.empty((len(self.measured_names), x.shape[1]))
         course = self._course(t)
-        if self.states[0]:
+        rows, places = self.outputs
+        if not len(rows):
             rows, places = self.states
-            found[rows] = x[places] - course[places, np.newaxis]
-        if self.outputs[0]:
-            rows, places = self.outputs
-            still = self._still(t, course)[places]
-            found[rows] = self.bound.measure_within(t, x, u)[places] - still[:, np.newaxis]
+            return np.asarray(x[places] - course[places, np.newaxis])
+        still = self._still(t, course)[places, np.newaxis]
+        outputs = self.bound.measure_within(t, x, u)[places] - still
+        if len(rows) == len(self.measured_names):
+            return np.asarray(outputs)
+        found = np.empty((len(self.measured_names), x.shape[1]))
+        found[rows] = outputs
+        rows, places = self.states
+        found[rows] = x[places] - course[places, np.newaxis]
         return found
 
     def _course(self, t: float) -> Array:
-        course: Array = self.point.x + self.point.drift * (t - self.point.time)
-        return course
+        point = self.point
+        return point.x + point.drift * (t - point.time) if self.drifts else point.x
 
     def _still(self, t: float, course: Array) -> Array:
-        if not self.point.drift.any():
+        if not self.drifts:
             return self.point.y
         return self.bound.measure(t, course, self.point.u)
 

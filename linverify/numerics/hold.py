@@ -9,10 +9,14 @@ Van Loan 1978, "Computing integrals involving the matrix exponential", IEEE Tran
 
 from __future__ import annotations
 
+from functools import lru_cache
+
 import numpy as np
 from scipy.linalg import expm, matrix_balance
 
-from ..core.model import Array
+from ..core.model import Array, frozen_array
+
+KEPT = 512  # exponentials in memory
 
 
 def held(A: Array, B: Array, step: float) -> tuple[Array, Array]:
@@ -49,11 +53,20 @@ def responses(A: Array, B: Array, times: Array) -> tuple[Array, Array, Array]:
     for index, time in enumerate(times):
         # the slope is per `time` here, which keeps the identity block as small as the rest
         augmented[n : n + m, n + m :] = np.eye(m) / time if time > 0 else 0.0
-        whole[index] = expm(augmented * time)
+        whole[index] = _exponential((augmented * time).tobytes(), len(augmented))
     P = whole[:, :n, :n] * (scale[:, np.newaxis] / scale[np.newaxis, :])
     Q = whole[:, :n, n : n + m] * scale[:, np.newaxis] / columns
     R = whole[:, :n, n + m :] * scale[:, np.newaxis] / columns * times[:, np.newaxis, np.newaxis]
     return P, Q, R
+
+
+@lru_cache(maxsize=KEPT)
+def _exponential(matrix: bytes, size: int) -> Array:
+    """The exponential of a matrix (size, size), read-only.
+
+    Kept: the same few are asked for time and again, run after run and instant after instant of a sampled controller.
+    """
+    return frozen_array(expm(np.frombuffer(matrix).reshape(size, size)))
 
 
 def _scales(A: Array, B: Array) -> tuple[Array, Array]:

@@ -32,7 +32,9 @@ class LinearPart:
     def free(self, a: Array, p: Array) -> Array:
         """The rows (r, N) without what is measured."""
         rows = self.of_states @ a
-        return rows + self.of_points @ p if len(p) else rows
+        if len(p):
+            rows += self.of_points @ p
+        return rows
 
 
 def linear_part(answer: Answer, slow: int, added: int, inputs: int, points: int, seen: int) -> LinearPart:
@@ -46,5 +48,5 @@ def linear_part(answer: Answer, slow: int, added: int, inputs: int, points: int,
     a, w = np.zeros((added, sum(sizes))), np.zeros((inputs + points, sum(sizes)))
     a[slow:], w[inputs:] = columns[: ends[1]], columns[ends[1] : ends[2]]
     rows = answer(a, w, columns[ends[2] :])
-    blocks = [frozen_array(rows[:, first:last]) for first, last in pairwise(ends)]
-    return LinearPart(*blocks, not blocks[2].any())
+    states, given, measured = (frozen_array(rows[:, first:last]) for first, last in pairwise(ends))
+    return LinearPart(states, given, measured, not measured.any())

@@ -16,6 +16,7 @@ import numpy as np
 from ..core.model import Array
 from .rig import Fidelity, Rig
 
+FEWEST = 4  # nodes of an interval, so that those of a piece double when they do
 SNAP = 1e-9  # of the time between instants: nearer breakpoints are one
 
 
@@ -60,8 +61,19 @@ def cut(rig: Rig, every: float, fidelity: Fidelity) -> Pieces:
     ticks = [step for step in (rig.plant.step, rig.model.step) if step is not None]
     if ticks:
         return _even(rig, every, fidelity, ticks[0])
-    starts = _starts(rig, every)
-    return Pieces(every, np.diff(np.append(starts, every)), fidelity.nodes)
+    lengths = np.diff(np.append(_starts(rig, every), every))
+    return Pieces(every, lengths, _shared(fidelity.nodes, lengths / every))
+
+
+def _shared(nodes: int, shares: Array) -> int:
+    """Sub-intervals of each piece, none longer than with `nodes` for the whole interval; twice as many for twice those.
+
+    A sampled controller may cut an interval into dozens of pieces: each with all nodes would only be read for nothing.
+    """
+    if len(shares) == 1:
+        return nodes
+    quarters = 1 << math.ceil(math.log2(max(1.0, FEWEST * float(shares.max()) - SNAP)))
+    return math.ceil(nodes / FEWEST) * quarters
 
 
 def _even(rig: Rig, every: float, fidelity: Fidelity, tick: float) -> Pieces:

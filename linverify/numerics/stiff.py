@@ -9,7 +9,7 @@ section IV.10; a test proves their order.
 
 from __future__ import annotations
 
-from dataclasses import dataclass
+from dataclasses import dataclass, field
 
 import numpy as np
 
@@ -41,22 +41,39 @@ DENSE = (  # third-order continuous extension
 )
 SMALL = 1.5e-8  # root of rounding: step of a one-sided difference as a share of the state
 TYPICAL = 1e-4  # and, for states near zero, as a share of the acceptable error
+TOGETHER = 1024  # columns a call of the plant: more of them no longer fit the processor's cache
 AHEAD = 1e-6  # of a step: difference for the time derivative
 
 
 @dataclass(frozen=True, slots=True, eq=False)
+class _Slopes:
+    """Slopes of the rates at `start`, where they are `first`: by states (n, n, N), row by row, and by time (n, N)."""
+
+    start: float
+    first: Array
+    states: Array
+    time: Array
+
+
+@dataclass(slots=True, eq=False)
 class Rosenbrock:
-    """weights (n,): acceptable errors, for the size of differences; high (n, 1): upper end of the plant's domain."""
+    """weights (n,): acceptable errors, for the size of differences; high (n, 1): upper end of the plant's domain.
+
+    Not frozen: a step that was rejected is tried again from the same point, whose slopes are kept until then.
+    """
 
     weights: Array
     high: Array
     name: str = "Rosenbrock 4(3)"
     order: int = 4
+    kept: _Slopes | None = field(default=None, init=False)
 
     def attempt(self, rates: Rates, start: float, x: Array, first: Array, step: float) -> Attempt:
         """One step of size `step` from (start, x); first (n, N): rates there."""
         n, width = x.shape
-        solve, pull = self._linearized(rates, start, x, first, step)
+        if self.kept is None or self.kept.first is not first or self.kept.start != start:
+            self.kept = self._slopes(rates, start, x, first, step)
+        solve, pull = _solver(self.kept.states, 1.0 / (GAMMA * step)), self.kept.time
         stages = np.zeros((6, n, width))
         flat = stages.reshape(6, -1)
         end = x
@@ -66,7 +83,7 @@ class Rosenbrock:
                 end = x + (STAGES[stage] @ flat[:stage]).reshape(n, width)
                 rise = rates(start + NODES[stage] * step, end)
             right = rise + (RIGHTS[stage] @ flat[:stage]).reshape(n, width) / step + TIMES[stage] * step * pull
-            stages[stage] = np.einsum("cij,jc->ic", solve, right)
+            np.einsum("ijc,jc->ic", solve, right, out=stages[stage])
         end = end + stages[5]
         bend, twist = ((weights @ flat).reshape(n, width) for weights in DENSE)
 
@@ -77,30 +94,40 @@ class Rosenbrock:
 
         return Attempt(end, stages[5], rates(start + step, end), between)
 
-    def _linearized(self, rates: Rates, start: float, x: Array, first: Array, step: float) -> tuple[Array, Array]:
-        """(I / (gamma h) - J)^-1, (N, n, n), and the time derivative of the rates (n, N)."""
+    def _slopes(self, rates: Rates, start: float, x: Array, first: Array, step: float) -> _Slopes:
         n, width = x.shape
         size = np.maximum(SMALL * np.abs(x), TYPICAL * self.weights[:, np.newaxis])
         size = np.where(x + size > self.high, -size, size)
-        moved = np.tile(x, n).reshape(n, n, width)
-        diagonal = np.arange(n)
-        moved[diagonal, diagonal] += size
-        size = moved[diagonal, diagonal] - x
-        slopes = rates(start, moved.reshape(n, n * width)).reshape(n, n, width) - first[:, np.newaxis]
-        jacobian = slopes / size
-        matrices = np.eye(n) / (GAMMA * step) - jacobian.transpose(2, 0, 1)
+        states, together = np.empty((n, n, width)), max(1, TOGETHER // width)
+        for begin in range(0, n, together):
+            moving = np.arange(begin, min(begin + together, n))
+            moved = np.repeat(x[:, np.newaxis], len(moving), axis=1)
+            moved[moving, moving - begin] += size[moving]
+            each = moved[moving, moving - begin] - x[moving]
+            found = rates(start, moved.reshape(n, -1)).reshape(moved.shape)
+            states[:, moving] = (found - first[:, np.newaxis]) / each
         ahead = (start + AHEAD * step) - start or AHEAD * step
-        pull = (rates(start + ahead, x) - first) / ahead
-        return _inverses(matrices), pull
+        return _Slopes(start, first, states, (rates(start + ahead, x) - first) / ahead)
+
+
+def _solver(slopes: Array, shift: float) -> Array:
+    """(shift I - slopes)^-1, (n, n, N) as the slopes; NaN for a column whose matrix is not finite or singular."""
+    n, _, width = slopes.shape
+    matrices = np.empty((width, n, n))
+    np.negative(slopes.transpose(2, 0, 1), out=matrices)
+    diagonal = np.arange(n)
+    matrices[:, diagonal, diagonal] += shift
+    # columns last, as everywhere else: six products with it are to come
+    return np.ascontiguousarray(_inverses(matrices).transpose(1, 2, 0))
 
 
 def _inverses(matrices: Array) -> Array:
     """Inverses of a stack (N, n, n); NaN for a column whose matrix is not finite or singular."""
     good: Mask = np.asarray(np.isfinite(matrices).all(axis=(1, 2)))
-    safe = np.where(good[:, np.newaxis, np.newaxis], matrices, np.eye(matrices.shape[1]))
+    whole = bool(good.all())
+    safe = matrices if whole else np.where(good[:, np.newaxis, np.newaxis], matrices, np.eye(matrices.shape[1]))
     try:
         inverses = np.linalg.inv(safe)
     except np.linalg.LinAlgError:
         return np.full_like(matrices, np.nan)
-    result: Array = np.where(good[:, np.newaxis, np.newaxis], inverses, np.nan)
-    return result
+    return np.asarray(inverses if whole else np.where(good[:, np.newaxis, np.newaxis], inverses, np.nan))

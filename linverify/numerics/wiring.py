@@ -55,6 +55,7 @@ class Wiring:
     limits: bool
     controlled: tuple[Controlled, ...] = field(init=False)
     slow: tuple[int, ...] = field(init=False)  # inputs whose actuator has a state
+    ranges: tuple[tuple[int, Actuator], ...] = field(init=False)  # inputs whose actuator has a range
 
     def __post_init__(self) -> None:
         slow = tuple(
@@ -68,6 +69,9 @@ class Wiring:
             first = found[-1].last
         object.__setattr__(self, "controlled", tuple(found))
         object.__setattr__(self, "slow", slow)
+        acting = [(at, self.actuators[name]) for at, name in enumerate(self.inputs) if name in self.actuators]
+        ranges = tuple((at, one) for at, one in acting if np.isfinite([one.low, one.high]).any())
+        object.__setattr__(self, "ranges", ranges)
 
     @property
     def lagging(self) -> list[int]:
@@ -123,16 +127,17 @@ class Wiring:
 
     def ranged(self, wanted: Array) -> Array:
         """Commands within the ranges of their actuators, (m, N)."""
-        if not self.limits:
+        if not self.limits or not self.ranges:
             return wanted
         found = wanted.copy()
-        for at, name in enumerate(self.inputs):
-            if name in self.actuators:
-                found[at] = _clipped(wanted[at], self.actuators[name].low, self.actuators[name].high)
+        for at, actuator in self.ranges:
+            found[at] = _clipped(wanted[at], actuator.low, actuator.high)
         return found
 
     def positions(self, a: Array, commands: Array) -> Array:
         """What the actuators give, (m, N)."""
+        if not self.slow:
+            return commands
         inputs = commands.copy()
         for state, at in enumerate(self.slow):
             actuator = self.actuators[self.inputs[at]]

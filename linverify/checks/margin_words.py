@@ -89,8 +89,8 @@ def notes(loop: Loop, one: LoopMargins) -> list[str]:
         if limit.rule:
             ruled.setdefault((limit.rule, limit.source, limit.caution), []).append(limit.word.replace("_", " "))
     for (rule, source, caution), words in ruled.items():
-        parts = (f"{' and '.join(words)} by the rule {rule}", source, caution)
-        told.append("; ".join(part for part in parts if part))
+        named = f"{' and '.join(words)} by the rule {rule}" + (f" ({source})" if source else "")
+        told.append(f"{named}: {caution}" if caution else named)
     return told
 
 

@@ -195,7 +195,7 @@ def _flight_control() -> Iterable[Rule]:
 
 def _practice() -> Iterable[Rule]:
     meaning = "gain margin 6 dB both ways and phase margin 45 deg"
-    caution = "no published source stands behind these two figures; they promise nothing by themselves"
+    caution = "these two figures promise nothing by themselves"
     yield Rule("six_db_45_deg", "loops", _margins(6.0, 45.0), meaning, "common practice, no published source", caution)
 
 

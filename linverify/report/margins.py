@@ -235,8 +235,13 @@ def _tried(rows: Rows) -> str:
 
 def _limits(rows: Rows) -> list[str]:
     """Ready-made limits with their sources; those that the spec wrote stand in the compliance table."""
-    ready = {str(row["rule"]): row for row in rows if row.get("rule")}
+    ready: dict[tuple[str, ...], list[str]] = {}
+    for row in rows:
+        if row.get("rule"):
+            key = tuple(cell(row.get(word, "")) for word in ("rule", "source", "caution"))
+            ready.setdefault(key, []).append(cell(row.get("word", "")).replace("_", " "))
     if not ready:
         return []
-    told = [(name, cell(row.get("source", "")), cell(row.get("caution", ""))) for name, row in ready.items()]
-    return ["Ready-made limits, where they come from and what to beware of:", grid(("rule", "source", "beware"), told)]
+    told = [(rule, ", ".join(words), source, caution) for (rule, source, caution), words in ready.items()]
+    headers = ("rule", "limits", "source", "beware")
+    return ["Ready-made limits, where they come from and what to beware of:", grid(headers, told)]

@@ -114,11 +114,22 @@ def _check(verdict: Verdict, point: Mapping[str, Any]) -> Iterator[str]:
     if verdict.reason:
         yield escaped(verdict.reason)
     told = [text.figure_line(figure) for figure in verdict.figures if figure.sense is Sense.NONE]
-    if lines := [*verdict.notes, *told]:
+    tabled = _rules(verdict.details)
+    notes = [note for note in verdict.notes if not any(all(part in note for part in rule) for rule in tabled)]
+    if lines := [*notes, *told]:
         yield tables.bullets(lines)
     told_once = {word: value for word, value in verdict.details.items() if not _repeats(value, verdict.notes)}
     discrete = point.get("step") is not None
     yield from details.blocks(told_once, point.get("signals", {}), str(point.get("time_unit", "")), discrete=discrete)
+
+
+def _rules(found: Mapping[str, Any]) -> list[tuple[str, ...]]:
+    """Name, source and caution of each ready-made limit that stands in a table of its own."""
+    margins = found.get("margins")
+    rows = [found.get("rules"), margins.get("limits") if isinstance(margins, Mapping) else None]
+    given = [row for each in rows if isinstance(each, list) for row in each if isinstance(row, Mapping)]
+    told = [tuple(str(row.get(word, "")) for word in ("rule", "source", "caution")) for row in given]
+    return [rule for rule in told if all(rule)]
 
 
 def _repeats(value: Any, notes: Sequence[str]) -> bool:

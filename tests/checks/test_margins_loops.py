@@ -8,10 +8,11 @@ from typing import Any
 
 import numpy as np
 import pytest
-from looping import DEG, companion, figure, gain, judged, least, linear_plant, loop, most, pid
+from looping import DEG, PLACE, companion, figure, gain, judged, least, linear_plant, loop, most, pid
 
 from linverify.core.delivered import Delays
 from linverify.core.loop import Actuator, Limit, Loop, Moved
+from linverify.core.rules import RULES
 from linverify.core.verdict import Status
 
 INTEGRATOR = linear_plant([[0.0]], [[1.0]], [[1.0]])
@@ -265,6 +266,13 @@ def test_a_pole_that_the_loop_does_not_move_fails_unless_it_is_left() -> None:
 def test_a_pole_of_the_size_of_rounding_is_told_as_zero() -> None:
     plant = linear_plant([[-1.0, 0.0], [1.0, 7.85e-17]], [[1.0], [0.0]], [[1.0, 0.0]])
     assert "does not move the pole 0 of x2" in judged(plant, loop(pid(1.0), *ALL)).reason
+
+
+def test_a_rule_with_several_limits_says_once_where_they_come_from() -> None:
+    rule = RULES["six_db_45_deg"]
+    verdict = judged(INTEGRATOR, loop(pid(0.5), *rule.bound(PLACE)))
+    told = "gain margin and phase margin by the rule six_db_45_deg (common practice, no published source): "
+    assert [note for note in verdict.notes if rule.name in note] == [told + rule.caution]
 
 
 def test_an_unstable_pole_that_no_input_reaches_fails() -> None:

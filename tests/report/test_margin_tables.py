@@ -131,8 +131,12 @@ def test_poles_steps_and_what_is_not_moved() -> None:
 
 
 def test_ready_made_limits_say_where_they_come_from() -> None:
-    text = told(LOOP).split("Ready-made limits")[1]
-    assert "no published source" in text
+    both = [LOOP["limits"][0], {**LOOP["limits"][0], "word": "phase_margin"}, LOOP["limits"][1]]
+    text = told({**LOOP, "limits": both}).split("Ready-made limits")[1]
+    assert cells(text, "six_db_45_deg") == [
+        "six_db_45_deg", "gain margin, phase margin", "common practice", "no published source",
+    ]  # fmt: skip
+    assert text.count("no published source") == 1
     assert "crossover" not in text
     assert "Ready-made" not in told({**LOOP, "limits": LOOP["limits"][1:]})
 

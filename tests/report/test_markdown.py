@@ -131,6 +131,16 @@ def test_lines_that_stand_among_the_notes_are_not_told_twice() -> None:
     assert "other" in page
 
 
+@pytest.mark.parametrize("word", ["rules", "limits"])
+def test_a_ready_made_limit_tells_its_source_and_caution_once(word: str) -> None:
+    row = {"rule": "six", "source": "common practice", "caution": "they promise nothing"}
+    own = {"rules": [row]} if word == "rules" else {"margins": {"limits": [{"word": "gain_margin", **row}]}}
+    note = "gain margin by the rule six (common practice): they promise nothing"
+    page = markdown.page(record.build([replace(TRIMS, notes=(note, "another"), details=own)]))
+    assert page.count("they promise nothing") == 1
+    assert "- another" in page
+
+
 def test_an_empty_run_has_a_report() -> None:
     page = markdown.page(record.build([]))
     assert "No check was run." in page

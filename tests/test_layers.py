@@ -85,6 +85,36 @@ def test_the_rule_sees_a_forbidden_import(tmp_path: Path) -> None:
     assert package[: len(package) - 2 + 1] == ("linverify",)
 
 
+def foreign_privates(source: str) -> list[str]:
+    """Names with a leading underscore that a module takes from our other modules, or from objects of other classes."""
+    tree = ast.parse(source)
+    own = {node.attr for node in ast.walk(tree) if isinstance(node, ast.Attribute) and _on_itself(node)}
+    own |= {node.name for node in ast.walk(tree) if isinstance(node, ast.FunctionDef)}
+    found = []
+    for node in ast.walk(tree):
+        if isinstance(node, ast.ImportFrom) and node.level:
+            found += [alias.name for alias in node.names if _is_private(alias.name)]
+        elif isinstance(node, ast.Attribute) and _is_private(node.attr) and node.attr not in {*own, "_replace"}:
+            found.append(node.attr)
+    return found
+
+
+def _on_itself(node: ast.Attribute) -> bool:
+    return isinstance(node.value, ast.Name) and node.value.id in ("self", "cls")
+
+
+def _is_private(name: str) -> bool:
+    return name.startswith("_") and not name.endswith("__")
+
+
+def test_private_names_stay_inside_their_module() -> None:
+    found = {path.name: names for path in MODULES if (names := foreign_privates(path.read_text(encoding="utf-8")))}
+    assert found == {}
+    assert foreign_privates("from .closed import _largest\nfrom . import fine\nx = fine._around(1)\n") == [
+        "_largest", "_around",
+    ]  # fmt: skip
+
+
 def test_no_module_outgrows_its_cap() -> None:
     long = {path.name: count for path in MODULES if (count := len(path.read_text(encoding="utf-8").splitlines())) > 400}
     assert long == {}

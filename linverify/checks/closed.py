@@ -138,22 +138,22 @@ class ClosedStudy(Study):
 
     def model(self) -> LocalModel:
         """The verified local model with the loops closed that it does not have inside."""
-        return self._around(self.bare.model(), self.closing.given)
+        return self.closed_around(self.bare.model(), self.closing.given)
 
     def derived(self) -> LocalModel:
         """The full derived model with all loops closed."""
-        return self._around(self.bare.derived(), ())
+        return self.closed_around(self.bare.derived(), ())
 
     def reference(self) -> LocalModel:
         """What an exact delivery would be, with all loops closed."""
         if not self.closing.given:
             return self.model()
-        return self._around(self.bare.reference(), self.closing.given)
+        return self.closed_around(self.bare.reference(), self.closing.given)
 
     def about(self) -> LocalModel | None:
         """The derived slopes with all loops closed, even where the plant has corners at the point."""
         bare = self.bare.about()
-        return None if bare is None else self._around(bare, ())
+        return None if bare is None else self.closed_around(bare, ())
 
     def unmet(self, need: str) -> str:
         """As of the bare study, and where the loop cannot be closed at all."""
@@ -189,7 +189,7 @@ class ClosedStudy(Study):
                     f"since its actuator has none"
                 )
         for loop in self.closing.loops:
-            late = _largest_delay(case, loop)
+            late = largest_delay(case, loop)
             if loop.sample is None and late > 0.0:
                 limit = told(float(f"{good_up_to(late):.3g}"), f"rad/{unit}")
                 found.append(
@@ -259,7 +259,7 @@ class ClosedStudy(Study):
             about = bare.model()
         return closed_plant(bare.bound, bare.point(), wiring, about)
 
-    def _around(self, model: LocalModel, without: Sequence[str]) -> LocalModel:
+    def closed_around(self, model: LocalModel, without: Sequence[str]) -> LocalModel:
         """`model` with the loops but those `without` closed; the same model comes back as the same object."""
         if id(model) not in self._models:
             inner = self._named_as_driven(model, without)
@@ -306,14 +306,15 @@ class ClosedStudy(Study):
         return found
 
     def _closed_probes(self) -> tuple:  # type: ignore[type-arg]
-        x, u = self.bare._probes()
+        x, u = self.bare.probes()
         point, bare = self._closed.point, self.bare.point()
         rests = np.tile(point.x[len(bare.x) :, np.newaxis], (1, x.shape[1]))
         references = np.tile(point.u[len(bare.u) :, np.newaxis], (1, x.shape[1]))
         return np.concatenate([x, rests]), np.concatenate([u, references])
 
 
-def _largest_delay(case: Case, loop: Loop) -> float:
+def largest_delay(case: Case, loop: Loop) -> float:
+    """The longest of the dead times that a chain of states stands for in this loop, in time units."""
     moves = [case.delays.inputs.get(moved.name, 0.0) for moved in loop.moves if not moved.loop]
     reads = [case.delays.outputs.get(name, 0.0) for name in loop.measures]
     return max(loop.delay + max(moves, default=0.0), max(reads, default=0.0))

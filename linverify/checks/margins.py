@@ -26,7 +26,7 @@ from .margin_figures import figures
 from .margin_poles import counted
 from .margin_spread import varied, whole
 from .margin_words import ROUNDING
-from .mode_model import _with_rounding
+from .mode_model import with_rounding
 from .study import Study
 
 OPEN = "the errors of the local model's entries leave open whether"
@@ -74,7 +74,7 @@ def setup(study: Study, name: str) -> Setup:
         raise RefusedError(str(error)) from None
     if name not in inside:
         closed, also = (inside, ()) if local.delivered is not None else ((), inside)
-        model = _with_rounding(study, study.model())
+        model = with_rounding(study, study.model())
         return Setup(model, case.loops, case.actuators, case.delays, closed, also, case.plant.step)
     if local.delivered is None:
         return Setup(study.model(), case.loops, case.actuators, case.delays, tick=case.plant.step)

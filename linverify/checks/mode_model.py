@@ -10,7 +10,7 @@ from ..core.model import LocalModel
 from ..numerics.allpass import good_up_to
 from ..numerics.lifted import carried, lifted
 from ..numerics.placed import printed_errors
-from .closed import ClosedStudy, _largest_delay, of_model
+from .closed import ClosedStudy, largest_delay, of_model
 from .study import Study
 
 SURE = 0.5  # of the frequency up to which a chain of states is good for a dead time: its poles are, to six digits
@@ -31,7 +31,7 @@ class Judged:
 def judged_model(study: Study) -> Judged:
     """The model to judge. Expects a study that has one: ask `unmet("model")` first."""
     case = study.case
-    bare = _with_rounding(study, study.model())
+    bare = with_rounding(study, study.model())
     inside = study.inside
     if inside is None:
         return Judged(bare, case.nominal)
@@ -42,19 +42,19 @@ def judged_model(study: Study) -> Judged:
         return Judged(None, {}, refused=reason)
 
     def around(model: LocalModel) -> LocalModel:
-        return lifted(closed._around(model, closed.closing.given))
+        return lifted(closed.closed_around(model, closed.closing.given))
 
     model = around(bare)
     notes = closed.told()
     if closed.model().jumps:
         told = f"{model.step:.6g} {case.plant.time_unit}"
         notes.append(f"sampled loops are closed inside the local model: its modes are taken over {told}")
-    late = max((_largest_delay(case, loop) for loop in closed.closing.loops if loop.sample is None), default=0.0)
+    late = max((largest_delay(case, loop) for loop in closed.closing.loops if loop.sample is None), default=0.0)
     fastest = SURE * good_up_to(late) if late > 0.0 else math.inf
     return Judged(replace(model, errors=carried(bare, around, model)), closed.case.nominal, tuple(notes), "", fastest)
 
 
-def _with_rounding(study: Study, model: LocalModel) -> LocalModel:
+def with_rounding(study: Study, model: LocalModel) -> LocalModel:
     """A delivered model with half a unit in the last printed digit of its entries as their errors."""
     delivered = study.case.local.delivered
     if delivered is None or model.errors or study.model_override is not None:

@@ -48,7 +48,7 @@ class Study:
     def bound(self) -> BoundPlant:
         """The plant with this point's parameters. Raises PlantError where it is not deterministic."""
         plant = BoundPlant(self.case.plant, self.case.parameters)
-        plant.detect(self.case.moment, *self._probes())
+        plant.detect(self.case.moment, *self.probes())
         plant.last_error = None
         return plant
 
@@ -59,7 +59,7 @@ class Study:
         spans = [*SPANS, *(share * drives.horizon for drives in case.drives for share in (0.31, 0.97))]
         if step is not None:
             spans = [*STEPS, *(round(span / step) for span in spans[len(SPANS) :])]
-        name = self.bound.moved_by_time([case.moment, *(case.moment + span for span in spans)], *self._probes())
+        name = self.bound.moved_by_time([case.moment, *(case.moment + span for span in spans)], *self.probes())
         self.bound.last_error = None
         return name
 
@@ -243,7 +243,7 @@ class Study:
             shown=case.shown,
         )  # fmt: skip
 
-    def _probes(self) -> tuple[Array, Array]:
+    def probes(self) -> tuple[Array, Array]:
         """Points over the envelope and, on open sides, around the held values; the same every time."""
         generator = np.random.default_rng(20_011)
         names = [*self.case.plant.states, *self.case.plant.inputs]

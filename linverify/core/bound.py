@@ -77,7 +77,8 @@ class BoundPlant:
     def rates_within(self, t: float, x: Array, u: Array) -> Array:
         """As `rates` of x (n, N) and u (m, N), for a plant around this one that stands behind a border of its own.
 
-        Nothing is copied: the answer may be the plant's own array, which its next call may change.
+        Nothing is copied: x and u are made read-only, the answer may be the plant's own array, which its next call may
+        change, and floating-point warnings are the caller's.
         """
         return self._within(self._dynamics, t, x, u)
 
@@ -179,12 +180,11 @@ class BoundPlant:
         width = x.shape[1]
         if width != 1 and not asked.batched:
             return self._answer(asked, t, x, u)
-        seen, given = (x[:, 0], u[:, 0]) if width == 1 else (x[:], u[:])
+        seen, given = (x[:, 0], u[:, 0]) if width == 1 else (x, u)
         seen.setflags(write=False)
         given.setflags(write=False)
         try:
-            with np.errstate(all="ignore"):
-                answer = asked.call(t, seen, given, self.parameters)
+            answer = asked.call(t, seen, given, self.parameters)
         except (Exception, SystemExit):
             return self._answer(asked, t, x, u)
         shape = (len(asked.rows), *seen.shape[1:])

@@ -13,6 +13,7 @@ from dataclasses import dataclass, field, replace
 from typing import ClassVar
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..core.bound import BoundPlant
 from ..core.errors import PlantError
@@ -23,6 +24,8 @@ from .closed_model import reading
 from .instants import Update
 from .whole import Whole
 from .wiring import Wiring
+
+Rows = NDArray[np.intp]
 
 
 class ClosedPlant(Plant):
@@ -46,8 +49,8 @@ class _Inside:
     feed: Array = field(init=False)
     sizes: Array = field(init=False)
     direct: bool = field(init=False)
-    states: tuple[list[int], list[int]] = field(init=False)  # rows of the measured, and of the plant's states
-    outputs: tuple[list[int], list[int]] = field(init=False)
+    states: tuple[Rows, Rows] = field(init=False)  # rows of the measured, and of the plant's states
+    outputs: tuple[Rows, Rows] = field(init=False)
     domain: list[tuple[str, int, float, float]] = field(init=False)
     drifts: bool = field(init=False)
 
@@ -55,7 +58,7 @@ class _Inside:
         bound, names = self.bound, self.measured_names
         self.n, self.drifts = bound.n, bool(self.point.drift.any())
         self.states, self.outputs = _places(names, bound.states), _places(names, bound.outputs, bound.states)
-        self.direct = bool(self.outputs[0])
+        self.direct = len(self.outputs[0]) > 0
         self.sizes = np.abs([self.point.value(name) for name in names]) if names else np.zeros(0)
         self.feed = np.zeros((len(names), bound.m))
         if self.model is not None:
@@ -77,29 +80,30 @@ class _Inside:
 
     def measured(self, t: float, x: Array, u: Array) -> Array:
         """Deviations from the trimmed course, (q, N)."""
-        course = self._course(t)
         rows, places = self.outputs
         if not len(rows):
-            rows, places = self.states
-            return np.asarray(x[places] - course[places, np.newaxis])
-        still = self._still(t, course)[places, np.newaxis]
-        outputs = self.bound.measure_within(t, x, u)[places] - still
+            return self._of_states(t, x)
+        still = self._still(t)
+        outputs = self.bound.measure_within(t, x, u).take(places, axis=0) - still
         if len(rows) == len(self.measured_names):
             return np.asarray(outputs)
         found = np.empty((len(self.measured_names), x.shape[1]))
-        found[rows] = outputs
-        rows, places = self.states
-        found[rows] = x[places] - course[places, np.newaxis]
+        found[rows], found[self.states[0]] = outputs, self._of_states(t, x)
         return found
+
+    def _of_states(self, t: float, x: Array) -> Array:
+        places = self.states[1]
+        return np.asarray(x.take(places, axis=0) - self._course(t)[places, np.newaxis])
 
     def _course(self, t: float) -> Array:
         point = self.point
         return point.x + point.drift * (t - point.time) if self.drifts else point.x
 
-    def _still(self, t: float, course: Array) -> Array:
-        if not self.drifts:
-            return self.point.y
-        return self.bound.measure(t, course, self.point.u)
+    def _still(self, t: float) -> Array:
+        """Measured outputs on the trimmed course, (r, 1)."""
+        point = self.point
+        y = self.bound.measure(t, self._course(t), point.u) if self.drifts else point.y
+        return y[self.outputs[1], np.newaxis]
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -154,10 +158,10 @@ def closed_plant(bound: BoundPlant, point: OperatingPoint, wiring: Wiring, model
     )
 
 
-def _places(names: tuple[str, ...], signals: Signals, others: Signals | None = None) -> tuple[list[int], list[int]]:
+def _places(names: tuple[str, ...], signals: Signals, others: Signals | None = None) -> tuple[Rows, Rows]:
     """Where `names` that are among `signals`, and not among `others`, stand in both."""
     rows = [at for at, name in enumerate(names) if name in signals and (others is None or name not in others)]
-    return rows, [signals.index(names[at]) for at in rows]
+    return np.array(rows, dtype=np.intp), np.array([signals.index(names[at]) for at in rows], dtype=np.intp)
 
 
 def _wide(values: Array) -> Array:

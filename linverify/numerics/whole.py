@@ -12,7 +12,7 @@ from typing import Protocol
 
 import numpy as np
 
-from ..core.errors import PlantError
+from ..core.errors import UnsolvedError
 from ..core.model import Array
 from .instants import SNAP, Instants, common_multiple
 from .linear_part import Answer, LinearPart, linear_part
@@ -85,7 +85,10 @@ class Whole:
         gain[wiring.lagging] = 0.0
         loop = np.eye(m) - gain @ self.inner.feed
         if not np.linalg.cond(loop) < 1e12:
-            raise ValueError("the loop is algebraic and ill-posed: what the controller gives at once cancels itself")
+            names = ", ".join(one.name for one in wiring.loops)
+            raise ValueError(
+                f"the loop through {names} is algebraic and ill-posed: what the controller gives at once cancels itself"
+            )
         object.__setattr__(self, "part", part)
         object.__setattr__(self, "gain", gain)
         object.__setattr__(self, "solver", np.linalg.inv(loop))
@@ -104,13 +107,14 @@ class Whole:
     def deviations(self, a: Array, w: Array) -> tuple[Array, Array]:
         """Of the added states those of the controllers, and the set points, as deviations from trim."""
         wiring = self.wiring
-        return a[len(wiring.slow) :], w[len(wiring.inputs) :] - wiring.references[:, np.newaxis]
+        points = w[len(wiring.inputs) :]
+        return a[len(wiring.slow) :], points - wiring.references[:, np.newaxis] if len(points) else points
 
     def settle(self, t: float, x: Array, a: Array, w: Array, ask: bool = True) -> Settled:
         """All signals at one instant; ask: whether the measurements are needed beyond what the inputs hold of them.
 
         Where the inputs depend on the measurements at once, and these on the inputs, both are solved for by Newton's
-        method with the slopes at trim, put right as it goes (Broyden 1965). Raises PlantError where that finds nothing.
+        method with the slopes at trim, put right as it goes (Broyden 1965). Raises UnsolvedError where that finds nothing.
         """
         free, m = self.part.free(*self.deviations(a, w)), len(self.wiring.inputs)
         free[:m] += w[:m]
@@ -122,7 +126,7 @@ class Whole:
         seen = self.inner.measured(t, x, w[:m])
         found = self._with(a, free, seen)
         # mostly the measurements do not hold the inputs at once: they are the same with the inputs that they lead to
-        if not self.inner.direct or np.array_equal(self.inner.measured(t, x, found.inputs), seen):
+        if not self.inner.direct or (self.inner.measured(t, x, found.inputs) == seen).all():
             return found
         return self._solved(t, x, a, free, found.inputs)
 
@@ -152,14 +156,16 @@ class Whole:
             before, u = (step, gap), u + step
         if not np.all(np.abs(gap) <= GOOD * size):
             names = ", ".join(one.name for one in self.wiring.loops)
-            raise PlantError(f"the algebraic loop through {names} has no solution that was found")
+            raise UnsolvedError(f"the algebraic loop through {names} has no solution that was found")
         return found
 
     def rates(self, t: float, x: Array, w: Array) -> Array:
         """Rates (next values) of all states, (n + na, N)."""
         inside, a = self.split(x)
         found = self.settle(t, inside, a, w)
-        parts = [self.inner.rates(t, inside, found.inputs), self.wiring.slow_rates(a, found.commands)]
+        parts = [self.inner.rates(t, inside, found.inputs)]
+        if self.wiring.slow:
+            parts.append(self.wiring.slow_rates(a, found.commands))
         return np.concatenate([*parts, found.controllers])
 
     def inputs(self, t: float, x: Array, w: Array) -> Array:
@@ -200,9 +206,10 @@ class _Jump:
     def __call__(self, t: float, x: Array, w: Array) -> Array:
         whole, after = self.whole, np.array(x)
         inside, a = whole.split(x)
-        states = self.part.free(*whole.deviations(a, w))
-        if not self.part.blind:
-            states += self.part.of_seen @ whole.measured(t, inside, a, w)
+        with np.errstate(all="ignore"):  # of the plant, when it is measured; what is not finite is seen
+            states = self.part.free(*whole.deviations(a, w))
+            if not self.part.blind:
+                states += self.part.of_seen @ whole.measured(t, inside, a, w)
         after[len(x) - len(states) :] = states
         return after
 

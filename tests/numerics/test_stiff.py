@@ -95,6 +95,24 @@ def test_a_column_without_numbers_leaves_its_neighbours_alone() -> None:
     assert attempt.end[0, 0] == pytest.approx(alone.end[0, 0], rel=1e-14)
 
 
+def test_slopes_are_kept_while_a_step_is_tried_again_and_no_longer() -> None:
+    calls: list[int] = []
+
+    def rates(s: float, y: np.ndarray) -> np.ndarray:
+        calls.append(y.shape[1])
+        return -50.0 * y**3
+
+    rosenbrock, x = method(1), np.array([[2.0, 1.0]])
+    first = rates(0.0, x)
+    ends = [rosenbrock.attempt(rates, 0.0, x, first, step).end for step in (0.4, 0.1)]
+    again = method(1).attempt(rates, 0.0, x, rates(0.0, x), 0.1).end
+    assert ends[1].tobytes() == again.tobytes()
+    assert len(calls) == 1 + 8 + 6 + 1 + 8
+    other = 0.5 * x
+    moved = rosenbrock.attempt(rates, 0.0, other, rates(0.0, other), 0.1).end
+    assert moved.tobytes() == method(1).attempt(rates, 0.0, other, rates(0.0, other), 0.1).end.tobytes()
+
+
 def test_differences_stay_inside_the_domain() -> None:
     seen: list[float] = []
 

@@ -56,6 +56,10 @@ class PlantError(LinverifyError):
     """A plant function misbehaved when it was called; the message names the call and its arguments."""
 
 
+class UnsolvedError(PlantError):
+    """An algebraic loop around a plant has no solution that was found; the message names the loop."""
+
+
 class DriveFileError(LinverifyError):
     """A saved drive cannot be read, or does not belong to the plant or point it is replayed on."""
 

@@ -4,6 +4,8 @@ from __future__ import annotations
 
 from enum import Enum
 
+from .errors import PlantError, UnsolvedError
+
 
 class Outcome(Enum):
     """DONE, or the reason why a result cannot be used; the value is what a reader is told."""
@@ -15,6 +17,7 @@ class Outcome(Enum):
     NOT_UNIQUE = "the weights of `minimize` do not single out one equilibrium"
     NOT_FINITE = "the plant returned a number that is not finite"
     PLANT_RAISED = "the plant raised an exception"
+    NO_SOLUTION = "the signals of a loop that answers at once have no common solution"
     PLANT_ANSWER = "the plant's answer has a wrong shape or type"
     NOT_DETERMINISTIC = "the plant answers the same call differently"
     NOISY = "the plant's own noise hides what was asked for"
@@ -36,3 +39,10 @@ class Outcome(Enum):
     def done(self) -> bool:
         """True where the result can be used."""
         return self is Outcome.DONE
+
+
+def of_call(error: PlantError) -> Outcome:
+    """What a failed call of a plant in time counts as; the border chains the plant's own exceptions only."""
+    if isinstance(error, UnsolvedError):
+        return Outcome.NO_SOLUTION
+    return Outcome.NOT_FINITE if error.__cause__ is None else Outcome.PLANT_RAISED

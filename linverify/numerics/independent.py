@@ -16,7 +16,7 @@ import numpy as np
 from ..core.drive import Drive
 from ..core.errors import PlantError
 from ..core.model import Array
-from ..core.outcome import Outcome
+from ..core.outcome import Outcome, of_call
 from .pieces import cut
 from .readout import Limit, Readout, acts, model_after, model_course, model_last, model_within
 from .rig import Exit, Fidelity, Rig, Runs
@@ -246,8 +246,7 @@ class _Second:
     def _fail(self, error: Exception, time: float) -> None:
         self.ended, self.text = time, str(error)
         if isinstance(error, PlantError):
-            raised = error.__cause__ is not None
-            self.outcome = Outcome.PLANT_RAISED if raised else Outcome.NOT_FINITE
+            self.outcome = of_call(error)
         else:
             self.outcome = Outcome.TOO_MANY_STEPS if isinstance(error, _SpentError) else Outcome.INACCURATE
 

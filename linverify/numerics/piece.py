@@ -8,7 +8,7 @@ import numpy as np
 
 from ..core.bound import BoundPlant
 from ..core.model import Array
-from ..core.outcome import Outcome
+from ..core.outcome import Outcome, of_call
 from ..core.signals import Signals
 
 
@@ -70,8 +70,7 @@ class Piece:
             if limited:
                 return Outcome.NOT_FINITE, f"the states leave the plant's domain ({', '.join(limited)})"
             return Outcome.DIVERGED, "the states overflow"
-        # the border chains the plant's own exception, and nothing to what it found wrong in an answer
-        return (Outcome.PLANT_RAISED if error.__cause__ is not None else Outcome.NOT_FINITE), str(error)
+        return of_call(error), str(error)
 
 
 def domain_of(plant: BoundPlant, signals: Signals) -> tuple[Array, Array]:

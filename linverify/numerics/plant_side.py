@@ -12,7 +12,7 @@ from dataclasses import dataclass, field
 import numpy as np
 
 from ..core.model import Array
-from ..core.outcome import Outcome
+from ..core.outcome import Outcome, of_call
 from .courses import Courses, input_at
 from .exits import Limits, limits_of
 from .instants import updated
@@ -170,9 +170,9 @@ class _Way:
         bad = np.asarray(batch.active & ~np.isfinite(after).all(axis=0))
         for column in np.flatnonzero(bad):
             error = errors.get(int(column))
-            raised = error is not None and error.__cause__ is not None
+            outcome = Outcome.NOT_FINITE if error is None else of_call(error)
             text = "a sampled controller's output overflows" if error is None else str(error)
-            self._note(int(column), batch.begun, Outcome.PLANT_RAISED if raised else Outcome.NOT_FINITE, text)
+            self._note(int(column), batch.begun, outcome, text)
         if bad.any():
             batch.stop(bad, 0.0)
 

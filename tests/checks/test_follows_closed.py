@@ -16,6 +16,7 @@ from linverify.core.case import Amplitude, Band, Interval, Options, TrimAsk
 from linverify.core.delivered import Delays, LocalAsk
 from linverify.core.drive import Drive
 from linverify.core.loop import Actuator, Controller, Loop, Moved
+from linverify.core.outcome import Outcome
 from linverify.core.plant import Plant
 from linverify.core.verdict import Status, Verdict
 from linverify.drives import pinned
@@ -220,7 +221,25 @@ def test_an_algebraic_loop_is_solved() -> None:
 def test_an_ill_posed_algebraic_loop_is_undecided() -> None:
     found = verdict(direct(-2.0))
     assert found.status is Status.UNDECIDED
-    assert "algebraic and ill-posed" in found.reason
+    assert "the loop through hold is algebraic and ill-posed" in found.reason
+
+
+def test_an_algebraic_loop_that_loses_its_solution_is_told_as_such() -> None:
+    """f = r - x - bend f^2 has no real solution below r - x = -1 / (4 bend)."""
+    bent = Plant(
+        states={"x": "m"},
+        inputs={"f": "N"},
+        outputs={"y": "m"},
+        parameters={"bend": 10.0},
+        dynamics=lambda t, x, u, p: np.stack([-x[0] + u[0]]),
+        measurement=lambda t, x, u, p: np.stack([x[0] + p["bend"] * u[0] ** 2]),
+    )
+    wide = (Band("y", "peak", 50.0), Band("f", "peak", 50.0))
+    found = verdict(
+        direct(1.0, plant=bent, parameters={"bend": 10.0}, bands=wide, driven=set_point(count=3, intervals=2))
+    )
+    assert found.status is Status.UNDECIDED
+    assert f"{Outcome.NO_SOLUTION.value}: the algebraic loop through hold has no solution" in found.reason
 
 
 @pytest.mark.parametrize("control", [pd(20.0, 4.0), sampled_pd(12.0, 5.0, 0.05)], ids=["continuous", "sampled"])

@@ -114,7 +114,7 @@ class Whole:
         """All signals at one instant; ask: whether the measurements are needed beyond what the inputs hold of them.
 
         Where the inputs depend on the measurements at once, and these on the inputs, both are solved for by Newton's
-        method with the slopes at trim, put right as it goes (Broyden 1965). Raises UnsolvedError where nothing is found.
+        method with the slopes at trim, put right as it goes (Broyden 1965). Raises UnsolvedError where none is found.
         """
         free, m = self.part.free(*self.deviations(a, w)), len(self.wiring.inputs)
         free[:m] += w[:m]

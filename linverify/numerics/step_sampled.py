@@ -36,9 +36,9 @@ def sampled_response(A: Array, c: Array, start: Array, within: float, step: floa
     bounds = np.array([within * (1.0 + SLACK), within, within * (1.0 - SLACK)])
     last = np.full(3, -1, dtype=np.int64)
     highest, when, k, x = -math.inf, 0, 0, start
-    bound, onward = _bound(A, c), _power(A)
+    bound, onward, seen = _bound(A, c), _power(A), _seen(A, c)
     while k < MOST:
-        values = c @ _block(A, x)
+        values = seen @ x
         if values.max() > highest:
             highest, when = float(values.max()), k + int(values.argmax())
         for place, edge in enumerate(bounds):
@@ -80,10 +80,10 @@ def _power(A: Array) -> Array:
     return found
 
 
-def _block(A: Array, x: Array) -> Array:
-    """x, A x, ... as BLOCK columns."""
-    columns, power = x[:, np.newaxis], A
-    while columns.shape[1] < BLOCK:
-        columns = np.hstack([columns, power @ columns])
+def _seen(A: Array, c: Array) -> Array:
+    """c, c A, ... as BLOCK rows."""
+    rows, power = c[np.newaxis], A
+    while len(rows) < BLOCK:
+        rows = np.vstack([rows, rows @ power])
         power = power @ power
-    return columns
+    return rows

@@ -153,4 +153,5 @@ def _joint(joint: Joint) -> dict[str, Any]:
 
 
 def _disk(disk: Bounded) -> dict[str, Any]:
-    return {**_met(Found(disk.low, disk.frequency, disk.high - disk.low)), "guaranteed": guaranteed(disk.low)}
+    error = disk.high - disk.low if disk.high > disk.low else 0.0  # both may be infinite
+    return {**_met(Found(disk.low, disk.frequency, error)), "guaranteed": guaranteed(disk.low)}

@@ -12,6 +12,7 @@ from ..core.shown import Shown, number
 from ..core.verdict import Figure, Sense, Status
 from ..numerics.loop_margins import LoopMargins
 from ..numerics.margins import Found
+from ..numerics.structured import Bounded
 from .margin_poles import dampings
 from .margin_spread import ENDLESS, matched, widened
 
@@ -87,13 +88,22 @@ def _joint(limit: Limit, found: LoopMargins) -> Ask:
         disk, sensitivity, complementary = one.disk, one.sensitivity, one.complementary
     else:
         bounds = found.joint.here
-        half = 0.5 * (bounds.high - bounds.low)
-        disk = Found(bounds.low + half, bounds.frequency, half)
+        disk = between(bounds, limit.low)
         sensitivity, complementary = found.joint.sensitivity, found.joint.complementary
     if limit.word == "disk_margin":
         return Ask("disk margin", "", disk, limit.low, Sense.LOWER)
     peak = sensitivity if limit.word == "sensitivity_peak" else complementary
     return Ask(limit.word.replace("_", " "), "", peak, limit.high, Sense.UPPER, ratio=True)
+
+
+def between(bounds: Bounded, asked: float) -> Found:
+    """A disk margin between bounds, as a figure; one that is only known from below is as good as that, or unknown."""
+    if math.isfinite(bounds.high):
+        half = 0.5 * (bounds.high - bounds.low)
+        return Found(bounds.low + half, bounds.frequency, half)
+    if math.isinf(bounds.low):
+        return Found(math.inf)  # nothing that is moved comes back
+    return Found(bounds.low, bounds.frequency) if bounds.low > asked else Found(math.nan)
 
 
 def _crossovers(case: Case, name: str, limit: Limit, crossings: list[Found]) -> Iterator[Ask]:

@@ -16,6 +16,8 @@ from ..numerics.unmoved import Unmoved
 
 LEAVE = "where that is meant, name the state under `leaves`"
 ROUNDING = 1e-12  # of the largest pole
+POLES = "the poles of several channels closed with a dead time are counted, and not found one by one"
+_ALONE = ("gain_margin", "phase_margin", "delay_margin", "crossover")
 WRONG_WAY = "the loop is closed the wrong way round: unstable; with the opposite sign it would be stable"
 
 
@@ -63,6 +65,19 @@ def _poles(values: Sequence[complex], time_unit: str) -> list[str]:
             text += f", time to double {with_unit(number(math.log(2.0) / value.real, 4), time_unit)}"
         told.append(text)
     return list(dict.fromkeys(told))
+
+
+def silent(words: Sequence[str], one: LoopMargins) -> list[str]:
+    """What is asked for and could not be found; what has one reason is told in one sentence."""
+    reasons: dict[str, list[str]] = {}
+    for word in words:
+        why = "" if not one.alone else one.alone if word in _ALONE else POLES if word == "damping" else ""
+        reasons.setdefault(why, []).append(word.replace("_", " "))
+    told = []
+    for why, named in reasons.items():
+        subject = ", ".join(named[:-1]) + f" and {named[-1]}" if len(named) > 1 else named[0]
+        told.append(f"{subject} could not be found" + (f": {why}" if why else ""))
+    return told
 
 
 def without_crossover(case: Case, loop: Loop, one: LoopMargins) -> list[tuple[Status, str]]:

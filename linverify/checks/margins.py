@@ -114,8 +114,7 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
     made, silent = figures(case, loop, one, others)
     found.figures += made
     found.reasons += [(each.status, margin_words.figure(each)) for each in made if each.status is not Status.PASS]
-    why = f": {one.alone}" if one.alone else ""
-    found.reasons += [(Status.UNDECIDED, f"{word.replace('_', ' ')} could not be found{why}") for word in silent]
+    found.reasons += [(Status.UNDECIDED, words) for words in margin_words.silent(silent, one)]
     found.reasons += margin_words.without_crossover(case, loop, one)
     if loop.confirm:
         _confirm(study, loop, one, found)

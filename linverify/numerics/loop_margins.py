@@ -22,7 +22,10 @@ from .transfer import Transfer
 from .unmoved import Unmoved, split
 
 CLEAR = 1e-9  # relative: poles that are known less well are looked at together with their neighbours
-ALONE = "for one channel alone, the dead time of the others would lie inside a closed loop"
+ALONE = (
+    "for one channel alone, the dead time of the others would lie inside a closed loop; disk_margin, sensitivity_peak "
+    "and complementary_peak, of all channels at once, can be asked for"
+)
 
 
 @dataclass(frozen=True, slots=True, eq=False)

@@ -10,10 +10,12 @@ import numpy as np
 import pytest
 from looping import DEG, PLACE, companion, figure, gain, judged, least, linear_plant, loop, most, pid
 
+from linverify.checks.margin_figures import between, status_of
 from linverify.core.delivered import Delays
 from linverify.core.loop import Actuator, Limit, Loop, Moved
 from linverify.core.rules import RULES
-from linverify.core.verdict import Status
+from linverify.core.verdict import Sense, Status
+from linverify.numerics.structured import Bounded
 
 INTEGRATOR = linear_plant([[0.0]], [[1.0]], [[1.0]])
 DOUBLE = linear_plant([[0.0, 1.0], [0.0, 0.0]], [[0.0], [1.0]], np.eye(2))
@@ -229,14 +231,25 @@ def test_of_several_channels_with_a_dead_time_only_what_holds_for_all_is_known()
     limits = (*ALL, Limit("damping", 0.1, 10.0), Limit("crossover", 0.1, 10.0))
     verdict = judged(ROTATING, loop(gain(np.eye(2)), *limits, **PAIR, delay=0.001))
     assert verdict.status is Status.UNDECIDED
-    assert "gain margin could not be found: for one channel alone, the dead time of the others" in verdict.reason
-    for word in ("damping", "crossover"):
-        assert f"{word} could not be found" in verdict.reason
+    words = "gain margin, phase margin, delay margin and crossover could not be found: for one channel alone, the dead "
+    assert f"{words}time of the others would lie inside a closed loop" in verdict.reason
+    assert verdict.reason.count("for one channel alone") == 1
+    assert "damping could not be found: the poles of several channels" in verdict.reason
     known = judged(ROTATING, loop(gain(np.eye(2)), most("sensitivity_peak", 20.0), **PAIR, delay=0.001))
     assert known.status is Status.PASS, known.reason
     late = judged(ROTATING, loop(gain(np.eye(2)), most("sensitivity_peak", 20.0), **PAIR, delay=0.5))
     assert late.status is Status.FAIL
     assert "unstable" in late.reason
+
+
+@pytest.mark.parametrize(
+    ("low", "high", "status"),
+    [(math.inf, math.inf, Status.PASS), (0.7, math.inf, Status.PASS), (0.3, math.inf, Status.UNDECIDED),
+     (0.6, 0.7, Status.PASS), (0.4, 0.6, Status.UNDECIDED), (0.3, 0.4, Status.FAIL)],
+)  # fmt: skip
+def test_bounds_of_a_disk_margin_may_be_infinite(low: float, high: float, status: Status) -> None:
+    found = between(Bounded(low, high, 1.0), 0.5)
+    assert status_of(found, 0.5, Sense.LOWER) is status
 
 
 def test_two_sampled_channels_have_delay_margins_of_their_own() -> None:

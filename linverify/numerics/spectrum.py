@@ -165,11 +165,13 @@ class _Circles:
         begin = max(self.first_order[at] for at in cluster.members)
         shortest = max(least, SPACING * self.size)
         radius = max(shortest, begin if math.isfinite(begin) and begin < most else 0.0)
+        begun = radius
         while radius <= most and not self._keeps(cluster.center, radius):
             radius *= 2.0
         if radius > most:
             return None
-        while radius / 2.0 >= shortest and self._keeps(cluster.center, radius / 2.0):
+        failed = 0.5 * radius if radius > begun else 0.0
+        while radius / 2.0 >= shortest and radius / 2.0 != failed and self._keeps(cluster.center, radius / 2.0):
             radius /= 2.0  # of poles that nearly coincide the first-order error says nothing
         low, high = max(least, radius / 2.0), radius
         for _ in range(HALVINGS):
@@ -187,7 +189,11 @@ class _Circles:
         return math.inf
 
     def _keeps(self, center: complex, radius: float, times: float = 1.0) -> bool:
-        return largest(self.A, times * self.E, circle(center, radius, POINTS)) < RESERVE
+        points, E = circle(center, radius, POINTS), times * self.E
+        if center.imag == 0.0:
+            points = points[points.imag > 0.0]  # the other half is its mirror image, with the same figures
+        # a circle that is too small mostly shows it at any point
+        return largest(self.A, E, points[::8]) < RESERVE and largest(self.A, E, points) < RESERVE
 
 
 def circle(center: complex, radius: float, points: int) -> Complex:

@@ -3,6 +3,8 @@
     loop, controller, broken_at      texts: its name, its controller as the spec writes it, plant_input or plant_output
     measures, moves, inside          lists of names; `inside`: loops that are closed inside this one
     delay, sample                    quantities; absent where there is none (a continuous loop has no `sample`)
+    lags                             {input: quantity}: actuators in front of what is moved, here and by loops inside
+    late, old                        {input or output: quantity}: dead times of the plant on the way, the same
     frequency_unit                   of every `frequency` below: rad per time unit of the plant
     stable                           true or false; of an unstable loop nothing but poles follows
     channels                         a list, one a channel of the break, each with the other channels closed:
@@ -63,6 +65,7 @@ def told(case: Case, loop: Loop, opened: Opened, found: LoopMargins, excused: Se
         made["delay"] = {"value": loop.delay, "unit": time}
     if step is not None:
         made["sample"] = {"value": step, "unit": time}
+    made |= _on_the_way(case, loop, opened, time)
     values = found.poles.values if found.poles is not None else found.delayed
     made["closed_loop_poles"] = [pole(complex(value), step) for value in values]
     made["unmoved_poles"] = [
@@ -76,6 +79,23 @@ def told(case: Case, loop: Loop, opened: Opened, found: LoopMargins, excused: Se
     if found.joint is not None:
         made["all_channels"] = _joint(found.joint)
     return made
+
+
+def _on_the_way(case: Case, loop: Loop, opened: Opened, time: str) -> dict[str, Any]:
+    """What stands between the loop and the plant, and between the plant and the loop."""
+    loops = (loop, *(case.loops[name] for name in opened.inside))
+    moved = [moved.name for one in loops for moved in one.moves if not moved.loop]
+    measured = [name for one in loops for name in one.measures]
+    found = {
+        "lags": {name: case.actuators[name].lag for name in moved if name in case.actuators},
+        "late": {name: case.delays.inputs.get(name, 0.0) for name in moved},
+        "old": {name: case.delays.outputs.get(name, 0.0) for name in measured},
+    }
+    told = {
+        word: {name: {"value": value, "unit": time} for name, value in values.items() if value > 0.0}
+        for word, values in found.items()
+    }
+    return {word: values for word, values in told.items() if values}
 
 
 def pole(value: complex, step: float | None) -> dict[str, float]:

@@ -20,6 +20,12 @@ from ..numerics.traits import TRAITS, Known, pair_damping
 from .findings import Findings
 from .mode_choice import described, label, line_name
 
+MEASURES = {
+    "controllability from": "controllability is the cosine of the angle between a mode's left eigenvector and the "
+    "input's column of B, states in nominal sizes: 0 is out of reach, 1 is straight into the mode",
+    "observability at": "observability is the cosine of the angle between a mode's right eigenvector and the output's "
+    "row of C, states in nominal sizes: 0 is out of sight, 1 shows nothing else",
+}
 WORDED = {
     "damping": "damping ratio",
     "natural_frequency": "natural frequency",
@@ -145,6 +151,7 @@ def _overdamped(
 def judge_measures(found: Modes, ask: ModeAsk, sure: Sequence[Mode], maybe: Sequence[Mode], into: Findings) -> None:
     """Least controllability and observability of the chosen modes."""
     kinds = (("controllability from", ask.controllable), ("observability at", ask.observable))
+    into.notes += [MEASURES[kind] for kind, limits in kinds if limits and MEASURES[kind] not in into.notes]
     for kind, limits in kinds:
         for name, limit in limits:
             what = f"{line_name(ask)}{kind} {name}"

@@ -28,7 +28,15 @@ _HEAD = {
     "inside": "loops closed inside",
     "delay": "declared dead time",
     "sample": "sample time",
+    "lags": "lags of actuators",
+    "late": "dead times of inputs",
+    "old": "dead times of measurements",
 }
+CROSSINGS = (
+    "Each row tells the one change that would bring the loop to -1 at that frequency: more lag or more lead of phase, "
+    "or a factor of gain. The nearest of them are the margins; beyond those the loop is unstable already."
+)
+ENDLESS = ": those that were found, for a loop with dead time has infinitely many"
 _SIDES = {"input": "at the input", "output": "at the output", "both": "at both"}
 
 
@@ -41,9 +49,15 @@ def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
     tried = _rows(rest, "confirmed")
     left, unit = dict(found), str(found.get("frequency_unit", ""))
     left.pop("frequency_unit", None)
+    endless = "sample" not in left and any(left.get(word) for word in ("delay", "late", "old"))
     made = [_loop(left)]
     if channels := _rows(left, "channels"):
-        made += ["Margins, one channel at a time:", _channels(channels, unit), escaped(SIGN), text.CAUTION]
+        made += [
+            "Margins, one channel at a time:",
+            _channels(channels, unit, _asked(found)),
+            escaped(SIGN),
+            text.CAUTION,
+        ]
         made += ["Disk margins and what they guarantee:", _disks(channels, left.get("all_channels"), unit)]
         made += _crossings(channels, unit)
     made += _all_channels(left.pop("all_channels", None), unit)
@@ -51,7 +65,9 @@ def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
         made += ["Step of the set point:", _steps(steps)]
     if poles := _rows(left, "closed_loop_poles"):
         upper = [row for row in poles if not _float(row.get("imag")) < 0.0]  # a pair stands in one row
-        made += [f"Closed-loop poles, per {time_unit or 'time unit'}:", modal.table(upper, time_unit)]
+        upper = sorted(upper, key=lambda row: _float(row.get("natural_frequency")))
+        told = f"Closed-loop poles, per {time_unit or 'time unit'}{ENDLESS if endless else ''}:"
+        made += [told, modal.table(upper, time_unit)]
     if poles := _rows(left, "unmoved_poles"):
         made += [f"Poles that this loop does not move, per {time_unit or 'time unit'}:", _unmoved(poles)]
     if tried:
@@ -74,7 +90,7 @@ def _loop(left: dict[str, Any]) -> str:
     rows = [("loop", cell(left.pop("loop", "")))]
     for word, told in _HEAD.items():
         value = left.pop(word, None)
-        if value not in (None, [], ""):
+        if value not in (None, [], {}, ""):
             rows.append((told, cell(value)))
     if "broken_at" in left:
         where = str(left.pop("broken_at"))
@@ -84,7 +100,14 @@ def _loop(left: dict[str, Any]) -> str:
     return grid(("what", "value"), rows)
 
 
-def _channels(channels: Rows, unit: str) -> str:
+def _asked(found: Mapping[str, Any]) -> bool:
+    """Whether a delay margin is asked for: of some sampled loops none is looked for otherwise."""
+    limits = found.get("limits")
+    rows = limits if isinstance(limits, list) else []
+    return any(isinstance(row, Mapping) and row.get("word") == "delay_margin" for row in rows)
+
+
+def _channels(channels: Rows, unit: str, asked: bool) -> str:
     headers = (
         "channel", "gain up", "gain down", "phase", "delay", "Ms (sensitivity)", "Mt (complementary sensitivity)",
     )  # fmt: skip
@@ -94,7 +117,7 @@ def _channels(channels: Rows, unit: str) -> str:
             _met(one.get("gain_up"), unit, ratio=True),
             _met(one.get("gain_down"), unit, ratio=True),
             _met(one.get("phase"), unit),
-            _met(one.get("delay"), unit),
+            _met(one.get("delay"), unit) if "delay" in one or asked else "not asked for",
             _met(one.get("sensitivity_peak"), unit, ratio=True),
             _met(one.get("complementary_peak"), unit, ratio=True),
         )
@@ -108,21 +131,22 @@ def _met(value: Any, unit: str, *, ratio: bool = False) -> str:
     if not isinstance(value, Mapping) or not is_number(value.get("value")):
         return cell(value)
     figure, own = float(value["value"]), str(value.get("unit", ""))
-    told = _ratio(figure) if ratio else quantity.quantity(figure, own, 4)
-    error = value.get("error")
-    if is_number(error) and error and error > 1e-4 * abs(figure):
-        told += f" +- {quantity.quantity(error, own, 2)}"
+    error = _float(value.get("error"))
+    known = f" +- {quantity.quantity(error, own, 2)}" if error > 1e-4 * abs(figure) else ""
+    told = _ratio(figure, known) if ratio else f"{quantity.quantity(figure, own, 4)}{known}"
     frequency = _float(value.get("frequency"))
+    if math.isinf(frequency):
+        return f"{told} in the limit of high frequency"
     return told if math.isnan(frequency) else f"{told} at {quantity.quantity(frequency, unit, 4)}"
 
 
-def _ratio(value: float) -> str:
-    """A factor in dB with the factor beside; zero and infinity are no limit at all."""
+def _ratio(value: float, known: str = "") -> str:
+    """A factor in dB with the factor, and what that is known to, beside; zero and infinity are no limit at all."""
     if value == 0.0 or math.isinf(value):
         return "no limit"
     if value < 0.0 or math.isnan(value):
         return quantity.number(value, 4)
-    return f"{quantity.quantity(decibels(value), 'dB', 4)} (factor {quantity.number(value, 4)})"
+    return f"{quantity.quantity(decibels(value), 'dB', 4)} (factor {quantity.number(value, 4)}{known})"
 
 
 def _disks(channels: Rows, several: Any, unit: str) -> str:
@@ -158,18 +182,27 @@ def _crossings(channels: Rows, unit: str) -> list[str]:
     rows = []
     for one in channels:
         name = cell(one.get("channel", ""))
-        for word, told, figure, of in (
-            ("crossovers", "gain is one", "phase", "deg"),
-            ("phase_crossings", "phase is -180 deg", "gain", ""),
+        for word, told, change in (
+            ("crossovers", "gain is one", _turn),
+            ("phase_crossings", "phase is -180 deg", _factor),
         ):
             found = one.get(word)
             for each in found if isinstance(found, list) else ():
                 if isinstance(each, Mapping):
-                    value = quantity.quantity(_float(each.get(figure)), of, 4)
-                    value = value if of else f"factor {value}"
-                    rows.append((name, told, quantity.quantity(_float(each.get("frequency")), unit, 4), value))
-    headers = ("channel", "crossing", "at", "left until instability")
-    return ["Crossings:", grid(headers, rows)] if rows else ["Crossings: none."]
+                    at = quantity.quantity(_float(each.get("frequency")), unit, 4)
+                    rows.append((name, told, at, change(each)))
+    headers = ("channel", "crossing", "at", "reaches -1 with")
+    return ["Crossings:", grid(headers, rows), escaped(CROSSINGS)] if rows else ["Crossings: none."]
+
+
+def _turn(each: Mapping[str, Any]) -> str:
+    phase = _float(each.get("phase"))
+    told = quantity.quantity(abs(phase), "deg", 4)
+    return told if math.isnan(phase) else f"{told} more {'lead' if phase < 0.0 else 'lag'}"
+
+
+def _factor(each: Mapping[str, Any]) -> str:
+    return f"gain times {quantity.number(_float(each.get('gain')), 4)}"
 
 
 def _float(value: Any) -> float:
@@ -211,7 +244,8 @@ def _unmoved(rows: Rows) -> str:
         named = shares.items() if isinstance(shares, Mapping) else ()
         words = sorted(((name, _float(share)) for name, share in named), key=lambda item: (-item[1], item[0]))
         states = ", ".join(f"{name} {quantity.percent(round(share, 3))}" for name, share in words[:3])
-        stands = "left to others" if row.get("excused") is True else quantity.ABSENT
+        stands = "stable" if _float(row.get("real")) < 0.0 else "not stable"
+        stands = "left to others" if row.get("excused") is True else stands
         told.append((complex_told(row.get("real"), row.get("imag")), states or quantity.ABSENT, stands))
     return grid(("pole", "mostly", "note"), told)
 

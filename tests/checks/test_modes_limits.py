@@ -310,6 +310,9 @@ def test_modes_must_be_controllable_and_observable() -> None:
             found = verdict(A, bad, B=B, C=C)
             assert found.status is Status.FAIL
             assert name in found.reason
+            (note,) = (note for note in found.notes if "cosine" in note)
+            assert note.startswith({"controllable": "controllability", "observable": "observability"}[word])
+    assert not any("cosine" in note for note in verdict(A, line(stable=True), B=B, C=C).notes)
     lacking = verdict(A, line(controllable=(("u7", least("measure", 0.1)),)), B=B, C=C)
     assert lacking.status is Status.UNDECIDED
     assert "the local model has no u7" in lacking.reason

@@ -112,11 +112,14 @@ def test_a_disk_margin_of_two_allows_any_factor() -> None:
 
 
 def test_every_crossing_is_listed() -> None:
-    text = told(LOOP).split("Crossings:")[1]
-    assert "gain is one" in text
-    assert "-60 deg" in text
-    assert "phase is -180 deg" in text
-    assert "factor 2" in text
+    text = told(LOOP).split("Crossings:")[1].split("Step of")[0]
+    rows = [[cell.strip() for cell in line.strip("|").split("|")] for line in text.splitlines() if "fore_flap" in line]
+    assert rows == [
+        ["fore_flap", "gain is one", "1.9 rad/s", "44.9 deg more lag"],
+        ["fore_flap", "gain is one", "7.5 rad/s", "60 deg more lead"],
+        ["fore_flap", "phase is -180 deg", "5.5 rad/s", "gain times 2"],
+    ]
+    assert "The nearest of them are the margins" in text
     assert "Crossings: none." in told({**LOOP, "channels": [{"channel": "fore_flap", "gain_up": met(math.inf)}]})
 
 
@@ -139,6 +142,57 @@ def test_ready_made_limits_say_where_they_come_from() -> None:
     assert text.count("no published source") == 1
     assert "crossover" not in text
     assert "Ready-made" not in told({**LOOP, "limits": LOOP["limits"][1:]})
+
+
+def test_what_stands_between_loop_and_plant_is_told() -> None:
+    way = {
+        "lags": {"fore_flap": {"value": 0.06, "unit": "s"}},
+        "late": {"fore_flap": {"value": 0.1, "unit": "s"}},
+        "old": {"ride_height": {"value": 0.2, "unit": "s"}},
+    }
+    text = told({**LOOP, **way})
+    assert cells(text, "lags of actuators")[1] == "fore_flap 0.06 s"
+    assert cells(text, "dead times of inputs")[1] == "fore_flap 0.1 s"
+    assert cells(text, "dead times of measurements")[1] == "ride_height 0.2 s"
+
+
+def test_a_continuous_loop_with_dead_time_says_that_not_all_poles_are_listed() -> None:
+    continuous = {word: value for word, value in LOOP.items() if word != "sample"}
+    late = {"late": {"fore_flap": {"value": 0.1, "unit": "s"}}}
+    plain = {word: value for word, value in continuous.items() if word != "delay"}
+    assert "infinitely many" in told(continuous)
+    assert "infinitely many" in told({**plain, **late})
+    assert "infinitely many" not in told(plain)
+    assert "infinitely many" not in told(LOOP)  # sampled: its dead time is states
+
+
+def test_a_delay_margin_that_nobody_asked_for_is_not_passed_off_as_none() -> None:
+    channel = {word: value for word, value in LOOP["channels"][0].items() if word != "delay"}
+    without = {**LOOP, "channels": [channel]}
+    assert cells(told(without).split("Margins, one channel")[1], "fore_flap")[4] == "not asked for"
+    asked = {**without, "limits": [{"word": "delay_margin", "text": "80 ms"}]}
+    assert cells(told(asked).split("Margins, one channel")[1], "fore_flap")[4] == "-"
+
+
+def test_errors_of_factors_stand_beside_the_factor_and_limits_at_infinity_read_as_such() -> None:
+    channel = {
+        **LOOP["channels"][0],
+        "gain_up": met(2.0, "", 0.01, 5.5),
+        "sensitivity_peak": met(1.0, "", 0.0, math.inf),
+    }
+    (_, up, _, _, _, ms, _) = cells(told({**LOOP, "channels": [channel]}).split("Margins, one channel")[1], "fore_flap")
+    assert up == "6.021 dB (factor 2 +- 0.01) at 5.5 rad/s"
+    assert ms == "0 dB (factor 1) in the limit of high frequency"
+
+
+def test_poles_stand_slowest_first_and_those_not_moved_say_what_becomes_of_them() -> None:
+    poles = [{"real": -value, "imag": 0.0, "natural_frequency": value} for value in (9.0, 0.5, 3.0)]
+    text = told({**LOOP, "closed_loop_poles": poles}).split("Closed-loop poles")[1]
+    assert text.index("-0.5") < text.index("-3") < text.index("-9")
+    rows = [{"real": -2.0, "imag": 0.0, "states": {"x": 1.0}}, {"real": 0.3, "imag": 0.0, "states": {"y": 1.0}}]
+    text = told({**LOOP, "unmoved_poles": rows}).split("Poles that this loop does not move")[1]
+    assert cells(text, "-2")[2] == "stable"
+    assert cells(text, "0.3")[2] == "not stable"
 
 
 def test_margins_carry_the_caution() -> None:

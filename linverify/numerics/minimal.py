@@ -45,14 +45,14 @@ def _reached(A: Array, B: Array, C: Array) -> tuple[Array, Array, Array]:
     return basis.T @ A @ basis, basis.T @ B, C @ basis
 
 
-def reached(A: Array, B: Array) -> Array:
-    """Orthonormal basis (n, r) of the states that inputs through B move."""
+def reached(A: Array, B: Array, within: float = WITHIN) -> Array:
+    """Orthonormal basis (n, r) of the states that inputs through B move; within: share of a norm that is rounding."""
     n = len(A)
     basis = np.zeros((n, 0))
     if n == 0:
         return basis
     size, added = float(np.linalg.norm(A)), B / (float(np.linalg.norm(B)) or 1.0)
-    least = WITHIN
+    least = within
     while basis.shape[1] < n and added.shape[1]:
         for _ in range(2):  # the second time removes what rounding of the first has left
             added = added - basis @ (basis.T @ added)
@@ -64,5 +64,5 @@ def reached(A: Array, B: Array) -> Array:
         fresh = left[:, values > INDEPENDENT]
         fresh = fresh - basis @ (basis.T @ fresh)
         basis = np.hstack([basis, fresh])
-        added, least = A @ fresh, WITHIN * size
+        added, least = A @ fresh, within * size
     return basis

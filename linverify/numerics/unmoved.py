@@ -15,7 +15,7 @@ from numpy.typing import NDArray
 from scipy.sparse.csgraph import connected_components
 
 from ..core.model import Array
-from .minimal import balanced
+from .minimal import balanced, reached
 from .transfer import Transfer
 
 Truth = NDArray[np.bool_]
@@ -106,7 +106,7 @@ def _staircase(A: Array, B: Array, C: Array) -> tuple[list[complex], Array, Arra
     Ab, Bb, Cb = balanced(A, B, C)
     poles: list[complex] = []
     for _ in range(2):  # what is not reached, then (transposed) what is not seen
-        basis = _basis(Ab, Bb)
+        basis = reached(Ab, Bb, WITHIN)
         if basis.shape[1] < len(Ab):
             whole, _ = np.linalg.qr(np.hstack([basis, np.eye(len(Ab))]))
             rest = whole[:, basis.shape[1] :]
@@ -114,18 +114,3 @@ def _staircase(A: Array, B: Array, C: Array) -> tuple[list[complex], Array, Arra
             Ab, Bb, Cb = basis.T @ Ab @ basis, basis.T @ Bb, Cb @ basis
         Ab, Bb, Cb = Ab.T, Cb.T, Bb.T
     return (poles, Ab, Bb, Cb) if poles else (poles, A, B, C)
-
-
-def _basis(A: Array, B: Array) -> Array:
-    """Orthonormal basis (n, r) of the states that B reaches."""
-    n = len(A)
-    basis = np.zeros((n, 0))
-    added, least = B / (float(np.linalg.norm(B)) or 1.0), WITHIN
-    while basis.shape[1] < n and added.shape[1]:
-        for _ in range(2):  # the second time removes what rounding of the first has left
-            added = added - basis @ (basis.T @ added)
-        left, values, _ = np.linalg.svd(added, full_matrices=False)
-        fresh = left[:, values > least]
-        basis, added = np.hstack([basis, fresh]), A @ fresh
-        least = WITHIN * float(np.linalg.norm(A))
-    return basis

@@ -15,6 +15,7 @@ import numpy as np
 from numpy.typing import NDArray
 
 from ..core.model import Array
+from .bilinear import at_nyquist, change
 from .minimal import balanced, minimal
 from .transfer import Transfer
 
@@ -22,7 +23,6 @@ Complex = NDArray[np.complex128]
 ON_AXIS = 64 * 2.0**-52  # of |A| times the condition of a pole: what rounding may move it by
 TOGETHER, ROOTED = 1e-3, 1e-8  # of |pole| and of |A|: most that rounding is taken to move poles that coincide
 SMALLEST = 1e-11  # of the sizes of B and C: a pole with a smaller residue is not in the transfer function
-AT_NYQUIST = 1e-14  # of the size of A: a smaller singular value of A + I is a pole at z = -1
 
 
 @dataclass(frozen=True, slots=True, eq=False)
@@ -98,17 +98,13 @@ def mapped(transfer: Transfer) -> Mapped:
     if transfer.step is None:
         A, B, C = minimal(*balanced(transfer.A, transfer.B, transfer.C))
         return Mapped(A, B, C, transfer.D, transfer.delay)
-    F, B, C = minimal(*balanced(_change(transfer), transfer.B, transfer.C))
+    F, B, C = minimal(*balanced(change(transfer), transfer.B, transfer.C))
     return _bilinear(F, B, C, transfer.D, transfer.step)
-
-
-def _change(transfer: Transfer) -> Array:
-    return transfer.A - np.eye(len(transfer.A)) if transfer.change is None else transfer.change
 
 
 def _bilinear(F: Array, B: Array, C: Array, D: Array, step: float) -> Mapped:
     up = 2.0 * np.eye(len(F)) + F
-    if len(F) and np.linalg.norm(up, -2) <= AT_NYQUIST * max(1.0, float(np.linalg.norm(up))):
+    if at_nyquist(F):
         return Mapped(F, B, C, D, 0.0, step, True)
     inner = np.hstack([F, B])
     if len(F):

@@ -78,15 +78,6 @@ def plain_runs(runs: Runs, units: Mapping[str, str], time_unit: str) -> dict[str
     }
 
 
-def fidelity_of(about: Mapping[str, Any], otherwise: Fidelity) -> Fidelity:
-    """The fidelity that a drive file was saved with; `otherwise` where it names none that can be used."""
-    try:
-        named = about["fidelity"]
-        return Fidelity(int(named["nodes"]), float(named["tolerance"]))
-    except (KeyError, TypeError, ValueError):
-        return otherwise
-
-
 def _figure(figure: Figure) -> dict[str, Any]:
     return {
         "what": figure.what,

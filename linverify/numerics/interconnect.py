@@ -8,7 +8,7 @@ connection are all continuous, or all difference equations of one step.
 
 from __future__ import annotations
 
-from collections.abc import Iterator, Mapping, Sequence
+from collections.abc import Iterator, Sequence
 from dataclasses import dataclass
 
 import numpy as np
@@ -56,14 +56,6 @@ class Wire:
     gain: float = 1.0
 
 
-def gain_block(name: str, matrix: Array, inputs: Sequence[str], outputs: Sequence[str]) -> Block:
-    """A block without states: y = matrix u, matrix (k, m). Raises ValueError where names do not fit; name: for it."""
-    if matrix.shape != (len(outputs), len(inputs)):
-        raise ValueError(f"{name} is {matrix.shape[0]} by {matrix.shape[1]}, not {len(outputs)} by {len(inputs)}")
-    m, k = len(inputs), len(outputs)
-    return Block(np.zeros((0, 0)), np.zeros((0, m)), np.zeros((k, 0)), matrix, (), tuple(inputs), tuple(outputs))
-
-
 def connected(blocks: Sequence[Block], wires: Sequence[Wire]) -> Block:
     """All blocks as one: every input stays an input from outside, every output stays an output.
 
@@ -76,11 +68,6 @@ def connected(blocks: Sequence[Block], wires: Sequence[Wire]) -> Block:
             raise ValueError(f"no block has both ends of the wire from {wire.source} to {wire.target}")
         W[whole.inputs.index(wire.target), whole.outputs.index(wire.source)] += wire.gain
     return _closed(whole, W)
-
-
-def fed_back(block: Block, pairs: Mapping[str, str]) -> Block:
-    """Negative feedback around a block: of each output to the input that `pairs` (output -> input) names."""
-    return connected([block], [Wire(source, target, -1.0) for source, target in pairs.items()])
 
 
 def solved(matrix: Array, right: Array) -> Array:

@@ -55,10 +55,6 @@ class Pair:
             return f"delivered for a sample time of {theirs:.6g}, but the plant steps every {ours:.6g}"
         return ""
 
-    def with_delivered(self, model: LocalModel) -> Pair:
-        """The same pair with other delivered entries of the same shape."""
-        return replace(self, delivered=model)
-
 
 def paired(delivered: DeliveredModel, reference: LocalModel, nominal: Mapping[str, float]) -> Pair:
     """Match by name. Where a discrete model of a continuous plant was delivered, the reference is sampled as it was.

@@ -251,10 +251,3 @@ def _circles(
 
 
 _CASCADE = "an input of the plant, or the set point of another loop, is expected"
-
-
-def bind_loops(
-    ground: Ground, asks: Sequence[LoopAsk], cell: Cell, trim: TrimAsk, parameters: Mapping[str, float], root: Path
-) -> Mapping[str, Loop]:
-    """The loops of one cell by name, for those who bind one cell only; see `LoopBinder`."""
-    return LoopBinder(ground, root).of(asks, cell, trim, parameters).loops

@@ -46,8 +46,7 @@ REQUIRE_WORDS = (
     Row("complementary_peak", Kind.QUANTITY, "largest |T|, or singular value of T", dimension="a ratio or dB"),
     Row("crossover", Kind.RANGE, "where |L| = 1 may be, in rad/s or Hz", dimension="frequency"),
     Row("damping", Kind.BOUNDS, "damping ratio of the poles that the loop moves"),
-    Row("overshoot", Kind.FRACTION, "largest, of a step of the set point, which may be more than 100 %", sign="+",
-        most=10),
+    Row("overshoot", Kind.FRACTION, "largest, of a step of the set point; may pass 100 %", sign="+", most=10),
     Row("settling", Kind.SETTLING, "of a step of the set point", dimension="time"),
     Row("rule", Kind.RULES, "ready-made limits, by name"),
 )

@@ -34,9 +34,9 @@ _HEAD = {
 }
 CROSSINGS = (
     "Each row tells the one change that would bring the loop to -1 at that frequency: more lag or more lead of phase, "
-    "or a factor of gain. The nearest of them are the margins; beyond those the loop is unstable already."
+    "or a factor of gain. The nearest of them are the margins."
 )
-ENDLESS = ": those that were found, for a loop with dead time has infinitely many"
+ENDLESS = " (those that were found; with dead time there are infinitely many)"
 _SIDES = {"input": "at the input", "output": "at the output", "both": "at both"}
 
 

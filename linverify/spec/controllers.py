@@ -72,14 +72,17 @@ class Written:
         found = self.tables.value(gain, self.wiring.known, word, None if unit is None else unit())
         if found is None:
             return math.nan
-        value, _ = found
-        self._tell(gain, word, value, "" if unit is None else unit())
+        value, written = found
+        self._tell(gain, word, value, "" if unit is None else unit(), written.unit)
         return value
 
-    def _tell(self, gain: Schedule, word: str, value: float, unit: str) -> None:
+    def _tell(self, gain: Schedule, word: str, value: float, unit: str, written: str) -> None:
         over = gain.over.text
         at = units.told(self.wiring.known.values[over], self.ground.plant.unit(over))
-        self.told.append(f"{word.rpartition(': ')[2]} = {units.told(value, unit)} at {over} = {at}")
+        told = units.told(value, unit)
+        if written and written != unit and not math.isnan(value):  # as the reader of the table knows it
+            told += f" ({units.told(units.convert(value, unit, written, difference=True), written)})"
+        self.told.append(f"{word.rpartition(': ')[2]} = {told} at {over} = {at}")
 
     def _gain_unit(self, row: int, column: int, above: Sequence[str] = (), below: Sequence[str] = ()) -> str:
         """The unit of what is moved over that of what is measured, times `above` over `below`."""

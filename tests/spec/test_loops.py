@@ -195,7 +195,9 @@ def test_a_scheduled_gain_lies_on_the_line_between_its_rows(tmp_path: Path, spee
     assert told == []
     close(found.loops["a"].controller.D, [[due * DEGREE]])
     assert found.files == (tmp_path / "gains.csv",)
-    assert found.loops["a"].controller.text.endswith(f"; kp = {due * DEGREE:.6g} rad/m at speed = 15 m/s")
+    assert found.loops["a"].controller.text.endswith(
+        f"; kp = {due * DEGREE:.6g} rad/m ({due:.6g} deg/m) at speed = 15 m/s"
+    )
 
 
 @pytest.mark.parametrize(

@@ -190,7 +190,7 @@ class _Names:
         called = f"loops: {ask.name}: moves"
         name, dot, signal = word.text.partition(SET_POINT)
         if not dot:
-            return self._input(word, called)
+            return self._input(ask, word, called)
         other = self._loop(Word(name, word.place), called)
         if other is None:
             return None
@@ -208,14 +208,27 @@ class _Names:
             return None
         return Moved(signal, name) if signal in self.ground.signals else None
 
-    def _input(self, word: Word, called: str) -> Moved | None:
+    def _input(self, ask: LoopAsk, word: Word, called: str) -> Moved | None:
         loops = [each.name for each in self.asks]
         if word.text in loops and word.text not in self.ground.signals:
             wrong = f"`{called}`: {quoted(word.text)} is a loop"
             self.ground.report(word.place, wrong, f"its set point is {word.text}{SET_POINT}NAME")
             return None
+        if word.text not in self.ground.inputs and (points := self._set_points(ask, word.text)):
+            wrong = f"`{called}`: {quoted(word.text)} is no input of the plant"
+            self.ground.report(word.place, wrong, f"an input is expected, or the set point {' or '.join(points)}")
+            return None
         known = self.ground.known(word.text, word.place, self.ground.inputs, "an input")
         return Moved(word.text) if known else None
+
+    def _set_points(self, ask: LoopAsk, text: str) -> list[str]:
+        """Set points of other loops that were probably meant by a signal that they measure, or by `LOOP.set_point`."""
+        others = [(each.name, word.text) for each in self.asks if each.name != ask.name for word in each.measures]
+        return [
+            f"{name}{SET_POINT}{signal}"
+            for name, signal in others
+            if text in (signal, f"{name}{SET_POINT}".removesuffix("."))
+        ]
 
     def _loop(self, word: Word, called: str) -> LoopAsk | None:
         found = next((ask for ask in self.asks if ask.name == word.text), None)

@@ -21,6 +21,7 @@ from .source import Block, Broken, Listing, Node, Scalar
 from .words import SPEC_WORDS, Row, row_of
 
 T = TypeVar("T")
+_TOP = "at the top of the spec"
 _MOST_LISTED = 10
 _NAME = re.compile(r"[A-Za-z0-9_\-+.]+")
 
@@ -142,7 +143,7 @@ class Reader:
             self.tell(key.place, f"unknown word {quoted(key.text)}", "a space belongs after ':'")
         elif homes:
             here = f"in `{called}`" if called else "here"
-            self.tell(key.place, f"{quoted(key.text)} has no place {here}", f"it belongs under {homes}")
+            self.tell(key.place, f"{quoted(key.text)} has no place {here}", f"it belongs {homes}")
         elif hint and len(known) > _MOST_LISTED:
             self.tell(key.place, f"unknown word {quoted(key.text)}", hint=hint)
         else:
@@ -178,8 +179,9 @@ def _homes(word: str) -> str:
             if row.available:
                 walk(row.of, home if row.word == "*" else f"`{row.word}`")
 
-    walk(SPEC_WORDS, "no other word")
-    return " or ".join(found)
+    walk(SPEC_WORDS, _TOP)
+    top = _TOP if found.pop(_TOP, _TOP) is None else ""
+    return " or ".join(each for each in (top, f"under {' or '.join(found)}" if found else "") if each)
 
 
 def wanted(row: Row) -> str:

@@ -110,6 +110,8 @@ SIMPLE: dict[str, str] = {
     "with_unknown": two("moves: [aft_flap], with: [iner]"),
     "with_itself": one(more="with: [a]"),
     "with_circle": two("moves: [aft_flap], with: [inner]", "with: [outer]"),
+    "moves_measured_inside": two("moves: [ride_height], with: [inner]"),
+    "set_point_of_what": two("moves: [inner.set_point], with: [inner]"),
     "set_point_not_with": two("moves: [inner.set_point.ride_height]"),
     "set_point_unknown_loop": two("moves: [iner.set_point.ride_height], with: [inner]"),
     "set_point_signal": two("moves: [inner.set_point.pitch], with: [inner]"),

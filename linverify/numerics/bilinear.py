@@ -16,7 +16,7 @@ from scipy.linalg import expm, matrix_balance
 from ..core.model import Array
 from .transfer import Transfer
 
-AT_NYQUIST = 1e-13  # change of the entries of A + I, of themselves, that may make it singular: a pole at z = -1
+AT_NYQUIST = 1e-13  # change of the entries of 2 I and F, of themselves, that may bring a pole of A = I + F to z = -1
 
 
 def change(loop: Transfer) -> Array:
@@ -48,7 +48,8 @@ def at_nyquist(F: Array) -> bool:
         return False
     up = 2.0 * np.eye(len(F)) + F
     try:
-        grown = np.abs(np.linalg.inv(up)) @ np.abs(up)
+        # not |2 I + F|: where the two cancel, that is rounding, and no measure of it
+        grown = np.abs(np.linalg.inv(up)) @ (2.0 * np.eye(len(F)) + np.abs(F))
     except np.linalg.LinAlgError:
         return True
     # the least condition number that any scaling of rows and columns gives (Bauer 1963): units of states say nothing,

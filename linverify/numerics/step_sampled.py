@@ -36,7 +36,7 @@ def sampled_response(A: Array, c: Array, start: Array, within: float, step: floa
     bounds = np.array([within * (1.0 + SLACK), within, within * (1.0 - SLACK)])
     last = np.full(3, -1, dtype=np.int64)
     highest, when, k, x = -math.inf, 0, 0, start
-    bound, onward, seen = _bound(A, c), _power(A), _seen(A, c)
+    bound, onward, seen = _Bound(A, c), _power(A), _seen(A, c)
     while k < MOST:
         values = seen @ x
         if values.max() > highest:
@@ -61,8 +61,8 @@ def sampled_response(A: Array, c: Array, start: Array, within: float, step: floa
     )
 
 
-class _bound:  # noqa: N801 - reads as a function
-    """Largest |c A^k x| that can come, by a quadratic form that never grows."""
+class _Bound:
+    """Largest |c A^k x| that can come, by a quadratic form that never grows; infinite where rounding spoils it."""
 
     def __init__(self, A: Array, c: Array) -> None:
         n = len(A)
@@ -70,7 +70,8 @@ class _bound:  # noqa: N801 - reads as a function
         self._gain = float(c @ np.linalg.solve(self._P, c)) if n else 0.0
 
     def __call__(self, x: Array) -> float:
-        return math.sqrt(max(0.0, self._gain * float(x @ self._P @ x)))
+        square = self._gain * float(x @ self._P @ x)
+        return math.sqrt(square) if square >= 0.0 else math.inf
 
 
 def _power(A: Array) -> Array:

@@ -1,19 +1,28 @@
-"""A dead time as a chain of states: the all-pass approximation of exp(-s delay) of high order (Pade).
+"""A dead time as states: the all-pass approximation of exp(-s delay) of high order (Pade), alone or several in a row.
 
 The usual companion form loses digits with the order. Here the same transfer function is a lossless ladder: with
 z = s delay / 2, exp(-2 z) = (1 - tanh z) / (1 + tanh z), and the continued fraction tanh z = z / (1 + z^2 / (3 +
 z^2 / (5 + ...))) cut after N terms is a ladder of coils and capacitors whose equations are well scaled for every N.
+
+All of them have modulus one, as the dead time has. In time one of order 6 stands for the whole dead time; where margins
+are taken on it, sections of order 8 in a row do, each for a share whose phase it has to 3e-8 up to 4.5 rad.
 """
 
 from __future__ import annotations
 
+import math
 from functools import cache
 
 import numpy as np
+from numpy.typing import NDArray
 
 from ..core.model import Array, frozen_array
+from .transfer import Transfer
 
+Complex = NDArray[np.complex128]
 ORDER = 6
+SECTION = 8  # order of one of several in a row; even, so that its feedthrough is one
+PER_SECTION = 4.5  # rad of lag that one section stands for
 GOOD = 0.01  # of the response, up to the frequency that a report states
 
 
@@ -48,11 +57,44 @@ def all_pass(delay: float, order: int = ORDER) -> tuple[Array, Array, Array, flo
 
 def good_up_to(delay: float, order: int = ORDER) -> float:
     """The angular frequency up to which the chain is within 1 % of the dead time it stands for."""
-    A, b, c, d = all_pass(1.0, order)
     last = 0.0
     for w in np.arange(0.25, 4.0 * order, 0.25):
-        response = c @ np.linalg.solve(1j * w * np.eye(order) - A, b) + d
-        if abs(response - np.exp(-1j * w)) > GOOD:
+        if abs(complex(_response(order, np.array([1j * w]))[0]) - np.exp(-1j * w)) > GOOD:
             break
         last = float(w)
     return last / delay
+
+
+def sections(delay: float, omega: float) -> int:
+    """How many sections in a row stand for `delay` up to a frequency."""
+    return max(1, math.ceil(delay * omega / PER_SECTION))
+
+
+def share_off(delay: float, number: int, omega: float) -> float:
+    """Largest |sections / exp(-s delay) - 1| between frequency zero and `omega`."""
+    s = np.asarray(1j * np.linspace(0.0, omega, 65) * delay / number, dtype=np.complex128)
+    return float(np.abs((_response(SECTION, s) * np.exp(s)) ** number - 1.0).max())
+
+
+def delayed_by(loop: Transfer, number: int) -> Transfer:
+    """`loop` with `number` sections in a row in each input instead of its dead time."""
+    A, b, c = _row(loop.delay, number)
+    n, eye = len(loop.A), np.eye(loop.D.shape[1])
+    inside, moved, seen = np.kron(eye, A), np.kron(eye, b[:, np.newaxis]), np.kron(eye, c[np.newaxis, :])
+    whole = np.block([[loop.A, loop.B @ seen], [np.zeros((len(inside), n)), inside]])
+    return Transfer(whole, np.vstack([loop.B, moved]), np.hstack([loop.C, loop.D @ seen]), loop.D)
+
+
+def _row(delay: float, number: int) -> tuple[Array, Array, Array]:
+    """A, b, c of sections in a row, whose feedthrough is one: each is given what goes in and what all before add."""
+    A, b, c, _ = all_pass(delay / number, SECTION)
+    before = np.tril(np.ones((number, number)), -1)
+    row = np.kron(np.eye(number), A) + np.kron(before, np.outer(b, c))
+    return np.asarray(row), np.tile(b, number), np.tile(c, number)
+
+
+def _response(order: int, s: Complex) -> Complex:
+    """Of the all-pass for a dead time of one, at s (F,)."""
+    A, b, c, d = all_pass(1.0, order)
+    inside = np.linalg.solve(s[:, np.newaxis, np.newaxis] * np.eye(order) - A, b[:, np.newaxis])
+    return np.asarray(inside[:, :, 0] @ c + d, dtype=np.complex128)

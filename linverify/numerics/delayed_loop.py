@@ -17,7 +17,7 @@ import numpy as np
 
 from ..core.model import Array
 from ..core.outcome import Outcome
-from .all_pass import delayed_by, sections, share_off
+from .allpass import delayed_by, sections, share_off
 from .mapped import Complex, Mapped, mapped
 from .peak_gain import Peak, crossings, gains, peak
 from .sensitivities import Sensitivities, sensitivities

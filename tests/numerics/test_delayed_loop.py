@@ -11,7 +11,7 @@ from channels import highest, respond, sigma, transfer
 from test_multiloop import gain, rotating
 
 from linverify.core.outcome import Outcome
-from linverify.numerics.all_pass import delayed_by, sections, share_off
+from linverify.numerics.allpass import delayed_by, sections, share_off
 from linverify.numerics.multiloop import both_sides, multiloop
 from linverify.numerics.transfer import Transfer
 

@@ -135,7 +135,8 @@ def _overdamped(
     for mode in growing:
         one = figure(what, label(mode), TRAITS["damping"](mode.pole), limit, shown, sure=mode in sure)
         _tell(found, mode, one, limit, mode in sure, into)
-    if not real or growing:
+    real = [mode for mode in real if mode not in growing]  # a growing pole is no half of such a factor
+    if not real:
         return
     if len(real) != 2 or any(mode in maybe for mode in real):
         names = ", ".join(label(mode) for mode in real)

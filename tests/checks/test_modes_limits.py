@@ -51,6 +51,18 @@ def test_time_to_double_of_a_growing_mode() -> None:
     assert "time to double" in bad.reason
 
 
+def test_a_growing_pole_hides_no_slow_pair() -> None:
+    """Poles -1 and -10 are a factor with damping 11 / (2 sqrt(10)) = 1.739, whatever grows beside them."""
+    slow = np.diag([-1.0, -10.0, 0.1]).tolist()
+    assert verdict(slow, line(most("damping", 1.75))).status is Status.PASS
+    bad = verdict(slow, line(most("damping", 1.73)))
+    assert bad.status is Status.FAIL
+    assert "damping ratio of pole -1 and pole -10 together is 1.739" in bad.reason
+    alone = verdict(np.diag([-1.0, 0.1]).tolist(), line(most("damping", 1.2)))
+    assert alone.status is Status.UNDECIDED
+    assert "choose just two of them" in alone.reason
+
+
 def test_a_range_is_judged_at_both_ends_and_shared_from_its_middle() -> None:
     inside = verdict(OSCILLATOR, line(Limit("damping", 0.05, 0.25, PLACE)))
     assert inside.status is Status.PASS

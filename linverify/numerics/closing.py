@@ -139,7 +139,8 @@ def _check(setup: Setup, loop: Loop, inside: Sequence[Loop]) -> None:
     for one in (loop, *inside):
         _check_signals(setup, one)
     if loop.sample is None and (sampled := [one.name for one in inside if one.sample is not None]):
-        raise RefusedError(f"a continuous loop around the sampled loop {sampled[0]} has no transfer function")
+        wrong = f"a continuous loop around the sampled loop {sampled[0]} has no transfer function"
+        raise RefusedError(f"{wrong}: give it a `sample` that fits, or leave {sampled[0]} out of its `with`")
     if setup.model.step is not None:
         _check_steps(setup, (loop, *inside), setup.model.step)
     for one in inside:

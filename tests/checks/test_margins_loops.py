@@ -175,6 +175,7 @@ def test_rates_without_a_whole_relation_are_undecided() -> None:
     verdict = judged(DOUBLE, continuous, loop(gain(1.0, 0.1), name="inner", measures=("y2",)))
     assert verdict.status is Status.UNDECIDED
     assert "continuous loop around the sampled loop inner" in verdict.reason
+    assert "give it a `sample` that fits, or leave inner out of its `with`" in verdict.reason
 
 
 def test_a_difference_equation_is_closed_at_its_own_steps_and_at_multiples() -> None:

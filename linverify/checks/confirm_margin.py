@@ -142,7 +142,7 @@ def _try(study: Study, loop: Loop, change: _Change, found: _Found) -> None:
     closed = _closed(study, loop, change.loop)
     subject = f"with {change.what}" + (f" of {change.signal}" if change.signal else "")
     if closed.reasons:
-        found.notes.append(f"not tried {subject}: {closed.reasons[0]}")
+        found.reasons.append((Status.UNDECIDED, f"not tried {subject}: {closed.reasons[0]}"))
         return
     model = closed.derived() if loop.name in closed.closing.given else closed.model()
     mode = _mode(model, change)

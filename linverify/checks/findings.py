@@ -1,20 +1,21 @@
-"""What the comparisons of one delivered model add up to."""
+"""What the parts of one check add up to."""
 
 from __future__ import annotations
 
 from dataclasses import dataclass, field
 from typing import Any
 
-from ..core.verdict import Figure, Status, merged
+from ..core.verdict import Evidence, Figure, Status, merged
 
 
 @dataclass(slots=True)
 class Findings:
-    """Parts of a verdict. Mutable: each comparison adds its own."""
+    """Parts of a verdict. Mutable: each part adds its own; without a figure or a reason it is a pass."""
 
     figures: list[Figure] = field(default_factory=list)
     reasons: list[tuple[Status, str]] = field(default_factory=list)
     notes: list[str] = field(default_factory=list)
+    evidence: list[Evidence] = field(default_factory=list)
     details: dict[str, Any] = field(default_factory=dict)
 
     @property

@@ -9,18 +9,17 @@ written in `margin_details`. With `confirm` the margins are tried on the plant i
 from __future__ import annotations
 
 from collections.abc import Sequence
-from dataclasses import dataclass, field
-from typing import Any
 
 from ..core.case import CheckAsk
 from ..core.loop import Loop
-from ..core.verdict import Evidence, Figure, Status, Verdict, merged
+from ..core.verdict import Status, Verdict
 from ..numerics.closing import RefusedError, Setup
 from ..numerics.loop_margins import LoopMargins
 from ..numerics.poles import AT_ZERO
 from ..numerics.unmoved import Unmoved
 from . import margin_details, margin_words
 from .closed import nested
+from .findings import Findings
 from .margin_delays import with_delays
 from .margin_figures import figures
 from .margin_poles import counted
@@ -34,33 +33,15 @@ HARDLY = 0.4  # the same in a model whose entries are off by their errors
 DOMINATES = 0.5  # share of the states that `leaves` names in a mode from which on it is theirs
 
 
-@dataclass(slots=True)
-class _Found:
-    """What one loop came to. Mutable: each part adds its own."""
-
-    figures: list[Figure] = field(default_factory=list)
-    reasons: list[tuple[Status, str]] = field(default_factory=list)
-    notes: list[str] = field(default_factory=list)
-    evidence: list[Evidence] = field(default_factory=list)
-    details: dict[str, Any] = field(default_factory=dict)
-
-    @property
-    def status(self) -> Status:
-        """The worst of all; a loop without a single limit is judged on its stability."""
-        return merged([Status.PASS, *(figure.status for figure in self.figures), *(each for each, _ in self.reasons)])
-
-
 def check(study: Study, ask: CheckAsk) -> Verdict:
     """The verdict on one loop at one operating point."""
-    case, loop, found = study.case, study.case.loops[ask.loop], _Found()
+    case, loop, found = study.case, study.case.loops[ask.loop], Findings()
     try:
         _judge(study, loop, found)
     except RefusedError as refusal:
         found.reasons.append((Status.UNDECIDED, str(refusal)))
-    status = found.status
-    told = [text for its, text in found.reasons if its is status and status is not Status.PASS]
     return Verdict(
-        case.spec, case.point, ask.name, status, ask.place, "; ".join(told),
+        case.spec, case.point, ask.name, found.status, ask.place, found.reason,
         tuple(found.figures), tuple(found.notes), evidence=tuple(found.evidence), details=found.details,
     )  # fmt: skip
 
@@ -84,7 +65,7 @@ def setup(study: Study, name: str) -> Setup:
     return Setup(study.derived(), case.loops, case.actuators, case.delays, tick=case.plant.step)
 
 
-def _judge(study: Study, loop: Loop, found: _Found) -> None:
+def _judge(study: Study, loop: Loop, found: Findings) -> None:
     case, at_input = study.case, loop.break_at == "plant_input"
     around = setup(study, loop.name)
     broken, one = whole(around, loop.name, at_input)
@@ -122,7 +103,7 @@ def _judge(study: Study, loop: Loop, found: _Found) -> None:
     found.reasons, found.notes = found.reasons + reasons, found.notes + notes + margin_words.notes(loop, one)
 
 
-def _confirm(study: Study, loop: Loop, one: LoopMargins, found: _Found) -> None:
+def _confirm(study: Study, loop: Loop, one: LoopMargins, found: Findings) -> None:
     from .confirm_margin import confirm  # it brings the simulation along
 
     tried = confirm(study, loop, one)
@@ -139,7 +120,7 @@ def _covered(loop: Loop, one: LoopMargins, least: float = DOMINATES) -> list[boo
     return [round(share, 9) >= least for share in shares]
 
 
-def _unmoved(one: LoopMargins, excused: Sequence[bool], found: _Found) -> None:
+def _unmoved(one: LoopMargins, excused: Sequence[bool], found: Findings) -> None:
     """Judge the poles that the loop does not move."""
     if loose := _loose(one, excused):
         found.reasons.append((Status.FAIL, margin_words.unmoved(loose, one.loop.step, _fastest(one))))

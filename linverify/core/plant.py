@@ -31,8 +31,8 @@ class Plant:
     units per `time_unit` (or the next states); measurement(t, x, u, p) the outputs; left out, the outputs are the
     states that `outputs` names, or all of them. parameters: name -> (value, unit), or a bare number without unit.
     nominal: typical size of a deviation, for scaling. domain: where the functions are defined (None: open side).
-    jacobian(t, x, u, p) -> A, B, C, D: optional, always cross-checked numerically. step: seconds between the instants
-    of a difference equation.
+    jacobian(t, x, u, p) -> A, B, C, D: optional, always cross-checked numerically. step: time units between the
+    instants of a difference equation.
 
     Raises DefinitionError when these do not fit together.
     """

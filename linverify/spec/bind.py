@@ -248,7 +248,7 @@ class _Binder:
             return time
         count = whole_ratio(abs(time), step)
         if count is None:
-            wrong = f"{self.spec.time.text!r} is no whole number of the plant's steps of {step:g} s"
+            wrong = f"{self.spec.time.text!r} is no whole number of the plant's steps of {self.ground.told_time(step)}"
             self.ground.report(self.spec.time.place, wrong, "a multiple of the plant's step is expected")
             return 0.0
         return math.copysign(count, time)

@@ -121,7 +121,7 @@ class LoopBinder:
     def _whole(self, text: str, place: Place, word: str, time: float, step: float) -> float:
         count = whole_ratio(time, step)
         if count is None:
-            wrong = f"`{word}`: {text!r} is no whole number of the plant's steps of {step:g} s"
+            wrong = f"`{word}`: {text!r} is no whole number of the plant's steps of {self.ground.told_time(step)}"
             self.ground.report(place, wrong, "a multiple of the plant's step is expected")
             return math.nan
         return count * step

@@ -238,13 +238,14 @@ class _Binding:
             return None
         if value == 0.0:
             if own is not None:
-                wrong = f"the model is continuous, the plant a difference equation with steps of {own:g} s"
-                self.ground.report(place, wrong, f"`dt` of {own:g} s is expected")
+                due = self.ground.told_time(own)
+                wrong = f"the model is continuous, the plant a difference equation with steps of {due}"
+                self.ground.report(place, wrong, f"`dt` of {due} is expected")
             return None
         step = value if a_time == 1.0 else value * a_time
         if own is not None and abs(step - own) > WHOLE * own:
             wrong = f"`dt`: a sample time of {units.told(step, self.ground.plant.time_unit)}"
-            self.ground.report(place, wrong, f"the plant's step of {own:g} s is expected")
+            self.ground.report(place, wrong, f"the plant's step of {self.ground.told_time(own)} is expected")
         return own if own is not None else step
 
     def _course(self) -> Course:

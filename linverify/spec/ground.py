@@ -131,6 +131,10 @@ class Ground:
         """A time in the plant's time unit."""
         return self.amount(quantity, self.plant.time_unit, word, difference=True)
 
+    def told_time(self, time: float) -> str:
+        """A time in the plant's time unit, as messages show it."""
+        return units.told(time, self.plant.time_unit)
+
     def frequency(self, quantity: Quantity, word: str) -> float:
         """An angular frequency per time unit of the plant; Hz counts turns of 2 pi."""
         time_unit = self.plant.time_unit

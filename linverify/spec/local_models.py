@@ -254,7 +254,8 @@ def _response(ground: Ground, words: ResponseWords) -> ResponseAsk | None:
     step = ground.plant.step
     if step is not None and high * step > math.pi * (1.0 + 1e-9):
         wrong = f"`{called}`: {words.high.text} is beyond half the sampling frequency of the plant"
-        ground.report(words.high.place, wrong, f"at most {units.told(math.pi / step, 'rad/s')} is expected")
+        half = units.told(math.pi / step, f"rad/{ground.plant.time_unit}")
+        ground.report(words.high.place, wrong, f"at most {half} is expected")
     return ResponseAsk(words.within, low, high, words.floor, words.place)
 
 
@@ -276,7 +277,7 @@ def _delay(ground: Ground, quantity: Quantity, word: str) -> float:
         return delay
     count = whole_ratio(delay, step)
     if count is None:
-        wrong = f"`{word}`: {quantity.text!r} is no whole number of the plant's steps of {step:g} s"
+        wrong = f"`{word}`: {quantity.text!r} is no whole number of the plant's steps of {ground.told_time(step)}"
         ground.report(quantity.place, wrong, "a multiple of the plant's step is expected")
         return math.nan
     return count * step

@@ -133,7 +133,7 @@ def _clock(ground: Ground, ask: DriveAsk, word: str) -> tuple[float, int]:
         ground.report(ask.horizon.place, wrong, f"at most {MOST_INTERVALS} intervals are expected")
     step = ground.plant.step
     if step is not None and whole_ratio(every, step) is None:
-        wrong = f"{ask.every.text!r} is no whole number of the plant's steps of {step:g} s"
+        wrong = f"{ask.every.text!r} is no whole number of the plant's steps of {ground.told_time(step)}"
         ground.report(ask.every.place, wrong, "a multiple of the plant's step is expected")
     return every, intervals or 1
 

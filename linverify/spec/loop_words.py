@@ -2,6 +2,8 @@
 
 from __future__ import annotations
 
+from dataclasses import replace
+
 from .grammar import Kind, Row, each
 
 SCHEDULE_WORDS = (
@@ -69,3 +71,8 @@ LOOP_WORDS = (
 )  # fmt: skip
 
 LOOPS = Row("loops", Kind.NAMED, "controllers closed around each local model", each(Kind.BLOCK, LOOP_WORDS))
+LOOPS_OF_POINT = replace(  # what it leaves out is that of the spec, so nothing is required here
+    LOOPS,
+    meaning="what this point overrides of the loops",
+    of=each(Kind.BLOCK, tuple(replace(row, required=False) for row in LOOP_WORDS)),
+)

@@ -7,7 +7,6 @@ is not built yet stands here too (`available` is false), so that it is refused b
 from __future__ import annotations
 
 from collections.abc import Iterator
-from dataclasses import replace
 
 from .grammar import FORMAT as FORMAT
 from .grammar import SIGNAL as SIGNAL
@@ -16,7 +15,7 @@ from .grammar import Row as Row
 from .grammar import default_of as default_of
 from .grammar import each, later
 from .grammar import row_of as row_of
-from .loop_words import LOOPS
+from .loop_words import LOOPS, LOOPS_OF_POINT
 from .mode_words import ACTUATOR_WORDS, MODE_WORDS
 
 DERIVE = "derive"  # behind `local_models: source`, for models that nobody delivered
@@ -76,7 +75,7 @@ SHARED_POINT_WORDS = (
     Row("drives", Kind.DRIVES, "what this point overrides of the drives", DRIVE_WORDS),
     Row("error_bands", Kind.BANDS, "what this point overrides of the error bands", BAND_WORDS),
     Row("modes", Kind.MODES, "limits on poles instead of those of the spec", MODE_WORDS),
-    replace(LOOPS, meaning="what this point overrides of the loops"),
+    LOOPS_OF_POINT,
 )  # fmt: skip
 
 AXIS_WORDS = (

@@ -102,6 +102,8 @@ def plain(node: Node) -> Any:
         return node.text
     if node.text in ("", "~"):
         return None
+    if node.text in ("true", "false"):
+        return node.text == "true"
     value = float(node.text)
     return int(value) if value == int(value) else value
 

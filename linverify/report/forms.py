@@ -8,6 +8,7 @@ from typing import Any
 from . import quantity
 from .tables import bullets, escaped, grid
 
+Rows = Sequence[Mapping[str, Any]]
 CELL_WIDTH = 40
 CELL_NUMBERS = 8
 _WORDED = {  # words of the record that read better in full
@@ -121,6 +122,15 @@ def complex_told(real: float | None, imaginary: float | None) -> str:
     if not imaginary:
         return first
     return f"{first} {'-' if imaginary < 0 else '+'} {quantity.number(abs(imaginary))}j"
+
+
+def rows_of(rest: dict[str, Any], word: str) -> Rows:
+    """The rows under a word, taken out of `rest`; empty where there are none of this form."""
+    found = rest.get(word)
+    if not isinstance(found, list) or not all(isinstance(row, Mapping) for row in found):
+        return ()
+    rest.pop(word)
+    return found
 
 
 def is_number(value: Any) -> bool:

@@ -6,15 +6,14 @@ The words of `details["margins"]` are those that the check documents; what is mi
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from typing import Any
 
 from ..core.shown import decibels
 from . import modal, quantity, text
-from .forms import cell, complex_told, is_number, is_quantity, plain_blocks
+from .forms import Rows, cell, complex_told, is_number, is_quantity, plain_blocks, rows_of
 from .tables import escaped, grid
 
-Rows = Sequence[Mapping[str, Any]]
 SIGN = (
     "A controller takes set point minus measurement; the loop is broken at one place and margins hold there. Gain and "
     "phase margins change one thing in one channel while the others stay closed; a disk margin allows for gain and "
@@ -46,12 +45,12 @@ def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
     if not isinstance(found, Mapping):
         return []
     rest.pop("margins")
-    tried = _rows(rest, "confirmed")
+    tried = rows_of(rest, "confirmed")
     left, unit = dict(found), str(found.get("frequency_unit", ""))
     left.pop("frequency_unit", None)
     endless = "sample" not in left and any(left.get(word) for word in ("delay", "late", "old"))
     made = [_loop(left)]
-    if channels := _rows(left, "channels"):
+    if channels := rows_of(left, "channels"):
         made += [
             "Margins, one channel at a time:",
             _channels(channels, unit, _asked(found)),
@@ -61,28 +60,19 @@ def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
         made += ["Disk margins and what they guarantee:", _disks(channels, left.get("all_channels"), unit)]
         made += _crossings(channels, unit)
     made += _all_channels(left.pop("all_channels", None), unit)
-    if steps := _rows(left, "steps"):
+    if steps := rows_of(left, "steps"):
         made += ["Step of the set point:", _steps(steps)]
-    if poles := _rows(left, "closed_loop_poles"):
+    if poles := rows_of(left, "closed_loop_poles"):
         upper = [row for row in poles if not _float(row.get("imag")) < 0.0]  # a pair stands in one row
         upper = sorted(upper, key=lambda row: _float(row.get("natural_frequency")))
         told = f"Closed-loop poles, per {time_unit or 'time unit'}{ENDLESS if endless else ''}:"
         made += [told, modal.table(upper, time_unit)]
-    if poles := _rows(left, "unmoved_poles"):
+    if poles := rows_of(left, "unmoved_poles"):
         made += [f"Poles that this loop does not move, per {time_unit or 'time unit'}:", _unmoved(poles)]
     if tried:
         made += ["Margins tried on the nonlinear plant, after a small kick:", _tried(tried)]
-    made += _limits(_rows(left, "limits"))
+    made += _limits(rows_of(left, "limits"))
     return made + plain_blocks(left)
-
-
-def _rows(rest: dict[str, Any], word: str) -> Rows:
-    """The rows under a word, taken out of `rest`; empty where there are none of this form."""
-    found = rest.get(word)
-    if not isinstance(found, list) or not all(isinstance(row, Mapping) for row in found):
-        return ()
-    rest.pop(word)
-    return found
 
 
 def _loop(left: dict[str, Any]) -> str:

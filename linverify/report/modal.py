@@ -3,14 +3,13 @@
 from __future__ import annotations
 
 import math
-from collections.abc import Mapping, Sequence
+from collections.abc import Mapping
 from typing import Any
 
 from . import quantity
-from .forms import cell, complex_told, is_number
+from .forms import Rows, cell, complex_told, is_number, rows_of
 from .tables import escaped, grid
 
-Rows = Sequence[Mapping[str, Any]]
 LEAST_SHARE = 0.01  # of participation: smaller ones are left out of the table
 _TIMES = ("time_constant", "time_to_half", "time_to_double", "period")
 _ORIGIN = {"yes": "at the origin", "maybe": "at the origin, as far as is known"}
@@ -24,28 +23,19 @@ PARTICIPATION = (
 def blocks(rest: dict[str, Any], time_unit: str) -> list[str]:
     """Blocks of what `modes` tells; its words are taken out of `rest`."""
     made: list[str] = []
-    if rows := _rows(rest, "modes"):
+    if rows := rows_of(rest, "modes"):
         made += [f"Modes of the local model, per {time_unit or 'time unit'}:", table(rows, time_unit)]
         if any(isinstance(row.get("participation"), Mapping) for row in rows):
             made += ["Participation of states in modes:", participation(rows), escaped(PARTICIPATION)]
-    if rows := _rows(rest, "mode_lines"):
+    if rows := rows_of(rest, "mode_lines"):
         made += ["Modes that each line is about:", _lines(rows)]
-    if rows := _rows(rest, "zeros"):
+    if rows := rows_of(rest, "zeros"):
         made += [f"Transmission zeros, per {time_unit or 'time unit'}:", _zeros(rows)]
-    if rows := _rows(rest, "gains_at_rest"):
+    if rows := rows_of(rest, "gains_at_rest"):
         made += ["Static gains:", _gains(rows)]
-    if rows := _rows(rest, "rules"):
+    if rows := rows_of(rest, "rules"):
         made += ["Ready-made limits, where they come from and what to beware of:", rules(rows)]
     return made
-
-
-def _rows(rest: dict[str, Any], word: str) -> Rows:
-    """The rows under a word, taken out of `rest`; empty where there are none of this form."""
-    found = rest.get(word)
-    if not isinstance(found, list) or not all(isinstance(row, Mapping) for row in found):
-        return ()
-    rest.pop(word)
-    return found
 
 
 def table(rows: Rows, time_unit: str) -> str:

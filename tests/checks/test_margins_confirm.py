@@ -8,6 +8,7 @@ from typing import Any
 import pytest
 from looping import case, companion, least, linear_plant, loop, pid
 
+from linverify.checks.closed import ClosedStudy
 from linverify.checks.judge import judge
 from linverify.core.case import CheckAsk, Interval, Options
 from linverify.core.loop import Loop
@@ -47,6 +48,14 @@ def test_a_linear_plant_agrees_with_its_margins() -> None:
 def test_a_small_motion_of_a_plant_that_bends_agrees_too() -> None:
     verdict = judged(bent(-0.01), loop(pid(1.0), least("gain_margin", 2.0), confirm=True))
     assert verdict.status is Status.PASS, verdict.reason
+
+
+def test_what_cannot_be_tried_is_undecided(monkeypatch: pytest.MonkeyPatch) -> None:
+    monkeypatch.setattr(ClosedStudy, "reasons", ("the clocks do not fit",))
+    verdict = judged(THIRD, loop(pid(1.0), least("gain_margin", 2.0), confirm=True))
+    assert verdict.status is Status.UNDECIDED
+    assert "not tried with gain times" in verdict.reason
+    assert "the clocks do not fit" in verdict.reason
 
 
 def test_nothing_is_tried_of_a_loop_that_is_unstable() -> None:

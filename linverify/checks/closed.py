@@ -199,12 +199,7 @@ class ClosedStudy(Study):
         return found
 
     def _ranges(self) -> list[str]:
-        point = self.bare.point()
-        return [
-            f"the trimmed value of {name} lies outside the range of its actuator"
-            for name, actuator in self._actuators.items()
-            if not actuator.low <= point.value(name) <= actuator.high
-        ]
+        return out_of_reach(self.bare.case, self.bare.point(), self._actuators)
 
     @cached_property
     def _actuators(self) -> dict[str, Actuator]:
@@ -311,6 +306,19 @@ class ClosedStudy(Study):
         rests = np.tile(point.x[len(bare.x) :, np.newaxis], (1, x.shape[1]))
         references = np.tile(point.u[len(bare.u) :, np.newaxis], (1, x.shape[1]))
         return np.concatenate([x, rests]), np.concatenate([u, references])
+
+
+def out_of_reach(case: Case, point: OperatingPoint, names: Iterable[str]) -> list[str]:
+    """What to tell of the named inputs whose actuator cannot bring them to their trimmed value."""
+    found = []
+    for name in names:
+        actuator = case.actuators.get(name, Actuator())
+        if not actuator.low <= point.value(name) <= actuator.high:
+            unit = case.plant.unit(name)
+            low, high, at = (told(value, unit) for value in (actuator.low, actuator.high, point.value(name)))
+            wrong = f"the trimmed value of {name}, {at}, lies outside the range of its actuator"
+            found.append(f"{wrong}, {low} to {high}")
+    return found
 
 
 def largest_delay(case: Case, loop: Loop) -> float:

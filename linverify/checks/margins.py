@@ -18,7 +18,7 @@ from ..numerics.loop_margins import LoopMargins
 from ..numerics.poles import AT_ZERO
 from ..numerics.unmoved import Unmoved
 from . import margin_details, margin_words
-from .closed import nested
+from .closed import nested, out_of_reach
 from .findings import Findings
 from .margin_delays import with_delays
 from .margin_figures import figures
@@ -68,6 +68,8 @@ def setup(study: Study, name: str) -> Setup:
 def _judge(study: Study, loop: Loop, found: Findings) -> None:
     case, at_input = study.case, loop.break_at == "plant_input"
     around = setup(study, loop.name)
+    moves = [moved.name for one in nested(case, (loop.name,)) for moved in one.moves if not moved.loop]
+    found.reasons += [(Status.UNDECIDED, words) for words in out_of_reach(case, study.point(), dict.fromkeys(moves))]
     broken, one = whole(around, loop.name, at_input)
     one, told = with_delays(around, loop, one, case.plant.time_unit)
     found.notes += told

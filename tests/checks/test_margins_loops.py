@@ -33,6 +33,17 @@ def test_an_actuator_lag_is_inside_the_loop() -> None:
     assert figure(verdict, PHASE).at_frequency == pytest.approx(at, rel=1e-6)
 
 
+def test_a_trim_that_the_actuator_cannot_reach_is_undecided() -> None:
+    """Against its stop an actuator answers nothing, whatever the margins of the local model are."""
+    wide, high = Actuator(low=-1.0, high=1.0), Actuator(low=0.5, high=1.0)
+    assert judged(INTEGRATOR, loop(pid(2.0), *ALL), actuators={"u1": wide}).status is Status.PASS
+    verdict = judged(INTEGRATOR, loop(pid(2.0), *ALL), actuators={"u1": high})
+    assert verdict.status is Status.UNDECIDED
+    assert "the trimmed value of u1, 0 N, lies outside the range of its actuator, 0.5 N to 1 N" in verdict.reason
+    inside = judged(DOUBLE, *cascade(1.0, 3.0), actuators={"u1": high})
+    assert inside.status is Status.UNDECIDED
+
+
 def test_dead_times_around_the_loop_add_up() -> None:
     """L = k exp(-s d) / s."""
     k, d = 1.5, 0.3

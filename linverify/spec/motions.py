@@ -69,6 +69,7 @@ class _Driven:
 
     names: tuple[str, ...]
     what: str
+    measured: tuple[str, ...] = ()
 
     @classmethod
     def of(cls, ground: Ground, ask: DriveAsk, loops: Mapping[str, Loop]) -> _Driven | None:
@@ -77,7 +78,7 @@ class _Driven:
             return cls(ground.inputs, "an input")
         loop = loops.get(ask.loop.text)
         what = f"an input, or a signal that the loop {ask.loop.text!r} measures,"
-        return None if loop is None else cls((*loop.measures, *ground.inputs), what)
+        return None if loop is None else cls((*loop.measures, *ground.inputs), what, loop.measures)
 
 
 def bind_band(
@@ -143,6 +144,9 @@ def _amplitudes(ground: Ground, ask: DriveAsk, driven: _Driven | None, word: str
     for entry in ask.amplitude if driven else ():
         if driven and ground.known(entry.name, entry.place, driven.names, driven.what):
             amplitudes[entry.name] = _amplitude(ground, entry, f"{word}: amplitude: {entry.name}")
+    if driven and driven.measured and amplitudes and not set(driven.measured) & set(amplitudes):
+        wrong = f"`{word}`: `at: set_point`, and no amplitude moves a set point"
+        ground.report(ask.place, wrong, f"an amplitude of {' or '.join(driven.measured)} is expected")
     return amplitudes
 
 

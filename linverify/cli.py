@@ -23,7 +23,7 @@ from .report.folder import refusal
 
 if TYPE_CHECKING:
     from .core.case import Options
-    from .core.verdict import Verdict
+    from .core.verdict import Figure, Verdict
 
 ROOT_MARKS = ("pyproject.toml", "pytest.ini", "tox.ini", "setup.cfg", ".git")
 
@@ -135,6 +135,10 @@ def _teller(given: argparse.Namespace, options: Options) -> Callable[[Verdict], 
     return tell
 
 
+def _named(figure: Figure) -> str:
+    return f"{figure.what} of {figure.signal}" if figure.signal else figure.what
+
+
 def _replay(given: argparse.Namespace, threads: str) -> int:
     from . import run
     from .report.quantity import exactly
@@ -142,10 +146,7 @@ def _replay(given: argparse.Namespace, threads: str) -> int:
 
     verdict = run.replay(given.file, given.item, _options(given, None))
     drive = [f"drive: {one.text}" for one in verdict.evidence]
-    exact = [
-        f"to the last digit: {figure.what} of {figure.signal} {exactly(figure.worst, figure.unit)}"
-        for figure in verdict.figures
-    ]
+    exact = [f"to the last digit: {_named(figure)} {exactly(figure.worst, figure.unit)}" for figure in verdict.figures]
     # without evidence there is no replay command in the text: this is the replay
     _say(given, failure(replace(verdict, evidence=(), notes=(*drive, *verdict.notes, *exact))))
     return 1 if verdict.status.breaks_build else 0

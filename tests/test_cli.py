@@ -16,6 +16,34 @@ from basin_project import BREAKS, HOLDS, PLANT, SPEC, WRONG
 
 from linverify.cli import main, root_of
 
+# it tips over for a torque that is far from enough: a kick that its local model catches makes it fall
+TIPPING = '''
+import numpy as np
+from linverify import Plant
+
+
+def tip(t, x, u, p):
+    return np.stack([x[1], 4.0 * np.sin(x[0]) - 0.2 * x[1] + 2.0 * np.clip(u[0], -1e-4, 1e-4)])
+
+
+plant = Plant(states={"ang": "rad", "rate": "rad/s"}, inputs={"torque": "N*m"}, dynamics=tip,
+              nominal={"ang": 0.1, "rate": 0.2, "torque": 0.5})
+'''
+LOOP = """
+linverify: 1
+plant: tipping.py:plant
+envelope: {ang: [-1, 1]}
+operating_points: {up: {hold: {ang: 0}}}
+loops:
+  hold:
+    controller: {gain: [[10, 3]]}
+    measures: [ang, rate]
+    moves: [torque]
+    delay: 10 ms
+    require: {gain_margin: 3 dB}
+    confirm: nonlinear
+"""
+
 
 @pytest.fixture
 def project(tmp_path: Path, monkeypatch: pytest.MonkeyPatch) -> Path:
@@ -225,6 +253,20 @@ def test_a_drive_that_breaks_no_band_replays_as_a_pass(project: Path, capsys: py
     file = f"reports/evidence/{item['evidence'][0]['drive']}.json"
     assert main(["replay", "specs/holds.yaml::low::follows", file]) == 0
     assert ": pass" in capsys.readouterr().out
+
+
+def test_a_margin_that_breaks_on_the_plant_is_replayed_and_not_pinned(
+    project: Path, capsys: pytest.CaptureFixture[str]
+) -> None:
+    _write(project, "specs/tipping.py", TIPPING)
+    _write(project, "specs/tipping.yaml", LOOP)
+    assert main(["check", "specs"]) == 1
+    out = capsys.readouterr().out
+    found = re.search(r"^  replay .* replay (\S+) (\S+\.json)$", out, flags=re.MULTILINE)
+    assert found is not None
+    assert "linverify pin" not in out  # which would refuse it
+    assert main(["replay", found[1], found[2]]) == 1
+    assert "to the last digit: gain margin (downwards) 1" in capsys.readouterr().out
 
 
 def test_replay_works_from_a_folder_below(project: Path, monkeypatch: pytest.MonkeyPatch) -> None:

@@ -105,7 +105,7 @@ def figure_line(figure: Figure, *, judged: bool = True) -> str:
 
 
 def next_steps(verdict: Verdict, evidence: str = "reports/evidence") -> list[str]:
-    """The commands that replay the drive of a verdict and pin it; empty where there is none or it passes."""
+    """The commands that replay the drive of a verdict and pin it (of `follows`); empty where none is or it passes."""
     if not verdict.evidence or not verdict.status.breaks_build:
         return []
     # where nothing failed, a drive that could not be followed tells more than the worst of those that could
@@ -114,10 +114,10 @@ def next_steps(verdict: Verdict, evidence: str = "reports/evidence") -> list[str
     saved = (PurePath(evidence) / f"{telling.drive}.json").as_posix()
     item, file = shlex.quote(verdict.id), shlex.quote(saved)
     # commands stand on one line each, unwrapped, so that they can be copied
-    return [
-        f"  {'replay':<{_LABEL}}  python -m linverify replay {item} {file}",
-        f"  {'pin':<{_LABEL}}  python -m linverify pin {item} {file}",
-    ]
+    steps = [f"  {'replay':<{_LABEL}}  python -m linverify replay {item} {file}"]
+    if verdict.check.partition(".")[0] == "follows":  # no other check has drives that can be pinned
+        steps.append(f"  {'pin':<{_LABEL}}  python -m linverify pin {item} {file}")
+    return steps
 
 
 def summary(

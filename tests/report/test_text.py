@@ -52,6 +52,11 @@ def test_the_worst_drive_is_replayed_where_none_is_simplest() -> None:
     assert text.next_steps(alone, "out/evidence")[0].endswith("out/evidence/3fa9c1d20b77.json")
 
 
+def test_a_margin_that_was_tried_on_the_plant_is_replayed_and_has_nothing_to_pin() -> None:
+    (step,) = text.next_steps(replace(FOLLOWS, check="margins.level"))
+    assert step.startswith("  replay ")
+
+
 def test_a_stopped_drive_is_replayed_where_nothing_failed() -> None:
     stopped = (*FOLLOWS.evidence[:1], Evidence("stopped", "aaaaaaaaaaaa", "pitch steps"))
     undecided = replace(FOLLOWS, status=Status.UNDECIDED, evidence=stopped)

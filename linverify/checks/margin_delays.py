@@ -16,6 +16,7 @@ PARTS = 8.0  # trials a sample, at least
 TURN = 0.1  # rad at the highest crossover from one trial to the next, at most
 BEYOND = 2.0  # of what is asked for: how far is tried
 TRIED = "the delay margin of {} was found by trying dead times every {:.3g} {}"
+NO_LOSS = ": none of them loses stability, so it is at least what is told"
 
 
 def with_delays(setup: Setup, loop: Loop, one: LoopMargins, time_unit: str) -> tuple[LoopMargins, list[str]]:
@@ -31,7 +32,10 @@ def with_delays(setup: Setup, loop: Loop, one: LoopMargins, time_unit: str) -> t
         return one, []
     steps = [_step(setup, loop, channel) for channel in one.channels]
     tried = [_tried(setup, loop, one, k, step, wanted) for k, step in enumerate(steps)]
-    told = [TRIED.format(each.name, step, time_unit) for each, step in zip(one.channels, steps, strict=True)]
+    told = [
+        TRIED.format(each.name, step, time_unit) + (NO_LOSS if delay.value >= BEYOND * wanted else "")
+        for each, step, delay in zip(one.channels, steps, tried, strict=True)
+    ]
     return _filled(one, tried), told
 
 

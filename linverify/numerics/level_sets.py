@@ -106,5 +106,7 @@ def _of(curve: Curve, kind: Kind, v: Array) -> Peak:
     sizes = size_of(kind, found.at)
     place = int(np.argmax(sizes))
     # dS = S^2 dL, and the same of T and of (S - T) / 2
-    slack = found.error[place] * float(size_of("S", found.at[place : place + 1])[0]) ** 2
-    return Peak(float(sizes[place]), float(v[place]), slack if np.isfinite(slack) else 0.0)
+    squared = float(size_of("S", found.at[place : place + 1])[0]) ** 2
+    # at a pole of L on the axis S is zero, however little is known of L itself
+    slack = float(found.error[place]) * squared if squared > 0.0 else 0.0
+    return Peak(float(sizes[place]), float(v[place]), slack if np.isfinite(slack) else np.inf)

@@ -80,6 +80,8 @@ def _delayed(loop: Transfer) -> Multiloop:
 
 def _delayed_disk(found: StandIn) -> Bounded:
     near = disk(found.known.difference)
+    if not near.low > 0.0:
+        return Bounded(0.0, math.inf, near.frequency, done=False)
     # with any scaling |S'| and |T'| are at most 1 / low + 1/2, and S differs by |S'| |T'| times the stand-in's error
     size = 1.0 / near.low + 0.5
     share = found.off * size

@@ -271,6 +271,9 @@ def test_two_sampled_channels_have_delay_margins_of_their_own() -> None:
     verdict = judged(plant, loop(gain(np.diag([2.5, 1.0]), h), least("delay_margin", 0.25), **PAIR))
     assert verdict.status is Status.PASS, verdict.reason
     assert figure(verdict, DELAY, "u1").worst == pytest.approx(h, rel=1e-6)
+    # twice what is asked for is tried: the slower channel bears all of it
+    bearing = [note for note in verdict.notes if "at least what is told" in note]
+    assert [note for note in bearing if "of u2" in note] == bearing != []
 
 
 HEADING = linear_plant([[-1.0, 0.0], [1.0, 0.0]], [[1.0], [0.0]], [[1.0, 0.0]])  # x2 integrates x1, nobody sees it

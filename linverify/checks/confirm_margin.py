@@ -42,6 +42,8 @@ WINDOWS, FEWEST = 400, 5  # of half a period each
 FAR = 30.0  # nominal sizes of a state from trim, where a trial ends at the latest
 GROUPS = 8  # parts of a window
 WEIGHT = 0.5  # of the kick: error of a state that is acceptable; a thousandth of it is allowed in one step
+SMALLER = 1e-3  # of the kick: tried where the plant brings back what should grow
+SATURATES = "the plant brings back a motion of {} nominal sizes and not one of {}: it saturates in between"
 LARGER, COARSER = 30.0, 300.0  # kick and weights where what becomes of a growing motion is only told
 GUARD = 0.1  # of the predicted growth: nearer to none says nothing
 Way = Literal["rest", "grow"]
@@ -155,8 +157,19 @@ def _try(study: Study, loop: Loop, change: _Change, found: _Found) -> None:
         text = f"{subject} the motion changes too slowly to be told within {WINDOWS // 2} periods"
         found.reasons.append((Status.UNDECIDED, text))
         return
-    status, first, error = _judged(trial, change.way, predicted)
-    _tell(study, closed, loop, change, trial, (status, first, error), found)
+    judged = _judged(trial, change.way, predicted)
+    if judged[0] is Status.FAIL and change.way == "grow":
+        # a plant that saturates below the kick brings it back, and says nothing of smaller motions
+        small = _smaller(trial)
+        if (again := _judged(small, change.way, predicted))[0] is not Status.FAIL:
+            trial, judged = small, again
+            found.notes.append(f"{subject} {SATURATES.format(number(KICK, 3), number(KICK * SMALLER, 3))}")
+    _tell(study, closed, loop, change, trial, judged, found)
+
+
+def _smaller(trial: Trial) -> Trial:
+    rig = replace(trial.rig, weights=SMALLER * trial.rig.weights)
+    return replace(trial, rig=rig, drive=trial.drive.scaled(SMALLER))
 
 
 def _closed(study: Study, loop: Loop, changed: Loop) -> ClosedStudy:

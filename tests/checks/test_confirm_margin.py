@@ -106,6 +106,19 @@ def test_what_bounds_or_ends_a_growing_motion_is_told_apart() -> None:
     assert all(text.startswith("leaves the envelope through ") for text in ends)
 
 
+def test_a_plant_that_saturates_below_the_kick_is_asked_with_a_smaller_one() -> None:
+    """The kick itself is brought back, yet the equilibrium is unstable: small motions grow into a limit cycle."""
+    found = tried(lagging(actuators={"f": replace(LAG, low=-1e-3, high=1e-3)}))
+    (up,) = [each for each in found.details if "1.1 of the margin upwards" in each["change"]]
+    assert up["status"] == "pass"
+    assert up["became"].startswith("goes on in a limit cycle of y")
+    assert up["growth"] > 0.0
+    (note,) = [
+        line for line in found.notes if "brings back a motion of 0.001 nominal sizes and not one of 1e-6" in line
+    ]
+    assert "(1.1 of the margin upwards)" in note
+
+
 def dead_zone(t: float, x: Any, u: Any, p: Any) -> Any:
     force = u[0] - np.clip(u[0], -0.2, 0.2)
     return np.stack([x[1], p["a"] * x[0] + force])

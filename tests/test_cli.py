@@ -17,7 +17,7 @@ from basin_project import BREAKS, HOLDS, PLANT, SPEC, WRONG
 from linverify.cli import main, root_of
 
 # it tips over for a torque that is far from enough: a kick that its local model catches makes it fall
-TIPPING = '''
+TIPPING = """
 import numpy as np
 from linverify import Plant
 
@@ -28,7 +28,7 @@ def tip(t, x, u, p):
 
 plant = Plant(states={"ang": "rad", "rate": "rad/s"}, inputs={"torque": "N*m"}, dynamics=tip,
               nominal={"ang": 0.1, "rate": 0.2, "torque": 0.5})
-'''
+"""
 LOOP = """
 linverify: 1
 plant: tipping.py:plant

@@ -10,8 +10,9 @@ from __future__ import annotations
 
 from collections.abc import Sequence
 
-from ..core.case import CheckAsk
-from ..core.loop import Loop
+from ..core.case import Case, CheckAsk
+from ..core.loop import Actuator, Loop
+from ..core.model import OperatingPoint
 from ..core.verdict import Status, Verdict
 from ..numerics.closing import RefusedError, Setup
 from ..numerics.loop_margins import LoopMargins
@@ -31,6 +32,7 @@ from .study import Study
 OPEN = "the errors of the local model's entries leave open whether"
 HARDLY = 0.4  # the same in a model whose entries are off by their errors
 DOMINATES = 0.5  # share of the states that `leaves` names in a mode from which on it is theirs
+EDGE = 1e-6  # of an input's size: nearer to a limit of its actuator it rests on it
 
 
 def check(study: Study, ask: CheckAsk) -> Verdict:
@@ -70,6 +72,7 @@ def _judge(study: Study, loop: Loop, found: Findings) -> None:
     around = setup(study, loop.name)
     moves = [moved.name for one in nested(case, (loop.name,)) for moved in one.moves if not moved.loop]
     found.reasons += [(Status.UNDECIDED, words) for words in out_of_reach(case, study.point(), dict.fromkeys(moves))]
+    found.reasons += [(Status.UNDECIDED, words) for words in _at_their_limit(case, study.point(), moves)]
     broken, one = whole(around, loop.name, at_input)
     one, told = with_delays(around, loop, one, case.plant.time_unit)
     found.notes += told
@@ -120,6 +123,21 @@ def _covered(loop: Loop, one: LoopMargins, least: float = DOMINATES) -> list[boo
     """Whether `leaves` covers each of the poles that the loop does not move."""
     shares = [sum(share for name, share in pole.shares if name in loop.leaves) for pole in one.unmoved]
     return [round(share, 9) >= least for share in shares]
+
+
+def _at_their_limit(case: Case, point: OperatingPoint, names: Sequence[str]) -> list[str]:
+    """What to tell of inputs that rest on a limit of their actuator: the local model's gain holds one way only there."""
+    found = []
+    for name in dict.fromkeys(names):
+        actuator, at = case.actuators.get(name, Actuator()), point.value(name)
+        if not actuator.low <= at <= actuator.high:
+            continue
+        room = min(at - actuator.low, actuator.high - at)
+        if room <= EDGE * max(abs(at), case.nominal.get(name, 1.0)):
+            found.append(
+                f"the trimmed value of {name} rests on a limit of its actuator: it can move one way only there"
+            )
+    return found
 
 
 def _unmoved(one: LoopMargins, excused: Sequence[bool], found: Findings) -> None:

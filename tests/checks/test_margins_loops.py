@@ -44,6 +44,16 @@ def test_a_trim_that_the_actuator_cannot_reach_is_undecided() -> None:
     assert inside.status is Status.UNDECIDED
 
 
+@pytest.mark.parametrize("low", [0.0, -1e-12])
+def test_a_trim_on_the_limit_of_an_actuator_is_undecided(low: float) -> None:
+    """It can answer one way only there, as a valve that is shut."""
+    verdict = judged(INTEGRATOR, loop(pid(2.0), *ALL), actuators={"u1": Actuator(low=low, high=1.0)})
+    assert verdict.status is Status.UNDECIDED
+    assert "u1 rests on a limit of its actuator" in verdict.reason
+    beside = judged(INTEGRATOR, loop(pid(2.0), *ALL), actuators={"u1": Actuator(low=-0.01, high=1.0)})
+    assert beside.status is Status.PASS
+
+
 def test_dead_times_around_the_loop_add_up() -> None:
     """L = k exp(-s d) / s."""
     k, d = 1.5, 0.3

@@ -126,7 +126,7 @@ def _covered(loop: Loop, one: LoopMargins, least: float = DOMINATES) -> list[boo
 
 
 def _at_their_limit(case: Case, point: OperatingPoint, names: Sequence[str]) -> list[str]:
-    """What to tell of inputs that rest on a limit of their actuator: the local model's gain holds one way only there."""
+    """What to tell of inputs that rest on a limit of their actuator: the local model's gain holds one way only."""
     found = []
     for name in dict.fromkeys(names):
         actuator, at = case.actuators.get(name, Actuator()), point.value(name)

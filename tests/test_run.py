@@ -127,14 +127,15 @@ def test_the_summary_ends_in_the_next_step(root: Path, monkeypatch: pytest.Monke
     monkeypatch.chdir(root)
     verdicts = _judged(root)
     verdicts[3] = replace(
-        verdicts[3], status=Status.FAIL, reason="a band breaks", evidence=(Evidence("worst", "0123456789ab", "a step"),)
-    )
+        verdicts[3], check="follows", status=Status.FAIL, reason="a band breaks",
+        evidence=(Evidence("worst", "0123456789ab", "a step"),),
+    )  # fmt: skip
     lines = run.conclude(_books(root, verdicts), Options(reports=root / "reports"), root).lines
     assert "report: reports/compliance.md" in lines
     assert lines[-3] == "next step:"
     assert lines[-2].split(maxsplit=1) == [
         "replay",
-        "python -m linverify replay specs/basin.yaml::high::differentiable reports/evidence/0123456789ab.json",
+        "python -m linverify replay specs/basin.yaml::high::follows reports/evidence/0123456789ab.json",
     ]
 
 

@@ -21,6 +21,7 @@ from .curve import Complex, Curve
 Kind = Literal["S", "T", "disk"]
 ABOVE = 1e-8  # of the largest value found: the level that is certified
 ROUNDS, CLIMB, POINTS = 8, 12, 9
+POLE = 1e-7  # of |S|: below it L stands for a pole on the axis where its own error has no bound
 
 
 @dataclass(frozen=True, slots=True)
@@ -106,7 +107,9 @@ def _of(curve: Curve, kind: Kind, v: Array) -> Peak:
     sizes = size_of(kind, found.at)
     place = int(np.argmax(sizes))
     # dS = S^2 dL, and the same of T and of (S - T) / 2
-    squared = float(size_of("S", found.at[place : place + 1])[0]) ** 2
-    # at a pole of L on the axis S is zero, however little is known of L itself
-    slack = float(found.error[place]) * squared if squared > 0.0 else 0.0
-    return Peak(float(sizes[place]), float(v[place]), slack if np.isfinite(slack) else np.inf)
+    small = float(size_of("S", found.at[place : place + 1])[0])
+    slack = float(found.error[place]) * small**2
+    if not np.isfinite(slack):
+        # at a pole of L on the axis, or as near as rounding tells: L is large beyond doubt, and S is all that is left
+        slack = small if small < POLE else np.inf
+    return Peak(float(sizes[place]), float(v[place]), slack)

@@ -15,7 +15,7 @@ import numpy as np
 from ..core.bound import BoundPlant
 from ..core.case import Case, DriveSet
 from ..core.loop import Actuator, Loop
-from ..core.model import LocalModel, OperatingPoint, frozen_array
+from ..core.model import Array, LocalModel, OperatingPoint, frozen_array
 from ..core.signals import Signals
 from ..core.units import told
 from ..numerics.allpass import ORDER, good_up_to
@@ -300,7 +300,7 @@ class ClosedStudy(Study):
                 found[name] = bare.nominal.get(name.removesuffix(".lag"), np.inf)
         return found
 
-    def _closed_probes(self) -> tuple:  # type: ignore[type-arg]
+    def _closed_probes(self) -> tuple[Array, Array]:
         x, u = self.bare.probes()
         point, bare = self._closed.point, self.bare.point()
         rests = np.tile(point.x[len(bare.x) :, np.newaxis], (1, x.shape[1]))

@@ -9,9 +9,8 @@ from .loop_layout import Gain, Grid, Line, Schedule
 from .loop_words import SCHEDULE_WORDS, SETTLING_WORDS
 from .reader import Reader
 from .scalars import fraction as a_fraction
-from .scalars import quoted
 from .source import Block, Broken, Listing, Node, Scalar
-from .values import fraction, quantity, text
+from .values import each_once, fraction, quantity, text
 from .words import Kind, Row, default_of
 
 _NO_KEY = Scalar("", True, Place(""))
@@ -121,11 +120,4 @@ def rules(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> tup
     if not items:
         reader.tell(node.place, f"`{called}`: the list is empty", expected)
         return None
-    read: list[Word] = []
-    for item in items:
-        scalar = reader.scalar(item, called, expected)
-        if scalar is not None and scalar.text in (word.text for word in read):
-            reader.tell(scalar.place, f"`{called}`: {quoted(scalar.text)} is listed twice")
-        elif scalar is not None:
-            read.append(Word(scalar.text, scalar.place))
-    return tuple(read) or None
+    return each_once(reader, items, called, expected) or None

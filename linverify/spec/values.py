@@ -6,6 +6,8 @@ returns the value, or None after telling what is wrong.
 
 from __future__ import annotations
 
+from collections.abc import Iterable
+
 from linverify.core.signals import nearest
 
 from . import scalars
@@ -171,6 +173,11 @@ def names(reader: Reader, row: Row, called: str, key: Scalar, node: Node) -> tup
     items = reader.items(node, called, expected)
     if items is None:
         return None
+    return each_once(reader, items, called, expected)
+
+
+def each_once(reader: Reader, items: Iterable[Node], called: str, expected: str) -> tuple[Word, ...]:
+    """The names among `items`; what is no name, and a name that stands there already, is told."""
     read: list[Word] = []
     for item in items:
         scalar = reader.scalar(item, called, expected)
